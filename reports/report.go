@@ -1,0 +1,413 @@
+// Package reports holds the Report: what kneepoint found out about one lot, as
+// plain data. It computes nothing and knows no other room of the house;
+// reports/build fills it, reports/page draws it, and other programs read it as
+// JSON under the contract of schema.json.
+//
+// Three rules hold everywhere. Intervals are 95 % unless a method says
+// otherwise. Values are in the unit that stands beside them. What could not be
+// computed is null (NaN in Go) and a Why beside it says why; lists are never
+// null.
+package reports
+
+// SchemaVersion is the version of the JSON contract.
+const SchemaVersion = 1
+
+// Report is the whole account of one lot.
+type Report struct {
+	Schema       int           `json:"schema"`
+	Tool         Tool          `json:"tool"`
+	Inputs       []Input       `json:"inputs"`
+	ProductFile  *Input        `json:"product_file"` // null when triaged without one
+	Baseline     Source        `json:"baseline"`
+	Lot          string        `json:"lot"`
+	Product      string        `json:"product"`
+	Dice         int           `json:"dice"` // tested dice, each counted once
+	Program      Program       `json:"program"`
+	Geometry     Geometry      `json:"geometry"`
+	Wafers       []Wafer       `json:"wafers"`
+	Quality      []Quality     `json:"quality"`
+	Yield        LotYield      `json:"yield"`
+	Bins         []Bin         `json:"bins"`
+	Tests        []Test        `json:"tests"`
+	Zones        []Zone        `json:"zones"` // rings and sectors over all wafers
+	Screens      []Screen      `json:"screens"`
+	Variance     []Variance    `json:"variance"`
+	Groups       []Group       `json:"groups"`
+	Associations []Association `json:"associations"`
+	Causes       []Cause       `json:"causes"`
+	Epi          *Epi          `json:"epi"` // null with EpiWhy when not computed
+	EpiWhy       string        `json:"epi_why,omitempty"`
+	Disposition  Disposition   `json:"disposition"`
+	Cautions     []string      `json:"cautions"`
+
+	// Pictures are for the page only; the JSON carries their numbers elsewhere.
+	Pictures Pictures `json:"-"`
+}
+
+// Tool names the program that wrote the report.
+type Tool struct {
+	Name    string `json:"name"`
+	Version string `json:"version"`
+}
+
+// Input is one file that was read.
+type Input struct {
+	File   string `json:"file"`
+	SHA256 string `json:"sha256"`
+	Format string `json:"format"` // "delimited text, wide", ...
+	Bytes  int64  `json:"bytes"`
+	Rows   int64  `json:"rows"` // data rows read
+}
+
+// Source says where a baseline came from.
+type Source struct {
+	Source string `json:"source"` // "product file", "ledger", "lot majority", "none"
+	ID     string `json:"id"`
+	SHA256 string `json:"sha256"`
+}
+
+// Program is what was found out about the test program.
+type Program struct {
+	StopOnFail bool   `json:"stop_on_fail"`
+	Text       string `json:"text"`        // how it was told
+	PassRule   string `json:"pass_rule"`   // how a die is judged passing
+	RetestRule string `json:"retest_rule"` // which measurement of a retested die counts
+}
+
+// Geometry is the wafer grid; numbers are NaN where it is not known.
+type Geometry struct {
+	DiameterMM      Number `json:"diameter_mm"`
+	DieWidthMM      Number `json:"die_width_mm"`
+	DieHeightMM     Number `json:"die_height_mm"`
+	EdgeExclusionMM Number `json:"edge_exclusion_mm"`
+	CentreX         Number `json:"centre_x"` // in die coordinates
+	CentreY         Number `json:"centre_y"`
+	Source          string `json:"source"` // "product file", "found from the die outline", ...
+	Why             string `json:"why,omitempty"`
+}
+
+// Interval is an estimate with its 95 % interval.
+type Interval struct {
+	Estimate Number `json:"estimate"`
+	Lower    Number `json:"lower"`
+	Upper    Number `json:"upper"`
+	Method   string `json:"method,omitempty"`
+	Why      string `json:"why,omitempty"`
+}
+
+// Wafer is one wafer's account.
+type Wafer struct {
+	ID         string            `json:"id"`
+	Dice       int               `json:"dice"`
+	Passing    int               `json:"passing"`
+	Retested   int               `json:"retested"`
+	Yield      Interval          `json:"yield"`
+	FirstPass  Number            `json:"first_pass"`
+	Rank       int               `json:"rank"`       // 1 = lowest yield
+	Stands     string            `json:"stands"`     // "low", "high" or "" against the rest of the lot
+	MainLoss   []Share           `json:"main_loss"`  // tests that lose most on this wafer, first loss, at most three
+	Spatial    Spatial           `json:"spatial"`    // is the fail map more than chance
+	Signatures []Signature       `json:"signatures"` // issue of the map room
+	Epi        *Epi              `json:"epi"`        //
+	Group      int               `json:"group"`      // 0 when not grouped
+	Attributes map[string]string `json:"attributes"` // wafer history
+}
+
+// Share is a named part of something.
+type Share struct {
+	Name  string `json:"name"`
+	Share Number `json:"share"`
+	Dice  int    `json:"dice"`
+}
+
+// Spatial holds the first-floor map statistics of one wafer.
+type Spatial struct {
+	JoinCount *JoinCount `json:"join_count"`
+	Clusters  []Cluster  `json:"clusters"` // largest first, at most ten; Total says how many there are
+	Total     int        `json:"clusters_total"`
+	Why       string     `json:"why,omitempty"`
+}
+
+// JoinCount is the fail-fail join-count test under randomisation.
+type JoinCount struct {
+	Neighbours string `json:"neighbours"` // "rook" or "queen"
+	FailFail   Number `json:"fail_fail"`
+	Expected   Number `json:"expected"`
+	Variance   Number `json:"variance"`
+	Z          Number `json:"z"`
+	PValue     Number `json:"p_value"` // one-sided, clustering
+	Method     string `json:"method"`
+}
+
+// Cluster is one connected group of failing dice.
+type Cluster struct {
+	Dice     int    `json:"dice"`
+	X        Number `json:"x"` // centre, die coordinates
+	Y        Number `json:"y"`
+	RadiusMM Number `json:"radius_mm"` // distance of the centre from the wafer's centre
+	Width    int    `json:"width"`     // extent in dice
+	Height   int    `json:"height"`
+}
+
+// Signature is a spatial pattern.
+type Signature struct {
+	Kind     string `json:"kind"`
+	Strength Number `json:"strength"`
+	PValue   Number `json:"p_value"`
+	Loss     Number `json:"loss"`
+	Text     string `json:"text,omitempty"`
+}
+
+// Quality is one thing about the data that a reader must know.
+type Quality struct {
+	Code     string `json:"code"`
+	Severity string `json:"severity"` // "info", "warning", "severe"
+	Text     string `json:"text"`
+	Dice     int    `json:"dice"`
+	Remedy   string `json:"remedy,omitempty"`
+}
+
+// LotYield is the lot's yield.
+type LotYield struct {
+	Interval
+	Passing        int      `json:"passing"`
+	Counting       Interval `json:"counting"` // Wilson, dice as independent
+	FirstPass      Number   `json:"first_pass"`
+	SystematicLoss Number   `json:"systematic_loss"`
+	RandomLoss     Number   `json:"random_loss"`
+	LossWhy        string   `json:"loss_why,omitempty"`
+	Baseline       Number   `json:"baseline"`
+	Grades         []Grade  `json:"grades"`
+}
+
+// Grade is one passing bin.
+type Grade struct {
+	Bin   int    `json:"bin"`
+	Name  string `json:"name"`
+	Dice  int    `json:"dice"`
+	Share Number `json:"share"` // of all tested dice
+}
+
+// Bin is one bin's count.
+type Bin struct {
+	Kind       string `json:"kind"` // "hard" or "soft"
+	Bin        int    `json:"bin"`
+	Name       string `json:"name"`
+	Pass       bool   `json:"pass"`
+	Dice       int    `json:"dice"`
+	Share      Number `json:"share"`
+	Cumulative Number `json:"cumulative"` // over failing bins by falling count; NaN for passing ones
+}
+
+// Test is one parametric test's account. Every value is in Unit.
+type Test struct {
+	Name          string       `json:"name"`
+	Measures      string       `json:"measures"`
+	Unit          string       `json:"unit"`
+	Condition     string       `json:"condition"`
+	Lower         Number       `json:"lower_limit"`
+	Upper         Number       `json:"upper_limit"`
+	LimitFrom     string       `json:"limits_from"` // "product file", "data file", ""
+	N             int          `json:"n"`           // dice with a value
+	Missing       int          `json:"missing"`
+	Censored      Censored     `json:"censored"`
+	Over          string       `json:"over"` // which dice the distribution is over
+	Mean          Number       `json:"mean"`
+	SD            Number       `json:"sd"`
+	Median        Number       `json:"median"`
+	MADSigma      Number       `json:"mad_sigma"`
+	Min           Number       `json:"min"`
+	Max           Number       `json:"max"`
+	Quantiles     []Quantile   `json:"quantiles"` // Hyndman-Fan 8
+	Skewness      Number       `json:"skewness"`
+	Kurtosis      Number       `json:"kurtosis"` // excess
+	Why           string       `json:"why,omitempty"`
+	Histogram     *Histogram   `json:"histogram"`
+	Fit           *Fit         `json:"fit"`
+	Capability    *Capability  `json:"capability"`
+	Loss          Loss         `json:"loss"`
+	LowFails      int          `json:"low_fails"`  // dice below the lower limit
+	HighFails     int          `json:"high_fails"` // dice above the upper limit
+	Marginal      Number       `json:"marginal"`   // share of this test's failing dice that fail by little
+	MarginalMeans string       `json:"marginal_means"`
+	LimitCurve    []LimitPoint `json:"yield_against_limit"`
+	ByWafer       []WaferLevel `json:"by_wafer"`
+}
+
+// Censored counts readings known only as bounds.
+type Censored struct {
+	AtLeast int    `json:"at_least"`
+	AtMost  int    `json:"at_most"`
+	Clamp   Number `json:"clamp"`
+	Floor   Number `json:"floor"`
+}
+
+// Quantile is one point of a distribution.
+type Quantile struct {
+	P     Number `json:"p"`
+	Value Number `json:"value"`
+}
+
+// Histogram is counts over bins of equal width: Counts[i] over [Edges[i],
+// Edges[i+1]), the last bin closed. Scale is "linear" or "log" (edges then are
+// equal steps of the logarithm). Below and Above count values outside.
+type Histogram struct {
+	Scale string   `json:"scale"`
+	Rule  string   `json:"rule"`
+	Edges []Number `json:"edges"`
+	Pass  []int    `json:"pass"`
+	Fail  []int    `json:"fail"`
+	Below int      `json:"below"`
+	Above int      `json:"above"`
+}
+
+// Fit is a distribution fitted to a test (a later issue fills it).
+type Fit struct {
+	Distribution string            `json:"distribution"`
+	Reason       string            `json:"reason"`
+	Parameters   map[string]Number `json:"parameters"`
+}
+
+// Capability is the process capability of a test.
+type Capability struct {
+	N       int      `json:"n"`
+	Cp      Interval `json:"cp"`
+	Cpk     Interval `json:"cpk"`
+	Pp      Interval `json:"pp"`
+	Ppk     Interval `json:"ppk"`
+	Within  Number   `json:"within_sigma"`
+	Overall Number   `json:"overall_sigma"`
+	Over    string   `json:"over"` // which dice
+	Why     string   `json:"why,omitempty"`
+	Notes   []string `json:"notes"`
+}
+
+// Loss is the share of tested dice that a test fails. Alone and Any are null
+// on a stop-on-fail program.
+type Loss struct {
+	First     Number `json:"first"`
+	Alone     Number `json:"alone"`
+	Any       Number `json:"any"`
+	FirstDice int    `json:"first_dice"`
+	AloneDice *int   `json:"alone_dice"`
+	AnyDice   *int   `json:"any_dice"`
+	Why       string `json:"why,omitempty"`
+}
+
+// LimitPoint is the lot's yield with one limit of one test moved.
+type LimitPoint struct {
+	Limit string `json:"limit"` // "lower" or "upper"
+	Shift Number `json:"shift"` // -0.10 ... 0.10 of the limit
+	Value Number `json:"value"` // the moved limit
+	Yield Number `json:"yield"`
+}
+
+// WaferLevel is a test's level on one wafer.
+type WaferLevel struct {
+	Wafer    string `json:"wafer"`
+	N        int    `json:"n"`
+	Median   Number `json:"median"`
+	MADSigma Number `json:"mad_sigma"`
+	Q05      Number `json:"q05"`
+	Q25      Number `json:"q25"`
+	Q75      Number `json:"q75"`
+	Q95      Number `json:"q95"`
+	Fails    int    `json:"fails"` // dice outside a limit of this test
+}
+
+// Zone is the yield of a ring or a sector over all wafers.
+type Zone struct {
+	Kind  string   `json:"kind"` // "ring" or "sector"
+	Index int      `json:"index"`
+	Name  string   `json:"name"`
+	From  Number   `json:"from"` // mm, or degrees counter-clockwise from +x
+	To    Number   `json:"to"`
+	Dice  int      `json:"dice"`
+	Yield Interval `json:"yield"`
+}
+
+// Screen, Variance, Group and Association belong to later issues.
+type Screen struct {
+	Name string `json:"name"`
+	Dice int    `json:"dice"`
+	Loss Number `json:"loss"`
+	Text string `json:"text"`
+}
+
+// Variance is one level's part of a test's spread.
+type Variance struct {
+	Test  string   `json:"test"`
+	Level string   `json:"level"`
+	Sigma Interval `json:"sigma"`
+	Share Number   `json:"share"`
+}
+
+// Group is a set of wafers whose maps are alike.
+type Group struct {
+	ID     int      `json:"id"`
+	Wafers []string `json:"wafers"`
+	Text   string   `json:"text"`
+}
+
+// Association is a test or the yield against another column.
+type Association struct {
+	Of     string `json:"of"`
+	With   string `json:"with"`
+	Effect Number `json:"effect"`
+	PValue Number `json:"p_value"`
+	Text   string `json:"text"`
+}
+
+// Cause is one physical cause with its probability.
+type Cause struct {
+	Cause       string     `json:"cause"`
+	Direction   string     `json:"direction"`
+	Probability Number     `json:"probability"`
+	Why         string     `json:"why,omitempty"`
+	Loss        Interval   `json:"loss"`
+	Wafers      []string   `json:"wafers"`
+	For         []Evidence `json:"for"`
+	Against     []Evidence `json:"against"`
+	Next        []Next     `json:"next"`
+}
+
+// Evidence is one observation that speaks for or against a cause.
+type Evidence struct {
+	Text    string   `json:"text"`
+	LogOdds Number   `json:"log_odds"`
+	Test    string   `json:"test"`
+	Wafers  []string `json:"wafers"`
+}
+
+// Next is a measurement worth making.
+type Next struct {
+	Text            string `json:"text"`
+	InformationBits Number `json:"information_bits"`
+}
+
+// Epi is what the electrical data say of the epi layer.
+type Epi struct {
+	NetThicknessUM      Interval `json:"net_thickness_um"`
+	ThicknessUM         Interval `json:"thickness_um"`
+	DopingCM3           Interval `json:"doping_cm3"`
+	ResistivityOhmCM    Interval `json:"resistivity_ohm_cm"`
+	Regime              string   `json:"regime"`
+	ThicknessObservable bool     `json:"thickness_observable"`
+	Separable           bool     `json:"separable"`
+	Note                string   `json:"note"`
+}
+
+// Disposition is the proposal: advice, never a release.
+type Disposition struct {
+	Proposal     string             `json:"proposal"`
+	Because      []string           `json:"because"`
+	Wafers       []WaferDisposition `json:"wafers"`
+	YieldIfFixed Interval           `json:"yield_if_fixed"`
+}
+
+// WaferDisposition is the proposal for one wafer.
+type WaferDisposition struct {
+	ID       string   `json:"id"`
+	Proposal string   `json:"proposal"`
+	Because  []string `json:"because"`
+}
