@@ -9,6 +9,8 @@
 // null.
 package reports
 
+//go:generate go run ./internal/schemagen report.go schema.json
+
 // SchemaVersion is the version of the JSON contract.
 const SchemaVersion = 1
 
@@ -103,14 +105,14 @@ type Wafer struct {
 	Retested   int               `json:"retested"`
 	Yield      Interval          `json:"yield"`
 	FirstPass  Number            `json:"first_pass"`
-	Rank       int               `json:"rank"`       // 1 = lowest yield
-	Stands     string            `json:"stands"`     // "low", "high" or "" against the rest of the lot
-	MainLoss   []Share           `json:"main_loss"`  // tests that lose most on this wafer, first loss, at most three
-	Spatial    Spatial           `json:"spatial"`    // is the fail map more than chance
-	Signatures []Signature       `json:"signatures"` // issue of the map room
-	Epi        *Epi              `json:"epi"`        //
-	Group      int               `json:"group"`      // 0 when not grouped
-	Attributes map[string]string `json:"attributes"` // wafer history
+	Rank       int               `json:"rank"`                    // 1 = lowest yield
+	Stands     string            `json:"stands" enum:"low,high,"` // "low", "high" or "" against the rest of the lot
+	MainLoss   []Share           `json:"main_loss"`               // tests that lose most on this wafer, first loss, at most three
+	Spatial    Spatial           `json:"spatial"`                 // is the fail map more than chance
+	Signatures []Signature       `json:"signatures"`              // issue of the map room
+	Epi        *Epi              `json:"epi"`                     //
+	Group      int               `json:"group"`                   // 0 when not grouped
+	Attributes map[string]string `json:"attributes"`              // wafer history
 }
 
 // Share is a named part of something.
@@ -151,7 +153,7 @@ type Cluster struct {
 
 // Signature is a spatial pattern.
 type Signature struct {
-	Kind     string `json:"kind"`
+	Kind     string `json:"kind" enum:"edge-ring,edge-arc,centre,annulus,line,blob,gradient,sector,shot-repeat,site,stripe,near-total,random,none"`
 	Strength Number `json:"strength"`
 	PValue   Number `json:"p_value"`
 	Loss     Number `json:"loss"`
@@ -161,7 +163,7 @@ type Signature struct {
 // Quality is one thing about the data that a reader must know.
 type Quality struct {
 	Code     string `json:"code"`
-	Severity string `json:"severity"` // "info", "warning", "severe"
+	Severity string `json:"severity" enum:"info,warning,severe"` // "info", "warning", "severe"
 	Text     string `json:"text"`
 	Dice     int    `json:"dice"`
 	Remedy   string `json:"remedy,omitempty"`
@@ -399,7 +401,7 @@ type Epi struct {
 
 // Disposition is the proposal: advice, never a release.
 type Disposition struct {
-	Proposal     string             `json:"proposal"`
+	Proposal     string             `json:"proposal" enum:"release,release-after-screen,retest,hold,scrap-candidate,cannot-say"`
 	Because      []string           `json:"because"`
 	Wafers       []WaferDisposition `json:"wafers"`
 	YieldIfFixed Interval           `json:"yield_if_fixed"`
@@ -408,6 +410,6 @@ type Disposition struct {
 // WaferDisposition is the proposal for one wafer.
 type WaferDisposition struct {
 	ID       string   `json:"id"`
-	Proposal string   `json:"proposal"`
+	Proposal string   `json:"proposal" enum:"release,release-after-screen,retest,hold,scrap-candidate,cannot-say"`
 	Because  []string `json:"because"`
 }
