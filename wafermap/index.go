@@ -1,0 +1,168 @@
+package wafermap
+
+import "slices"
+
+// index maps die positions to small integers. The bulk of the dice lies in a
+// dense table over their common box; positions outside (stray coordinates, or all
+// of them when the dice lie too thinly for a table) go to a hash table, so that
+// memory follows the number of dice and not the coordinate range.
+type index struct {
+	x0, y0, columns, rows int
+	table                 []int32 // by (y-y0)*columns + x-x0; -1 nothing there
+	far                   map[uint64]int32
+}
+
+// A table may hold this many cells for each die, and this many in any case.
+// Sampled maps of one die in 64 still get one; 150,000 dice take 40 MB at most.
+const (
+	cellsPerDie = 64
+	cellsAnyway = 1 << 14
+)
+
+// newIndex lays out the table for the placed dice of x and y without filling it.
+func newIndex(x, y []int32, margin int) *index {
+	box, n := span(x, y)
+	ix := &index{}
+	if n == 0 {
+		return ix
+	}
+	limit := min(cellsPerDie*float64(n)+cellsAnyway, 1<<24)
+	if box.grown(margin).area() > limit {
+		box = bulk(x, y)
+	}
+	if box = box.grown(margin); box.area() > limit {
+		return ix
+	}
+	ix.x0, ix.y0 = box.X0, box.Y0
+	ix.columns, ix.rows = box.X1-box.X0+1, box.Y1-box.Y0+1
+	ix.table = make([]int32, ix.columns*ix.rows)
+	for i := range ix.table {
+		ix.table[i] = -1
+	}
+	return ix
+}
+
+func key(x, y int) uint64 { return uint64(uint32(int32(x))) | uint64(uint32(int32(y)))<<32 }
+
+// get returns what is stored at a position, -1 when nothing is.
+func (ix *index) get(x, y int) int {
+	column, row := x-ix.x0, y-ix.y0
+	if uint(column) < uint(ix.columns) && uint(row) < uint(ix.rows) {
+		return int(ix.table[row*ix.columns+column])
+	}
+	if ix.far != nil && int(int32(x)) == x && int(int32(y)) == y {
+		if v, ok := ix.far[key(x, y)]; ok {
+			return int(v)
+		}
+	}
+	return -1
+}
+
+// put stores v at a position and returns what was there before, -1 when nothing.
+func (ix *index) put(x, y int, v int32) int {
+	column, row := x-ix.x0, y-ix.y0
+	if uint(column) < uint(ix.columns) && uint(row) < uint(ix.rows) {
+		cell := &ix.table[row*ix.columns+column]
+		old := *cell
+		*cell = v
+		return int(old)
+	}
+	if ix.far == nil {
+		ix.far = map[uint64]int32{}
+	}
+	old, ok := ix.far[key(x, y)]
+	ix.far[key(x, y)] = v
+	if !ok {
+		return -1
+	}
+	return int(old)
+}
+
+// extent is a closed box of die positions.
+type extent struct{ X0, X1, Y0, Y1 int }
+
+func (e extent) grown(by int) extent { return extent{e.X0 - by, e.X1 + by, e.Y0 - by, e.Y1 + by} }
+
+// area is a float64 because the whole range of int32 squared overflows an int64.
+func (e extent) area() float64 { return float64(e.X1-e.X0+1) * float64(e.Y1-e.Y0+1) }
+
+// span returns the box of all placed dice and their number.
+func span(x, y []int32) (extent, int) {
+	if len(x) != len(y) {
+		panic("wafermap: x and y differ in length")
+	}
+	e := extent{}
+	n := 0
+	for i := range x {
+		if !placed(x[i], y[i]) {
+			continue
+		}
+		xi, yi := int(x[i]), int(y[i])
+		if n == 0 {
+			e = extent{xi, xi, yi, yi}
+		}
+		e.X0, e.X1 = min(e.X0, xi), max(e.X1, xi)
+		e.Y0, e.Y1 = min(e.Y0, yi), max(e.Y1, yi)
+		n++
+	}
+	return e, n
+}
+
+// bulk returns the box that holds the dice but for coordinates far away from all
+// others: those more than twice the 90 % distance from the median, along either
+// axis. On a disc the 90 % point of |x - median| lies at 0.8 radii, on half a
+// disc at more than half its width, so that no die of a wafer is cut off.
+func bulk(x, y []int32) extent {
+	n := 0
+	for i := range x {
+		if placed(x[i], y[i]) {
+			n++
+		}
+	}
+	// 20,000 dice tell the bulk as well as two million do
+	stride := max(1, n/20000)
+	xs, ys := make([]int, 0, n/stride+1), make([]int, 0, n/stride+1)
+	k := 0
+	for i := range x {
+		if !placed(x[i], y[i]) {
+			continue
+		}
+		if k%stride == 0 {
+			xs, ys = append(xs, int(x[i])), append(ys, int(y[i]))
+		}
+		k++
+	}
+	xlo, xhi := bulkRange(xs)
+	ylo, yhi := bulkRange(ys)
+	e, found := extent{}, false
+	for i := range x {
+		xi, yi := int(x[i]), int(y[i])
+		if !placed(x[i], y[i]) || xi < xlo || xi > xhi || yi < ylo || yi > yhi {
+			continue
+		}
+		if !found {
+			e, found = extent{xi, xi, yi, yi}, true
+		}
+		e.X0, e.X1 = min(e.X0, xi), max(e.X1, xi)
+		e.Y0, e.Y1 = min(e.Y0, yi), max(e.Y1, yi)
+	}
+	return e
+}
+
+// bulkRange gives the range along one axis; it sorts v.
+func bulkRange(v []int) (lo, hi int) {
+	if len(v) == 0 {
+		return 0, 0
+	}
+	slices.Sort(v)
+	median := v[len(v)/2]
+	away := make([]int, len(v))
+	for i := range v {
+		if away[i] = v[i] - median; away[i] < 0 {
+			away[i] = -away[i]
+		}
+	}
+	slices.Sort(away)
+	reach := 2*away[min(len(away)-1, len(away)*9/10)] + 3
+	return median - reach, median + reach
+}
