@@ -1,0 +1,122 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"strings"
+
+	"github.com/spf13/cobra"
+	"github.com/spf13/viper"
+
+	"kneepoint/config"
+	"kneepoint/ingest"
+	"kneepoint/reports"
+	"kneepoint/reports/build"
+)
+
+// triageFlags are what triage is asked for on its command line.
+type triageFlags struct {
+	product, settings, out, lot string
+	json, failOnHold            bool
+	tuned                       *viper.Viper
+}
+
+func newTriage() *cobra.Command {
+	f := triageFlags{tuned: viper.New()}
+	c := &cobra.Command{
+		Use:   "triage FILE...",
+		Short: "one lot in, a report out",
+		Long: `triage reads one lot and writes DIR/<lot>.html and DIR/<lot>.json, with a short summary on
+the terminal. Without a product file it works from what the data say of themselves.`,
+		Example: "  kneepoint triage lot.csv.gz -p product.yaml -o out",
+		Args:    needFiles,
+		RunE: func(c *cobra.Command, args []string) error {
+			f.json = f.json || c.Flags().Changed("json")
+			return triage(c, args, f)
+		},
+	}
+	c.Flags().StringVarP(&f.product, "product", "p", "", "product file (YAML, TOML or JSON)")
+	c.Flags().StringVarP(&f.out, "out", "o", "out", "folder for the report")
+	c.Flags().StringVar(&f.lot, "lot", "", "the lot to triage, when the files hold several")
+	c.Flags().StringVar(&f.settings, "settings", "", "settings file")
+	c.Flags().BoolVar(&f.json, "json", false, "print the report as JSON; writes files only with -o")
+	c.Flags().BoolVar(&f.failOnHold, "fail-on-hold", false, "exit with 3 when the proposal is not a release")
+	bindSettings(c, f.tuned)
+	return c
+}
+
+func triage(c *cobra.Command, files []string, f triageFlags) error {
+	settings, err := config.LoadSettings(f.tuned, f.settings)
+	if err != nil {
+		return err
+	}
+	product, err := loadProduct(f.product)
+	if err != nil {
+		return err
+	}
+	report, err := analyse(c.Context(), c, files, f.lot, product, settings)
+	if err != nil {
+		return err
+	}
+	var written []string
+	if !f.json || c.Flags().Changed("out") {
+		if written, err = writeReport(f.out, files, report); err != nil {
+			return err
+		}
+	}
+	if f.json {
+		if err := report.WriteJSON(c.OutOrStdout()); err != nil {
+			return fmt.Errorf("standard output: %w", err)
+		}
+	} else if err := printSummary(c.OutOrStdout(), report, written); err != nil {
+		return err
+	}
+	if f.failOnHold && !strings.HasPrefix(report.Disposition.Proposal, "release") {
+		return errHold
+	}
+	return nil
+}
+
+// analyse reads one lot and assembles its report.
+func analyse(ctx context.Context, c *cobra.Command, files []string, lotID string, product *config.Product, settings config.Settings) (*reports.Report, error) {
+	lot, err := readLot(ctx, c, files, lotID, product, settings)
+	if err != nil {
+		return nil, err
+	}
+	progress := newProgress(c, "analysing")
+	defer progress.end()
+	return build.Report(ctx, build.Input{Lot: lot, Product: product, Settings: settings, Version: version(),
+		Progress: func(done, total int) { progress.set(int64(done), int64(total)) }})
+}
+
+// readLot reads the files and picks the one lot that is asked for.
+func readLot(ctx context.Context, c *cobra.Command, files []string, lotID string, product *config.Product, settings config.Settings) (*ingest.Lot, error) {
+	progress := newProgress(c, "reading")
+	batch, err := ingest.Read(ctx, files, ingest.Options{Product: product, Lot: lotID, Workers: settings.Workers,
+		Retest: ingest.Retest(settings.Retest), Progress: progress.set})
+	progress.end()
+	if err != nil {
+		return nil, err
+	}
+	if len(batch.Lots) == 1 {
+		return batch.Lots[0], nil
+	}
+	var names []string
+	for _, l := range batch.Lots {
+		names = append(names, l.ID())
+	}
+	const most = 12
+	shown := strings.Join(names[:min(len(names), most)], ", ")
+	if len(names) > most {
+		shown += fmt.Sprintf(" and %d more", len(names)-most)
+	}
+	return nil, fmt.Errorf("%s: holds %d lots (%s); pick one with --lot", files[0], len(names), shown)
+}
+
+// loadProduct loads the product file, or returns nil when none is named.
+func loadProduct(path string) (*config.Product, error) {
+	if path == "" {
+		return nil, nil
+	}
+	return config.LoadProduct(path)
+}

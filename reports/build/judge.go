@@ -1,0 +1,178 @@
+package build
+
+import (
+	"fmt"
+	"math"
+
+	"kneepoint/config"
+	"kneepoint/ingest"
+	"kneepoint/reports"
+	"kneepoint/stats/yield"
+)
+
+// A judge decides whether a die passes. The rule, from the first that applies
+// (design 3.4): its bin is one of the product's passing bins; the file's own
+// flag; hard bin 1; every limit holds. A blank reading never fails a die.
+type judge struct {
+	bins    config.Bins
+	tests   []ingest.Test
+	useBin  bool // bins.pass is given and the data have bins
+	hasFlag bool
+	hasBin  bool
+}
+
+func newJudge(lot *ingest.Lot, p *config.Product) judge {
+	j := judge{tests: lot.Tests(), hasFlag: lot.Pass() != nil, hasBin: lot.HardBin() != nil || lot.SoftBin() != nil}
+	if p != nil {
+		j.bins = p.Bins
+	}
+	j.useBin = j.hasBin && len(j.bins.Pass) > 0
+	return j
+}
+
+// rule says in words how dice are judged.
+func (j judge) rule() string {
+	switch {
+	case j.useBin:
+		return fmt.Sprintf("a die passes when its bin is one of %v (product file)", j.bins.Pass)
+	case j.hasFlag:
+		return "a die passes when the data file's own flag says so"
+	case j.hasBin:
+		return "a die passes when its bin is 1 (no passing bins in the product file)"
+	}
+	return "no bins in the data: a die passes when every limit holds"
+}
+
+// passes judges one reading of a die. hard and soft are ingest.Missing, and flag
+// -1, where the file has nothing; value returns the reading of a test.
+func (j judge) passes(hard, soft int32, flag int8, value func(test int) (float64, int8)) bool {
+	bin := hard
+	if bin == ingest.Missing {
+		bin = soft
+	}
+	if j.useBin && bin != ingest.Missing {
+		return j.bins.PassBin(int(bin))
+	}
+	if flag >= 0 {
+		return flag == 1
+	}
+	if bin != ingest.Missing {
+		return bin == 1
+	}
+	for t := range j.tests {
+		v, mark := value(t)
+		if outside(v, mark, j.tests[t].Lower, j.tests[t].Upper) {
+			return false
+		}
+	}
+	return true
+}
+
+// outside reports whether a reading breaks a limit. A reading at the limit
+// holds it, a missing one breaks none, and a censored one breaks a limit only
+// when every value it may stand for does.
+func outside(v float64, mark int8, lower, upper float64) bool {
+	low := v < lower && mark <= 0
+	high := v > upper && mark >= 0
+	return low || high
+}
+
+// judgeDice judges every die by its last valid measurement, and by its first for
+// the first-pass yield.
+func (w *lotwork) judgeDice() {
+	lot := w.lot
+	j := newJudge(lot, w.in.Product)
+	w.rep.Program.PassRule = j.rule()
+	values, marks := make([][]float64, len(j.tests)), make([][]int8, len(j.tests))
+	for t := range j.tests {
+		values[t], marks[t] = lot.Values(t), lot.Censor(t)
+	}
+	w.pass = make([]bool, lot.Len())
+	var row int
+	value := func(t int) (float64, int8) {
+		if marks[t] == nil {
+			return values[t][row], 0
+		}
+		return values[t][row], marks[t][row]
+	}
+	hard, soft, flag := lot.HardBin(), lot.SoftBin(), lot.Pass()
+	for row = range w.pass {
+		w.pass[row] = j.passes(at(hard, row), at(soft, row), flagAt(flag, row), value)
+	}
+	w.firstPass(j)
+}
+
+// firstPass counts the dice that passed when they were first measured, by wafer.
+func (w *lotwork) firstPass(j judge) {
+	lot, early := w.lot, w.lot.Earlier()
+	w.retested = make([]int, len(lot.Wafers()))
+	w.firstPassing = make([]int, len(lot.Wafers()))
+	index := lot.FirstPass().Index
+	var first int
+	value := func(t int) (float64, int8) { return early.Values[t][first], 0 }
+	for i, wafer := range lot.Wafers() {
+		for row := wafer.Lo; row < wafer.Hi; row++ {
+			pass := w.pass[row]
+			if index != nil && index[row] >= 0 {
+				first = int(index[row])
+				w.retested[i]++
+				pass = j.passes(at(early.HardBin, first), at(early.SoftBin, first), flagAt(early.Pass, first), value)
+			}
+			if pass {
+				w.firstPassing[i]++
+			}
+		}
+	}
+}
+
+// testLosses splits the lost dice over the tests and tells the kind of program.
+func (w *lotwork) testLosses() {
+	tests := w.lot.Tests()
+	w.data = make([]yield.TestData, len(tests))
+	for t := range tests {
+		w.data[t] = yield.TestData{Values: w.lot.Values(t), Censor: w.lot.Censor(t), Lower: tests[t].Lower, Upper: tests[t].Upper}
+	}
+	w.losses = yield.TestLosses(w.data, w.pass, w.in.Settings.MarginalPercent/100)
+	w.first = yield.FirstFails(w.data, w.pass)
+	w.rep.Program.StopOnFail = w.losses.StopOnFail
+	w.rep.Program.Text = w.losses.StopText
+	d := w.losses.Disagree
+	if n := d.PassBinFailLimit; n > 0 {
+		w.note("passing-die-outside-limit", reports.Quality{Severity: "warning", Dice: n,
+			Text:   fmt.Sprintf("%d passing dice have a reading outside a limit; the bin counts", n),
+			Remedy: "compare the limits of the product file with those of the test program"})
+	}
+	if n := d.FailBinPassLimit; n > 0 {
+		w.note("failing-die-inside-limits", reports.Quality{Severity: "warning", Dice: n,
+			Text:   fmt.Sprintf("%d failing dice have no reading outside a limit; the bin counts, and no test is charged with the loss", n),
+			Remedy: "see whether a test is missing from the data, or a limit of the product file is wider than the program's"})
+	}
+}
+
+func (w *lotwork) note(code string, q reports.Quality) {
+	q.Code = code
+	w.rep.Quality = append(w.rep.Quality, q)
+}
+
+func at(column []int32, row int) int32 {
+	if column == nil {
+		return ingest.Missing
+	}
+	return column[row]
+}
+
+func flagAt(column []int8, row int) int8 {
+	if column == nil {
+		return -1
+	}
+	return column[row]
+}
+
+func share(k, n int) reports.Number {
+	if n == 0 {
+		return reports.NaN
+	}
+	return reports.Number(float64(k) / float64(n))
+}
+
+func finite(v float64) bool { return !math.IsNaN(v) && !math.IsInf(v, 0) }

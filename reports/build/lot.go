@@ -1,0 +1,204 @@
+package build
+
+import (
+	"fmt"
+	"sort"
+
+	"kneepoint/ingest"
+	"kneepoint/reports"
+	"kneepoint/stats/yield"
+	"kneepoint/wafermap"
+)
+
+// lotYield fills in the yield of the lot: the count, with the interval for the
+// process that the wafers were drawn from.
+func (w *lotwork) lotYield() {
+	var passing, dice []int
+	var first int
+	for i, r := range w.rep.Wafers {
+		passing, dice = append(passing, r.Passing), append(dice, r.Dice)
+		first += w.firstPassing[i]
+	}
+	n, k := w.lot.Len(), count(w.pass)
+	y := &w.rep.Yield
+	y.Interval = interval(yield.Process(passing, dice, confidence))
+	counting := yield.Wilson(k, n, confidence)
+	counting.Method = "Wilson, counting only"
+	y.Counting = interval(counting)
+	y.Passing = k
+	y.FirstPass = share(first, n)
+	y.SystematicLoss, y.RandomLoss = reports.NaN, reports.NaN
+	y.LossWhy = "the split into systematic and random loss is not computed in this version"
+	y.Baseline = reports.NaN
+	if p := w.in.Product; p != nil && p.Baseline != nil {
+		y.Baseline = num(p.Baseline.Yield)
+	}
+}
+
+// bins fills in the bins by falling count (failing ones first in line for the
+// reader) and the passing ones as grades when there are several.
+func (w *lotwork) bins() {
+	for _, kind := range []struct {
+		name   string
+		column []int32
+	}{{"hard", w.lot.HardBin()}, {"soft", w.lot.SoftBin()}} {
+		if kind.column == nil {
+			continue
+		}
+		w.rep.Bins = append(w.rep.Bins, w.binTable(kind.name, kind.column)...)
+	}
+	grades := w.lot.HardBin()
+	if grades == nil {
+		grades = w.lot.SoftBin()
+	}
+	if grades == nil {
+		return
+	}
+	dice := map[int32]int{}
+	for i, b := range grades {
+		if w.pass[i] && b != ingest.Missing {
+			dice[b]++
+		}
+	}
+	if p := w.in.Product; p != nil {
+		for _, b := range p.Bins.Pass {
+			dice[int32(b)] += 0 // a grade with no dice is worth a line
+		}
+	}
+	if len(dice) < 2 {
+		return
+	}
+	for _, b := range sortedBins(dice) {
+		w.rep.Yield.Grades = append(w.rep.Yield.Grades, reports.Grade{Bin: int(b), Name: w.binName(b), Dice: dice[b], Share: share(dice[b], w.lot.Len())})
+	}
+}
+
+// binTable counts one bin column. A bin counts as passing when most of its dice
+// pass; the cumulative share runs over failing bins by falling count.
+func (w *lotwork) binTable(kind string, column []int32) []reports.Bin {
+	dice, passing := map[int32]int{}, map[int32]int{}
+	for i, b := range column {
+		if b == ingest.Missing {
+			continue
+		}
+		dice[b]++
+		if w.pass[i] {
+			passing[b]++
+		}
+	}
+	var out []reports.Bin
+	for _, b := range sortedBins(dice) {
+		r := reports.Bin{Kind: kind, Bin: int(b), Dice: dice[b], Share: share(dice[b], w.lot.Len()), Pass: 2*passing[b] > dice[b], Cumulative: reports.NaN}
+		if kind == "hard" {
+			r.Name = w.binName(b)
+		}
+		out = append(out, r)
+	}
+	sort.SliceStable(out, func(a, b int) bool {
+		if out[a].Pass != out[b].Pass {
+			return out[a].Pass
+		}
+		if out[a].Pass {
+			return out[a].Bin < out[b].Bin
+		}
+		return out[a].Dice > out[b].Dice
+	})
+	failing, sum := 0, 0
+	for _, r := range out {
+		if !r.Pass {
+			failing += r.Dice
+		}
+	}
+	for i := range out {
+		if !out[i].Pass {
+			sum += out[i].Dice
+			out[i].Cumulative = share(sum, failing)
+		}
+	}
+	return out
+}
+
+func (w *lotwork) binName(bin int32) string {
+	if p := w.in.Product; p != nil {
+		return p.Bins.Names[int(bin)]
+	}
+	return ""
+}
+
+func sortedBins(dice map[int32]int) []int32 {
+	out := make([]int32, 0, len(dice))
+	for b := range dice {
+		out = append(out, b)
+	}
+	sort.Slice(out, func(a, b int) bool { return out[a] < out[b] })
+	return out
+}
+
+// findGeometry finds the wafer's grid from the product file and the dice.
+func (w *lotwork) findGeometry() {
+	g := &w.rep.Geometry
+	*g = reports.Geometry{DiameterMM: reports.NaN, DieWidthMM: reports.NaN, DieHeightMM: reports.NaN,
+		EdgeExclusionMM: reports.NaN, CentreX: reports.NaN, CentreY: reports.NaN}
+	if !w.lot.HasCoordinates() {
+		g.Why = "the data have no die coordinates: maps, rings and clusters are left out"
+		w.note("no-coordinates", reports.Quality{Severity: "warning", Dice: w.lot.Len(), Text: g.Why,
+			Remedy: "name the coordinate columns in the product file's columns block, if the data have them"})
+		return
+	}
+	w.geo = wafermap.FindGeometry(w.lot.X(), w.lot.Y(), w.known())
+	positive := func(v float64) reports.Number {
+		if v > 0 {
+			return num(v)
+		}
+		return reports.NaN
+	}
+	*g = reports.Geometry{DiameterMM: positive(w.geo.DiameterMM), DieWidthMM: positive(w.geo.DieWidthMM), DieHeightMM: positive(w.geo.DieHeightMM),
+		EdgeExclusionMM: positive(w.geo.EdgeExclusionMM), CentreX: num(w.geo.CentreX), CentreY: num(w.geo.CentreY), Source: w.geo.Source, Why: w.geo.Why}
+}
+
+func (w *lotwork) known() wafermap.Known {
+	p := w.in.Product
+	if p == nil {
+		return wafermap.Known{}
+	}
+	return wafermap.Known{DiameterMM: p.Wafer.DiameterMM, DieWidthMM: p.Wafer.DieWidthMM, DieHeightMM: p.Wafer.DieHeightMM,
+		EdgeExclusionMM: p.Wafer.EdgeExclusionMM, Notch: p.Wafer.Notch}
+}
+
+// zones fills in the yield of rings of equal area and of sectors, over all wafers.
+func (w *lotwork) zones() {
+	if !w.lot.HasCoordinates() || !finite(w.geo.CentreX) {
+		return
+	}
+	rings, sectors := w.in.Settings.Rings, w.in.Settings.Sectors
+	z := wafermap.ZoneYields(w.geo, w.lot.X(), w.lot.Y(), w.pass, rings, sectors)
+	edges := w.geo.RingEdges(rings)
+	for i, c := range z.Rings {
+		r := reports.Zone{Kind: "ring", Index: i, Dice: c.Dice, Name: ringName(i, rings), Yield: zoneYield(c)}
+		r.From, r.To = num(edges[i]), num(edges[i+1])
+		w.rep.Zones = append(w.rep.Zones, r)
+	}
+	for i, c := range z.Sectors {
+		from, to := 360*float64(i)/float64(sectors), 360*float64(i+1)/float64(sectors)
+		w.rep.Zones = append(w.rep.Zones, reports.Zone{Kind: "sector", Index: i, Dice: c.Dice,
+			Name: fmt.Sprintf("%.0f to %.0f degrees", from, to), From: num(from), To: num(to), Yield: zoneYield(c)})
+	}
+}
+
+func zoneYield(c wafermap.ZoneCount) reports.Interval {
+	y := yield.Wilson(c.Passing, c.Dice, confidence)
+	y.Method = "Wilson, counting only"
+	return interval(y)
+}
+
+func ringName(i, rings int) string {
+	switch i {
+	case 0:
+		return "centre"
+	case rings - 1:
+		return "edge"
+	}
+	return fmt.Sprintf("ring %d", i+1)
+}
+
+func percent(p float64) string { return fmt.Sprintf("%g %%", p) }

@@ -1,0 +1,136 @@
+package build
+
+import (
+	"math"
+	"sort"
+
+	"kneepoint/reports"
+	"kneepoint/stats"
+	"kneepoint/stats/yield"
+	"kneepoint/wafermap"
+)
+
+// clustersShown is how many fail clusters of a wafer a report lists.
+const clustersShown = 10
+
+// smallestCluster is the fewest touching fails that are called a cluster.
+const smallestCluster = 3
+
+// waferAccount makes the account of wafer i.
+func (w *lotwork) waferAccount(i int) reports.Wafer {
+	wafer := w.lot.Wafers()[i]
+	pass := w.pass[wafer.Lo:wafer.Hi]
+	n, passing := len(pass), count(pass)
+	r := reports.Wafer{ID: wafer.ID, Dice: n, Passing: passing, Retested: w.retested[i],
+		FirstPass: share(w.firstPassing[i], n), Attributes: wafer.Attributes}
+	y := yield.Wilson(passing, n, confidence)
+	y.Method = "Wilson, counting only"
+	r.Yield = interval(y)
+	r.MainLoss = w.mainLoss(wafer.Lo, wafer.Hi)
+	r.Spatial = w.spatial(wafer.Lo, wafer.Hi)
+	return r
+}
+
+// mainLoss lists the tests that lose most of rows [lo, hi) by first fail, at
+// most three.
+func (w *lotwork) mainLoss(lo, hi int) []reports.Share {
+	counts := make([]int, len(w.data))
+	for _, t := range w.first[lo:hi] {
+		if t >= 0 {
+			counts[t]++
+		}
+	}
+	var out []reports.Share
+	for _, t := range fallingOrder(counts) {
+		if counts[t] == 0 || len(out) == 3 {
+			break
+		}
+		out = append(out, reports.Share{Name: w.lot.Tests()[t].Name, Dice: counts[t], Share: share(counts[t], hi-lo)})
+	}
+	return out
+}
+
+// spatial asks whether the fails of rows [lo, hi) lie together.
+func (w *lotwork) spatial(lo, hi int) reports.Spatial {
+	if !w.lot.HasCoordinates() {
+		return reports.Spatial{Why: "the data have no die coordinates"}
+	}
+	x, y := w.lot.X()[lo:hi], w.lot.Y()[lo:hi]
+	grid := wafermap.NewGrid(x, y)
+	fail := make([]bool, hi-lo)
+	for i := range fail {
+		fail[i] = !w.pass[lo+i]
+	}
+	jc := grid.JoinCount(fail, wafermap.Queen)
+	clusters := grid.Clusters(fail, wafermap.Queen, smallestCluster)
+	s := reports.Spatial{Total: len(clusters), Why: jc.Why}
+	s.JoinCount = &reports.JoinCount{Neighbours: "queen", FailFail: num(jc.FailFail), Expected: num(jc.ExpectedFF),
+		Variance: num(jc.VarianceFF), Z: num(jc.ZFF), PValue: num(jc.PFF), Method: jc.Method}
+	for _, c := range clusters[:min(len(clusters), clustersShown)] {
+		rc := reports.Cluster{Dice: c.Dice, X: num(c.CentreX), Y: num(c.CentreY), RadiusMM: reports.NaN,
+			Width: int(c.MaxX-c.MinX) + 1, Height: int(c.MaxY-c.MinY) + 1}
+		if finite(w.geo.CentreX) && w.geo.DieWidthMM > 0 {
+			dx, dy := (c.CentreX-w.geo.CentreX)*w.geo.DieWidthMM, (c.CentreY-w.geo.CentreY)*w.geo.DieHeightMM
+			rc.RadiusMM = num(math.Hypot(dx, dy))
+		}
+		s.Clusters = append(s.Clusters, rc)
+	}
+	return s
+}
+
+// standsOut is how many sigmas off the lot's median yield a wafer must be to
+// stand out. Among 25 like wafers one in fifteen lots has one at 3.
+const standsOut = 3
+
+// compareWafers ranks the wafers and marks those that stand out. The yardstick is
+// the median wafer yield, with the robust spread between wafers and the
+// binomial spread of the wafer's own count, so that a lot of unlike wafers marks
+// few and one bad wafer cannot hide itself by widening the spread.
+func (w *lotwork) compareWafers() {
+	wafers := w.rep.Wafers
+	order := make([]int, len(wafers))
+	yields := make([]float64, len(wafers))
+	for i := range wafers {
+		order[i] = i
+		yields[i] = float64(wafers[i].Yield.Estimate)
+	}
+	sort.SliceStable(order, func(a, b int) bool { return yields[order[a]] < yields[order[b]] })
+	for rank, i := range order {
+		wafers[i].Rank = rank + 1
+	}
+	if len(wafers) < 4 {
+		return
+	}
+	median, spread := stats.Median(yields), stats.MADSigma(yields)
+	for i := range wafers {
+		binomial := median * (1 - median) / float64(max(wafers[i].Dice, 1))
+		sigma := math.Sqrt(spread*spread + binomial)
+		switch d := yields[i] - median; {
+		case sigma == 0:
+		case d < -standsOut*sigma:
+			wafers[i].Stands = "low"
+		case d > standsOut*sigma:
+			wafers[i].Stands = "high"
+		}
+	}
+}
+
+// fallingOrder returns the indexes of counts by falling count, ties in order.
+func fallingOrder(counts []int) []int {
+	order := make([]int, len(counts))
+	for i := range order {
+		order[i] = i
+	}
+	sort.SliceStable(order, func(a, b int) bool { return counts[order[a]] > counts[order[b]] })
+	return order
+}
+
+func count(flags []bool) int {
+	n := 0
+	for _, f := range flags {
+		if f {
+			n++
+		}
+	}
+	return n
+}
