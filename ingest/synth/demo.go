@@ -26,18 +26,18 @@ func reachThrough() Device {
 
 // typicalSpread is how far a well-kept line strays. Common practice, no source.
 func typicalSpread() (s [NumLatents]Spread) {
-	s[EpiThickness] = Spread{Lot: 0.005, Wafer: 0.005, Die: 0.002, Bowl: 0.004, Tilt: 0.004, MeanBowl: 0.006}
-	s[EpiDoping] = Spread{Lot: 0.015, Wafer: 0.012, Die: 0.004, Bowl: 0.008, Tilt: 0.008, MeanBowl: -0.01}
-	s[BaseDose] = Spread{Lot: 0.012, Wafer: 0.008, Die: 0.006, Bowl: 0.006, Tilt: 0.006}
-	s[BaseDepth] = Spread{Lot: 0.005, Wafer: 0.004, Die: 0.003, Bowl: 0.004, Tilt: 0.003}
-	s[EmitterDepth] = Spread{Lot: 0.008, Wafer: 0.006, Die: 0.004, Bowl: 0.006, Tilt: 0.004}
+	s[EpiThickness] = Spread{Lot: 0.008, Wafer: 0.007, Die: 0.003, Bowl: 0.012, Tilt: 0.012, MeanBowl: 0.02}
+	s[EpiDoping] = Spread{Lot: 0.018, Wafer: 0.015, Die: 0.005, Bowl: 0.02, Tilt: 0.02, MeanBowl: -0.02}
+	s[BaseDose] = Spread{Lot: 0.02, Wafer: 0.015, Die: 0.012, Bowl: 0.01, Tilt: 0.012}
+	s[BaseDepth] = Spread{Lot: 0.007, Wafer: 0.006, Die: 0.004, Bowl: 0.006, Tilt: 0.006}
+	s[EmitterDepth] = Spread{Lot: 0.01, Wafer: 0.01, Die: 0.006, Bowl: 0.008, Tilt: 0.008}
 	s[UpDiffusion] = Spread{Lot: 0.02, Wafer: 0.02}
 	s[EdgeRadius] = Spread{Lot: 0.012, Wafer: 0.01, Die: 0.04}
 	s[OxideCharge] = Spread{Lot: 0.1, Wafer: 0.1, Die: 0.05, Tilt: 0.05}
 	s[Lifetime] = Spread{Lot: 0.12, Wafer: 0.1, Die: 0.18, Bowl: 0.06, Tilt: 0.05}
 	s[SurfaceVelocity] = Spread{Lot: 0.1, Wafer: 0.1, Die: 0.1}
-	s[EmitterGummel] = Spread{Lot: 0.025, Wafer: 0.02, Die: 0.025, Bowl: 0.01, Tilt: 0.01}
-	s[SeriesResistance] = Spread{Lot: 0.03, Wafer: 0.03, Die: 0.03}
+	s[EmitterGummel] = Spread{Lot: 0.03, Wafer: 0.025, Die: 0.03, Bowl: 0.02, Tilt: 0.02}
+	s[SeriesResistance] = Spread{Lot: 0.05, Wafer: 0.05, Die: 0.05}
 	return s
 }
 
@@ -69,20 +69,23 @@ func demoTests() []Test {
 // background is what every lot has a little of.
 func background() []Cause {
 	return []Cause{
-		{ID: "random-defects", Text: "point defects", Background: true, Share: 0.014, Damage: Defect},
+		{ID: "random-defects", Text: "point defects", Background: true, Share: 0.020, Damage: Defect},
 		{ID: "emitter-collector-pipe", Text: "pipes through the base", Background: true, Share: 0.005, Damage: Pipe},
-		{ID: "random-defects", Text: "single dice with generation centres", Background: true, Share: 0.006,
+		{ID: "random-defects", Text: "single dice with generation centres", Background: true, Share: 0.007,
 			Shift: Process{Lifetime: -3.6}, Scatter: 0.25},
-		{ID: "edge-dice", Text: "dice at the wafer's edge", Background: true, Share: 0.10, Damage: Wreck,
+		{ID: "edge-dice", Text: "dice at the wafer's edge", Background: true, Share: 0.12, Damage: Wreck,
 			Place: Place{Shape: Ring, Inner: 0.80, Outer: 0.92}},
 	}
 }
 
-// Demo returns the invented lot that kneepoint shows what it does on: 25 wafers
+// Demo makes the demo lot: DemoSpec with DemoSeed.
+func Demo() *Lot { return DemoSpec().Generate(DemoSeed) }
+
+// DemoSpec describes the invented lot that kneepoint shows what it does on: 25 wafers
 // of 100 mm of the reach-through array chip MP-N24. One load of the epi reactor
 // came out thin towards the rim, two wafers were scratched, three have a strong
 // edge ring, and one prober site had contact trouble for a while.
-func Demo() Spec {
+func DemoSpec() Spec {
 	s := Spec{
 		Product: "MP-N24", Lot: "KP5T-0417", Wafers: 25,
 		Grid: Grid{DiameterMM: 100, DieWidthMM: 2.2, DieHeightMM: 2.2, EdgeExclusionMM: 3,
@@ -96,13 +99,13 @@ func Demo() Spec {
 	s.Causes = append(background(),
 		Cause{ID: "epi-thickness", Direction: "low", Text: "one reactor load thin towards the rim",
 			Wafers: []int{6, 7, 8, 9, 10, 11}, Sizes: []float64{0.8, 1, 1.1, 1.05, 0.95, 0.85},
-			Place: Place{Shape: Rim}, Shift: Process{EpiThickness: -0.16}},
+			Place: Place{Shape: Rim}, Shift: Process{EpiThickness: -0.20}},
 		Cause{ID: "handling-damage", Text: "a scratch across two wafers", Wafers: []int{3, 4}, Share: 0.85, Damage: Wreck,
-			Place: Place{Shape: Line, From: [2]float64{-0.55, -0.70}, To: [2]float64{0.62, 0.35}, Width: 0.035}},
-		Cause{ID: "edge-dice", Text: "edge ring of three wafers", Wafers: []int{17, 18, 22}, Share: 0.7, Damage: Wreck,
-			Place: Place{Shape: Ring, Inner: 0.78, Outer: 0.90}},
+			Place: Place{Shape: Line, From: [2]float64{-0.60, -0.72}, To: [2]float64{0.66, 0.42}, Width: 0.05}},
+		Cause{ID: "edge-dice", Text: "edge ring of three wafers", Wafers: []int{17, 18, 22}, Share: 0.8, Damage: Wreck,
+			Place: Place{Shape: Ring, Inner: 0.76, Outer: 0.88}},
 		Cause{ID: "probe-contact", Text: "site 3 without contact for part of four wafers", Wafers: []int{13, 14, 15, 16},
-			Share: 0.35, Damage: Open, Recover: 0.9, Place: Place{Sites: []int{3}, Between: [2]float64{0.3, 0.8}}},
+			Share: 0.45, Damage: Open, Recover: 0.9, Place: Place{Sites: []int{3}, Between: [2]float64{0.3, 0.8}}},
 	)
 	return s
 }
@@ -126,7 +129,7 @@ func demoHistory(wafers int) []History {
 // BenchSpec returns the lot that speed is measured on: 25 wafers of 150 mm with
 // 88,000 dice each and 8 tests, 2.2 million rows and about 195 MB as wide text.
 func BenchSpec() Spec {
-	s := Demo()
+	s := DemoSpec()
 	s.Lot = "KP5T-9000"
 	s.Grid = Grid{DiameterMM: 150, EdgeExclusionMM: 3, DicePerWafer: 88000, SiteColumns: 4, SiteRows: 1}
 	s.Tests = s.Tests[:8]

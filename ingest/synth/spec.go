@@ -1,6 +1,6 @@
 package synth
 
-// Spec says what lot to make. The zero value makes nothing; start from [Demo],
+// Spec says what lot to make. The zero value makes nothing; start from [DemoSpec],
 // [BenchSpec] or [FromProduct].
 type Spec struct {
 	Product string

@@ -1,0 +1,141 @@
+package synth
+
+import (
+	"bytes"
+	"flag"
+	"fmt"
+	"math"
+	"os"
+	"slices"
+	"strconv"
+	"strings"
+	"testing"
+
+	"gonum.org/v1/gonum/stat"
+)
+
+var update = flag.Bool("update", false, "rewrite the baseline of demo.yaml from healthy lots")
+
+// level is one test's baseline, as the product file has it.
+type level struct{ median, sigma, within, lot float64 }
+
+// healthyLevels makes healthy lots of the demo and measures what a baseline
+// says: the median and robust spread of passing dice pooled over lots, the
+// robust spread within a lot (root mean square over lots), and the standard
+// deviation of lot medians.
+func healthyLevels(lots int) (levels []level, yield float64) {
+	s := DemoSpec().Healthy()
+	s.Grid.DieWidthMM, s.Grid.DieHeightMM = 7, 7 // the same wafer, seen at fewer places
+	n := len(s.Tests)
+	pooled, medians, spreads := make([][]float64, n), make([][]float64, n), make([]float64, n)
+	for seed := range lots {
+		l := s.Generate(uint64(seed))
+		for t := range s.Tests {
+			var v []float64
+			for i := range l.Wafers {
+				w := &l.Wafers[i]
+				for _, row := range w.Final() {
+					if x := w.Values[t][row]; s.PassBin(int(w.HardBin[row])) && !math.IsNaN(x) {
+						v = append(v, x)
+					}
+				}
+			}
+			m, sd := robust(v)
+			medians[t] = append(medians[t], m)
+			spreads[t] += sd * sd / float64(lots)
+			pooled[t] = append(pooled[t], v...)
+		}
+	}
+	for t := range pooled {
+		m, sd := robust(pooled[t])
+		levels = append(levels, level{m, sd, math.Sqrt(spreads[t]), stat.StdDev(medians[t], nil)})
+	}
+	whole := DemoSpec().Healthy()
+	for seed := range uint64(4) {
+		yield += whole.Generate(seed).Yield() / 4
+	}
+	return levels, yield
+}
+
+// robust returns the median and the scaled median absolute deviation; it sorts
+// a copy.
+func robust(v []float64) (median, sigma float64) {
+	v = slices.Clone(v)
+	slices.Sort(v)
+	median = stat.Quantile(0.5, stat.LinInterp, v, nil)
+	for i := range v {
+		v[i] = math.Abs(v[i] - median)
+	}
+	slices.Sort(v)
+	return median, 1.4826 * stat.Quantile(0.5, stat.LinInterp, v, nil)
+}
+
+// TestDemoBaseline holds the demo's product file to the generator. Pure
+// structure: both are ours.
+func TestDemoBaseline(t *testing.T) {
+	levels, yield := healthyLevels(120)
+	if *update {
+		if err := os.WriteFile("demo.yaml", rewriteBaseline([]byte(DemoProductYAML), levels, yield), 0o666); err != nil {
+			t.Fatal(err)
+		}
+		return
+	}
+	inFile := yamlBaseline(t, DemoProductYAML)
+	if got := inFile["yield"]["yield"]; math.Abs(got-yield) > 0.006 {
+		t.Errorf("yield %.3f in the file, %.4f generated", got, yield)
+	}
+	for i, test := range demoTests() {
+		got, want := inFile[test.Name], levels[i]
+		if math.Abs(got["median"]-want.median) > 0.1*want.sigma+test.Resolution {
+			t.Errorf("%s: median %v in the file, %v generated", test.Name, got["median"], want.median)
+		}
+		for key, want := range map[string]float64{"sigma": want.sigma, "within_lot_sigma": want.within, "lot_sigma": want.lot} {
+			// 120 lots know the spread between lots to 6.5 %.
+			if tol := map[bool]float64{false: 0.05, true: 0.2}[key == "lot_sigma"]; math.Abs(got[key]/want-1) > tol {
+				t.Errorf("%s: %s %v in the file, %.4g generated", test.Name, key, got[key], want)
+			}
+		}
+	}
+}
+
+func rewriteBaseline(file []byte, levels []level, yield float64) []byte {
+	head, _, _ := bytes.Cut(file, []byte("\nbaseline:"))
+	out := bytes.NewBuffer(bytes.Clone(head))
+	fmt.Fprintf(out, "\nbaseline:   # computed from healthy lots of the generator\n  yield: %.3f\n  tests:\n", yield)
+	for i, test := range demoTests() {
+		l := levels[i]
+		fmt.Fprintf(out, "    %-7s {median: %s, sigma: %s, within_lot_sigma: %s, lot_sigma: %s}\n", test.Name+":",
+			digits(l.median, 4), digits(l.sigma, 3), digits(l.within, 3), digits(l.lot, 3))
+	}
+	return out.Bytes()
+}
+
+func digits(v float64, n int) string {
+	rounded, _ := strconv.ParseFloat(strconv.FormatFloat(v, 'e', n-1, 64), 64)
+	return strconv.FormatFloat(rounded, 'f', -1, 64)
+}
+
+// yamlBaseline reads the baseline's flow mappings; the full reader is config's.
+func yamlBaseline(t *testing.T, text string) map[string]map[string]float64 {
+	t.Helper()
+	_, block, ok := strings.Cut(text, "\nbaseline:")
+	if !ok {
+		t.Fatal("demo.yaml has no baseline")
+	}
+	out := map[string]map[string]float64{}
+	for line := range strings.Lines(block) {
+		name, rest, _ := strings.Cut(strings.TrimSpace(line), ":")
+		m := map[string]float64{}
+		for _, pair := range strings.Split(strings.Trim(strings.TrimSpace(rest), "{}"), ",") {
+			k, v, ok := strings.Cut(pair, ":")
+			if !ok {
+				k, v = name, pair
+			}
+			if x, err := strconv.ParseFloat(strings.TrimSpace(v), 64); err == nil {
+				m[strings.TrimSpace(k)] = x
+			}
+		}
+		out[name] = m
+	}
+	return out
+}
