@@ -12,11 +12,15 @@ type index struct {
 	far                   map[uint64]int32
 }
 
-// A table may hold this many cells for each die, and this many in any case.
-// Sampled maps of one die in 64 still get one; 150,000 dice take 40 MB at most.
+// A table over all dice may hold cellsPerDie cells for each die. Where stray
+// dice would make it larger it is laid over the bulk of them, and may then be
+// thinnerCells a die: sampled maps of one die in 64 still get one. Small tables
+// are allowed in any case, and none is larger than cellsAtMost (32 MB).
 const (
-	cellsPerDie = 64
-	cellsAnyway = 1 << 14
+	cellsPerDie  = 4
+	thinnerCells = 64
+	cellsAnyway  = 1 << 14
+	cellsAtMost  = 1 << 23
 )
 
 // newIndex lays out the table for the placed dice of x and y without filling it.
@@ -26,11 +30,11 @@ func newIndex(x, y []int32, margin int) *index {
 	if n == 0 {
 		return ix
 	}
-	limit := min(cellsPerDie*float64(n)+cellsAnyway, 1<<24)
-	if box.grown(margin).area() > limit {
+	limit := func(perDie int) float64 { return min(float64(perDie)*float64(n)+cellsAnyway, cellsAtMost) }
+	if box.grown(margin).area() > limit(cellsPerDie) {
 		box = bulk(x, y)
 	}
-	if box = box.grown(margin); box.area() > limit {
+	if box = box.grown(margin); box.area() > limit(thinnerCells) {
 		return ix
 	}
 	ix.x0, ix.y0 = box.X0, box.Y0
@@ -109,9 +113,10 @@ func span(x, y []int32) (extent, int) {
 }
 
 // bulk returns the box that holds the dice but for coordinates far away from all
-// others: those more than twice the 90 % distance from the median, along either
-// axis. On a disc the 90 % point of |x - median| lies at 0.8 radii, on half a
-// disc at more than half its width, so that no die of a wafer is cut off.
+// others: those more than three times the 75 % distance from the median away, along
+// either axis. On a disc the 75 % point of |x - median| lies at 0.64 radii, on half
+// a disc at a third of its width, so that no die of a wafer is cut off; and up to a
+// quarter of the coordinates may be wrong.
 func bulk(x, y []int32) extent {
 	n := 0
 	for i := range x {
@@ -163,6 +168,6 @@ func bulkRange(v []int) (lo, hi int) {
 		}
 	}
 	slices.Sort(away)
-	reach := 2*away[min(len(away)-1, len(away)*9/10)] + 3
+	reach := 3*away[min(len(away)-1, len(away)*3/4)] + 3
 	return median - reach, median + reach
 }
