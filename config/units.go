@@ -3,14 +3,16 @@ package config
 import (
 	"math"
 	"strconv"
+	"strings"
 )
 
 // Unit is a unit of measurement as written in a file: an SI prefix on one of
 // V, A, ohm, F, s, Hz, m, W, a temperature in degrees Celsius, or a ratio.
 //
-// The prefix is kept as a power of ten so that conversion divides or
-// multiplies by an exactly representable power: 4.2 nA reads as the float64
-// nearest to 4.2/1e9, and shows as 4.2 again.
+// The prefix is kept as a power of ten so that conversion moves the decimal
+// point exactly: 4.2 nA reads as the float64 nearest to 4.2e-9, and shows as 4.2
+// again. Convert with ToSI and FromSI, never with a factor of one's own: two
+// ways of rounding would part a reading from the limit that it equals.
 type Unit struct {
 	Text string // as written, for showing: "nA", "uA", "ohm", "" for a ratio
 	Base string // "V", "A", "ohm", "F", "s", "Hz", "m", "W", "degC", "ratio"; "" for the zero value (not given)
@@ -32,13 +34,25 @@ func (u Unit) String() string { return u.Text }
 
 // ToSI converts a value in u to the base unit: v times 10^Exp.
 //
-// Rule: a negative Exp divides by 10^-Exp, a positive one multiplies by 10^Exp.
-// Powers of ten up to 10^22 are exact in float64 and 10^-9 is not, so this is
-// one correctly rounded operation, where v*1e-9 would be rounded twice.
+// Rule: the decimal point moves. A v that is a decimal of up to 15 significant
+// digits, which is what files hold, becomes the float64 nearest to the shifted
+// decimal, so that 0.01 nA, 10 pA and 1e-11 A are one and the same number and a
+// reading at a limit is at it in any unit. (0.01/1e9 is the float64 above 1e-11.)
+// Any other v is multiplied or divided by an exact power of ten, one rounding.
 //
 // NaN and infinities pass through. A unit that is not given leaves v as it is;
 // degrees Celsius stay degrees Celsius.
-func (u Unit) ToSI(v float64) float64 { return scale10(v, u.Exp) }
+func (u Unit) ToSI(v float64) float64 {
+	if u.Exp == 0 {
+		return v
+	}
+	// Most readings have at most six decimals: n has up to 15 digits, n/1e6 is v, so
+	// the one operation on n is correctly rounded and is the decimal shifted.
+	if n := math.Round(v * 1e6); n/1e6 == v && math.Abs(n) < 1e15 && u.Exp >= -16 {
+		return scale10(n, u.Exp-6)
+	}
+	return shiftDecimal(v, u.Exp)
+}
 
 // FromSI converts a value in the base unit to u: v times 10^-Exp.
 //
@@ -80,21 +94,54 @@ func scale10(v float64, e int) float64 {
 	return v * math.Pow10(e)
 }
 
-// round15 rounds to 15 significant decimal digits, the most that every float64
-// keeps. The digits are made an integer below 2^53, so the one division or
-// multiplication that scales it back is correctly rounded and gives the same
-// float64 as parsing the decimal would. Below about 1e-8 and above 1e36 it
-// would take a power of ten that is not exact; the decimal is parsed there,
-// which is slower.
-func round15(v float64) float64 {
+// digits15 splits v into an integer of 15 digits and the power of ten that
+// divides it: v is about n / 10^e. ok is false outside 1e-7 to 1e36, where the
+// power would not be exact.
+func digits15(v float64) (n float64, e int, ok bool) {
 	a := math.Abs(v)
 	if !(a > 1e-7 && a < 1e36) {
-		t, err := strconv.ParseFloat(strconv.FormatFloat(v, 'e', 14, 64), 64)
-		if err != nil {
-			return v
-		}
-		return t
+		return 0, 0, false
 	}
-	e := 14 - int(math.Floor(math.Log10(a)))
-	return scale10(math.Round(scale10(v, e)), -e)
+	e = 14 - int(math.Floor(math.Log10(a)))
+	return math.Round(scale10(v, e)), e, true
+}
+
+// round15 rounds to 15 significant decimal digits, the most that every float64
+// keeps. Scaling the integer back is correctly rounded, so the result is what
+// parsing the decimal would give; where it is not, the decimal is parsed.
+func round15(v float64) float64 {
+	if n, e, ok := digits15(v); ok {
+		return scale10(n, -e)
+	}
+	t, err := strconv.ParseFloat(strconv.FormatFloat(v, 'e', 14, 64), 64)
+	if err != nil {
+		return v
+	}
+	return t
+}
+
+// shiftDecimal is ToSI for values that need more care than six decimals do.
+func shiftDecimal(v float64, shift int) float64 {
+	if v == 0 || math.IsNaN(v) || math.IsInf(v, 0) {
+		return v
+	}
+	if n, e, ok := digits15(v); ok {
+		if scale10(n, -e) != v {
+			return scale10(v, shift) // more than 15 digits
+		}
+		for e-shift >= len(pow10) && math.Mod(n, 10) == 0 {
+			n, e = n/10, e-1
+		}
+		if shift-e < len(pow10) && e-shift < len(pow10) {
+			return scale10(n, shift-e)
+		}
+	}
+	s := strconv.FormatFloat(v, 'e', -1, 64)
+	mantissa, exp, _ := strings.Cut(s, "e")
+	if e, err := strconv.Atoi(exp); err == nil && len(strings.TrimLeft(mantissa, "-")) <= 16 { // 15 digits and a point
+		if t, err := strconv.ParseFloat(mantissa+"e"+strconv.Itoa(e+shift), 64); err == nil {
+			return t
+		}
+	}
+	return scale10(v, shift)
 }

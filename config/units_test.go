@@ -115,7 +115,7 @@ func TestToSI(t *testing.T) {
 		unit string
 		want float64
 	}{
-		{4.2, "nA", 4.2 / 1e9}, {10, "uA", 1e-5}, {3.6, "pF", 3.6e-12}, {10, "kohm", 1e4}, {1, "MHz", 1e6},
+		{4.2, "nA", 4.2e-9}, {10, "uA", 1e-5}, {3.6, "pF", 3.6e-12}, {10, "kohm", 1e4}, {1, "MHz", 1e6},
 		{5, "%", 0.05}, {150, "angstrom", 1.5e-8}, {0.12, "V", 0.12}, {70, "", 70}, {-3, "mV", -0.003}, {25, "degC", 25},
 	} {
 		u, err := ParseUnit(c.unit)
@@ -137,32 +137,59 @@ func TestToSI(t *testing.T) {
 	}
 }
 
-// Every decimal of up to 15 digits comes back as it was written, in every unit.
-func TestFromSIShowsWhatWasWritten(t *testing.T) {
+// Every decimal of up to 15 digits becomes the float64 nearest to the shifted
+// decimal (strconv parses decimals correctly rounded), and comes back as written.
+func TestConversionMovesTheDecimalPoint(t *testing.T) {
 	r := rand.New(rand.NewPCG(1, 2))
-	exps := []int{-15, -12, -10, -9, -6, -3, -2, 0, 3, 6, 9}
+	exps := []int{-15, -12, -10, -9, -6, -3, -2, 0, 3, 6, 9, -20, 20}
 	plain := 0
-	for i := range 400_000 {
+	const tries = 400_000
+	for i := range tries {
 		digits := 1 + r.IntN(15)
-		n := r.Int64N(int64(math.Pow10(digits)))
-		v, err := strconv.ParseFloat(strconv.FormatInt(n, 10)+"e"+strconv.Itoa(r.IntN(20)-digits-5), 64)
-		if err != nil {
-			t.Fatal(err)
+		mantissa := strconv.FormatInt(r.Int64N(int64(math.Pow10(digits))), 10)
+		e := r.IntN(26) - digits - 11
+		parse := func(e int) float64 {
+			v, err := strconv.ParseFloat(mantissa+"e"+strconv.Itoa(e), 64)
+			if err != nil {
+				t.Fatal(err)
+			}
+			return v
 		}
+		v := parse(e)
 		u := Unit{"", "A", exps[i%len(exps)]}
-		if got := u.FromSI(u.ToSI(v)); got != v {
+		si := u.ToSI(v)
+		if want := parse(e + u.Exp); si != want {
+			t.Fatalf("%v with exponent %d is %v, want %v", v, u.Exp, si, want)
+		}
+		if got := u.FromSI(si); got != v {
 			t.Fatalf("%v with exponent %d came back as %v", v, u.Exp, got)
 		}
-		if scale10(u.ToSI(v), -u.Exp) == v {
+		if scale10(v, u.Exp) == si {
 			plain++
 		}
 	}
-	if plain == 400_000 {
-		t.Error("the plain product was always right: this test cannot fail")
+	if plain == tries {
+		t.Error("a plain product was always right: this test cannot fail")
 	}
 	u := Unit{"nA", "A", -9}
 	if s := strconv.FormatFloat(u.FromSI(u.ToSI(4.2)), 'g', -1, 64); s != "4.2" {
 		t.Errorf("4.2 nA shows as %s", s)
+	}
+}
+
+// A reading at a limit is at it whatever the units of the two.
+func TestSameValueInAnyUnit(t *testing.T) {
+	for _, c := range []struct {
+		a  float64
+		ua string
+		b  float64
+		ub string
+	}{{0.01, "nA", 10, "pA"}, {0.01, "nA", 1e-11, "A"}, {0.07, "mA", 70, "uA"}, {120, "mV", 0.12, "V"}, {3.6, "pF", 0.0036, "nF"}, {7, "%", 0.07, ""}} {
+		ua, _ := ParseUnit(c.ua)
+		ub, _ := ParseUnit(c.ub)
+		if x, y := ua.ToSI(c.a), ub.ToSI(c.b); x != y {
+			t.Errorf("%v %s is %v, %v %s is %v", c.a, c.ua, x, c.b, c.ub, y)
+		}
 	}
 }
 
@@ -218,6 +245,15 @@ func BenchmarkToSI(b *testing.B) {
 	s := 0.0
 	for i := 0; b.Loop(); i++ {
 		s += u.ToSI(float64(i))
+	}
+	sink = s
+}
+
+func BenchmarkToSILongDigits(b *testing.B) {
+	u := Unit{"nA", "A", -9}
+	s := 0.0
+	for i := 0; b.Loop(); i++ {
+		s += u.ToSI(math.Sqrt(float64(i)))
 	}
 	sink = s
 }
