@@ -4,9 +4,9 @@ import "math"
 
 // Cause is one thing that went wrong, or that always goes a little wrong.
 //
-// It acts in one or both of two ways on the dice of its wafers: it shifts
-// latents by Shift, in proportion to its strength at the die; and it does Damage
-// to single dice. With Share 0 every die in place feels the shift; with a Share,
+// It acts on the dice of its wafers in any of three ways: it shifts latents by
+// Shift, in proportion to its strength at the die; it does Damage to the die; or
+// a Fault of the tester distorts one reading. With Share 0 every die in place feels the shift; with a Share,
 // only the dice that chance picks are shifted or damaged.
 type Cause struct {
 	ID        string // of the catalogue: epi-thickness, handling-damage, edge-dice ...
@@ -28,6 +28,9 @@ type Cause struct {
 	Scatter float64 // spread of the shift from hit die to hit die (lognormal sigma)
 	Damage  Damage
 
+	// Fault distorts one test's reading on the dice in place.
+	Fault *Fault
+
 	// Recover is the chance that the damage is gone when the die is measured
 	// again: a bad contact recovers, a scratch does not.
 	Recover float64
@@ -45,6 +48,25 @@ const (
 	Defect              // a point defect: Short, EmitterShort or heavy leakage by chance
 	Wreck               // Short, EmitterShort or Open by chance
 )
+
+// Fault is a tester that reads one test wrongly: a wrong range, scale or offset.
+type Fault struct {
+	Test   string
+	Factor float64 // 0 counts as 1
+	Offset float64 // in the test's unit
+	Top    float64 // readings end here; 0: no end of its own
+}
+
+func (f *Fault) apply(v float64) float64 {
+	if f.Factor != 0 {
+		v *= f.Factor
+	}
+	v += f.Offset
+	if f.Top != 0 {
+		v = min(v, f.Top)
+	}
+	return v
+}
 
 // Shape is the pattern of a Place.
 type Shape int

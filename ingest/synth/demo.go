@@ -21,7 +21,7 @@ var none = math.NaN()
 // reaching the substrate before it breaks down.
 func reachThrough() Device {
 	return Device{EpiThicknessUM: 3.3, EpiResistivityOhmCM: 1.72, BaseDepthUM: 0.75,
-		UpDiffusionUM: 0.05, SubstrateCM3: 1e19, EmitterAreaUM2: 20000}
+		UpDiffusionUM: 0.05, SubstrateCM3: 1e19, EmitterDepthUM: 0.25, EmitterAreaUM2: 20000}
 }
 
 // typicalSpread is how far a well-kept line strays. Common practice, no source.
@@ -83,23 +83,23 @@ func Demo() *Lot { return DemoSpec().Generate(DemoSeed) }
 
 // DemoSpec describes the invented lot that kneepoint shows what it does on: 25 wafers
 // of 100 mm of the reach-through array chip MP-N24. One load of the epi reactor
-// came out thin towards the rim, two wafers were scratched, three have a strong
+// came out thin in the middle, two wafers were scratched, three have a strong
 // edge ring, and one prober site had contact trouble for a while.
 func DemoSpec() Spec {
 	s := Spec{
 		Product: "MP-N24", Lot: "KP5T-0417", Wafers: 25,
 		Grid: Grid{DiameterMM: 100, DieWidthMM: 2.2, DieHeightMM: 2.2, EdgeExclusionMM: 3,
 			SiteColumns: 4, SiteRows: 1, ShotColumns: 8, ShotRows: 8},
-		Device: reachThrough(), Laws: DefaultLaws(), Spread: typicalSpread(), Tests: demoTests(),
+		Device: reachThrough(), Laws: DefaultLaws(reachThrough()), Spread: typicalSpread(), Tests: demoTests(),
 		Grades:    []Grade{{1, 115, 145}, {2, 80, 115}, {3, 145, 250.05}},
 		GradeTest: "HFE2",
 		Retest:    0.3, Repeat: 0.002, Missing: 0.0006,
 		History: demoHistory(25),
 	}
 	s.Causes = append(background(),
-		Cause{ID: "epi-thickness", Direction: "low", Text: "one reactor load thin towards the rim",
+		Cause{ID: "epi-thickness", Direction: "low", Text: "one reactor load thin in the middle",
 			Wafers: []int{6, 7, 8, 9, 10, 11}, Sizes: []float64{0.8, 1, 1.1, 1.05, 0.95, 0.85},
-			Place: Place{Shape: Rim}, Shift: Process{EpiThickness: -0.20}},
+			Place: Place{Shape: Centre, Outer: 1.1}, Shift: Process{EpiThickness: -0.165}},
 		Cause{ID: "handling-damage", Text: "a scratch across two wafers", Wafers: []int{3, 4}, Share: 0.85, Damage: Wreck,
 			Place: Place{Shape: Line, From: [2]float64{-0.60, -0.72}, To: [2]float64{0.66, 0.42}, Width: 0.05}},
 		Cause{ID: "edge-dice", Text: "edge ring of three wafers", Wafers: []int{17, 18, 22}, Share: 0.8, Damage: Wreck,
@@ -130,9 +130,12 @@ func demoHistory(wafers int) []History {
 // 88,000 dice each and 8 tests, 2.2 million rows and about 195 MB as wide text.
 func BenchSpec() Spec {
 	s := DemoSpec()
-	s.Lot = "KP5T-9000"
+	s.Lot = "KP5T-9000-FULL"
 	s.Grid = Grid{DiameterMM: 150, EdgeExclusionMM: 3, DicePerWafer: 88000, SiteColumns: 4, SiteRows: 1}
 	s.Tests = s.Tests[:8]
+	for i, resolution := range map[int]float64{3: 1e-4, 6: 1e-5, 7: 1e-4} {
+		s.Tests[i].Resolution = resolution
+	}
 	s.Retest, s.Repeat, s.Missing = 0, 0, 0
 	return s
 }

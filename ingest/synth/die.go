@@ -95,6 +95,13 @@ func (d *die) measure(attempt uint64) {
 	copy(d.spoiled, d.ideal)
 	for i := range d.causes {
 		a := &d.causes[i]
+		if f := a.cause.Fault; f != nil && d.hit(a) != 0 {
+			for t := range d.spoiled {
+				if d.fab.spec.Tests[t].Name == f.Test {
+					d.spoiled[t] = f.apply(d.spoiled[t])
+				}
+			}
+		}
 		if a.cause.Recover == 0 || a.cause.Damage == NoDamage || d.hit(a) == 0 {
 			continue
 		}
@@ -105,7 +112,7 @@ func (d *die) measure(attempt uint64) {
 	}
 	noise := d.key.at(dieNoise + attempt)
 	for t := range f.spec.Tests {
-		d.reading[t] = read(&f.spec.Tests[t], d.spoiled[t], f.offset[d.at.site-1][t], noise.at(f.names[t]))
+		d.reading[t] = read(&f.spec.Tests[t], d.spoiled[t], f.offset[d.at.site-1][t], f.scale[t], noise.at(f.names[t]))
 	}
 	d.bin()
 	if f.spec.Missing > 0 {
@@ -118,8 +125,10 @@ func (d *die) measure(attempt uint64) {
 	}
 }
 
-// read is what the tester returns for an ideal value.
-func read(t *Test, v, offset float64, k key) float64 {
+// read is what the tester returns for an ideal value: the float64 nearest to the
+// decimal that is printed, so that a reader of the text holds the same value
+// against the limits.
+func read(t *Test, v, offset, scale float64, k key) float64 {
 	if !math.IsInf(v, 0) {
 		v *= 1 + offset
 		v += math.Hypot(t.Noise, t.Gauge*v) * k.normal()
@@ -134,6 +143,9 @@ func read(t *Test, v, offset float64, k key) float64 {
 	}
 	if t.Resolution > 0 {
 		v = math.Round(v/t.Resolution) * t.Resolution
+		if scale > 0 {
+			v = math.Round(v*scale) / scale
+		}
 	}
 	return v
 }

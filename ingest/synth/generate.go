@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"runtime"
+	"slices"
 	"sync"
 	"sync/atomic"
 )
@@ -34,15 +35,15 @@ func parallel(n int, do func(i int)) {
 
 // fab is a spec made ready: what is the same for all wafers.
 type fab struct {
-	spec    *Spec
-	seed    uint64
-	dice    []place
-	model   *model
-	lot     Process     // lot level
-	names   []uint64    // of the tests, as keys
-	offset  [][]float64 // [site-1][test], share of the value
-	decimal []float64   // 1 / resolution
-	grade   int         // index of the grade test, -1 without
+	spec   *Spec
+	seed   uint64
+	dice   []place
+	model  *model
+	lot    Process     // lot level
+	names  []uint64    // of the tests, as keys
+	offset [][]float64 // [site-1][test], share of the value
+	scale  []float64   // power of ten at which a reading is a whole number, 0 for none
+	grade  int         // index of the grade test, -1 without
 }
 
 func newFab(s *Spec, seed uint64) *fab {
@@ -61,6 +62,11 @@ func newFab(s *Spec, seed uint64) *fab {
 	}
 	for t, test := range s.Tests {
 		f.names = append(f.names, nameKey(test.Name))
+		scale := 0.0
+		if d := Decimals(test.Resolution); d >= 0 {
+			scale = math.Pow10(d)
+		}
+		f.scale = append(f.scale, scale)
 		for site := range f.offset {
 			k := root(seed).at(branchSite).at(uint64(site)).at(f.names[t])
 			f.offset[site][t] = test.SiteOffset * k.normal()
@@ -69,10 +75,19 @@ func newFab(s *Spec, seed uint64) *fab {
 			f.grade = t
 		}
 	}
+	for i := range s.Causes {
+		if fault := s.Causes[i].Fault; fault != nil && !s.hasTest(fault.Test) {
+			panic(fmt.Sprintf("synth: fault of test %q, which is not in the program", fault.Test))
+		}
+	}
 	if len(s.Grades) > 0 && f.grade < 0 {
 		panic(fmt.Sprintf("synth: grade test %q is not in the program", s.GradeTest))
 	}
 	return f
+}
+
+func (s *Spec) hasTest(name string) bool {
+	return slices.ContainsFunc(s.Tests, func(t Test) bool { return t.Name == name })
 }
 
 // smooth is one latent on one wafer: level and the shape within.

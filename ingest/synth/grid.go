@@ -108,27 +108,47 @@ func (g Grid) layout() (dice []place, widthMM, heightMM float64) {
 // whole returns the dice that lie with all four corners within the radius;
 // u, v and r in millimetres.
 func whole(usable, w, h float64) []place {
-	var dice []place
-	top := int32(usable/h) + 1
-	right := int32(usable/w) + 1
-	for y := -top; y <= top; y++ {
+	dice := make([]place, 0, countWhole(usable, w, h))
+	eachRow(usable, w, h, func(y, right int32) {
 		for x := -right; x <= right; x++ {
 			u, v := float64(x)*w, float64(y)*h
-			if math.Hypot(math.Abs(u)+w/2, math.Abs(v)+h/2) <= usable {
-				dice = append(dice, place{x: x, y: y, u: u, v: v, r: math.Hypot(u, v)})
-			}
+			dice = append(dice, place{x: x, y: y, u: u, v: v, r: math.Hypot(u, v)})
+		}
+	})
+	return dice
+}
+
+// countWhole is len(whole) without making the dice.
+func countWhole(usable, w, h float64) int {
+	n := 0
+	eachRow(usable, w, h, func(_, right int32) { n += int(2*right + 1) })
+	return n
+}
+
+// eachRow calls do for each row of dice with the last column that is whole.
+func eachRow(usable, w, h float64, do func(y, right int32)) {
+	top := int32(usable / h)
+	for y := -top; y <= top; y++ {
+		corner := (math.Abs(float64(y)) + 0.5) * h
+		half := usable*usable - corner*corner
+		if half < 0 {
+			continue
+		}
+		if right := math.Floor(math.Sqrt(half)/w - 0.5); right >= 0 {
+			do(y, int32(right))
 		}
 	}
-	return dice
 }
 
 // pitchFor finds the largest square die of which n whole ones fit, to 0.1 %.
 func pitchFor(usable float64, n int) float64 {
-	count := func(p float64) int { return len(whole(usable, p, p)) }
 	hi := usable * math.Sqrt(math.Pi/float64(n))
 	lo := hi / 2
+	for countWhole(usable, lo, lo) < n { // a handful of dice wastes most of the wafer
+		lo /= 2
+	}
 	for hi/lo > 1.001 {
-		if mid := (lo + hi) / 2; count(mid) >= n {
+		if mid := (lo + hi) / 2; countWhole(usable, mid, mid) >= n {
 			lo = mid
 		} else {
 			hi = mid

@@ -3,9 +3,8 @@ package synth
 import "math"
 
 // Laws holds the slopes that turn latents into ideal readings. The defaults
-// ([DefaultLaws]) follow a numerical reference model of a reach-through device
-// (its Jacobian for a 20 V transistor); a rehearsal that must not lean on them
-// draws others around these.
+// ([DefaultLaws]) follow a numerical reference model; a rehearsal that must not
+// lean on them draws others around these.
 type Laws struct {
 	// CriticalField is d ln Ec / d ln Nd of the field at breakdown: 0.1 makes
 	// BVceo go as Nd^-0.8 where the epi is thick.
@@ -44,19 +43,38 @@ type Laws struct {
 	LeakDouble, GainTemperature float64
 }
 
-// DefaultLaws returns the slopes of the reference model: reference note on the
-// physics of epi transistors, sections 2 to 5 (device B, 20 V, reach-through).
-func DefaultLaws() Laws {
-	l := Laws{
-		CriticalField: 0.1, Gain: -0.18, BVEBODose: -0.16, ChargeBVCBO: 0.0121, PlaneRatio: 1.58,
-		Stray: 0.14, Modulation: 0.4, CollectorW: 0.92, CollectorN: -0.56, FixedResistance: 0.3,
-		Recombination: 0.073, SurfaceShare: 0.0016, SurfaceLeak: 0.0076, GenerationWidth: 0.35,
-		LeakMiller: 6, LeakDouble: 10, GainTemperature: 0.006,
+// DefaultLaws returns the slopes of the reference model for a device.
+//
+// Source: the reference note on the physics of epi transistors, sections 2 to 5,
+// whose Jacobians are of two devices: a narrow base that reaches through (0.5 um,
+// about 20 V) and a wide one that does not (0.95 um, about 47 V). Slopes between
+// are interpolated on the base width, those outside stay at the nearer device.
+func DefaultLaws(d Device) Laws {
+	wide := 0.0
+	if d.EmitterDepthUM > 0 {
+		wide = min(max((d.BaseDepthUM-d.EmitterDepthUM-0.5)/0.45, 0), 1)
 	}
-	l.HFE[EpiDoping], l.HFE[BaseDose], l.HFE[BaseDepth] = -0.20, -0.70, -2.85
-	l.HFE[EmitterDepth], l.HFE[EmitterGummel] = 1.79, 0.99
-	l.BVCBO[EpiDoping], l.BVCBO[BaseDepth], l.BVCBO[EdgeRadius] = -0.19, 0.45, 0.45
-	l.Pinch[EpiDoping], l.Pinch[BaseDose], l.Pinch[BaseDepth], l.Pinch[EmitterDepth] = -0.16, -0.52, -2.62, 1.52
+	between := func(narrow, wider float64) float64 { return narrow + wide*(wider-narrow) }
+	l := Laws{
+		CriticalField: 0.1, Gain: -0.18, BVEBODose: between(-0.16, -0.26),
+		ChargeBVCBO: between(0.0121, 0.0200), PlaneRatio: between(1.58, 2.77),
+		Stray: between(0.14, 0.20), Modulation: 0.4, CollectorW: between(0.92, 0.98),
+		CollectorN: between(-0.56, -0.88), FixedResistance: 0.3,
+		Recombination: between(0.073, 0.10), SurfaceShare: 0.0164, SurfaceLeak: 0.0076,
+		GenerationWidth: 0.35, LeakMiller: 6, LeakDouble: 10, GainTemperature: 0.006,
+	}
+	l.HFE[EpiDoping] = between(-0.20, -0.14)
+	l.HFE[BaseDose] = between(-0.70, -0.75)
+	l.HFE[BaseDepth] = between(-2.85, -1.91)
+	l.HFE[EmitterDepth] = between(1.79, 0.89)
+	l.HFE[EmitterGummel] = 0.99
+	l.BVCBO[EpiDoping] = between(-0.19, -0.15)
+	l.BVCBO[BaseDepth] = between(0.45, 0.50)
+	l.BVCBO[EdgeRadius] = between(0.45, 0.50)
+	l.Pinch[EpiDoping] = between(-0.16, -0.12)
+	l.Pinch[BaseDose] = between(-0.52, -0.57)
+	l.Pinch[BaseDepth] = between(-2.62, -1.81)
+	l.Pinch[EmitterDepth] = between(1.52, 0.77)
 	return l
 }
 
@@ -66,6 +84,7 @@ const (
 	builtIn   = 0.7                 // V: breakdown and depletion see the applied voltage and this
 	tail      = 4.0                 // up-diffusion lengths of the substrate's tail that are depleted at high bias
 	baseGives = 1.0 / 3             // of the base depth is depleted at high bias
+	epiShare  = 0.88                // of the junction's potential falls in the epi, the rest in the graded base
 	minNet    = 0.02e-4             // cm: where base and substrate touch
 )
 
@@ -120,10 +139,10 @@ func newModel(s *Spec) *model {
 		switch t.Measures {
 		case "bvceo":
 			m.bvceo, m.hasCEO = t.Typical, true
-			m.ecCEO = fieldFor(m.w0, m.n0, t.Typical+builtIn)
+			m.ecCEO = fieldFor(m.reach(m.w0), m.n0, epiShare*(t.Typical+builtIn))
 		case "bvcbo":
 			m.bvcbo, m.hasCBO = t.Typical, true
-			m.ecCBO = fieldFor(m.w0, m.n0, t.Typical*m.laws.PlaneRatio+builtIn)
+			m.ecCBO = fieldFor(m.reach(m.w0), m.n0, epiShare*(t.Typical*m.laws.PlaneRatio+builtIn))
 		case "vcesat":
 			ohm := m.dev.EpiResistivityOhmCM * m.w0 / (m.dev.EmitterAreaUM2 * 1e-8)
 			m.satShare = min(m.laws.Modulation*ohm*t.Bias/t.Typical, 0.8)
@@ -136,12 +155,18 @@ func newModel(s *Spec) *model {
 // net is the net epi under the base, cm.
 func (m *model) net(p *Process) float64 {
 	lam := m.dev.UpDiffusionUM * math.Exp(p[UpDiffusion])
-	w := m.dev.EpiThicknessUM*math.Exp(p[EpiThickness]) - m.dev.BaseDepthUM*math.Exp(p[BaseDepth])
+	w := m.dev.EpiThicknessUM*math.Exp(p[EpiThickness]) - m.dev.SiliconConsumedUM - m.dev.BaseDepthUM*math.Exp(p[BaseDepth])
 	if lam > 0 {
 		w -= lam * (math.Log(m.dev.SubstrateCM3/m.n0) - p[EpiDoping])
 	}
 	return max(w*1e-4, minNet)
 }
+
+// reach is how far from the base the field can go: the net epi and what high
+// bias depletes of the substrate's tail, cm. With it and epiShare the laws give
+// the reference model's depletion widths at BVceo (6.1 um in its thick device,
+// 1.9 um in its thin one) and its slopes.
+func (m *model) reach(w float64) float64 { return w + tail*m.dev.UpDiffusionUM*1e-4 }
 
 // depletion is the width of the depletion layer at v volts, cm: what the
 // doping gives, ended by the substrate. The end is soft, because the substrate's
@@ -150,7 +175,7 @@ func (m *model) net(p *Process) float64 {
 // device at 10 V, where the layer is just short of its end.
 func (m *model) depletion(w, n, v float64) float64 {
 	open := math.Sqrt(2 * epsilon * (v + builtIn) / (charge * n))
-	end := w + (tail*m.dev.UpDiffusionUM+baseGives*m.dev.BaseDepthUM)*1e-4
+	end := m.reach(w) + baseGives*m.dev.BaseDepthUM*1e-4
 	r := open / end
 	if r < 0.5 {
 		return open
@@ -189,7 +214,7 @@ func (m *model) values(dst []float64, p *Process) {
 	bvcbo := math.Inf(1)
 	if m.hasCBO {
 		edge := m.bvcbo * math.Exp(dot(&l.BVCBO, p)-l.ChargeBVCBO*(math.Exp(p[OxideCharge])-1))
-		plane := breakdown(w, n, m.ecCBO*math.Exp(l.CriticalField*p[EpiDoping])) - builtIn
+		plane := breakdown(m.reach(w), n, m.ecCBO*math.Exp(l.CriticalField*p[EpiDoping]))/epiShare - builtIn
 		bvcbo = min(edge, plane)
 	}
 	leak := func(v float64) float64 {
@@ -216,7 +241,7 @@ func (m *model) values(dst []float64, p *Process) {
 				r = bvcbo / m.bvcbo
 			}
 		case "bvceo":
-			psi := breakdown(w, n, m.ecCEO*math.Exp(l.CriticalField*p[EpiDoping]))
+			psi := breakdown(m.reach(w), n, m.ecCEO*math.Exp(l.CriticalField*p[EpiDoping])) / epiShare
 			dst[i] = min(psi*math.Pow(gain(t.Bias), l.Gain)-builtIn, bvcbo)
 			continue
 		case "bvebo":

@@ -25,7 +25,7 @@ type Spec struct {
 	Repeat     float64 // share of passing dice measured once more all the same
 	Missing    float64 // share of readings lost on the way to the file
 
-	// KeepProcess keeps every die's latents in the lot (12 numbers a die).
+	// KeepProcess keeps every die's latents in the lot (13 numbers a die).
 	KeepProcess bool
 }
 
@@ -33,9 +33,11 @@ type Spec struct {
 type Device struct {
 	EpiThicknessUM      float64 // as grown, surface to the substrate's plateau
 	EpiResistivityOhmCM float64
+	SiliconConsumedUM   float64 // by oxidation, from the surface
 	BaseDepthUM         float64
 	UpDiffusionUM       float64 // length of the substrate's exponential tail
 	SubstrateCM3        float64
+	EmitterDepthUM      float64
 	EmitterAreaUM2      float64
 }
 

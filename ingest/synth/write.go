@@ -8,6 +8,7 @@ import (
 	"io"
 	"math"
 	"runtime"
+	"slices"
 	"strconv"
 )
 
@@ -61,11 +62,11 @@ func write(w io.Writer, f Format, s *Spec, wafer func(i int) *Wafer, wide bool) 
 	for from := 0; from < s.Wafers; from += len(bufs) {
 		n := min(len(bufs), s.Wafers-from)
 		parallel(n, func(i int) {
+			made, layout, size := wafer(from+i), t.long, 32*len(s.Tests)
 			if wide {
-				bufs[i] = t.wide(bufs[i][:0], wafer(from+i))
-			} else {
-				bufs[i] = t.long(bufs[i][:0], wafer(from+i))
+				layout, size = t.wide, 40+8*len(s.Tests)
 			}
+			bufs[i] = layout(slices.Grow(bufs[i][:0], size*len(made.X)), made)
 		})
 		for _, b := range bufs[:n] {
 			if _, err := w.Write(b); err != nil {
