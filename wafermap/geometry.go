@@ -102,11 +102,16 @@ func (g Geometry) ringRadius() float64 {
 // the disc inside the edge exclusion (or the outline of the tested dice), and dice
 // further out count in the last.
 func (g Geometry) Ring(x, y int32, rings int) int {
-	r := g.RadiusMM(x, y) / g.ringRadius()
-	if math.IsNaN(r) || rings < 1 {
+	mmX, mmY := g.Position(x, y)
+	return ring(mmX, mmY, g.ringRadius(), rings)
+}
+
+func ring(mmX, mmY, radius float64, rings int) int {
+	share := (mmX*mmX + mmY*mmY) / (radius * radius)
+	if math.IsNaN(share) || rings < 1 {
 		return -1
 	}
-	return int(min(r*r*float64(rings), float64(rings-1)))
+	return int(min(share*float64(rings), float64(rings-1)))
 }
 
 // RingEdges returns the radii of the rings: rings+1 values in Unit, from 0.
@@ -122,6 +127,10 @@ func (g Geometry) RingEdges(rings int) []float64 {
 // begins at +x (3 o'clock), and sectors follow counter-clockwise, y up.
 func (g Geometry) Sector(x, y int32, sectors int) int {
 	mmX, mmY := g.Position(x, y)
+	return sector(mmX, mmY, sectors)
+}
+
+func sector(mmX, mmY float64, sectors int) int {
 	turn := math.Atan2(mmY, mmX) / (2 * math.Pi)
 	if math.IsNaN(turn) || sectors < 1 {
 		return -1

@@ -71,7 +71,7 @@ func (g *Grid) JoinCount(fail []bool, n Neighbours) JoinCount {
 		c.PFF, c.Method = 1, "exact"
 		return c
 	}
-	g.judge(&c, fail, n)
+	g.judge(&c, n)
 	return c
 }
 

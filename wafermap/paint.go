@@ -35,7 +35,7 @@ type Picture struct {
 	YDown                 bool
 	Step                  int
 	PNG                   []byte
-	Counts                []int // dice by palette index
+	Counts                []int // rows drawn, by palette index
 	Missing, Outside      int   // rows not drawn: without coordinates, outside the box
 }
 
@@ -94,7 +94,7 @@ func (p *Picture) draw(x, y []int32, cell []uint8, rank func(uint8) int, palette
 	}
 	colours[0] = color.NRGBA{}
 	var out bytes.Buffer
-	encoder := png.Encoder{CompressionLevel: png.BestCompression}
+	encoder := png.Encoder{CompressionLevel: png.DefaultCompression}
 	m := &image.Paletted{Pix: pixels, Stride: p.Columns, Rect: image.Rect(0, 0, p.Columns, p.Rows), Palette: colours}
 	if err := encoder.Encode(&out, m); err != nil {
 		return fmt.Errorf("drawing a wafer map of %d x %d dice: %w", p.Columns, p.Rows, err)
@@ -124,8 +124,9 @@ func stateRank(s uint8) int {
 
 // PaintStates draws one wafer. Where dice share a pixel the worst state wins, in the
 // order none, pass, no result, marginal, fail, leading fail: a lone failing die
-// must stay visible. (So a picture with Step above 1 looks worse than the wafer;
-// Counts are of dice.) A position in several rows shows the last.
+// must stay visible. So a picture with Step above 1 looks worse than the wafer, and
+// only Counts, which are of dice, say how many fail. A position in several rows
+// shows the last. A state without a colour in the palette panics.
 func PaintStates(x, y []int32, state []uint8, palette []color.RGBA, box Box) (Picture, error) {
 	if len(x) != len(y) || len(x) != len(state) {
 		panic("wafermap: x, y and state differ in length")

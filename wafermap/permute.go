@@ -3,7 +3,6 @@ package wafermap
 import (
 	"fmt"
 	"math/rand/v2"
-	"slices"
 )
 
 const (
@@ -13,17 +12,17 @@ const (
 
 	permutations   = 9999    // random placements at most
 	permutationsLo = 999     // and at least, where maps are large
-	placementsCost = 4000000 // dice placed in all placements of a test, about
-	enough         = 20      // placements as extreme as the data that settle it
+	placementsCost = 1500000 // dice placed in all placements of a test, about
+	enough         = 100     // placements as extreme as the data that settle it: p is then known to a tenth
 )
 
 // judge fills in PFF and its Method.
-func (g *Grid) judge(c *JoinCount, fail []bool, n Neighbours) {
+func (g *Grid) judge(c *JoinCount, n Neighbours) {
 	switch {
 	case c.Fails <= 3:
 		c.PFF, c.Method = g.exactTail(c, n), "exact"
 	case c.ExpectedFF < normalFrom || c.ExpectedPP < normalFrom:
-		c.PFF, c.Method = g.permutedTail(c, fail, n)
+		c.PFF, c.Method = g.permutedTail(c, n)
 	default:
 		c.PFF, c.Method = c.PFFNormal, "normal"
 	}
@@ -84,48 +83,63 @@ func (n Neighbours) joined(s step) bool {
 }
 
 // permutedTail places the rarer kind at random, again and again.
-func (g *Grid) permutedTail(c *JoinCount, fail []bool, n Neighbours) (p float64, method string) {
-	passes := c.N - c.Fails
+func (g *Grid) permutedTail(c *JoinCount, n Neighbours) (p float64, method string) {
 	rare, rareFails := c.Fails, true
-	if passes < c.Fails {
+	if passes := c.N - c.Fails; passes < c.Fails {
 		rare, rareFails = passes, false
 	}
 	draws := min(permutations, max(permutationsLo, placementsCost/rare))
-	deck := slices.Clone(g.order)
-	chosen := make([]int32, len(fail)) // draw number in which the row was last chosen
-	steps, all := n.later(), n.all()
+	start, near := g.adjacency(n)
+	chosen := make([]uint16, c.N) // draw in which the die was last chosen
 	random := rand.New(rand.NewPCG(0x6b6e6565, uint64(c.N)<<32|uint64(c.Fails)))
 	extreme := 0
-	for draw := 1; draw <= draws; draw++ {
-		for i := 0; i < rare; i++ { // partial Fisher-Yates
-			j := i + random.IntN(len(deck)-i)
-			deck[i], deck[j] = deck[j], deck[i]
-			chosen[deck[i]] = int32(draw)
-		}
-		inside, touching := 0, 0
-		for _, r := range deck[:rare] {
-			for _, s := range steps {
-				if q := g.at(r, s); q >= 0 && chosen[q] == int32(draw) {
+	for draw := uint16(1); int(draw) <= draws; draw++ {
+		inside, links := 0, 0
+		for done := 0; done < rare; {
+			die := random.IntN(c.N)
+			if chosen[die] == draw {
+				continue
+			}
+			chosen[die] = draw
+			done++
+			around := near[start[die]:start[die+1]]
+			links += len(around)
+			for _, q := range around {
+				if chosen[q] == draw {
 					inside++
 				}
 			}
-			if !rareFails {
-				for _, s := range all {
-					if g.at(r, s) >= 0 {
-						touching++
-					}
-				}
-			}
 		}
-		ff := inside
+		failFail := inside
 		if !rareFails {
-			ff = c.Joins - touching + inside
+			failFail = c.Joins - (links - inside) // the joins that touch no pass
 		}
-		if float64(ff) >= c.FailFail {
+		if float64(failFail) >= c.FailFail {
 			if extreme++; extreme == enough {
 				return float64(extreme) / float64(draw), fmt.Sprintf("permutation, stopped after %d placements", draw)
 			}
 		}
 	}
 	return float64(extreme+1) / float64(draws+1), fmt.Sprintf("permutation, %d placements", draws)
+}
+
+// adjacency lists every die's neighbours: those of the i-th die of g.order are
+// near[start[i]:start[i+1]], as places in g.order.
+func (g *Grid) adjacency(n Neighbours) (start, near []int32) {
+	place := make([]int32, len(g.x))
+	for i, r := range g.order {
+		place[r] = int32(i)
+	}
+	steps := n.all()
+	start = make([]int32, 1, len(g.order)+1)
+	near = make([]int32, 0, len(g.order)*len(steps))
+	for _, r := range g.order {
+		for _, s := range steps {
+			if q := g.at(r, s); q >= 0 {
+				near = append(near, place[q])
+			}
+		}
+		start = append(start, int32(len(near)))
+	}
+	return start, near
 }

@@ -30,15 +30,17 @@ func ZoneYields(g Geometry, x, y []int32, pass []bool, rings, sectors int) Zones
 	for i := range z.Cells {
 		z.Cells[i] = make([]ZoneCount, sectors)
 	}
+	radius := g.ringRadius()
 	for i := range x {
-		ring, sector := g.Ring(x[i], y[i], rings), g.Sector(x[i], y[i], sectors)
-		if ring < 0 || sector < 0 {
+		mmX, mmY := g.Position(x[i], y[i])
+		r, s := ring(mmX, mmY, radius, rings), sector(mmX, mmY, sectors)
+		if r < 0 || s < 0 {
 			z.Missing++
 			continue
 		}
-		z.Rings[ring].add(pass[i])
-		z.Sectors[sector].add(pass[i])
-		z.Cells[ring][sector].add(pass[i])
+		z.Rings[r].add(pass[i])
+		z.Sectors[s].add(pass[i])
+		z.Cells[r][s].add(pass[i])
 	}
 	return z
 }
