@@ -8,10 +8,11 @@ import (
 	"os"
 	"slices"
 	"strconv"
-	"strings"
 	"testing"
 
 	"gonum.org/v1/gonum/stat"
+
+	"kneepoint/config"
 )
 
 var update = flag.Bool("update", false, "rewrite the baseline of demo.yaml from healthy lots")
@@ -80,22 +81,33 @@ func TestDemoBaseline(t *testing.T) {
 		}
 		return
 	}
-	inFile := yamlBaseline(t, DemoProductYAML)
-	if got := inFile["yield"]["yield"]; math.Abs(got-yield) > 0.006 {
+	p := demoProduct(t)
+	if got := p.Baseline.Yield; math.Abs(got-yield) > 0.006 {
 		t.Errorf("yield %.3f in the file, %.4f generated", got, yield)
 	}
-	for i, test := range demoTests() {
-		got, want := inFile[test.Name], levels[i]
-		if math.Abs(got["median"]-want.median) > 0.1*want.sigma+test.Resolution {
-			t.Errorf("%s: median %v in the file, %v generated", test.Name, got["median"], want.median)
+	for i, test := range p.Tests {
+		in, want := p.Baseline.Tests[test.Name], levels[i]
+		got := level{test.Unit.FromSI(in.Median), test.Unit.FromSI(in.Sigma), test.Unit.FromSI(in.WithinLotSigma), test.Unit.FromSI(in.LotSigma)}
+		if math.Abs(got.median-want.median) > 0.1*want.sigma+demoTests()[i].Resolution {
+			t.Errorf("%s: median %v in the file, %v generated", test.Name, got.median, want.median)
 		}
-		for key, want := range map[string]float64{"sigma": want.sigma, "within_lot_sigma": want.within, "lot_sigma": want.lot} {
-			// 120 lots know the spread between lots to 6.5 %.
-			if tol := map[bool]float64{false: 0.05, true: 0.2}[key == "lot_sigma"]; math.Abs(got[key]/want-1) > tol {
-				t.Errorf("%s: %s %v in the file, %.4g generated", test.Name, key, got[key], want)
-			}
+		// 120 lots know the spread between lots to 6.5 %.
+		if off(got.sigma, want.sigma) > 0.05 || off(got.within, want.within) > 0.05 || off(got.lot, want.lot) > 0.2 {
+			t.Errorf("%s: %+v in the file, %+v generated", test.Name, got, want)
 		}
 	}
+}
+
+func off(got, want float64) float64 { return math.Abs(got/want - 1) }
+
+// demoProduct reads the demo's product file.
+func demoProduct(t *testing.T) *config.Product {
+	t.Helper()
+	p, err := config.ParseProduct("demo.yaml", []byte(DemoProductYAML))
+	if err != nil {
+		t.Fatal(err)
+	}
+	return p
 }
 
 func rewriteBaseline(file []byte, levels []level, yield float64) []byte {
@@ -113,29 +125,4 @@ func rewriteBaseline(file []byte, levels []level, yield float64) []byte {
 func digits(v float64, n int) string {
 	rounded, _ := strconv.ParseFloat(strconv.FormatFloat(v, 'e', n-1, 64), 64)
 	return strconv.FormatFloat(rounded, 'f', -1, 64)
-}
-
-// yamlBaseline reads the baseline's flow mappings; the full reader is config's.
-func yamlBaseline(t *testing.T, text string) map[string]map[string]float64 {
-	t.Helper()
-	_, block, ok := strings.Cut(text, "\nbaseline:")
-	if !ok {
-		t.Fatal("demo.yaml has no baseline")
-	}
-	out := map[string]map[string]float64{}
-	for line := range strings.Lines(block) {
-		name, rest, _ := strings.Cut(strings.TrimSpace(line), ":")
-		m := map[string]float64{}
-		for _, pair := range strings.Split(strings.Trim(strings.TrimSpace(rest), "{}"), ",") {
-			k, v, ok := strings.Cut(pair, ":")
-			if !ok {
-				k, v = name, pair
-			}
-			if x, err := strconv.ParseFloat(strings.TrimSpace(v), 64); err == nil {
-				m[strings.TrimSpace(k)] = x
-			}
-		}
-		out[name] = m
-	}
-	return out
 }

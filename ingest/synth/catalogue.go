@@ -70,8 +70,8 @@ var (
 	diceShare = "share of the dice in place"
 )
 
-// The usual sizes cost a typical reach-through product some 3 to 40 % of the
-// dice in place. Places and sizes are common practice, no source.
+// Usual sizes are plain to see in the data; what they cost depends on the
+// product's limits. Places and sizes are common practice, no source.
 var catalogue = []Entry{
 	{"epi-thickness", lowHigh, 0.16, relative, func(sign, size float64) Cause {
 		return Cause{Shift: Process{EpiThickness: by(-sign * size)}, Place: Place{Shape: Centre, Outer: 1.1}}
@@ -82,7 +82,7 @@ var catalogue = []Entry{
 	{"base-profile", lowHigh, 0.5, relative, func(sign, size float64) Cause {
 		return Cause{Shift: Process{BaseDose: by(-sign * size)}, Jitter: 0.1}
 	}},
-	{"emitter-depth", []string{"deep", "shallow"}, 0.25, relative, func(sign, size float64) Cause {
+	{"emitter-depth", []string{"deep", "shallow"}, 0.15, relative, func(sign, size float64) Cause {
 		return Cause{Shift: Process{EmitterDepth: by(sign * size)}, Jitter: 0.1}
 	}},
 	{"emitter-efficiency", lowHigh, 0.35, relative, func(sign, size float64) Cause {
@@ -92,7 +92,7 @@ var catalogue = []Entry{
 		return Cause{Shift: Process{EdgeRadius: by(-size)}, Share: 0.3, Scatter: 0.3}
 	}},
 	{"surface-charge", nil, 10, "times the usual oxide charge and surface recombination at the rim", func(_, size float64) Cause {
-		return Cause{Shift: Process{OxideCharge: math.Log(size), SurfaceVelocity: 2 * math.Log(size)},
+		return Cause{Shift: Process{OxideCharge: math.Log(size), SurfaceVelocity: 2.5 * math.Log(size)},
 			Place: Place{Shape: Rim}}
 	}},
 	{"lifetime", nil, 40, "times shorter lifetime", func(_, size float64) Cause {

@@ -64,7 +64,7 @@ func (d *die) take(at *place) {
 	d.key = dieKey(f.seed, d.wafer, at.x, at.y)
 	for q := range d.process {
 		sm := &d.smooth[q]
-		v := sm.level + sm.bowl*(at.r*at.r-0.5) + sm.tiltX*at.u + sm.tiltY*at.v
+		v := sm.level + sm.bowl*(at.r*at.r-bowlMiddle) + sm.tiltX*at.u + sm.tiltY*at.v
 		if sd := f.spec.Spread[q].Die; sd > 0 {
 			v += sd * d.key.at(dieLatent+uint64(q)).normal()
 		}

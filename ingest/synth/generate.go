@@ -90,6 +90,11 @@ func (s *Spec) hasTest(name string) bool {
 	return slices.ContainsFunc(s.Tests, func(t Test) bool { return t.Name == name })
 }
 
+// bowlMiddle is about the mean r^2 of the whole dice inside a usual edge
+// exclusion. It is fixed, so that a die does not depend on how many others there
+// are.
+const bowlMiddle = 0.43
+
 // smooth is one latent on one wafer: level and the shape within.
 type smooth struct{ level, bowl, tiltX, tiltY float64 }
 

@@ -33,9 +33,9 @@ type Wafer struct {
 
 // Epi is the true epi layer, means over a wafer's dice.
 type Epi struct {
-	ThicknessUM    float64 // as grown
-	NetThicknessUM float64 // less base and up-diffusion
-	DopingCM3      float64
+	ThicknessUM    float64 `json:"thickness_um"`     // as grown
+	NetThicknessUM float64 `json:"net_thickness_um"` // less base and up-diffusion
+	DopingCM3      float64 `json:"doping_cm3"`
 }
 
 // Final returns each die's row that counts: its last measurement.

@@ -69,8 +69,8 @@ type Process [NumLatents]float64
 // Spread says how far a latent strays from target, each as a standard
 // deviation in the latent's own scale (0.01 is one percent).
 //
-// The smooth part is Bowl (r^2 - 1/2) + TiltX u + TiltY v with r, u, v in wafer
-// radii: a bowl keeps the mean over the wafer's area.
+// The smooth part is bowl (r^2 - 0.43) + tilt_x u + tilt_y v with r, u, v in wafer
+// radii: it leaves the mean over a wafer's dice about alone.
 type Spread struct {
 	Lot, Wafer, Die float64
 	Bowl            float64 // of the bowl's depth from wafer to wafer

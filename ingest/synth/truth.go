@@ -1,46 +1,50 @@
 package synth
 
-// Truth is what a lot really lost to what: the answer sheet.
+// Truth is what a lot really lost to what: the answer sheet. As JSON it is a
+// made-up lot's truth file.
 type Truth struct {
-	Lot  string
-	Seed uint64
-	Dice int
+	Lot  string `json:"lot"`
+	Seed uint64 `json:"seed"`
+	Dice int    `json:"dice"`
 
 	// Yield as made, and Clean with every cause off. Clean less Yield is the sum
 	// of the causes' losses and of Shared.
-	Yield, Clean float64
+	Yield float64 `json:"yield"`
+	Clean float64 `json:"clean_yield"`
 	// Healthy is the yield with only the background causes on.
-	Healthy float64
+	Healthy float64 `json:"healthy_yield"`
 	// Shared is lost to two or more causes at once, so that taking away any one
 	// of them would not save it. Negative when one cause hides another's loss,
 	// as a shift one way hides a shift the other way.
-	Shared float64
+	Shared float64 `json:"shared_loss"`
 
-	Causes []CauseTruth
-	Wafers []WaferTruth
+	Causes []CauseTruth `json:"causes"`
+	Wafers []WaferTruth `json:"wafers"`
 }
 
 // CauseTruth is what one cause did.
 type CauseTruth struct {
-	ID, Direction, Text string
-	Background          bool
-	Number              int // in Spec.Causes
+	ID         string `json:"cause"`
+	Direction  string `json:"direction"`
+	Text       string `json:"text"`
+	Background bool   `json:"background"`
+	Number     int    `json:"number"` // in Spec.Causes
 
-	// Wafers it acts on, and by wafer of Wafers the dice that would pass without
-	// it less those that would fail without it.
-	Wafers []string
-	Lost   []int
+	// Wafers it acts on, and for each the passing dice without it less those with it.
+	Wafers []string `json:"wafers"`
+	Lost   []int    `json:"lost"`
 	// Loss is yield without the cause less yield with it, on the same random
 	// numbers.
-	Loss float64
+	Loss float64 `json:"loss"`
 }
 
 // WaferTruth is what one wafer really got.
 type WaferTruth struct {
-	ID          string
-	Dice        int
-	Pass, Clean int // dice passing as made, and with every cause off
-	Epi         Epi
+	ID    string `json:"id"`
+	Dice  int    `json:"dice"`
+	Pass  int    `json:"pass"`       // as made
+	Clean int    `json:"clean_pass"` // with every cause off
+	Epi   Epi    `json:"epi"`
 }
 
 // Healthy returns the spec with only its background causes on.
@@ -79,7 +83,7 @@ func (s Spec) Truth(seed uint64) Truth {
 	for v := range pass {
 		pass[v] = make([]int, s.Wafers)
 	}
-	truth := Truth{Lot: s.Lot, Seed: seed, Wafers: make([]WaferTruth, s.Wafers)}
+	truth := Truth{Lot: s.Lot, Seed: seed, Causes: []CauseTruth{}, Wafers: make([]WaferTruth, s.Wafers)}
 	parallel(s.Wafers, func(i int) {
 		for v, f := range variants {
 			if v >= first && s.Causes[v-first].size(seed, v-first, i) == 0 {
@@ -111,7 +115,8 @@ func (s Spec) Truth(seed uint64) Truth {
 		if cause.Off {
 			continue
 		}
-		ct := CauseTruth{ID: cause.ID, Direction: cause.Direction, Text: cause.Text, Background: cause.Background, Number: c}
+		ct := CauseTruth{ID: cause.ID, Direction: cause.Direction, Text: cause.Text, Background: cause.Background, Number: c,
+			Wafers: []string{}, Lost: []int{}}
 		lost := 0
 		for i := range truth.Wafers {
 			if cause.size(seed, c, i) == 0 {

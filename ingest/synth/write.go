@@ -10,6 +10,7 @@ import (
 	"runtime"
 	"slices"
 	"strconv"
+	"strings"
 )
 
 // Format says how delimited text is laid out. The zero value is comma and
@@ -89,16 +90,17 @@ type text struct {
 }
 
 func newText(f Format, s *Spec) *text {
-	t := &text{Format: f, spec: s, lot: []byte(s.Lot)}
+	t := &text{Format: f, spec: s}
+	t.lot = t.field(nil, s.Lot)
 	for i := range s.Tests {
 		test := &s.Tests[i]
 		d := Decimals(test.Resolution)
 		t.decimals = append(t.decimals, d)
 		t.scale = append(t.scale, math.Pow10(max(d, 0)))
-		t.names = append(t.names, []byte(test.Name))
+		t.names = append(t.names, t.field(nil, test.Name))
 		var suffix []byte
 		if f.UnitRow {
-			suffix = append(append(suffix, f.Separator), test.Unit...)
+			suffix = t.field(append(suffix, f.Separator), test.Unit)
 		}
 		if f.LimitRows {
 			suffix = t.limit(append(suffix, f.Separator), test.Lower)
@@ -165,13 +167,23 @@ func (t *text) head(wide bool) []byte {
 		b = append(b, '\n')
 	}
 	if t.UnitRow {
-		row("UNIT", func(b []byte, test *Test) []byte { return append(b, test.Unit...) })
+		row("UNIT", func(b []byte, test *Test) []byte { return t.field(b, test.Unit) })
 	}
 	if t.LimitRows {
 		row("LOWER", func(b []byte, test *Test) []byte { return t.limit(b, test.Lower) })
 		row("UPPER", func(b []byte, test *Test) []byte { return t.limit(b, test.Upper) })
 	}
 	return b
+}
+
+// field appends text, quoted where it must be.
+func (t *text) field(b []byte, s string) []byte {
+	if !strings.ContainsAny(s, string(rune(t.Separator))+"\"\r\n") && !strings.HasPrefix(s, "#") {
+		return append(b, s...)
+	}
+	b = append(b, '"')
+	b = append(b, strings.ReplaceAll(s, `"`, `""`)...)
+	return append(b, '"')
 }
 
 // limit appends a limit as short as it goes, nothing when there is none.
