@@ -1,0 +1,193 @@
+package ingest
+
+import (
+	"context"
+	"fmt"
+	"sync"
+
+	"kneepoint/config"
+)
+
+// fileData is one file as read.
+type fileData struct {
+	layout     *layout     // nil for a Table in memory
+	lot, wafer string      // of rows that do not say
+	attributes [][2]string // of the lot
+	input      Input
+	chunks     []*chunk
+	rows       rowCount
+	cells      []cellCount
+	notes      []Finding
+	err        *Error // reading broke off here; what came before is kept
+}
+
+// readFile reads one file: its layout from the first block, then all blocks in
+// parallel. When the rows contradict what the first block made believe (a
+// column turns out to be text, numbers to have a decimal comma), it is read
+// again with that known.
+func readFile(ctx context.Context, path string, index int, sch *schema, opt *Options, progress func(int64)) (*fileData, error) {
+	fix := map[string]bool{}
+	for {
+		d, err := readOnce(ctx, path, index, sch, opt, progress, fix)
+		if err != nil || !d.contradicted(fix, opt.Product) {
+			return d, err
+		}
+	}
+}
+
+const fixDecimal = "\x00decimal"
+
+// contradicted looks for columns that were judged wrongly and adds them to fix.
+func (d *fileData) contradicted(fix map[string]bool, product *config.Product) bool {
+	l, again := d.layout, false
+	comma, points := 0, 0
+	for i, f := range l.fields {
+		if f.kind != valueField {
+			continue
+		}
+		c := &d.cells[i]
+		numbers := 0
+		for _, ch := range d.chunks {
+			for _, v := range ch.values[f.slot] {
+				if v == v {
+					numbers++
+				}
+			}
+		}
+		comma += c.comma
+		points += numbers
+		if c.bad > numbers && c.comma*2 < c.bad && !l.long && productTest(product, l.names[i]) < 0 && !fix[l.names[i]] {
+			fix[l.names[i]] = true
+			again = true
+		}
+	}
+	if comma > 0 && !l.decimalSeen && l.sep != ',' && !fix[fixDecimal] {
+		fix[fixDecimal] = true
+		again = true
+	}
+	return again
+}
+
+func readOnce(ctx context.Context, path string, index int, sch *schema, opt *Options, progress func(int64), fix map[string]bool) (*fileData, error) {
+	src, err := openSource(path, progress)
+	if err != nil {
+		return nil, err
+	}
+	defer src.close()
+	k := &blocker{src: src, size: opt.block}
+	if err := k.head(); err != nil {
+		return nil, err
+	}
+	l, err := findLayout(path, k.carry, k.eof, opt.Product, fix)
+	if err != nil {
+		if k.err != nil {
+			return nil, src.readError(k.err)
+		}
+		return nil, err
+	}
+	sch.adopt(l)
+	k.sep, k.want = l.sep, len(l.fields)
+	k.carry, k.line = k.carry[l.start:], l.startLine
+	d := &fileData{layout: l, lot: l.commented("lot"), wafer: l.commented("wafer"), attributes: l.attributes, notes: l.notes, cells: make([]cellCount, len(l.fields))}
+	if err := d.parse(ctx, k, newParserSet(l, sch, index, opt)); err != nil {
+		return nil, err
+	}
+	for _, c := range d.chunks {
+		d.rows.add(&c.rows)
+		for i := range c.cells {
+			d.cells[i].add(&c.cells[i])
+		}
+	}
+	if k.err != nil {
+		d.err = src.readError(k.err)
+		used := 0
+		for _, c := range d.chunks {
+			used += c.n
+		}
+		if used == 0 {
+			return nil, d.err
+		}
+	}
+	src.drain()
+	d.input = Input{File: path, SHA256: src.sum(), Format: format(l, src.packed), Bytes: src.raw, Rows: int64(d.rows.read)}
+	return d, nil
+}
+
+// format describes the layout in words.
+func format(l *layout, packed string) string {
+	shape := "wide"
+	if l.long {
+		shape = "long"
+	}
+	name := map[byte]string{',': "comma", ';': "semicolon", '\t': "tab", '|': "bar"}[l.sep]
+	s := fmt.Sprintf("delimited text, %s, %s", shape, name)
+	if l.decimal == ',' {
+		s += ", decimal comma"
+	}
+	if packed != "" {
+		s += ", " + packed
+	}
+	return s
+}
+
+// newParserSet makes one parser a worker.
+func newParserSet(l *layout, sch *schema, file int, opt *Options) []*parser {
+	set := make([]*parser, opt.Workers)
+	for i := range set {
+		set[i] = newParser(l, sch, file, opt.careful)
+	}
+	return set
+}
+
+// parse reads blocks in this goroutine and parses them in others. Chunks come
+// out in the order of the file.
+func (d *fileData) parse(ctx context.Context, k *blocker, parsers []*parser) error {
+	var (
+		wg     sync.WaitGroup
+		mu     sync.Mutex
+		blocks = make(chan block, len(parsers))
+		spare  = make(chan []byte, 2*len(parsers)+2)
+	)
+	for _, p := range parsers {
+		wg.Add(1)
+		go func() {
+			defer wg.Done()
+			for b := range blocks {
+				c := p.block(&b)
+				mu.Lock()
+				for len(d.chunks) <= b.seq {
+					d.chunks = append(d.chunks, nil)
+				}
+				d.chunks[b.seq] = c
+				mu.Unlock()
+				select {
+				case spare <- b.buf:
+				default:
+				}
+			}
+		}()
+	}
+	var failed error
+	for {
+		var buf []byte
+		select {
+		case buf = <-spare:
+		default:
+		}
+		b, ok, err := k.next(ctx, buf)
+		if err != nil {
+			failed = err
+			break
+		}
+		if !ok {
+			break
+		}
+		if b.cut && k.err != nil {
+			b.torn = true
+		}
+		blocks <- b
+	}
+	close(blocks)
+	wg.Wait()
+	return failed
+}

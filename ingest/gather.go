@@ -1,0 +1,358 @@
+package ingest
+
+import (
+	"context"
+	"math"
+	"runtime"
+	"strconv"
+
+	"golang.org/x/sync/errgroup"
+
+	"kneepoint/config"
+)
+
+// draft is one lot on its way: every measurement of every die, sorted by wafer
+// and touchdown, values in SI. Cleaning makes a Lot of it.
+type draft struct {
+	id        string
+	n         int
+	wafers    []Wafer
+	ints      [intNumber][]int32 // by slot; nil: absent
+	pass      []int8
+	text      [][]int32 // by text slot, codes of dict; nil: absent
+	dict      [][]string
+	textNames []string
+	values    [][]float64 // by test of tests
+	tests     []testInfo
+	rank      []int32 // order of test where it is not the row's place
+	inputs    []Input
+	findings  []Finding
+	comments  [][2]string
+	product   *config.Product
+	siteIsDie bool
+	ownOrder  bool // the file has touchdown numbers
+
+	measurements, duplicates int
+}
+
+// flatInts joins a whole-number column over all chunks; nil when none has it.
+// With release the chunks let go of theirs.
+func (t *readings) flatInts(slot int, release bool) []int32 {
+	n, have := 0, false
+	for _, c := range t.chunks {
+		n += c.n
+		have = have || c.ints[slot] != nil
+	}
+	if !have {
+		return nil
+	}
+	out := make([]int32, 0, n)
+	for _, c := range t.chunks {
+		if c.ints[slot] == nil {
+			for range c.n {
+				out = append(out, Missing)
+			}
+			continue
+		}
+		out = append(out, c.ints[slot]...)
+		if release {
+			c.ints[slot] = nil
+		}
+	}
+	return out
+}
+
+func (t *readings) flatPass() []int8 {
+	n, have := 0, false
+	for _, c := range t.chunks {
+		n += c.n
+		have = have || c.pass != nil
+	}
+	if !have {
+		return nil
+	}
+	out := make([]int8, 0, n)
+	for _, c := range t.chunks {
+		if c.pass == nil {
+			for range c.n {
+				out = append(out, -1)
+			}
+			continue
+		}
+		out = append(out, c.pass...)
+		c.pass = nil
+	}
+	return out
+}
+
+// flatText joins a text column under one dictionary.
+func (t *readings) flatText(slot int) ([]int32, []string) {
+	n, have := 0, false
+	for _, c := range t.chunks {
+		n += c.n
+		have = have || slot < len(c.text) && c.text[slot].codes != nil
+	}
+	if !have {
+		return nil, nil
+	}
+	var g globalText
+	out := make([]int32, 0, n)
+	for _, c := range t.chunks {
+		if slot >= len(c.text) || c.text[slot].codes == nil {
+			for range c.n {
+				out = append(out, -1)
+			}
+			continue
+		}
+		m := g.remap(&c.text[slot])
+		for _, code := range c.text[slot].codes {
+			if code >= 0 {
+				code = m[code]
+			}
+			out = append(out, code)
+		}
+		c.text[slot] = textColumn{}
+	}
+	return out, g.dict
+}
+
+// flatValues joins a test's column and converts it to SI.
+func (t *readings) flatValues(slot int) []float64 {
+	n, have := 0, false
+	for _, c := range t.chunks {
+		n += c.n
+		have = have || slot < len(c.values) && c.values[slot] != nil
+	}
+	if !have {
+		return nil
+	}
+	out := make([]float64, n)
+	at := 0
+	for _, c := range t.chunks {
+		to := out[at : at+c.n]
+		at += c.n
+		if slot >= len(c.values) || c.values[slot] == nil {
+			for i := range to {
+				to[i] = math.NaN()
+			}
+			continue
+		}
+		if u := t.tests[slot].units[c.file]; u.Exp != 0 {
+			for i, v := range c.values[slot] {
+				to[i] = u.ToSI(v)
+			}
+		} else {
+			copy(to, c.values[slot])
+		}
+		c.values[slot] = nil
+	}
+	return out
+}
+
+// pick takes a lot's part of a flat column in the lot's order.
+func pick[T any](flat []T, o *order, l *lotRange) []T {
+	if flat == nil {
+		return nil
+	}
+	if o.perm == nil {
+		return flat[l.lo:l.hi:l.hi]
+	}
+	out := make([]T, l.hi-l.lo)
+	for i, r := range o.perm[l.lo:l.hi] {
+		out[i] = flat[r]
+	}
+	return out
+}
+
+// gather fills the lots column by column; the chunks' columns are let go of one
+// by one, so that the table is never in memory twice.
+func (t *readings) gather(ctx context.Context, o *order, opt *Options) ([]*draft, error) {
+	drafts := make([]*draft, len(o.lots))
+	for i := range o.lots {
+		l := &o.lots[i]
+		d := &draft{id: l.id, n: l.hi - l.lo, wafers: l.wafers, product: opt.Product, siteIsDie: t.siteIsDie, measurements: l.hi - l.lo}
+		if o.rank != nil {
+			d.rank = make([]int32, d.n)
+			for k := range d.rank {
+				d.rank[k] = o.rank[l.lo+k] - int32(l.lo)
+			}
+		}
+		for fi, f := range t.files {
+			if l.files[fi] {
+				d.inputs = append(d.inputs, f.input)
+				d.comments = append(d.comments, f.attributes...)
+			}
+		}
+		d.findings = append(d.findings, t.findings...)
+		drafts[i] = d
+	}
+	for i := range t.chunks {
+		t.chunks[i].text[textLot], t.chunks[i].text[textWafer] = textColumn{}, textColumn{}
+	}
+	for slot := range intNumber {
+		flat := t.flatInts(slot, true)
+		for i, d := range drafts {
+			d.ints[slot] = pick(flat, o, &o.lots[i])
+		}
+	}
+	pass := t.flatPass()
+	for i, d := range drafts {
+		d.pass = pick(pass, o, &o.lots[i])
+	}
+	t.gatherText(drafts, o)
+	if err := t.gatherValues(ctx, drafts, o, opt); err != nil {
+		return nil, err
+	}
+	t.chunks = nil
+	return drafts, nil
+}
+
+func (t *readings) gatherText(drafts []*draft, o *order) {
+	names := make([]string, textAttributes)
+	for role, slot := range textRoles {
+		for _, f := range t.files {
+			if f.layout == nil {
+				continue
+			}
+			for i, fd := range f.layout.fields {
+				if fd.role == role && names[slot] == "" {
+					names[slot] = f.layout.names[i]
+				}
+			}
+		}
+	}
+	names = append(names, t.sch.attributes...)
+	for _, d := range drafts {
+		d.textNames = names
+		d.text, d.dict = make([][]int32, len(names)), make([][]string, len(names))
+	}
+	for slot := range names {
+		switch slot {
+		case textLot, textWafer, textTest, textUnit, textAt:
+			continue
+		}
+		flat, dict := t.flatText(slot)
+		for i, d := range drafts {
+			d.text[slot], d.dict[slot] = pick(flat, o, &o.lots[i]), dict
+		}
+	}
+}
+
+// gatherValues does the tests in parallel; each is worked on by one goroutine
+// alone, so that the result does not depend on their number.
+func (t *readings) gatherValues(ctx context.Context, drafts []*draft, o *order, opt *Options) error {
+	var slots []int
+	for i := range t.tests {
+		if t.tests[i].used {
+			slots = append(slots, i)
+		}
+	}
+	columns := make([][][]float64, len(slots)) // [test][lot]
+	g, ctx := errgroup.WithContext(ctx)
+	g.SetLimit(opt.Workers)
+	for k, slot := range slots {
+		g.Go(func() error {
+			if err := ctx.Err(); err != nil {
+				return err
+			}
+			flat := t.flatValues(slot)
+			columns[k] = make([][]float64, len(drafts))
+			for i, d := range drafts {
+				if columns[k][i] = pick(flat, o, &o.lots[i]); columns[k][i] == nil {
+					columns[k][i] = nanColumn(d.n)
+				}
+			}
+			if len(flat) > 1<<18 {
+				runtime.GC() // the chunks' columns are garbage now; a large table must not stand in memory twice
+			}
+			return nil
+		})
+	}
+	if err := g.Wait(); err != nil {
+		return err
+	}
+	for i, d := range drafts {
+		for k, slot := range slots {
+			d.tests = append(d.tests, t.tests[slot])
+			d.values = append(d.values, columns[k][i])
+		}
+	}
+	return nil
+}
+
+// constants turns columns of whole numbers that never differ within a wafer
+// into attributes: a boat position, a temperature. A test that the product
+// file or a unit or limits declare stays a test.
+func (t *readings) constants(drafts []*draft) {
+	const rows = 5 // per wafer on the average, for "never differs" to mean something
+	if len(drafts) == 0 {
+		return
+	}
+	n, wafers := 0, 0
+	for _, d := range drafts {
+		n += d.n
+		wafers += len(d.wafers)
+	}
+	var keep []int
+	for k := range drafts[0].tests {
+		info := &drafts[0].tests[k]
+		if info.declared || n < rows*wafers || !constantWithin(drafts, k) {
+			keep = append(keep, k)
+			continue
+		}
+		for _, d := range drafts {
+			d.numberAttribute(info.name, d.values[k])
+		}
+	}
+	if len(keep) == len(drafts[0].tests) {
+		return
+	}
+	for _, d := range drafts {
+		tests, values := d.tests, d.values
+		d.tests, d.values = nil, nil
+		for _, k := range keep {
+			d.tests, d.values = append(d.tests, tests[k]), append(d.values, values[k])
+		}
+	}
+}
+
+func constantWithin(drafts []*draft, test int) bool {
+	some := false
+	for _, d := range drafts {
+		for _, w := range d.wafers {
+			first := math.NaN()
+			for _, v := range d.values[test][w.Lo:w.Hi] {
+				if v != v {
+					continue
+				}
+				if first != first {
+					first = v
+				}
+				if v != first || v != math.Trunc(v) || math.Abs(v) >= 1e9 {
+					return false
+				}
+				some = true
+			}
+		}
+	}
+	return some
+}
+
+// numberAttribute adds a text column with the numbers of v.
+func (d *draft) numberAttribute(name string, v []float64) {
+	var g globalText
+	codes := make([]int32, len(v))
+	last, code := math.NaN(), int32(-1)
+	for i, x := range v {
+		if x != x {
+			codes[i] = -1
+			continue
+		}
+		if x != last {
+			last, code = x, g.code(strconv.FormatFloat(x, 'f', -1, 64))
+		}
+		codes[i] = code
+	}
+	d.textNames = append(d.textNames[:len(d.textNames):len(d.textNames)], name)
+	d.text, d.dict = append(d.text, codes), append(d.dict, g.dict)
+}

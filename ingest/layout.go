@@ -1,0 +1,501 @@
+package ingest
+
+import (
+	"bytes"
+	"fmt"
+	"math"
+	"strings"
+
+	"kneepoint/config"
+)
+
+// layout is what the start of a file says about the rest: how it is written
+// and what each column is.
+type layout struct {
+	file    string
+	sep     byte
+	decimal byte
+	// decimalSeen is false when no number of the sample had a fraction.
+	decimalSeen bool
+	names       []string // header as written
+	header      [][]byte // the same as bytes, to know it again
+	headerLine  int
+	long        bool
+	fields      []field // by column of the file
+	start       int     // where the data start in the head
+	startLine   int
+	attributes  [][2]string // key and value of comments and lines above the header, in order
+	notes       []Finding
+	columns     []testColumn // of a wide table, by field.slot
+	sample      [][]string   // first data rows
+}
+
+// fieldKind says how the cells of a column are read.
+type fieldKind uint8
+
+const (
+	skipField  fieldKind = iota
+	textField            // slot: text column of the schema
+	intField             // slot: intX ...
+	passField            //
+	valueField           // slot: column of numbers
+)
+
+type field struct {
+	kind fieldKind
+	slot int
+	role string // "" for tests and attributes
+}
+
+// testColumn is what a wide file says about one test.
+type testColumn struct {
+	name         string
+	unitText     string
+	unit         config.Unit
+	lower, upper float64 // in the file's unit
+	condition    string
+	number       int
+	field        int
+	unitIsNumber bool
+}
+
+// Slots of the fixed text, whole-number and value columns.
+const (
+	textLot = iota
+	textWafer
+	textPart
+	textTest
+	textUnit
+	textProduct
+	textAt
+	textTime
+	textAttributes // first of the attributes
+)
+
+const (
+	intX = iota
+	intY
+	intSite
+	intTouchdown
+	intHardBin
+	intSoftBin
+	intNumber
+	intColumns
+)
+
+const (
+	longValue = iota
+	longLower
+	longUpper
+	longColumns
+)
+
+var textRoles = map[string]int{"lot": textLot, "wafer": textWafer, "part": textPart, "test": textTest, "unit": textUnit,
+	roleProduct: textProduct, roleAt: textAt, "time": textTime}
+var intRoles = map[string]int{"x": intX, "y": intY, "site": intSite, "touchdown": intTouchdown, "hard_bin": intHardBin,
+	"soft_bin": intSoftBin, roleNumber: intNumber}
+var longValues = map[string]int{"value": longValue, "lower": longLower, "upper": longUpper}
+
+// headRow is one row of the head as text.
+type headRow struct {
+	cells []string
+	raw   [][]byte
+	line  int
+	next  int // offset of the row after it
+	after int // line of the row after it
+}
+
+const (
+	headRows   = 200  // rows in which the header is looked for
+	sampleRows = 1000 // rows by which columns are judged
+)
+
+// lineOf gives a file's error at a line.
+func (l *layout) fail(line int, column, what, remedy string) error {
+	return &Error{File: l.file, Line: line, Column: column, What: what, Remedy: remedy}
+}
+
+// findLayout studies the start of a file. fix holds what an earlier reading
+// found out: names of columns that are text, or fixDecimal.
+func findLayout(file string, head []byte, final bool, product *config.Product, fix map[string]bool) (*layout, error) {
+	l := &layout{file: file, decimal: '.'}
+	rows, at, err := l.findHeader(head, final, product)
+	if err != nil {
+		return nil, err
+	}
+	h := rows[at]
+	l.names, l.header, l.headerLine = h.cells, h.raw, h.line
+	for _, r := range rows[:at] {
+		l.preamble(r)
+	}
+	roles, err := l.assignRoles(product)
+	if err != nil {
+		return nil, err
+	}
+	special, data := l.specialRows(head, final, h, roles)
+	l.sample = data
+	l.findDecimal()
+	if fix[fixDecimal] {
+		l.decimal = ','
+	}
+	l.judge(roles, product)
+	for i, n := range l.names {
+		if fix[n] {
+			roles[i] = secondColumn
+		}
+	}
+	l.place(roles, product)
+	l.applySpecial(special)
+	l.parseColumnUnits()
+	return l, l.check(product)
+}
+
+// readHead splits rows of the head from offset i on.
+func readHead(b []byte, i, line int, sep byte, want, most int, final bool, comment func(string)) []headRow {
+	var rows []headRow
+	var r row
+	for i < len(b) && len(rows) < most {
+		if b[i] == '#' {
+			end := bytes.IndexByte(b[i:], '\n')
+			if end < 0 {
+				if final && comment != nil {
+					comment(cellText(b[i:]))
+				}
+				break
+			}
+			if comment != nil {
+				comment(cellText(b[i : i+end]))
+			}
+			i += end + 1
+			line++
+			continue
+		}
+		splitRow(b, i, sep, want, final, &r)
+		if r.more {
+			break
+		}
+		h := headRow{line: line, next: r.next, after: line + r.lines}
+		for _, f := range r.fields {
+			h.cells = append(h.cells, cellText(f))
+			h.raw = append(h.raw, append([]byte(nil), f...))
+		}
+		i, line = r.next, h.after
+		if len(h.cells) == 1 && h.cells[0] == "" {
+			continue // a blank line
+		}
+		rows = append(rows, h)
+	}
+	return rows
+}
+
+// findHeader tries the separators and takes the one under which a row of the
+// head names the most roles; then the one by which most rows have as many
+// fields as that row.
+func (l *layout) findHeader(head []byte, final bool, product *config.Product) (best []headRow, at int, err error) {
+	bestScore := -1
+	for _, sep := range []byte{',', ';', '\t', '|'} {
+		var comments []string
+		rows := readHead(head, 0, 1, sep, 0, headRows, final, func(s string) { comments = append(comments, s) })
+		i, roles := headerRow(rows, product)
+		if i < 0 {
+			continue
+		}
+		same := 0
+		for _, r := range rows[i:] {
+			if len(r.cells) == len(rows[i].cells) {
+				same++
+			}
+		}
+		score := roles*1_000_000 + min(same, 900)*1000 + min(len(rows[i].cells), 900)
+		if len(rows[i].cells) < 2 {
+			score = 0
+		}
+		if score > bestScore {
+			bestScore, best, at = score, rows, i
+			l.sep, l.attributes, l.notes = sep, nil, nil
+			for _, c := range comments {
+				l.comment(c)
+			}
+		}
+	}
+	if bestScore < 0 {
+		return nil, 0, &Error{File: l.file, What: "holds no rows, only comments and blank lines", Remedy: "export it again"}
+	}
+	if bestScore == 0 {
+		return nil, 0, l.fail(best[at].line, "", "no table found: the rows have no comma, semicolon or tab between fields",
+			"export the table as delimited text with a header row")
+	}
+	return best, at, nil
+}
+
+// headerRow finds the row that names most roles, the first of equals.
+func headerRow(rows []headRow, product *config.Product) (at, roles int) {
+	at, roles = -1, -1
+	for i, r := range rows {
+		n := 0
+		for _, c := range r.cells {
+			if isRoleName(c, product) {
+				n++
+			}
+		}
+		if n > roles {
+			at, roles = i, n
+		}
+	}
+	if roles <= 0 && len(rows) > 0 {
+		// Nothing known: the first row as wide as most.
+		widths, most := map[int]int{}, 0
+		for _, r := range rows {
+			widths[len(r.cells)]++
+			most = max(most, widths[len(r.cells)])
+		}
+		for i, r := range rows {
+			if widths[len(r.cells)] == most {
+				return i, 0
+			}
+		}
+	}
+	return at, roles
+}
+
+var anyRoleName = func() map[string]bool {
+	m := map[string]bool{}
+	for _, names := range roleNames {
+		for _, n := range names {
+			m[n] = true
+		}
+	}
+	return m
+}()
+
+func isRoleName(cell string, product *config.Product) bool {
+	if cell == "" || len(cell) > 64 {
+		return false
+	}
+	if product != nil {
+		for _, name := range product.Columns {
+			if strings.EqualFold(name, cell) {
+				return true
+			}
+		}
+		for _, t := range product.Tests {
+			if n, _ := bracket(cell); strings.EqualFold(t.Name, n) || strings.EqualFold(t.Name, cell) {
+				return true
+			}
+		}
+	}
+	name, _ := bracket(cell)
+	return anyRoleName[plainName(name)]
+}
+
+// comment takes "# key: value" as an attribute of the lot.
+func (l *layout) comment(s string) {
+	s = strings.TrimSpace(strings.TrimLeft(s, "# \t"))
+	key, value, ok := strings.Cut(s, ":")
+	if !ok {
+		key, value, ok = strings.Cut(s, "=")
+	}
+	l.attribute(key, value, ok)
+}
+
+// preamble takes a line above the header, "Lot: A" or "Lot,A", as an attribute.
+func (l *layout) preamble(r headRow) {
+	var cells []string
+	for _, c := range r.cells {
+		if c != "" {
+			cells = append(cells, c)
+		}
+	}
+	switch len(cells) {
+	case 1:
+		l.comment(cells[0])
+	case 2:
+		l.attribute(strings.TrimRight(cells[0], ":= "), cells[1], true)
+	}
+}
+
+func (l *layout) attribute(key, value string, ok bool) {
+	key, value = strings.TrimSpace(key), strings.Trim(strings.TrimSpace(value), `",;`+"\t")
+	value = strings.TrimSpace(value)
+	if !ok || key == "" || value == "" || len(key) > 40 || len(value) > 200 {
+		return
+	}
+	l.attributes = append(l.attributes, [2]string{key, value})
+}
+
+// commented gives the value of a comment whose key names a role.
+func (l *layout) commented(role string) string {
+	for _, kv := range l.attributes {
+		for _, n := range roleNames[role] {
+			if plainName(kv[0]) == n {
+				return kv[1]
+			}
+		}
+	}
+	return ""
+}
+
+// assignRoles gives each role its column: those of the product file first,
+// then by the usual names. Returned by column of the file.
+func (l *layout) assignRoles(product *config.Product) ([]string, error) {
+	roles := make([]string, len(l.names))
+	seen := map[string]int{}
+	for i, n := range l.names {
+		low := strings.ToLower(n)
+		if j, ok := seen[low]; ok && low != "" {
+			return nil, l.fail(l.headerLine, n, fmt.Sprintf("the header has this name twice, in columns %d and %d", j+1, i+1), "rename one of them")
+		}
+		seen[low] = i
+	}
+	taken := map[string]bool{}
+	isTest := make([]bool, len(l.names))
+	if product != nil {
+		for _, role := range roleOrder {
+			name, ok := product.Columns[role]
+			if !ok {
+				continue
+			}
+			i, ok := seen[strings.ToLower(strings.TrimSpace(name))]
+			if !ok {
+				return nil, l.fail(l.headerLine, name, fmt.Sprintf("the product file names this column for %s, and the header does not have it; the header holds %s",
+					role, list(l.names, 12)), "correct columns."+role+" of the product file")
+			}
+			roles[i], taken[role] = role, true
+		}
+		for i, n := range l.names {
+			isTest[i] = roles[i] == "" && productTest(product, n) >= 0
+		}
+	}
+	l.findRole("test", roles, taken, isTest)
+	l.findRole("value", roles, taken, isTest)
+	l.long = taken["test"] && taken["value"]
+	if !l.long {
+		// TEST or RESULT alone is a column like others; RESULT may be a pass flag.
+		for i, role := range roles {
+			if longRoles[role] || role == secondColumn {
+				roles[i] = ""
+			}
+		}
+	}
+	for _, role := range roleOrder {
+		if role != "test" && role != "value" && (l.long || !longRoles[role]) {
+			l.findRole(role, roles, taken, isTest)
+		}
+	}
+	return roles, nil
+}
+
+// secondColumn stands for the role of a column that says again what another
+// column says better; it is kept as an attribute.
+const secondColumn = "attribute"
+
+// findRole gives a role the first column that bears one of its names.
+func (l *layout) findRole(role string, roles []string, taken map[string]bool, isTest []bool) {
+	for _, n := range roleNames[role] {
+		for i, name := range l.names {
+			if roles[i] != "" || isTest[i] || plainName(name) != n {
+				continue
+			}
+			if taken[role] {
+				// A second column of the same meaning, as LOT beside LOT_ID.
+				roles[i] = secondColumn
+				continue
+			}
+			roles[i], taken[role] = role, true
+		}
+	}
+}
+
+func contains(list []string, s string) bool {
+	for _, l := range list {
+		if l == s {
+			return true
+		}
+	}
+	return false
+}
+
+// productTest finds a header name among the product's tests, -1 when absent.
+func productTest(product *config.Product, header string) int {
+	if product == nil {
+		return -1
+	}
+	name, _ := bracket(header)
+	for i := range product.Tests {
+		if strings.EqualFold(product.Tests[i].Name, strings.TrimSpace(header)) {
+			return i
+		}
+	}
+	for i := range product.Tests {
+		if strings.EqualFold(product.Tests[i].Name, name) {
+			return i
+		}
+	}
+	return -1
+}
+
+// findDecimal judges from the sample which character parts the fraction.
+func (l *layout) findDecimal() {
+	points, commas := 0, 0
+	for _, r := range l.sample {
+		for _, c := range r {
+			switch {
+			case strings.IndexByte(c, '.') >= 0 && isDecimal([]byte(c), '.'):
+				points++
+			case strings.IndexByte(c, ',') >= 0 && isDecimal([]byte(c), ','):
+				commas++
+			}
+		}
+	}
+	if commas > points {
+		l.decimal = ','
+	}
+	l.decimalSeen = points+commas > 0
+}
+
+// check refuses a layout that cannot be a table of dice.
+func (l *layout) check(product *config.Product) error {
+	wafer, values := l.commented("wafer") != "", 0
+	for _, f := range l.fields {
+		wafer = wafer || f.kind == textField && f.slot == textWafer
+		if f.kind == valueField {
+			values++
+		}
+	}
+	holds := "the header holds " + list(l.names, 12)
+	switch {
+	case allNumbers(l.names):
+		return l.fail(l.headerLine, "", "no header found: the first row holds numbers only", "put a row with the names of the columns first")
+	case !wafer:
+		return l.fail(l.headerLine, "", "no wafer column found: looked for "+list(roleNames["wafer"][:7], 7)+" and the like; "+holds,
+			"rename the column, or name it under columns.wafer in the product file")
+	case len(l.sample) == 0:
+		return l.fail(l.headerLine, "", "there is a header and no data row under it", "export the table again")
+	case values == 0:
+		return l.fail(l.headerLine, "", "no column of numbers found that could be a test; "+holds, "check the export, and that decimal signs and separators are what they seem")
+	}
+	return nil
+}
+
+func allNumbers(cells []string) bool {
+	n := 0
+	for _, c := range cells {
+		if c == "" {
+			continue
+		}
+		if !isDecimal([]byte(c), '.') && !isDecimal([]byte(c), ',') {
+			return false
+		}
+		n++
+	}
+	return n > 0
+}
+
+// limit reads a cell of a limit row, NaN for none.
+func (l *layout) limit(cell string) float64 {
+	v, st := parseNumber([]byte(cell), l.decimal)
+	if st != cellNumber || math.Abs(v) >= 1e30 {
+		return math.NaN()
+	}
+	return v
+}

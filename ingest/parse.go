@@ -1,0 +1,437 @@
+package ingest
+
+import (
+	"bytes"
+	"math"
+)
+
+// parser turns blocks into chunks. One goroutine uses it at a time.
+type parser struct {
+	l        *layout
+	file     int
+	values   int  // columns of values in a chunk
+	careful  bool // every row through the full reader
+	lastFull row
+	interns  []interner // by text slot
+	textOf   []int      // text slots that the file has
+}
+
+// newParser prepares for a layout. careful keeps the fast path out, which
+// gives the same columns.
+func newParser(l *layout, sch *schema, file int, careful bool) *parser {
+	p := &parser{l: l, file: file, careful: careful || l.decimal == l.sep || headerParses(l), values: len(sch.tests)}
+	if l.long {
+		p.values = longColumns
+	}
+	p.interns = make([]interner, textAttributes+len(sch.attributes))
+	for _, f := range l.fields {
+		if f.kind == textField {
+			p.textOf = append(p.textOf, f.slot)
+		}
+	}
+	return p
+}
+
+// headerParses says whether the header itself could be read as a row of data:
+// test names may be numbers. Then only the full reader knows it again.
+func headerParses(l *layout) bool {
+	for i, f := range l.fields {
+		if f.kind == valueField || f.kind == intField {
+			if _, st := parseNumber([]byte(l.names[i]), l.decimal); st != cellNumber && st != cellEmpty {
+				return false
+			}
+		}
+	}
+	return true
+}
+
+// interner numbers the texts of a column within a chunk.
+type interner struct {
+	codes map[string]int32
+	dict  []string
+	last  []byte // raw bytes of the last cell seen
+	code  int32
+}
+
+// intern gives the code of a cell.
+func (t *interner) intern(raw []byte) int32 {
+	if len(raw) == len(t.last) && string(raw) == string(t.last) && t.last != nil {
+		return t.code
+	}
+	t.last = raw
+	code, ok := t.codes[string(raw)]
+	if !ok {
+		// The same text may be written in several ways (blanks around it).
+		text := cellText(raw)
+		if text == "" {
+			code = -1
+		} else if code, ok = t.codes[text]; !ok {
+			code = int32(len(t.dict))
+			t.dict = append(t.dict, text)
+			t.codes[text] = code
+		}
+		t.codes[string(raw)] = code
+	}
+	t.code = code
+	return code
+}
+
+// block parses one block.
+func (p *parser) block(b *block) *chunk {
+	c := p.newChunk(b.lines)
+	buf := b.buf
+	careful := p.careful || b.nul
+	i, slow := 0, newLines(b)
+	lastLine := len(buf)
+	if b.cut {
+		lastLine = bytes.LastIndexByte(buf[:len(buf)-1], '\n') + 1
+	}
+	for i < len(buf) {
+		switch {
+		case buf[i] == '\n':
+			i++
+			continue
+		case buf[i] == '#':
+			i += bytes.IndexByte(buf[i:], '\n') + 1
+			continue
+		}
+		next, ok := 0, false
+		if !careful && i < lastLine {
+			next, ok = p.fastRow(buf, i, c)
+		}
+		if !ok {
+			next = p.fullRow(b, i, c, slow)
+		}
+		i = next
+	}
+	for _, s := range p.textOf {
+		c.text[s].dict = p.interns[s].dict
+	}
+	c.trim()
+	return c
+}
+
+func (p *parser) newChunk(rows int) *chunk {
+	c := &chunk{file: p.file, text: make([]textColumn, len(p.interns)), values: make([][]float64, p.values), cells: make([]cellCount, len(p.l.fields))}
+	for _, f := range p.l.fields {
+		switch f.kind {
+		case textField:
+			c.text[f.slot].codes = make([]int32, rows)
+			p.interns[f.slot] = interner{codes: map[string]int32{}}
+		case intField:
+			c.ints[f.slot] = make([]int32, rows)
+		case passField:
+			c.pass = make([]int8, rows)
+		case valueField:
+			c.values[f.slot] = make([]float64, rows)
+		}
+	}
+	return c
+}
+
+// trim cuts the columns to the rows used.
+func (c *chunk) trim() {
+	for i := range c.text {
+		if c.text[i].codes != nil {
+			c.text[i].codes = c.text[i].codes[:c.n]
+		}
+	}
+	for i := range c.ints {
+		if c.ints[i] != nil {
+			c.ints[i] = c.ints[i][:c.n]
+		}
+	}
+	if c.pass != nil {
+		c.pass = c.pass[:c.n]
+	}
+	for i := range c.values {
+		if c.values[i] != nil {
+			c.values[i] = c.values[i][:c.n]
+		}
+	}
+}
+
+// fastRow reads a row of plain cells into row c.n: unquoted, numbers in plain
+// digits, as many fields as the header. Where anything else stands it gives up
+// and leaves the row to fullRow, which takes the same cells for the same
+// values.
+func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
+	sep, decimal, n := p.l.sep, p.l.decimal, c.n
+	last := len(p.l.fields) - 1
+	for k := range p.l.fields {
+		f := &p.l.fields[k]
+		switch f.kind {
+		case valueField:
+			v, j, st := scanNumber(b, i, sep, decimal)
+			if st == cellOdd {
+				return 0, false
+			}
+			c.values[f.slot][n] = v
+			i = j
+		case intField:
+			v, j, st := scanInt(b, i, sep)
+			if st == cellOdd {
+				return 0, false
+			}
+			c.ints[f.slot][n] = v
+			i = j
+		default:
+			if b[i] == '"' {
+				return 0, false
+			}
+			j := i
+			for b[j] != sep && b[j] != '\n' {
+				j++
+			}
+			raw := b[i:j]
+			if b[j] == '\n' {
+				raw = dropCR(raw)
+			}
+			switch f.kind {
+			case textField:
+				c.text[f.slot].codes[n] = p.interns[f.slot].intern(raw)
+			case passField:
+				v := int8(-1)
+				if len(raw) > 0 {
+					if v = passFlag(raw); v < 0 {
+						return 0, false
+					}
+				}
+				c.pass[n] = v
+			}
+			i = j
+		}
+		if k == last {
+			break
+		}
+		if b[i] != sep {
+			return 0, false
+		}
+		i++
+	}
+	if b[i] == sep && (b[i+1] == '\n' || b[i+1] == '\r' && b[i+2] == '\n') {
+		i = bytes.IndexByte(b[i:], '\n') + i // one empty field more, at the end of every row
+	}
+	if b[i] != '\n' {
+		return 0, false
+	}
+	if p.allEmpty(c, n) {
+		return 0, false
+	}
+	c.n++
+	c.rows.read++
+	return i + 1, true
+}
+
+// allEmpty says whether row n holds nothing at all. Nearly every row is told
+// by its first column.
+func (p *parser) allEmpty(c *chunk, n int) bool {
+	for k := range p.l.fields {
+		f := &p.l.fields[k]
+		switch f.kind {
+		case textField:
+			if c.text[f.slot].codes[n] >= 0 {
+				return false
+			}
+		case intField:
+			if c.ints[f.slot][n] != Missing {
+				return false
+			}
+		case passField:
+			if c.pass[n] >= 0 {
+				return false
+			}
+		case valueField:
+			if !math.IsNaN(c.values[f.slot][n]) {
+				return false
+			}
+		}
+	}
+	return true
+}
+
+// lines finds line numbers within a block, counting on from the last place.
+type lines struct {
+	b    *block
+	at   int
+	line int
+}
+
+func newLines(b *block) *lines { return &lines{b: b, line: b.line} }
+
+func (l *lines) of(i int) int {
+	l.line += bytes.Count(l.b.buf[l.at:i], []byte{'\n'})
+	l.at = i
+	return l.line
+}
+
+// fullRow reads the row at i whatever it holds, and counts what is odd in it.
+func (p *parser) fullRow(b *block, i int, c *chunk, where *lines) (next int) {
+	r := &p.lastFull
+	splitRow(b.buf, i, p.l.sep, len(p.l.fields), true, r)
+	next = r.next
+	fields := r.fields
+	if len(fields) == 1 && len(bytes.TrimSpace(fields[0])) == 0 {
+		return next
+	}
+	at := func() place { return place{line: where.of(i)} }
+	c.rows.read++
+	want := len(p.l.fields)
+	empty := true
+	for _, f := range fields {
+		if len(bytes.TrimSpace(f)) > 0 {
+			empty = false
+			break
+		}
+	}
+	switch {
+	case b.nul && bytes.IndexByte(b.buf[i:next], 0) >= 0:
+		c.rows.binary++
+		c.rows.firstBinary.first(at())
+		return next
+	case b.cut && next == len(b.buf) && p.broken(b, i, fields):
+		c.rows.cut++
+		c.rows.firstCut.first(at())
+		return next
+	case empty:
+		c.rows.blank++
+		return next
+	case len(fields) > want && !blank(fields[want:]):
+		c.rows.long++
+		c.rows.firstLong.first(at())
+		return next
+	case p.isHeader(fields):
+		c.rows.header++
+		c.rows.firstHeader.first(at())
+		return next
+	}
+	if r.unclosed {
+		c.rows.unclosed++
+		c.rows.firstUnclosed.first(at())
+	}
+	if len(fields) < want {
+		c.rows.short++
+		c.rows.firstShort.first(at())
+	}
+	for k := range p.l.fields {
+		var cell []byte
+		if k < len(fields) {
+			cell = fields[k]
+		}
+		p.store(c, k, cell, at)
+	}
+	c.n++
+	return next
+}
+
+func blank(fields [][]byte) bool {
+	for _, f := range fields {
+		if len(bytes.TrimSpace(f)) > 0 {
+			return false
+		}
+	}
+	return true
+}
+
+// store puts one cell of the full reader into row c.n.
+func (p *parser) store(c *chunk, k int, cell []byte, at func() place) {
+	f, n := p.l.fields[k], c.n
+	switch f.kind {
+	case textField:
+		c.text[f.slot].codes[n] = p.interns[f.slot].intern(cell)
+		return
+	case skipField:
+		return
+	}
+	t := bytes.TrimSpace(cell)
+	count := &c.cells[k]
+	here := func() place { pl := at(); pl.text = cellText(t); return pl }
+	switch f.kind {
+	case passField:
+		c.pass[n] = passFlag(t)
+		if c.pass[n] < 0 && len(t) > 0 && word(t) != cellMissing {
+			count.bad++
+			count.firstBad.first(here())
+		}
+		return
+	case intField:
+		v, st := parseInt(t, p.l.decimal)
+		c.ints[f.slot][n] = v
+		if st == cellBad || st == cellInf {
+			count.bad++
+			count.firstBad.first(here())
+		}
+		return
+	}
+	v, st := parseNumber(t, p.l.decimal)
+	switch st {
+	case cellNumber:
+		c.values[f.slot][n] = v
+		return
+	case cellMissing:
+		count.missing++
+	case cellOver:
+		count.over++
+		count.firstOver.first(here())
+	case cellInf:
+		count.inf++
+		count.firstInf.first(here())
+	case cellBad:
+		count.bad++
+		count.firstBad.first(here())
+		if p.l.decimal == '.' && isDecimal(t, ',') {
+			count.comma++
+		}
+	}
+	c.values[f.slot][n] = math.NaN()
+}
+
+// isHeader says whether a row repeats the header, as when files were joined.
+func (p *parser) isHeader(fields [][]byte) bool {
+	if len(fields) < len(p.l.header) {
+		return false
+	}
+	for i, h := range p.l.header {
+		if !bytes.Equal(bytes.TrimSpace(fields[i]), bytes.TrimSpace(h)) {
+			return false
+		}
+	}
+	return true
+}
+
+// broken judges a last line without a line end. Many writers leave the last
+// line end out, so a whole row is taken for whole, unless its last cell looks
+// cut against those of the rows before it: shorter where they are all of one
+// length, with fewer decimals where they all have the same number, or empty
+// where they never are.
+func (p *parser) broken(b *block, i int, fields [][]byte) bool {
+	if b.torn || len(fields) < len(p.l.fields) {
+		return true
+	}
+	const enough, most = 5, 50
+	shape := func(c []byte) (length, decimals int) {
+		if d := bytes.LastIndexByte(c, p.l.decimal); d >= 0 {
+			decimals = len(c) - d - 1
+		}
+		return len(c), decimals
+	}
+	length, decimals := shape(bytes.TrimSpace(fields[len(fields)-1]))
+	seen, sameLength, sameDecimals := 0, true, true
+	firstLength, firstDecimals := 0, 0
+	for i > 0 && seen < most {
+		start := bytes.LastIndexByte(b.buf[:i-1], '\n') + 1
+		line := dropCR(b.buf[start : i-1])
+		i = start
+		if len(line) == 0 || line[0] == '#' {
+			continue
+		}
+		n, d := shape(bytes.TrimSpace(line[bytes.LastIndexByte(line, p.l.sep)+1:]))
+		if seen == 0 {
+			firstLength, firstDecimals = n, d
+		}
+		sameLength = sameLength && n == firstLength
+		sameDecimals = sameDecimals && d == firstDecimals
+		seen++
+	}
+	return seen >= enough && (sameLength && length < firstLength || sameDecimals && decimals < firstDecimals)
+}

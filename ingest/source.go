@@ -1,0 +1,159 @@
+package ingest
+
+import (
+	"bufio"
+	"bytes"
+	"crypto/sha256"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"hash"
+	"io"
+	"io/fs"
+	"os"
+
+	"github.com/klauspost/compress/gzip"
+	"github.com/klauspost/compress/zstd"
+)
+
+// source is one file as a stream of plain bytes, with the hash and the count
+// of its raw ones. It is used by one goroutine.
+type source struct {
+	path     string
+	file     *os.File
+	size     int64 // of the raw file
+	hash     hash.Hash
+	raw      int64  // bytes read of it
+	packed   string // "gzip", "zstd", ""
+	plain    io.Reader
+	closers  []func()
+	progress func(read int64)
+}
+
+// openSource opens a file and finds out by its first bytes how it is packed.
+func openSource(path string, progress func(int64)) (*source, error) {
+	info, err := os.Stat(path)
+	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		return nil, &Error{File: path, What: "there is no such file", Remedy: "check the name and the folder", Err: err}
+	case err != nil:
+		return nil, &Error{File: path, What: "cannot be read: " + bare(err), Remedy: "check the name and the permissions", Err: err}
+	case info.IsDir():
+		return nil, &Error{File: path, What: "is a folder", Remedy: "name the files in it"}
+	case !info.Mode().IsRegular():
+		return nil, &Error{File: path, What: "is not a regular file", Remedy: "save the data to a file first"}
+	}
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, &Error{File: path, What: "cannot be opened: " + bare(err), Remedy: "check the permissions", Err: err}
+	}
+	s := &source{path: path, file: f, size: info.Size(), hash: sha256.New(), progress: progress}
+	s.closers = append(s.closers, func() { f.Close() })
+	if err := s.unpack(); err != nil {
+		s.close()
+		return nil, err
+	}
+	return s, nil
+}
+
+// unpack tells packed files by their magic bytes (RFC 1952, RFC 8878), as
+// names lie.
+func (s *source) unpack() error {
+	raw := bufio.NewReaderSize(rawReader{s}, 256<<10)
+	magic, err := raw.Peek(4)
+	if err != nil && err != io.EOF {
+		return s.readError(err)
+	}
+	switch {
+	case bytes.HasPrefix(magic, []byte{0x1f, 0x8b}):
+		s.packed = "gzip"
+		z, err := gzip.NewReader(raw)
+		if err != nil {
+			return s.readError(err)
+		}
+		s.plain = z
+	case bytes.HasPrefix(magic, []byte{0x28, 0xb5, 0x2f, 0xfd}):
+		s.packed = "zstd"
+		z, err := zstd.NewReader(raw, zstd.WithDecoderConcurrency(1), zstd.WithDecoderMaxMemory(1<<30))
+		if err != nil {
+			return s.readError(err)
+		}
+		s.closers = append(s.closers, z.Close)
+		s.plain = z
+	default:
+		s.plain = raw
+		return s.knownOther(magic)
+	}
+	return nil
+}
+
+// knownOther refuses files that are clearly something else.
+func (s *source) knownOther(magic []byte) error {
+	for _, k := range []struct{ magic, what, remedy string }{
+		{"PK\x03\x04", "is a zip archive or a spreadsheet, not delimited text", "save it as CSV, or unpack it"},
+		{"PAR1", "is a Parquet file, not delimited text", "export it as CSV"},
+		{"ARRO", "is an Arrow file, not delimited text", "export it as CSV"},
+		{"\xd0\xcf\x11\xe0", "is an old spreadsheet file, not delimited text", "save it as CSV"},
+		{"%PDF", "is a PDF, not delimited text", "export the table as CSV"},
+		{"BZh", "is packed with bzip2", "unpack it, or pack it with gzip or zstd"},
+		{"\xfd7zX", "is packed with xz", "unpack it, or pack it with gzip or zstd"},
+	} {
+		if bytes.HasPrefix(magic, []byte(k.magic)) {
+			return &Error{File: s.path, What: k.what, Remedy: k.remedy}
+		}
+	}
+	return nil
+}
+
+// rawReader counts and hashes what is read of the file.
+type rawReader struct{ s *source }
+
+func (r rawReader) Read(p []byte) (int, error) {
+	n, err := r.s.file.Read(p)
+	r.s.hash.Write(p[:n])
+	r.s.raw += int64(n)
+	if r.s.progress != nil {
+		r.s.progress(r.s.raw)
+	}
+	return n, err
+}
+
+func (s *source) readError(err error) *Error {
+	e := &Error{File: s.path, Err: err}
+	if s.packed != "" {
+		e.What = fmt.Sprintf("the %s data are damaged or cut short at about byte %d of %d: %s", s.packed, s.raw, s.size, bare(err))
+		e.Remedy = "fetch the file again"
+	} else {
+		e.What = fmt.Sprintf("reading failed at byte %d of %d: %s", s.raw, s.size, bare(err))
+		e.Remedy = "check the disk or the network drive"
+	}
+	return e
+}
+
+// drain reads what is left of the raw file, so that the hash is of all of it.
+func (s *source) drain() {
+	buf := make([]byte, 64<<10)
+	for {
+		if _, err := (rawReader{s}).Read(buf); err != nil {
+			return
+		}
+	}
+}
+
+func (s *source) sum() string { return hex.EncodeToString(s.hash.Sum(nil)) }
+
+func (s *source) close() {
+	for i := len(s.closers) - 1; i >= 0; i-- {
+		s.closers[i]()
+	}
+	s.closers = nil
+}
+
+// bare takes the path off an error of the file system: the message names it.
+func bare(err error) string {
+	var p *fs.PathError
+	if errors.As(err, &p) {
+		return p.Err.Error()
+	}
+	return err.Error()
+}
