@@ -13,8 +13,9 @@
 //  2. Every process quantity (a [Latent]: epi thickness, epi doping, base dose,
 //     lifetime ...) is a field over the lot: a lot level, a wafer level, a smooth
 //     part within the wafer (bowl and tilt) and a part of each die's own.
-//  3. A [Cause] shifts latents at some [Place] of some wafers, or damages single
-//     dice there.
+//  3. A [Cause] shifts latents at some [Place] of some wafers, damages single dice
+//     there, or makes the tester read one test wrongly; [NewCause] makes those of
+//     the cause catalogue.
 //  4. The laws of [Laws] turn a die's latents into what its tests would ideally
 //     read. Tests are correlated because they share latents, as in life: nothing
 //     draws a correlation matrix.
@@ -22,7 +23,8 @@
 //     the program bins, stops at the first fail if it is that kind, measures some
 //     dice again and loses some readings.
 //
-// Levels are ratios around each test's Typical value, in the unit of its data
+// [DemoSpec] is a whole example; [FromProduct] makes healthy lots of any product
+// file. Levels are ratios around each test's Typical value, in the unit of its data
 // file: the laws supply slopes, never absolute levels.
 //
 // # Random numbers

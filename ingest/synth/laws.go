@@ -19,7 +19,7 @@ type Laws struct {
 	ChargeBVCBO float64
 	// PlaneRatio is the plane junction's BVcbo over the edge-limited one.
 	PlaneRatio float64
-	// Stray is the part of Cob at Bias 10 V that no junction explains.
+	// Stray is the part of Cob that no junction explains.
 	Stray float64
 	// Modulation is the part of the ohmic collector resistance left in saturation.
 	Modulation float64
