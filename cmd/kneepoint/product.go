@@ -3,6 +3,7 @@ package main
 import (
 	"bytes"
 	"fmt"
+	"os"
 
 	"github.com/spf13/cobra"
 
@@ -35,6 +36,9 @@ tell; without -o it is printed.`,
 				_, err = c.OutOrStdout().Write(buf.Bytes())
 				return err
 			}
+			if _, err := os.Stat(out); err == nil {
+				return fmt.Errorf("%s: exists already, and may hold your edits; name another file, or move it away first", out)
+			}
 			if err := writeFile(out, files, buf.Bytes()); err != nil {
 				return err
 			}
@@ -42,6 +46,6 @@ tell; without -o it is printed.`,
 			return nil
 		},
 	}
-	c.Flags().StringVarP(&out, "out", "o", "", "file to write; refused when it is an input")
+	c.Flags().StringVarP(&out, "out", "o", "", "file to write; one that exists is not overwritten")
 	return c
 }

@@ -48,7 +48,7 @@ type lotwork struct {
 	pass         []bool
 	data         []yield.TestData // SI, in the order of lot.Tests
 	losses       yield.Losses
-	first        []int16 // first failing test of each die, -1 for none
+	first        []int32 // first failing test of each die, -1 for none
 	retested     []int   // by wafer
 	firstPassing []int   // by wafer: dice that passed when first measured
 	geo          wafermap.Geometry

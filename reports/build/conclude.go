@@ -19,7 +19,7 @@ func (w *lotwork) conclude() {
 	}
 	r.Program.RetestRule = "the last valid measurement of a die counts; the first is kept for the first-pass yield"
 	if policy := w.in.Settings.Retest; policy == "first" || policy == "best" {
-		r.Program.RetestRule = "the " + policy + " measurement of a die counts, as the settings ask"
+		r.Program.RetestRule = "the " + string(policy) + " measurement of a die counts, as the settings ask"
 		if policy == "best" {
 			r.Cautions = append(r.Cautions, "Retest policy 'best' can ship marginal parts: whoever releases the lot must know it was used.")
 		}

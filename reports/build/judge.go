@@ -12,7 +12,8 @@ import (
 
 // A judge decides whether a die passes. The rule, from the first that applies
 // (design 3.4): its bin is one of the product's passing bins; the file's own
-// flag; hard bin 1; every limit holds. A blank reading never fails a die.
+// flag; hard bin 1; every limit holds. A blank reading never fails a die, but a die
+// without a bin and without any reading does not pass.
 type judge struct {
 	bins    config.Bins
 	tests   []ingest.Test
@@ -59,13 +60,15 @@ func (j judge) passes(hard, soft int32, flag int8, value func(test int) (float64
 	if bin != ingest.Missing {
 		return bin == 1
 	}
+	read := false
 	for t := range j.tests {
 		v, mark := value(t)
 		if outside(v, mark, j.tests[t].Lower, j.tests[t].Upper) {
 			return false
 		}
+		read = read || !math.IsNaN(v)
 	}
-	return true
+	return read
 }
 
 // outside reports whether a reading breaks a limit. A reading at the limit
@@ -133,7 +136,7 @@ func (w *lotwork) testLosses() {
 		w.data[t] = yield.TestData{Values: w.lot.Values(t), Censor: w.lot.Censor(t), Lower: tests[t].Lower, Upper: tests[t].Upper}
 	}
 	w.losses = yield.TestLosses(w.data, w.pass, w.in.Settings.MarginalPercent/100)
-	w.first = yield.FirstFails(w.data, w.pass)
+	w.first = yield.FirstFailing(w.data, w.pass)
 	w.rep.Program.StopOnFail = w.losses.StopOnFail
 	w.rep.Program.Text = w.losses.StopText
 	d := w.losses.Disagree

@@ -27,7 +27,7 @@ func (w *lotwork) pictures() error {
 		switch {
 		case w.pass[i]:
 			state[i] = wafermap.StatePass
-		case lead >= 0 && w.first[i] == int16(lead):
+		case lead >= 0 && w.first[i] == int32(lead):
 			state[i] = wafermap.StateLead
 		default:
 			state[i] = wafermap.StateFail
@@ -40,7 +40,7 @@ func (w *lotwork) pictures() error {
 			return err
 		}
 		r := w.raster(wafer.ID, picture)
-		for s := 1; s < len(labels); s++ {
+		for s := wafermap.StatePass; int(s) < len(labels); s++ {
 			c := wafermap.DefaultPalette[s]
 			if picture.Counts[s] > 0 || s == wafermap.StatePass || s == wafermap.StateFail {
 				r.Legend = append(r.Legend, reports.Swatch{R: c.R, G: c.G, B: c.B, Label: labels[s], Dice: picture.Counts[s]})
@@ -53,7 +53,7 @@ func (w *lotwork) pictures() error {
 		}
 		stack.Add(x[wafer.Lo:wafer.Hi], y[wafer.Lo:wafer.Hi], fail)
 	}
-	picture, legend, err := stack.Paint(box)
+	picture, legend, err := wafermap.PaintRates(stack.X, stack.Y, stack.Failing, stack.Tested, box)
 	if err != nil {
 		return err
 	}

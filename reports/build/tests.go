@@ -26,7 +26,7 @@ func (w *lotwork) testAccount(t int, curve []yield.LimitPoint) reports.Test {
 	test := w.lot.Tests()[t]
 	x := inUnit(w.lot.Values(t), test.Unit)
 	marks := w.lot.Censor(t)
-	sum := stats.DescribeCensored(x, marks, quantileLevels)
+	sum := describe(x, marks, quantileLevels)
 	r := reports.Test{
 		Name: test.Name, Measures: test.Measures, Unit: test.Unit.Text, Condition: test.Condition,
 		Lower: shown(test.Lower, test.Unit), Upper: shown(test.Upper, test.Unit), LimitFrom: test.LimitsFrom,
@@ -143,7 +143,7 @@ func (w *lotwork) testByWafer(t int, x []float64, marks []int8) []reports.WaferL
 		if marks != nil {
 			m = marks[wafer.Lo:wafer.Hi]
 		}
-		sum := stats.DescribeCensored(x[wafer.Lo:wafer.Hi], m, waferLevels)
+		sum := describe(x[wafer.Lo:wafer.Hi], m, waferLevels)
 		level := reports.WaferLevel{Wafer: wafer.ID, N: sum.N, Median: num(sum.Median), MADSigma: num(sum.MADSigma),
 			Q05: reports.NaN, Q25: reports.NaN, Q75: reports.NaN, Q95: reports.NaN}
 		if len(sum.Quantiles) == len(waferLevels) {
