@@ -70,7 +70,6 @@ func ParseProduct(file string, data []byte) (*Product, error) {
 
 func (p *Product) read(c *collector, root map[string]any) {
 	top := c.block("", "", root)
-	top.missing("product", "name the part type, as in product: MP-N24")
 	p.Name = top.text("product", "MP-N24")
 	if top.has("device") {
 		p.Device = readDevice(c, top.values["device"])

@@ -1,6 +1,7 @@
 package config
 
 import (
+	"bytes"
 	"errors"
 	"math"
 	"os"
@@ -148,7 +149,6 @@ func TestLoadProductProblems(t *testing.T) {
 		text string
 		want []string // "key: what; remedy", "..." standing for anything
 	}{
-		"no product":           {"tests: [{name: T}]", []string{"product: missing; name the part type"}},
 		"no tests":             {"product: P", []string{"tests: missing; list the tests"}},
 		"empty tests":          {tests(""), []string{"tests: the list of tests is empty; list the tests"}},
 		"tests as keys":        {head + "tests: {T: {unit: V}}", []string{"tests: a block of keys stands where a list belongs; list the tests"}},
@@ -271,7 +271,7 @@ func TestLoadProductProblems(t *testing.T) {
 
 		"all at once, in the order of the schema": {
 			"tests: [{name: T, uppr: 1, unit: x}]\nzz: 1\nwafer: {notch: n}\ndevice: {polarity: x}\nbaseline: {yield: 2}\nbins: {pass: []}\ntest_temperature_c: x\ncauses: 1\ncolumns: {q: 1}",
-			[]string{"zz: ", "product: missing", "device.polarity: ", "wafer.notch: ", "columns.q: ", "bins.pass: ", "test_temperature_c: ",
+			[]string{"zz: ", "device.polarity: ", "wafer.notch: ", "columns.q: ", "bins.pass: ", "test_temperature_c: ",
 				"tests[0].uppr: ", "tests[0].unit: ", "baseline.yield: ", "causes: "}},
 	} {
 		_, lines := parse(c.text)
@@ -428,8 +428,16 @@ func FuzzLoadProduct(f *testing.F) {
 			}
 			return
 		}
-		if p.Name == "" || len(p.Tests) == 0 {
+		if len(p.Tests) == 0 {
 			t.Fatalf("accepted %+v", p)
+		}
+		var b bytes.Buffer
+		if err := Write(&b, p); err != nil {
+			t.Fatal(err)
+		}
+		again, err := ParseProduct("again.yaml", b.Bytes())
+		if diff := cmp.Diff(p, again, sameProduct); err != nil || diff != "" {
+			t.Fatalf("%v\n%s\n%s", err, diff, b.Bytes())
 		}
 	})
 }

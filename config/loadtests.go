@@ -270,7 +270,7 @@ func readBaselineTest(c *collector, path string, v any, t Test) BaselineTest {
 		b.missing("median", "give the typical reading in the test's unit")
 	}
 	median := b.number("median", "24.8")
-	if median < t.Unit.FromSI(t.Lower) || median > t.Unit.FromSI(t.Upper) {
+	if si := t.Unit.ToSI(median); si < t.Lower || si > t.Upper {
 		c.add(path+".median", fmt.Sprintf("median %s is outside of the test's limits %s", formatNumber(median),
 			limitText(t.Unit.FromSI(t.Lower), t.Unit.FromSI(t.Upper))), "give the median of healthy lots in the unit of the limits")
 	}
