@@ -24,8 +24,8 @@ type Moments struct {
 // MomentsOf computes the first four moments of x.
 //
 // The mean is a sum compensated by error-free additions (Knuth's two-sum; Ogita,
-// Rump and Oishi 2005, SIAM J. Sci. Comput. 26, 1955-1988), so that its error is
-// that of one division. The central moments take a second pass and are then
+// Rump and Oishi 2005, SIAM J. Sci. Comput. 26, 1955-1988), and is within one
+// unit in the last place of the exact mean. The central moments take a second pass and are then
 // corrected for the rounding of the mean (Chan, Golub and LeVeque 1983, The
 // American Statistician 37, 242-247, eq. 1.7, and its analogue for the third and
 // fourth power).
@@ -80,6 +80,15 @@ func (s *sum) merge(t sum) {
 
 func (s sum) value() float64 { return s.hi + s.lo }
 
+// over divides by n, keeping what the sum holds beyond a float64 and what the
+// division leaves over.
+func (s sum) over(n float64) float64 {
+	hi, lo := twoSum(s.hi, s.lo)
+	q := hi / n
+	left := math.FMA(-q, n, hi) // exact
+	return q + (left+lo)/n
+}
+
 // sumPass counts, and finds extremes and mean. Four accumulators run side by
 // side because one alone waits for its own last addition.
 func sumPass(x []float64) Moments {
@@ -104,7 +113,7 @@ func sumPass(x []float64) Moments {
 	total.merge(s[2])
 	total.merge(s[3])
 	if v := total.value(); !math.IsInf(v, 0) && v == v {
-		m.Mean = v / float64(m.N)
+		m.Mean = total.over(float64(m.N))
 	} else if m.N > 0 { // the sum overflows although the mean cannot
 		var t sum
 		for _, v := range x {
@@ -112,7 +121,7 @@ func sumPass(x []float64) Moments {
 				t.add(math.Ldexp(v, -64))
 			}
 		}
-		m.Mean = math.Ldexp(t.value()/float64(m.N), 64)
+		m.Mean = math.Ldexp(t.over(float64(m.N)), 64)
 	}
 	return m
 }

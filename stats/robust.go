@@ -127,6 +127,11 @@ func Huber(x []float64, k float64) (location, scale float64) {
 //
 // Source: Huber 1964 (as for [Huber]), proposal 2; divisor n-1.
 func HuberProposal2(x []float64, k float64) (location, scale float64) {
+	return huberProposal2(x, k, 10000)
+}
+
+// huberProposal2 takes at most so many steps.
+func huberProposal2(x []float64, k float64, steps int) (location, scale float64) {
 	checkHuber(k)
 	v := present(x)
 	var sel Selector
@@ -140,7 +145,7 @@ func HuberProposal2(x []float64, k float64) (location, scale float64) {
 	// E[psi(Z)^2] of a standard normal Z clipped to [-k, k].
 	th := math.Erf(k / math.Sqrt2)
 	beta := th + k*k*(1-th) - 2*k*math.Exp(-k*k/2)/math.Sqrt(2*math.Pi)
-	for range 10000 {
+	for range steps {
 		m := clippedMean(v, mu, k*s)
 		var ss sum
 		for _, y := range v {

@@ -1,0 +1,4 @@
+package stats
+
+// HuberProposal2Steps lets the reference driver stop where its reference stops.
+var HuberProposal2Steps = huberProposal2
