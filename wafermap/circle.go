@@ -69,7 +69,7 @@ func (f *fitter) fit() (c circle, ok bool) {
 // tuples visits sets of points to start from: all of them where they are few, else
 // a fixed random choice.
 func (f *fitter) tuples(try func([]int)) {
-	const most = 600
+	const most = 300
 	var use []int
 	for i := range f.x {
 		if f.out == nil || !f.out[i] {

@@ -51,8 +51,8 @@ func FindGeometry(x, y []int32, known Known) Geometry {
 	switch {
 	case len(p) < fewestSpots:
 		return none(fmt.Sprintf("the dice lie on %d distinct positions: at least %d are needed to find the wafer", len(p), fewestSpots))
-	case len(ax.values) < 3 || len(ay.values) < 3:
-		return none(fmt.Sprintf("the dice lie in %d columns and %d rows: at least 3 of each are needed to find the wafer", len(ax.values), len(ay.values)))
+	case ax.distinct < 3 || ay.distinct < 3:
+		return none(fmt.Sprintf("the dice lie in %d columns and %d rows: at least 3 of each are needed to find the wafer", ax.distinct, ay.distinct))
 	}
 	o := outline{spots: p, spacingX: float64(ax.spacing), spacingY: float64(ay.spacing), known: known}
 	if !o.find() {
@@ -71,6 +71,7 @@ type outline struct {
 
 	circle  circle
 	degrees float64
+	oval    string // what is wrong with the die size given
 }
 
 // wholeWay is how many degrees of outline hold a circle by themselves.
@@ -85,8 +86,19 @@ func (o *outline) find() bool {
 		o.w, o.h = k.DieWidthMM, k.DieHeightMM
 	}
 	free := o.settle()
-	if o.h == 0 || free && o.degrees >= wholeWay {
+	if o.h == 0 {
 		return free
+	}
+	if round, text := o.roundness(); text != "" {
+		// the centre of the oval is that of the wafer all the same; its radius is that of
+		// the circle of equal area
+		rho := round.circle.rho * math.Sqrt(o.w*o.h/(round.circle.w*round.circle.h))
+		o.circle, o.degrees, o.oval = round.circle, round.degrees, text
+		o.circle.rho, o.circle.w, o.circle.h = rho, o.w, o.h
+		return true
+	}
+	if free && o.degrees >= wholeWay {
+		return true
 	}
 	o.diameter = k.DiameterMM
 	if free && !(o.diameter > 0) {
@@ -228,17 +240,13 @@ func (o *outline) geometry() Geometry {
 func (o *outline) caution(g Geometry) string {
 	k := o.known
 	partial := g.OutlineDegrees < wholeWay
-	dense := o.spacingX == 1 && o.spacingY == 1 && len(o.spots) >= 100
 	switch {
+	case o.oval != "":
+		return o.oval
 	case o.h > 0 && k.DiameterMM > 0 && g.OutlineRadius > k.DiameterMM/2+math.Hypot(g.DieWidthMM, g.DieHeightMM):
 		return fmt.Sprintf("the tested dice reach %.4g mm from their centre, over the edge of a %g mm wafer: check the die size and the diameter", g.OutlineRadius, k.DiameterMM)
-	case o.h > 0 && !partial && dense:
-		if text := o.roundness(); text != "" {
-			return text
-		}
-		if k.DiameterMM > 0 && g.OutlineRadius < 0.35*k.DiameterMM {
-			return fmt.Sprintf("the tested dice reach only %.4g mm from their centre on a %g mm wafer: check the die size and the diameter", g.OutlineRadius, k.DiameterMM)
-		}
+	case o.h > 0 && !partial && o.dense() && g.OutlineRadius < 0.35*k.DiameterMM:
+		return fmt.Sprintf("the tested dice reach only %.4g mm from their centre on a %g mm wafer: check the die size and the diameter", g.OutlineRadius, k.DiameterMM)
 	case partial && o.h == 0:
 		return fmt.Sprintf("the outline is seen over %.0f of 360 degrees: without the die size the centre is uncertain", g.OutlineDegrees)
 	case partial && !(k.DiameterMM > 0):
@@ -247,21 +255,29 @@ func (o *outline) caution(g Geometry) string {
 	return ""
 }
 
-// roundness compares the given die size with the one that makes the outline of a
-// full map round.
-func (o *outline) roundness() string {
-	given := math.Log(o.h / o.w)
-	free := outline{spots: o.spots, spacingX: 1, spacingY: 1, w: 1}
-	if !free.settle() {
-		return ""
+// dense reports whether the map is fine and full enough to judge sizes by it.
+func (o *outline) dense() bool {
+	return o.spacingX == 1 && o.spacingY == 1 && len(o.spots) >= 100
+}
+
+// roundness compares the die size given with the one that makes the outline of a
+// whole, dense map round, and returns that outline and what is wrong when they
+// differ.
+func (o *outline) roundness() (round outline, wrong string) {
+	if !o.dense() {
+		return round, ""
 	}
-	found := math.Log(free.circle.h)
-	if math.Abs(found-given) < max(0.1, 4*free.circle.ratioSE) {
-		return ""
+	round = outline{spots: o.spots, spacingX: 1, spacingY: 1, w: 1}
+	if !round.settle() || round.degrees < 300 {
+		return round, ""
+	}
+	given, found := math.Log(o.h/o.w), math.Log(round.circle.h)
+	if math.Abs(found-given) < max(0.1, 4*round.circle.ratioSE) {
+		return round, ""
 	}
 	hint := "check die_width_mm and die_height_mm"
 	if math.Abs(found+given) < 0.1 {
 		hint = "are die_width_mm and die_height_mm swapped?"
 	}
-	return fmt.Sprintf("with the die size given the tested dice form an oval; they form a circle when dice are %.3g times as high as wide, not %.3g: %s", free.circle.h, o.h/o.w, hint)
+	return round, fmt.Sprintf("with the die size given the tested dice form an oval; they form a circle when dice are %.3g times as high as wide, not %.3g: %s", round.circle.h, o.h/o.w, hint)
 }

@@ -70,57 +70,59 @@ func filter(p []spot, keep func(spot) bool) []spot {
 	return out
 }
 
-// axis ranks the distinct coordinates along one axis. In a map that samples every
-// fifth column, neighbouring columns have neighbouring ranks.
+// axis is the coordinates along one axis: how many distinct ones, the first, and
+// the usual distance of neighbouring ones, which is more than 1 in a map that
+// samples every few columns.
 type axis struct {
-	values  []int32
-	spacing int // usual distance of neighbouring values
+	distinct, first, last, spacing int
 }
 
 func newAxis(p []spot, of func(spot) int32) axis {
+	if len(p) == 0 {
+		return axis{}
+	}
 	v := make([]int32, len(p))
 	for i := range p {
 		v[i] = of(p[i])
 	}
 	slices.Sort(v)
-	v = slices.Clip(slices.Compact(v))
+	v = slices.Compact(v)
+	a := axis{distinct: len(v), first: int(v[0]), last: int(v[len(v)-1]), spacing: 1}
 	gaps := make([]int, 0, len(v))
 	for i := 1; i < len(v); i++ {
 		gaps = append(gaps, int(v[i])-int(v[i-1]))
 	}
 	slices.Sort(gaps)
-	a := axis{values: v, spacing: 1}
 	if len(gaps) > 0 {
 		a.spacing = gaps[len(gaps)/2]
 	}
 	return a
 }
 
-func (a axis) rank(v int32) int {
-	k, _ := slices.BinarySearch(a.values, v)
-	return k
-}
-
-func spotX(s spot) int32 { return s.x }
-func spotY(s spot) int32 { return s.y }
+// steps is the number of sampled columns that the axis has room for, and step the
+// one a coordinate falls into.
+func (a axis) steps() int       { return (a.last-a.first)/a.spacing + 1 }
+func (a axis) step(v int32) int { return (int(v) - a.first) / a.spacing }
+func spotX(s spot) int32        { return s.x }
+func spotY(s spot) int32        { return s.y }
 
 // withoutLonely drops dice that have far fewer dice round them than the usual die:
 // under a sixth in a square window that holds at least a dozen round the usual
 // one. At the rim of a disc it is close to a half, in the corner of a quarter
 // wafer a quarter.
 func withoutLonely(p []spot) []spot {
-	const fewest, usual, widest = 30, 12, 16
+	const fewest, usual, widest = 30, 12, 32
 	if len(p) < fewest {
 		return p
 	}
 	ax, ay := newAxis(p, spotX), newAxis(p, spotY)
-	columns, rows := len(ax.values)+1, len(ay.values)+1
-	if columns*rows > cellsAtMost {
+	columns, rows := ax.steps()+1, ay.steps()+1
+	if float64(columns)*float64(rows) > cellsAtMost {
 		return p
 	}
-	sums := make([]int32, columns*rows) // dice with smaller ranks in x and y
+	sums := make([]int32, columns*rows) // dice in earlier columns and rows
 	for _, s := range p {
-		sums[(ay.rank(s.y)+1)*columns+ax.rank(s.x)+1] = 1
+		sums[(ay.step(s.y)+1)*columns+ax.step(s.x)+1]++
 	}
 	for r := 1; r < rows; r++ {
 		for c := 1; c < columns; c++ {
@@ -131,7 +133,7 @@ func withoutLonely(p []spot) []spot {
 	around := make([]int32, len(p))
 	for half := 1; half <= widest; half *= 2 {
 		for i, s := range p {
-			cx, cy := ax.rank(s.x), ay.rank(s.y)
+			cx, cy := ax.step(s.x), ay.step(s.y)
 			c0, c1 := max(0, cx-half), min(columns-1, cx+half+1)
 			r0, r1 := max(0, cy-half), min(rows-1, cy+half+1)
 			around[i] = sums[r1*columns+c1] - sums[r0*columns+c1] - sums[r1*columns+c0] + sums[r0*columns+c0] - 1

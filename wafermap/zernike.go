@@ -78,9 +78,13 @@ type ZernikeFit struct {
 	Why          string
 }
 
+// farthest is how far out a die may lie, in radii, to take part in a fit: one at a
+// wrong place would carry any surface with it.
+const farthest = 1.1
+
 // FitZernike fits terms 1 to terms by least squares to a value at points of the
 // plane: mmX and mmY from the wafer's centre, in the unit of radius. Points with a
-// NaN or infinite value or place are left out. On a die grid the terms are only
+// NaN or infinite value or place, or more than a tenth outside the disc, are left out. On a die grid the terms are only
 // nearly orthogonal, so coefficients depend a little on how many terms are fitted.
 // With fewer points than terms, or terms that the points cannot tell apart, the
 // numbers are NaN, with a Why.
@@ -95,9 +99,13 @@ func FitZernike(mmX, mmY, value []float64, radius float64, terms int) ZernikeFit
 	for j := range f.Coefficients {
 		f.Coefficients[j] = nan
 	}
+	if !(radius > 0) {
+		f.Why = "the wafer's radius is not known"
+		return f
+	}
 	var rows []int
 	for i := range value {
-		if sum := mmX[i] + mmY[i] + value[i]; !math.IsNaN(sum) && !math.IsInf(sum, 0) {
+		if sum := mmX[i] + mmY[i] + value[i]; !math.IsNaN(sum) && !math.IsInf(sum, 0) && math.Hypot(mmX[i], mmY[i]) <= farthest*radius {
 			rows = append(rows, i)
 		}
 	}
