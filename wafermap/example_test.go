@@ -1,0 +1,70 @@
+package wafermap_test
+
+import (
+	"fmt"
+
+	"kneepoint/wafermap"
+)
+
+// Eight fails on a small wafer, once scattered and once together: the same yield,
+// but not the same wafer.
+func ExampleGrid_JoinCount() {
+	scattered := []string{
+		"    . . #    ",
+		"  . # . . #  ",
+		". # . . . . .",
+		". . . . # . .",
+		"# . . . . # .",
+		"  . . . . .  ",
+		"    . # .    ",
+	}
+	together := []string{
+		"    . . .    ",
+		"  . . . . .  ",
+		". . . . . . .",
+		". # # . . . .",
+		". # # # . . .",
+		"  . # # . .  ",
+		"    # . .    ",
+	}
+	for _, wafer := range [][]string{scattered, together} {
+		var x, y []int32
+		var fail []bool
+		for row, dice := range wafer {
+			for column, die := range dice {
+				if die != ' ' {
+					x, y = append(x, int32(column/2)), append(y, int32(-row))
+					fail = append(fail, die == '#')
+				}
+			}
+		}
+		grid := wafermap.NewGrid(x, y)
+		c := grid.JoinCount(fail, wafermap.Queen)
+		fmt.Printf("%d of %d dice fail: %.0f fail-fail joins where %.1f are expected, z = %.1f, p = %.2g\n",
+			c.Fails, c.N, c.FailFail, c.ExpectedFF, c.ZFF, c.PFF)
+		for _, cluster := range grid.Clusters(fail, wafermap.Queen, 3) {
+			fmt.Printf("a cluster of %d round (%.1f, %.1f)\n", cluster.Dice, cluster.CentreX, cluster.CentreY)
+		}
+	}
+	// Output:
+	// 8 of 37 dice fail: 3 fail-fail joins where 4.9 are expected, z = -1.0, p = 0.96
+	// 8 of 37 dice fail: 16 fail-fail joins where 4.9 are expected, z = 6.1, p = 0.0001
+	// a cluster of 8 round (2.0, -4.2)
+}
+
+func ExampleFindGeometry() {
+	var x, y []int32
+	for j := int32(-60); j <= 60; j++ { // a disc of 0.75 x 0.75 mm dice round the corner of four of them
+		for i := int32(-60); i <= 60; i++ {
+			if 4*(i*i+i+j*j+j)+2 < 4*62*62 {
+				x, y = append(x, i), append(y, j)
+			}
+		}
+	}
+	g := wafermap.FindGeometry(x, y, wafermap.Known{DieWidthMM: 0.75, DieHeightMM: 0.75})
+	fmt.Printf("centre (%.1f, %.1f), %g mm\n", g.CentreX, g.CentreY, g.DiameterMM)
+	fmt.Println("ring of die (50, 0):", g.Ring(50, 0, 5))
+	// Output:
+	// centre (-0.5, -0.5), 100 mm
+	// ring of die (50, 0): 3
+}
