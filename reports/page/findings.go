@@ -1,0 +1,162 @@
+package page
+
+import (
+	"strings"
+
+	"kneepoint/reports"
+)
+
+// causeCard is one physical cause with its evidence.
+type causeCard struct {
+	Name        string
+	Probability string
+	Bar         *bar
+	Why         string
+	Facts       []fact
+	For         *table
+	Against     *table
+	Next        *table
+}
+
+func newCauses(causes []reports.Cause) []causeCard {
+	var cards []causeCard
+	for _, c := range causes {
+		card := causeCard{Name: causeName(c), Probability: percent(c.Probability), Bar: shareBar(c.Probability, 1), Why: sentence(c.Why)}
+		if c.Loss.Estimate.Valid() {
+			card.Facts = append(card.Facts, fact{"loss", percent(c.Loss.Estimate) + " (" + percentRange(c.Loss) + ")"})
+		} else if c.Loss.Why != "" {
+			card.Facts = append(card.Facts, fact{"loss", notAvailable + ": " + c.Loss.Why})
+		}
+		if len(c.Wafers) > 0 {
+			card.Facts = append(card.Facts, fact{"wafers", strings.Join(c.Wafers, ", ")})
+		}
+		card.For, card.Against = evidenceTable("Speaks for it", c.For), evidenceTable("Speaks against it", c.Against)
+		if len(c.Next) > 0 {
+			card.Next = &table{Caption: "Measure next", Columns: []column{{Name: "Measurement"}, {Name: "Information, bits", Numeric: true}}}
+			for _, n := range c.Next {
+				card.Next.Rows = append(card.Next.Rows, []cell{text(n.Text), text(significant(float64(n.InformationBits), 2))})
+			}
+		}
+		cards = append(cards, card)
+	}
+	return cards
+}
+
+func evidenceTable(caption string, list []reports.Evidence) *table {
+	if len(list) == 0 {
+		return nil
+	}
+	t := &table{Caption: caption, Columns: []column{{Name: "Observation"}, {Name: "Log odds", Numeric: true}, {Name: "Test"}, {Name: "Wafers"}}}
+	for _, e := range list {
+		t.Rows = append(t.Rows, []cell{text(e.Text), text(score(e.LogOdds)), text(e.Test), text(strings.Join(e.Wafers, ", "))})
+	}
+	return t
+}
+
+// dispositionTable is the proposal wafer by wafer.
+func dispositionTable(d reports.Disposition) *table {
+	if len(d.Wafers) == 0 {
+		return nil
+	}
+	t := &table{Caption: "Proposal by wafer", Sortable: true, Columns: []column{{Name: "Wafer"}, {Name: "Proposal"}, {Name: "Because", Plain: true}}}
+	for _, w := range d.Wafers {
+		t.Rows = append(t.Rows, []cell{text(w.ID), text(w.Proposal), text(strings.Join(w.Because, "; "))})
+	}
+	return t
+}
+
+// epi is what the electrical data say of the epitaxial layer.
+type epi struct {
+	Table *table
+	Texts []string
+}
+
+func newEpi(r *reports.Report) *epi {
+	var list []epiRow
+	if r.Epi != nil {
+		list = append(list, epiRow{"lot", r.Epi})
+	}
+	for i := range r.Wafers {
+		if r.Wafers[i].Epi != nil {
+			list = append(list, epiRow{r.Wafers[i].ID, r.Wafers[i].Epi})
+		}
+	}
+	if len(list) == 0 {
+		if r.EpiWhy == "" {
+			return nil
+		}
+		return &epi{Texts: []string{"Epi thickness and doping: " + notAvailable + ". " + sentence(r.EpiWhy)}}
+	}
+	e := &epi{Table: epiTable(list)}
+	if r.Epi == nil {
+		if r.EpiWhy != "" {
+			e.Texts = append(e.Texts, sentence(r.EpiWhy))
+		}
+		return e
+	}
+	if r.Epi.Regime != "" {
+		e.Texts = append(e.Texts, "Regime: "+r.Epi.Regime+".")
+	}
+	if !r.Epi.ThicknessObservable {
+		e.Texts = append(e.Texts, "The thickness cannot be seen in these tests.")
+	}
+	if !r.Epi.Separable {
+		e.Texts = append(e.Texts, "Thickness and doping cannot be told apart by these tests.")
+	}
+	if r.Epi.Note != "" {
+		e.Texts = append(e.Texts, sentence(r.Epi.Note))
+	}
+	return e
+}
+
+type epiRow struct {
+	name string
+	*reports.Epi
+}
+
+func epiTable(rows []epiRow) *table {
+	t := &table{Caption: "Epi layer inferred from electrical data, with 95 % intervals", Columns: []column{{Name: "Of"},
+		{Name: "Net thickness, µm", Numeric: true}, {Name: "Thickness, µm", Numeric: true}, {Name: "Doping, cm⁻³", Numeric: true}, {Name: "Resistivity, Ω cm", Numeric: true}}}
+	estimate := func(i reports.Interval) cell {
+		if !i.Estimate.Valid() {
+			return text(orWhy(notAvailable, i.Why))
+		}
+		return text(value(i.Estimate) + " (" + valueRange(i) + ")")
+	}
+	for _, r := range rows {
+		t.Rows = append(t.Rows, []cell{text(r.name), estimate(r.NetThicknessUM), estimate(r.ThicknessUM), estimate(r.DopingCM3), estimate(r.ResistivityOhmCM)})
+	}
+	return t
+}
+
+// otherTables are the accounts of screens, variance, groups and associations;
+// those that the report does not have leave nothing behind.
+func otherTables(r *reports.Report) []table {
+	var out []table
+	add := func(t table) {
+		if len(t.Rows) > 0 {
+			out = append(out, t)
+		}
+	}
+	groups := table{Caption: "Groups of wafers with like maps", Columns: []column{{Name: "Group", Numeric: true}, {Name: "Wafers"}, {Name: "What they share"}}}
+	for _, g := range r.Groups {
+		groups.Rows = append(groups.Rows, []cell{counted(g.ID), text(strings.Join(g.Wafers, ", ")), text(g.Text)})
+	}
+	add(groups)
+	variance := table{Caption: "Where the spread comes from", Sortable: true, Columns: []column{{Name: "Test"}, {Name: "Level"}, {Name: "Sigma", Numeric: true}, {Name: "95 % interval", Numeric: true, Plain: true}, {Name: "Share of variance", Numeric: true}}}
+	for _, v := range r.Variance {
+		variance.Rows = append(variance.Rows, []cell{text(v.Test), text(v.Level), number(value(v.Sigma.Estimate), v.Sigma.Estimate), text(orWhy(valueRange(v.Sigma), v.Sigma.Why)), number(percent(v.Share), v.Share)})
+	}
+	add(variance)
+	associations := table{Caption: "What goes with what", Sortable: true, Columns: []column{{Name: "Of"}, {Name: "With"}, {Name: "Effect", Numeric: true}, {Name: "p", Numeric: true}, {Name: "Text", Plain: true}}}
+	for _, a := range r.Associations {
+		associations.Rows = append(associations.Rows, []cell{text(a.Of), text(a.With), number(value(a.Effect), a.Effect), number(pValue(a.PValue), a.PValue), text(a.Text)})
+	}
+	add(associations)
+	screens := table{Caption: "Screens for outlying dice", Sortable: true, Columns: []column{{Name: "Screen"}, {Name: "Dice", Numeric: true}, {Name: "Yield cost", Numeric: true}, {Name: "Text", Plain: true}}}
+	for _, s := range r.Screens {
+		screens.Rows = append(screens.Rows, []cell{text(s.Name), counted(s.Dice), number(percent(s.Loss), s.Loss), text(s.Text)})
+	}
+	add(screens)
+	return out
+}

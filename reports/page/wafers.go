@@ -1,0 +1,200 @@
+package page
+
+import (
+	"fmt"
+	"maps"
+	"slices"
+	"strings"
+
+	"kneepoint/reports"
+)
+
+// wafers is the section with every wafer's account.
+type wafers struct {
+	Maps  gallery
+	Chart *chart
+	Table *table
+}
+
+func newWafers(r *reports.Report) (wafers, error) {
+	var w wafers
+	var err error
+	if w.Maps, err = newGallery(r); err != nil {
+		return w, err
+	}
+	if len(r.Wafers) == 0 {
+		return w, nil
+	}
+	low := scaleFrom(waferYields(r.Wafers))
+	w.Table = waferTable(r, low)
+	w.Chart, err = waferChart(r, low)
+	return w, err
+}
+
+func waferYields(ws []reports.Wafer) []reports.Interval {
+	yields := make([]reports.Interval, len(ws))
+	for i := range ws {
+		yields[i] = ws[i].Yield
+	}
+	return yields
+}
+
+func waferTable(r *reports.Report, low float64) *table {
+	t := &table{Caption: "Wafers", Sortable: true, Columns: []column{
+		{Name: "Wafer"}, {Name: "Dice", Numeric: true}, {Name: "Yield", Numeric: true}, {Name: "95 % interval", Plain: true},
+		{Name: fmt.Sprintf("%s to 100%s%%", fixed(100*low, 0), space), Plain: true, Help: "yield with its interval, drawn"},
+		{Name: "First pass", Numeric: true}, {Name: "Retested", Numeric: true}, {Name: "Stands out"}, {Name: "Main losses", Plain: true},
+	}}
+	has := waferExtras(r)
+	if has.spatial {
+		t.Columns = append(t.Columns, column{Name: "Join count z", Numeric: true, Help: "fail-fail joins against chance, in standard deviations"},
+			column{Name: "p", Numeric: true, Help: "chance of so many joins or more, fails scattered at random"},
+			column{Name: "Largest cluster", Numeric: true, Help: "dice of the largest connected group of fails"})
+		t.Note = "Join count: more failing neighbours of failing dice than chance gives; a small p says that the fails are clustered."
+	}
+	if has.signatures {
+		t.Columns = append(t.Columns, column{Name: "Pattern", Plain: true})
+	}
+	if has.group {
+		t.Columns = append(t.Columns, column{Name: "Group", Numeric: true})
+	}
+	if has.proposals != nil {
+		t.Columns = append(t.Columns, column{Name: "Proposal"})
+	}
+	for _, a := range has.attributes {
+		t.Columns = append(t.Columns, column{Name: a})
+	}
+	for i := range r.Wafers {
+		w := &r.Wafers[i]
+		row := []cell{
+			text(w.ID), counted(w.Dice), number(percent(w.Yield.Estimate), w.Yield.Estimate), text(percentRange(w.Yield)),
+			{Bar: intervalBar(w.Yield, low, w.Stands == "low")},
+			number(percent(w.FirstPass), w.FirstPass), counted(w.Retested), {Text: w.Stands, Class: stands(w.Stands)}, text(shares(w.MainLoss)),
+		}
+		if !w.Yield.Estimate.Valid() && w.Yield.Why != "" {
+			row[3] = text(w.Yield.Why)
+		}
+		if has.spatial {
+			row = append(row, spatialCells(&w.Spatial)...)
+		}
+		if has.signatures {
+			row = append(row, text(signatures(w.Signatures)))
+		}
+		if has.group {
+			c := cell{}
+			if w.Group != 0 {
+				c = counted(w.Group)
+			}
+			row = append(row, c)
+		}
+		if has.proposals != nil {
+			row = append(row, text(has.proposals[w.ID]))
+		}
+		for _, a := range has.attributes {
+			row = append(row, text(w.Attributes[a]))
+		}
+		t.Rows = append(t.Rows, row)
+	}
+	return t
+}
+
+func stands(s string) string {
+	if s == "low" {
+		return "low"
+	}
+	return ""
+}
+
+// extras are the columns that only some reports have.
+type extras struct {
+	spatial, signatures, group bool
+	attributes                 []string
+	proposals                  map[string]string
+}
+
+func waferExtras(r *reports.Report) extras {
+	var e extras
+	names := map[string]bool{}
+	for i := range r.Wafers {
+		w := &r.Wafers[i]
+		e.spatial = e.spatial || w.Spatial.JoinCount != nil || len(w.Spatial.Clusters) > 0 || w.Spatial.Why != ""
+		e.signatures = e.signatures || len(w.Signatures) > 0
+		e.group = e.group || w.Group != 0
+		for a := range w.Attributes {
+			names[a] = true
+		}
+	}
+	e.attributes = slices.Sorted(maps.Keys(names))
+	if len(r.Disposition.Wafers) > 0 {
+		e.proposals = map[string]string{}
+		for _, d := range r.Disposition.Wafers {
+			e.proposals[d.ID] = d.Proposal
+		}
+	}
+	return e
+}
+
+func shares(list []reports.Share) string {
+	var parts []string
+	for _, s := range list {
+		parts = append(parts, s.Name+" "+percent(s.Share))
+	}
+	return strings.Join(parts, ", ")
+}
+
+func spatialCells(s *reports.Spatial) []cell {
+	z, p := text(notAvailable), text(notAvailable)
+	if s.Why != "" {
+		p = text(notAvailable + ": " + s.Why)
+	}
+	if j := s.JoinCount; j != nil {
+		z, p = number(score(j.Z), j.Z), number(pValue(j.PValue), j.PValue)
+	}
+	largest := text("none")
+	if len(s.Clusters) > 0 {
+		c := s.Clusters[0]
+		largest = cell{Text: plural(c.Dice, "die", "dice"), Sort: fmt.Sprint(c.Dice)}
+		if c.X.Valid() && c.Y.Valid() {
+			largest.Text += fmt.Sprintf(" at x%s%s, y%s%s", space, fixed(float64(c.X), 0), space, fixed(float64(c.Y), 0))
+		}
+		if c.RadiusMM.Valid() {
+			largest.Text += ", r" + space + fixed(float64(c.RadiusMM), 1) + space + "mm"
+		}
+	} else if s.Why != "" {
+		largest = text(notAvailable)
+	}
+	return []cell{z, p, largest}
+}
+
+func signatures(list []reports.Signature) string {
+	var parts []string
+	for _, s := range list {
+		part := s.Kind
+		if s.Loss.Valid() {
+			part += " (loss " + percent(s.Loss)
+			if s.PValue.Valid() {
+				part += ", p " + pValue(s.PValue)
+			}
+			part += ")"
+		}
+		parts = append(parts, part)
+	}
+	return strings.Join(parts, "; ")
+}
+
+// waferChart draws each wafer's yield with its interval, against the lot's and
+// the baseline's.
+func waferChart(r *reports.Report, low float64) (*chart, error) {
+	p := yieldChart{
+		ID: "chart-wafers", Label: "Yield by wafer with 95 % intervals. The numbers are in the table of wafers.",
+		Axis: "wafer", From: low, Lot: r.Yield.Estimate, Baseline: r.Yield.Baseline,
+		Columns: []string{"Wafer", "Yield", "95 % interval", "Dice", "Main losses"},
+	}
+	for i := range r.Wafers {
+		w := &r.Wafers[i]
+		p.Names, p.Yields, p.StandsLow = append(p.Names, w.ID), append(p.Yields, w.Yield), append(p.StandsLow, w.Stands == "low")
+		p.Rows = append(p.Rows, []string{w.ID, percent(w.Yield.Estimate), percentRange(w.Yield), count(w.Dice), shares(w.MainLoss)})
+	}
+	c, err := p.draw()
+	return &c, err
+}
