@@ -91,6 +91,7 @@ func (f *fails) move(t int, side float64, shifts []float64, stopOnFail bool) []L
 	}
 	c := mover{limit: side * limit, moved: moved,
 		lost: make([]int, len(moved)+1), saved: make([]int, len(moved)+1), open: make([]int, len(moved)+1)}
+	c.tabulate()
 	c.passing(test, f.pass, side)
 	if !stopOnFail {
 		c.failing(f, t, side)
@@ -107,19 +108,55 @@ func (f *fails) move(t int, side float64, shifts []float64, stopOnFail bool) []L
 	return points
 }
 
-// mover counts dice by moved limit. While counting, lost, saved and open hold
-// differences: an entry at i holds for the moved limits from i on (saved, open)
-// or up to i-1 (lost).
+// mover counts dice by moved limit: at moved limit i, lost passing dice fail,
+// saved failing ones are rescued, and open ones cannot be judged.
 type mover struct {
 	limit             float64
 	moved             []float64
 	lost, saved, open []int
+
+	start  [256]int32 // where the search for a value's place begins
+	lo     float64
+	cells  float64 // per unit of value
+	search bool
+}
+
+// tabulate cuts the range of the moved limits into cells, since millions of
+// readings ask for their place among a few limits.
+func (c *mover) tabulate() {
+	n := len(c.moved)
+	if n < 2 {
+		return
+	}
+	c.lo = c.moved[0]
+	c.cells = float64(len(c.start)) / (c.moved[n-1] - c.lo)
+	if c.search = c.cells > 0 && !math.IsInf(c.cells, 0); !c.search {
+		return
+	}
+	for i := range c.start {
+		at, _ := slices.BinarySearch(c.moved, c.lo+float64(i)/c.cells)
+		c.start[i] = int32(at)
+	}
 }
 
 // above is the number of moved limits below v, which are the ones v is beyond.
 func (c *mover) above(v float64) int {
-	i, _ := slices.BinarySearch(c.moved, v)
-	return i
+	if !c.search {
+		i, _ := slices.BinarySearch(c.moved, v)
+		return i
+	}
+	cell := (v - c.lo) * c.cells
+	if !(cell > 0) {
+		cell = 0
+	}
+	at := int(c.start[int(min(cell, float64(len(c.start)-1)))])
+	for at < len(c.moved) && c.moved[at] < v {
+		at++
+	}
+	for at > 0 && c.moved[at-1] >= v {
+		at--
+	}
+	return at
 }
 
 func (c *mover) passing(test *TestData, pass []bool, side float64) {

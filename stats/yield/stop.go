@@ -21,6 +21,7 @@ const (
 	enough     = 0.1  // share of dice at stopping tests that makes a program stop-on-fail
 	surely     = 1e-6 // chance of the blanks in a program that runs on
 	plausibly  = 0.01
+	fewFailing = 5
 	fewPassing = 20 // fewer passing dice do not show which tests are telling
 )
 
@@ -64,11 +65,13 @@ func (f *fails) findStop(l *Losses) {
 		}
 	}
 	stopping := 0
-	for _, c := range classes {
+	for t, c := range classes {
 		l.Cut += c.cut
 		l.Ran += c.ran
 		if c.cut > 0 && float64(c.cut) >= nearlyAll*float64(c.cut+c.ran) {
 			stopping += c.cut + c.ran
+		} else {
+			ends[t] = nil
 		}
 	}
 	n := l.Cut + l.Ran
@@ -106,7 +109,7 @@ func stopText(l *Losses, n int, chance float64) string {
 		where = "stops at the end of the group of tests that fails (after test number " + strings.Join(s, ", ") + ")"
 	}
 	sure := "certain"
-	if chance > surely {
+	if chance > surely || l.Cut < fewFailing {
 		sure = "likely, from few dice"
 	}
 	if float64(l.Cut) < nearlyAll*float64(n) && l.GroupEnds == nil {
@@ -117,11 +120,15 @@ func stopText(l *Losses, n int, chance float64) string {
 }
 
 // groupEnds returns where testing stops if that is later than at the failing
-// test, nil if it is at the failing test.
+// test, nil if it is at the failing test. ends is nil for tests that do not stop
+// the program.
 func groupEnds(ends [][]int) []int {
 	atOnce, later := 0, 0
 	var out []int
 	for t, e := range ends {
+		if e == nil {
+			continue
+		}
 		mode := t
 		for end, n := range e {
 			if n > e[mode] {
@@ -146,7 +153,7 @@ func groupEnds(ends [][]int) []int {
 
 // presence is the share of readings of each test on dice that have not failed
 // before it: passing dice and, when these are few, failing ones up to their
-// first fail. NaN where there is no such die.
+// first fail. NaN where there is no such die, and then the test is not telling.
 func (f *fails) presence() []float64 {
 	share := make([]float64, len(f.tests))
 	passing := len(f.pass) - len(f.dice)
@@ -199,6 +206,10 @@ func (f *fails) noTelling(l *Losses) {
 		l.StopOnFail = true
 		l.StopText = fmt.Sprintf("taken as stop-on-fail: all readings after the first fail are blank on %d of %d failing dice, "+
 			"and no die passes that could show them", l.Cut, l.Cut+l.Ran)
+		return
+	}
+	if l.Ran > 0 && float64(l.Ran) >= nearlyAll*float64(l.Cut+l.Ran) {
+		l.StopText = fmt.Sprintf("runs on: %d of %d failing dice hold readings after their first fail", l.Ran, l.Cut+l.Ran)
 		return
 	}
 	l.StopText = "not told: no test has readings on most dice"
