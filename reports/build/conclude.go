@@ -29,10 +29,7 @@ func (w *lotwork) conclude() {
 	r.Causes = []reports.Cause{{Cause: "unexplained", Probability: reports.NaN, Why: noCauses, Loss: none}}
 	r.EpiWhy = "this version does not infer the epi layer yet"
 	r.Disposition = reports.Disposition{Proposal: "cannot-say", YieldIfFixed: none,
-		Because: []string{noCauses + ": read the losses and maps, and decide by the site's own rules"}}
-	for _, wafer := range r.Wafers {
-		r.Disposition.Wafers = append(r.Disposition.Wafers, reports.WaferDisposition{ID: wafer.ID, Proposal: "cannot-say", Because: []string{noCauses}})
-	}
+		Because: []string{noCauses + ": read the losses and maps, and decide by the site's rules"}}
 	r.Cautions = append(r.Cautions,
 		"Releasing, holding or scrapping parts is for the people authorised to do so, under the site's rules and the customer's agreements; this report is advice.",
 		"Retesting at high voltage: use the interlock and a current limit, discharge before touching, and leave it to trained people.")
