@@ -14,11 +14,12 @@ type JoinCount struct {
 	// Moments and z = (count - expected) / sd under randomisation. NaN with
 	// Why where they are not defined.
 	ExpectedFF, VarianceFF, ZFF float64
+	SkewnessFF                  float64
 	ExpectedPF, VariancePF, ZPF float64
 	ExpectedPP, VariancePP, ZPP float64
 
 	// PFF is the chance of at least FailFail joins under randomisation (one-sided,
-	// clustering), by Method: "normal", "exact" or "permutation, ...".
+	// clustering), by Method: "exact", "gamma, three moments" or "permutation, ...".
 	// PFFNormal and PPPNormal are the upper tails of the normal law at ZFF and ZPP,
 	// whatever the method.
 	PFF                  float64
@@ -39,15 +40,20 @@ type JoinCount struct {
 // Processes, section 1.4; Moran 1948). Dice without neighbours take part: a fail may
 // land on them.
 //
-// The normal approximation is poor where few joins are expected: the count is
-// then skewed and the normal tail too thin (for a Poisson count with mean 5 the
-// chance of z >= 3 is four times the normal one). So with two or three fails the
-// p-value is exact; where fewer than normalFrom fail-fail or pass-pass joins are
-// expected it comes from seeded random placements, stopped early once it is
-// clear that there is nothing (Besag and Clifford 1991).
+// The normal approximation is poor where few joins are expected, and not good where
+// many are, because the count is skewed: where chance does as much once in a
+// thousand times, the normal tail is thin by a factor of two with 70 joins
+// expected and of more than ten with 7. So PFF does not use it. With two or three
+// fails it is exact. Where at least gammaFrom fail-fail and pass-pass joins are
+// expected it is the tail of the gamma law (Pearson's type III) with the count's
+// exact mean, variance and skewness, corrected for continuity: on discs of 100 to
+// 30,000 dice that is within a quarter of the truth down to 0.001, and
+// within a factor of two at 0.0001. Else it comes from seeded random placements, stopped early once it is
+// clear that there is nothing (Besag and Clifford 1991); it cannot then be smaller
+// than one over their number.
 func (g *Grid) JoinCount(fail []bool, n Neighbours) JoinCount {
 	g.check(len(fail))
-	c := JoinCount{N: g.Len(), ExpectedFF: nan, VarianceFF: nan, ZFF: nan, ExpectedPF: nan, VariancePF: nan, ZPF: nan,
+	c := JoinCount{N: g.Len(), ExpectedFF: nan, VarianceFF: nan, ZFF: nan, SkewnessFF: nan, ExpectedPF: nan, VariancePF: nan, ZPF: nan,
 		ExpectedPP: nan, VariancePP: nan, ZPP: nan, PFF: nan, PFFNormal: nan, PPPNormal: nan}
 	degrees := g.countJoins(&c, fail, n)
 	switch {

@@ -2,6 +2,7 @@ package wafermap
 
 import (
 	"math"
+	"math/rand/v2"
 	"testing"
 )
 
@@ -55,12 +56,12 @@ func TestJoinMomentsAreThoseOfAllPlacements(t *testing.T) {
 	g := NewGrid(x, y)
 	for _, n := range []Neighbours{Rook, Queen} {
 		for fails := 1; fails < len(x); fails++ {
-			var count, sumFF, sumFF2, sumPF, sumPF2 float64
+			var count, sumFF, sumFF2, sumFF3, sumPF, sumPF2 float64
 			tail := map[float64]float64{}
 			enumerate(len(x), fails, func(fail []bool) {
 				ff, pf := joins(x, y, fail, n)
 				count++
-				sumFF, sumFF2 = sumFF+ff, sumFF2+ff*ff
+				sumFF, sumFF2, sumFF3 = sumFF+ff, sumFF2+ff*ff, sumFF3+ff*ff*ff
 				sumPF, sumPF2 = sumPF+pf, sumPF2+pf*pf
 				for k := 0.0; k <= ff; k++ {
 					tail[k]++
@@ -87,10 +88,16 @@ func TestJoinMomentsAreThoseOfAllPlacements(t *testing.T) {
 				close("variance FF", c.VarianceFF, sumFF2/count-sq(sumFF/count), 1e-10)
 				close("expected PF", c.ExpectedPF, sumPF/count, 1e-12)
 				close("variance PF", c.VariancePF, sumPF2/count-sq(sumPF/count), 1e-10)
+				if m, v := sumFF/count, sumFF2/count-sq(sumFF/count); fails > 1 && v > 1e-9 {
+					close("skewness FF", c.SkewnessFF, (sumFF3/count-3*m*v-m*m*m)/math.Pow(v, 1.5), 1e-8)
+				}
 				p := tail[ff] / count
-				if c.Method == "exact" {
+				switch c.Method {
+				case "exact":
 					close("p", c.PFF, p, 1e-12)
-				} else { // standard errors of stopped random placements, and their floor
+				case "gamma, three moments": // as good as can be with so few dice
+					close("p", c.PFF, p, 0.05)
+				default: // standard errors of stopped random placements, and their floor
 					close("p", c.PFF, p, 4.5*p*math.Sqrt((1-p)/enough)+0.002)
 				}
 			})
@@ -191,5 +198,71 @@ func TestJoinCountPValuesAreFair(t *testing.T) {
 		if small > 11 || low > 250 {
 			t.Errorf("rate %v: %d of 400 below 0.01, %d below 0.5", rate, small, low)
 		}
+	}
+}
+
+// Where the gamma tail is used it must agree with random placements: within a
+// quarter down to p = 0.001, for few fails and for many.
+func TestGammaTailAgainstRandomPlacements(t *testing.T) {
+	for _, c := range []struct {
+		radius float64
+		n      Neighbours
+		fails  int
+	}{{12, Rook, 45}, {12, Queen, 30}, {12, Queen, 100}, {12, Queen, 340}, {12, Rook, 400}, {40, Queen, 100}, {40, Rook, 300}} {
+		const draws = 20000
+		x, y := disc(c.radius)
+		g := NewGrid(x, y)
+		start, near := g.adjacency(c.n)
+		random := rand.New(rand.NewPCG(12, 34))
+		deck := random.Perm(len(x))
+		fail := make([]bool, len(x))
+		counts := map[int]int{}
+		for range draws {
+			clear(fail)
+			ff := 0
+			for i := range c.fails {
+				k := i + random.IntN(len(deck)-i)
+				deck[i], deck[k] = deck[k], deck[i]
+				fail[deck[i]] = true
+				for _, q := range near[start[deck[i]]:start[deck[i]+1]] {
+					if fail[q] {
+						ff++
+					}
+				}
+			}
+			counts[ff]++
+		}
+		jc := g.JoinCount(fail, c.n)
+		if jc.Method != "gamma, three moments" {
+			t.Errorf("%+v: method %s", c, jc.Method)
+		}
+		tail := 0
+		for ff := jc.Joins; ff >= 0; ff-- {
+			tail += counts[ff]
+			p := float64(tail) / draws
+			if p < 0.001 || counts[ff] == 0 {
+				continue
+			}
+			got := upperGamma((float64(ff)-0.5-jc.ExpectedFF)/math.Sqrt(jc.VarianceFF), jc.SkewnessFF)
+			if math.Abs(got-p) > 0.25*p+3*math.Sqrt(p/draws) {
+				t.Errorf("%+v, at least %d joins: gamma %.3g, placements %.3g", c, ff, got, p)
+			}
+		}
+	}
+}
+
+// The gamma law must pass into the normal, and its mirror image mirror it.
+func TestUpperGamma(t *testing.T) {
+	for _, z := range []float64{-3, -1, 0, 0.5, 2, 4} {
+		if got, want := upperGamma(z, 1.1e-3), upperNormal(z); math.Abs(got/want-1) > 0.02 {
+			t.Errorf("z = %v, skewness 0.0011: %v, normal %v", z, got, want)
+		}
+		if got, want := upperGamma(z, -0.4), 1-upperGamma(-z, 0.4); math.Abs(got-want) > 1e-12 {
+			t.Errorf("z = %v: mirrored %v, want %v", z, got, want)
+		}
+	}
+	// skewness 2 is the exponential law: P(X >= z) = exp(-(z+1))
+	if got := upperGamma(1.5, 2); math.Abs(got-math.Exp(-2.5)) > 1e-14 {
+		t.Errorf("exponential: %v, want %v", got, math.Exp(-2.5))
 	}
 }

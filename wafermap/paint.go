@@ -26,6 +26,28 @@ func BoxOf(x, y []int32) Box {
 	return Box{MinX: b.X0, MaxX: b.X1, MinY: b.Y0, MaxY: b.Y1}
 }
 
+// Box returns the box of the dice that lie on the wafer, which stray coordinates
+// near it do not widen; that of BoxOf where the geometry is not known.
+func (g Geometry) Box(x, y []int32) Box {
+	b, found := BoxOf(x, y), false
+	if g.Unit == "" {
+		return b
+	}
+	b.YDown = g.YDown
+	for i := range x {
+		if !g.OnWafer(x[i], y[i]) {
+			continue
+		}
+		xi, yi := int(x[i]), int(y[i])
+		if !found {
+			b.MinX, b.MaxX, b.MinY, b.MaxY, found = xi, xi, yi, yi, true
+		}
+		b.MinX, b.MaxX = min(b.MinX, xi), max(b.MaxX, xi)
+		b.MinY, b.MaxY = min(b.MinY, yi), max(b.MaxY, yi)
+	}
+	return b
+}
+
 // Picture is a paletted PNG with one pixel a die or, where there are more
 // columns or rows than maxPixels, a block of Step x Step dice. Pixel (column, row)
 // covers die x from X0+column*Step, and die y from Y0+row*Step when YDown, else down

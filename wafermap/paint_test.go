@@ -107,6 +107,15 @@ func TestBoxOf(t *testing.T) {
 	if b := BoxOf(append(x, 2000000000, Missing), append(y, 5, 5)); b != (Box{MinX: -13, MaxX: 27, MinY: -20, MaxY: 20}) {
 		t.Errorf("box %+v", b)
 	}
+	// a stray close by widens BoxOf, but not the box of the wafer
+	x, y = append(x, 38), append(y, 0)
+	want := Box{MinX: -13, MaxX: 27, MinY: -20, MaxY: 20}
+	if b := FindGeometry(x, y, Known{}).Box(x, y); b != want {
+		t.Errorf("box of the wafer %+v, want %+v", b, want)
+	}
+	if b := FindGeometry(nil, nil, Known{}).Box(x, y); b != BoxOf(x, y) {
+		t.Errorf("box without a geometry %+v", b)
+	}
 	b := BoxOf(nil, nil)
 	p, err := PaintStates(nil, nil, nil, DefaultPalette, b)
 	if err != nil || p.Columns != 1 || p.Rows != 1 {

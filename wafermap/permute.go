@@ -6,27 +6,11 @@ import (
 )
 
 const (
-	// normalFrom is the expected number of fail-fail and pass-pass joins from
-	// which the normal tail is taken.
-	normalFrom = 30
-
 	permutations   = 9999    // random placements at most
 	permutationsLo = 999     // and at least, where maps are large
 	placementsCost = 1500000 // dice placed in all placements of a test, about
 	enough         = 100     // placements as extreme as the data that settle it: p is then known to a tenth
 )
-
-// judge fills in PFF and its Method.
-func (g *Grid) judge(c *JoinCount, n Neighbours) {
-	switch {
-	case c.Fails <= 3:
-		c.PFF, c.Method = g.exactTail(c, n), "exact"
-	case c.ExpectedFF < normalFrom || c.ExpectedPP < normalFrom:
-		c.PFF, c.Method = g.permutedTail(c, n)
-	default:
-		c.PFF, c.Method = c.PFFNormal, "normal"
-	}
-}
 
 // exactTail is the chance of at least the counted fail-fail joins for two or three
 // fails, from how many sets of that many dice hold how many joins. Among three
@@ -40,7 +24,8 @@ func (g *Grid) exactTail(c *JoinCount, n Neighbours) float64 {
 	if c.Fails == 2 {
 		return joins / (dice * (dice - 1) / 2)
 	}
-	triangles, wedges := g.triangles(n) // a triangle has three wedges
+	shapes := g.shapes(n)
+	triangles, wedges := shapes.triangles, shapes.wedges // a triangle has three wedges
 	sets := triangles
 	switch c.FailFail {
 	case 2:
@@ -49,37 +34,6 @@ func (g *Grid) exactTail(c *JoinCount, n Neighbours) float64 {
 		sets = joins*(dice-2) - wedges + triangles
 	}
 	return sets / (dice * (dice - 1) * (dice - 2) / 6)
-}
-
-// triangles counts the sets of three dice that are all neighbours, and the pairs
-// of joins that share a die.
-func (g *Grid) triangles(n Neighbours) (triangles, wedges float64) {
-	steps := n.all()
-	for _, r := range g.order {
-		around := 0
-		for i, s := range steps {
-			if g.at(r, s) < 0 {
-				continue
-			}
-			around++
-			for _, t := range steps[:i] {
-				if g.at(r, t) >= 0 && n.joined(step{s.dx - t.dx, s.dy - t.dy}) {
-					triangles++
-				}
-			}
-		}
-		wedges += float64(around*(around-1)) / 2
-	}
-	return triangles / 3, wedges
-}
-
-// joined reports whether a step leads to a neighbour.
-func (n Neighbours) joined(s step) bool {
-	dx, dy := max(s.dx, -s.dx), max(s.dy, -s.dy)
-	if n == Queen {
-		return max(dx, dy) == 1
-	}
-	return dx+dy == 1
 }
 
 // permutedTail places the rarer kind at random, again and again.

@@ -84,10 +84,10 @@ const farthest = 1.1
 
 // FitZernike fits terms 1 to terms by least squares to a value at points of the
 // plane: mmX and mmY from the wafer's centre, in the unit of radius. Points with a
-// NaN or infinite value or place, or more than a tenth outside the disc, are left out. On a die grid the terms are only
-// nearly orthogonal, so coefficients depend a little on how many terms are fitted.
-// With fewer points than terms, or terms that the points cannot tell apart, the
-// numbers are NaN, with a Why.
+// NaN or infinite value or place, and points more than a tenth outside the disc,
+// are left out. On a die grid the terms are only nearly orthogonal, so coefficients
+// depend a little on how many terms are fitted. With fewer points than terms, or
+// terms that the points cannot tell apart, the numbers are NaN, with a Why.
 func FitZernike(mmX, mmY, value []float64, radius float64, terms int) ZernikeFit {
 	if len(mmX) != len(mmY) || len(mmX) != len(value) {
 		panic("wafermap: mmX, mmY and value differ in length")
