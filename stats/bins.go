@@ -369,7 +369,7 @@ func findGrid(x []float64, from, to float64) grid {
 	}
 	least := (to - from) / 1e5
 	noise := 16 * 0x1p-52 * math.Max(math.Abs(from), math.Abs(to)) // of decimal fractions in binary
-	least = math.Max(least, math.Max(64*noise, 0x1p-1000)) // subnormal numbers cannot be halved
+	least = math.Max(least, math.Max(64*noise, 0x1p-1000))         // subnormal numbers cannot be halved
 	var step float64
 	for i := 1; i < len(v); i++ {
 		if gap := v[i] - v[i-1]; gap > noise {

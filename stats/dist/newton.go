@@ -137,7 +137,11 @@ func (s *sample) fit() (Normal, error) {
 	if !ok {
 		return d, ErrNoFit
 	}
-	return top.normal(d, s, centre, unit), nil
+	fit := top.normal(d, s, centre, unit)
+	if !(fit.SELogSigma < 20) { // flat to the end: bounds that no spread contradicts
+		return d, ErrNoFit
+	}
+	return fit, nil
 }
 
 func (s *sample) check() error {

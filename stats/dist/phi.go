@@ -6,7 +6,7 @@ import "math"
 // tail where the function itself underflows.
 func logPhi(z float64) float64 {
 	switch {
-	case z > 5:
+	case z > 0:
 		return math.Log1p(-0.5 * math.Erfc(z/math.Sqrt2))
 	case z > -36:
 		return math.Log(0.5 * math.Erfc(-z/math.Sqrt2))
