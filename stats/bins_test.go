@@ -25,8 +25,10 @@ func TestBinsLoseNothing(t *testing.T) {
 		sets := awkward(r, n)
 		sets["leakage"] = fill(n, func() float64 { return 1e-9 * math.Exp(r.NormFloat64()) })
 		sets["near constant"] = fill(n, func() float64 { return 1 })
+		sets["beyond numbers"] = fill(n, func() float64 { return math.MaxFloat64 * (2*r.Float64() - 1) })
 		if n > 1 {
 			sets["near constant"][0] = 1e9
+			sets["beyond numbers"][0], sets["beyond numbers"][1] = math.MaxFloat64, -math.MaxFloat64
 		}
 		for name, x := range sets {
 			for _, most := range []int{1, 2, 7, 80} {

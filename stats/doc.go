@@ -15,9 +15,9 @@
 //     reader needs to know, a Why says so.
 //   - Programmer errors (slices of different length, a probability above 1)
 //     panic with a text that starts with the package's name. Data never panic.
-//   - The same input gives the same bits on every machine and any number of
-//     cores: sums run in a fixed order, products are rounded before they are
-//     added (no fused multiply-add), nothing is drawn at random.
+//   - The same input gives the same bits, whatever the number of cores: sums run
+//     in a fixed order, maps are walked in the order of their keys, nothing is
+//     drawn at random.
 //
 // # Level, spread and shape
 //

@@ -17,7 +17,7 @@ import (
 func Wilson(k, n int, confidence float64) stats.Interval {
 	check(k, n, confidence)
 	if n == 0 {
-		return none(n)
+		return stats.NoInterval("no dice")
 	}
 	z := distuv.UnitNormal.Quantile(0.5 + confidence/2)
 	p, N := float64(k)/float64(n), float64(n)
@@ -41,7 +41,7 @@ func Wilson(k, n int, confidence float64) stats.Interval {
 func ClopperPearson(k, n int, confidence float64) stats.Interval {
 	check(k, n, confidence)
 	if n == 0 {
-		return none(n)
+		return stats.NoInterval("no dice")
 	}
 	lo, hi := clopperPearson(float64(k), float64(n), (1-confidence)/2)
 	return stats.Interval{Estimate: float64(k) / float64(n), Lower: lo, Upper: hi, Method: "Clopper-Pearson"}
@@ -67,7 +67,7 @@ func clopperPearson(k, n, alpha float64) (lo, hi float64) {
 func AgrestiCoull(k, n int, confidence float64) stats.Interval {
 	check(k, n, confidence)
 	if n == 0 {
-		return none(n)
+		return stats.NoInterval("no dice")
 	}
 	z := distuv.UnitNormal.Quantile(0.5 + confidence/2)
 	N := float64(n) + z*z
@@ -94,7 +94,5 @@ func check(k, n int, confidence float64) {
 		panic("stats/yield: confidence outside (0, 1)")
 	}
 }
-
-func none(int) stats.Interval { return stats.NoInterval("no dice") }
 
 func betaQuantile(p, a, b float64) float64 { return distuv.Beta{Alpha: a, Beta: b}.Quantile(p) }
