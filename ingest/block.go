@@ -17,11 +17,12 @@ const blockSize = 1 << 20
 type block struct {
 	buf   []byte // ends in '\n'
 	seq   int
-	line  int  // line number of its first line
-	lines int  // line ends in buf
-	cut   bool // the file's last line had no line end; one was added
-	torn  bool // reading broke off in that line: it is not used
-	nul   bool // there are zero bytes in it
+	line  int   // line number of its first line
+	lines int   // line ends in buf
+	raw   int64 // about how far into the raw file it reaches
+	cut   bool  // the file's last line had no line end; one was added
+	torn  bool  // reading broke off in that line: it is not used
+	nul   bool  // there are zero bytes in it
 }
 
 // blocker cuts a source into blocks.
@@ -32,6 +33,7 @@ type blocker struct {
 	eof   bool
 	err   error // what ended the reading, other than EOF
 	line  int
+	given int64 // bytes of text given out
 	seq   int
 	sep   byte
 	want  int
@@ -189,7 +191,12 @@ func (k *blocker) next(ctx context.Context, spare []byte) (b block, ok bool, err
 }
 
 func (k *blocker) block(buf []byte) block {
-	b := block{buf: buf, seq: k.seq, line: k.line, lines: bytes.Count(buf, []byte{'\n'}), nul: bytes.IndexByte(buf, 0) >= 0}
+	k.given += int64(len(buf))
+	raw := k.given
+	if k.src.packed != "" {
+		raw = k.src.raw
+	}
+	b := block{buf: buf, seq: k.seq, line: k.line, raw: raw, lines: bytes.Count(buf, []byte{'\n'}), nul: bytes.IndexByte(buf, 0) >= 0}
 	k.seq++
 	k.line += b.lines
 	return b

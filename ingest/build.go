@@ -58,9 +58,8 @@ func (t *Table) Add(d Die) {
 }
 
 // Build makes a lot of a table with the same cleaning that files get. Options
-// give the product file and the retest policy. The table's slices are copied
-// where they have to change; its value columns are not shared with the lot.
-// Columns of unequal length panic.
+// give the product file and the retest policy. The lot does not share memory
+// with the table. Columns of unequal length panic.
 func Build(t *Table, opt Options) (*Lot, error) {
 	if len(t.Wafer) == 0 {
 		return nil, &Error{File: "lot " + quote(t.Lot), What: "has no dice", Remedy: "give at least one"}
@@ -78,10 +77,10 @@ func Build(t *Table, opt Options) (*Lot, error) {
 	}
 	for slot, column := range [][]int32{intX: t.X, intY: t.Y, intSite: t.Site, intTouchdown: t.Touchdown, intHardBin: t.HardBin, intSoftBin: t.SoftBin} {
 		checkLength(len(column), n, column != nil)
-		c.ints[slot] = column
+		c.ints[slot] = slices.Clone(column)
 	}
 	checkLength(len(t.Pass), n, t.Pass != nil)
-	c.pass = t.Pass
+	c.pass = slices.Clone(t.Pass)
 	for _, name := range sortedKeys(t.Columns) {
 		r.sch.attribute(name)
 		c.text = append(c.text, codesOf(t.Columns[name], n))
@@ -92,7 +91,7 @@ func Build(t *Table, opt Options) (*Lot, error) {
 		if r.sch.test(t.Tests[i].Name) != i {
 			panic("ingest: test " + t.Tests[i].Name + " is twice in the table")
 		}
-		c.values = append(c.values, t.Values[i])
+		c.values = append(c.values, slices.Clone(t.Values[i]))
 		r.tests = append(r.tests, infoOf(&t.Tests[i], opt.Product))
 	}
 	f := &fileData{rows: rowCount{read: n}, lot: t.Lot}
@@ -102,7 +101,7 @@ func Build(t *Table, opt Options) (*Lot, error) {
 	if t.Product != "" {
 		f.attributes = append(f.attributes, [2]string{roleProduct, t.Product})
 	}
-	f.chunks = []*chunk{c}
+	f.data = c
 	r.files = []*fileData{f}
 	b, err := r.lots(context.Background(), &opt)
 	if err != nil {

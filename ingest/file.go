@@ -14,7 +14,7 @@ type fileData struct {
 	lot, wafer string      // of rows that do not say
 	attributes [][2]string // of the lot
 	input      Input
-	chunks     []*chunk
+	data       *chunk
 	rows       rowCount
 	cells      []cellCount
 	notes      []Finding
@@ -40,22 +40,22 @@ const fixDecimal = "\x00decimal"
 // contradicted looks for columns that were judged wrongly and adds them to fix.
 func (d *fileData) contradicted(fix map[string]bool, product *config.Product) bool {
 	l, again := d.layout, false
-	comma, points := 0, 0
+	comma := 0
 	for i, f := range l.fields {
 		if f.kind != valueField {
 			continue
 		}
 		c := &d.cells[i]
+		if c.bad == 0 {
+			continue
+		}
 		numbers := 0
-		for _, ch := range d.chunks {
-			for _, v := range ch.values[f.slot] {
-				if v == v {
-					numbers++
-				}
+		for _, v := range d.data.values[f.slot] {
+			if v == v {
+				numbers++
 			}
 		}
 		comma += c.comma
-		points += numbers
 		if c.bad > numbers && c.comma*2 < c.bad && !l.long && productTest(product, l.names[i]) < 0 && !fix[l.names[i]] {
 			fix[l.names[i]] = true
 			again = true
@@ -88,23 +88,14 @@ func readOnce(ctx context.Context, path string, index int, sch *schema, opt *Opt
 	sch.adopt(l)
 	k.sep, k.want = l.sep, len(l.fields)
 	k.carry, k.line = k.carry[l.start:], l.startLine
-	d := &fileData{layout: l, lot: l.commented("lot"), wafer: l.commented("wafer"), attributes: l.attributes, notes: l.notes, cells: make([]cellCount, len(l.fields))}
-	if err := d.parse(ctx, k, newParserSet(l, sch, index, opt)); err != nil {
+	d := &fileData{layout: l, lot: l.commented("lot"), wafer: l.commented("wafer"), attributes: l.attributes, notes: l.notes}
+	if d.data, err = parseBlocks(ctx, k, newParserSet(l, sch, index, opt)); err != nil {
 		return nil, err
 	}
-	for _, c := range d.chunks {
-		d.rows.add(&c.rows)
-		for i := range c.cells {
-			d.cells[i].add(&c.cells[i])
-		}
-	}
+	d.rows, d.cells = d.data.rows, d.data.cells
 	if k.err != nil {
 		d.err = src.readError(k.err)
-		used := 0
-		for _, c := range d.chunks {
-			used += c.n
-		}
-		if used == 0 {
+		if d.data.n == 0 {
 			return nil, d.err
 		}
 	}
@@ -139,33 +130,25 @@ func newParserSet(l *layout, sch *schema, file int, opt *Options) []*parser {
 	return set
 }
 
-// parse reads blocks in this goroutine and parses them in others. Chunks come
-// out in the order of the file.
-func (d *fileData) parse(ctx context.Context, k *blocker, parsers []*parser) error {
+// parseBlocks reads blocks in this goroutine and parses them in others.
+func parseBlocks(ctx context.Context, k *blocker, parsers []*parser) (*chunk, error) {
 	var (
 		wg     sync.WaitGroup
-		mu     sync.Mutex
 		blocks = make(chan block, len(parsers))
 		spare  = make(chan []byte, 2*len(parsers)+2)
+		all    = newCollector(k.src.size, parsers[0].newChunk(nil, 0))
 	)
 	for _, p := range parsers {
-		wg.Add(1)
-		go func() {
-			defer wg.Done()
+		wg.Go(func() {
 			for b := range blocks {
-				c := p.block(&b)
-				mu.Lock()
-				for len(d.chunks) <= b.seq {
-					d.chunks = append(d.chunks, nil)
-				}
-				d.chunks[b.seq] = c
-				mu.Unlock()
+				c := p.block(&b, all.chunk())
+				all.put(b.seq, parsed{c, b.raw})
 				select {
 				case spare <- b.buf:
 				default:
 				}
 			}
-		}()
+		})
 	}
 	var failed error
 	for {
@@ -175,19 +158,14 @@ func (d *fileData) parse(ctx context.Context, k *blocker, parsers []*parser) err
 		default:
 		}
 		b, ok, err := k.next(ctx, buf)
-		if err != nil {
+		if err != nil || !ok {
 			failed = err
 			break
 		}
-		if !ok {
-			break
-		}
-		if b.cut && k.err != nil {
-			b.torn = true
-		}
+		b.torn = b.cut && k.err != nil
 		blocks <- b
 	}
 	close(blocks)
 	wg.Wait()
-	return failed
+	return all.finish(), failed
 }

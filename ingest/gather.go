@@ -4,6 +4,7 @@ import (
 	"context"
 	"math"
 	"runtime"
+	"slices"
 	"strconv"
 
 	"golang.org/x/sync/errgroup"
@@ -36,7 +37,8 @@ type draft struct {
 }
 
 // flatInts joins a whole-number column over all chunks; nil when none has it.
-// With release the chunks let go of theirs.
+// With release the chunks let go of theirs. A single chunk, the usual case of
+// one file, is not copied.
 func (t *readings) flatInts(slot int, release bool) []int32 {
 	n, have := 0, false
 	for _, c := range t.chunks {
@@ -45,6 +47,13 @@ func (t *readings) flatInts(slot int, release bool) []int32 {
 	}
 	if !have {
 		return nil
+	}
+	if len(t.chunks) == 1 {
+		out := t.chunks[0].ints[slot]
+		if release {
+			t.chunks[0].ints[slot] = nil
+		}
+		return snug(out)
 	}
 	out := make([]int32, 0, n)
 	for _, c := range t.chunks {
@@ -71,6 +80,9 @@ func (t *readings) flatPass() []int8 {
 	if !have {
 		return nil
 	}
+	if len(t.chunks) == 1 {
+		return snug(t.chunks[0].pass)
+	}
 	out := make([]int8, 0, n)
 	for _, c := range t.chunks {
 		if c.pass == nil {
@@ -94,6 +106,9 @@ func (t *readings) flatText(slot int) ([]int32, []string) {
 	}
 	if !have {
 		return nil, nil
+	}
+	if len(t.chunks) == 1 {
+		return snug(t.chunks[0].text[slot].codes), t.chunks[0].text[slot].dict
 	}
 	var g globalText
 	out := make([]int32, 0, n)
@@ -126,6 +141,13 @@ func (t *readings) flatValues(slot int) []float64 {
 	if !have {
 		return nil
 	}
+	if len(t.chunks) == 1 {
+		c := t.chunks[0]
+		out := snug(c.values[slot])
+		c.values[slot] = nil
+		toSI(out, out, t.tests[slot].units[c.file])
+		return out
+	}
 	out := make([]float64, n)
 	at := 0
 	for _, c := range t.chunks {
@@ -137,16 +159,31 @@ func (t *readings) flatValues(slot int) []float64 {
 			}
 			continue
 		}
-		if u := t.tests[slot].units[c.file]; u.Exp != 0 {
-			for i, v := range c.values[slot] {
-				to[i] = u.ToSI(v)
-			}
-		} else {
-			copy(to, c.values[slot])
-		}
+		toSI(to, c.values[slot], t.tests[slot].units[c.file])
 		c.values[slot] = nil
 	}
 	return out
+}
+
+// toSI converts values into dst, which may be v itself.
+func toSI(dst, v []float64, u config.Unit) {
+	if u.Exp == 0 {
+		if &dst[0] != &v[0] {
+			copy(dst, v)
+		}
+		return
+	}
+	for i, x := range v {
+		dst[i] = u.ToSI(x)
+	}
+}
+
+// snug copies a column that has much room left over.
+func snug[T any](s []T) []T {
+	if cap(s)-len(s) > len(s)/8+1024 {
+		return slices.Clone(s)
+	}
+	return s
 }
 
 // pick takes a lot's part of a flat column in the lot's order.
@@ -262,7 +299,7 @@ func (t *readings) gatherValues(ctx context.Context, drafts []*draft, o *order, 
 					columns[k][i] = nanColumn(d.n)
 				}
 			}
-			if len(flat) > 1<<18 {
+			if len(t.chunks) > 1 && len(flat) > 1<<18 {
 				runtime.GC() // the chunks' columns are garbage now; a large table must not stand in memory twice
 			}
 			return nil

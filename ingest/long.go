@@ -23,11 +23,11 @@ func (t *readings) pivot() {
 			}
 		}
 		if f.layout != nil && f.layout.long {
-			long = append(long, f.chunks...)
+			long = append(long, f.data)
 		} else {
-			t.chunks = append(t.chunks, f.chunks...)
+			t.chunks = append(t.chunks, f.data)
 		}
-		t.files[i].chunks = nil
+		t.files[i].data = nil
 	}
 	if len(long) == 0 {
 		return

@@ -14,6 +14,14 @@ type parser struct {
 	lastFull row
 	interns  []interner // by text slot
 	textOf   []int      // text slots that the file has
+	columns  []column   // of the chunk at work, by column of the file
+	wafer    int        // column of the wafer ids, -1 none
+}
+
+// column is where the cells of a column go.
+type column struct {
+	ints   []int32
+	values []float64
 }
 
 // newParser prepares for a layout. careful keeps the fast path out, which
@@ -24,9 +32,13 @@ func newParser(l *layout, sch *schema, file int, careful bool) *parser {
 		p.values = longColumns
 	}
 	p.interns = make([]interner, textAttributes+len(sch.attributes))
-	for _, f := range l.fields {
+	p.columns, p.wafer = make([]column, len(l.fields)), -1
+	for k, f := range l.fields {
 		if f.kind == textField {
 			p.textOf = append(p.textOf, f.slot)
+			if f.slot == textWafer {
+				p.wafer = k
+			}
 		}
 	}
 	return p
@@ -55,7 +67,7 @@ type interner struct {
 
 // intern gives the code of a cell.
 func (t *interner) intern(raw []byte) int32 {
-	if len(raw) == len(t.last) && string(raw) == string(t.last) && t.last != nil {
+	if t.last != nil && string(raw) == string(t.last) {
 		return t.code
 	}
 	t.last = raw
@@ -76,9 +88,9 @@ func (t *interner) intern(raw []byte) int32 {
 	return code
 }
 
-// block parses one block.
-func (p *parser) block(b *block) *chunk {
-	c := p.newChunk(b.lines)
+// block parses one block, into the memory of a spare chunk if there is one.
+func (p *parser) block(b *block, spare *chunk) *chunk {
+	c := p.newChunk(spare, b.lines)
 	buf := b.buf
 	careful := p.careful || b.nul
 	i, slow := 0, newLines(b)
@@ -111,22 +123,40 @@ func (p *parser) block(b *block) *chunk {
 	return c
 }
 
-func (p *parser) newChunk(rows int) *chunk {
-	c := &chunk{file: p.file, text: make([]textColumn, len(p.interns)), values: make([][]float64, p.values), cells: make([]cellCount, len(p.l.fields))}
-	for _, f := range p.l.fields {
+// newChunk makes a chunk with room for rows, of a spare one where that is large
+// enough. Every cell of a row is written, so old content does no harm.
+func (p *parser) newChunk(spare *chunk, rows int) *chunk {
+	c := spare
+	if c == nil {
+		c = &chunk{file: p.file, text: make([]textColumn, len(p.interns)), values: make([][]float64, p.values), cells: make([]cellCount, len(p.l.fields))}
+	}
+	c.n, c.rows = 0, rowCount{}
+	clear(c.cells)
+	for k, f := range p.l.fields {
+		to := &p.columns[k]
 		switch f.kind {
 		case textField:
-			c.text[f.slot].codes = make([]int32, rows)
+			c.text[f.slot].codes = room(c.text[f.slot].codes, rows)
+			to.ints = c.text[f.slot].codes
 			p.interns[f.slot] = interner{codes: map[string]int32{}}
 		case intField:
-			c.ints[f.slot] = make([]int32, rows)
+			c.ints[f.slot] = room(c.ints[f.slot], rows)
+			to.ints = c.ints[f.slot]
 		case passField:
-			c.pass = make([]int8, rows)
+			c.pass = room(c.pass, rows)
 		case valueField:
-			c.values[f.slot] = make([]float64, rows)
+			c.values[f.slot] = room(c.values[f.slot], rows)
+			to.values = c.values[f.slot]
 		}
 	}
 	return c
+}
+
+func room[T any](s []T, n int) []T {
+	if cap(s) < n || s == nil {
+		return make([]T, n, n+n/8)
+	}
+	return s[:n]
 }
 
 // trim cuts the columns to the rows used.
@@ -157,51 +187,56 @@ func (c *chunk) trim() {
 // values.
 func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	sep, decimal, n := p.l.sep, p.l.decimal, c.n
-	last := len(p.l.fields) - 1
-	for k := range p.l.fields {
-		f := &p.l.fields[k]
-		switch f.kind {
+	fields := p.l.fields
+	columns := p.columns[:len(fields)]
+	for k := range fields {
+		switch fields[k].kind {
 		case valueField:
 			v, j, st := scanNumber(b, i, sep, decimal)
 			if st == cellOdd {
 				return 0, false
 			}
-			c.values[f.slot][n] = v
+			columns[k].values[n] = v
 			i = j
 		case intField:
 			v, j, st := scanInt(b, i, sep)
 			if st == cellOdd {
 				return 0, false
 			}
-			c.ints[f.slot][n] = v
+			columns[k].ints[n] = v
 			i = j
-		default:
-			if b[i] == '"' {
+		case textField:
+			// Nearly always the same text as in the row before.
+			t := &p.interns[fields[k].slot]
+			if m := len(t.last); m > 0 && b[i] != '"' && i+m < len(b) && b[i+m] == sep && string(b[i:i+m]) == string(t.last) {
+				columns[k].ints[n] = t.code
+				i += m
+				break
+			}
+			raw, j := plainCell(b, i, sep)
+			if raw == nil {
 				return 0, false
 			}
-			j := i
-			for b[j] != sep && b[j] != '\n' {
-				j++
-			}
-			raw := b[i:j]
-			if b[j] == '\n' {
-				raw = dropCR(raw)
-			}
-			switch f.kind {
-			case textField:
-				c.text[f.slot].codes[n] = p.interns[f.slot].intern(raw)
-			case passField:
-				v := int8(-1)
-				if len(raw) > 0 {
-					if v = passFlag(raw); v < 0 {
-						return 0, false
-					}
-				}
-				c.pass[n] = v
+			columns[k].ints[n] = t.intern(raw)
+			i = j
+		default:
+			raw, j := plainCell(b, i, sep)
+			if raw == nil {
+				return 0, false
 			}
 			i = j
+			if fields[k].kind != passField {
+				break
+			}
+			v := int8(-1)
+			if len(raw) > 0 {
+				if v = passFlag(raw); v < 0 {
+					return 0, false
+				}
+			}
+			c.pass[n] = v
 		}
-		if k == last {
+		if k == len(fields)-1 {
 			break
 		}
 		if b[i] != sep {
@@ -212,15 +247,27 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	if b[i] == sep && (b[i+1] == '\n' || b[i+1] == '\r' && b[i+2] == '\n') {
 		i = bytes.IndexByte(b[i:], '\n') + i // one empty field more, at the end of every row
 	}
-	if b[i] != '\n' {
-		return 0, false
-	}
-	if p.allEmpty(c, n) {
+	if b[i] != '\n' || (p.wafer < 0 || columns[p.wafer].ints[n] < 0) && p.allEmpty(c, n) {
 		return 0, false
 	}
 	c.n++
 	c.rows.read++
 	return i + 1, true
+}
+
+// plainCell gives the cell at i and where it ends; nil for a quoted one.
+func plainCell(b []byte, i int, sep byte) ([]byte, int) {
+	if b[i] == '"' {
+		return nil, 0
+	}
+	j := i
+	for b[j] != sep && b[j] != '\n' {
+		j++
+	}
+	if b[j] == '\n' {
+		return dropCR(b[i:j]), j
+	}
+	return b[i:j], j
 }
 
 // allEmpty says whether row n holds nothing at all. Nearly every row is told

@@ -109,70 +109,89 @@ type lotRange struct {
 	files  []bool
 }
 
-// rowKeys gives every row its group, -1 for rows that are not used.
+// rowKeys are the rows in runs of the same lot and wafer, in the order read.
 type rowKeys struct {
-	group  []int32
+	runs   []run
 	groups []groupKey
-	counts []int // measurements
-	rows   []int // rows of the files
+	counts []int // measurements, by group
+	rows   []int // rows of the files, by group
 }
+
+// run is neighbouring rows of one group; -1: they are not used.
+type run struct{ group, lo, hi int32 }
 
 type groupKey struct{ lot, wafer string }
 
 // keys finds lot and wafer of every row.
-func (t *readings) keys(opt *Options) rowKeys {
-	total := 0
-	for _, c := range t.chunks {
-		total += c.n
-	}
-	k := rowKeys{group: make([]int32, 0, total)}
+func (t *readings) keys() rowKeys {
+	k := rowKeys{}
 	ids := map[groupKey]int32{}
+	row := int32(0)
 	for _, c := range t.chunks {
 		lots, wafers := &c.text[textLot], &c.text[textWafer]
 		def := t.files[c.file].defaults()
-		lastLot, lastWafer, last := int32(-2), int32(-2), int32(-1)
-		for i := range c.n {
-			lc, wc := int32(-1), int32(-1)
-			if lots.codes != nil {
-				lc = lots.codes[i]
+		for i := 0; i < c.n; {
+			lc, wc := codeAt(lots.codes, i), codeAt(wafers.codes, i)
+			end := i + sameCodes(lots.codes, i, c.n)
+			end = i + sameCodes(wafers.codes, i, end)
+			key := def
+			if lc >= 0 {
+				key.lot = lots.dict[lc]
 			}
-			if wafers.codes != nil {
-				wc = wafers.codes[i]
+			if wc >= 0 {
+				key.wafer = wafers.dict[wc]
 			}
-			if lc != lastLot || wc != lastWafer {
-				lastLot, lastWafer = lc, wc
-				key := def
-				if lc >= 0 {
-					key.lot = lots.dict[lc]
-				}
-				if wc >= 0 {
-					key.wafer = wafers.dict[wc]
-				}
-				if key.wafer == "" {
-					last = -1
-				} else if id, ok := ids[key]; ok {
-					last = id
-				} else {
-					last = int32(len(k.groups))
-					ids[key] = last
+			group := int32(-1)
+			if key.wafer != "" {
+				id, ok := ids[key]
+				if !ok {
+					id = int32(len(k.groups))
+					ids[key] = id
 					k.groups = append(k.groups, key)
 					k.counts, k.rows = append(k.counts, 0), append(k.rows, 0)
 				}
+				group = id
 			}
-			k.group = append(k.group, last)
-			rows := 1
+			rows := end - i
 			if c.weight != nil {
-				rows = int(c.weight[i])
+				rows = 0
+				for _, w := range c.weight[i:end] {
+					rows += int(w)
+				}
 			}
-			if last >= 0 {
-				k.counts[last]++
-				k.rows[last] += rows
+			if group >= 0 {
+				k.counts[group] += end - i
+				k.rows[group] += rows
 			} else {
 				t.tally.Discarded["no-wafer"] += rows
 			}
+			k.runs = append(k.runs, run{group, row, row + int32(end-i)})
+			row += int32(end - i)
+			i = end
 		}
 	}
 	return k
+}
+
+func codeAt(codes []int32, i int) int32 {
+	if codes == nil {
+		return -1
+	}
+	return codes[i]
+}
+
+// sameCodes counts the cells from i on, before end, that are as cell i.
+func sameCodes(codes []int32, i, end int) int {
+	if codes == nil {
+		return end - i
+	}
+	c := codes[i:end]
+	for j, v := range c {
+		if v != c[0] {
+			return j
+		}
+	}
+	return len(c)
 }
 
 // defaults are lot and wafer of rows that do not say: from a comment, else the
@@ -192,7 +211,7 @@ func (f *fileData) defaults() groupKey {
 
 // arrange sorts rows by lot, wafer and touchdown.
 func (t *readings) arrange(opt *Options) (*order, error) {
-	k := t.keys(opt)
+	k := t.keys()
 	if n := t.tally.Discarded["no-wafer"]; n > 0 {
 		t.note(Warning, "no-wafer", fmt.Sprintf("%d %s no wafer id and cannot be placed; not used", n, plural(n, "row has", "rows have")),
 			"fill the wafer column, also where a spreadsheet left it out below the first row", n)
@@ -252,13 +271,9 @@ func (t *readings) reasons() string {
 	return list(texts, 8)
 }
 
-// permute fills the order of rows: stable by group, then by touchdown.
+// permute fills the order of rows: stable by group, then by touchdown. The
+// usual file is in that order already, and nothing is made.
 func (t *readings) permute(o *order, k *rowKeys, start []int32) {
-	perm := make([]int32, o.n)
-	next := slices.Clone(start)
-	file := 0
-	row := 0
-	same := o.n == len(k.group)
 	lotOf := make([]int, len(k.groups))
 	for li := range o.lots {
 		for g, s := range start {
@@ -267,47 +282,81 @@ func (t *readings) permute(o *order, k *rowKeys, start []int32) {
 			}
 		}
 	}
-	for _, c := range t.chunks {
-		file = c.file
-		last := int32(-1)
-		for range c.n {
-			g := k.group[row]
-			if g >= 0 && start[g] >= 0 {
-				p := next[g]
-				perm[p] = int32(row)
-				same = same && p == int32(row)
-				next[g]++
-				if g != last {
-					o.lots[lotOf[g]].files[file] = true
-					last = g
-				}
-			}
-			row++
+	fileEnd, file := make([]int32, len(t.chunks)), 0
+	for i, c := range t.chunks {
+		fileEnd[i] = int32(c.n)
+		if i > 0 {
+			fileEnd[i] += fileEnd[i-1]
 		}
 	}
-	if touchdown := t.flatInts(intTouchdown, false); touchdown != nil {
-		for li := range o.lots {
-			l := &o.lots[li]
-			for _, w := range l.wafers {
-				if byTouchdown(perm[l.lo+w.Lo:l.lo+w.Hi], touchdown, o, l.lo+w.Lo) {
-					same = false
-				}
-			}
+	next := slices.Clone(start)
+	total, same := int32(0), true
+	for _, r := range k.runs {
+		for r.lo >= fileEnd[file] {
+			file++
+		}
+		if r.group >= 0 && start[r.group] >= 0 {
+			o.lots[lotOf[r.group]].files[t.chunks[file].file] = true
+			same = same && next[r.group] == r.lo
+			next[r.group] += r.hi - r.lo
+		}
+		total = r.hi
+	}
+	same = same && int(total) == o.n
+	touchdown := t.flatInts(intTouchdown, false)
+	if same && (touchdown == nil || rising(o, touchdown)) {
+		return
+	}
+	o.perm = make([]int32, o.n)
+	copy(next, start)
+	for _, r := range k.runs {
+		if r.group < 0 || start[r.group] < 0 {
+			continue
+		}
+		for row := r.lo; row < r.hi; row++ {
+			o.perm[next[r.group]] = row
+			next[r.group]++
 		}
 	}
-	if !same {
-		o.perm = perm
+	if touchdown == nil {
+		return
+	}
+	for li := range o.lots {
+		l := &o.lots[li]
+		for _, w := range l.wafers {
+			byTouchdown(o.perm[l.lo+w.Lo:l.lo+w.Hi], touchdown, o, l.lo+w.Lo)
+		}
 	}
 }
 
-// byTouchdown sorts the rows of one wafer by the file's touchdown numbers and
-// says whether it had to.
+// rising says whether touchdown numbers, in the order of the rows, never fall
+// within a wafer.
+func rising(o *order, touchdown []int32) bool {
+	for li := range o.lots {
+		l := &o.lots[li]
+		for _, w := range l.wafers {
+			last := int32(math.MinInt32)
+			for _, v := range touchdown[l.lo+w.Lo : l.lo+w.Hi] {
+				if v == Missing {
+					continue
+				}
+				if v < last {
+					return false
+				}
+				last = v
+			}
+		}
+	}
+	return true
+}
+
+// byTouchdown sorts the rows of one wafer by the file's touchdown numbers.
 //
 // The numbers may start again when dice are tested a second time. Then few of
 // them are smaller than the one before, and the order of retests is that of the
 // rows; where many are, the file is sorted otherwise and the numbers tell.
 // Rows without a number stay behind the row before them.
-func byTouchdown(rows []int32, touchdown []int32, o *order, at int) bool {
+func byTouchdown(rows []int32, touchdown []int32, o *order, at int) {
 	keys := make([]int32, len(rows))
 	last, descents := int32(math.MinInt32), 0
 	for i, r := range rows {
@@ -320,7 +369,7 @@ func byTouchdown(rows []int32, touchdown []int32, o *order, at int) bool {
 		keys[i] = last
 	}
 	if descents == 0 {
-		return false
+		return
 	}
 	place := make([]int32, len(rows))
 	for i := range place {
@@ -342,7 +391,6 @@ func byTouchdown(rows []int32, touchdown []int32, o *order, at int) bool {
 			o.rank[at+i] = int32(at) + p
 		}
 	}
-	return true
 }
 
 func cmpInt32(a, b int32) int {

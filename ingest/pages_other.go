@@ -1,0 +1,5 @@
+//go:build !linux
+
+package ingest
+
+func largePages([]byte) {}
