@@ -1,24 +1,44 @@
 package ingest
 
-import "fmt"
+import (
+	"context"
+	"fmt"
 
-func (d *draft) sentinels(opt *Options) {}
+	"golang.org/x/sync/errgroup"
+)
 
-func (d *draft) clamps(opt *Options) [][]int8 { return make([][]int8, len(d.tests)) }
+// eachTest works on the tests in parallel, each in one goroutine alone, and
+// gives the findings in the order of the tests.
+func (d *draft) eachTest(opt *Options, work func(test int) []Finding) {
+	findings := make([][]Finding, len(d.tests))
+	g, _ := errgroup.WithContext(context.Background())
+	g.SetLimit(opt.Workers)
+	for i := range d.tests {
+		g.Go(func() error {
+			findings[i] = work(i)
+			return nil
+		})
+	}
+	g.Wait()
+	for _, f := range findings {
+		d.findings = append(d.findings, f...)
+	}
+}
 
-func (d *draft) coordinates() {}
-
-// countMissing counts the readings that are missing in the end.
-func (d *draft) countMissing() {
-	for t := range d.tests {
-		n := 0
-		for _, v := range d.values[t] {
-			if v != v {
-				n++
-			}
-		}
-		if n > 0 {
-			d.note(Info, "missing", fmt.Sprintf("test %s: %d of %d dice have no reading", d.tests[t].name, n, d.n), "", n)
+// missing counts the readings of one test that are missing in the end.
+func (d *draft) missing(test int) []Finding {
+	n := 0
+	for _, v := range d.values[test] {
+		if v != v {
+			n++
 		}
 	}
+	if n == 0 {
+		return nil
+	}
+	severity := Info
+	if n == d.n {
+		severity = Warning
+	}
+	return []Finding{{Code: "missing", Severity: severity, Dice: n, Text: fmt.Sprintf("test %s: %d of %d dice have no reading", d.tests[test].name, n, d.n)}}
 }

@@ -15,20 +15,24 @@ func (d *draft) lot(opt *Options) *Lot {
 	}
 	d.ownOrder = d.ints[intTouchdown] != nil
 	d.touchdowns()
-	d.sentinels(opt)
+	d.orderTests()
+	d.eachTest(opt, d.sentinels)
 	keep := d.retests(opt)
 	l := &Lot{id: d.id, inputs: d.inputs, wafers: d.wafers}
 	d.attributes(l)
-	d.orderTests()
 	l.earlier, l.first = d.split(keep)
 	for i := range l.wafers {
 		if l.wafers[i].Attributes == nil {
 			l.wafers[i].Attributes = map[string]string{}
 		}
 	}
-	d.coordinates()
-	censor := d.clamps(opt)
-	d.countMissing()
+	d.places()
+	censor := make([][]int8, len(d.tests))
+	d.eachTest(opt, func(i int) []Finding {
+		marks, findings := d.clamps(i)
+		censor[i] = marks
+		return append(d.missing(i), findings...)
+	})
 	l.cols = columns{n: d.n, site: int32Column(d.ints[intSite]), touchdown: int32Column(d.ints[intTouchdown]),
 		hardBin: int32Column(d.ints[intHardBin]), softBin: int32Column(d.ints[intSoftBin]), pass: int8Column(d.pass)}
 	if d.ints[intX] != nil && d.ints[intY] != nil {
