@@ -146,15 +146,22 @@ func (w *lotwork) findGeometry() {
 		return
 	}
 	w.geo = wafermap.FindGeometry(w.lot.X(), w.lot.Y(), w.known())
-	positive := func(v float64) reports.Number {
-		if v > 0 {
-			return num(v)
+	g.CentreX, g.CentreY, g.Source, g.Why = num(w.geo.CentreX), num(w.geo.CentreY), w.geo.Source, w.geo.Why
+	if w.inMM() {
+		g.DiameterMM, g.DieWidthMM, g.DieHeightMM = num(w.geo.DiameterMM), num(w.geo.DieWidthMM), num(w.geo.DieHeightMM)
+		if w.geo.EdgeExclusionMM > 0 {
+			g.EdgeExclusionMM = num(w.geo.EdgeExclusionMM)
 		}
-		return reports.NaN
 	}
-	*g = reports.Geometry{DiameterMM: positive(w.geo.DiameterMM), DieWidthMM: positive(w.geo.DieWidthMM), DieHeightMM: positive(w.geo.DieHeightMM),
-		EdgeExclusionMM: positive(w.geo.EdgeExclusionMM), CentreX: num(w.geo.CentreX), CentreY: num(w.geo.CentreY), Source: w.geo.Source, Why: w.geo.Why}
+	if w.geo.Caution != "" {
+		w.note("geometry-doubtful", reports.Quality{Severity: "warning", Dice: w.lot.Len(), Text: w.geo.Caution,
+			Remedy: "check the wafer block of the product file: diameter, die width and height"})
+	}
 }
+
+// inMM says whether lengths on the wafer are known in millimetres, and not only in
+// dice.
+func (w *lotwork) inMM() bool { return w.geo.Unit == "mm" }
 
 func (w *lotwork) known() wafermap.Known {
 	p := w.in.Product
@@ -167,7 +174,7 @@ func (w *lotwork) known() wafermap.Known {
 
 // zones fills in the yield of rings of equal area and of sectors, over all wafers.
 func (w *lotwork) zones() {
-	if !w.lot.HasCoordinates() || !finite(w.geo.CentreX) {
+	if !w.lot.HasCoordinates() || w.geo.Unit == "" {
 		return
 	}
 	rings, sectors := w.in.Settings.Rings, w.in.Settings.Sectors
@@ -175,7 +182,10 @@ func (w *lotwork) zones() {
 	edges := w.geo.RingEdges(rings)
 	for i, c := range z.Rings {
 		r := reports.Zone{Kind: "ring", Index: i, Dice: c.Dice, Name: ringName(i, rings), Yield: zoneYield(c)}
-		r.From, r.To = num(edges[i]), num(edges[i+1])
+		r.From, r.To = reports.NaN, reports.NaN
+		if w.inMM() {
+			r.From, r.To = num(edges[i]), num(edges[i+1])
+		}
 		w.rep.Zones = append(w.rep.Zones, r)
 	}
 	for i, c := range z.Sectors {

@@ -15,7 +15,7 @@ func (w *lotwork) pictures() error {
 		return nil
 	}
 	x, y := w.lot.X(), w.lot.Y()
-	box := wafermap.BoxOf(x, y)
+	box := w.geo.Box(x, y)
 	lead := w.leadingTest()
 	leadName := ""
 	if lead >= 0 {
@@ -53,7 +53,7 @@ func (w *lotwork) pictures() error {
 		}
 		stack.Add(x[wafer.Lo:wafer.Hi], y[wafer.Lo:wafer.Hi], fail)
 	}
-	picture, legend, err := wafermap.PaintRates(stack.X, stack.Y, stack.Failing, stack.Tested, box)
+	picture, legend, err := stack.Paint(box)
 	if err != nil {
 		return err
 	}

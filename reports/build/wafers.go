@@ -69,7 +69,7 @@ func (w *lotwork) spatial(lo, hi int) reports.Spatial {
 	for _, c := range clusters[:min(len(clusters), clustersShown)] {
 		rc := reports.Cluster{Dice: c.Dice, X: num(c.CentreX), Y: num(c.CentreY), RadiusMM: reports.NaN,
 			Width: int(c.MaxX-c.MinX) + 1, Height: int(c.MaxY-c.MinY) + 1}
-		if finite(w.geo.CentreX) && w.geo.DieWidthMM > 0 {
+		if w.inMM() {
 			dx, dy := (c.CentreX-w.geo.CentreX)*w.geo.DieWidthMM, (c.CentreY-w.geo.CentreY)*w.geo.DieHeightMM
 			rc.RadiusMM = num(math.Hypot(dx, dy))
 		}

@@ -103,6 +103,9 @@ func (h house) VisitSeriesOpt(series charts.MultiSeries) any {
 			s["animation"] = false
 			s["symbol"] = orDefault(s["symbol"], "none")
 		}
+		if s["type"] == types.ChartScatter {
+			s["z"] = 4 // over the lines of its interval, which lie at 3
+		}
 		if m, ok := s["markLine"].(map[string]any); ok {
 			m["silent"] = true
 			m["animation"] = false
@@ -112,18 +115,22 @@ func (h house) VisitSeriesOpt(series charts.MultiSeries) any {
 
 // VisitXAxis and VisitYAxis put the chosen ticks in.
 func (h house) VisitXAxis(axes []opts.XAxis) any {
-	return adapt(axes, func(a map[string]any) { setTicks(a, h.xTicks) })
+	return adapt(axes, func(a map[string]any) { nameStyle(a); setTicks(a, h.xTicks) })
 }
 
 func (h house) VisitYAxis(axes []opts.YAxis) any {
-	return adapt(axes, func(a map[string]any) { setTicks(a, h.yTicks) })
+	return adapt(axes, func(a map[string]any) { nameStyle(a); setTicks(a, h.yTicks) })
+}
+
+func nameStyle(axis map[string]any) {
+	axis["nameTextStyle"] = map[string]any{"color": colourMuted, "fontSize": 11}
 }
 
 func setTicks(axis map[string]any, ticks []float64) {
 	if ticks == nil {
 		return
 	}
-	for _, part := range []string{"axisLabel", "axisTick", "splitLine"} {
+	for _, part := range []string{"axisLabel", "axisTick"} {
 		m, ok := axis[part].(map[string]any)
 		if !ok {
 			m = map[string]any{}

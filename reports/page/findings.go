@@ -21,7 +21,7 @@ type causeCard struct {
 func newCauses(causes []reports.Cause) []causeCard {
 	var cards []causeCard
 	for _, c := range causes {
-		card := causeCard{Name: causeName(c), Probability: percent(c.Probability), Bar: shareBar(c.Probability, 1), Why: sentence(c.Why)}
+		card := causeCard{Name: causeName(c), Probability: chance(c.Probability), Bar: shareBar(c.Probability, 1), Why: sentence(c.Why)}
 		if c.Loss.Estimate.Valid() {
 			card.Facts = append(card.Facts, fact{"loss", percent(c.Loss.Estimate) + " (" + percentRange(c.Loss) + ")"})
 		} else if c.Loss.Why != "" {
@@ -34,7 +34,7 @@ func newCauses(causes []reports.Cause) []causeCard {
 		if len(c.Next) > 0 {
 			card.Next = &table{Caption: "Measure next", Columns: []column{{Name: "Measurement"}, {Name: "Information, bits", Numeric: true}}}
 			for _, n := range c.Next {
-				card.Next.Rows = append(card.Next.Rows, []cell{text(n.Text), text(significant(float64(n.InformationBits), 2))})
+				card.Next.Rows = append(card.Next.Rows, []cell{{Text: n.Text, Class: "wide"}, text(significant(float64(n.InformationBits), 2))})
 			}
 		}
 		cards = append(cards, card)
@@ -48,7 +48,7 @@ func evidenceTable(caption string, list []reports.Evidence) *table {
 	}
 	t := &table{Caption: caption, Columns: []column{{Name: "Observation"}, {Name: "Log odds", Numeric: true}, {Name: "Test"}, {Name: "Wafers"}}}
 	for _, e := range list {
-		t.Rows = append(t.Rows, []cell{text(e.Text), text(score(e.LogOdds)), text(e.Test), text(strings.Join(e.Wafers, ", "))})
+		t.Rows = append(t.Rows, []cell{{Text: e.Text, Class: "wide"}, text(score(e.LogOdds)), text(e.Test), {Text: strings.Join(e.Wafers, ", "), Class: "phrase"}})
 	}
 	return t
 }
@@ -60,7 +60,7 @@ func dispositionTable(d reports.Disposition) *table {
 	}
 	t := &table{Caption: "Proposal by wafer", Sortable: true, Columns: []column{{Name: "Wafer"}, {Name: "Proposal"}, {Name: "Because", Plain: true}}}
 	for _, w := range d.Wafers {
-		t.Rows = append(t.Rows, []cell{text(w.ID), text(w.Proposal), text(strings.Join(w.Because, "; "))})
+		t.Rows = append(t.Rows, []cell{text(w.ID), text(w.Proposal), {Text: strings.Join(w.Because, "; "), Class: "wide"}})
 	}
 	return t
 }
@@ -82,10 +82,7 @@ func newEpi(r *reports.Report) *epi {
 		}
 	}
 	if len(list) == 0 {
-		if r.EpiWhy == "" {
-			return nil
-		}
-		return &epi{Texts: []string{"Epi thickness and doping: " + notAvailable + ". " + sentence(r.EpiWhy)}}
+		return nil // the record says why
 	}
 	e := &epi{Table: epiTable(list)}
 	if r.Epi == nil {
@@ -140,7 +137,7 @@ func otherTables(r *reports.Report) []table {
 	}
 	groups := table{Caption: "Groups of wafers with like maps", Columns: []column{{Name: "Group", Numeric: true}, {Name: "Wafers"}, {Name: "What they share"}}}
 	for _, g := range r.Groups {
-		groups.Rows = append(groups.Rows, []cell{counted(g.ID), text(strings.Join(g.Wafers, ", ")), text(g.Text)})
+		groups.Rows = append(groups.Rows, []cell{counted(g.ID), {Text: strings.Join(g.Wafers, ", "), Class: "phrase"}, {Text: g.Text, Class: "wide"}})
 	}
 	add(groups)
 	variance := table{Caption: "Where the spread comes from", Sortable: true, Columns: []column{{Name: "Test"}, {Name: "Level"}, {Name: "Sigma", Numeric: true}, {Name: "95 % interval", Numeric: true, Plain: true}, {Name: "Share of variance", Numeric: true}}}
@@ -150,12 +147,12 @@ func otherTables(r *reports.Report) []table {
 	add(variance)
 	associations := table{Caption: "What goes with what", Sortable: true, Columns: []column{{Name: "Of"}, {Name: "With"}, {Name: "Effect", Numeric: true}, {Name: "p", Numeric: true}, {Name: "Text", Plain: true}}}
 	for _, a := range r.Associations {
-		associations.Rows = append(associations.Rows, []cell{text(a.Of), text(a.With), number(value(a.Effect), a.Effect), number(pValue(a.PValue), a.PValue), text(a.Text)})
+		associations.Rows = append(associations.Rows, []cell{text(a.Of), text(a.With), number(value(a.Effect), a.Effect), number(pValue(a.PValue), a.PValue), {Text: a.Text, Class: "wide"}})
 	}
 	add(associations)
 	screens := table{Caption: "Screens for outlying dice", Sortable: true, Columns: []column{{Name: "Screen"}, {Name: "Dice", Numeric: true}, {Name: "Yield cost", Numeric: true}, {Name: "Text", Plain: true}}}
 	for _, s := range r.Screens {
-		screens.Rows = append(screens.Rows, []cell{text(s.Name), counted(s.Dice), number(percent(s.Loss), s.Loss), text(s.Text)})
+		screens.Rows = append(screens.Rows, []cell{text(s.Name), counted(s.Dice), number(percent(s.Loss), s.Loss), {Text: s.Text, Class: "wide"}})
 	}
 	add(screens)
 	return out

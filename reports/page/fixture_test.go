@@ -82,11 +82,16 @@ type fixtureLot struct {
 	rings, sectors               [8][2]int
 }
 
+const fixtureAspect = 0.9
+
+// half is how many dice lie between the centre and the edge along x.
+func (f *fixtureLot) half() int { return int(float64(f.radius) / fixtureAspect) }
+
 func (f *fixtureLot) wafer(w int) {
-	size := 2*f.radius + 1
-	img := image.NewPaletted(image.Rect(0, 0, size, size), fixturePalette)
+	size, wide := 2*f.radius+1, 2*f.half()+1
+	img := image.NewPaletted(image.Rect(0, 0, wide, size), fixturePalette)
 	if f.stacked == nil {
-		f.stacked = make([]int, size*size)
+		f.stacked = make([]int, wide*size)
 	}
 	id := fmt.Sprintf("%02d", w+1)
 	wafer := reports.Wafer{ID: id, Attributes: map[string]string{"reactor": []string{"R2", "R3"}[w%2], "pocket": fmt.Sprint(w%6 + 1)}}
@@ -95,8 +100,8 @@ func (f *fixtureLot) wafer(w int) {
 	first := make([]int, len(f.tests))
 	waferShift := f.r.NormFloat64() * 0.4
 	for row := range size {
-		for column := range size {
-			x, y := float64(column-f.radius)/float64(f.radius), float64(row-f.radius)/float64(f.radius)
+		for column := range wide {
+			x, y := fixtureAspect*float64(column-f.half())/float64(f.radius), float64(row-f.radius)/float64(f.radius)
 			q := math.Hypot(x, y)
 			if q > 0.985 {
 				continue
@@ -145,7 +150,7 @@ func (f *fixtureLot) wafer(w int) {
 				f.rings[ring][1]++
 				f.sectors[sector][1]++
 			} else {
-				f.stacked[row*size+column]++
+				f.stacked[row*wide+column]++
 				first[failed[0]]++
 				f.first[failed[0]]++
 				for _, k := range failed {
@@ -176,7 +181,7 @@ func (f *fixtureLot) wafer(w int) {
 	}
 	wafer.Spatial = reports.Spatial{
 		JoinCount: &reports.JoinCount{Neighbours: "queen", Z: z, PValue: reports.Number(math.Erfc(float64(z)/math.Sqrt2) / 2), Method: "randomisation"},
-		Clusters:  []reports.Cluster{{Dice: 4 + int(z)*7, X: 3.2, Y: -1.4, RadiusMM: 8.6, Width: 12, Height: 9}}, Total: 14,
+		Clusters:  []reports.Cluster{{Dice: 4 + max(0, int(z))*7, X: 3.2, Y: -1.4, RadiusMM: 8.6, Width: 12, Height: 9}}, Total: 14,
 	}
 	f.report.Wafers = append(f.report.Wafers, wafer)
 	for k := range f.tests {
@@ -200,8 +205,8 @@ func (f *fixtureLot) raster(name string, img *image.Paletted, counts []int, labe
 		f.t.Fatal(err)
 	}
 	r := reports.Raster{
-		Name: name, Columns: img.Rect.Dx(), Rows: img.Rect.Dy(), X0: -f.radius, Y0: f.radius, Step: 1, Aspect: 0.9,
-		CentreColumn: float64(f.radius) + 0.5, CentreRow: float64(f.radius) + 0.5, RadiusColumns: float64(f.radius) + 1, RadiusRows: float64(f.radius) + 1,
+		Name: name, Columns: img.Rect.Dx(), Rows: img.Rect.Dy(), X0: -f.half(), Y0: f.radius, Step: 1, Aspect: fixtureAspect,
+		CentreColumn: float64(f.half()) + 0.5, CentreRow: float64(f.radius) + 0.5, RadiusColumns: (float64(f.radius) + 1) / fixtureAspect, RadiusRows: float64(f.radius) + 1,
 		Notch: "down", PNG: b.Bytes(),
 	}
 	for i := 1; i < len(labels); i++ {
@@ -286,15 +291,15 @@ func (f *fixtureLot) finish() {
 }
 
 func (f *fixtureLot) stack() {
-	size := 2*f.radius + 1
+	size, wide := 2*f.radius+1, 2*f.half()+1
 	palette := color.Palette{color.RGBA{}}
 	labels := []string{""}
 	for i := range 8 {
 		t := float64(i) / 7
 		palette = append(palette, color.RGBA{uint8(238 - 180*t), uint8(242 - 215*t), uint8(244 - 225*t), 255})
-		labels = append(labels, fmt.Sprintf("fails on %.1f to %.1f %% of wafers", 100*float64(i)/8, 100*float64(i+1)/8))
+		labels = append(labels, fmt.Sprintf("%.1f to %.1f %%", 100*float64(i)/8, 100*float64(i+1)/8))
 	}
-	img := image.NewPaletted(image.Rect(0, 0, size, size), palette)
+	img := image.NewPaletted(image.Rect(0, 0, wide, size), palette)
 	first := f.report.Pictures.Wafers[0]
 	shape, err := png.Decode(bytes.NewReader(first.PNG))
 	if err != nil {
@@ -302,11 +307,11 @@ func (f *fixtureLot) stack() {
 	}
 	counts := make([]int, 9)
 	for row := range size {
-		for column := range size {
+		for column := range wide {
 			if _, _, _, a := shape.At(column, row).RGBA(); a == 0 {
 				continue
 			}
-			c := 1 + min(7, f.stacked[row*size+column]*8/len(f.report.Wafers))
+			c := 1 + min(7, f.stacked[row*wide+column]*8/len(f.report.Wafers))
 			img.SetColorIndex(column, row, uint8(c))
 			counts[c]++
 		}

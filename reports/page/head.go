@@ -20,8 +20,6 @@ type head struct {
 // figure is one key number.
 type figure struct {
 	Name, Value, Note string
-	Bar               *bar
-	Low               bool
 }
 
 // alarm is the line on data that must not be trusted blindly.
@@ -68,7 +66,6 @@ func figures(r *reports.Report) []figure {
 	yield := figure{Name: "Yield", Value: percent(y.Estimate), Note: orWhy(percentRange(y.Interval), y.Why)}
 	if y.Estimate.Valid() {
 		yield.Note += ", 95" + space + "% interval"
-		yield.Bar = intervalBar(y.Interval, scaleFrom(append(waferYields(r.Wafers), y.Interval)), false)
 	}
 	out := []figure{yield}
 	if y.Baseline.Valid() {
@@ -312,7 +309,7 @@ func causeFinding(causes []reports.Cause) finding {
 	var likely []string
 	for _, c := range causes[:min(3, len(causes))] {
 		if c.Probability.Valid() {
-			likely = append(likely, causeName(c)+" ("+percent(c.Probability)+")")
+			likely = append(likely, causeName(c)+" ("+chance(c.Probability)+")")
 		}
 	}
 	if len(likely) == 0 {

@@ -101,7 +101,7 @@ func testTable(tests []testPlace) *table {
 	}
 	for _, p := range tests {
 		t.Rows = append(t.Rows, []cell{
-			{Text: p.Name, Href: "#" + p.Anchor}, text(p.Condition), text(limits(p.Test)),
+			{Text: p.Name, Href: "#" + p.Anchor}, {Text: p.Condition, Class: "phrase"}, text(limits(p.Test)),
 			number(percent(p.Loss.First), p.Loss.First), number(percent(p.Loss.Alone), p.Loss.Alone), number(percent(p.Loss.Any), p.Loss.Any),
 			counted(p.Loss.FirstDice), optional(p.Loss.AloneDice), optional(p.Loss.AnyDice),
 			counted(p.LowFails), counted(p.HighFails), number(percent(p.Marginal), p.Marginal),
@@ -120,9 +120,9 @@ func limits(t *reports.Test) string {
 	case lower && upper:
 		return exact(t.Lower) + " to " + withUnit(exact(t.Upper), t.Unit)
 	case lower:
-		return "at least " + withUnit(exact(t.Lower), t.Unit)
+		return "≥" + space + withUnit(exact(t.Lower), t.Unit)
 	case upper:
-		return "at most " + withUnit(exact(t.Upper), t.Unit)
+		return "≤" + space + withUnit(exact(t.Upper), t.Unit)
 	}
 	return "no limit"
 }

@@ -170,7 +170,7 @@ func notch(side string, cx, cy, rx, ry float64) string {
 	default:
 		return ""
 	}
-	const depth, half = 0.07, 0.045
+	const depth, half = 0.055, 0.035
 	at := func(along, across float64) string {
 		return short(cx+rx*(dx*along-dy*across)) + " " + short(cy+ry*(dy*along+dx*across))
 	}

@@ -50,9 +50,9 @@ func percentDecimals(p float64) int {
 	switch {
 	case rest >= 0.995 || rest == 0:
 		return 1
-	case rest >= 0.095:
+	case rest >= 0.0995:
 		return 2
-	case rest >= 0.0095:
+	case rest >= 0.00095:
 		return 3
 	}
 	return 4
@@ -81,6 +81,20 @@ func percent(p reports.Number) string {
 		return "<0.0001" + space + "%"
 	}
 	return fixed(100*v, percentDecimals(v)) + space + "%"
+}
+
+// chance writes a probability that was estimated: whole percents, and no
+// certainty either way.
+func chance(p reports.Number) string {
+	switch {
+	case !p.Valid():
+		return notAvailable
+	case p < 0.01:
+		return "below 1" + space + "%"
+	case p > 0.99:
+		return "above 99" + space + "%"
+	}
+	return fixed(100*float64(p), 0) + space + "%"
 }
 
 // percentRange writes the ends of a share's interval with the decimals that
@@ -159,11 +173,14 @@ func value(v reports.Number) string {
 
 // exact writes a number that somebody chose, such as a limit: as few digits as
 // give it back, at most seven.
-func exact(v reports.Number) string {
+func exact(v reports.Number) string { return trimmed(v, 7) }
+
+// trimmed writes at most n significant digits, and no zeros after them.
+func trimmed(v reports.Number, n int) string {
 	if !v.Valid() {
 		return notAvailable
 	}
-	s := significant(float64(v), 7)
+	s := significant(float64(v), n)
 	if strings.Contains(s, ".") && !strings.Contains(s, "e") {
 		s = strings.TrimRight(strings.TrimRight(s, "0"), ".")
 	}

@@ -22,7 +22,7 @@ func newRecord(r *reports.Report) record {
 				if q.Severity != wanted && (wanted != "" || known) {
 					continue
 				}
-				rec.Quality.Rows = append(rec.Quality.Rows, []cell{{Text: q.Severity, Sort: key, Class: severityClass(q.Severity)}, text(sentence(q.Text)), counted(q.Dice), text(sentence(q.Remedy)), text(q.Code)})
+				rec.Quality.Rows = append(rec.Quality.Rows, []cell{{Text: q.Severity, Sort: key, Class: severityClass(q.Severity)}, {Text: sentence(q.Text), Class: "wide"}, counted(q.Dice), {Text: sentence(q.Remedy), Class: "wide"}, text(q.Code)})
 			}
 		}
 	}
@@ -74,6 +74,12 @@ func recordFacts(r *reports.Report) []fact {
 		program += ": " + r.Program.Text
 	}
 	add("Test program", program)
+	if r.Epi == nil && r.EpiWhy != "" {
+		add("Epi layer", notAvailable+": "+r.EpiWhy)
+	}
+	if r.Pictures.Why != "" && len(r.Pictures.Wafers) == 0 {
+		add("Wafer maps", notAvailable+": "+r.Pictures.Why)
+	}
 	add("Geometry", geometryText(r.Geometry))
 	c := r.Yield.Counting
 	if c.Estimate.Valid() {

@@ -22,9 +22,9 @@ func histogram(p testPlace) (*chart, error) {
 	}
 	s := span{Low: float64(h.Edges[0]), High: float64(h.Edges[n]), Log: h.Scale == "log" && h.Edges[0] > 0}
 	width := s // of one bin beyond either end, where the steps return to zero
-	c := chart{ID: p.Anchor + "-histogram", Height: 270, LogCounts: true, Numbers: "Histogram of " + t.Name + ", counts by bin",
+	c := chart{ID: p.Anchor + "-histogram", Height: 240, LogCounts: true, Numbers: "Histogram of " + t.Name + ", counts by bin",
 		Label: "Histogram of " + t.Name + ", dice that pass and dice that fail, with limits and median. The numbers are in the table below.",
-		Key:   []keyEntry{{"pass", "dice that pass"}, {"fail", "dice that fail (any test)"}}}
+		Key:   []keyEntry{{"pass", "pass"}, {"fail", "fail any test"}}}
 	marks := limitMarks(t, &s, &c)
 	s.pad(0.03)
 	pass, all, rows := steps(h, width)
@@ -91,7 +91,7 @@ func steps(h *reports.Histogram, s span) (pass, all []opts.LineData, rows [][]st
 }
 
 // limitMarks are the lines of a test's limits and median; the span is
-// stretched to them where they are near, and the key says what is drawn.
+// stretched to them where they are near, and the chart's note names the others.
 func limitMarks(t *reports.Test, s *span, c *chart) []mark {
 	var marks []mark
 	for _, l := range []struct {
@@ -108,13 +108,9 @@ func limitMarks(t *reports.Test, s *span, c *chart) []mark {
 		marks = append(marks, mark{Name: l.name, XAxis: plot(l.value), Label: &opts.Label{Formatter: l.name + " " + exact(l.value)},
 			LineStyle: &opts.LineStyle{Color: colourInk, Width: 1.5, Type: "dashed"}})
 	}
-	if len(marks) > 0 {
-		c.Key = append(c.Key, keyEntry{"line-dashed", "limit"})
-	}
 	if t.Median.Valid() && s.include(float64(t.Median)) {
 		marks = append(marks, mark{Name: "median", XAxis: plot(t.Median), Label: &opts.Label{Formatter: "median " + value(t.Median) + "\n"},
 			LineStyle: &opts.LineStyle{Color: colourInk, Width: 1.5, Type: "dotted"}})
-		c.Key = append(c.Key, keyEntry{"line-dotted", "median"})
 	}
 	return marks
 }
@@ -160,20 +156,19 @@ func strip(p testPlace) (*chart, error) {
 		return nil, nil
 	}
 	s.Log = t.Histogram != nil && t.Histogram.Scale == "log" && s.Low > 0
-	c := chart{ID: p.Anchor + "-wafers", Height: 270, Numbers: t.Name + " by wafer",
+	c := chart{ID: p.Anchor + "-wafers", Height: 240, Numbers: t.Name + " by wafer",
 		Label: t.Name + " by wafer: median, middle half, and 5 to 95 % range. The numbers are in the table below.",
 		Key:   []keyEntry{{"dot", "median"}, {"box", "middle half"}, {"line-thin", "5 to 95" + space + "%"}}}
 	var marks []mark
 	for _, m := range limitMarks(t, &s, &c) {
 		m.YAxis, m.XAxis, m.Label = m.XAxis, nil, hidden()
-		if m.Name == "median" {
-			m.LineStyle.Width = 1
-		}
 		marks = append(marks, m)
-	}
-	for i := range c.Key {
-		if c.Key[i].Mark == "line-dotted" {
-			c.Key[i].Text = "lot median"
+		line := keyEntry{"line-dashed", "limit"}
+		if m.Name == "median" {
+			line = keyEntry{"line-dotted", "lot"}
+		}
+		if !slices.Contains(c.Key, line) {
+			c.Key = append(c.Key, line)
 		}
 	}
 	s.pad(0.05)
@@ -199,7 +194,7 @@ func strip(p testPlace) (*chart, error) {
 	d := charts.NewScatter()
 	d.AddSeries("median", dots(median), scatter("circle", 6, colourFirst)...)
 	l.Overlap(d)
-	l.Accept(house{yTicks: s.ticks(5)})
+	l.Accept(house{yTicks: s.ticks(6)})
 	done, err := c.finish(l.JSON(), []string{"Wafer", "Dice", "Median", "MAD sigma", "5 %", "25 %", "75 %", "95 %", "Outside limits"}, rows, segmentRows, segmentRows, each)
 	return &done, err
 }
@@ -234,7 +229,7 @@ func limitCurve(p testPlace) (*chart, error) {
 		return nil, nil
 	}
 	slices.SortFunc(shifts, func(a, b reports.Number) int { return cmp.Compare(a, b) })
-	c := chart{ID: p.Anchor + "-limits", Height: 270, Numbers: "Yield of the lot with a limit of " + t.Name + " moved",
+	c := chart{ID: p.Anchor + "-limits", Height: 240, Numbers: "Yield of the lot with a limit of " + t.Name + " moved",
 		Label: "Yield of the lot with a limit of " + t.Name + " moved by up to ten percent. The numbers are in the table below."}
 	var lower, upper []opts.LineData
 	var rows [][]string

@@ -41,16 +41,17 @@ func waferYields(ws []reports.Wafer) []reports.Interval {
 
 func waferTable(r *reports.Report, low float64) *table {
 	t := &table{Caption: "Wafers", Sortable: true, Columns: []column{
-		{Name: "Wafer"}, {Name: "Dice", Numeric: true}, {Name: "Yield", Numeric: true}, {Name: "95 % interval", Plain: true},
-		{Name: fmt.Sprintf("%s to 100%s%%", fixed(100*low, 0), space), Plain: true, Help: "yield with its interval, drawn"},
-		{Name: "First pass", Numeric: true}, {Name: "Retested", Numeric: true}, {Name: "Stands out"}, {Name: "Main losses", Plain: true},
+		{Name: "Wafer"}, {Name: "Yield", Numeric: true}, {Name: "95" + space + "% interval", Numeric: true, Plain: true},
+		{Name: fixed(100*low, 0) + " to 100" + space + "%", Plain: true, Help: "yield with its interval, drawn"},
+		{Name: "Main losses", Plain: true, Help: "tests that lose most, first loss"},
+		{Name: "Dice", Numeric: true}, {Name: "First pass", Numeric: true}, {Name: "Retested", Numeric: true},
 	}}
 	has := waferExtras(r)
 	if has.spatial {
-		t.Columns = append(t.Columns, column{Name: "Join count z", Numeric: true, Help: "fail-fail joins against chance, in standard deviations"},
+		t.Columns = append(t.Columns, column{Name: "Joins z", Numeric: true, Help: "fail-fail joins against chance, in standard deviations"},
 			column{Name: "p", Numeric: true, Help: "chance of so many joins or more, fails scattered at random"},
-			column{Name: "Largest cluster", Numeric: true, Help: "dice of the largest connected group of fails"})
-		t.Note = "Join count: more failing neighbours of failing dice than chance gives; a small p says that the fails are clustered."
+			column{Name: "Largest cluster", Numeric: true, Help: "dice of the largest connected group of fails, its centre, and that one's distance from the wafer's"})
+		t.Note = "Joins: failing neighbours of failing dice, against what chance gives; a large z with a small p says that the fails are clustered."
 	}
 	if has.signatures {
 		t.Columns = append(t.Columns, column{Name: "Pattern", Plain: true})
@@ -65,44 +66,41 @@ func waferTable(r *reports.Report, low float64) *table {
 		t.Columns = append(t.Columns, column{Name: a})
 	}
 	for i := range r.Wafers {
-		w := &r.Wafers[i]
-		row := []cell{
-			text(w.ID), counted(w.Dice), number(percent(w.Yield.Estimate), w.Yield.Estimate), text(percentRange(w.Yield)),
-			{Bar: intervalBar(w.Yield, low, w.Stands == "low")},
-			number(percent(w.FirstPass), w.FirstPass), counted(w.Retested), {Text: w.Stands, Class: stands(w.Stands)}, text(shares(w.MainLoss)),
-		}
-		if !w.Yield.Estimate.Valid() && w.Yield.Why != "" {
-			row[3] = text(w.Yield.Why)
-		}
-		if has.spatial {
-			row = append(row, spatialCells(&w.Spatial)...)
-		}
-		if has.signatures {
-			row = append(row, text(signatures(w.Signatures)))
-		}
-		if has.group {
-			c := cell{}
-			if w.Group != 0 {
-				c = counted(w.Group)
-			}
-			row = append(row, c)
-		}
-		if has.proposals != nil {
-			row = append(row, text(has.proposals[w.ID]))
-		}
-		for _, a := range has.attributes {
-			row = append(row, text(w.Attributes[a]))
-		}
-		t.Rows = append(t.Rows, row)
+		t.Rows = append(t.Rows, waferRow(&r.Wafers[i], low, has))
 	}
 	return t
 }
 
-func stands(s string) string {
-	if s == "low" {
-		return "low"
+func waferRow(w *reports.Wafer, low float64, has extras) []cell {
+	yield := number(percent(w.Yield.Estimate), w.Yield.Estimate)
+	if w.Stands != "" {
+		yield.Text, yield.Class = w.Stands+space+space+yield.Text, w.Stands
 	}
-	return ""
+	row := []cell{
+		text(w.ID), yield, text(orWhy(percentRange(w.Yield), w.Yield.Why)), {Bar: intervalBar(w.Yield, low, w.Stands == "low")},
+		{Text: shares(w.MainLoss), Class: "wide losses"},
+		counted(w.Dice), number(percent(w.FirstPass), w.FirstPass), counted(w.Retested),
+	}
+	if has.spatial {
+		row = append(row, spatialCells(&w.Spatial)...)
+	}
+	if has.signatures {
+		row = append(row, cell{Text: signatures(w.Signatures), Class: "phrase"})
+	}
+	if has.group {
+		c := cell{}
+		if w.Group != 0 {
+			c = counted(w.Group)
+		}
+		row = append(row, c)
+	}
+	if has.proposals != nil {
+		row = append(row, text(has.proposals[w.ID]))
+	}
+	for _, a := range has.attributes {
+		row = append(row, text(w.Attributes[a]))
+	}
+	return row
 }
 
 // extras are the columns that only some reports have.
@@ -137,7 +135,7 @@ func waferExtras(r *reports.Report) extras {
 func shares(list []reports.Share) string {
 	var parts []string
 	for _, s := range list {
-		parts = append(parts, s.Name+" "+percent(s.Share))
+		parts = append(parts, s.Name+space+percent(s.Share))
 	}
 	return strings.Join(parts, ", ")
 }
@@ -153,7 +151,8 @@ func spatialCells(s *reports.Spatial) []cell {
 	largest := text("none")
 	if len(s.Clusters) > 0 {
 		c := s.Clusters[0]
-		largest = cell{Text: plural(c.Dice, "die", "dice"), Sort: fmt.Sprint(c.Dice)}
+		largest = counted(c.Dice)
+		largest.Class = "loose"
 		if c.X.Valid() && c.Y.Valid() {
 			largest.Text += fmt.Sprintf(" at x%s%s, y%s%s", space, fixed(float64(c.X), 0), space, fixed(float64(c.Y), 0))
 		}

@@ -38,7 +38,7 @@ func scaleFrom(yields []reports.Interval) float64 {
 }
 
 func (p yieldChart) draw() (chart, error) {
-	c := chart{ID: p.ID, Height: 270, Label: p.Label, Key: []keyEntry{{"dot", "yield with 95" + space + "% interval"}}}
+	c := chart{ID: p.ID, Height: 260, Label: p.Label, Key: []keyEntry{{"dot", "yield with 95" + space + "% interval"}}}
 	var lower, upper, normal, out []any
 	anyLow := false
 	for i, y := range p.Yields {
@@ -83,7 +83,7 @@ func (p yieldChart) draw() (chart, error) {
 func scatter(symbol string, size int, colour string) []charts.SeriesOpts {
 	return []charts.SeriesOpts{
 		charts.WithScatterChartOpts(opts.ScatterChart{Symbol: symbol, SymbolSize: size}),
-		charts.WithItemStyleOpts(opts.ItemStyle{Color: colour}),
+		charts.WithItemStyleOpts(opts.ItemStyle{Color: colour, Opacity: opts.Float(1)}),
 	}
 }
 

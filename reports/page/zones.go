@@ -20,14 +20,14 @@ func newZones(r *reports.Report) (zones, error) {
 		}
 		t := table{Caption: kind.title, Note: kind.note, Sortable: true, Columns: []column{
 			{Name: "Zone"}, {Name: "From, " + kind.unit, Numeric: true}, {Name: "To, " + kind.unit, Numeric: true}, {Name: "Dice", Numeric: true},
-			{Name: "Yield", Numeric: true}, {Name: "95 % interval", Plain: true}}}
+			{Name: "Yield", Numeric: true}, {Name: "95" + space + "% interval", Numeric: true, Plain: true}}}
 		for _, zone := range r.Zones {
 			if zone.Kind != kind.name {
 				continue
 			}
 			p.Names, p.Yields = append(p.Names, zone.Name), append(p.Yields, zone.Yield)
 			p.Rows = append(p.Rows, []string{zone.Name, percent(zone.Yield.Estimate), percentRange(zone.Yield), count(zone.Dice)})
-			t.Rows = append(t.Rows, []cell{text(zone.Name), number(exact(zone.From), zone.From), number(exact(zone.To), zone.To), counted(zone.Dice),
+			t.Rows = append(t.Rows, []cell{text(zone.Name), number(trimmed(zone.From, 4), zone.From), number(trimmed(zone.To, 4), zone.To), counted(zone.Dice),
 				number(percent(zone.Yield.Estimate), zone.Yield.Estimate), text(orWhy(percentRange(zone.Yield), zone.Yield.Why))})
 		}
 		if len(t.Rows) == 0 {
