@@ -21,6 +21,11 @@ import (
 // takes a tenth of it; what is larger is a data file given by mistake.
 const maxFile = 4 << 20
 
+// maxKeys caps the keys of a YAML or TOML file: both decoders compare each key of
+// a block with all others, which takes minutes for a file of nothing but keys.
+// A thousand tests have eight thousand.
+const maxKeys = 30_000
+
 // maxNesting caps brackets within brackets. The schema needs five.
 const maxNesting = 1000
 
@@ -91,7 +96,7 @@ func decodeFile(file string, data []byte, kind string) (root map[string]any, dou
 	}
 	name := strings.ToUpper(format)
 	if line, what := beyondDecoder(format, data); what != "" {
-		return fail(line, what, "keep one block of keys in the file", nil)
+		return fail(line, what, "keep one "+kind+" and nothing else in the file", nil)
 	}
 	raw := map[string]any{}
 	if err := decodeSafely(format, data, raw); err != nil {
@@ -142,6 +147,15 @@ func lineAt(data []byte, offset int) int {
 // beyondDecoder finds what a decoder would pass over in silence or take very
 // long for: a second YAML document, and TOML nested without end.
 func beyondDecoder(format string, data []byte) (line int, what string) {
+	for _, marks := range map[string][]string{"yaml": {":?", ","}, "toml": {"=["}}[format] {
+		keys := 0
+		for i := range len(marks) {
+			keys += bytes.Count(data, []byte(marks[i:i+1]))
+		}
+		if keys > maxKeys {
+			return 0, fmt.Sprintf("the file has about %d keys, too many by far", keys)
+		}
+	}
 	switch format {
 	case "yaml":
 		content, ended := false, false
@@ -240,7 +254,11 @@ var yamlKind = regexp.MustCompile("^cannot unmarshal !!(\\w+) .*into (map|string
 
 // firstBadLine finds the line for an error that names none: the last of the
 // fewest lines at the file's start that give the same error.
+// It decodes some twenty times, so a large file gets no line: 0.
 func firstBadLine(format string, data []byte, want error) int {
+	if len(data) > 1<<18 {
+		return 0
+	}
 	lines := bytes.SplitAfter(data, []byte("\n"))
 	lo, hi, end := 0, len(lines), len(data) // lines[:hi] has the error, lines[:lo] has not
 	for hi-lo > 1 {

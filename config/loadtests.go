@@ -224,13 +224,19 @@ func readBaseline(c *collector, v any, tests []Test) *Baseline {
 		b.add("baseline.tests", describe(v)+" stands where a block of keys belongs", "write tests: {BVCEO: {median: 24.8, sigma: 0.6}}")
 	}
 	names := make([]string, len(tests))
-	keysOf := map[string][]string{} // by listed test
-	for i, t := range tests {
-		names[i] = t.Name
+	exact, folded := map[string]string{}, map[string]string{}
+	for i := len(tests) - 1; i >= 0; i-- { // the first of two listed wins
+		names[i] = tests[i].Name
+		exact[names[i]], folded[strings.ToLower(names[i])] = names[i], names[i]
 	}
+	keysOf := map[string][]string{} // by listed test
 	var strangers []string
 	for _, k := range sortedKeys(m) {
-		if name := matchKey(k, names); name != "" {
+		name, ok := exact[k]
+		if !ok {
+			name, ok = folded[strings.ToLower(k)]
+		}
+		if ok && name != "" {
 			keysOf[name] = append(keysOf[name], k)
 		} else {
 			strangers = append(strangers, k)
@@ -252,7 +258,8 @@ func readBaseline(c *collector, v any, tests []Test) *Baseline {
 	}
 	for _, k := range strangers {
 		remedy := "add it to tests, or take it out of the baseline"
-		if near := nearest(k, names); near != "" {
+		// A baseline of another product altogether is not worth the search.
+		if near := nearest(k, names[:min(len(names), 100_000/len(strangers))]); near != "" {
 			remedy = "did you mean " + near + "?"
 		}
 		c.add(join("baseline.tests", k), "there is no such test in tests", remedy)

@@ -141,6 +141,10 @@ func matchKey(k string, known []string) string {
 // unknown reports a key that the block has not, with what was probably meant.
 func (b *block) unknown(k, name string) {
 	path := join(b.path, k)
+	if len(b.collector.list) > 100*maxProblemLines { // no product file; the search takes time
+		b.add(path, "unknown key", "take it out")
+		return
+	}
 	if near := nearest(k, schema[name]); near != "" {
 		b.meant[near] = true
 		b.add(path, "unknown key", "did you mean "+near+"?")

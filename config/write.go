@@ -80,7 +80,7 @@ func (y *yamlWriter) device(d *Device) {
 			epi = append(epi, "    "+key+": "+value)
 		}
 	}
-	add("thickness_um", yamlSpec(d.Epi.ThicknessUM)) // the comment follows below
+	add("thickness_um", yamlSpec(d.Epi.ThicknessUM))
 	add("resistivity_ohm_cm", yamlSpec(d.Epi.ResistivityOhmCM))
 	add("up_diffusion_um", yamlQuantity(d.Epi.UpDiffusionUM))
 	add("substrate_cm3", yamlQuantity(d.Epi.SubstrateCM3))
