@@ -7,7 +7,7 @@ package config
 // A number that the file does not give is NaN; a block that the file does not
 // give is nil.
 type Product struct {
-	Name             string
+	Name             string // part type; "" when not given
 	File             string // as named by the user
 	SHA256           string // of the file's bytes, hex
 	Device           *Device
@@ -17,7 +17,7 @@ type Product struct {
 	TestTemperatureC float64 // 25 when not given
 	Tests            []Test
 	Baseline         *Baseline
-	Causes           []map[string]any // site causes, kept as written for the cause catalogue
+	Causes           []map[string]any // site causes, kept as written for the cause catalogue: every number a float64, a date its text; nil for none
 }
 
 // Quantity is a value that may carry its own spread.
@@ -99,9 +99,9 @@ type Test struct {
 
 // Condition is one bias condition of a test, such as IC=10uA.
 type Condition struct {
-	Name  string // IC, VCB, F ...
-	Value float64
-	Unit  Unit
+	Name  string  // IC, VCB, F ... as written
+	Value float64 // SI: 1e-5 for 10uA
+	Unit  Unit    // as written: uA; a ratio when there is none
 }
 
 // Baseline is the typical healthy lot. Medians and sigmas are SI.
