@@ -31,7 +31,7 @@ func (d *draft) places() {
 		return
 	}
 	if none > 0 {
-		d.note(Warning, "without-coordinates", fmt.Sprintf("%d of %d dice have no coordinates; they count in yields and are not on the maps", none, len(x)), "", none)
+		d.note(Warning, "die-without-coordinates", fmt.Sprintf("%d of %d dice have no coordinates; they count in yields and are not on the maps", none, len(x)), "", none)
 	}
 	p := places{x: x, y: y}
 	off, rule := p.offWafer(d)

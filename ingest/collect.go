@@ -37,7 +37,7 @@ type placed struct {
 
 func newCollector(size int64, like *chunk) *collector {
 	k := &collector{size: size, pending: map[int]parsed{}, text: make([]globalText, len(like.text))}
-	k.out = &chunk{file: like.file, text: make([]textColumn, len(like.text)), values: make([][]float64, len(like.values)), cells: make([]cellCount, len(like.cells))}
+	k.out = &chunk{file: like.file, text: make([]textColumn, len(like.text)), values: make([][]float64, len(like.values)), odd: map[oddKey]oddCells{}}
 	return k
 }
 
@@ -89,9 +89,7 @@ func (k *collector) place(p parsed) placed {
 		}
 	}
 	k.out.rows.add(&c.rows)
-	for i := range c.cells {
-		k.out.cells[i].add(&c.cells[i])
-	}
+	addOdd(k.out.odd, c.odd)
 	if k.out.n > k.cap {
 		k.grow(c, p.raw)
 	}

@@ -41,7 +41,7 @@ func (t *readings) describeTests(product *config.Product) {
 		}
 	}
 	if len(absent) > 0 {
-		t.note(Warning, "test-absent", fmt.Sprintf("%d of the product file's %d tests %s not in the data: %s", len(absent), len(product.Tests),
+		t.note(all, Warning, "test-not-in-data", fmt.Sprintf("%d of the product file's %d tests %s not in the data: %s", len(absent), len(product.Tests),
 			plural(len(absent), "is", "are"), list(absent, 12)), "check the names, also those in the header", 0)
 	}
 }
@@ -65,13 +65,13 @@ func (i *testInfo) fromFile(t *readings, file int, c *testColumn, product *confi
 			unit = i.unit
 		}
 	case own.Given() && !own.Compatible(unit):
-		t.note(Severe, "unit-conflict", fmt.Sprintf("test %s: the data file says %s and the product file %s, which do not convert into one another; the values are taken as %s",
+		t.note(file, Severe, "unit-conflict", fmt.Sprintf("test %s: the data file says %s and the product file %s, which do not convert into one another; the values are taken as %s",
 			i.name, showUnit(unit), showUnit(own), showUnit(own)), "correct the unit in the product file or in the data", 0)
 		unit = own
 	case own.Given() && own.Exp != unit.Exp:
-		t.note(Info, "unit-prefix", fmt.Sprintf("test %s: the data file says %s and the product file %s; the values are converted", i.name, showUnit(unit), showUnit(own)), "", 0)
+		t.note(file, Info, "unit-prefix", fmt.Sprintf("test %s: the data file says %s and the product file %s; the values are converted", i.name, showUnit(unit), showUnit(own)), "", 0)
 	case !own.Given() && i.unit.Given() && !i.unit.Compatible(unit):
-		t.note(Severe, "unit-conflict", fmt.Sprintf("test %s: one file says %s and another %s; the values are taken as %s",
+		t.note(file, Severe, "unit-conflict", fmt.Sprintf("test %s: one file says %s and another %s; the values are taken as %s",
 			i.name, showUnit(i.unit), showUnit(unit), showUnit(i.unit)), "correct the unit in the files", 0)
 		unit = i.unit
 	}
@@ -81,7 +81,7 @@ func (i *testInfo) fromFile(t *readings, file int, c *testColumn, product *confi
 	}
 	lower, upper := unit.ToSI(c.lower), unit.ToSI(c.upper)
 	if i.limitsFrom != "" && (differ(i.lower, lower) || differ(i.upper, upper)) && (lower == lower || upper == upper) {
-		t.note(Warning, "limits-mixed", fmt.Sprintf("test %s: the files give different limits, %s and %s; the first are used", i.name,
+		t.note(file, Warning, "limits-mixed", fmt.Sprintf("test %s: the files give different limits, %s and %s; the first are used", i.name,
 			showLimits(i.lower, i.upper, i.unit), showLimits(lower, upper, i.unit)), "check whether test programs were mixed", 0)
 	}
 	if i.limitsFrom == "" && (lower == lower || upper == upper) {
@@ -118,7 +118,7 @@ func (i *testInfo) fromProduct(t *readings, p *config.Test) {
 	}
 	i.limitsFrom = "product file"
 	if had && (p.Lower == p.Lower && differ(p.Lower, fileLower) || p.Upper == p.Upper && differ(p.Upper, fileUpper)) {
-		t.note(Warning, "limits-differ", fmt.Sprintf("test %s: the data file has limits %s, the product file %s; the product file's hold", i.name,
+		t.note(all, Warning, "limits-differ", fmt.Sprintf("test %s: the data file has limits %s, the product file %s; the product file's hold", i.name,
 			showLimits(fileLower, fileUpper, i.unit), showLimits(i.lower, i.upper, i.unit)), "check which revision of the test program was run", 0)
 	}
 }
@@ -155,70 +155,82 @@ func showLimits(lower, upper float64, u config.Unit) string {
 	return show(lower, u) + " to " + show(upper, u)
 }
 
-// fileFindings turns the counts of rows of one file into findings.
-func (t *readings) fileFindings(f *fileData) {
-	t.findings = append(t.findings, f.notes...)
-	name, r := f.input.File, &f.rows
-	at := func(p place) string { return fmt.Sprintf("%s:%d", name, p.line) }
+// all stands for every file in readings.note.
+const all = -1
+
+// fileFindings turns the counts of odd rows of one file into findings.
+func (t *readings) fileFindings(file int) {
+	f := t.files[file]
+	for _, n := range f.notes {
+		t.note(file, n.Severity, n.Code, n.Text, n.Remedy, n.Dice)
+	}
+	name := f.input.File
 	if f.err != nil {
-		t.note(Severe, "broken-off", fmt.Sprintf("%s: %s; the %d rows before are used, what followed is missing", name, f.err.What, f.rows.read-f.rows.cut), f.err.Remedy, 0)
+		t.note(file, Severe, "broken-off", fmt.Sprintf("%s: %s; the %d rows before are used, what followed is missing", name, f.err.What, f.rows.read-f.rows.odd[cutRow].n), f.err.Remedy, 0)
 	}
-	if r.cut > 0 {
-		t.note(Severe, "cut-short", at(r.firstCut)+": the file ends in the middle of this line; the line is not used, and rows after it may be missing", "fetch the file again", r.cut)
+	for _, k := range []struct {
+		o            rowOddity
+		severity     Severity
+		code         string
+		one, many    string
+		note, remedy string
+	}{
+		{cutRow, Severe, "cut-short", "the file ends in the middle of this line", "", "; it is not used, and rows after it may be missing", "fetch the file again"},
+		{longRow, Warning, "long-row", "this row has more fields than the header", "%d rows, this one first, have more fields than the header",
+			"; not used, as it cannot be told which field is which", "put quotes around text that holds the separator"},
+		{shortRow, Warning, "short-row", "this row has fewer fields than the header", "%d rows, this one first, have fewer fields than the header",
+			"; used as far as they go", "export the table again"},
+		{noWaferRow, Warning, "no-wafer", "this row has no wafer id", "%d rows, this one first, have no wafer id", "; not used, as the dice cannot be placed",
+			"fill the wafer column, also where a spreadsheet left it out below the first row"},
+		{binaryRow, Severe, "binary-row", "this row holds zero bytes", "%d rows, this one first, hold zero bytes", "; not used", "the file was damaged on its way; fetch it again"},
+		{headerAgain, Info, "repeated-header", "the header stands here again", "the header stands %d times more, here first", ", as when files are joined", ""},
+		{blankRow, Info, "blank-row", "this row holds nothing but separators", "%d rows, this one first, hold nothing but separators", "", ""},
+		{unclosedRow, Warning, "unclosed-quote", "a quote is not closed", "quotes are not closed in %d rows, this one first", "; taken as text", "double the quotes within quoted text"},
+	} {
+		if c := f.rows.odd[k.o]; c.n > 0 {
+			what := k.one
+			if c.n > 1 {
+				what = fmt.Sprintf(k.many, c.n)
+			}
+			t.note(file, k.severity, k.code, fmt.Sprintf("%s:%d: %s%s", name, c.first.line, what, k.note), k.remedy, c.n)
+		}
 	}
-	if r.long > 0 {
-		t.note(Warning, "too-many-fields", fmt.Sprintf("%s: %d %s more fields than the header has columns, this one first; not used, for it cannot be told which field is which",
-			at(r.firstLong), r.long, plural(r.long, "row has", "rows have")), "put quotes around text that holds the separator", r.long)
+	if f.layout == nil {
+		return
 	}
-	if r.short > 0 {
-		t.note(Warning, "too-few-fields", fmt.Sprintf("%s: %d %s fewer fields than the header has columns, this one first; used as far as they go",
-			at(r.firstShort), r.short, plural(r.short, "row has", "rows have")), "export the table again", r.short)
-	}
-	if r.binary > 0 {
-		t.note(Severe, "zero-bytes", fmt.Sprintf("%s: %d %s zero bytes, this one first; not used", at(r.firstBinary), r.binary, plural(r.binary, "row holds", "rows hold")),
-			"the file was damaged on its way; fetch it again", r.binary)
-	}
-	if r.header > 0 {
-		t.note(Info, "repeated-header", fmt.Sprintf("%s: the header stands %d more %s among the rows, as when files are joined", at(r.firstHeader), r.header, plural(r.header, "time", "times")), "", 0)
-	}
-	if r.blank > 0 {
-		t.note(Info, "blank-row", fmt.Sprintf("%s: %d %s nothing but separators", name, r.blank, plural(r.blank, "row holds", "rows hold")), "", 0)
-	}
-	if r.unclosed > 0 {
-		t.note(Warning, "unclosed-quote", fmt.Sprintf("%s: %d %s a quote that is not closed, this one first; it is taken as text", at(r.firstUnclosed), r.unclosed,
-			plural(r.unclosed, "row has", "rows have")), "double quotes within quoted text", r.unclosed)
+	for i, fd := range f.layout.fields {
+		c := f.odd[oddKey{field: i, kind: cellBad}]
+		if fd.kind != intField && fd.kind != passField || c.n == 0 {
+			continue
+		}
+		kind := "whole number"
+		if fd.kind == passField {
+			kind = "pass flag"
+		}
+		t.note(file, Warning, "unreadable-value", fmt.Sprintf("%s:%d: column %s: %d %s no %s, first %s; taken as missing", name, c.first.line, f.layout.names[i], c.n,
+			plural(c.n, "cell is", "cells are"), kind, quote(c.first.text)), "correct the cells, or name the right column under columns in the product file", c.n)
 	}
 }
 
-// cellFindings turns the counts of cells into findings, in the order of files
-// and columns.
-func (t *readings) cellFindings() {
-	for _, f := range t.files {
-		if f.layout == nil {
+// firstOdd finds where a kind of odd cell of a test stands first, in the files
+// that a lot has rows of.
+func (t *readings) firstOdd(test int, kind status, files []bool) (at, text string) {
+	for i, f := range t.files {
+		if f.layout == nil || !files[i] {
 			continue
 		}
-		for i := range f.layout.fields {
-			c := &f.cells[i]
-			name, file := f.layout.names[i], f.input.File
-			what := "test " + name
-			if f.layout.fields[i].role != "" {
-				what = "column " + name
+		for k, fd := range f.layout.fields {
+			if fd.kind != valueField || f.layout.long && fd.slot != longValue || !f.layout.long && fd.slot != test {
+				continue
 			}
-			if c.bad > 0 {
-				t.note(Warning, "not-a-number", fmt.Sprintf("%s:%d: %s: %d %s text that is no number, first %s; taken as missing", file, c.firstBad.line, what, c.bad,
-					plural(c.bad, "cell holds", "cells hold"), quote(c.firstBad.text)), "correct the cells, or tell what the text means", c.bad)
+			key := oddKey{field: k, kind: kind}
+			if f.layout.long {
+				key.test = t.sch.tests[test]
 			}
-			if c.inf > 0 {
-				t.note(Warning, "infinite", fmt.Sprintf("%s:%d: %s: %d %s infinite, first %s; taken as missing", file, c.firstInf.line, what, c.inf,
-					plural(c.inf, "value is", "values are"), quote(c.firstInf.text)), "", c.inf)
-			}
-			if c.over > 0 {
-				t.note(Warning, "out-of-range", fmt.Sprintf("%s:%d: %s: %d %s a word for out of range, first %s; taken as missing", file, c.firstOver.line, what, c.over,
-					plural(c.over, "cell holds", "cells hold"), quote(c.firstOver.text)), "export the reading at the clamp instead, so that it counts as a bound", c.over)
-			}
-			if c.missing > 0 {
-				t.note(Info, "missing-word", fmt.Sprintf("%s: %s: %d %s a word for no reading, as NA", file, what, c.missing, plural(c.missing, "cell holds", "cells hold")), "", c.missing)
+			if o, ok := f.odd[key]; ok {
+				return fmt.Sprintf("%s:%d: ", f.input.File, o.first.line), o.first.text
 			}
 		}
 	}
+	return "", ""
 }

@@ -16,7 +16,7 @@ func (d *draft) lot(opt *Options) *Lot {
 	d.ownOrder = d.ints[intTouchdown] != nil
 	d.touchdowns()
 	d.orderTests()
-	d.eachTest(opt, d.sentinels)
+	d.eachTest(opt, func(i int) []Finding { return append(d.oddCells(i), d.sentinels(i)...) })
 	keep := d.retests(opt)
 	l := &Lot{id: d.id, inputs: d.inputs, wafers: d.wafers}
 	d.attributes(l)
@@ -52,7 +52,7 @@ func (d *draft) lot(opt *Options) *Lot {
 			l.cols.attributes = append(l.cols.attributes, dieAttribute{name: d.textNames[s], codes: int32Column(d.text[s]), labels: d.dict[s]})
 		}
 	}
-	l.findings = d.findings
+	l.findings, l.shared = d.findings, d.shared
 	return l
 }
 
@@ -82,9 +82,9 @@ func (d *draft) orderTests() {
 		}
 		return 0
 	})
-	tests, values := slices.Clone(d.tests), slices.Clone(d.values)
+	tests, values, slots := slices.Clone(d.tests), slices.Clone(d.values), slices.Clone(d.slots)
 	for i, p := range place {
-		d.tests[i], d.values[i] = tests[p], values[p]
+		d.tests[i], d.values[i], d.slots[i] = tests[p], values[p], slots[p]
 	}
 }
 

@@ -16,7 +16,7 @@ type fileData struct {
 	input      Input
 	data       *chunk
 	rows       rowCount
-	cells      []cellCount
+	odd        map[oddKey]oddCells
 	notes      []Finding
 	err        *Error // reading broke off here; what came before is kept
 }
@@ -45,8 +45,16 @@ func (d *fileData) contradicted(fix map[string]bool, product *config.Product) bo
 		if f.kind != valueField {
 			continue
 		}
-		c := &d.cells[i]
-		if c.bad == 0 {
+		c := d.odd[oddKey{field: i, kind: cellBad}]
+		if l.long {
+			c = oddCells{}
+			for k, o := range d.odd { // sums only, the order is all one
+				if k.field == i && k.kind == cellBad {
+					c.n, c.comma = c.n+o.n, c.comma+o.comma
+				}
+			}
+		}
+		if c.n == 0 {
 			continue
 		}
 		numbers := 0
@@ -56,7 +64,7 @@ func (d *fileData) contradicted(fix map[string]bool, product *config.Product) bo
 			}
 		}
 		comma += c.comma
-		if c.bad > numbers && c.comma*2 < c.bad && !l.long && productTest(product, l.names[i]) < 0 && !fix[l.names[i]] {
+		if c.n > numbers && c.comma*2 < c.n && !l.long && productTest(product, l.names[i]) < 0 && !fix[l.names[i]] {
 			fix[l.names[i]] = true
 			again = true
 		}
@@ -92,7 +100,7 @@ func readOnce(ctx context.Context, path string, index int, sch *schema, opt *Opt
 	if d.data, err = parseBlocks(ctx, k, newParserSet(l, sch, index, opt)); err != nil {
 		return nil, err
 	}
-	d.rows, d.cells = d.data.rows, d.data.cells
+	d.rows, d.odd = d.data.rows, d.data.odd
 	if k.err != nil {
 		d.err = src.readError(k.err)
 		if d.data.n == 0 {
@@ -104,14 +112,15 @@ func readOnce(ctx context.Context, path string, index int, sch *schema, opt *Opt
 	return d, nil
 }
 
+var separatorNames = map[byte]string{',': "comma", ';': "semicolon", '\t': "tab", '|': "bar"}
+
 // format describes the layout in words.
 func format(l *layout, packed string) string {
 	shape := "wide"
 	if l.long {
 		shape = "long"
 	}
-	name := map[byte]string{',': "comma", ';': "semicolon", '\t': "tab", '|': "bar"}[l.sep]
-	s := fmt.Sprintf("delimited text, %s, %s", shape, name)
+	s := fmt.Sprintf("delimited text, %s, %s", shape, separatorNames[l.sep])
 	if l.decimal == ',' {
 		s += ", decimal comma"
 	}

@@ -25,9 +25,13 @@ type draft struct {
 	textNames []string
 	values    [][]float64 // by test of tests
 	tests     []testInfo
+	slots     []int   // of the tests in the schema
 	rank      []int32 // order of test where it is not the row's place
 	inputs    []Input
-	findings  []Finding
+	findings  []Finding // the first of them, shared in number, are about the files
+	shared    int
+	files     []bool    // the lot has rows of
+	from      *readings // for places in files
 	comments  [][2]string
 	product   *config.Product
 	siteIsDie bool
@@ -174,7 +178,10 @@ func toSI(dst, v []float64, u config.Unit) {
 		return
 	}
 	for i, x := range v {
-		dst[i] = u.ToSI(x)
+		if x == x { // a NaN keeps its bits, see oddNaN
+			x = u.ToSI(x)
+		}
+		dst[i] = x
 	}
 }
 
@@ -220,7 +227,13 @@ func (t *readings) gather(ctx context.Context, o *order, opt *Options) ([]*draft
 				d.comments = append(d.comments, f.attributes...)
 			}
 		}
-		d.findings = append(d.findings, t.findings...)
+		for _, f := range t.findings {
+			if f.file == all || l.files[f.file] {
+				d.findings = append(d.findings, f.Finding)
+			}
+		}
+		d.shared = len(d.findings)
+		d.files, d.from = l.files, t
 		drafts[i] = d
 	}
 	for i := range t.chunks {
@@ -311,6 +324,7 @@ func (t *readings) gatherValues(ctx context.Context, drafts []*draft, o *order, 
 	for i, d := range drafts {
 		for k, slot := range slots {
 			d.tests = append(d.tests, t.tests[slot])
+			d.slots = append(d.slots, slot)
 			d.values = append(d.values, columns[k][i])
 		}
 	}
@@ -345,10 +359,10 @@ func (t *readings) constants(drafts []*draft) {
 		return
 	}
 	for _, d := range drafts {
-		tests, values := d.tests, d.values
-		d.tests, d.values = nil, nil
+		tests, values, slots := d.tests, d.values, d.slots
+		d.tests, d.values, d.slots = nil, nil, nil
 		for _, k := range keep {
-			d.tests, d.values = append(d.tests, tests[k]), append(d.values, values[k])
+			d.tests, d.values, d.slots = append(d.tests, tests[k]), append(d.values, values[k]), append(d.slots, slots[k])
 		}
 	}
 }

@@ -219,7 +219,7 @@ func (l *layout) findHeader(head []byte, final bool, product *config.Product) (b
 		}
 	}
 	if bestScore < 0 {
-		return nil, 0, &Error{File: l.file, What: "holds no rows, only comments and blank lines", Remedy: "export it again"}
+		return nil, 0, &Error{File: l.file, What: "is empty but for comments and blank lines", Remedy: "export it again"}
 	}
 	if bestScore == 0 {
 		return nil, 0, l.fail(best[at].line, "", "no table found: the rows have no comma, semicolon or tab between fields",

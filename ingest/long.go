@@ -14,12 +14,9 @@ func (t *readings) pivot() {
 	var long []*chunk
 	for i, f := range t.files {
 		t.tally.Rows += f.rows.read
-		for _, r := range []struct {
-			reason string
-			n      int
-		}{{"blank", f.rows.blank}, {"repeated-header", f.rows.header}, {"too-many-fields", f.rows.long}, {"binary", f.rows.binary}, {"cut-short", f.rows.cut}} {
-			if r.n > 0 {
-				t.tally.Discarded[r.reason] += r.n
+		for o, reason := range rowReasons {
+			if n := f.rows.odd[o].n; n > 0 {
+				t.tally.Discarded[reason] += n
 			}
 		}
 		if f.layout != nil && f.layout.long {
@@ -143,12 +140,12 @@ func (p *pivoting) assign() {
 		p.join(true)
 	}
 	if !coordinates && !parts && !p.t.siteIsDie {
-		p.t.note(Warning, "no-die-identity", "the long table has no coordinates and no part id; the k-th reading of each test on a wafer is taken as die k",
+		p.t.note(all, Warning, "no-die-identity", "the long table has no coordinates and no part id; the k-th reading of each test on a wafer is taken as die k",
 			"export die coordinates or part ids with the readings", 0)
 	}
 	if unnamed > 0 {
 		p.t.tally.Discarded["no-test-name"] += unnamed
-		p.t.note(Warning, "no-test-name", fmt.Sprintf("%d %s no test name; not used", unnamed, plural(unnamed, "row gives", "rows give")), "fill the column of test names", 0)
+		p.t.note(all, Warning, "no-test-name", fmt.Sprintf("%d %s no test name; not used", unnamed, plural(unnamed, "row gives", "rows give")), "fill the column of test names", 0)
 	}
 }
 

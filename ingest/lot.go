@@ -19,6 +19,7 @@ type Lot struct {
 	tests       []Test
 	inputs      []Input
 	findings    []Finding
+	shared      int // the first findings, which are about the files
 	earlier     Earlier
 	first       FirstPass
 	cols        columns

@@ -16,6 +16,10 @@ type parser struct {
 	textOf   []int      // text slots that the file has
 	columns  []column   // of the chunk at work, by column of the file
 	wafer    int        // column of the wafer ids, -1 none
+	// waferKnown says that a comment gives the wafer of rows that do not.
+	waferKnown bool
+	testField  int    // column of the test names of a long table, -1 none
+	test       string // of the row at work
 }
 
 // column is where the cells of a column go.
@@ -32,12 +36,15 @@ func newParser(l *layout, sch *schema, file int, careful bool) *parser {
 		p.values = longColumns
 	}
 	p.interns = make([]interner, textAttributes+len(sch.attributes))
-	p.columns, p.wafer = make([]column, len(l.fields)), -1
+	p.columns, p.wafer, p.testField = make([]column, len(l.fields)), -1, -1
+	p.waferKnown = l.commented("wafer") != ""
 	for k, f := range l.fields {
 		if f.kind == textField {
 			p.textOf = append(p.textOf, f.slot)
 			if f.slot == textWafer {
 				p.wafer = k
+			} else if f.slot == textTest && l.long {
+				p.testField = k
 			}
 		}
 	}
@@ -128,10 +135,10 @@ func (p *parser) block(b *block, spare *chunk) *chunk {
 func (p *parser) newChunk(spare *chunk, rows int) *chunk {
 	c := spare
 	if c == nil {
-		c = &chunk{file: p.file, text: make([]textColumn, len(p.interns)), values: make([][]float64, p.values), cells: make([]cellCount, len(p.l.fields))}
+		c = &chunk{file: p.file, text: make([]textColumn, len(p.interns)), values: make([][]float64, p.values), odd: map[oddKey]oddCells{}}
 	}
 	c.n, c.rows = 0, rowCount{}
-	clear(c.cells)
+	clear(c.odd)
 	for k, f := range p.l.fields {
 		to := &p.columns[k]
 		switch f.kind {
@@ -247,7 +254,7 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	if b[i] == sep && (b[i+1] == '\n' || b[i+1] == '\r' && b[i+2] == '\n') {
 		i = bytes.IndexByte(b[i:], '\n') + i // one empty field more, at the end of every row
 	}
-	if b[i] != '\n' || (p.wafer < 0 || columns[p.wafer].ints[n] < 0) && p.allEmpty(c, n) {
+	if b[i] != '\n' || p.wafer >= 0 && columns[p.wafer].ints[n] < 0 || p.wafer < 0 && p.allEmpty(c, n) {
 		return 0, false
 	}
 	c.n++
@@ -321,51 +328,43 @@ func (p *parser) fullRow(b *block, i int, c *chunk, where *lines) (next int) {
 	if len(fields) == 1 && len(bytes.TrimSpace(fields[0])) == 0 {
 		return next
 	}
-	at := func() place { return place{line: where.of(i)} }
+	here := func() place { return place{line: where.of(i)} }
 	c.rows.read++
 	want := len(p.l.fields)
-	empty := true
-	for _, f := range fields {
-		if len(bytes.TrimSpace(f)) > 0 {
-			empty = false
-			break
-		}
+	unused := func(o rowOddity) int {
+		c.rows.count(o, here())
+		return next
 	}
 	switch {
 	case b.nul && bytes.IndexByte(b.buf[i:next], 0) >= 0:
-		c.rows.binary++
-		c.rows.firstBinary.first(at())
-		return next
+		return unused(binaryRow)
 	case b.cut && next == len(b.buf) && p.broken(b, i, fields):
-		c.rows.cut++
-		c.rows.firstCut.first(at())
-		return next
-	case empty:
-		c.rows.blank++
-		return next
+		return unused(cutRow)
+	case blank(fields):
+		return unused(blankRow)
 	case len(fields) > want && !blank(fields[want:]):
-		c.rows.long++
-		c.rows.firstLong.first(at())
-		return next
+		return unused(longRow)
 	case p.isHeader(fields):
-		c.rows.header++
-		c.rows.firstHeader.first(at())
-		return next
+		return unused(headerAgain)
+	case p.wafer >= 0 && !p.waferKnown && (p.wafer >= len(fields) || len(bytes.TrimSpace(fields[p.wafer])) == 0):
+		return unused(noWaferRow)
 	}
 	if r.unclosed {
-		c.rows.unclosed++
-		c.rows.firstUnclosed.first(at())
+		c.rows.count(unclosedRow, here())
 	}
 	if len(fields) < want {
-		c.rows.short++
-		c.rows.firstShort.first(at())
+		c.rows.count(shortRow, here())
+	}
+	p.test = ""
+	if k := p.testField; k >= 0 && k < len(fields) {
+		p.test = cellText(fields[k])
 	}
 	for k := range p.l.fields {
 		var cell []byte
 		if k < len(fields) {
 			cell = fields[k]
 		}
-		p.store(c, k, cell, at)
+		p.store(c, k, cell, here)
 	}
 	c.n++
 	return next
@@ -380,57 +379,64 @@ func blank(fields [][]byte) bool {
 	return true
 }
 
+// Missing values tell by the bits of their NaN why they are missing, until
+// cleaning has counted them by test.
+var oddNaN = [...]float64{cellMissing: nanWith(1), cellOver: nanWith(2), cellInf: nanWith(3), cellBad: nanWith(4)}
+
+const oddNaNBits = 0x7ff8_0000_0000_0010
+
+func nanWith(k uint64) float64 { return math.Float64frombits(oddNaNBits | k<<8) }
+
+// nanStatus gives the status that a NaN was made with; cellEmpty for others.
+func nanStatus(v float64) status {
+	bits := math.Float64bits(v)
+	if bits&^0xf00 != oddNaNBits {
+		return cellEmpty
+	}
+	return [16]status{1: cellMissing, 2: cellOver, 3: cellInf, 4: cellBad}[bits>>8&0xf]
+}
+
 // store puts one cell of the full reader into row c.n.
-func (p *parser) store(c *chunk, k int, cell []byte, at func() place) {
+func (p *parser) store(c *chunk, k int, cell []byte, here func() place) {
 	f, n := p.l.fields[k], c.n
+	t := bytes.TrimSpace(cell)
+	count := func(st status) {
+		key := oddKey{field: k, kind: st}
+		if f.kind == valueField && p.testField >= 0 {
+			key.test = p.test
+		}
+		o := c.odd[key]
+		if o.n++; o.n == 1 {
+			o.first = here()
+			o.first.text = cellText(t)
+		}
+		if st == cellBad && p.l.decimal == '.' && isDecimal(t, ',') {
+			o.comma++
+		}
+		c.odd[key] = o
+	}
 	switch f.kind {
 	case textField:
 		c.text[f.slot].codes[n] = p.interns[f.slot].intern(cell)
-		return
-	case skipField:
-		return
-	}
-	t := bytes.TrimSpace(cell)
-	count := &c.cells[k]
-	here := func() place { pl := at(); pl.text = cellText(t); return pl }
-	switch f.kind {
 	case passField:
 		c.pass[n] = passFlag(t)
 		if c.pass[n] < 0 && len(t) > 0 && word(t) != cellMissing {
-			count.bad++
-			count.firstBad.first(here())
+			count(cellBad)
 		}
-		return
 	case intField:
 		v, st := parseInt(t, p.l.decimal)
 		c.ints[f.slot][n] = v
 		if st == cellBad || st == cellInf {
-			count.bad++
-			count.firstBad.first(here())
+			count(cellBad)
 		}
-		return
-	}
-	v, st := parseNumber(t, p.l.decimal)
-	switch st {
-	case cellNumber:
+	case valueField:
+		v, st := parseNumber(t, p.l.decimal)
+		if st != cellNumber && st != cellEmpty {
+			v = oddNaN[st]
+			count(st)
+		}
 		c.values[f.slot][n] = v
-		return
-	case cellMissing:
-		count.missing++
-	case cellOver:
-		count.over++
-		count.firstOver.first(here())
-	case cellInf:
-		count.inf++
-		count.firstInf.first(here())
-	case cellBad:
-		count.bad++
-		count.firstBad.first(here())
-		if p.l.decimal == '.' && isDecimal(t, ',') {
-			count.comma++
-		}
 	}
-	c.values[f.slot][n] = math.NaN()
 }
 
 // isHeader says whether a row repeats the header, as when files were joined.

@@ -205,11 +205,11 @@ func (p *pivoting) finish(info []longTest, errs []error) {
 		}
 		c := testColumn{name: p.t.sch.tests[slot], unit: t.unit, lower: math.NaN(), upper: math.NaN(), condition: t.condition, number: t.number, field: -1}
 		if t.unitCode >= 0 && errs[t.unitCode] != nil {
-			p.t.note(Warning, "unit-not-understood", fmt.Sprintf("test %s: %v", c.name, errs[t.unitCode]),
+			p.t.note(all, Warning, "unit-not-understood", fmt.Sprintf("test %s: %v", c.name, errs[t.unitCode]),
 				"correct the unit; the product file's is used if it gives one", 0)
 		}
 		if t.others > 0 {
-			p.t.note(Info, "mixed-units", fmt.Sprintf("test %s: %d %s in another unit than the first; converted to %s", c.name, t.others,
+			p.t.note(all, Info, "mixed-units", fmt.Sprintf("test %s: %d %s in another unit than the first; converted to %s", c.name, t.others,
 				plural(t.others, "row is", "rows are"), t.unit.Text), "", 0)
 		}
 		t.majority(p.t, &c)
@@ -219,7 +219,7 @@ func (p *pivoting) finish(info []longTest, errs []error) {
 
 // majority gives a test the limits that most of its rows have, the first of
 // equals.
-func (t *longTest) majority(all *readings, c *testColumn) {
+func (t *longTest) majority(r *readings, c *testColumn) {
 	best, total := -1, 0
 	for i, k := range t.order {
 		total += t.limits[k]
@@ -238,7 +238,7 @@ func (t *longTest) majority(all *readings, c *testColumn) {
 		c.upper = k[1]
 	}
 	if len(t.order) > 1 {
-		all.note(Warning, "limits-mixed", fmt.Sprintf("test %s has %d different pairs of limits among its rows; those of most rows are used, %d rows have others",
+		r.note(all, Warning, "limits-mixed", fmt.Sprintf("test %s has %d different pairs of limits among its rows; those of most rows are used, %d rows have others",
 			c.name, len(t.order), total-t.limits[k]), "check whether test programs were mixed", 0)
 	}
 }

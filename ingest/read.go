@@ -35,6 +35,8 @@ type Batch struct {
 	Inputs   []Input
 	Findings []Finding // about the files; each lot repeats those of its own files
 	Tally    Tally
+
+	layouts []*layout // by input
 }
 
 // Tally accounts for every row that was read. Of a wide table each row used is
@@ -115,7 +117,7 @@ func readFiles(ctx context.Context, paths []string, opt *Options) (*readings, er
 	for i := range t.files {
 		for j := range t.files[:i] {
 			if t.files[i].input.SHA256 == t.files[j].input.SHA256 {
-				t.note(Warning, "same-file-twice", fmt.Sprintf("%s and %s hold the same bytes; the rows of the second count as duplicates", paths[j], paths[i]),
+				t.note(i, Warning, "same-file-twice", fmt.Sprintf("%s and %s hold the same bytes; the rows of the second count as duplicates", paths[j], paths[i]),
 					"name each file once", 0)
 			}
 		}

@@ -63,7 +63,7 @@ type chunk struct {
 	ints   [intColumns][]int32
 	pass   []int8
 	values [][]float64
-	cells  []cellCount // by column of the file
+	odd    map[oddKey]oddCells
 	rows   rowCount
 	weight []int32 // rows of the file in each row, nil: one
 }
@@ -87,30 +87,59 @@ type place struct {
 	text string
 }
 
-// cellCount counts the cells of a column that are not plain numbers.
-type cellCount struct {
-	numbers, missing, over, inf, bad int
-	comma                            int // bad ones that would be numbers with a decimal comma
-	firstOver, firstInf, firstBad    place
+// oddKey is one kind of cell that is no plain number: its column in the file,
+// its test in a long table, and what it is.
+type oddKey struct {
+	field int
+	test  string
+	kind  status
 }
 
-// rowCount counts rows, and those that are used in part or not at all.
+// oddCells counts cells of one kind.
+type oddCells struct {
+	n     int
+	comma int // of cellBad: numbers with a decimal comma
+	first place
+}
+
+// rowOddity is what can be odd about a whole row.
+type rowOddity int
+
+const (
+	// Rows that are not used.
+	blankRow    rowOddity = iota // all cells empty
+	headerAgain                  // the header again
+	longRow                      // more fields than the header
+	binaryRow                    // zero bytes in it
+	cutRow                       // the last line broke off
+	noWaferRow                   // no wafer id
+	// Rows that are used.
+	shortRow    // fewer fields than the header
+	unclosedRow // a quote without its partner was taken as text
+	rowOddities
+
+	unusedRows = shortRow // those below are not used
+)
+
+// rowReasons name the unused ones in Tally.Discarded.
+var rowReasons = [unusedRows]string{"blank-row", "repeated-header", "long-row", "binary-row", "cut-short", "no-wafer"}
+
+// rowCount counts the data rows of a file, and the odd ones among them.
 type rowCount struct {
-	read                                                                     int // data rows, used or not
-	blank                                                                    int // all cells empty
-	header                                                                   int // the header again
-	long                                                                     int // more fields than the header
-	binary                                                                   int // zero bytes in it
-	cut                                                                      int // the last line broke off
-	short                                                                    int // used as far as it goes
-	unclosed                                                                 int // a quote without its partner was taken as text
-	firstLong, firstShort, firstBinary, firstCut, firstUnclosed, firstHeader place
+	read int
+	odd  [rowOddities]struct {
+		n     int
+		first place
+	}
 }
 
-// discarded is the number of rows that are not used.
-func (c *rowCount) discarded() int { return c.blank + c.header + c.long + c.binary + c.cut }
+func (c *rowCount) count(o rowOddity, at place) {
+	c.odd[o].n++
+	c.odd[o].first.keep(at)
+}
 
-func (p *place) first(o place) {
+// keep takes o unless there is an earlier one.
+func (p *place) keep(o place) {
 	if p.line == 0 {
 		*p = o
 	}
@@ -119,29 +148,19 @@ func (p *place) first(o place) {
 // add sums the counts of a later chunk.
 func (c *rowCount) add(o *rowCount) {
 	c.read += o.read
-	c.blank += o.blank
-	c.header += o.header
-	c.long += o.long
-	c.binary += o.binary
-	c.cut += o.cut
-	c.short += o.short
-	c.unclosed += o.unclosed
-	c.firstLong.first(o.firstLong)
-	c.firstShort.first(o.firstShort)
-	c.firstBinary.first(o.firstBinary)
-	c.firstCut.first(o.firstCut)
-	c.firstUnclosed.first(o.firstUnclosed)
-	c.firstHeader.first(o.firstHeader)
+	for i := range c.odd {
+		c.odd[i].n += o.odd[i].n
+		c.odd[i].first.keep(o.odd[i].first)
+	}
 }
 
-func (c *cellCount) add(o *cellCount) {
-	c.numbers += o.numbers
-	c.missing += o.missing
-	c.over += o.over
-	c.inf += o.inf
-	c.bad += o.bad
-	c.comma += o.comma
-	c.firstOver.first(o.firstOver)
-	c.firstInf.first(o.firstInf)
-	c.firstBad.first(o.firstBad)
+// addOdd does so for cells.
+func addOdd(c, o map[oddKey]oddCells) {
+	for k, v := range o {
+		sum := c[k]
+		sum.n += v.n
+		sum.comma += v.comma
+		sum.first.keep(v.first)
+		c[k] = sum
+	}
 }

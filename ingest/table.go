@@ -18,9 +18,15 @@ type readings struct {
 	files     []*fileData
 	chunks    []*chunk // wide ones
 	tests     []testInfo
-	findings  []Finding
+	findings  []fileFinding
 	tally     Tally
 	siteIsDie bool // a long table without coordinates or parts: the site tells dice apart
+}
+
+// fileFinding is a finding about one file, or all.
+type fileFinding struct {
+	file int
+	Finding
 }
 
 // testInfo is what files and product say of one test of the schema.
@@ -39,26 +45,29 @@ type testInfo struct {
 	declared     bool // a file gives it a unit or limits, or the product names it
 }
 
-func (t *readings) note(s Severity, code, text, remedy string, dice int) {
-	t.findings = append(t.findings, Finding{Code: code, Severity: s, Text: text, Remedy: remedy, Dice: dice})
+// note adds a finding about one file, or about all.
+func (t *readings) note(file int, s Severity, code, text, remedy string, dice int) {
+	t.findings = append(t.findings, fileFinding{file, Finding{Code: code, Severity: s, Text: text, Remedy: remedy, Dice: dice}})
 }
 
 // lots turns the table into a batch.
 func (t *readings) lots(ctx context.Context, opt *Options) (*Batch, error) {
 	t.tally.Discarded = map[string]int{}
-	for _, f := range t.files {
-		t.fileFindings(f)
+	for i := range t.files {
+		t.fileFindings(i)
 	}
 	t.pivot()
 	t.describeTests(opt.Product)
-	t.cellFindings()
 	o, err := t.arrange(opt)
 	if err != nil {
 		return nil, err
 	}
-	b := &Batch{Findings: t.findings}
+	b := &Batch{}
+	for _, f := range t.findings {
+		b.Findings = append(b.Findings, f.Finding)
+	}
 	for _, f := range t.files {
-		b.Inputs = append(b.Inputs, f.input)
+		b.Inputs, b.layouts = append(b.Inputs, f.input), append(b.layouts, f.layout)
 	}
 	drafts, err := t.gather(ctx, o, opt)
 	if err != nil {
@@ -163,7 +172,7 @@ func (t *readings) keys() rowKeys {
 				k.counts[group] += end - i
 				k.rows[group] += rows
 			} else {
-				t.tally.Discarded["no-wafer"] += rows
+				t.tally.Discarded["no-wafer"] += rows // of a Table; files were told by row
 			}
 			k.runs = append(k.runs, run{group, row, row + int32(end-i)})
 			row += int32(end - i)
@@ -212,10 +221,6 @@ func (f *fileData) defaults() groupKey {
 // arrange sorts rows by lot, wafer and touchdown.
 func (t *readings) arrange(opt *Options) (*order, error) {
 	k := t.keys()
-	if n := t.tally.Discarded["no-wafer"]; n > 0 {
-		t.note(Warning, "no-wafer", fmt.Sprintf("%d %s no wafer id and cannot be placed; not used", n, plural(n, "row has", "rows have")),
-			"fill the wafer column, also where a spreadsheet left it out below the first row", n)
-	}
 	by := make([]int32, len(k.groups))
 	for i := range by {
 		by[i] = int32(i)
