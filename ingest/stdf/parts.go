@@ -186,22 +186,22 @@ func (p *Parts) Scan() bool {
 		if p.gaps != p.r.gaps {
 			p.gap()
 		}
-		switch m := p.r.rec.(type) {
-		case *PTR:
-			p.parametric(m)
-		case *PIR:
-			p.begin(m)
-		case *PRR:
-			p.end(m)
+		switch p.r.kind {
+		case KindPTR:
+			p.parametric(&p.r.ptr)
+		case KindPIR:
+			p.begin(&p.r.pir)
+		case KindPRR:
+			p.end(&p.r.prr)
 			return true
-		case *MPR:
-			p.multiple(m)
-		case *FTR:
-			p.functional(m)
+		case KindMPR:
+			p.multiple(&p.r.mpr)
+		case KindFTR:
+			p.functional(&p.r.ftr)
 		default:
-			p.lot(m)
+			p.lot(p.r.rec)
 			if p.Watch != nil {
-				p.Watch(m)
+				p.Watch(p.r.rec)
 			}
 		}
 	}
@@ -257,19 +257,17 @@ func (p *Parts) abandon(s *slot, why string) {
 // at gives the slot that a result belongs to. One without a PIR is kept: its
 // PRR may come.
 func (p *Parts) at(head, site uint8) *slot {
-	if h := p.heads[head]; h != nil {
-		if s := h[site]; s != nil && s.isOpen {
-			return s
-		}
-	}
 	s := p.slot(head, site)
+	if s.isOpen {
+		return s
+	}
 	*s = slot{head: head, site: site, opened: p.r.at, isOpen: true, results: s.results[:0]}
 	return s
 }
 
 func (p *Parts) parametric(m *PTR) {
-	if m.Flag&NotExecuted != 0 && !p.isOpen(m.Head, m.Site) || m.Test.Index < 0 {
-		return // it only defines defaults; or its test is beyond the bounds, which is counted
+	if m.Test.Index < 0 || m.Flag&NotExecuted != 0 && !p.isOpen(m.Head, m.Site) {
+		return // its test is beyond the bounds, which is counted; or it only defines defaults
 	}
 	s := p.at(m.Head, m.Site)
 	s.results = append(s.results, Result{int32(m.Test.Index), m.Result, int16(m.which), 0, m.Flag, m.Parm})
@@ -314,13 +312,13 @@ func (p *Parts) end(m *PRR) {
 	run := p.currentRun()
 	w := p.wafer(m.Head)
 	p.number++
-	p.part = Part{
+	part := &p.part
+	*part = Part{
 		Run: run.Index, Wafer: w.Index, WaferID: w.ID, Number: p.number, Offset: p.r.at, Opened: -1,
 		Head: m.Head, Site: m.Site, HardBin: Missing, SoftBin: Missing, X: Missing, Y: Missing,
 		Flag: m.Flag, Tests: m.Tests, TestTime: m.TestTime, Damaged: s.damaged && s.isOpen,
 		id: m.PartID, text: m.PartText,
 	}
-	part := &p.part
 	if m.HardBin != NoBin {
 		part.HardBin = int32(m.HardBin)
 	}

@@ -41,6 +41,7 @@ type Reader struct {
 	tests   registry
 	run     int // MIRs so far
 	rec     Record
+	kind    Kind
 	at      int64 // offset of rec
 	records [delivered + 1]Record
 	pir     PIR
@@ -135,8 +136,19 @@ func (r *Reader) Scan() bool {
 		// and a header behind it that can be one.
 		if b := r.buf[r.pos:r.end]; len(b) >= 4 {
 			h := parseHeader(b, r.c.big)
-			if whole := 4 + h.size; whole+4 <= len(b) && h.kind != Unknown && h.kind <= delivered &&
-				r.likely(parseHeader(b[whole:], r.c.big)) && r.read(h.kind, b[4:whole]) == exact {
+			whole := 4 + h.size
+			switch {
+			case whole+4 > len(b) || !r.likely(parseHeader(b[whole:], r.c.big)):
+			case h.kind == KindPTR: // most records are: spare them the detours
+				if r.ptr.read(&r.c, b[4:whole]) == exact && h.size >= forms[KindPTR].min {
+					r.at = r.offset()
+					r.pos += whole
+					r.counts[KindPTR]++
+					r.rec, r.kind = &r.ptr, KindPTR
+					r.settlePTR()
+					return true
+				}
+			case h.kind != Unknown && h.kind <= delivered && r.read(h.kind, b[4:whole]) == exact:
 				r.deliver(h)
 				return true
 			}
@@ -199,7 +211,7 @@ func (r *Reader) deliver(h header) {
 	r.at = r.offset()
 	r.pos += 4 + h.size
 	r.counts[h.kind]++
-	r.rec = r.records[h.kind]
+	r.rec, r.kind = r.records[h.kind], h.kind
 	switch h.kind {
 	case KindPTR:
 		r.settlePTR()

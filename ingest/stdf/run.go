@@ -26,6 +26,8 @@ type Run struct {
 	Retested    int64 // PRRs that stand in for an earlier part
 
 	hard, soft map[uint16]*Bin
+	lastHard   *Bin // that of the last part: most have the same
+	lastSoft   *Bin
 	sites      map[uint16]*Site
 	total      *PCR // over all sites
 }
@@ -130,11 +132,17 @@ func (r *Run) count(p *Part) {
 		r.Retested++
 		s.Retested++
 	}
-	if p.HardBin != Missing {
-		r.bin(r.hard, uint16(p.HardBin)).Parts++
+	if n := p.HardBin; n != Missing {
+		if r.lastHard == nil || int32(r.lastHard.Number) != n {
+			r.lastHard = r.bin(r.hard, uint16(n))
+		}
+		r.lastHard.Parts++
 	}
-	if p.SoftBin != Missing {
-		r.bin(r.soft, uint16(p.SoftBin)).Parts++
+	if n := p.SoftBin; n != Missing {
+		if r.lastSoft == nil || int32(r.lastSoft.Number) != n {
+			r.lastSoft = r.bin(r.soft, uint16(n))
+		}
+		r.lastSoft.Parts++
 	}
 }
 
