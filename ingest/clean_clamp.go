@@ -28,17 +28,19 @@ const (
 // (sign -1) value of a column than a continuous quantity, written with this
 // file's resolution, would put there.
 //
-// The values next to the extreme tell what to expect. Let m of them lie within
-// h of it, on u distinct levels. Were the extreme one more level of the same
-// kind, it would hold about m times the step between levels divided by h; the
-// step is the 10 % quantile of the gaps between those levels, which for data on
-// a grid is the grid and for sparse data is far below the mean gap. A tail gets
-// thinner outwards, so this is too many rather than too few. A pile is a count
-// that is at least three times that, at least five, and has a probability below
-// 1e-6 under a Poisson law with that mean. Coarse resolution raises the
-// expectation with the count; small n fails the probability; data on fewer than
-// ten levels are taken for discrete and never judged. The rule is this house's
-// own, checked by simulation in its tests.
+// The values next to the extreme tell what to expect. Let the nearest m of them
+// lie within h of it. Were the extreme one more level of the same kind, it would
+// hold about m times the step between levels divided by h. The step is the 10 %
+// quantile of the gaps between the distinct levels, which for data on a grid is
+// the grid and for sparse data is far below the mean gap; of several m the one
+// that expects most is taken, and if neighbours have copies too, no fewer than
+// the fullest of them. A tail gets thinner outwards, so all this is too many
+// rather than too few. A pile is a count that is at least three times that, at
+// least five, and has a probability below 1e-6 under a Poisson law with that
+// mean. Coarse resolution raises the expectation with the count; small n fails
+// the probability; data on fewer than ten levels are taken for discrete and
+// never judged. The rule is this house's own, checked by simulation in its
+// tests.
 func findPile(v []float64, sign float64) (pile, bool) {
 	extreme, n, rest := math.Inf(-1), 0, 0
 	for _, x := range v {
@@ -57,37 +59,64 @@ func findPile(v []float64, sign float64) (pile, bool) {
 	if n < pileLeast || rest < pileLevels {
 		return pile{}, false
 	}
-	next := largestBelow(v, sign, extreme, min(rest, max(20, min(n, pileWindow))))
-	from := next[0]
-	for _, x := range next {
+	from := extreme
+	for _, x := range largestBelow(v, sign, extreme, min(rest, max(20, min(n, pileWindow)))) {
 		from = math.Min(from, x)
 	}
-	h := extreme - from
-	levels, m := []float64{}, 0
+	var near []float64
 	for _, x := range v {
 		if x *= sign; x >= from && x < extreme {
-			m++
-			if len(levels) < 64*pileWindow {
-				levels = append(levels, x)
-			}
+			near = append(near, x)
 		}
 	}
-	slices.Sort(levels)
-	levels = slices.Compact(levels)
-	expected := float64(m) / float64(len(levels))
-	if u := len(levels); u >= pileLevels {
-		gaps := make([]float64, 0, u)
-		for i := 1; i < u; i++ {
-			gaps = append(gaps, levels[i]-levels[i-1])
-		}
-		slices.Sort(gaps)
-		expected = float64(m+1) * gaps[len(gaps)/10] / h
-	}
-	p := pile{value: sign * extreme, n: n, expected: expected}
-	if float64(n) < pileFactor*expected || distinct(v, p.value) < pileLevels {
+	slices.Sort(near)
+	p := pile{value: sign * extreme, n: n, expected: expectedCopies(near, extreme)}
+	if float64(n) < pileFactor*p.expected || distinct(v, p.value) < pileLevels {
 		return p, false
 	}
-	return p, mathext.GammaIncReg(float64(n), expected) < pileChance // P(X >= n)
+	return p, mathext.GammaIncReg(float64(n), p.expected) < pileChance // P(X >= n)
+}
+
+// expectedCopies is the count that the sorted neighbours of an extreme let
+// expect on it.
+func expectedCopies(near []float64, extreme float64) float64 {
+	most := float64(fullest(near))
+	levels := slices.Compact(slices.Clone(near))
+	if len(levels) < pileLevels {
+		return most
+	}
+	gaps := make([]float64, 0, len(levels))
+	for i := 1; i < len(levels); i++ {
+		gaps = append(gaps, levels[i]-levels[i-1])
+	}
+	slices.Sort(gaps)
+	step := gaps[len(gaps)/10]
+	if 5*len(levels) >= 4*len(near) {
+		most = 0 // few copies, as chance makes them: as good as continuous
+	}
+	for m := pileLeast; ; m *= 2 {
+		i := max(len(near)-m, 0)
+		for i > 0 && near[i-1] == near[i] {
+			i--
+		}
+		most = math.Max(most, float64(len(near)-i+1)*step/(extreme-near[i]))
+		if i == 0 {
+			return most
+		}
+	}
+}
+
+// fullest is the largest number of copies of one value among sorted values.
+func fullest(sorted []float64) int {
+	most, run := 0, 0
+	for i, x := range sorted {
+		if i == 0 || x != sorted[i-1] {
+			run = 0
+		}
+		run++
+		most = max(most, run)
+	}
+	return most
 }
 
 // largestBelow gives the k largest values below the extreme, in no order.

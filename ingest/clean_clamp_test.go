@@ -1,8 +1,10 @@
 package ingest
 
 import (
+	"maps"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"testing"
 )
 
@@ -42,7 +44,8 @@ func TestNoPileWithoutClamp(t *testing.T) {
 		"outliers":             func() float64 { return grid(41+r.NormFloat64()+30*float64(r.IntN(50)/49)*r.Float64(), 0.01) },
 		"count, mean 4":        func() float64 { return math.Floor(-4 * math.Log(r.Float64())) },
 	}
-	for name, draw := range draws {
+	for _, name := range slices.Sorted(maps.Keys(draws)) {
+		draw := draws[name]
 		for _, n := range []int{5, 9, 30, 100, 1000, 10_000} {
 			tries := 40
 			if n > 1000 {
@@ -75,7 +78,7 @@ func TestPileAtClamp(t *testing.T) {
 		{"half of the dice", 1000, 41.9, func() float64 { return grid(41.9+0.9*r.NormFloat64(), 0.001) }},
 		{"a tenth", 1000, 43, func() float64 { return grid(41.9+0.9*r.NormFloat64(), 0.001) }},
 		{"nearly all", 1000, 40.2, func() float64 { return grid(41.9+0.9*r.NormFloat64(), 0.001) }},
-		{"few of a small lot", 60, 43, func() float64 { return grid(41.9+0.9*r.NormFloat64(), 0.001) }},
+		{"few of a small lot", 80, 42.8, func() float64 { return grid(41.9+0.9*r.NormFloat64(), 0.001) }},
 		{"coarse resolution", 5000, 43, func() float64 { return grid(41.9+1.5*r.NormFloat64(), 0.1) }},
 		{"far from the body", 1000, 80, func() float64 {
 			if r.IntN(100) == 0 {
