@@ -10,6 +10,10 @@ import (
 type QuantileKind int
 
 const (
+	// HyndmanFan6 puts the order statistics at p = k/(n+1), the mean share of the
+	// population below them. The textbooks on part average limits and control
+	// charts use it.
+	HyndmanFan6 QuantileKind = 6
 	// HyndmanFan7 puts the order statistics at p = (k-1)/(n-1): the extremes are
 	// the quantiles 0 and 1. Spreadsheets do this.
 	HyndmanFan7 QuantileKind = 7
@@ -24,6 +28,8 @@ const (
 func (k QuantileKind) position(p float64, n int) (rank int, weight float64) {
 	var h float64
 	switch k {
+	case HyndmanFan6:
+		h = p*(float64(n)+1) - 1
 	case HyndmanFan7:
 		h = p * float64(n-1)
 	case HyndmanFan8:

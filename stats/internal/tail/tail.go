@@ -65,7 +65,7 @@ func hill(t, df float64) float64 {
 	b := 48 * a * a
 	w2 := a * math.Log1p(t*t/df)
 	w := math.Sqrt(w2)
-	return w * (1 + ((w2 + 3) - (((4*w2+33)*w2+240)*w2+855)/(10*(b+0.8*w2*w2+100)))/b)
+	return w * (1 + ((w2+3)-(((4*w2+33)*w2+240)*w2+855)/(10*(b+0.8*w2*w2+100)))/b)
 }
 
 // T2 is P(|T| > |t|), the two-sided p of Student's t.
