@@ -60,7 +60,7 @@ func dispositionTable(d reports.Disposition) *table {
 	}
 	t := &table{Caption: "Proposal by wafer", Sortable: true, Columns: []column{{Name: "Wafer"}, {Name: "Proposal"}, {Name: "Because", Plain: true}}}
 	for _, w := range d.Wafers {
-		t.Rows = append(t.Rows, []cell{text(w.ID), text(w.Proposal), {Text: strings.Join(w.Because, "; "), Class: "wide"}})
+		t.Rows = append(t.Rows, []cell{text(w.ID), text(words(w.Proposal)), {Text: strings.Join(w.Because, "; "), Class: "wide"}})
 	}
 	return t
 }

@@ -169,7 +169,10 @@ func noun(n int, one, many string) string {
 }
 
 func lossFinding(r *reports.Report, tests []testPlace) finding {
-	f := finding{Name: "Lost most", Link: "#losses", LinkText: "all tests and bins"}
+	f := finding{Name: "Lost most"}
+	if len(tests)+len(r.Bins) > 0 {
+		f.Link, f.LinkText = "#losses", "all tests and bins"
+	}
 	var lossy []testPlace
 	for _, t := range tests {
 		if t.Loss.FirstDice > 0 {
@@ -328,7 +331,7 @@ func causeName(c reports.Cause) string {
 }
 
 func proposalText(d reports.Disposition) string {
-	s := sentence(d.Proposal) + " This is advice, never a release: the site's rules and the people authorised decide."
+	s := sentence(words(d.Proposal)) + " This is advice, never a release: the site's rules and the people authorised decide."
 	if d.YieldIfFixed.Estimate.Valid() {
 		s += " Without the cause the lot would yield " + percent(d.YieldIfFixed.Estimate) + " (" + percentRange(d.YieldIfFixed) + ")."
 	} else if d.YieldIfFixed.Why != "" {
@@ -336,6 +339,9 @@ func proposalText(d reports.Disposition) string {
 	}
 	return s
 }
+
+// words writes a name such as release-after-screen as a person says it.
+func words(name string) string { return strings.ReplaceAll(name, "-", " ") }
 
 func sentences(list []string) []string {
 	out := make([]string, 0, len(list))

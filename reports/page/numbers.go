@@ -44,9 +44,12 @@ func plural(n int, one, many string) string {
 
 // percentDecimals is how many decimals a share needs: one, and more as it gets
 // close to nothing or to everything, where one decimal would hide the
-// difference that matters (99.97 % is not 100 %).
+// difference that matters (99.97 % is not 100 %). Small shares keep two digits.
 func percentDecimals(p float64) int {
 	rest := 100 * math.Min(math.Abs(p), math.Abs(1-p))
+	if p > 0.5 {
+		rest *= 10
+	}
 	switch {
 	case rest >= 0.995 || rest == 0:
 		return 1
@@ -274,7 +277,7 @@ func list(names []string) string {
 	return strings.Join(names[:len(names)-1], ", ") + " and " + names[len(names)-1]
 }
 
-var onlyLower = regexp.MustCompile(`^[a-z]+[,;]?$`)
+var onlyLower = regexp.MustCompile(`^[a-z]+(-[a-z]+)*[,;]?$`)
 
 // sentence gives a text of the report a capital and a full stop.
 func sentence(s string) string {

@@ -136,7 +136,7 @@ func countFacts(t *reports.Test) factGroup {
 	add("known as at least", bound(t.Censored.AtLeast, t.Censored.Clamp))
 	add("known as at most", bound(t.Censored.AtMost, t.Censored.Floor))
 	if t.Over != "" {
-		add("numbers are over", t.Over)
+		add("numbers over", t.Over)
 	}
 	return g
 }

@@ -126,7 +126,7 @@ func waferExtras(r *reports.Report) extras {
 	if len(r.Disposition.Wafers) > 0 {
 		e.proposals = map[string]string{}
 		for _, d := range r.Disposition.Wafers {
-			e.proposals[d.ID] = d.Proposal
+			e.proposals[d.ID] = words(d.Proposal)
 		}
 	}
 	return e

@@ -1,7 +1,9 @@
 // Charts: drawn when they come into view, all of them before printing.
 
-// Width in pixels of a chart on paper: an A4 or letter page less its margins.
-const paperWidth = 680;
+// Width in pixels of a chart on paper, alone or beside another: what fits an A4
+// or a letter page.
+const paperWidth = 660;
+const halfPaperWidth = 308;
 
 const charts = new Map(); // element -> {chart, data}
 
@@ -58,7 +60,7 @@ function applyCounts(element) {
     })),
   }));
   chart.setOption({
-    yAxis: [{ type: logCounts ? "log" : "value", min: logCounts ? emptyBin : 0 }],
+    yAxis: [{ ...data.option.yAxis[0], type: logCounts ? "log" : "value", min: logCounts ? emptyBin : 0 }],
     series,
   });
 }
@@ -101,7 +103,9 @@ function chartsForPaper() {
   printing = true;
   for (const element of document.querySelectorAll(".chart")) {
     drawChart(element);
-    charts.get(element).chart.resize({ width: paperWidth });
+    const { chart } = charts.get(element);
+    chart.resize({ width: element.closest(".test-charts, .columns") ? halfPaperWidth : paperWidth });
+    chart.getZr().flush(); // the page is laid out for paper before the next frame
   }
 }
 

@@ -1,12 +1,20 @@
 // Tables: sorting by column, and tables of a chart's numbers made on request.
 
 function startTables() {
-  for (const button of document.querySelectorAll(".sort")) {
-    button.addEventListener("click", () => sortTable(button.closest("th")));
+  for (const heading of document.querySelectorAll("th.sorts")) {
+    heading.addEventListener("click", () => sortTable(heading));
   }
   for (const details of document.querySelectorAll("details.numbers")) {
     details.addEventListener("toggle", () => fillNumbers(details));
   }
+  // A box that scrolls can be reached, and so scrolled, from the keyboard.
+  const sized = new ResizeObserver((entries) => {
+    for (const { target } of entries) {
+      if (target.scrollWidth > target.clientWidth || target.scrollHeight > target.clientHeight) target.tabIndex = 0;
+      else target.removeAttribute("tabindex");
+    }
+  });
+  for (const box of document.querySelectorAll(".scroll")) sized.observe(box);
 }
 
 // Sorts by the column under this heading: first ascending, then descending.
