@@ -33,7 +33,7 @@ const (
 	// coded here its two directions part by 7 % near 2e18.
 	F723MinDoping, F723MaxDoping = 1e13, 5e17
 	// F723MinResistivity and F723MaxResistivity are the same bounds, ohm cm.
-	F723MinResistivity, F723MaxResistivity = 0.034, 450
+	F723MinResistivity, F723MaxResistivity = 0.034, 450.0
 )
 
 // ResistivityF723 returns the resistivity in ohm cm at 23 C of phosphorus-doped

@@ -48,3 +48,27 @@ func root(f func(float64) float64, a, b, tol float64) float64 {
 	}
 	return (a + b) / 2
 }
+
+// bracketed finds the zero of a rising f between lo and hi, starting near guess:
+// it widens a bracket from there, which spares the far ends. NaN when there is none.
+func bracketed(f func(float64) float64, guess, lo, hi float64) float64 {
+	a := math.Min(math.Max(guess, lo), hi)
+	fa := f(a)
+	step := 0.7
+	if fa > 0 {
+		step = -step
+	}
+	for range 60 {
+		b := math.Min(math.Max(a+step, lo), hi)
+		fb := f(b)
+		if math.IsNaN(fb) || b == a {
+			return math.NaN()
+		}
+		if fa*fb <= 0 {
+			return root(f, math.Min(a, b), math.Max(a, b), 1e-10)
+		}
+		a, fa = b, fb
+		step *= 1.5
+	}
+	return math.NaN()
+}
