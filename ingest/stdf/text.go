@@ -90,7 +90,8 @@ var prefixes = map[int8]string{15: "f", 12: "p", 9: "n", 6: "u", 3: "m", 0: "", 
 // DisplayUnit is the unit to show values in: the base unit with the prefix that
 // the scale stands for. Units "A" and RES_SCAL 9 give "nA". Scale 2 is percent:
 // "%" when the base unit is none or itself percent. A scale without a prefix is
-// spelled as a power: "1e-4 V". A unit that already bears the prefix of its
+// spelled as a power, "1e-4 V", as is one before a unit that has another prefix.
+// A unit that already bears the prefix of its
 // scale ("nA" with 9), as some testers write it, stays as it is.
 func DisplayUnit(units string, scale int8) string {
 	if scale == 0 {
@@ -103,7 +104,7 @@ func DisplayUnit(units string, scale int8) string {
 	switch {
 	case known && units != "" && bearsPrefix(units, p):
 		return units
-	case known && units != "":
+	case known && units != "" && !bearsAny(units):
 		return p + units
 	}
 	return strings.TrimSpace("1e" + strconv.Itoa(-int(scale)) + " " + units)
@@ -120,6 +121,16 @@ func DisplayFactor(units string, scale int8) float64 {
 		return 1
 	}
 	return f
+}
+
+// bearsAny says whether the unit has a prefix already.
+func bearsAny(units string) bool {
+	for _, p := range prefixes {
+		if bearsPrefix(units, p) {
+			return true
+		}
+	}
+	return false
 }
 
 // bearsPrefix says whether the unit is a common electrical one with the prefix.
