@@ -58,7 +58,7 @@ func (d *draft) lot(opt *Options) *Lot {
 
 func (i *testInfo) test() Test {
 	return Test{Name: i.name, Measures: i.measures, Unit: i.unit, Lower: i.lower, Upper: i.upper, LimitsFrom: i.limitsFrom,
-		Condition: i.condition, Clamp: i.clamp, Floor: i.floor, Number: i.number}
+		Condition: i.condition, Clamp: i.clamp, Floor: i.floor, Number: i.number, Place: i.place}
 }
 
 // orderTests puts the product file's tests first, in its order.
@@ -85,6 +85,7 @@ func (d *draft) orderTests() {
 	tests, values, slots := slices.Clone(d.tests), slices.Clone(d.values), slices.Clone(d.slots)
 	for i, p := range place {
 		d.tests[i], d.values[i], d.slots[i] = tests[p], values[p], slots[p]
+		d.tests[i].place = p
 	}
 }
 

@@ -46,6 +46,7 @@ type Test struct {
 	Condition    string
 	Clamp, Floor float64
 	Number       int // test number of the file, Missing when it has none
+	Place        int // in the order of the data file, from 0
 }
 
 // Input is one file that was read.

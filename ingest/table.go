@@ -42,6 +42,7 @@ type testInfo struct {
 	measures     string
 	clamp, floor float64
 	number       int
+	place        int  // in the order of the data
 	declared     bool // a file gives it a unit or limits, or the product names it
 }
 

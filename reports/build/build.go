@@ -51,6 +51,7 @@ type lotwork struct {
 	first        []int32 // first failing test of each die, -1 for none
 	retested     []int   // by wafer
 	firstPassing []int   // by wafer: dice that passed when first measured
+	position     []int   // tests in the order of the program
 	geo          wafermap.Geometry
 	rep          *reports.Report
 }

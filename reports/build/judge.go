@@ -3,6 +3,8 @@ package build
 import (
 	"fmt"
 	"math"
+	"slices"
+	"sort"
 
 	"kneepoint/config"
 	"kneepoint/ingest"
@@ -129,14 +131,25 @@ func (w *lotwork) firstPass(j judge) {
 }
 
 // testLosses splits the lost dice over the tests and tells the kind of program.
+// The program's order is the product file's; where a program that stops at the
+// first fail shows itself only in the order of the data file, that order holds.
 func (w *lotwork) testLosses() {
 	tests := w.lot.Tests()
 	w.data = make([]yield.TestData, len(tests))
+	order, fileOrder := make([]int, len(tests)), make([]int, len(tests))
 	for t := range tests {
 		w.data[t] = yield.TestData{Values: w.lot.Values(t), Censor: w.lot.Censor(t), Lower: tests[t].Lower, Upper: tests[t].Upper}
+		order[t], fileOrder[t] = t, t
 	}
-	w.losses = yield.TestLosses(w.data, w.pass, w.in.Settings.MarginalPercent/100)
-	w.first = yield.FirstFailing(w.data, w.pass)
+	sort.SliceStable(fileOrder, func(a, b int) bool { return tests[fileOrder[a]].Place < tests[fileOrder[b]].Place })
+	w.lossesIn(order)
+	if !w.losses.StopOnFail && !slices.Equal(order, fileOrder) {
+		if w.lossesIn(fileOrder); w.losses.StopOnFail {
+			w.losses.StopText += "; the order is that of the data file, which differs from the product file's"
+		} else {
+			w.lossesIn(order)
+		}
+	}
 	w.rep.Program.StopOnFail = w.losses.StopOnFail
 	w.rep.Program.Text = w.losses.StopText
 	d := w.losses.Disagree
@@ -150,6 +163,28 @@ func (w *lotwork) testLosses() {
 			Text:   fmt.Sprintf("%d failing dice have no reading outside a limit; the bin counts, and no test is charged with the loss", n),
 			Remedy: "see whether a test is missing from the data, or a limit of the product file is wider than the program's"})
 	}
+}
+
+// lossesIn finds the losses with the tests in the order given, and files them under
+// the tests' own indexes.
+func (w *lotwork) lossesIn(order []int) {
+	data := make([]yield.TestData, len(order))
+	for k, t := range order {
+		data[k] = w.data[t]
+	}
+	l := yield.TestLosses(data, w.pass, w.in.Settings.MarginalPercent/100)
+	first := yield.FirstFailing(data, w.pass)
+	byTest := make([]yield.Loss, len(order))
+	for k, t := range order {
+		byTest[t] = l.Tests[k]
+	}
+	for i, k := range first {
+		if k >= 0 {
+			first[i] = int32(order[k])
+		}
+	}
+	l.Tests = byTest
+	w.losses, w.first, w.position = l, first, order
 }
 
 func (w *lotwork) note(code string, q reports.Quality) {

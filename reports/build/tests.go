@@ -65,7 +65,7 @@ func (w *lotwork) testAccount(t int, curve []yield.LimitPoint) reports.Test {
 
 // over says which dice the distribution of test t is over.
 func (w *lotwork) over(t int) string {
-	if w.losses.StopOnFail && t > 0 {
+	if w.losses.StopOnFail && w.position[0] != t {
 		return "dice that reached this test: the program stops at the first fail, so dice failing earlier tests are not in it"
 	}
 	return "all tested dice with a reading"
