@@ -53,6 +53,9 @@ func describe(x []float64, marks []int8, probs []float64) summary {
 		s.Quantiles[i] = known(s.Quantiles[i])
 	}
 	s.Why = fmt.Sprintf("%d readings are bounds: quantiles among them and the shape are not known", bounds)
+	if bounds == 1 {
+		s.Why = "1 reading is a bound: the shape is not known"
+	}
 	if fit, err := dist.FitNormal(x, marks); err == nil {
 		s.Mean, s.SD = fit.Mu, fit.Sigma
 		s.Why += "; mean and sd are from a normal fit that takes them as bounds"
