@@ -64,7 +64,7 @@ func (c *rim) outer(ri float64) float64 {
 	return r
 }
 
-const rimInner, rimOuter = 40, 80
+const rimInner, rimOuter = 20, 40
 
 // walk passes the field as [profile.walk] does, with the position of each panel's
 // middle and end for integrals that need it.

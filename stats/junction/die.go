@@ -12,9 +12,11 @@ type nature struct {
 	narrowing  float64 // multiplies the base's band-gap narrowing
 	tunnel     float64 // multiplies the field of field-enhanced generation
 	overlay    float64 // depth of epi over which oxide charge counts, cm
+	recombine  float64 // multiplies emitter-base recombination
+	rim        float64 // multiplies the curved junction's breakdown
 }
 
-var natural = nature{fieldScale: 1, spread: 1, narrowing: 1, tunnel: 1, overlay: 2 * um}
+var natural = nature{fieldScale: 1, spread: 1, narrowing: 1, tunnel: 1, overlay: 2 * um, recombine: 1, rim: 1}
 
 // junctionVBE is what is taken off VCE to have VCB, V.
 const junctionVBE = 0.7
@@ -93,7 +95,7 @@ func (x *die) layerAt(volts float64) (layer, bool) { return x.prof.at(volts + x.
 // planeBreakdown is the applied voltage at which the plane junction's integral
 // reaches a level: 1 for BVcbo, 1/(1+hFE) for BVceo.
 func (x *die) planeBreakdown(level float64) float64 {
-	l, ok := x.prof.seek(level, func(l *layer) float64 { return x.prof.multiplication(l, &x.law) })
+	l, ok := x.prof.atLevel(level, &x.law)
 	if !ok {
 		return math.NaN()
 	}
@@ -125,7 +127,7 @@ func (x *die) gummel(vce float64) (l layer, atoms, number, sheet float64) {
 		return l, math.NaN(), math.NaN(), math.NaN()
 	}
 	vt := thermal(x.kelvin)
-	const panels = 32
+	const panels = 16
 	h := (l.xp - x.xje) / panels
 	for i := range 2*panels + 1 {
 		w := 2.0
@@ -153,7 +155,7 @@ const baseLayerPotential = 0.35
 // I = q ni We/2 (area/lifetime + s0 perimeter) exp(V/2kT).
 func (x *die) recombination() float64 {
 	width := math.Sqrt(2 * permittivity * baseLayerPotential / (charge * x.prof.acceptors(x.xje)))
-	return charge * intrinsic(x.kelvin) * width / 2 * (x.areaE/x.lifetime + x.s0*x.rimE)
+	return x.nat.recombine * charge * intrinsic(x.kelvin) * width / 2 * (x.areaE/x.lifetime + x.s0*x.rimE)
 }
 
 // gain is hFE at a collector current: emitter efficiency and space-charge

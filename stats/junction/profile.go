@@ -160,7 +160,7 @@ func (p *profile) field(l *layer, x float64) float64 {
 }
 
 // panels are how many Simpson panels cover the base side, the epi and the tail.
-const basePanels, epiPanels, tailPanels = 24, 48, 24
+const basePanels, epiPanels, tailPanels = 16, 32, 12
 
 // walk passes the field along the layer: at its start, then of each panel its
 // length, middle position and fields at middle and end, from base to collector.
@@ -192,14 +192,28 @@ func (p *profile) walk(l *layer, start func(field float64), panel func(h, middle
 	}
 }
 
-// potential is the voltage across a layer, V.
+// potential is the voltage across a layer, V: the first moment of its charge, in
+// closed form.
 func (p *profile) potential(l *layer) float64 {
-	v, e0 := 0.0, 0.0
-	p.walk(l, func(e float64) { e0 = e }, func(h, middle, end float64) {
-		v += h / 6 * (e0 + 4*middle + end)
-		e0 = end
-	})
-	return v
+	return charge / permittivity * (p.momentTo(l.xn) - p.momentTo(l.xp))
+}
+
+// momentTo is an antiderivative of (x - xjc) times the net doping.
+func (p *profile) momentTo(x float64) float64 {
+	d := x - p.xjc
+	m := p.nd * d * d / 2
+	if p.lam > 0 {
+		y := math.Min(x, p.t)
+		m += p.nsub * p.lam * math.Exp((y-p.t)/p.lam) * (y - p.xjc - p.lam)
+	}
+	if x > p.t {
+		m += p.nsub * (x - p.t) * ((x+p.t)/2 - p.xjc)
+	}
+	na := p.acceptors(x)
+	if p.shape == exponentialBase {
+		return m + na*p.l*(d+p.l)
+	}
+	return m + na*p.l*p.l/2 + p.xjc*p.acceptorsTo(x)
 }
 
 // multiplication is the ionisation integral of electrons over a layer.
@@ -222,11 +236,18 @@ func (p *profile) generation(l *layer, fg float64) float64 {
 
 // at finds the layer under a total potential.
 func (p *profile) at(psi float64) (layer, bool) {
-	return p.seek(psi, p.potential)
+	// Endless epi alone would hold this charge.
+	return p.seek(psi, math.Sqrt(2*permittivity*p.nd*math.Max(psi, 1e-3)/charge), p.potential)
 }
 
-// seek finds the layer at which a quantity that rises with charge has a value.
-func (p *profile) seek(value float64, quantity func(*layer) float64) (layer, bool) {
+// atLevel finds the layer whose ionisation integral has a value.
+func (p *profile) atLevel(level float64, law *ionisation) (layer, bool) {
+	return p.seek(level, permittivity/charge*1.8e5, func(l *layer) float64 { return p.multiplication(l, law) })
+}
+
+// seek finds the layer at which a quantity that rises with charge has a value,
+// starting near a charge.
+func (p *profile) seek(value, guess float64, quantity func(*layer) float64) (layer, bool) {
 	full := p.acceptorsTo(p.xjc) - p.nd*p.xjc - (p.tailTo(p.xjc) - p.tailTo(0))
 	f := func(lnq float64) float64 {
 		l, ok := p.deplete(math.Exp(lnq))
@@ -243,7 +264,7 @@ func (p *profile) seek(value float64, quantity func(*layer) float64) (layer, boo
 	if !(full > 1e9) {
 		return layer{}, false
 	}
-	x := bracketed(f, math.Log(3e11), lo, hi)
+	x := bracketed(f, math.Log(guess), lo, hi)
 	l, ok := p.deplete(math.Exp(x))
 	return l, ok
 }

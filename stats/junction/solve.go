@@ -54,7 +54,7 @@ func root(f func(float64) float64, a, b, tol float64) float64 {
 func bracketed(f func(float64) float64, guess, lo, hi float64) float64 {
 	a := math.Min(math.Max(guess, lo), hi)
 	fa := f(a)
-	step := 0.7
+	step := 0.25
 	if fa > 0 {
 		step = -step
 	}
@@ -65,10 +65,10 @@ func bracketed(f func(float64) float64, guess, lo, hi float64) float64 {
 			return math.NaN()
 		}
 		if fa*fb <= 0 {
-			return root(f, math.Min(a, b), math.Max(a, b), 1e-10)
+			return root(f, math.Min(a, b), math.Max(a, b), 1e-9)
 		}
 		a, fa = b, fb
-		step *= 1.5
+		step *= 2
 	}
 	return math.NaN()
 }

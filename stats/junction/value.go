@@ -49,7 +49,7 @@ func (x *die) value(t *Test) float64 {
 
 // bvcbo is the lowest of plane, edge and corner.
 func (x *die) bvcbo() float64 {
-	lowest := math.Min(x.edge.breakdown(&x.law, x.kelvin), x.notch.breakdown(&x.law, x.kelvin))
+	lowest := x.nat.rim * math.Min(x.edge.breakdown(&x.law, x.kelvin), x.notch.breakdown(&x.law, x.kelvin))
 	if plane := x.planeBreakdown(1); plane < lowest { // a NaN plane is beyond what the base can hold
 		return plane
 	}
@@ -87,12 +87,18 @@ func (x *die) leakage(volts float64, withRim bool) float64 {
 	one := func(float64) float64 { return 1 }
 	side := func(r float64) float64 { return r }
 	re := x.edge.seek(volts+x.edgeVbi, x.edge.potential)
-	total += qni * gainOf(x.edge.multiplication(re, &x.law)) * x.rimC *
+	total += qni * x.rimGain(&x.edge, volts, x.edgeVbi) * x.rimC *
 		(math.Pi/2/x.lifetime*x.edge.generation(re, x.fg, side) + x.s0*x.edge.generation(re, x.fg, one))
 	rc := x.notch.seek(volts+x.notchVbi, x.notch.potential)
 	arc := func(r float64) float64 { return x.mask + r }
-	return total + qni*gainOf(x.notch.multiplication(rc, &x.law))*2*math.Pi*
+	return total + qni*x.rimGain(&x.notch, volts, x.notchVbi)*2*math.Pi*
 		(math.Pi/2/x.lifetime*x.notch.generation(rc, x.fg, x.notch.area)+x.s0*x.notch.generation(rc, x.fg, arc))
+}
+
+// rimGain is 1/(1-I) of a curved junction, at the voltage that is as far from the
+// model's breakdown as the applied one is from the calibrated.
+func (x *die) rimGain(c *rim, volts, vbi float64) float64 {
+	return gainOf(c.multiplication(c.seek(volts/x.nat.rim+vbi, c.potential), &x.law))
 }
 
 // cob is the plane junction, the quarter-cylinder along the edge, and the stray
@@ -185,7 +191,7 @@ func (x *die) proxy(t *Test) float64 {
 func (x *die) endlessWidth(gain float64) float64 {
 	free := x.prof
 	free.t, free.lam = x.prof.xjc+1, 0 // a centimetre
-	l, ok := free.seek(1/(1+gain), func(l *layer) float64 { return free.multiplication(l, &x.law) })
+	l, ok := free.atLevel(1/(1+gain), &x.law)
 	if !ok {
 		return math.NaN()
 	}
