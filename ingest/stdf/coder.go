@@ -20,6 +20,7 @@ type coder struct {
 	writing  bool
 	big, vax bool
 	overrun  bool // reading: a field is cut by the end of the record
+	unclean  bool // reading: a text does not look like one
 	fields   int  // met so far
 	limit    int  // writing: stop after so many; 0 none
 	err      error
@@ -28,7 +29,7 @@ type coder struct {
 
 // read starts reading a body.
 func (c *coder) read(body []byte) {
-	c.body, c.overrun, c.fields = body, false, 0
+	c.body, c.overrun, c.unclean, c.fields = body, false, false, 0
 }
 
 // write starts writing a body.
@@ -225,8 +226,16 @@ func (c *coder) cn(p *string) {
 		return
 	}
 	var b []byte
-	c.bytes(&b)
+	c.text(&b)
 	*p = c.strings.get(b)
+}
+
+// text is a C*n as a view of the body.
+func (c *coder) text(p *[]byte) {
+	c.bytes(p)
+	if !c.writing && !clean(*p) {
+		c.unclean = true
+	}
 }
 
 // count2 is a U*2 that says how many items follow: read into n, written from it.

@@ -68,7 +68,7 @@ func (p *Parts) mir(m *MIR) {
 	run := newRun(len(p.runs), p.r.at)
 	run.MIR, run.HasMIR = Clone(m).(*MIR), true
 	p.runs = append(p.runs, run)
-	p.onHead = [256]*Wafer{}
+	p.onHead, p.inDoubt = [256]*Wafer{}, [256]bool{}
 	clear(p.pins)
 }
 
@@ -83,6 +83,13 @@ func (p *Parts) finishRun() {
 		return
 	}
 	run := p.runs[len(p.runs)-1]
+	for _, i := range run.Wafers {
+		if w := p.wafers[i]; w.ID == "" && w.before != nil && w.before.ID != "" {
+			w.ID, w.Assumed = w.before.ID, true
+			p.r.damages.add(w.Offset, DamageGap, 0, "%s from here on are taken to be of wafer %s, as those before the damaged place; no record says so",
+				plural(int(w.Parts), "part"), quote(w.ID))
+		}
+	}
 	run.close()
 	end := p.r.at
 	if p.closed {
@@ -99,12 +106,21 @@ func (p *Parts) abandonAll(why string) {
 }
 
 // wafer is the wafer that parts of a head belong to now; one without WIR where
-// none is open.
+// none is open. Behind a gap that may have hidden the end of a wafer and the
+// start of the next, parts go to a wafer of their own, until a WRR names it.
 func (p *Parts) wafer(head uint8) *Wafer {
-	if w := p.onHead[head]; w != nil {
-		return w
+	w := p.onHead[head]
+	switch {
+	case w == nil:
+		w = p.newWafer(head)
+	case p.inDoubt[head]:
+		before := w
+		if w = p.newWafer(head); w != before {
+			w.before = before
+		}
 	}
-	return p.newWafer(head)
+	p.inDoubt[head] = false
+	return w
 }
 
 func (p *Parts) newWafer(head uint8) *Wafer {
@@ -123,11 +139,12 @@ func (p *Parts) newWafer(head uint8) *Wafer {
 
 // wir opens a wafer on its head.
 func (p *Parts) wir(m *WIR) {
-	if len(p.wafers) >= maxWafers {
-		p.newWafer(m.Head)
+	p.inDoubt[m.Head] = false
+	full := len(p.wafers) >= maxWafers
+	w := p.newWafer(m.Head)
+	if full {
 		return
 	}
-	w := p.newWafer(m.Head)
 	w.WIR = Clone(m).(*WIR)
 	w.ID = trim(m.WaferID)
 }
@@ -135,12 +152,17 @@ func (p *Parts) wir(m *WIR) {
 // wrr closes the wafer of its head; without a WIR the parts since the last
 // wafer are on it.
 func (p *Parts) wrr(m *WRR) {
-	w := p.wafer(m.Head)
+	w := p.onHead[m.Head]
+	id := trim(m.WaferID)
+	if w == nil || p.inDoubt[m.Head] && id != "" && id != w.ID {
+		// With a gap before it: a wafer all of whose parts were lost.
+		w = p.newWafer(m.Head)
+	}
 	if w.WRR == nil {
 		w.WRR = Clone(m).(*WRR)
 		if w.ID == "" {
-			w.ID = trim(m.WaferID)
+			w.ID = id
 		}
 	}
-	p.onHead[m.Head] = nil
+	p.onHead[m.Head], p.inDoubt[m.Head] = nil, false
 }

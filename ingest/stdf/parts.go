@@ -29,17 +29,18 @@ type Parts struct {
 	// it passes, for what Parts does not keep (DTR, GDR, ATR ...).
 	Watch func(Record)
 
-	r      *Reader
-	part   Part
-	heads  [256]*[256]*slot
-	open   []*slot // every slot made, in the order made
-	runs   []*Run
-	wafers []*Wafer
-	onHead [256]*Wafer
-	pins   map[uint16]*PMR
-	number int64
-	gaps   int64 // of the Reader, seen here
-	closed bool
+	r       *Reader
+	part    Part
+	heads   [256]*[256]*slot
+	open    []*slot // every slot made, in the order made
+	runs    []*Run
+	wafers  []*Wafer
+	onHead  [256]*Wafer
+	inDoubt [256]bool // the wafer on a head may have ended in a gap
+	pins    map[uint16]*PMR
+	number  int64
+	gaps    int64 // of the Reader, seen here
+	closed  bool
 
 	results, orphans int64
 }
@@ -62,9 +63,9 @@ type Part struct {
 	HasPIR     bool
 
 	// Damaged says that bytes were skipped, or an odd record was met, while the
-	// part was open: results may be missing. Where the skipped bytes could hide
-	// the end of one part and the start of the next, the results before them
-	// are left out, so that all of Results are of this part.
+	// part was open: results may be missing. Skipped bytes can hide the end of
+	// one part and the start of the next: the results before them are left out,
+	// so that all of Results are of this part.
 	Damaged bool
 
 	id, text []byte
@@ -355,24 +356,25 @@ func (p *Parts) end(m *PRR) {
 	}
 }
 
-// boundary is the fewest bytes that a PRR and a PIR take: a gap of as many can
-// hide the end of one part and the start of the next.
-const boundary = 4 + 7 + 4 + 2
-
-// gap marks the parts that are open over a damaged place. Its extent is that of
-// the longest skip since the last record.
+// gap marks what is open over a damaged place. Where records may be missing,
+// the end of one part and the start of the next can be among them, and the end
+// and start of wafers: what came before is not joined with what comes after.
 func (p *Parts) gap() {
 	for _, s := range p.open {
-		if !s.isOpen {
-			continue
-		}
-		s.damaged = true
-		if p.r.gap >= boundary {
-			p.orphans += int64(len(s.results))
-			s.results = s.results[:0]
+		if s.isOpen {
+			s.damaged = true
+			if p.r.torn {
+				p.orphans += int64(len(s.results))
+				s.results = s.results[:0]
+			}
 		}
 	}
-	p.gaps, p.r.gap = p.r.gaps, 0
+	if p.r.torn {
+		for head, w := range p.onHead {
+			p.inDoubt[head] = p.inDoubt[head] || w != nil && w.WIR != nil
+		}
+	}
+	p.gaps, p.r.torn = p.r.gaps, false
 }
 
 func quote(s string) string { return strconv.Quote(s) }

@@ -58,9 +58,10 @@ type Reader struct {
 	wide    [kinds]bool   // kinds that were seen with extra bytes in good chains
 	odds    [kinds]int64  // odd records of each kind
 	oddKept [kinds]int64  // of them, those delivered
+	shapes  [kinds]int    // fields of the last record of each kind but PTR; see shape
 	trusted int64         // headers chain up to this offset, whatever their types
 	gaps    int64         // stretches that gave no record or an odd one
-	gap     int64         // bytes of the longest of them that Parts has not yet seen
+	torn    bool          // whether records may be missing at one of those that Parts has not yet seen
 	damages damages
 
 	begun, done bool
@@ -145,7 +146,7 @@ func (r *Reader) Scan() bool {
 					r.pos += whole
 					r.counts[KindPTR]++
 					r.rec, r.kind = &r.ptr, KindPTR
-					r.settlePTR()
+					r.settlePTR(h.size)
 					return true
 				}
 			case h.kind != Unknown && h.kind <= delivered && r.read(h.kind, b[4:whole]) == exact:
@@ -212,9 +213,10 @@ func (r *Reader) deliver(h header) {
 	r.pos += 4 + h.size
 	r.counts[h.kind]++
 	r.rec, r.kind = r.records[h.kind], h.kind
+	r.shapes[h.kind] = r.shape(h.kind)
 	switch h.kind {
 	case KindPTR:
-		r.settlePTR()
+		r.settlePTR(h.size)
 	case KindMPR:
 		r.settleMPR()
 	case KindFTR:
@@ -256,9 +258,10 @@ func recordText(t *Test, raw []byte, c *coder) string {
 }
 
 // settlePTR finds the test of a PTR and what limits hold for it.
-func (r *Reader) settlePTR() {
+func (r *Reader) settlePTR(size int) {
 	m := &r.ptr
 	t := r.test(KindPTR, m.Number, m.textRaw)
+	t.size = size
 	m.Test = t
 	m.Text = recordText(t, m.textRaw, &r.c)
 	m.which = t.Default

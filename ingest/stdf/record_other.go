@@ -70,7 +70,7 @@ func (m *DTR) layout(c *coder) {
 		return
 	}
 	var b []byte
-	c.bytes(&b)
+	c.text(&b)
 	m.Text = text(b) // not interned: each is its own
 }
 

@@ -165,8 +165,11 @@ func (m *PRR) read(c *coder, b []byte) fit {
 	if m.Fix, b, ok = cutText(b); !ok {
 		return overrun
 	}
-	if len(b) > 0 {
+	switch {
+	case len(b) > 0:
 		return extra
+	case !clean(m.PartID) || !clean(m.PartText):
+		return doubtful
 	}
 	return exact
 }
@@ -188,10 +191,31 @@ func cutText(b []byte) (text, rest []byte, ok bool) {
 type fit uint8
 
 const (
-	exact   fit = iota // they end together
-	extra              // bytes are left over
-	overrun            // a field is cut by the end
+	exact    fit = iota // they end together
+	doubtful            // they end together, but a text holds bytes that no text has
+	extra               // bytes are left over
+	overrun             // a field is cut by the end
 )
+
+// clean says whether b looks like a text: no control characters but white space,
+// and zero bytes at the end only. A record that swallows its neighbours because
+// its length is wrong shows here, as its texts hold their headers.
+func clean(b []byte) bool {
+	for i, c := range b {
+		if c < ' ' && c != '\t' && c != '\r' && c != '\n' {
+			if c != 0 {
+				return false
+			}
+			for _, c := range b[i:] {
+				if c != 0 {
+					return false
+				}
+			}
+			return true
+		}
+	}
+	return true
+}
 
 // fit says how the fields that were read lie in the body.
 func (c *coder) fit() fit {
@@ -200,6 +224,8 @@ func (c *coder) fit() fit {
 		return overrun
 	case len(c.body) > 0:
 		return extra
+	case c.unclean:
+		return doubtful
 	}
 	return exact
 }

@@ -134,8 +134,12 @@ func (m *PTR) read(c *coder, b []byte) fit {
 	if m.textRaw, b, ok = cutText(b[12:]); !ok {
 		return overrun
 	}
+	f := exact
+	if !clean(m.textRaw) {
+		f = doubtful
+	}
 	if len(b) == 0 {
-		return exact
+		return f
 	}
 	if b[0] == 0 {
 		b = b[1:]
@@ -144,10 +148,13 @@ func (m *PTR) read(c *coder, b []byte) fit {
 		if alarm, b, ok = cutText(b); !ok {
 			return overrun
 		}
+		if !clean(alarm) {
+			f = doubtful
+		}
 		m.Alarm = c.strings.get(alarm)
 	}
 	m.optRaw = b
-	return fitOptional(b)
+	return max(f, fitOptional(b))
 }
 
 // fitOptional says how the fields of an Optional lie in b.
@@ -160,15 +167,20 @@ func fitOptional(b []byte) fit {
 		return overrun
 	}
 	b = b[12:]
-	ok := true
+	f := exact
 	for range 4 {
-		if _, b, ok = cutText(b); !ok {
+		text, rest, ok := cutText(b)
+		if !ok {
 			return overrun
 		}
+		if !clean(text) {
+			f = doubtful
+		}
+		b = rest
 	}
 	switch {
 	case len(b) == 0, len(b) == 4, len(b) == 8:
-		return exact
+		return f
 	case len(b) < 8:
 		return overrun
 	}
@@ -238,7 +250,7 @@ func (m *MPR) layout(c *coder) {
 	if c.writing {
 		c.cn(&m.Text)
 	} else {
-		c.bytes(&m.textRaw)
+		c.text(&m.textRaw)
 	}
 	c.cn(&m.Alarm)
 	if m.Optional != nil {
@@ -328,7 +340,7 @@ func (m *FTR) layout(c *coder) {
 	if c.writing {
 		c.cn(&m.Text)
 	} else {
-		c.bytes(&m.textRaw)
+		c.text(&m.textRaw)
 	}
 	c.cn(&m.Alarm)
 	c.cn(&m.ProgramText)

@@ -3,18 +3,19 @@ package stdf
 import "fmt"
 
 // judge decides what to make of a record that is suspect: of an unknown type,
-// of a length that its type cannot have, or with fields that do not fit it.
-// From is where a next record may start at the earliest. There are three
-// readings:
+// of a length that its type cannot have, with fields that do not fit it, or
+// with no header behind it. From is where a next record may start at the
+// earliest; fits says that its fields fit its length. The readings are:
 //
 //   - It is an odd record in a sound file: its length leads to the next sound
 //     chain of headers, directly or over more odd records.
 //   - Its length is damaged and the rest is not: its fields end just where the
 //     next chain starts. It is read with the length that fits.
+//   - It fits, and no chain starts inside of it: the damage is behind it.
 //   - Anything else: the stream is taken up where the next chain starts.
 //
 // It says whether it has delivered a record.
-func (r *Reader) judge(h header, from int) bool {
+func (r *Reader) judge(h header, from int, fits bool) bool {
 	s, found := r.search(from)
 	whole := 4 + h.size
 	switch {
@@ -24,6 +25,8 @@ func (r *Reader) judge(h header, from int) bool {
 		r.trusted = r.base + int64(r.end)
 	case found && r.repair(h, s):
 		return true
+	case fits && (!found || s > whole):
+		return r.take(h)
 	case h.kind == Unknown:
 		r.skip(s, "%d, %d is no record type, and no chain of records leads on from there", h.code.typ(), h.code.sub())
 		return false
@@ -48,13 +51,42 @@ func (r *Reader) repair(h header, s int) bool {
 	}
 	right := h
 	right.size = s - 4
-	if !right.strict() || r.read(h.kind, r.buf[r.pos+4:r.pos+s]) != exact {
+	if !right.strict() || r.read(h.kind, r.buf[r.pos+4:r.pos+s]) != exact || !r.familiar(right) {
 		return false
 	}
 	r.damages.add(r.offset(), DamageRecord, 0, "a %s record says that it is %s long; its fields and the records behind it say %d, and it is read so",
 		h.kind, plural(h.size, "byte"), right.size)
 	r.deliver(right)
 	return true
+}
+
+// familiar says whether the record that was read ends after the same field as
+// the last one of its kind: of its test, for a PTR. Records may leave out fields
+// at their end, so one that lost its tail often fits what is left of it.
+func (r *Reader) familiar(h header) bool {
+	if h.kind == KindPTR {
+		t := r.tests.byNum[numKey(KindPTR, r.ptr.Number)]
+		return t != nil && t.size == h.size
+	}
+	return r.shapes[h.kind] == 0 || r.shapes[h.kind] == r.shape(h.kind)
+}
+
+// shape is the number of fields of the record that was read, plus one.
+func (r *Reader) shape(k Kind) int {
+	switch k {
+	case KindPIR:
+		return 1
+	default:
+		return r.c.fields + 1
+	case KindPRR:
+	}
+	n := 1
+	for _, b := range [][]byte{r.prr.PartID, r.prr.PartText, r.prr.Fix} {
+		if b != nil {
+			n++
+		}
+	}
+	return n
 }
 
 // odd handles a record whose length is right, but whose fields do not fit it: a
@@ -67,6 +99,10 @@ func (r *Reader) odd(h header) bool {
 	whole := 4 + h.size
 	f := r.read(h.kind, r.buf[r.pos+4:r.pos+whole])
 	at := r.offset()
+	if f == doubtful {
+		r.deliver(h)
+		return true
+	}
 	r.odds[h.kind]++
 	habit := r.odds[h.kind] > r.counts[h.kind]-r.oddKept[h.kind]
 	robust := h.kind == KindPTR || h.kind == KindMPR || h.kind == KindFTR || h.kind == KindPRR
@@ -109,13 +145,13 @@ func (r *Reader) resume(at int64, why string) {
 	gap := r.offset() - at
 	switch {
 	case !r.done:
-		why += fmt.Sprintf("; %d bytes skipped, taken up at byte %d", gap, r.offset())
+		why += fmt.Sprintf("; %s skipped, taken up at byte %d", plural(int(gap), "byte"), r.offset())
 	case r.eof:
 		gap += int64(r.end - r.pos)
 		r.pos = r.end
-		why += fmt.Sprintf("; nothing more was found in the %d bytes up to the end of the file", gap)
+		why += fmt.Sprintf("; nothing more was found up to the end of the file, %s on", plural(int(gap), "byte"))
 	default:
-		why += fmt.Sprintf("; gave up after %d bytes without a record", gap)
+		why += fmt.Sprintf("; gave up after %s without a record", plural(int(gap), "byte"))
 	}
 	r.damages.add(at, DamageSkipped, gap, "%s", why)
 	r.noteGap(gap)
@@ -125,10 +161,11 @@ func (r *Reader) resume(at int64, why string) {
 // time, which only packed data can reach with a small file.
 const maxSkip = 1 << 30
 
-// noteGap counts a stretch of bytes that gave no record, or an odd one (0).
+// noteGap counts a stretch of bytes that gave no record, or a single record
+// that is odd (0). Records may be missing between its ends.
 func (r *Reader) noteGap(bytes int64) {
 	r.gaps++
-	r.gap = max(r.gap, bytes)
+	r.torn = r.torn || bytes > 0
 }
 
 // search finds the first place from pos+from on where a chain of headers

@@ -51,8 +51,8 @@ type Site struct {
 }
 
 // Wafer is one stretch of parts of a head between WIR and WRR. A wafer that is
-// tested again in the same file is a second Wafer with the same ID. Parts
-// outside of any such stretch are on a Wafer that has neither record: the whole
+// tested again in the same file is a second Wafer with the same ID, and so is
+// the rest of one behind a damaged place. Parts outside of any such stretch are on a Wafer that has neither record: the whole
 // run of a file of packaged parts is one.
 type Wafer struct {
 	Index, Run  int
@@ -63,6 +63,11 @@ type Wafer struct {
 	WRR         *WRR   // nil none
 	Parts, Good int64  // PRRs counted
 	Retested    int64  // of them, those that stand in for an earlier part
+
+	// Assumed says that the ID is that of the wafer before a damaged place,
+	// which may have hidden the start of another one: no record names it.
+	Assumed bool
+	before  *Wafer // the wafer before the damaged place
 }
 
 // Bounds on what a damaged or hostile file can make of lot-level records.
@@ -182,8 +187,12 @@ func (r *Run) check(wafers []*Wafer, end int64, d *damages) {
 	for _, i := range r.Wafers {
 		if w := wafers[i]; w.WRR != nil {
 			what := "the WRR of wafer " + quote(w.ID)
-			claims(w.Offset, what, w.WRR.Parts, w.Parts, w.Retested)
-			goodClaims(w.Offset, what, w.WRR.Good, w.Good, w.Retested)
+			parts, good, retested := w.Parts, w.Good, w.Retested
+			for b := w.before; b != nil && b.ID == w.ID; b = b.before {
+				parts, good, retested = parts+b.Parts, good+b.Good, retested+b.Retested
+			}
+			claims(w.Offset, what, w.WRR.Parts, parts, retested)
+			goodClaims(w.Offset, what, w.WRR.Good, good, retested)
 		}
 	}
 	for _, s := range r.Sites {

@@ -152,12 +152,13 @@ func (r *Reader) findStart() {
 			}
 		}
 	}
-	if r.err == nil {
-		r.noSTDF("no STDF records are found here")
-	}
+	r.noSTDF("no STDF records are found here")
 }
 
 func (r *Reader) noSTDF(text string) {
+	if r.err != nil {
+		return // it could not be read
+	}
 	r.err = &FormatError{0, text, "give a file in STDF V4, plain or packed with gzip or zstd"}
 }
 

@@ -27,27 +27,19 @@ func (r *Reader) step() bool {
 		r.zeros()
 		return false
 	case n < whole:
-		r.cut(h, n)
-		return false
+		return r.cut(h, n)
 	case r.offset() < r.trusted:
 		return r.take(h)
 	case !r.likely(h):
-		return r.judge(h, 1)
-	case h.kind == Unknown || h.kind > delivered:
-		// Trailing bytes too few for a header are for the next step to report.
-		if n < whole+4 || r.likely(parseHeader(b[whole:], r.c.big)) || r.otherOrder(b[whole:]) {
-			r.pass(h)
-			return false
-		}
-		return r.judge(h, 1)
+		return r.judge(h, 1, false)
 	}
-	if r.read(h.kind, b[4:whole]) == exact {
-		// Its fields end with it, so its length is right. If no header
-		// follows, that is for the next step to judge.
-		r.deliver(h)
-		return true
+	// Trailing bytes too few for a header are for the next step to report.
+	follows := n < whole+4 || r.likely(parseHeader(b[whole:], r.c.big)) || r.otherOrder(b[whole:])
+	fits := h.kind == Unknown || h.kind > delivered || r.read(h.kind, b[4:whole]) == exact
+	if follows && fits {
+		return r.take(h)
 	}
-	return r.judge(h, 5) // the header is sound as such: what is in doubt is its length
+	return r.judge(h, 5, fits && h.kind <= delivered) // the header is sound as such: what is in doubt is its length
 }
 
 // otherOrder says whether b starts with the file attributes record of a file
@@ -98,14 +90,16 @@ func (r *Reader) finish(n int) {
 }
 
 // cut handles a record that runs over the end of the file. Its length may be
-// what is wrong: then headers chain inside of it.
-func (r *Reader) cut(h header, n int) {
+// what is wrong: then headers chain inside of it. It says whether it has
+// delivered a record.
+func (r *Reader) cut(h header, n int) bool {
 	if s, ok := r.search(5); ok {
-		if !r.repair(h, s) {
-			r.skip(s, "a record of type %d, %d says that it is %s long, which runs over the end of the file",
-				h.code.typ(), h.code.sub(), plural(h.size, "byte"))
+		if r.repair(h, s) {
+			return true
 		}
-		return
+		r.skip(s, "a record of type %d, %d says that it is %s long, which runs over the end of the file",
+			h.code.typ(), h.code.sub(), plural(h.size, "byte"))
+		return false
 	}
 	r.done = true
 	if r.err == nil {
@@ -118,6 +112,7 @@ func (r *Reader) cut(h header, n int) {
 		r.noteGap(int64(n))
 	}
 	r.pos = r.end
+	return false
 }
 
 // zeros handles zero bytes where a header should be: the padding of the last

@@ -35,6 +35,7 @@ type Test struct {
 	next     *Test  // the test whose record came after the last one of this
 	run      int    // that Default is of
 	given    bool   // some record has given limits
+	size     int    // of the body of its last PTR
 	seen     [2]*seen
 }
 
