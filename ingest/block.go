@@ -13,16 +13,24 @@ import (
 // block does not depend on how many goroutines parse.
 const blockSize = 1 << 20
 
+// headSize is the least of a file that is looked at to find its layout.
+const headSize = 64 << 10
+
+// tailSize is how much text before a line that may have broken off tells what
+// whole lines look like.
+const tailSize = 8 << 10
+
 // block is a run of whole rows.
 type block struct {
-	buf   []byte // ends in '\n'
-	seq   int
-	line  int   // line number of its first line
-	lines int   // line ends in buf
-	raw   int64 // about how far into the raw file it reaches
-	cut   bool  // the file's last line had no line end; one was added
-	torn  bool  // reading broke off in that line: it is not used
-	nul   bool  // there are zero bytes in it
+	buf    []byte // ends in '\n'
+	seq    int
+	line   int    // line number of its first line
+	lines  int    // line ends in buf
+	raw    int64  // about how far into the raw file it reaches
+	cut    bool   // the file's last line had no line end; one was added
+	before []byte // of a cut block: what stood before it, up to tailSize bytes
+	torn   bool   // reading broke off in that line: it is not used
+	nul    bool   // there are zero bytes in it
 }
 
 // blocker cuts a source into blocks.
@@ -33,7 +41,8 @@ type blocker struct {
 	eof   bool
 	err   error // what ended the reading, other than EOF
 	line  int
-	given int64 // bytes of text given out
+	given int64  // bytes of text given out
+	tail  []byte // the last of them, up to tailSize
 	seq   int
 	sep   byte
 	want  int
@@ -42,7 +51,7 @@ type blocker struct {
 // head reads the start of the file, up to one block, without cutting it.
 func (k *blocker) head() error {
 	k.line = 1
-	k.fill()
+	k.fill(max(k.size, headSize))
 	if k.err != nil && len(k.carry) == 0 {
 		return k.src.readError(k.err)
 	}
@@ -133,14 +142,14 @@ func (c *carriage) Read(p []byte) (int, error) {
 	return n, err
 }
 
-// fill reads until carry holds a block or the file ends.
-func (k *blocker) fill() {
-	if cap(k.carry) < k.size {
-		k.carry = append(make([]byte, 0, k.size), k.carry...)
+// fill reads until carry holds n bytes or the file ends.
+func (k *blocker) fill(n int) {
+	if cap(k.carry) < n {
+		k.carry = append(make([]byte, 0, n), k.carry...)
 	}
-	for len(k.carry) < k.size && !k.eof {
-		n, err := k.src.plain.Read(k.carry[len(k.carry):k.size])
-		k.carry = k.carry[:len(k.carry)+n]
+	for len(k.carry) < n && !k.eof {
+		got, err := k.src.plain.Read(k.carry[len(k.carry):n])
+		k.carry = k.carry[:len(k.carry)+got]
 		if err != nil {
 			k.eof = true
 			if err != io.EOF {
@@ -153,25 +162,24 @@ func (k *blocker) fill() {
 // next gives the next block; ok is false at the end. spare is a buffer that is
 // no longer used, may be nil.
 func (k *blocker) next(ctx context.Context, spare []byte) (b block, ok bool, err error) {
-	for {
+	for size := k.size; ; size *= 2 {
 		if err := ctx.Err(); err != nil {
 			return block{}, false, err
 		}
-		k.fill()
-		if k.eof {
+		k.fill(size)
+		if k.eof && len(k.carry) <= size {
 			break
 		}
-		if end := k.rowEnd(); end > 0 {
+		if end := k.rowEnd(k.carry[:size]); end > 0 {
 			rest := append(spare[:0], k.carry[end:]...)
 			b = k.block(k.carry[:end])
 			k.carry = rest
 			return b, true, nil
 		}
-		if len(k.carry) >= maxLine {
+		if size >= maxLine {
 			return block{}, false, &Error{File: k.src.path, Line: k.line, What: fmt.Sprintf("the line is longer than %d MB", maxLine>>20),
 				Remedy: "check that the file is a table of delimited text"}
 		}
-		k.size = len(k.carry) * 2
 	}
 	buf := k.carry
 	k.carry = nil
@@ -185,9 +193,19 @@ func (k *blocker) next(ctx context.Context, spare []byte) (b block, ok bool, err
 	if cut {
 		buf = append(buf, '\n')
 	}
+	before := k.tail
 	b = k.block(buf)
-	b.cut = cut
+	b.cut, b.before = cut, before
 	return b, true, nil
+}
+
+// lastOf gives the last n bytes of a and b together.
+func lastOf(n int, a, b []byte) []byte {
+	if len(b) >= n {
+		return append([]byte(nil), b[len(b)-n:]...)
+	}
+	a = a[max(0, len(a)+len(b)-n):]
+	return append(append([]byte(nil), a...), b...)
 }
 
 func (k *blocker) block(buf []byte) block {
@@ -197,14 +215,14 @@ func (k *blocker) block(buf []byte) block {
 		raw = k.src.raw
 	}
 	b := block{buf: buf, seq: k.seq, line: k.line, raw: raw, lines: bytes.Count(buf, []byte{'\n'}), nul: bytes.IndexByte(buf, 0) >= 0}
+	k.tail = lastOf(tailSize, k.tail, buf)
 	k.seq++
 	k.line += b.lines
 	return b
 }
 
-// rowEnd is the place after the last row of carry that surely ends within it.
-func (k *blocker) rowEnd() int {
-	b := k.carry
+// rowEnd is the place after the last row of b that surely ends within it.
+func (k *blocker) rowEnd(b []byte) int {
 	if bytes.IndexByte(b, '"') < 0 {
 		return bytes.LastIndexByte(b, '\n') + 1
 	}

@@ -468,17 +468,22 @@ func (p *parser) broken(b *block, i int, fields [][]byte) bool {
 		}
 		return len(c), decimals
 	}
-	length, decimals := shape(bytes.TrimSpace(fields[len(fields)-1]))
+	lastCell := func(line []byte) []byte { return bytes.TrimSpace(line[bytes.LastIndexByte(line, p.l.sep)+1:]) }
+	length, decimals := shape(lastCell(bytes.TrimRight(b.buf[i:], "\r\n")))
 	seen, sameLength, sameDecimals := 0, true, true
 	firstLength, firstDecimals := 0, 0
-	for i > 0 && seen < most {
-		start := bytes.LastIndexByte(b.buf[:i-1], '\n') + 1
-		line := dropCR(b.buf[start : i-1])
-		i = start
+	text := lastOf(tailSize, b.before, b.buf[:i])
+	for seen < most {
+		start := bytes.LastIndexByte(text[:max(len(text)-1, 0)], '\n') + 1
+		if start == 0 && (len(text) == 0 || len(text) == tailSize) {
+			break // perhaps not the whole line
+		}
+		line := dropCR(text[start : len(text)-1])
+		text = text[:start]
 		if len(line) == 0 || line[0] == '#' {
 			continue
 		}
-		n, d := shape(bytes.TrimSpace(line[bytes.LastIndexByte(line, p.l.sep)+1:]))
+		n, d := shape(lastCell(line))
 		if seen == 0 {
 			firstLength, firstDecimals = n, d
 		}
