@@ -88,6 +88,7 @@ func (p *profile) net() float64 {
 type layer struct {
 	charge float64
 	xp, xn float64 // its edges in base and collector, cm
+	ap, an float64 // base less tail doping up to either edge, cm^-2
 }
 
 func (l *layer) width() float64 { return l.xn - l.xp }
@@ -116,7 +117,7 @@ func (p *profile) deplete(charge float64) (l layer, ok bool) {
 		}
 		dx := (held(x) - charge) / slope
 		x = math.Max(0, x+dx)
-		if math.Abs(dx) < 1e-11*p.xjc {
+		if math.Abs(dx) < 1e-10*p.xjc {
 			break
 		}
 	}
@@ -139,22 +140,23 @@ func (p *profile) deplete(charge float64) (l layer, ok bool) {
 			dx = (x - p.xjc) / 2
 		}
 		x -= dx
-		if math.Abs(dx) < 1e-11*p.xjc {
+		if math.Abs(dx) < 1e-10*p.xjc {
 			break
 		}
 	}
 	l.xn = x
+	l.ap, l.an = p.acceptorsTo(l.xp)-p.tailTo(l.xp), p.acceptorsTo(l.xn)-p.tailTo(l.xn)
 	return l, true
 }
 
 // field is the field at x inside a layer, V/cm.
 func (p *profile) field(l *layer, x float64) float64 {
 	// From the nearer edge: from the far one, a tail's large numbers cancel.
-	var q float64
+	q := p.acceptorsTo(x) - p.tailTo(x)
 	if x < p.xjc {
-		q = p.acceptorsTo(x) - p.acceptorsTo(l.xp) - p.nd*(x-l.xp) - (p.tailTo(x) - p.tailTo(l.xp))
+		q -= l.ap + p.nd*(x-l.xp)
 	} else {
-		q = p.nd*(l.xn-x) + p.tailTo(l.xn) - p.tailTo(x) - (p.acceptorsTo(l.xn) - p.acceptorsTo(x))
+		q += p.nd*(l.xn-x) - l.an
 	}
 	return math.Max(0, charge/permittivity*q)
 }
@@ -291,7 +293,7 @@ func fixedBuiltIn(kelvin, nd float64, edge func(psi float64) (float64, bool)) fl
 			return math.NaN()
 		}
 		next := math.Max(0.1, vt*math.Log(n/ni*(nd/ni)))
-		if math.Abs(next-v) < 1e-9 {
+		if math.Abs(next-v) < 1e-7 {
 			return next
 		}
 		v = next
