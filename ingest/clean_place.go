@@ -55,7 +55,7 @@ func (p *places) offWafer(d *draft) (int, string) {
 	if d.product != nil {
 		if g := d.product.Wafer; g.DiameterMM > 0 && g.DieWidthMM > 0 && g.DieHeightMM > 0 {
 			limit := g.DiameterMM/2 + math.Max(g.DieWidthMM, g.DieHeightMM)
-			cx, cy := p.centre(d, g.DieWidthMM, g.DieHeightMM, limit)
+			cx, cy := p.centre(g.DieWidthMM, g.DieHeightMM, g.DiameterMM/2)
 			n := p.count(d, func(x, y int32) bool {
 				return math.Hypot((float64(x)-cx)*g.DieWidthMM, (float64(y)-cy)*g.DieHeightMM) > limit
 			})
@@ -115,7 +115,7 @@ func (p *places) farOutline() func(x, y int32) bool {
 // smallest circle around the dice, those left out that are too far from the
 // others to share a wafer with them. Only the outline matters, so that the
 // first and last die of each row stand for all.
-func (p *places) centre(d *draft, w, h, limit float64) (float64, float64) {
+func (p *places) centre(w, h, radius float64) (float64, float64) {
 	ends := map[int32][2]int32{}
 	for i := range p.x {
 		if p.x[i] == Missing || p.y[i] == Missing {
@@ -132,7 +132,7 @@ func (p *places) centre(d *draft, w, h, limit float64) (float64, float64) {
 	for yy, e := range ends {
 		for _, xx := range e {
 			q := point{float64(xx) * w, float64(yy) * h}
-			if math.Hypot(q.x-mx*w, q.y-my*h) <= 2*limit {
+			if math.Hypot(q.x-mx*w, q.y-my*h) <= 2.5*radius {
 				points = append(points, q)
 			}
 		}
@@ -146,7 +146,7 @@ func (p *places) centre(d *draft, w, h, limit float64) (float64, float64) {
 	points = slices.Compact(points)
 	for len(points) > 0 {
 		c, r := smallestCircle(points)
-		if r <= limit {
+		if r <= radius {
 			return c.x / w, c.y / h
 		}
 		// Too wide for one wafer: the point farthest from the middle of all

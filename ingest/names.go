@@ -109,7 +109,7 @@ func init() {
 		unitRow:      {"unit", "units", "uom", "unitofmeasure"},
 		lowerRow:     roleNames["lower"],
 		upperRow:     roleNames["upper"],
-		numberRow:    {"testnumber", "testno", "testnum", "testnr", "tnum"},
+		numberRow:    {"number", "testnumber", "testno", "testnum", "testnr", "tnum"},
 		conditionRow: {"condition", "conditions", "testcondition", "testconditions", "bias"},
 		otherRow:     {"target", "nominal", "typical", "typ", "description", "mean", "average", "median", "stddev", "stdev", "sigma", "format", "datatype", "role"},
 	} {

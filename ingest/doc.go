@@ -1,0 +1,115 @@
+/*
+Package ingest reads the files of a test floor into lots.
+
+A [Lot] is one lot of wafers in columns: a row a die, sorted by wafer and order
+of test, a column a test. [Read] makes lots of files, [Build] of a [Table] that
+is in memory already; both clean the data in the same way and say in
+[Lot.Findings] what they did. Nothing is dropped in silence: [Tally] accounts for
+every row.
+
+Its rule on bad data: what stands in the way of reading is an [Error] of one
+line, with file, line and remedy; everything else is read as far as nothing
+false is used, and a finding counts it.
+
+# Delimited text
+
+A table has a header row and rows of data. Two shapes are read. Wide, a row a
+die and a column a test:
+
+	LOT,WAFER,DIE_X,DIE_Y,HBIN,BVCBO,ICBO
+	unit,,,,,V,nA
+	lower,,,,,35,
+	upper,,,,,,5
+	A7.1,01,3,-4,1,41.937,1.24
+	A7.1,01,4,-4,5,12.110,873
+
+Long, a row a die and test:
+
+	LOT;WAFER;DIE_X;DIE_Y;TEST;VALUE;UNIT;LOWER;UPPER
+	A7.1;01;3;-4;BVCBO;41,937;V;35;
+	A7.1;01;3;-4;ICBO;1,24;nA;;5
+
+A file is long when it has a column of test names and one of values. In both
+shapes:
+
+  - Fields are separated by comma, semicolon, tab or bar; which one is found
+    from header and first rows. A decimal comma is found too, when the separator
+    is none, or the numbers are quoted. Quotes are those of RFC 4180, so that a
+    quoted field may hold separators and line ends. Blanks around a field do not
+    count.
+  - Lines that start with # are comments; "# lot: A7.1" above the table becomes
+    an attribute of the lot, and gives lot, wafer or product where no column
+    does. Lines of one or two fields above the header are read in the same way.
+    Without any lot, the lot is named after the file.
+  - Text is UTF-8, with or without byte-order mark; what is no UTF-8 is read as
+    Windows-1252. UTF-16 is refused. Files may be packed with gzip or zstd,
+    which is told by content and not by name.
+  - Several files are read one after the other, as if they were one.
+
+# Columns
+
+Names are compared as letters and digits only, without case: "Die X", DIE_X and
+die.x are one. The product file's columns block comes first; the other roles are
+found by the usual names:
+
+	lot            lot, lot id, batch ...
+	wafer          wafer, wafer id, wafer no, slice ...   (needed, or a comment)
+	x, y           x, die x, x coord, col ...; whole numbers, the die's index
+	site           site, site no, dut ...
+	touchdown      touchdown, sequence, test order, index ...
+	hard_bin       hbin, hard bin, bin ...; soft_bin: sbin, soft bin ...
+	pass           pass/fail, passed, status, result ...: P/F, PASS/FAIL, 1/0 ...
+	part           part id, die id, serial ...
+	time           test time, timestamp, date ...
+	test, value    test name, parameter ...; value, reading, result ...
+	unit           unit, units ...
+	lower, upper   lower, lsl, low limit, min ...; upper, usl, high limit, max ...
+
+Of what is left, columns of numbers are tests, and columns of text are
+attributes: of the lot when they never differ in it, else of the wafer when they
+never differ within one, else of the die. So are columns of whole numbers that
+never differ within a wafer and that neither product file, unit nor limits make
+a test, and those with a name that no test has (temperature, probe card).
+
+A unit may stand in the header, "ICBO [nA]" or "ICBO (nA)", and so may the
+conditions, "HFE1 (IC=10uA)". Rows of units, limits, test numbers and conditions
+under the header are known by a word in any column (unit, lower, lsl, min, upper,
+usl, max, test number, condition ...) or by their content: units only, or two
+rows of numbers, with lot, wafer and coordinates empty.
+
+# Values
+
+Values are SI in the lot. The unit is that of the file; else the product file's;
+else none. Where both have one and they do not convert into one another, the
+product file's is used and the finding is severe. Limits are the file's unless
+the product file gives its own.
+
+Numbers are read as the nearest float64, as strconv.ParseFloat reads them. An
+empty cell, a word for no reading (NA, null, -, ...), a word for out of range
+(OVL, ...), an infinite number and text that is no number are missing, each
+counted by itself.
+
+# Cleaning
+
+  - Measurements of the same die, by lot, wafer and coordinates, else by part id,
+    are retests: the last valid one counts (see [Retest]); the others are in
+    [Lot.Earlier]. Rows that repeat another in every field are duplicates.
+  - Numbers that stand for no reading, as -9999 or 9.91e37, become missing.
+  - Values at the tester's clamp are "at least", values at its floor "at most"
+    ([Lot.Censor]); where the product file gives neither, a pile-up at the
+    extreme value tells.
+  - Dice off the wafer, or without coordinates, stay in the lot and are counted.
+
+How each is told is written at the functions of clean_*.go. A file that is cut
+short keeps its whole rows; a last line that broke off is not used.
+
+# How it is fast
+
+One goroutine reads a file in blocks of whole lines and takes its hash; others
+parse the blocks into columns, rows of plain cells by a fast path and all others
+by the full reader, with the same result to the bit. The columns are allocated
+once where the file's size tells how long they get. What is in a block depends
+on the file alone, so that the result does not depend on the number of
+goroutines.
+*/
+package ingest
