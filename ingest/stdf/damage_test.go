@@ -577,10 +577,11 @@ func TestHostileCounts(t *testing.T) {
 			}
 		}
 		// A header that claims 65,535 bytes of a file of a few.
-		for typ := range 256 {
-			file := append(farBytes(big), 0xff, 0xff, byte(typ), 10, 1, 2, 3, 4)
+		for k := range kinds {
+			typ, sub := k.Code()
+			file := append(farBytes(big), 0xff, 0xff, typ, sub, 1, 2, 3, 4)
 			if n := allocated(func() { tryLines(t, file) }); n > 300<<10 {
-				t.Errorf("type %d: %d bytes allocated", typ, n)
+				t.Errorf("%v: %d bytes allocated", k, n)
 			}
 		}
 	}

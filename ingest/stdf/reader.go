@@ -69,7 +69,8 @@ type Reader struct {
 }
 
 const (
-	firstWindow = 128 << 10
+	smallWindow = 8 << 10 // for files that fit it
+	usualWindow = 128 << 10
 	// maxWindow bounds how far ahead headers are looked at. It is the most
 	// that is ever held of a file.
 	maxWindow = 1 << 20
@@ -342,14 +343,24 @@ func (r *Reader) offset() int64 { return r.base + int64(r.pos) }
 func (r *Reader) need(n int) int {
 	n = min(n, maxWindow)
 	for empty := 0; r.end-r.pos < n && !r.eof; {
+		size := len(r.buf)
+		switch {
+		case size == 0:
+			size = smallWindow
+		case r.end == size: // the stream is longer than the window so far
+			size = max(size, usualWindow)
+		}
 		if r.pos > 0 {
 			copy(r.buf, r.buf[r.pos:r.end])
 			r.base += int64(r.pos)
 			r.end -= r.pos
 			r.pos = 0
 		}
-		if n > len(r.buf) || r.end == len(r.buf) {
-			grown := make([]byte, min(max(n, 2*len(r.buf), firstWindow), maxWindow))
+		if n > size || r.end == size {
+			size = min(max(n, 2*size), maxWindow)
+		}
+		if size > len(r.buf) {
+			grown := make([]byte, size)
 			copy(grown, r.buf[:r.end])
 			r.buf = grown
 		}
