@@ -226,6 +226,9 @@ func waferText(ws []reports.Wafer) string {
 			rest = append(rest, w)
 		}
 	}
+	if len(ws) == 1 {
+		return "There is one wafer only, so nothing to compare it with."
+	}
 	if len(low)+len(high) == 0 {
 		s := "No wafer stands out from the rest of the lot"
 		if r := yieldSpan(ws); r != "" {
@@ -240,7 +243,9 @@ func waferText(ws []reports.Wafer) string {
 	if len(high) > 0 {
 		parts = append(parts, standOut(high, "high"))
 	}
-	if r := yieldSpan(rest); r != "" {
+	if r := yieldSpan(rest); r != "" && len(rest) == 1 {
+		parts = append(parts, "The other wafer yields "+r+".")
+	} else if r != "" {
 		parts = append(parts, fmt.Sprintf("The other %d yield %s.", len(rest), r))
 	}
 	return strings.Join(parts, " ")
@@ -335,7 +340,7 @@ func proposalText(d reports.Disposition) string {
 	if d.YieldIfFixed.Estimate.Valid() {
 		s += " Without the cause the lot would yield " + percent(d.YieldIfFixed.Estimate) + " (" + percentRange(d.YieldIfFixed) + ")."
 	} else if d.YieldIfFixed.Why != "" {
-		s += " Yield without the cause: " + notAvailable + ", " + sentence(d.YieldIfFixed.Why)
+		s += " " + sentence("Yield without the cause: "+notAvailable+reason(d.YieldIfFixed.Why))
 	}
 	return s
 }

@@ -93,18 +93,24 @@ func testTable(tests []testPlace) *table {
 			{Name: "Marginal", Numeric: true, Help: "share of this test's fails that fail by little"},
 		},
 	}
-	optional := func(n *int) cell {
-		if n == nil {
+	known := func(n *int, isKnown bool) cell {
+		if n == nil || !isKnown {
 			return text(notAvailable)
 		}
 		return counted(*n)
+	}
+	outside := func(n int, limit reports.Number) cell {
+		if !limit.Valid() {
+			return cell{} // no limit, nothing to be outside of
+		}
+		return counted(n)
 	}
 	for _, p := range tests {
 		t.Rows = append(t.Rows, []cell{
 			{Text: p.Name, Href: "#" + p.Anchor}, {Text: p.Condition, Class: "phrase"}, text(limits(p.Test)),
 			number(percent(p.Loss.First), p.Loss.First), number(percent(p.Loss.Alone), p.Loss.Alone), number(percent(p.Loss.Any), p.Loss.Any),
-			counted(p.Loss.FirstDice), optional(p.Loss.AloneDice), optional(p.Loss.AnyDice),
-			counted(p.LowFails), counted(p.HighFails), number(percent(p.Marginal), p.Marginal),
+			known(&p.Loss.FirstDice, p.Loss.First.Valid()), known(p.Loss.AloneDice, true), known(p.Loss.AnyDice, true),
+			outside(p.LowFails, p.Lower), outside(p.HighFails, p.Upper), number(percent(p.Marginal), p.Marginal),
 		})
 		if t.Note == "" && p.MarginalMeans != "" {
 			t.Note = "Marginal: " + p.MarginalMeans + "."
@@ -184,6 +190,7 @@ func percentX(name string) opts.XAxis {
 	x.AxisLabel.Formatter = "{value} %"
 	x.SplitLine = gridLines(true)
 	x.Min = 0
+	x.SplitNumber = 4
 	return x
 }
 

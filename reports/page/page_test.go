@@ -335,7 +335,7 @@ func TestWafersThatStandOut(t *testing.T) {
 		want   string
 	}{
 		{[]reports.Wafer{w("1", 0.9, ""), w("2", 0.95, "")}, "No wafer stands out from the rest of the lot; all yield 90.0 to 95.0 %."},
-		{[]reports.Wafer{w("1", 0.5, "low"), w("2", 0.95, "")}, "Wafer 1 (50.0 %) stands out low. The other 1 yield 95.0 %."},
+		{[]reports.Wafer{w("1", 0.5, "low"), w("2", 0.95, "")}, "Wafer 1 (50.0 %) stands out low. The other wafer yields 95.0 %."},
 		{[]reports.Wafer{w("1", 0.6, "low"), w("2", 0.5, "low"), w("3", 0.99, "high")}, "Wafers 2 (50.0 %) and 1 (60.0 %) stand out low. Wafer 3 (99.0 %) stands out high."},
 	} {
 		if got := strings.ReplaceAll(waferText(c.wafers), space, " "); got != c.want {

@@ -1,6 +1,10 @@
 package page
 
-import "kneepoint/reports"
+import (
+	"strings"
+
+	"kneepoint/reports"
+)
 
 // record is the last section: what the report stands on.
 type record struct {
@@ -62,7 +66,7 @@ func recordFacts(r *reports.Report) []fact {
 	if r.ProductFile == nil {
 		product += " (triaged without a product file)"
 	}
-	add("Product", product)
+	add("Product", strings.TrimSpace(product))
 	add("Baseline", baselineText(r.Baseline))
 	add("Pass rule", r.Program.PassRule)
 	add("Retest rule", r.Program.RetestRule)

@@ -110,8 +110,10 @@ func drawHistogram(p testPlace) (*chart, error) {
 
 func cardSummary(t *reports.Test) string {
 	parts := []string{}
-	if t.Loss.First.Valid() {
+	if t.Loss.First > 0 {
 		parts = append(parts, "loses "+percent(t.Loss.First)+" first")
+	} else if t.Loss.First == 0 {
+		parts = append(parts, "no die fails it first")
 	}
 	if t.Median.Valid() {
 		parts = append(parts, "median "+withUnit(value(t.Median), t.Unit))
@@ -161,7 +163,12 @@ func lossFacts(t *reports.Test) factGroup {
 	}
 	g.Facts = []fact{
 		{"first", with(t.Loss.First, &t.Loss.FirstDice)}, {"alone", with(t.Loss.Alone, t.Loss.AloneDice)}, {"any", with(t.Loss.Any, t.Loss.AnyDice)},
-		{"below, above limits", count(t.LowFails) + ", " + count(t.HighFails)},
+	}
+	if t.Lower.Valid() {
+		g.Facts = append(g.Facts, fact{"below the lower limit", count(t.LowFails)})
+	}
+	if t.Upper.Valid() {
+		g.Facts = append(g.Facts, fact{"above the upper limit", count(t.HighFails)})
 	}
 	if t.Marginal.Valid() || t.MarginalMeans != "" {
 		g.Facts = append(g.Facts, fact{"marginal fails", percent(t.Marginal)})

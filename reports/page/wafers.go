@@ -1,6 +1,7 @@
 package page
 
 import (
+	"cmp"
 	"fmt"
 	"maps"
 	"slices"
@@ -52,6 +53,9 @@ func waferTable(r *reports.Report, low float64) *table {
 			column{Name: "p", Numeric: true, Help: "chance of so many joins or more, fails scattered at random"},
 			column{Name: "Largest cluster", Numeric: true, Help: "dice of the largest connected group of fails, its centre, and that one's distance from the wafer's"})
 		t.Note = "Joins: failing neighbours of failing dice, against what chance gives; a large z with a small p says that the fails are clustered."
+	}
+	if has.spatialWhy != "" {
+		t.Note = sentence("Join counts and clusters: " + notAvailable + reason(has.spatialWhy))
 	}
 	if has.signatures {
 		t.Columns = append(t.Columns, column{Name: "Pattern", Plain: true})
@@ -106,6 +110,7 @@ func waferRow(w *reports.Wafer, low float64, has extras) []cell {
 // extras are the columns that only some reports have.
 type extras struct {
 	spatial, signatures, group bool
+	spatialWhy                 string // when no wafer has any
 	attributes                 []string
 	proposals                  map[string]string
 }
@@ -115,12 +120,16 @@ func waferExtras(r *reports.Report) extras {
 	names := map[string]bool{}
 	for i := range r.Wafers {
 		w := &r.Wafers[i]
-		e.spatial = e.spatial || w.Spatial.JoinCount != nil || len(w.Spatial.Clusters) > 0 || w.Spatial.Why != ""
+		e.spatial = e.spatial || w.Spatial.JoinCount != nil || len(w.Spatial.Clusters) > 0
+		e.spatialWhy = cmp.Or(e.spatialWhy, w.Spatial.Why)
 		e.signatures = e.signatures || len(w.Signatures) > 0
 		e.group = e.group || w.Group != 0
 		for a := range w.Attributes {
 			names[a] = true
 		}
+	}
+	if e.spatial {
+		e.spatialWhy = ""
 	}
 	e.attributes = slices.Sorted(maps.Keys(names))
 	if len(r.Disposition.Wafers) > 0 {
@@ -194,6 +203,5 @@ func waferChart(r *reports.Report, low float64) (*chart, error) {
 		p.Names, p.Yields, p.StandsLow = append(p.Names, w.ID), append(p.Yields, w.Yield), append(p.StandsLow, w.Stands == "low")
 		p.Rows = append(p.Rows, []string{w.ID, percent(w.Yield.Estimate), percentRange(w.Yield), count(w.Dice), shares(w.MainLoss)})
 	}
-	c, err := p.draw()
-	return &c, err
+	return p.draw()
 }

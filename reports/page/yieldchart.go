@@ -2,6 +2,7 @@ package page
 
 import (
 	"math"
+	"slices"
 
 	"github.com/go-echarts/go-echarts/v2/charts"
 	"github.com/go-echarts/go-echarts/v2/opts"
@@ -37,7 +38,11 @@ func scaleFrom(yields []reports.Interval) float64 {
 	return clamp(math.Floor(10*low-1e-9)/10, 0, 0.9)
 }
 
-func (p yieldChart) draw() (chart, error) {
+// draw returns nil when no yield is known.
+func (p yieldChart) draw() (*chart, error) {
+	if !slices.ContainsFunc(p.Yields, func(y reports.Interval) bool { return y.Estimate.Valid() }) {
+		return nil, nil
+	}
 	c := chart{ID: p.ID, Height: 260, Label: p.Label, Key: []keyEntry{{"dot", "yield with 95" + space + "% interval"}}}
 	var lower, upper, normal, out []any
 	anyLow := false
@@ -77,7 +82,8 @@ func (p yieldChart) draw() (chart, error) {
 	l.AddSeries("interval", segments(lower, upper), lineStyle(colourSpread, 2, ""), withMarks(marks))
 	l.Overlap(s)
 	l.Accept(house{})
-	return c.finish(l.JSON(), p.Columns, p.Rows, rows...)
+	done, err := c.finish(l.JSON(), p.Columns, p.Rows, rows...)
+	return &done, err
 }
 
 func scatter(symbol string, size int, colour string) []charts.SeriesOpts {

@@ -38,7 +38,10 @@ func newZones(r *reports.Report) (zones, error) {
 		if err != nil {
 			return z, err
 		}
-		z.Charts, z.Tables = append(z.Charts, c), append(z.Tables, t)
+		if c != nil {
+			z.Charts = append(z.Charts, *c)
+		}
+		z.Tables = append(z.Tables, t)
 	}
 	return z, nil
 }
