@@ -379,8 +379,8 @@ func farBytes(big bool) []byte {
 var sameRecord = cmp.Options{
 	cmpopts.EquateNaNs(),
 	cmpopts.EquateEmpty(),
-	cmpopts.IgnoreFields(PTR{}, "Test", "about.limits", "about.which", "about", "textRaw", "optRaw"),
-	cmpopts.IgnoreFields(MPR{}, "Test", "about", "pins", "textRaw"),
+	cmpopts.IgnoreFields(PTR{}, "about", "textRaw", "alarmRaw", "optRaw"),
+	cmpopts.IgnoreFields(MPR{}, "about", "pins", "textRaw"),
 	cmpopts.IgnoreFields(FTR{}, "Test", "textRaw"),
 	cmp.Transformer("GDR", func(g *GDR) []Field { return g.Fields() }),
 }

@@ -52,7 +52,7 @@ func Clone(rec Record) Record {
 		return ptr(*m)
 	case *PTR:
 		c := *m
-		c.textRaw, c.optRaw = nil, nil
+		c.textRaw, c.alarmRaw, c.optRaw = nil, nil, nil
 		c.about = m.about.clone()
 		if m.Optional != nil {
 			c.Optional = ptr(*m.Optional)

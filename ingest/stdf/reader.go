@@ -142,12 +142,7 @@ func (r *Reader) Scan() bool {
 			switch {
 			case whole+4 > len(b) || !r.likely(parseHeader(b[whole:], r.c.big)):
 			case h.kind == KindPTR: // most records are: spare them the detours
-				if r.ptr.read(&r.c, b[4:whole]) == exact && h.size >= forms[KindPTR].min {
-					r.at = r.offset()
-					r.pos += whole
-					r.counts[KindPTR]++
-					r.rec, r.kind = &r.ptr, KindPTR
-					r.settlePTR(h.size)
+				if r.quickPTR(b[4:whole]) {
 					return true
 				}
 			case h.kind != Unknown && h.kind <= delivered && r.read(h.kind, b[4:whole]) == exact:
@@ -210,10 +205,7 @@ func (r *Reader) read(k Kind, body []byte) fit {
 // deliver makes the record that was read the current one, and lets it have its
 // effects.
 func (r *Reader) deliver(h header) {
-	r.at = r.offset()
-	r.pos += 4 + h.size
-	r.counts[h.kind]++
-	r.rec, r.kind = r.records[h.kind], h.kind
+	r.advance(h.kind, h.size)
 	r.shapes[h.kind] = r.shape(h.kind)
 	switch h.kind {
 	case KindPTR:
@@ -234,6 +226,14 @@ func (r *Reader) deliver(h header) {
 			r.c.vax = false
 		}
 	}
+}
+
+// advance makes the record at pos the current one.
+func (r *Reader) advance(k Kind, size int) {
+	r.at = r.offset()
+	r.pos += 4 + size
+	r.counts[k]++
+	r.rec, r.kind = r.records[k], k
 }
 
 // test finds the test of a result and counts it.
@@ -258,6 +258,49 @@ func recordText(t *Test, raw []byte, c *coder) string {
 	return c.strings.get(raw)
 }
 
+// quickPTR delivers a PTR that is like one before: of the test that is due, with
+// an optional part that it remembers or none. Such a one needs no further look.
+func (r *Reader) quickPTR(body []byte) bool {
+	m := &r.ptr
+	if len(body) < 12 || !m.cut(&r.c, body) || len(m.alarmRaw) > 0 {
+		return r.plainPTR(body)
+	}
+	t := r.tests.due(KindPTR, m.Number, m.textRaw)
+	if t == nil {
+		return r.plainPTR(body)
+	}
+	m.Optional, m.limits, m.which = nil, t.Limits[t.Default], t.Default
+	if len(m.optRaw) > 0 {
+		s := t.recall(m.optRaw, r.run)
+		if s == nil {
+			return r.plainPTR(body)
+		}
+		m.Optional, m.limits, m.which = &s.opt, s.limits, s.which
+		if m.which != t.Default {
+			t.override(m.which)
+		}
+	}
+	r.tests.last = t
+	r.advance(KindPTR, len(body))
+	m.Test, m.Text, m.Alarm = t, "", ""
+	if len(m.textRaw) > 0 {
+		m.Text = t.text
+	}
+	t.size = len(body)
+	t.Records++
+	return true
+}
+
+// plainPTR delivers any PTR whose fields fit.
+func (r *Reader) plainPTR(body []byte) bool {
+	if r.read(KindPTR, body) != exact {
+		return false
+	}
+	r.advance(KindPTR, len(body))
+	r.settlePTR(len(body))
+	return true
+}
+
 // settlePTR finds the test of a PTR and what limits hold for it.
 func (r *Reader) settlePTR(size int) {
 	m := &r.ptr
@@ -265,9 +308,9 @@ func (r *Reader) settlePTR(size int) {
 	t.size = size
 	m.Test = t
 	m.Text = recordText(t, m.textRaw, &r.c)
-	m.which = t.Default
+	m.Alarm = r.c.strings.get(m.alarmRaw)
+	m.Optional, m.limits, m.which = nil, t.Limits[t.Default], t.Default
 	if len(m.optRaw) == 0 {
-		m.limits = t.Limits[t.Default]
 		return
 	}
 	s := t.recall(m.optRaw, r.run)

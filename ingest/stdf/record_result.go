@@ -16,7 +16,7 @@ type PTR struct {
 	Optional   *Optional // what this record says of its own; nil nothing
 
 	about
-	textRaw, optRaw []byte // views, between reading and taking the record over
+	textRaw, alarmRaw, optRaw []byte // views, between reading and taking the record over
 }
 
 // about is what the Reader knows of a result's test.
@@ -119,47 +119,44 @@ func (m *Optional) formats(c *coder) {
 // read reads what is of fixed length and cuts the rest into views; it touches
 // nothing but the record, as the record may yet turn out to be no record.
 func (m *PTR) read(c *coder, b []byte) fit {
-	m.Optional, m.Test, m.limits = nil, nil, nil
-	m.textRaw, m.optRaw = nil, nil
 	if len(b) < 12 {
+		m.Optional, m.Test, m.limits = nil, nil, nil
+		m.textRaw, m.alarmRaw, m.optRaw = nil, nil, nil
 		c.read(b)
 		m.layout(c)
 		return c.fit()
 	}
+	if !m.cut(c, b) {
+		return overrun
+	}
+	f := fitOptional(m.optRaw)
+	if !clean(m.textRaw) || !clean(m.alarmRaw) {
+		f = max(f, doubtful)
+	}
+	return f
+}
+
+// cut is read for 12 bytes and more without a look at what is in the texts and
+// the optional part; false when a text runs over the end.
+func (m *PTR) cut(c *coder, b []byte) (ok bool) {
 	m.Number = u4(b, c.big)
 	m.Head, m.Site, m.Flag, m.Parm = b[4], b[5], TestFlag(b[6]), ParmFlag(b[7])
 	m.Result = c.float(b[8:])
-	m.Alarm = ""
-	var ok bool
-	if m.textRaw, b, ok = cutText(b[12:]); !ok {
-		return overrun
-	}
-	f := exact
-	if !clean(m.textRaw) {
-		f = doubtful
-	}
-	if len(b) == 0 {
-		return f
+	m.alarmRaw, m.optRaw = nil, nil
+	if m.textRaw, b, ok = cutText(b[12:]); !ok || len(b) == 0 {
+		return ok
 	}
 	if b[0] == 0 {
-		b = b[1:]
-	} else {
-		var alarm []byte
-		if alarm, b, ok = cutText(b); !ok {
-			return overrun
-		}
-		if !clean(alarm) {
-			f = doubtful
-		}
-		m.Alarm = c.strings.get(alarm)
+		m.optRaw = b[1:]
+		return true
 	}
-	m.optRaw = b
-	return max(f, fitOptional(b))
+	m.alarmRaw, m.optRaw, ok = cutText(b)
+	return ok
 }
 
 // fitOptional says how the fields of an Optional lie in b.
 func fitOptional(b []byte) fit {
-	// 1 or 4 bytes each of OPT_FLAG, three scales and two limits
+	// OPT_FLAG and three scales of a byte each, two limits of four
 	if len(b) < 12 {
 		if len(b) <= 4 || len(b) == 8 {
 			return exact

@@ -75,24 +75,31 @@ func (t *Test) is(k Kind, number uint32, text []byte) bool {
 
 // find gives the test of a record, making it when it is new.
 func (r *registry) find(k Kind, number uint32, text []byte) *Test {
-	last := r.last
-	if last != nil {
-		if n := last.next; n != nil && n.is(k, number, text) {
-			r.last = n
-			return n
+	t := r.due(k, number, text)
+	if t == nil {
+		t = r.look(k, number, text)
+		if t.Index < 0 {
+			return t
 		}
-		if last.is(k, number, text) {
-			return last
+		if r.last != nil {
+			r.last.next = t
 		}
 	}
-	t := r.look(k, number, text)
-	if t.Index >= 0 {
-		if last != nil {
-			last.next = t
-		}
-		r.last = t
-	}
+	r.last = t
 	return t
+}
+
+// due gives the test of a record if it is one of the two tried first, else nil.
+func (r *registry) due(k Kind, number uint32, text []byte) *Test {
+	last := r.last
+	switch {
+	case last == nil:
+	case last.next != nil && last.next.is(k, number, text):
+		return last.next
+	case last.is(k, number, text):
+		return last
+	}
+	return nil
 }
 
 func (r *registry) look(k Kind, number uint32, raw []byte) *Test {
