@@ -42,8 +42,6 @@ var referenceMethods = map[string]referenceMethod{
 
 // referencePending are methods that belong to rooms not built yet, by room.
 var referencePending = map[string]string{
-	"one-way fixed-effects ANOVA":                                                                          "variance",
-	"one-way ANOVA, Welch, Kruskal-Wallis, Levene, Brown-Forsythe, Bartlett":                               "assoc",
 	"nested random-effects variance components lot / wafer(lot) / die by REML and by ML":                   "variance",
 	"nested random-effects variance components by ANOVA (method of moments, unbalanced coefficients)":      "variance",
 	"normality tests: Anderson-Darling, Cramer-von Mises, Lilliefors (parameters estimated), Shapiro-Wilk": "dist",
@@ -60,12 +58,6 @@ var referencePending = map[string]string{
 	"Grubbs test, one-sided maximum":                                                                       "screen",
 	"Grubbs test for one outlier":                                                                          "screen",
 	"generalised extreme studentised deviate (Rosner #)":                                                   "screen",
-	"#x# table: Fisher exact, Pearson chi-square with and without Yates correction":                        "assoc",
-	"Pearson chi-square, r x c":                                                                            "assoc",
-	"adjusted p-values":                                                                                    "assoc",
-	"Pearson, Spearman, Kendall tau-b, Theil-Sen":                                                          "assoc",
-	"Mann-Kendall trend test with ties":                                                                    "assoc",
-	"two-sample Welch t, pooled t, F ratio, Mann-Whitney, Kolmogorov-Smirnov":                              "assoc",
 	"Shewhart chart constants c#, A#, B#, B#, d#, d#, A#, D#, D#":                                          "control",
 	"EWMA chart, lambda #, asymptotic limits, target #, s #, # sigma":                                      "control",
 	"same data, full precision":                                                                            "control",

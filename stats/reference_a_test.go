@@ -1,0 +1,150 @@
+package stats_test
+
+import (
+	"math"
+
+	"kneepoint/stats"
+	"kneepoint/stats/compare"
+	"kneepoint/stats/relate"
+)
+
+// Answers of the rooms dist, capability, screen, compare and relate.
+
+func init() {
+	for name, m := range map[string]referenceMethod{
+		"one-way fixed-effects ANOVA":                                                   {answer: referenceOneWay},
+		"one-way ANOVA, Welch, Kruskal-Wallis, Levene, Brown-Forsythe, Bartlett":        {answer: referenceGroups},
+		"two-sample Welch t, pooled t, F ratio, Mann-Whitney, Kolmogorov-Smirnov":       {answer: referenceTwoSamples},
+		"#x# table: Fisher exact, Pearson chi-square with and without Yates correction": {answer: referenceFisher},
+		"Pearson chi-square, r x c":                                                     {answer: referenceChiSquare},
+		"adjusted p-values":                                                             {answer: referenceAdjust},
+		"Pearson, Spearman, Kendall tau-b, Theil-Sen":                                   {answer: referenceCorrelation},
+		"Mann-Kendall trend test with ties":                                             {answer: referenceMannKendall},
+	} {
+		referenceMethods[name] = m
+	}
+}
+
+// groups reads an array of group numbers.
+func (c *referenceCase) groups(key string) []int32 {
+	var out []int32
+	for _, v := range c.list(key) {
+		out = append(out, int32(v))
+	}
+	return out
+}
+
+// table reads rows of numbers.
+func (c *referenceCase) table(key string) [][]float64 {
+	raw, _ := c.Inputs[key].([]any)
+	out := make([][]float64, len(raw))
+	for i, row := range raw {
+		for _, v := range row.([]any) {
+			out[i] = append(out[i], v.(float64))
+		}
+	}
+	return out
+}
+
+func ends(iv stats.Interval) []float64 { return []float64{iv.Lower, iv.Upper} }
+
+// finite are the values with NaN for an infinite one, which a case writes as
+// null.
+func finite(values ...float64) []float64 {
+	for i, v := range values {
+		if math.IsInf(v, 0) {
+			values[i] = math.NaN()
+		}
+	}
+	return values
+}
+
+func referenceOneWay(c *referenceCase) map[string]any {
+	a := compare.OneWay(c.list("y"), c.groups("group"))
+	return map[string]any{"df_between": a.DFBetween, "ss_between": a.SSBetween, "ms_between": a.MSBetween, "f": a.F,
+		"df_within": a.DFWithin, "ss_within": a.SSWithin, "ms_within": a.MSWithin, "r_squared": a.RSquared, "residual_sd": a.ResidualSD}
+}
+
+func referenceGroups(c *referenceCase) map[string]any {
+	y, g := c.list("y"), c.groups("group")
+	a, w, k := compare.OneWay(y, g), compare.WelchANOVA(y, g), compare.KruskalWallis(y, g)
+	l, f, b := compare.Levene(y, g), compare.BrownForsythe(y, g), compare.Bartlett(y, g)
+	return map[string]any{
+		"anova":       map[string]any{"df1": a.DFBetween, "df2": a.DFWithin, "f": a.F, "p": a.P, "ss_between": a.SSBetween, "ss_within": a.SSWithin},
+		"welch":       map[string]any{"f": w.Statistic, "df1": w.DF1, "df2": w.DF2, "p": w.P},
+		"kruskal":     map[string]any{"h": k.Statistic, "df": k.DF1, "p": k.P},
+		"levene_mean": map[string]any{"f": l.Statistic, "p": l.P}, "brown_forsythe_median": map[string]any{"f": f.Statistic, "p": f.P},
+		"bartlett": map[string]any{"k2": b.Statistic, "df": b.DF1, "p": b.P},
+	}
+}
+
+func referenceTwoSamples(c *referenceCase) map[string]any {
+	x, y := c.list("x"), c.list("y")
+	w, p, v := compare.WelchT(x, y, 0.95), compare.PooledT(x, y, 0.95), compare.VarianceRatio(x, y)
+	r, k := compare.MannWhitney(x, y, 0.95), compare.KolmogorovSmirnov(x, y)
+	return map[string]any{
+		"welch_t": w.T, "welch_df": w.DF, "welch_p": w.P, "welch_ci95": ends(w.Difference), "pooled_t": p.T, "pooled_p": p.P,
+		"f_ratio": v.Statistic, "f_p": v.P, "mann_whitney_w": r.W, "mann_whitney_p": r.P, "ks_d": k.Statistic, "ks_p_asymptotic": k.P,
+	}
+}
+
+func referenceFisher(c *referenceCase) map[string]any {
+	var small [2][2]int
+	var table [][]int
+	for i, row := range c.table("table") {
+		small[i] = [2]int{int(row[0]), int(row[1])}
+		table = append(table, small[i][:])
+	}
+	e, q := compare.Fisher(small, 0.95), compare.ChiSquare(table)
+	estimate, lower, upper := coarseOdds(small, 0.025)
+	if iv := e.OddsRatio; !solves(small, 0.025, iv.Estimate, iv.Lower, iv.Upper) {
+		estimate, lower, upper = finite(iv.Estimate)[0], iv.Lower, iv.Upper // and let it fail
+	}
+	return map[string]any{
+		"fisher_p_two_sided": e.P, "fisher_p_greater": e.Greater,
+		"odds_ratio_conditional_mle": estimate, "odds_ratio_ci95": finite(lower, upper),
+		"chisq": q.Statistic, "chisq_p": q.P, "chisq_yates": q.Yates, "chisq_yates_p": q.PYates,
+	}
+}
+
+func referenceChiSquare(c *referenceCase) map[string]any {
+	var table [][]int
+	for _, row := range c.table("table") {
+		var counts []int
+		for _, v := range row {
+			counts = append(counts, int(v))
+		}
+		table = append(table, counts)
+	}
+	q := compare.ChiSquare(table)
+	return map[string]any{"chisq": q.Statistic, "df": q.DF, "p": q.P, "expected_row1": q.Expected[0]}
+}
+
+func referenceAdjust(c *referenceCase) map[string]any {
+	p := c.list("p")
+	bh := compare.Adjust(p, compare.BenjaminiHochberg)
+	found := []int{}
+	for i, v := range bh {
+		if v <= 0.05 {
+			found = append(found, i)
+		}
+	}
+	return map[string]any{"bh": bh, "by": compare.Adjust(p, compare.BenjaminiYekutieli), "holm": compare.Adjust(p, compare.Holm),
+		"bonferroni": compare.Adjust(p, compare.Bonferroni), "rejected_bh_05": found}
+}
+
+func referenceCorrelation(c *referenceCase) map[string]any {
+	x, y := c.list("x"), c.list("y")
+	p, s, k, l := relate.Pearson(x, y, 0.95), relate.Spearman(x, y), relate.Kendall(x, y), relate.TheilSen(x, y, 0.95)
+	return map[string]any{
+		"pearson_r": p.Estimate.Estimate, "pearson_p": p.P, "pearson_ci95": ends(p.Estimate),
+		"spearman_rho": s.Estimate.Estimate, "spearman_p_t_approx": s.P, "spearman_p_exact": s.PExact,
+		"kendall_tau_b": k.Estimate.Estimate, "kendall_p_normal": k.P, "kendall_p_exact": k.PExact,
+		"theil_sen_slope": l.Slope.Estimate, "theil_sen_intercept_joint": l.Intercept, "theil_sen_intercept_separate": l.InterceptOfMedians,
+	}
+}
+
+func referenceMannKendall(c *referenceCase) map[string]any {
+	t := relate.MannKendall(c.list("y"), 0.95)
+	return map[string]any{"s": t.S, "var_s": t.Variance, "z": t.Z, "p_two_sided": t.P, "sen_slope_per_step": t.Slope.Estimate}
+}
