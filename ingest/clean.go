@@ -26,20 +26,69 @@ func (d *draft) eachTest(opt *Options, work func(test int) []Finding) {
 	}
 }
 
-// oddCells counts the cells of one test that were no numbers, and makes plain
-// NaN of them.
-func (d *draft) oddCells(test int) []Finding {
-	counts := map[status]int{}
-	v := d.values[test]
+// extremes are what one pass tells of a column. Most columns hold nothing that
+// needs a closer look, and this is how that is known.
+type extremes struct {
+	n             int // values
+	least, most   float64
+	nLeast, nMost int // copies of them
+}
+
+// survey takes that pass; odd, if not nil, counts the cells that were no
+// numbers, and makes plain NaN of them.
+func survey(v []float64, odd map[status]int) extremes {
+	e := extremes{least: math.Inf(1), most: math.Inf(-1)}
 	for i, x := range v {
-		if x == x {
+		if x != x {
+			if odd != nil {
+				if st := nanStatus(x); st != cellEmpty {
+					odd[st]++
+				}
+				v[i] = math.NaN()
+			}
 			continue
 		}
-		if st := nanStatus(x); st != cellEmpty {
-			counts[st]++
+		e.n++
+		if x <= e.least {
+			if x < e.least {
+				e.least, e.nLeast = x, 0
+			}
+			e.nLeast++
 		}
-		v[i] = math.NaN()
+		if x >= e.most {
+			if x > e.most {
+				e.most, e.nMost = x, 0
+			}
+			e.nMost++
+		}
 	}
+	return e
+}
+
+// numbers is the first look at a column: odd cells and sentinels.
+func (d *draft) numbers(test int) []Finding {
+	odd := map[status]int{}
+	d.seen[test] = survey(d.values[test], odd)
+	findings := d.oddCells(test, odd)
+	if s := d.sentinels(test); len(s) > 0 {
+		d.seen[test] = survey(d.values[test], nil)
+		findings = append(findings, s...)
+	}
+	return findings
+}
+
+// bounds is the second look, at the dice that count: missing and censored
+// values.
+func (d *draft) bounds(test int) ([]int8, []Finding) {
+	if d.compacted {
+		d.seen[test] = survey(d.values[test], nil)
+	}
+	marks, findings := d.clamps(test)
+	return marks, append(d.missing(test), findings...)
+}
+
+// oddCells tells of the cells of one test that were no numbers.
+func (d *draft) oddCells(test int, counts map[status]int) []Finding {
 	var findings []Finding
 	for _, k := range []struct {
 		kind      status
@@ -71,12 +120,7 @@ func (d *draft) oddCells(test int) []Finding {
 
 // missing counts the readings of one test that are missing in the end.
 func (d *draft) missing(test int) []Finding {
-	n := 0
-	for _, v := range d.values[test] {
-		if v != v {
-			n++
-		}
-	}
+	n := d.n - d.seen[test].n
 	if n == 0 {
 		return nil
 	}

@@ -41,21 +41,12 @@ const (
 // the probability; data on fewer than ten levels are taken for discrete and
 // never judged. The rule is this house's own, checked by simulation in its
 // tests.
-func findPile(v []float64, sign float64) (pile, bool) {
-	extreme, n, rest := math.Inf(-1), 0, 0
-	for _, x := range v {
-		x *= sign
-		switch {
-		case x != x:
-		case x > extreme:
-			rest += n
-			extreme, n = x, 1
-		case x == extreme:
-			n++
-		default:
-			rest++
-		}
+func findPile(v []float64, e extremes, sign float64) (pile, bool) {
+	extreme, n := e.most, e.nMost
+	if sign < 0 {
+		extreme, n = -e.least, e.nLeast
 	}
+	rest := e.n - n
 	if n < pileLeast || rest < pileLevels {
 		return pile{}, false
 	}
@@ -163,7 +154,7 @@ func distinct(v []float64, not float64) int {
 // clamp and floor count first; where it gives none, or the data contradict it,
 // a pile-up at the extreme value does.
 func (d *draft) clamps(test int) ([]int8, []Finding) {
-	c := clamping{v: d.values[test], info: &d.tests[test]}
+	c := clamping{v: d.values[test], e: d.seen[test], info: &d.tests[test]}
 	c.known(1, c.info.clamp, "clamp")
 	c.known(-1, c.info.floor, "floor")
 	if c.up == 0 {
@@ -180,6 +171,7 @@ func (d *draft) clamps(test int) ([]int8, []Finding) {
 
 type clamping struct {
 	v        []float64
+	e        extremes
 	info     *testInfo
 	mark     []int8
 	up, down int
@@ -197,6 +189,9 @@ func (c *clamping) known(sign int8, bound float64, what string) {
 	}
 	s := float64(sign)
 	tolerance := near * math.Abs(bound)
+	if sign > 0 && c.e.most-bound < -tolerance || sign < 0 && c.e.least-bound > tolerance {
+		return
+	}
 	at, beyond := 0, 0
 	for _, x := range c.v {
 		if s*(x-bound) >= -tolerance {
@@ -236,7 +231,7 @@ func (c *clamping) need() {
 
 // found marks a pile-up.
 func (c *clamping) found(sign int8) {
-	p, ok := findPile(c.v, float64(sign))
+	p, ok := findPile(c.v, c.e, float64(sign))
 	if !ok {
 		return
 	}
@@ -267,9 +262,28 @@ func (c *clamping) report(sign int8, n int, value float64, why string) {
 		Text: fmt.Sprintf("test %s: %d %s at %s, %s; they count as %s that", c.info.name, n, plural(n, "reading stands", "readings stand"), show(value, c.info.unit), why, bound)})
 }
 
+// mostlyOne looks at an even sample of the column, whether it may be mostly one
+// value.
+func (c *clamping) mostlyOne() bool {
+	const looks = 200
+	counts := map[float64]int{}
+	n, most := 0, 0
+	for i := 0; i < len(c.v); i += max(1, len(c.v)/looks) {
+		if x := c.v[i]; x == x {
+			n++
+			counts[x]++
+			most = max(most, counts[x])
+		}
+	}
+	return 2*most > n
+}
+
 // stuck notes a column in which nearly all readings are one value.
 func (c *clamping) stuck() {
 	const least, share = 20, 0.9
+	if c.e.nLeast < c.e.n/2 && c.e.nMost < c.e.n/2 && !c.mostlyOne() {
+		return
+	}
 	var one float64
 	lead, n := 0, 0
 	for _, x := range c.v { // majority vote of Boyer and Moore (1981)

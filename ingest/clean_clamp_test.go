@@ -57,7 +57,7 @@ func TestNoPileWithoutClamp(t *testing.T) {
 					v[i] = draw()
 				}
 				for _, sign := range []float64{1, -1} {
-					if p, ok := findPile(v, sign); ok {
+					if p, ok := findPile(v, survey(v, nil), sign); ok {
 						t.Errorf("%s, n %d: pile of %d at %v, expected %.3g", name, n, p.n, p.value, p.expected)
 					}
 				}
@@ -97,16 +97,16 @@ func TestPileAtClamp(t *testing.T) {
 				want++
 			}
 		}
-		if p, ok := findPile(v, 1); !ok || p.n != want || p.value != c.clamp {
+		if p, ok := findPile(v, survey(v, nil), 1); !ok || p.n != want || p.value != c.clamp {
 			t.Errorf("%s: found %v %+v, want %d at %v", c.name, ok, p, want, c.clamp)
 		}
 		for i := range v {
 			v[i] = -v[i]
 		}
-		if p, ok := findPile(v, -1); !ok || p.n != want || p.value != -c.clamp {
+		if p, ok := findPile(v, survey(v, nil), -1); !ok || p.n != want || p.value != -c.clamp {
 			t.Errorf("%s, floor: found %v %+v, want %d at %v", c.name, ok, p, want, -c.clamp)
 		}
-		if p, ok := findPile(v, 1); ok {
+		if p, ok := findPile(v, survey(v, nil), 1); ok {
 			t.Errorf("%s: pile at the other end: %+v", c.name, p)
 		}
 	}

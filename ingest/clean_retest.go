@@ -10,17 +10,13 @@ import (
 
 // retests decides which measurement of each die counts. It returns for every
 // measurement the place of the one that counts for its die: itself, another
-// one, or duplicateRow for an exact copy.
+// one, or duplicateRow for an exact copy. Nil says itself for all.
 //
 // Measurements belong to the same die when they have the same coordinates on
 // the same wafer; without coordinates, the same part id. A measurement is valid
 // when it has at least one value or a bin.
 func (d *draft) retests(opt *Options) []int32 {
-	keep := make([]int32, d.n)
-	for i := range keep {
-		keep[i] = int32(i)
-	}
-	s := &retesting{d: d, keep: keep, policy: opt.Retest, bins: config.Bins{}}
+	s := &retesting{d: d, policy: opt.Retest, bins: config.Bins{}}
 	if opt.Product != nil {
 		s.bins = opt.Product.Bins
 	}
@@ -28,7 +24,7 @@ func (d *draft) retests(opt *Options) []int32 {
 		d.sameDice(w.Lo, w.Hi, s.die)
 	}
 	s.report()
-	return keep
+	return s.keep
 }
 
 // duplicateRow marks a measurement that repeats another exactly.
@@ -48,6 +44,12 @@ type retesting struct {
 // die settles one die that has several measurements, given in order of rows.
 func (s *retesting) die(rows []int32) {
 	d := s.d
+	if s.keep == nil {
+		s.keep = make([]int32, d.n)
+		for i := range s.keep {
+			s.keep[i] = int32(i)
+		}
+	}
 	if d.rank != nil {
 		slices.SortStableFunc(rows, func(a, b int32) int { return cmpInt32(d.rank[a], d.rank[b]) })
 	}
@@ -368,7 +370,7 @@ func (d *draft) compact(keep []int32, n int) {
 	for t := range d.values {
 		d.values[t] = kept(d.values[t], keep, n)
 	}
-	d.n = n
+	d.n, d.compacted = n, true
 }
 
 // kept copies the rows that stay into a column of their own.

@@ -31,22 +31,18 @@ type sentinel struct {
 // the distance between these, with fewer other values that far out than there
 // are copies of it; or when it is negative and all others are not. The tester's
 // clamp, where the product file gives one, is none.
-func findSentinels(v []float64, units []config.Unit, clamp, floor float64) []sentinel {
-	candidates := candidateValues(units)
-	least, huge := math.Inf(1), math.Inf(1)
-	for _, c := range candidates {
-		least = math.Min(least, math.Abs(c))
-	}
-	for _, u := range units {
-		huge = math.Min(huge, u.ToSI(hugeValue))
+func findSentinels(v []float64, e extremes, units []config.Unit, clamp, floor float64) []sentinel {
+	candidates, huge := candidateValues(units)
+	low, high := nearestZero(candidates)
+	if e.most < high && e.least > low {
+		return nil
 	}
 	counts := map[float64]int{}
 	for _, x := range v {
-		a := math.Abs(x)
-		if !(a >= least) {
+		if !(x >= high || x <= low) {
 			continue
 		}
-		if a >= huge {
+		if math.Abs(x) >= huge {
 			counts[x]++
 		} else if _, ok := slices.BinarySearch(candidates, x); ok {
 			counts[x]++
@@ -95,16 +91,23 @@ func compareFloat(a, b float64) int {
 }
 
 // candidateValues are the sentinels in SI, for every unit that a file gives the
-// test, sorted.
-func candidateValues(units []config.Unit) []float64 {
-	var c []float64
+// test, sorted; huge is the hugeValue of the smallest of these units.
+func candidateValues(units []config.Unit) (c []float64, huge float64) {
+	huge = math.Inf(1)
 	for _, u := range units {
 		for _, s := range sentinelNumbers {
 			c = append(c, u.ToSI(s))
 		}
+		huge = math.Min(huge, u.ToSI(hugeValue))
 	}
 	slices.Sort(c)
-	return slices.Compact(c)
+	return slices.Compact(c), huge
+}
+
+// nearestZero gives the negative and the positive candidate nearest to zero.
+func nearestZero(sorted []float64) (low, high float64) {
+	i, _ := slices.BinarySearch(sorted, 0)
+	return sorted[i-1], sorted[i]
 }
 
 // valueBody is the body of a column without the candidates.
@@ -165,7 +168,7 @@ func (b *valueBody) farOut(x float64, n int, v []float64, not map[float64]int) b
 func (d *draft) sentinels(test int) []Finding {
 	info := &d.tests[test]
 	var findings []Finding
-	for _, s := range findSentinels(d.values[test], info.fileUnits(), info.clamp, info.floor) {
+	for _, s := range findSentinels(d.values[test], d.seen[test], info.fileUnits(), info.clamp, info.floor) {
 		u := info.fileUnits()[0]
 		findings = append(findings, Finding{Code: "sentinel", Severity: Warning, Dice: s.n,
 			Text:   fmt.Sprintf("test %s: %d %s %s, a number that stands for no reading; taken as missing", info.name, s.n, plural(s.n, "reading is", "readings are"), show(s.value, u)),

@@ -187,7 +187,7 @@ func TestSentinels(t *testing.T) {
 	} {
 		v := append([]float64{}, c.v...)
 		got := 0
-		for _, s := range findSentinels(v, []config.Unit{c.unit}, c.clamp, math.NaN()) {
+		for _, s := range findSentinels(v, survey(v, nil), []config.Unit{c.unit}, c.clamp, math.NaN()) {
 			got += s.n
 		}
 		missing := 0

@@ -16,7 +16,8 @@ func (d *draft) lot(opt *Options) *Lot {
 	d.ownOrder = d.ints[intTouchdown] != nil
 	d.touchdowns()
 	d.orderTests()
-	d.eachTest(opt, func(i int) []Finding { return append(d.oddCells(i), d.sentinels(i)...) })
+	d.seen = make([]extremes, len(d.tests))
+	d.eachTest(opt, d.numbers)
 	keep := d.retests(opt)
 	l := &Lot{id: d.id, inputs: d.inputs, wafers: d.wafers}
 	d.attributes(l)
@@ -29,9 +30,9 @@ func (d *draft) lot(opt *Options) *Lot {
 	d.places()
 	censor := make([][]int8, len(d.tests))
 	d.eachTest(opt, func(i int) []Finding {
-		marks, findings := d.clamps(i)
+		marks, findings := d.bounds(i)
 		censor[i] = marks
-		return append(d.missing(i), findings...)
+		return findings
 	})
 	l.cols = columns{n: d.n, site: int32Column(d.ints[intSite]), touchdown: int32Column(d.ints[intTouchdown]),
 		hardBin: int32Column(d.ints[intHardBin]), softBin: int32Column(d.ints[intSoftBin]), pass: int8Column(d.pass)}

@@ -38,6 +38,9 @@ type draft struct {
 	ownOrder  bool // the file has touchdown numbers
 
 	measurements, duplicates int
+
+	seen      []extremes // by test
+	compacted bool       // measurements that do not count are out of the columns
 }
 
 // flatInts joins a whole-number column over all chunks; nil when none has it.
