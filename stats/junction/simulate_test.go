@@ -1,0 +1,215 @@
+package junction
+
+import (
+	"math"
+	"math/rand/v2"
+	"os"
+	"testing"
+)
+
+// world is another fab's silicon: the forward model with its beliefs changed, so
+// that inversion is never tried on the formulas it uses. Drawn per product.
+type world struct {
+	dev     Device
+	nat     nature
+	nominal *die
+	knows   Device // what the product file says
+}
+
+func normal(r *rand.Rand, sigma float64) float64 {
+	return sigma * math.Max(-3.5, math.Min(3.5, r.NormFloat64()))
+}
+
+func newWorld(r *rand.Rand, product Device) *world {
+	w := &world{dev: product, knows: product, nat: natural}
+	f := func(v *float64, sigma float64) { *v *= math.Exp(normal(r, sigma)) }
+	f(&w.nat.fieldScale, 0.05) // 7 % in BV
+	f(&w.nat.narrowing, 0.1)
+	f(&w.nat.tunnel, 0.15)
+	f(&w.nat.overlay, 0.3)
+	f(&w.nat.recombine, 0.5)
+	w.nat.spread = 0.6 + 0.6*r.Float64()
+	if r.Float64() < 0.3 {
+		w.nat.base = exponentialBase
+	}
+	// The fab's typical lot is not quite what the product file says.
+	f(&w.dev.EpiThicknessUM, 0.01)
+	f(&w.dev.EpiDopingCM3, 0.015)
+	f(&w.dev.BaseSurfaceCM3, 0.15)
+	f(&w.dev.UpDiffusionUM, 0.1)
+	f(&w.dev.StrayF, 0.3)
+	f(&w.dev.FixedOhm, 0.3)
+	f(&w.dev.Modulation, 0.25)
+	f(&w.dev.LifetimeS, 0.7)
+	f(&w.dev.OxideChargeCM2, 0.5)
+	w.nominal = w.dev.make(&Process{}, &w.nat)
+	return w
+}
+
+// truthFrom draws a process from a prior; thickness and doping may be set instead.
+func truthFrom(r *rand.Rand, prior Prior) Process {
+	var p Process
+	for i := range p {
+		p[i] = normal(r, prior.Sigma[i])
+	}
+	return p
+}
+
+// net is the log ratio of net thickness at a process point.
+func (w *world) net(p *Process) float64 {
+	x := w.dev.make(p, &w.nat)
+	return math.Log(x.prof.net() / w.nominal.prof.net())
+}
+
+// levels are the baseline medians of tests in this world.
+func (w *world) levels(tests []Test) []Test {
+	out := append([]Test(nil), tests...)
+	for i := range out {
+		t := out[i].biased()
+		out[i].Baseline.Median = w.nominal.value(&t)
+	}
+	return out
+}
+
+// read measures a process point: the world's own ratio and the tester's error.
+func (w *world) read(r *rand.Rand, p *Process, tests []Test) []Reading {
+	x := w.dev.make(p, &w.nat)
+	var out []Reading
+	for i := range tests {
+		t := tests[i].biased()
+		s := UsualSigma(t.Measures)
+		v := math.Log(x.value(&t) / w.nominal.value(&t))
+		if t.Measures == BVceo || t.Measures == BVcbo {
+			// A world of its own: the response is not quite the law's.
+			v *= 1 + 0.03*w.nat.spread - 0.027
+		}
+		out = append(out, Reading{Test: i, LogRatio: v + normal(r, s), Sigma: s})
+	}
+	return out
+}
+
+// thin, thick and between: products of every regime.
+func products() map[string]Device {
+	refs, err := references("../../testdata/physics")
+	if err != nil {
+		panic(err)
+	}
+	knee := refs["B"].device()
+	knee.EpiThicknessUM, knee.EpiDopingCM3 = 3.05, 4e15
+	return map[string]Device{"A": refs["A"].device(), "B": refs["B"].device(), "knee": knee}
+}
+
+func testsFor(product, set string) []Test {
+	v := 5.0
+	hi := 30.0
+	leak := 15.0
+	if product == "A" {
+		v, hi, leak = 10, 50, 30
+	}
+	seven := []Test{{Name: "BVCBO", Measures: BVcbo}, {Name: "BVCEO", Measures: BVceo, Current: 2e-3}, {Name: "BVEBO", Measures: BVebo},
+		{Name: "ICBO", Measures: Icbo, Voltage: leak}, {Name: "HFE", Measures: HFE}, {Name: "VCESAT", Measures: Vcesat}, {Name: "COB", Measures: Cob, Voltage: v}}
+	switch set {
+	case "two":
+		return seven[:2]
+	case "cobhi":
+		return append(seven, Test{Name: "COBHI", Measures: Cob, Voltage: hi})
+	case "rc":
+		return append(seven, Test{Name: "RC", Measures: Rc})
+	}
+	return seven
+}
+
+// score collects what a run of inversions got right.
+type score struct {
+	n, covered, seen, seenCovered, blind, blindWrong int
+	errors                                           []float64
+	share                                            float64
+}
+
+func (s *score) add(truth float64, q Quantity) {
+	s.n++
+	s.share += q.Share
+	if q.WithPrior.Lower <= truth && truth <= q.WithPrior.Upper {
+		s.covered++
+	}
+	switch q.Sight {
+	case Seen:
+		s.seen++
+		s.errors = append(s.errors, math.Abs(q.WithPrior.Estimate/truth-1))
+		if q.DataOnly.Lower <= truth && truth <= q.DataOnly.Upper {
+			s.seenCovered++
+		}
+	case Blind:
+		s.blind++
+		if q.Share < blindShare || !math.IsNaN(q.DataOnly.Estimate) {
+			s.blindWrong++
+		}
+	}
+}
+
+func (s *score) medianError() float64 { return median(s.errors) }
+
+func median(x []float64) float64 {
+	if len(x) == 0 {
+		return math.NaN()
+	}
+	c := append([]float64(nil), x...)
+	for i := range c { // small: insertion sort
+		for j := i; j > 0 && c[j] < c[j-1]; j-- {
+			c[j], c[j-1] = c[j-1], c[j]
+		}
+	}
+	return c[len(c)/2]
+}
+
+// simulate draws worlds and truths and inverts them.
+func simulate(t *testing.T, product, set string, worlds, truths int, pull float64, seed uint64) (w, n score, regimes map[Regime]int) {
+	t.Helper()
+	r := rand.New(rand.NewPCG(seed, 77))
+	prior := UsualPrior()
+	regimes = map[Regime]int{}
+	dev := products()[product]
+	for range worlds {
+		wd := newWorld(r, dev)
+		tests := wd.levels(testsFor(product, set))
+		m, err := NewModel(wd.knows, tests...)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for range truths {
+			p := truthFrom(r, prior)
+			if pull != 0 {
+				p[EpiThickness] = pull * prior.Sigma[EpiThickness] * float64(1-2*r.IntN(2))
+				p[EpiDoping] = pull * prior.Sigma[EpiDoping] * float64(1-2*r.IntN(2))
+				p[UpDiffusion] = math.Copysign(math.Min(math.Abs(p[UpDiffusion]), prior.Sigma[UpDiffusion]), -p[EpiThickness])
+			}
+			got := m.Invert(wd.read(r, &p, m.Tests), prior)
+			w.add(math.Exp(wd.net(&p))*m.NetThickness(), got.NetThickness)
+			n.add(math.Exp(p[EpiDoping])*m.Device.EpiDopingCM3, got.Doping)
+			regimes[got.Regime]++
+		}
+	}
+	return w, n, regimes
+}
+
+func scale(short, long int) int {
+	if os.Getenv("KNEEPOINT_LONG") != "" {
+		return long
+	}
+	return short
+}
+
+func TestInvertCoverage(t *testing.T) {
+	for _, product := range []string{"A", "B", "knee"} {
+		for _, set := range []string{"two", "seven", "cobhi", "rc"} {
+			w, n, reg := simulate(t, product, set, scale(4, 30), scale(15, 40), 0, 5)
+			report := func(name string, s score) {
+				t.Logf("%-4s %-6s %-9s n %4d cover %5.3f  share %.2f  seen %4d data-only cover %5.3f  median error %.4f  blind %d (%d wrong)",
+					product, set, name, s.n, float64(s.covered)/float64(s.n), s.share/float64(s.n), s.seen, float64(s.seenCovered)/float64(s.seen), s.medianError(), s.blind, s.blindWrong)
+			}
+			report("thickness", w)
+			report("doping", n)
+			t.Log(reg)
+		}
+	}
+}
