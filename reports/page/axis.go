@@ -37,12 +37,12 @@ func (s *span) include(v float64) bool {
 // pad adds a margin on both sides.
 func (s *span) pad(share float64) {
 	if s.Log {
-		f := math.Pow(s.High/s.Low, share)
+		f := max(math.Pow(s.High/s.Low, share), 1.05)
 		s.Low, s.High = s.Low/f, s.High*f
 		return
 	}
 	d := share * (s.High - s.Low)
-	if d == 0 {
+	if d == 0 { // one value only
 		d = max(math.Abs(s.High)*0.05, 1e-12)
 	}
 	s.Low, s.High = s.Low-d, s.High+d

@@ -321,7 +321,8 @@ func causeFinding(causes []reports.Cause) finding {
 		}
 	}
 	if len(likely) == 0 {
-		f.Text = sentence(causeName(causes[0]) + "; its probability is " + notAvailable + reason(causes[0].Why))
+		f.Name = "Cause"
+		f.Text = sentence("probabilities are " + notAvailable + reason(causes[0].Why))
 		return f
 	}
 	f.Text = sentence(list(likely))

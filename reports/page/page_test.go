@@ -294,7 +294,7 @@ func TestEmptyListsLeaveNoHeadings(t *testing.T) {
 func TestWhyStandsWhereANumberIsMissing(t *testing.T) {
 	text := shown(tree(t, render(t, blankReport())))
 	for _, want := range []string{
-		"n/a: too few dice", "n/a: no coordinates", "No readings.", "Capability n/a: fewer than 30 dice", "unexplained; its probability is n/a: the diagnosis needs a product file",
+		"n/a: too few dice", "n/a: no coordinates", "No readings.", "Capability n/a: fewer than 30 dice", "Probabilities are n/a: the diagnosis needs a product file.",
 	} {
 		if !strings.Contains(strings.ToLower(text), strings.ToLower(want)) {
 			t.Errorf("the text lacks %q", want)

@@ -24,7 +24,7 @@ func histogram(p testPlace) (*chart, error) {
 	width := s // of one bin beyond either end, where the steps return to zero
 	c := chart{ID: p.Anchor + "-histogram", Height: 240, LogCounts: true, Numbers: "Histogram of " + t.Name + ", counts by bin",
 		Label: "Histogram of " + t.Name + ", dice that pass and dice that fail, with limits and median. The numbers are in the table below.",
-		Key:   []keyEntry{{"pass", "pass"}, {"fail", "fail any test"}}}
+		Key:   []keyEntry{{"pass", "dice that pass"}, {"fail", "dice that fail any test"}}}
 	marks := limitMarks(t, &s, &c)
 	s.pad(0.03)
 	pass, all, rows := steps(h, width)
@@ -34,7 +34,7 @@ func histogram(p testPlace) (*chart, error) {
 		x.Name += ", log scale"
 	}
 	x.Min, x.Max = plot(reports.Number(s.Low)), plot(reports.Number(s.High))
-	y := valueY("dice")
+	y := valueY("")
 	y.Min = 0
 	l := charts.NewLine()
 	l.SetGlobalOptions(append(globals(c.ID, c.Label, "line", opts.Grid{Left: "8", Right: "16", Top: "44", Bottom: "40"}), charts.WithXAxisOpts(x), charts.WithYAxisOpts(y))...)
@@ -144,18 +144,10 @@ func strip(p testPlace) (*chart, error) {
 	if len(t.ByWafer) == 0 {
 		return nil, nil
 	}
-	s := span{Low: math.Inf(1), High: math.Inf(-1)}
-	for _, w := range t.ByWafer {
-		for _, v := range []reports.Number{w.Q05, w.Median, w.Q95} {
-			if v.Valid() {
-				s.Low, s.High = min(s.Low, float64(v)), max(s.High, float64(v))
-			}
-		}
-	}
-	if s.Low > s.High {
+	s, cut, ok := stripSpan(t)
+	if !ok {
 		return nil, nil
 	}
-	s.Log = t.Histogram != nil && t.Histogram.Scale == "log" && s.Low > 0
 	c := chart{ID: p.Anchor + "-wafers", Height: 240, Numbers: t.Name + " by wafer",
 		Label: t.Name + " by wafer: median, middle half, and 5 to 95 % range. The numbers are in the table below.",
 		Key:   []keyEntry{{"dot", "median"}, {"box", "middle half"}, {"line-thin", "5 to 95" + space + "%"}}}
@@ -170,6 +162,9 @@ func strip(p testPlace) (*chart, error) {
 		if !slices.Contains(c.Key, line) {
 			c.Key = append(c.Key, line)
 		}
+	}
+	if cut {
+		c.Note += "Some 5 to 95" + space + "% lines run beyond the range drawn. "
 	}
 	s.pad(0.05)
 	var names []string
@@ -197,6 +192,38 @@ func strip(p testPlace) (*chart, error) {
 	l.Accept(house{yTicks: s.ticks(6)})
 	done, err := c.finish(l.JSON(), []string{"Wafer", "Dice", "Median", "MAD sigma", "5 %", "25 %", "75 %", "95 %", "Outside limits"}, rows, segmentRows, segmentRows, each)
 	return &done, err
+}
+
+// stripSpan covers the middle halves of all wafers, and their 5 to 95 % ranges
+// as far as those are within one and a half lengths of that: on one wafer with
+// many opens the range would flatten all others. It reports whether it cut any,
+// and whether there is anything to draw.
+func stripSpan(t *reports.Test) (s span, cut, ok bool) {
+	core, all := span{Low: math.Inf(1), High: math.Inf(-1)}, span{Low: math.Inf(1), High: math.Inf(-1)}
+	cover := func(s *span, values ...reports.Number) {
+		for _, v := range values {
+			if v.Valid() {
+				s.Low, s.High = min(s.Low, float64(v)), max(s.High, float64(v))
+			}
+		}
+	}
+	for _, w := range t.ByWafer {
+		cover(&core, w.Q25, w.Median, w.Q75)
+		cover(&all, w.Q05, w.Q25, w.Median, w.Q75, w.Q95)
+	}
+	if all.Low > all.High {
+		return s, false, false
+	}
+	if core.Low >= core.High {
+		core = all
+	}
+	all.Log = t.Histogram != nil && t.Histogram.Scale == "log" && all.Low > 0
+	core.Log = all.Log
+	s = core
+	s.pad(1.5)
+	s.Low, s.High = max(s.Low, all.Low), min(s.High, all.High)
+	s.Log = all.Log
+	return s, s.Low > all.Low || s.High < all.High, true
 }
 
 // limitCurve draws the lot's yield with a limit of the test moved.

@@ -99,11 +99,18 @@ func drawHistogram(p testPlace) (*chart, error) {
 		return c, err
 	}
 	h := p.Histogram
-	if h.Below > 0 || h.Above > 0 {
-		c.Note += plural(h.Below, "die lies", "dice lie") + " below and " + count(h.Above) + " above the bins. "
+	var outside []string
+	if h.Below > 0 {
+		outside = append(outside, count(h.Below)+" below")
+	}
+	if h.Above > 0 {
+		outside = append(outside, count(h.Above)+" above")
+	}
+	if len(outside) > 0 {
+		c.Note += "Dice outside the bins: " + list(outside) + ". "
 	}
 	if h.Rule != "" {
-		c.Note += "Bin width: " + h.Rule + "."
+		c.Note += "Bins: " + h.Rule + "."
 	}
 	return c, nil
 }

@@ -8,6 +8,14 @@ type zones struct {
 	Tables []table
 }
 
+// shortName fits eight sectors side by side.
+func shortName(z reports.Zone) string {
+	if z.Kind == "sector" && len(z.Name) > 6 && z.From.Valid() && z.To.Valid() {
+		return trimmed(z.From, 4) + "–" + trimmed(z.To, 4) + "°"
+	}
+	return z.Name
+}
+
 func newZones(r *reports.Report) (zones, error) {
 	var z zones
 	for _, kind := range []struct{ name, title, unit, note string }{
@@ -25,7 +33,7 @@ func newZones(r *reports.Report) (zones, error) {
 			if zone.Kind != kind.name {
 				continue
 			}
-			p.Names, p.Yields = append(p.Names, zone.Name), append(p.Yields, zone.Yield)
+			p.Names, p.Yields = append(p.Names, shortName(zone)), append(p.Yields, zone.Yield)
 			p.Rows = append(p.Rows, []string{zone.Name, percent(zone.Yield.Estimate), percentRange(zone.Yield), count(zone.Dice)})
 			t.Rows = append(t.Rows, []cell{text(zone.Name), number(trimmed(zone.From, 4), zone.From), number(trimmed(zone.To, 4), zone.To), counted(zone.Dice),
 				number(percent(zone.Yield.Estimate), zone.Yield.Estimate), text(orWhy(percentRange(zone.Yield), zone.Yield.Why))})
