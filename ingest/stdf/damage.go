@@ -54,7 +54,15 @@ type damages struct {
 	counts []DamageCount
 }
 
+// add takes a finding in. The text is made only when it is kept.
 func (d *damages) add(offset int64, kind DamageKind, skipped int64, format string, args ...any) {
+	if d.count(kind, skipped) {
+		d.list = append(d.list, Damage{offset, kind, skipped, fmt.Sprintf(format, args...)})
+	}
+}
+
+// count counts a finding and says whether it is one to be kept.
+func (d *damages) count(kind DamageKind, skipped int64) bool {
 	i := slices.IndexFunc(d.counts, func(c DamageCount) bool { return c.Kind == kind })
 	if i < 0 {
 		i = len(d.counts)
@@ -62,9 +70,7 @@ func (d *damages) add(offset int64, kind DamageKind, skipped int64, format strin
 	}
 	d.counts[i].Count++
 	d.counts[i].Skipped += skipped
-	if d.counts[i].Count <= keptDamages {
-		d.list = append(d.list, Damage{offset, kind, skipped, fmt.Sprintf(format, args...)})
-	}
+	return d.counts[i].Count <= keptDamages
 }
 
 // sortedCounts are the counts in the order of their names.

@@ -464,6 +464,28 @@ func TestPacked(t *testing.T) {
 	}
 }
 
+// A zstd frame may ask for a window of gigabytes: what is given is bounded by
+// the size of a small file.
+func TestHostileZstdWindow(t *testing.T) {
+	body := write(t, LittleEndian, &MIR{}, pir(1), prr(1, "p"), &MRR{})
+	for window, parts := range map[byte]int{0x40: 1, 0x60: 1, 0x88: 0, 0xf8: 0} { // 2^18, 2^22, 2^27, 2^41 (RFC 8878, 3.1.1.1.2)
+		// magic; no checksum, no size; window; one raw block, the last
+		n := len(body)<<3 | 1
+		frame := append([]byte{0x28, 0xb5, 0x2f, 0xfd, 0, window, byte(n), byte(n >> 8), byte(n >> 16)}, body...)
+		var p *Parts
+		var lines []string
+		if n := allocated(func() { lines, p = tryLines(t, frame) }); n > 20<<20 {
+			t.Errorf("window %02x: %d bytes allocated", window, n)
+		}
+		if len(lines) != parts || (p.Err() == nil) != (parts == 1) {
+			t.Errorf("window %02x: %d parts, %v", window, len(lines), p.Err())
+		}
+		if err := p.Err(); err != nil && !strings.Contains(err.Error(), "zstd data cannot be unpacked") {
+			t.Errorf("window %02x: %v", window, err)
+		}
+	}
+}
+
 // Input that cannot be read is an error, not damage; what came before it counts.
 func TestReadError(t *testing.T) {
 	file := madeFile{wafers: 1, parts: 50, sites: 2}.bytes(t)

@@ -1,6 +1,7 @@
 package stdf
 
 import (
+	"fmt"
 	"math"
 	"strconv"
 )
@@ -243,14 +244,20 @@ func (p *Parts) abandon(s *slot, why string) {
 	if !s.isOpen {
 		return
 	}
-	n := int64(len(s.results))
-	p.orphans += n
-	if s.hasPIR {
-		p.r.damages.add(s.opened, DamageNoPRR, 0, "the part that begins here on head %d, site %d has no PRR: %s; it and its %s are left out",
-			s.head, s.site, why, plural(int(n), "result"))
-	} else {
-		p.r.damages.add(s.opened, DamageOrphans, 0, "%s from here on, of head %d, site %d, are of no part: %s; they are left out",
-			plural(int(n), "result"), s.head, s.site, why)
+	n := len(s.results)
+	p.orphans += int64(n)
+	kind := DamageNoPRR
+	if !s.hasPIR {
+		kind = DamageOrphans
+	}
+	if d := &p.r.damages; d.count(kind, 0) {
+		text := fmt.Sprintf("the part that begins here on head %d, site %d has no PRR: %s; it and its %s are left out",
+			s.head, s.site, why, plural(n, "result"))
+		if !s.hasPIR {
+			text = fmt.Sprintf("%s from here on, of head %d, site %d, are of no part: %s; they are left out",
+				plural(n, "result"), s.head, s.site, why)
+		}
+		d.list = append(d.list, Damage{s.opened, kind, 0, text})
 	}
 	s.isOpen, s.results = false, s.results[:0]
 }

@@ -430,6 +430,7 @@ func (r *Reader) endOfInput(err error) {
 		r.err = fmt.Errorf("stdf: reading failed at byte %d: %w", r.base+int64(r.end), r.src.err)
 	case err == io.EOF:
 	case r.src.packed != "":
+		r.src.unpackErr = err
 		what := "damaged"
 		if errors.Is(err, io.ErrUnexpectedEOF) {
 			what = "cut short"

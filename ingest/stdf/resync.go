@@ -27,11 +27,8 @@ func (r *Reader) judge(h header, from int, fits bool) bool {
 		return true
 	case fits && (!found || s > whole):
 		return r.take(h)
-	case h.kind == Unknown:
-		r.skip(s, "%d, %d is no record type, and no chain of records leads on from there", h.code.typ(), h.code.sub())
-		return false
 	default:
-		r.skip(s, "the length of a %s record, %s, does not lead to a next record", h.kind, plural(h.size, "byte"))
+		r.skip(s, h)
 		return false
 	}
 	if h.kind == Unknown {
@@ -124,16 +121,22 @@ func (r *Reader) odd(h header) bool {
 	return true
 }
 
-// skip drops s bytes, and more if no chain of headers starts there, and says so.
-func (r *Reader) skip(s int, format string, args ...any) {
+// skip drops s bytes from a record on whose header cannot be right, and more if
+// no chain of headers starts there, and says so.
+func (r *Reader) skip(s int, h header) {
 	at := r.offset()
 	r.pos += s
-	r.resume(at, fmt.Sprintf(format, args...))
+	r.resume(at, func() string {
+		if h.kind == Unknown {
+			return fmt.Sprintf("%d, %d is no record type, and no chain of records leads on from there", h.code.typ(), h.code.sub())
+		}
+		return fmt.Sprintf("the length of a %s record, %s, does not lead to a next record", h.kind, plural(h.size, "byte"))
+	})
 }
 
 // resume goes on to the next chain of headers and reports what was skipped
 // since offset at.
-func (r *Reader) resume(at int64, why string) {
+func (r *Reader) resume(at int64, why func() string) {
 	for !r.chain(0) {
 		if r.need(4) < 4 || r.offset()-at > maxSkip {
 			r.done = true
@@ -143,18 +146,24 @@ func (r *Reader) resume(at int64, why string) {
 		r.pos += s
 	}
 	gap := r.offset() - at
-	switch {
-	case !r.done:
-		why += fmt.Sprintf("; %s skipped, taken up at byte %d", plural(int(gap), "byte"), r.offset())
-	case r.eof:
+	if r.done && r.eof {
 		gap += int64(r.end - r.pos)
 		r.pos = r.end
-		why += fmt.Sprintf("; nothing more was found up to the end of the file, %s on", plural(int(gap), "byte"))
-	default:
-		why += fmt.Sprintf("; gave up after %s without a record", plural(int(gap), "byte"))
 	}
-	r.damages.add(at, DamageSkipped, gap, "%s", why)
 	r.noteGap(gap)
+	if !r.damages.count(DamageSkipped, gap) {
+		return
+	}
+	text, bytes := why(), plural(int(gap), "byte")
+	switch {
+	case !r.done:
+		text += fmt.Sprintf("; %s skipped, taken up at byte %d", bytes, r.offset())
+	case r.eof:
+		text += fmt.Sprintf("; nothing more was found up to the end of the file, %s on", bytes)
+	default:
+		text += fmt.Sprintf("; gave up after %s without a record", bytes)
+	}
+	r.damages.list = append(r.damages.list, Damage{at, DamageSkipped, gap, text})
 }
 
 // maxSkip is how far a chain of records is looked for in one go: a bound on

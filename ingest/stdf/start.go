@@ -16,6 +16,8 @@ type source struct {
 	in     io.Reader
 	err    error
 	packed string // "gzip", "zstd", "" plain
+
+	unpackErr error // why unpacking stopped before its end
 }
 
 func (s *source) Read(p []byte) (int, error) {
@@ -26,9 +28,16 @@ func (s *source) Read(p []byte) (int, error) {
 	return n, err
 }
 
-// maxZstdWindow is the largest window of a zstd frame that is unpacked: what
-// zstd's own --ultra levels write, and a bound on memory.
-const maxZstdWindow = 128 << 20
+// zstdWindow is the largest window of a zstd frame that is unpacked: up to what
+// the packer's highest levels use, but no more than a small file can have use
+// for, as the unpacker takes the memory that the frame asks for.
+func (r *Reader) zstdWindow() uint64 {
+	const least, most, ratio = 8 << 20, 128 << 20, 64
+	if n := r.need(maxWindow); r.eof {
+		return uint64(min(max(ratio*n, least), most))
+	}
+	return most
+}
 
 // begin finds out how the stream is packed and in which byte order it is
 // written. False when it is no STDF V4.
@@ -41,9 +50,9 @@ func (r *Reader) begin() bool {
 	case bytes.HasPrefix(b, []byte{0x1f, 0x8b}): // RFC 1952
 		r.unpack("gzip", func(in io.Reader) (io.Reader, error) { return gzip.NewReader(in) })
 	case bytes.HasPrefix(b, []byte{0x28, 0xb5, 0x2f, 0xfd}): // RFC 8878
+		window := r.zstdWindow()
 		r.unpack("zstd", func(in io.Reader) (io.Reader, error) {
-			return zstd.NewReader(in, zstd.WithDecoderConcurrency(1), zstd.WithDecoderLowmem(true),
-				zstd.WithDecoderMaxWindow(maxZstdWindow))
+			return zstd.NewReader(in, zstd.WithDecoderConcurrency(1), zstd.WithDecoderLowmem(true), zstd.WithDecoderMaxWindow(window))
 		})
 	}
 	if r.err == nil {
@@ -59,12 +68,13 @@ func (r *Reader) unpack(name string, open func(io.Reader) (io.Reader, error)) {
 		r.src.in = bytes.NewReader(nil)
 	}
 	in, err := open(io.MultiReader(bytes.NewReader(read), r.src))
-	if r.src.err == nil && err != nil {
-		r.err = &FormatError{0, fmt.Sprintf("the %s data are damaged from their start (%v)", name, err), "fetch the file again"}
-		return
-	}
 	r.src.packed = name
 	r.in, r.end, r.eof = in, 0, false
+	if err != nil {
+		r.eof = true
+		r.endOfInput(err)
+		r.noSTDF("")
+	}
 }
 
 // far says in which byte order b starts with a file attributes record.
@@ -158,6 +168,10 @@ func (r *Reader) findStart() {
 func (r *Reader) noSTDF(text string) {
 	if r.err != nil {
 		return // it could not be read
+	}
+	if e := r.src.unpackErr; e != nil && r.base+int64(r.end) == 0 {
+		r.err = &FormatError{0, fmt.Sprintf("the %s data cannot be unpacked (%v)", r.src.packed, e), "fetch the file again"}
+		return
 	}
 	r.err = &FormatError{0, text, "give a file in STDF V4, plain or packed with gzip or zstd"}
 }

@@ -97,8 +97,7 @@ func (r *Reader) cut(h header, n int) bool {
 		if r.repair(h, s) {
 			return true
 		}
-		r.skip(s, "a record of type %d, %d says that it is %s long, which runs over the end of the file",
-			h.code.typ(), h.code.sub(), plural(h.size, "byte"))
+		r.skip(s, h)
 		return false
 	}
 	r.done = true
@@ -126,7 +125,7 @@ func (r *Reader) zeros() {
 		}
 		if i < r.end || r.offset()-at > maxSkip {
 			r.pos = max(r.pos, i-3) // a header may start with zero bytes
-			r.resume(at, "zero bytes where a record should start")
+			r.resume(at, func() string { return "zero bytes stand where a record should start" })
 			return
 		}
 		r.pos = i
