@@ -58,7 +58,7 @@ func (s span) place(v float64) float64 {
 
 // ticks are round numbers inside the span, about n of them.
 func (s span) ticks(n int) []float64 {
-	if !(s.High > s.Low) {
+	if !(s.High > s.Low) || math.IsInf(s.High-s.Low, 0) {
 		return nil
 	}
 	if s.Log {

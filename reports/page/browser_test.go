@@ -132,7 +132,7 @@ func eval[T any](p *tab, body string) T {
 // scroll goes down the page as a reader does.
 func (p *tab) scroll() {
 	p.t.Helper()
-	eval[bool](p, `for (let y = 0; y < document.documentElement.scrollHeight; y += 1000) { scrollTo(0, y); await new Promise(requestAnimationFrame); await new Promise(requestAnimationFrame); }
+	eval[bool](p, `for (let y = 0; y < document.documentElement.scrollHeight; y += 1000) { scrollTo(0, y); await new Promise((r) => { requestAnimationFrame(r); setTimeout(r, 100); }); }
 		return wait(() => [...document.querySelectorAll(".chart")].every((c) => c.dataset.drawn || !c.checkVisibility()))`)
 }
 
@@ -269,7 +269,7 @@ func TestPageInBrowser(t *testing.T) {
 		p.sound()
 	})
 
-	for name, r := range map[string]*reports.Report{"whole lot": lot, "hostile": hostileReport(t), "nothing computed": blankReport()} {
+	for name, r := range map[string]*reports.Report{"whole lot": fixture(t, 25, 12, 4), "hostile": hostileReport(t), "nothing computed": blankReport()} {
 		t.Run("fits a narrow screen: "+name, func(t *testing.T) {
 			p := open(t, b, r, 390)
 			p.scroll()

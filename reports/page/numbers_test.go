@@ -107,6 +107,7 @@ func TestTicks(t *testing.T) {
 		{span{Low: 1e-3, High: 1e9, Log: true}, []float64{1e-2, 1, 100, 1e4, 1e6, 1e8}},
 		{span{Low: 2, High: 4, Log: true}, []float64{2, 2.5, 3, 3.5, 4}},
 		{span{Low: 5, High: 5}, nil},
+		{span{Low: 1, High: math.Inf(1), Log: true}, nil},
 	} {
 		got := c.s.ticks(6)
 		if c.s.Log && c.s.Low == 0.3 {

@@ -17,7 +17,7 @@ import (
 func histogram(p testPlace) (*chart, error) {
 	t, h := p.Test, p.Histogram
 	n := len(h.Pass)
-	if n == 0 || len(h.Edges) != n+1 || len(h.Fail) != n {
+	if n == 0 || len(h.Edges) != n+1 || len(h.Fail) != n || !h.Edges[0].Valid() || !h.Edges[n].Valid() {
 		return nil, nil
 	}
 	s := span{Low: float64(h.Edges[0]), High: float64(h.Edges[n]), Log: h.Scale == "log" && h.Edges[0] > 0}
