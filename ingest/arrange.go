@@ -212,7 +212,14 @@ func (t *readings) permute(o *order, k *rowKeys, start []int32) {
 			file++
 		}
 		if r.group >= 0 && start[r.group] >= 0 {
-			o.lots[lotOf[r.group]].files[t.chunks[file].file] = true
+			l, c := &o.lots[lotOf[r.group]], t.chunks[file]
+			l.files[c.file] = l.files[c.file] || c.files == nil
+			if c.files != nil {
+				at := fileEnd[file] - int32(c.n)
+				for _, f := range c.files[r.lo-at : r.hi-at] {
+					l.files[f] = true
+				}
+			}
 			same = same && next[r.group] == r.lo
 			next[r.group] += r.hi - r.lo
 		}

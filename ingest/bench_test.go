@@ -18,6 +18,7 @@ import (
 
 	"github.com/apache/arrow/go/v17/arrow"
 	arrowcsv "github.com/apache/arrow/go/v17/arrow/csv"
+	"github.com/klauspost/compress/gzip"
 )
 
 // lotSize is the size of the made file: 25 wafers of 88,000 dice as the
@@ -122,14 +123,49 @@ func BenchmarkRead(b *testing.B) {
 			readArrowCSV(b, path)
 		}
 	})
-	b.Run("memory", func(b *testing.B) {
+	packed := filepath.Join(b.TempDir(), "lot.csv.gz")
+	pack(b, path, packed)
+	b.Run("kneepoint-gzip", func(b *testing.B) {
+		b.SetBytes(size)
 		for b.Loop() {
-			peak, columns, n := peakMemory(b, path)
-			b.ReportMetric(float64(peak)/float64(columns), "peak/columns")
-			b.ReportMetric(float64(columns)/float64(n), "B/die")
-			b.ReportMetric(float64(peak)/float64(n), "peakB/die")
+			if _, err := Read(context.Background(), []string{packed}, Options{}); err != nil {
+				b.Fatal(err)
+			}
 		}
 	})
+	for name, p := range map[string]string{"memory": path, "memory-gzip": packed} {
+		b.Run(name, func(b *testing.B) {
+			for b.Loop() {
+				peak, columns, n := peakMemory(b, p)
+				b.ReportMetric(float64(peak)/float64(columns), "peak/columns")
+				b.ReportMetric(float64(columns)/float64(n), "B/die")
+				b.ReportMetric(float64(peak)/float64(n), "peakB/die")
+			}
+		})
+	}
+}
+
+func pack(b *testing.B, from, to string) {
+	b.Helper()
+	in, err := os.Open(from)
+	if err != nil {
+		b.Fatal(err)
+	}
+	defer in.Close()
+	out, err := os.Create(to)
+	if err != nil {
+		b.Fatal(err)
+	}
+	w, _ := gzip.NewWriterLevel(out, gzip.BestSpeed)
+	if _, err := io.Copy(w, in); err != nil {
+		b.Fatal(err)
+	}
+	if err := w.Close(); err != nil {
+		b.Fatal(err)
+	}
+	if err := out.Close(); err != nil {
+		b.Fatal(err)
+	}
 }
 
 func readEncodingCSV(b *testing.B, path string) {

@@ -92,7 +92,7 @@ func Build(t *Table, opt Options) (*Lot, error) {
 			panic("ingest: test " + t.Tests[i].Name + " is twice in the table")
 		}
 		c.values = append(c.values, slices.Clone(t.Values[i]))
-		r.tests = append(r.tests, infoOf(&t.Tests[i], opt.Product))
+		r.given = append(r.given, infoOf(&t.Tests[i], opt.Product))
 	}
 	f := &fileData{rows: rowCount{read: n}, lot: t.Lot}
 	for _, k := range sortedKeys(t.Attributes) {
@@ -132,7 +132,7 @@ func codesOf(texts []string, n int) textColumn {
 }
 
 func infoOf(t *Test, product *config.Product) testInfo {
-	i := testInfo{name: t.Name, used: true, product: productTest(product, t.Name), units: make([]config.Unit, 1), unit: t.Unit, lower: t.Lower, upper: t.Upper,
+	i := testInfo{name: t.Name, product: productTest(product, t.Name), unit: t.Unit, lower: t.Lower, upper: t.Upper,
 		condition: t.Condition, measures: t.Measures, clamp: t.Clamp, floor: t.Floor, number: t.Number, declared: true}
 	if t.Lower == t.Lower || t.Upper == t.Upper {
 		i.limitsFrom = "data file"

@@ -168,25 +168,11 @@ func (b *valueBody) farOut(x float64, n int, v []float64, not map[float64]int) b
 func (d *draft) sentinels(test int) []Finding {
 	info := &d.tests[test]
 	var findings []Finding
-	for _, s := range findSentinels(d.values[test], d.seen[test], info.fileUnits(), info.clamp, info.floor) {
-		u := info.fileUnits()[0]
+	for _, s := range findSentinels(d.values[test], d.seen[test], info.fileUnits, info.clamp, info.floor) {
+		u := info.fileUnits[0]
 		findings = append(findings, Finding{Code: "sentinel", Severity: Warning, Dice: s.n,
 			Text:   fmt.Sprintf("test %s: %d %s %s, a number that stands for no reading; taken as missing", info.name, s.n, plural(s.n, "reading is", "readings are"), show(s.value, u)),
 			Remedy: "leave the cell empty in the export; if the readings are real, say so to whoever owns the test program"})
 	}
 	return findings
-}
-
-// fileUnits are the different units that files give the test's values in.
-func (i *testInfo) fileUnits() []config.Unit {
-	var out []config.Unit
-	for _, u := range i.units {
-		if !slices.ContainsFunc(out, func(o config.Unit) bool { return o.Exp == u.Exp }) {
-			out = append(out, u)
-		}
-	}
-	if len(out) == 1 && !out[0].Given() {
-		return []config.Unit{i.unit} // values that never were in a file
-	}
-	return out
 }

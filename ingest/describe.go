@@ -3,89 +3,149 @@ package ingest
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strconv"
 
 	"kneepoint/config"
 )
 
-// describeTests settles unit, limits and what else is known of each test from
-// files and product file.
-func (t *readings) describeTests(product *config.Product) {
-	for i := len(t.tests); i < len(t.sch.tests); i++ {
-		t.tests = append(t.tests, testInfo{name: t.sch.tests[i], product: productTest(product, t.sch.tests[i]), units: make([]config.Unit, len(t.files)),
-			lower: math.NaN(), upper: math.NaN(), clamp: math.NaN(), floor: math.NaN(), number: Missing})
-	}
+// said is what one file says of one test.
+type said struct {
+	file int
+	*testColumn
+}
+
+// told collects what the files say, by test of the schema and in the order of
+// the files. What a long table says holds for every long file.
+func (t *readings) told() [][]said {
+	out := make([][]said, len(t.sch.tests))
 	for fi, f := range t.files {
 		if f.layout == nil {
 			continue
 		}
-		for _, c := range f.layout.columns {
-			i := t.sch.test(c.name)
-			t.tests[i].used = true
-			t.tests[i].fromFile(t, fi, &c, product)
+		columns := f.layout.columns
+		if f.layout.long {
+			columns = t.longColumns
+		}
+		for k := range columns {
+			i := t.sch.test(columns[k].name)
+			out[i] = append(out[i], said{fi, &columns[k]})
 		}
 	}
-	absent := []string{}
+	return out
+}
+
+// settleUnits decides in which unit each file has the values of each test: its
+// own; the product file's when it gives none, or one that cannot be; else that
+// of an earlier file.
+func (t *readings) settleUnits(product *config.Product) {
+	t.units = make([][]config.Unit, len(t.sch.tests))
+	for i, all := range t.told() {
+		t.units[i] = make([]config.Unit, len(t.files))
+		var own, first config.Unit
+		if p := productTest(product, t.sch.tests[i]); p >= 0 {
+			own = product.Tests[p].Unit
+		}
+		long := false
+		for _, c := range all {
+			again := t.files[c.file].layout.long && long // said once for all long files
+			long = long || t.files[c.file].layout.long
+			unit := t.unitOf(i, c, own, first, again)
+			t.units[i][c.file] = unit
+			if !first.Given() {
+				first = unit
+			}
+		}
+	}
+}
+
+func (t *readings) unitOf(test int, c said, own, first config.Unit, again bool) config.Unit {
+	name, unit := t.sch.tests[test], c.unit
+	note := func(s Severity, code, text, remedy string) {
+		if !again {
+			t.note(c.file, s, code, "test "+name+": "+text, remedy, 0)
+		}
+	}
+	switch {
+	case !unit.Given() && own.Given():
+		return own
+	case !unit.Given():
+		return first
+	case own.Given() && !own.Compatible(unit):
+		note(Severe, "unit-conflict", fmt.Sprintf("the data file says %s and the product file %s, which do not convert into one another; the values are taken as %s",
+			showUnit(unit), showUnit(own), showUnit(own)), "correct the unit in the product file or in the data")
+		return own
+	case own.Given() && own.Exp != unit.Exp:
+		note(Info, "unit-prefix", fmt.Sprintf("the data file says %s and the product file %s; the values are converted", showUnit(unit), showUnit(own)), "")
+	case !own.Given() && first.Given() && !first.Compatible(unit):
+		note(Severe, "unit-conflict", fmt.Sprintf("one file says %s and another %s, which do not convert into one another; the values are taken as %s",
+			showUnit(first), showUnit(unit), showUnit(first)), "correct the unit in the files")
+		return first
+	}
+	return unit
+}
+
+// describe gives what is known of each test of a lot, from the product file and
+// from the files that the lot has rows of; slots are the tests' places in the
+// schema. A test that none of these files has is left out.
+func (t *readings) describe(product *config.Product, files []bool, note func(Severity, string, string, string, int)) (infos []testInfo, slots []int) {
+	for slot, all := range t.told() {
+		i := testInfo{name: t.sch.tests[slot], product: productTest(product, t.sch.tests[slot]), lower: math.NaN(), upper: math.NaN(),
+			clamp: math.NaN(), floor: math.NaN(), number: Missing}
+		used := slot < len(t.given)
+		if used {
+			i = t.given[slot]
+			i.fileUnits = []config.Unit{i.unit} // values that never were in a file
+		}
+		for _, c := range all {
+			if files[c.file] {
+				used = true
+				i.fromFile(c, t.units[slot][c.file], note)
+			}
+		}
+		if !used {
+			continue
+		}
+		if i.product >= 0 {
+			i.fromProduct(&product.Tests[i.product], note)
+		}
+		infos, slots = append(infos, i), append(slots, slot)
+	}
 	if product != nil {
-		for pi := range product.Tests {
-			found := false
-			for i := range t.tests {
-				if t.tests[i].used && t.tests[i].product == pi {
-					t.tests[i].fromProduct(t, &product.Tests[pi])
-					found = true
-				}
-			}
-			if !found {
-				absent = append(absent, product.Tests[pi].Name)
+		var absent []string
+		for p := range product.Tests {
+			if !slices.ContainsFunc(infos, func(i testInfo) bool { return i.product == p }) {
+				absent = append(absent, product.Tests[p].Name)
 			}
 		}
+		if len(absent) > 0 {
+			note(Warning, "test-not-in-data", fmt.Sprintf("%d of the product file's %d tests %s not in the data: %s", len(absent), len(product.Tests),
+				plural(len(absent), "is", "are"), list(absent, 12)), "check the names, also those in the header", 0)
+		}
 	}
-	if len(absent) > 0 {
-		t.note(all, Warning, "test-not-in-data", fmt.Sprintf("%d of the product file's %d tests %s not in the data: %s", len(absent), len(product.Tests),
-			plural(len(absent), "is", "are"), list(absent, 12)), "check the names, also those in the header", 0)
-	}
+	return infos, slots
 }
 
 // fromFile takes what one file says of the test. The first file to say
 // something holds.
-func (i *testInfo) fromFile(t *readings, file int, c *testColumn, product *config.Product) {
+func (i *testInfo) fromFile(c said, unit config.Unit, note func(Severity, string, string, string, int)) {
 	if c.unitText != "" || c.unit.Given() || c.lower == c.lower || c.upper == c.upper || c.condition != "" {
 		i.declared = true
 	}
-	var own config.Unit // the product's
-	if i.product >= 0 {
-		own = product.Tests[i.product].Unit
-		i.declared = true
-	}
-	unit := c.unit
-	switch {
-	case !unit.Given():
-		unit = own
-		if !own.Given() {
-			unit = i.unit
-		}
-	case own.Given() && !own.Compatible(unit):
-		t.note(file, Severe, "unit-conflict", fmt.Sprintf("test %s: the data file says %s and the product file %s, which do not convert into one another; the values are taken as %s",
-			i.name, showUnit(unit), showUnit(own), showUnit(own)), "correct the unit in the product file or in the data", 0)
-		unit = own
-	case own.Given() && own.Exp != unit.Exp:
-		t.note(file, Info, "unit-prefix", fmt.Sprintf("test %s: the data file says %s and the product file %s; the values are converted", i.name, showUnit(unit), showUnit(own)), "", 0)
-	case !own.Given() && i.unit.Given() && !i.unit.Compatible(unit):
-		t.note(file, Severe, "unit-conflict", fmt.Sprintf("test %s: one file says %s and another %s; the values are taken as %s",
-			i.name, showUnit(i.unit), showUnit(unit), showUnit(i.unit)), "correct the unit in the files", 0)
-		unit = i.unit
-	}
-	i.units[file] = unit
 	if !i.unit.Given() {
 		i.unit = unit
 	}
-	lower, upper := unit.ToSI(c.lower), unit.ToSI(c.upper)
-	if i.limitsFrom != "" && (differ(i.lower, lower) || differ(i.upper, upper)) && (lower == lower || upper == upper) {
-		t.note(file, Warning, "limits-mixed", fmt.Sprintf("test %s: the files give different limits, %s and %s; the first are used", i.name,
-			showLimits(i.lower, i.upper, i.unit), showLimits(lower, upper, i.unit)), "check whether test programs were mixed", 0)
+	if !slices.ContainsFunc(i.fileUnits, func(u config.Unit) bool { return u.Exp == unit.Exp }) {
+		i.fileUnits = append(i.fileUnits, unit)
 	}
-	if i.limitsFrom == "" && (lower == lower || upper == upper) {
-		i.lower, i.upper, i.limitsFrom = lower, upper, "data file"
+	lower, upper := unit.ToSI(c.lower), unit.ToSI(c.upper)
+	if lower == lower || upper == upper {
+		if i.limitsFrom == "" {
+			i.lower, i.upper, i.limitsFrom = lower, upper, "data file"
+		} else if differ(i.lower, lower) || differ(i.upper, upper) {
+			note(Warning, "limits-mixed", fmt.Sprintf("test %s: the files give different limits, %s and %s; the first are used", i.name,
+				showLimits(i.lower, i.upper, i.unit), showLimits(lower, upper, i.unit)), "check whether test programs were mixed", 0)
+		}
 	}
 	if i.condition == "" {
 		i.condition = c.condition
@@ -96,7 +156,8 @@ func (i *testInfo) fromFile(t *readings, file int, c *testColumn, product *confi
 }
 
 // fromProduct lets the product file have its say.
-func (i *testInfo) fromProduct(t *readings, p *config.Test) {
+func (i *testInfo) fromProduct(p *config.Test, note func(Severity, string, string, string, int)) {
+	i.declared = true
 	i.name = p.Name
 	i.measures = p.Measures
 	if p.Unit.Given() {
@@ -105,7 +166,12 @@ func (i *testInfo) fromProduct(t *readings, p *config.Test) {
 	if p.AtText != "" {
 		i.condition = p.AtText
 	}
-	i.clamp, i.floor = p.Clamp, p.Floor
+	if p.Clamp == p.Clamp {
+		i.clamp = p.Clamp
+	}
+	if p.Floor == p.Floor {
+		i.floor = p.Floor
+	}
 	if p.Lower != p.Lower && p.Upper != p.Upper {
 		return
 	}
@@ -118,7 +184,7 @@ func (i *testInfo) fromProduct(t *readings, p *config.Test) {
 	}
 	i.limitsFrom = "product file"
 	if had && (p.Lower == p.Lower && differ(p.Lower, fileLower) || p.Upper == p.Upper && differ(p.Upper, fileUpper)) {
-		t.note(all, Warning, "limits-differ", fmt.Sprintf("test %s: the data file has limits %s, the product file %s; the product file's hold", i.name,
+		note(Warning, "limits-differ", fmt.Sprintf("test %s: the data file has limits %s, the product file %s; the product file's hold", i.name,
 			showLimits(fileLower, fileUpper, i.unit), showLimits(i.lower, i.upper, i.unit)), "check which revision of the test program was run", 0)
 	}
 }

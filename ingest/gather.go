@@ -152,7 +152,7 @@ func (t *readings) flatValues(slot int) []float64 {
 		c := t.chunks[0]
 		out := snug(c.values[slot])
 		c.values[slot] = nil
-		toSI(out, out, t.tests[slot].units[c.file])
+		toSI(out, out, t.unitFor(slot, c.file))
 		return out
 	}
 	out := make([]float64, n)
@@ -166,10 +166,18 @@ func (t *readings) flatValues(slot int) []float64 {
 			}
 			continue
 		}
-		toSI(to, c.values[slot], t.tests[slot].units[c.file])
+		toSI(to, c.values[slot], t.unitFor(slot, c.file))
 		c.values[slot] = nil
 	}
 	return out
+}
+
+// unitFor is the unit of a test's values in a file's chunk.
+func (t *readings) unitFor(slot, file int) config.Unit {
+	if t.files[file].layout == nil {
+		return config.Unit{} // a Table has them in SI
+	}
+	return t.units[slot][file]
 }
 
 // toSI converts values into dst, which may be v itself.
@@ -237,6 +245,7 @@ func (t *readings) gather(ctx context.Context, o *order, opt *Options) ([]*draft
 		}
 		d.shared = len(d.findings)
 		d.files, d.from = l.files, t
+		d.tests, d.slots = t.describe(opt.Product, l.files, d.note)
 		drafts[i] = d
 	}
 	for i := range t.chunks {
@@ -294,25 +303,22 @@ func (t *readings) gatherText(drafts []*draft, o *order) {
 // gatherValues does the tests in parallel; each is worked on by one goroutine
 // alone, so that the result does not depend on their number.
 func (t *readings) gatherValues(ctx context.Context, drafts []*draft, o *order, opt *Options) error {
-	var slots []int
-	for i := range t.tests {
-		if t.tests[i].used {
-			slots = append(slots, i)
-		}
-	}
-	columns := make([][][]float64, len(slots)) // [test][lot]
+	columns := make([][][]float64, len(t.sch.tests)) // [test][lot]
 	g, ctx := errgroup.WithContext(ctx)
 	g.SetLimit(opt.Workers)
-	for k, slot := range slots {
+	for slot := range columns {
+		if !slices.ContainsFunc(drafts, func(d *draft) bool { return slices.Contains(d.slots, slot) }) {
+			continue
+		}
 		g.Go(func() error {
 			if err := ctx.Err(); err != nil {
 				return err
 			}
 			flat := t.flatValues(slot)
-			columns[k] = make([][]float64, len(drafts))
+			columns[slot] = make([][]float64, len(drafts))
 			for i, d := range drafts {
-				if columns[k][i] = pick(flat, o, &o.lots[i]); columns[k][i] == nil {
-					columns[k][i] = nanColumn(d.n)
+				if columns[slot][i] = pick(flat, o, &o.lots[i]); flat == nil {
+					columns[slot][i] = nanColumn(d.n)
 				}
 			}
 			if len(t.chunks) > 1 && len(flat) > 1<<18 {
@@ -325,10 +331,8 @@ func (t *readings) gatherValues(ctx context.Context, drafts []*draft, o *order, 
 		return err
 	}
 	for i, d := range drafts {
-		for k, slot := range slots {
-			d.tests = append(d.tests, t.tests[slot])
-			d.slots = append(d.slots, slot)
-			d.values = append(d.values, columns[k][i])
+		for _, slot := range d.slots {
+			d.values = append(d.values, columns[slot][i])
 		}
 	}
 	return nil
@@ -336,60 +340,49 @@ func (t *readings) gatherValues(ctx context.Context, drafts []*draft, o *order, 
 
 // constants turns columns of whole numbers that never differ within a wafer
 // into attributes: a boat position, a temperature. A test that the product
-// file or a unit or limits declare stays a test.
+// file or a unit or limits declare stays a test. All lots that have a column
+// decide together.
 func (t *readings) constants(drafts []*draft) {
-	const rows = 5 // per wafer on the average, for "never differs" to mean something
-	if len(drafts) == 0 {
-		return
-	}
-	n, wafers := 0, 0
-	for _, d := range drafts {
-		n += d.n
-		wafers += len(d.wafers)
-	}
-	var keep []int
-	for k := range drafts[0].tests {
-		info := &drafts[0].tests[k]
-		if info.declared || n < rows*wafers || !constantWithin(drafts, k) {
-			keep = append(keep, k)
+	for slot := range t.sch.tests {
+		var with []*draft
+		constant, some, n, wafers := true, false, 0, 0
+		for _, d := range drafts {
+			if k := slices.Index(d.slots, slot); k >= 0 {
+				with = append(with, d)
+				n += d.n
+				wafers += len(d.wafers)
+				constant = constant && !d.tests[k].declared && d.constantWithin(k)
+				some = some || slices.ContainsFunc(d.values[k], func(v float64) bool { return v == v })
+			}
+		}
+		const rows = 5 // per wafer on the average, for "never differs" to mean something
+		if !constant || !some || n < rows*wafers {
 			continue
 		}
-		for _, d := range drafts {
-			d.numberAttribute(info.name, d.values[k])
-		}
-	}
-	if len(keep) == len(drafts[0].tests) {
-		return
-	}
-	for _, d := range drafts {
-		tests, values, slots := d.tests, d.values, d.slots
-		d.tests, d.values, d.slots = nil, nil, nil
-		for _, k := range keep {
-			d.tests, d.values, d.slots = append(d.tests, tests[k]), append(d.values, values[k]), append(d.slots, slots[k])
+		for _, d := range with {
+			k := slices.Index(d.slots, slot)
+			d.numberAttribute(d.tests[k].name, d.values[k])
+			d.tests, d.values, d.slots = slices.Delete(d.tests, k, k+1), slices.Delete(d.values, k, k+1), slices.Delete(d.slots, k, k+1)
 		}
 	}
 }
 
-func constantWithin(drafts []*draft, test int) bool {
-	some := false
-	for _, d := range drafts {
-		for _, w := range d.wafers {
-			first := math.NaN()
-			for _, v := range d.values[test][w.Lo:w.Hi] {
-				if v != v {
-					continue
-				}
-				if first != first {
-					first = v
-				}
-				if v != first || v != math.Trunc(v) || math.Abs(v) >= 1e9 {
-					return false
-				}
-				some = true
+func (d *draft) constantWithin(test int) bool {
+	for _, w := range d.wafers {
+		first := math.NaN()
+		for _, v := range d.values[test][w.Lo:w.Hi] {
+			if v != v {
+				continue
+			}
+			if first != first {
+				first = v
+			}
+			if v != first || v != math.Trunc(v) || math.Abs(v) >= 1e9 {
+				return false
 			}
 		}
 	}
-	return some
+	return true
 }
 
 // numberAttribute adds a text column with the numbers of v.

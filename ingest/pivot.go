@@ -10,7 +10,7 @@ import (
 // chunk builds the wide chunk.
 func (p *pivoting) chunk() *chunk {
 	n := len(p.ofDie)
-	c := &chunk{n: n, file: p.file, text: make([]textColumn, len(p.text)), values: make([][]float64, len(p.t.sch.tests)), weight: make([]int32, n)}
+	c := &chunk{n: n, file: p.file, text: make([]textColumn, len(p.text)), values: make([][]float64, len(p.t.sch.tests)), weight: make([]int32, n), files: make([]int32, n)}
 	info := p.tests()
 	for _, from := range p.long {
 		p.textCodes(from, textUnit)
@@ -19,15 +19,18 @@ func (p *pivoting) chunk() *chunk {
 	units, errs := config.ParseUnits(p.text[textUnit].dict)
 	row := 0
 	for _, from := range p.long {
+		for i := range from.n {
+			if m := p.meas[row+i]; m >= 0 {
+				if c.weight[m] == 0 {
+					c.files[m] = int32(from.file)
+				}
+				c.weight[m]++
+			}
+		}
 		p.copyInts(c, from, row)
 		p.copyTexts(c, from, row)
 		p.copyValues(c, from, row, info, units)
 		row += from.n
-	}
-	for _, m := range p.meas {
-		if m >= 0 {
-			c.weight[m]++
-		}
 	}
 	for s := range c.text {
 		c.text[s].dict = p.text[s].dict
@@ -194,10 +197,9 @@ func noLimit(v float64) float64 {
 	return v
 }
 
-// finish hands what was learnt to the layout of the first long file, as if it
-// had stood in rows under a header.
+// finish keeps what was learnt of the tests as if it had stood in rows under a
+// header.
 func (p *pivoting) finish(info []longTest, errs []error) {
-	f := p.t.files[p.file]
 	for slot := range info {
 		t := &info[slot]
 		if !t.used {
@@ -213,7 +215,7 @@ func (p *pivoting) finish(info []longTest, errs []error) {
 				plural(t.others, "row is", "rows are"), t.unit.Text), "", 0)
 		}
 		t.majority(p.t, &c)
-		f.layout.columns = append(f.layout.columns, c)
+		p.t.longColumns = append(p.t.longColumns, c)
 	}
 }
 

@@ -65,7 +65,8 @@ type chunk struct {
 	values [][]float64
 	odd    map[oddKey]oddCells
 	rows   rowCount
-	weight []int32 // rows of the file in each row, nil: one
+	weight []int32 // rows of the files in each row, nil: one
+	files  []int32 // file of each row, nil: all are of file
 }
 
 // textColumn holds a text as codes into its own dictionary; -1 is an empty cell.

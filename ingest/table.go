@@ -10,13 +10,16 @@ import (
 // readings are the measurements of all files in columns, before cleaning: one row
 // a measurement of one die, in the order of the files.
 type readings struct {
-	sch       *schema
-	files     []*fileData
-	chunks    []*chunk // wide ones
-	tests     []testInfo
-	findings  []fileFinding
-	tally     Tally
-	siteIsDie bool // a long table without coordinates or parts: the site tells dice apart
+	sch      *schema
+	files    []*fileData
+	chunks   []*chunk        // wide ones
+	units    [][]config.Unit // of the values, by test of the schema and file
+	given    []testInfo      // tests of a Table in memory
+	findings []fileFinding
+	tally    Tally
+	// longColumns is what the rows of all long files say of their tests.
+	longColumns []testColumn
+	siteIsDie   bool // a long table without coordinates or parts: the site tells dice apart
 }
 
 // fileFinding is a finding about one file, or all.
@@ -25,12 +28,11 @@ type fileFinding struct {
 	Finding
 }
 
-// testInfo is what files and product say of one test of the schema.
+// testInfo is what files and product say of one test of a lot.
 type testInfo struct {
 	name         string
-	used         bool
 	product      int           // index in the product file, -1
-	units        []config.Unit // by file: unit of the values in its chunks
+	fileUnits    []config.Unit // the different units that files have its values in
 	unit         config.Unit   // for showing
 	lower, upper float64       // SI
 	limitsFrom   string
@@ -54,7 +56,7 @@ func (t *readings) lots(ctx context.Context, opt *Options) (*Batch, error) {
 		t.fileFindings(i)
 	}
 	t.pivot()
-	t.describeTests(opt.Product)
+	t.settleUnits(opt.Product)
 	o, err := t.arrange(opt)
 	if err != nil {
 		return nil, err
