@@ -43,9 +43,13 @@ func (t *readings) keys() rowKeys {
 	k := rowKeys{}
 	ids := map[groupKey]int32{}
 	row := int32(0)
+	unnamed, unnamedLot := 0, ""
 	for _, c := range t.chunks {
 		lots, wafers := &c.text[textLot], &c.text[textWafer]
 		def := t.files[c.file].defaults()
+		if code, ok := oneCode(lots.codes); ok && code >= 0 {
+			def.lot = lots.dict[code] // of cells left empty in a file of one lot
+		}
 		for i := 0; i < c.n; {
 			lc, wc := codeAt(lots.codes, i), codeAt(wafers.codes, i)
 			end := i + sameCodes(lots.codes, i, c.n)
@@ -68,6 +72,10 @@ func (t *readings) keys() rowKeys {
 				}
 				group = id
 			}
+			if lots.codes != nil && lc < 0 && group >= 0 {
+				unnamed += end - i
+				unnamedLot = key.lot
+			}
 			rows := end - i
 			if c.weight != nil {
 				rows = 0
@@ -85,6 +93,9 @@ func (t *readings) keys() rowKeys {
 			row += int32(end - i)
 			i = end
 		}
+	}
+	if unnamed > 0 {
+		t.note(all, Warning, "no-lot", fmt.Sprintf("%d %s an empty lot cell; taken for lot %s", unnamed, plural(unnamed, "row has", "rows have"), unnamedLot), "fill the lot column", unnamed)
 	}
 	return k
 }

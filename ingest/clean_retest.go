@@ -21,28 +21,34 @@ func (d *draft) retests(opt *Options) []int32 {
 		s.bins = opt.Product.Bins
 	}
 	for _, w := range d.wafers {
-		d.sameDice(w.Lo, w.Hi, s.die)
+		d.sameDice(w.Lo, w.Hi, s.several)
 	}
+	s.settle()
 	s.report()
 	return s.keep
 }
 
-// duplicateRow marks a measurement that repeats another exactly.
-const duplicateRow = -1
+// Marks of measurements that are neither counted nor earlier readings.
+const (
+	duplicateRow = -1 // repeats another exactly
+	joinedRow    = -2 // its readings were joined to those of another
+)
 
 type retesting struct {
 	d      *draft
 	keep   []int32
 	policy Retest
 	bins   config.Bins
-	dice   int // measured more than once
-	extra  int // measurements that do not count
-	empty  int // of them without any value or bin
-	better int // dice that policy best passes though their last measurement fails
+	groups [][]int32 // measurements of dice that have several, copies left out
+	dice   int       // measured more than once
+	joined int       // dice whose readings were spread over several rows
+	extra  int       // measurements that do not count
+	empty  int       // of them without any value or bin
+	better int       // dice that policy best passes though their last measurement fails
 }
 
-// die settles one die that has several measurements, given in order of rows.
-func (s *retesting) die(rows []int32) {
+// several takes a die that has several measurements, given in order of rows.
+func (s *retesting) several(rows []int32) {
 	d := s.d
 	if s.keep == nil {
 		s.keep = make([]int32, d.n)
@@ -56,23 +62,94 @@ func (s *retesting) die(rows []int32) {
 	// Exact copies first: the earlier one stands for both.
 	var own []int32
 	for _, r := range rows {
-		copyOf := false
-		for _, o := range own {
-			if d.sameRow(r, o) {
-				copyOf = true
-				break
-			}
-		}
-		if copyOf {
+		if slices.ContainsFunc(own, func(o int32) bool { return d.sameRow(r, o) }) {
 			s.keep[r] = duplicateRow
 			d.duplicates++
 		} else {
 			own = append(own, r)
 		}
 	}
-	if len(own) == 1 {
-		return
+	if len(own) > 1 {
+		s.groups = append(s.groups, own)
 	}
+}
+
+// settle decides about all dice together. Where no test of a die has readings
+// in more than one of its rows, and it is so for nine in ten of them, the rows
+// are parts of one measurement: one file has the currents and another the
+// capacitances, or an export made a row of every reading.
+func (s *retesting) settle() {
+	var parts, again [][]int32
+	for _, g := range s.groups {
+		if s.d.disjoint(g) {
+			parts = append(parts, g)
+		} else {
+			again = append(again, g)
+		}
+	}
+	if 10*len(parts) < 9*len(s.groups) {
+		parts, again = nil, s.groups
+	}
+	for _, g := range parts {
+		s.join(g)
+	}
+	for _, g := range again {
+		s.die(g)
+	}
+}
+
+// disjoint says whether at least two of the rows have readings, and no test has
+// one in two of them.
+func (d *draft) disjoint(rows []int32) bool {
+	with := map[int32]bool{}
+	for _, v := range d.values {
+		n := 0
+		for _, r := range rows {
+			if v[r] == v[r] {
+				with[r] = true
+				n++
+			}
+		}
+		if n > 1 {
+			return false
+		}
+	}
+	return len(with) > 1
+}
+
+// join puts the readings of all rows into the last one. Bins and the like are
+// those of the last row that has them.
+func (s *retesting) join(rows []int32) {
+	d, last := s.d, rows[len(rows)-1]
+	for i := len(rows) - 2; i >= 0; i-- {
+		r := rows[i]
+		for _, v := range d.values {
+			if v[last] != v[last] {
+				v[last] = v[r]
+			}
+		}
+		for slot, c := range d.ints {
+			if c != nil && slot != intTouchdown && c[last] == Missing {
+				c[last] = c[r]
+			}
+		}
+		if d.pass != nil && d.pass[last] < 0 {
+			d.pass[last] = d.pass[r]
+		}
+		for _, c := range d.text {
+			if c != nil && c[last] < 0 {
+				c[last] = c[r]
+			}
+		}
+		s.keep[r] = joinedRow
+		d.joined++
+	}
+	s.joined++
+}
+
+// die settles one die that was measured several times.
+func (s *retesting) die(own []int32) {
+	d := s.d
 	s.dice++
 	s.extra += len(own) - 1
 	var valid []int32
@@ -182,6 +259,10 @@ func (s *retesting) report() {
 		d.note(Warning, "duplicate-row", fmt.Sprintf("%d %s another one in every field; counted once", d.duplicates, plural(d.duplicates, "row repeats", "rows repeat")),
 			"check whether the data were exported twice", d.duplicates)
 	}
+	if s.joined > 0 {
+		d.note(Info, "joined-rows", fmt.Sprintf("the readings of %d %s stand in several rows without a test in common; %d rows were joined to others", s.joined, plural(s.joined, "die", "dice"), d.joined), "", s.joined)
+		d.compacted = true // the columns changed
+	}
 	if s.dice > 0 {
 		d.note(Info, "retest", fmt.Sprintf("%d %s measured more than once, with %d further measurements; the %s valid one counts", s.dice, plural(s.dice, "die was", "dice were"), s.extra, s.policy), "", s.dice)
 	}
@@ -281,7 +362,7 @@ func (d *draft) split(keep []int32) (Earlier, FirstPass) {
 	for i, k := range keep {
 		if k != int32(i) {
 			removed++
-			several = several || k != duplicateRow
+			several = several || k >= 0
 		}
 	}
 	if removed == 0 {
@@ -297,7 +378,7 @@ func (d *draft) split(keep []int32) (Earlier, FirstPass) {
 	}
 	var rows []int32 // that go to Earlier, by die and then order of test
 	for i, k := range keep {
-		if k != int32(i) && k != duplicateRow {
+		if k != int32(i) && k >= 0 {
 			rows = append(rows, int32(i))
 		}
 	}

@@ -81,6 +81,24 @@ func TestRetestsWithoutCoordinates(t *testing.T) {
 	}
 }
 
+// Rows without a test in common are parts of one measurement.
+func TestJoinedRows(t *testing.T) {
+	nan := math.NaN()
+	b := mustRead(t, table("WAFER,X,Y,HBIN,A,B,C", "1,0,0,,1,,", "1,0,0,,,2,", "1,0,0,4,,,3", "1,1,0,1,5,,", "1,1,0,,,6,", "1,2,0,1,7,8,9"), Options{})
+	l := b.Lots[0]
+	got := [][]float64{l.Values(0), l.Values(1), l.Values(2)}
+	if d := cmp.Diff([][]float64{{1, 5, 7}, {2, 6, 8}, {3, nan, 9}}, got, exactly); d != "" {
+		t.Error(d)
+	}
+	if d := cmp.Diff([]int32{4, 1, 1}, l.HardBin()); d != "" {
+		t.Error(d)
+	}
+	want := Tally{Rows: 6, Used: 6, Discarded: map[string]int{}, Measurements: 6, Dice: 3, Joined: 3}
+	if d := cmp.Diff(want, b.Tally); d != "" || l.FirstPass().Index != nil || l.Findings()[0].Code != "joined-rows" {
+		t.Errorf("%s %v", d, l.Findings())
+	}
+}
+
 // Touchdown numbers that start again belong to a second pass: the later row
 // counts. Where the file is sorted by place, the numbers tell.
 func TestRetestOrder(t *testing.T) {
@@ -410,7 +428,7 @@ func TestEveryRowIsAccountedFor(t *testing.T) {
 			for _, n := range y.Discarded {
 				sum += n
 			}
-			if y.Rows != rows || sum != rows || y.Used != y.Measurements || y.Measurements != y.Dice+y.Earlier+y.Duplicates {
+			if y.Rows != rows || sum != rows || y.Used != y.Measurements || y.Measurements != y.Dice+y.Earlier+y.Duplicates+y.Joined {
 				t.Fatalf("%d rows: tally %+v", rows, y)
 			}
 			if (y.Discarded["other-lot"] > 0) != (opt.Lot != "") {

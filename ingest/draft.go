@@ -50,7 +50,8 @@ func (d *draft) lot(opt *Options) *Lot {
 	}
 	for s := range d.text {
 		if d.text[s] != nil {
-			l.cols.attributes = append(l.cols.attributes, dieAttribute{name: d.textNames[s], codes: int32Column(d.text[s]), labels: d.dict[s]})
+			labels := usedLabels(d.text[s], d.dict[s])
+			l.cols.attributes = append(l.cols.attributes, dieAttribute{name: d.textNames[s], codes: int32Column(d.text[s]), labels: labels})
 		}
 	}
 	l.findings, l.shared = d.findings, d.shared
@@ -179,6 +180,27 @@ func (d *draft) attributes(l *Lot) {
 func isRole(key, role string) bool {
 	k := plainName(key)
 	return slices.Contains(roleNames[role], k)
+}
+
+// usedLabels numbers the labels of a column anew, in the order of first use, and
+// gives those that are used.
+func usedLabels(codes []int32, dict []string) []string {
+	var labels []string
+	now := make([]int32, len(dict))
+	for i := range now {
+		now[i] = -1
+	}
+	for i, c := range codes {
+		if c < 0 {
+			continue
+		}
+		if now[c] < 0 {
+			now[c] = int32(len(labels))
+			labels = append(labels, dict[c])
+		}
+		codes[i] = now[c]
+	}
+	return labels
 }
 
 // oneCode gives the only code of a column, empty cells apart; -1 when there is

@@ -37,7 +37,7 @@ type draft struct {
 	siteIsDie bool
 	ownOrder  bool // the file has touchdown numbers
 
-	measurements, duplicates int
+	measurements, duplicates, joined int
 
 	seen      []extremes // by test
 	compacted bool       // measurements that do not count are out of the columns

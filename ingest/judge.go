@@ -97,7 +97,7 @@ func (l *layout) rowKind(r headRow, roles []string) rowKind {
 // role away where the content cannot be it.
 func (l *layout) judge(roles []string, product *config.Product) {
 	for i := range roles {
-		numbers, texts, zeros, flags := 0, 0, 0, 0
+		numbers, texts, zeros, flags, fractions := 0, 0, 0, 0, 0
 		for _, r := range l.sample {
 			if i >= len(r) || r[i] == "" {
 				continue
@@ -106,9 +106,12 @@ func (l *layout) judge(roles []string, product *config.Product) {
 			if passFlag([]byte(c)) >= 0 {
 				flags++
 			}
-			switch _, st := parseNumber([]byte(c), l.decimal); st {
+			switch v, st := parseNumber([]byte(c), l.decimal); st {
 			case cellNumber:
 				numbers++
+				if v != math.Trunc(v) {
+					fractions++
+				}
 				if len(c) > 1 && c[0] == '0' && c[1]-'0' <= 9 {
 					zeros++
 				}
@@ -123,6 +126,10 @@ func (l *layout) judge(roles []string, product *config.Product) {
 		case whole && text && (roles[i] == "x" || roles[i] == "y"):
 			l.note(Warning, "column-not-understood", fmt.Sprintf("column %s looks like the die's %s and holds text; it is kept as an attribute of the die", quote(l.names[i]), roles[i]),
 				"give whole numbers, or name the right column under columns in the product file")
+			roles[i] = "attribute"
+		case (roles[i] == "x" || roles[i] == "y") && 2*fractions > numbers:
+			l.note(Warning, "column-not-understood", fmt.Sprintf("column %s holds fractions, perhaps positions, and no die indices; it is kept as an attribute of the die", quote(l.names[i])),
+				"export the die's column and row numbers")
 			roles[i] = "attribute"
 		case whole && text:
 			l.note(Info, "column-not-understood", fmt.Sprintf("column %s looks like the %s and holds text; it is kept as an attribute", quote(l.names[i]), strings.ReplaceAll(roles[i], "_", " ")), "")
@@ -140,10 +147,18 @@ func (l *layout) judge(roles []string, product *config.Product) {
 		case l.names[i] == "" && numbers+texts == 0:
 			roles[i] = "skip"
 		case productTest(product, l.names[i]) >= 0:
-		case text, zeros > 0 && zeros == numbers, l.long, attributeNames[plainName(l.names[i])]:
+		case text, zeros > 0 && zeros == numbers, l.long, attributeNames[plainName(l.names[i])], isPosition(l.names[i]):
 			roles[i] = "attribute"
 		}
 	}
+}
+
+// isPosition tells "X (mm)", a die's position in a unit of length.
+func isPosition(header string) bool {
+	name, inside := bracket(header)
+	u, err := config.ParseUnit(inside)
+	n := plainName(name)
+	return inside != "" && err == nil && u.Base == "m" && (contains(roleNames["x"], n) || contains(roleNames["y"], n))
 }
 
 func (l *layout) note(s Severity, code, text, remedy string) {

@@ -147,6 +147,8 @@ var odds = []odd{
 	{name: "quote not closed", text: swap("L1,3,1,0", "\"L1,3,1,0"), codes: "unclosed-quote:1", dice: 9},
 	{name: "row of limits that says nothing", text: swap("L1,3,0,0", ",,,,,20,5\nL1,3,0,0"), codes: "row-not-understood:0", dice: 9},
 	{name: "coordinates that are text", text: strings.NewReplacer(",0,", ",A,", ",1,", ",B,", ",2,", ",C,").Replace(plain()), codes: "column-not-understood:0 no-coordinates:0"},
+	{name: "positions for coordinates", text: strings.NewReplacer(",0,", ",0.5,", ",1,", ",1.5,", ",2,", ",2.5,").Replace(plain()), codes: "column-not-understood:0 no-coordinates:0"},
+	{name: "lot not filled down", text: strings.Replace(strings.ReplaceAll(plain(), "L1,3", ",3"), ",3,0,0", "L1,3,0,0", 1), codes: "no-lot:8", dice: 9},
 	{name: "above the clamp", text: plain(), product: aProduct(config.Test{Name: "BVCEO", Clamp: 24.5}), codes: "above-clamp:3", dice: 9},
 	{name: "at the clamp", text: strings.NewReplacer("24.85", "24.95", "24.75", "24.95").Replace(plain()), product: aProduct(config.Test{Name: "BVCEO", Clamp: 24.95}), codes: "clamped:3", dice: 9},
 	{name: "at the floor", text: plain(), product: aProduct(config.Test{Name: "ICBO", Floor: 0.25}), codes: "at-floor:2", dice: 9},

@@ -43,7 +43,7 @@ type Batch struct {
 // one measurement of a die; of a long one, one reading of a measurement. Always
 //
 //	Rows = Used + the sum of Discarded
-//	Measurements = Dice + Earlier + Duplicates
+//	Measurements = Dice + Earlier + Duplicates + Joined
 //
 // and for wide tables Used = Measurements.
 type Tally struct {
@@ -54,6 +54,7 @@ type Tally struct {
 	Dice         int // each counted once, in its measurement that counts
 	Earlier      int // other measurements of retested dice
 	Duplicates   int // measurements that repeat another one exactly
+	Joined       int // rows whose readings were joined to another row of the same die
 }
 
 // Read reads files into lots. Several files are read in the order given, as if

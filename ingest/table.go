@@ -80,6 +80,7 @@ func (t *readings) lots(ctx context.Context, opt *Options) (*Batch, error) {
 		t.tally.Dice += l.Len()
 		t.tally.Earlier += len(l.earlier.Of)
 		t.tally.Duplicates += d.duplicates
+		t.tally.Joined += d.joined
 	}
 	b.Tally = t.tally
 	b.Tally.check(t)
@@ -96,7 +97,7 @@ func (y *Tally) check(t *readings) {
 	for _, f := range t.files {
 		wide = wide && (f.layout == nil || !f.layout.long)
 	}
-	if sum != y.Rows || y.Measurements != y.Dice+y.Earlier+y.Duplicates || wide && y.Used != y.Measurements {
+	if sum != y.Rows || y.Measurements != y.Dice+y.Earlier+y.Duplicates+y.Joined || wide && y.Used != y.Measurements {
 		panic(fmt.Sprintf("ingest: rows are not accounted for: %+v", *y))
 	}
 }
