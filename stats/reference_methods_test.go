@@ -42,8 +42,6 @@ var referenceMethods = map[string]referenceMethod{
 
 // referencePending are methods that belong to rooms not built yet, by room.
 var referencePending = map[string]string{
-	"nested random-effects variance components lot / wafer(lot) / die by REML and by ML":                   "variance",
-	"nested random-effects variance components by ANOVA (method of moments, unbalanced coefficients)":      "variance",
 	"normality tests: Anderson-Darling, Cramer-von Mises, Lilliefors (parameters estimated), Shapiro-Wilk": "dist",
 	"Anderson-Darling A^# and Kolmogorov-Smirnov D against a FULLY SPECIFIED Weibull":                      "dist",
 	"Box-Cox transformation parameter by profile likelihood":                                               "dist",
