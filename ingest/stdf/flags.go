@@ -68,15 +68,14 @@ func (f PartFlag) Retest() bool { return f&(RetestID|RetestXY) != 0 }
 type OptFlag uint8
 
 const (
-	NoResScale  OptFlag   = 1 << iota // bit 0: RES_SCAL is invalid, the default holds
-	NoStart                           // bit 1: MPR: START_IN and INCR_IN are invalid; PTR: reserved, 1
-	NoLowSpec                         // bit 2: there is no low specification limit
-	NoHighSpec                        // bit 3: there is no high specification limit
-	DefaultLow                        // bit 4: LO_LIMIT and LLM_SCAL are invalid, the default holds
-	DefaultHigh                       // bit 5: HI_LIMIT and HLM_SCAL are invalid, the default holds
-	NoLow                             // bit 6: there is no low limit
-	NoHigh                            // bit 7: there is no high limit
-	optReserved = NoStart             // what a PTR sets there
+	NoResScale  OptFlag = 1 << iota // bit 0: RES_SCAL is invalid, the default holds
+	NoStart                         // bit 1: MPR: START_IN and INCR_IN are invalid; PTR: reserved, 1
+	NoLowSpec                       // bit 2: there is no low specification limit
+	NoHighSpec                      // bit 3: there is no high specification limit
+	DefaultLow                      // bit 4: LO_LIMIT and LLM_SCAL are invalid, the default holds
+	DefaultHigh                     // bit 5: HI_LIMIT and HLM_SCAL are invalid, the default holds
+	NoLow                           // bit 6: there is no low limit
+	NoHigh                          // bit 7: there is no high limit
 )
 
 // Bits of OPT_FLAG in FTR; a set bit takes the field away. Bits 6 and 7 are 1.

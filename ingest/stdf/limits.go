@@ -188,6 +188,18 @@ func (t *Test) keep(l *Limits) (*Limits, int) {
 	return &kept, len(t.Limits) - 1
 }
 
+// LimitsOf are the limits that a result of the test was judged by. Where they
+// were not kept, as the test has too many different ones, they are unknown: NaN,
+// with the unit and scale of the default.
+func (t *Test) LimitsOf(r *Result) Limits {
+	if r.Limits >= 0 && int(r.Limits) < len(t.Limits) {
+		return *t.Limits[r.Limits]
+	}
+	l := noLimits
+	l.take(t.Limits[t.Default], hasUnits|hasResScale|hasResFormat)
+	return l
+}
+
 // seen remembers how the optional part of a PTR was read: most records of a
 // test either leave it out or repeat it byte for byte.
 type seen struct {

@@ -150,7 +150,7 @@ func TestLimitsIndex(t *testing.T) {
 func TestManyLimits(t *testing.T) {
 	var recs []Record
 	for i := range 3 * maxLimits {
-		recs = append(recs, &PTR{Number: 7, Head: 1, Site: 1, Optional: &Optional{Present: 12, LoLimit: float32(i), HiLimit: 1000}})
+		recs = append(recs, &PTR{Number: 7, Head: 1, Site: 1, Optional: &Optional{Present: 12, LoLimit: float32(i), HiLimit: 1000, Units: "V"}})
 	}
 	got, r := readAll(t, write(t, LittleEndian, append(recs, recs...)...))
 	for i, rec := range got {
@@ -163,6 +163,12 @@ func TestManyLimits(t *testing.T) {
 		}
 	}
 	test := r.Tests()[0]
+	if l := test.LimitsOf(&Result{Limits: -1}); l.Lower == l.Lower || l.Units != "V" {
+		t.Errorf("limits that are not kept are %s", show(l))
+	}
+	if l := test.LimitsOf(&Result{Limits: 3}); l.Lower != 3 {
+		t.Errorf("limits 3 are %s", show(l))
+	}
 	if len(test.Limits) != maxLimits || test.NotKept != 4*maxLimits || test.Overridden != 6*maxLimits-2 {
 		t.Errorf("%d limits, %d not kept, %d overridden", len(test.Limits), test.NotKept, test.Overridden)
 	}

@@ -8,6 +8,9 @@ import (
 	"testing"
 )
 
+// optReserved is what a PTR has in the bit of OPT_FLAG that is reserved for it.
+const optReserved = NoStart
+
 // madeFile describes a made-up wafer-test file: invented values, for the
 // structure of files only.
 type madeFile struct {

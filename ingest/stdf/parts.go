@@ -43,7 +43,7 @@ type Parts struct {
 	gaps    int64 // of the Reader, seen here
 	closed  bool
 
-	results, orphans int64
+	orphans int64
 }
 
 // Part is one tested part.
@@ -98,7 +98,7 @@ type Result struct {
 	// test 1 for pass, 0 for fail. NaN where the file has none. Value is what
 	// to compute with.
 	Raw    float32
-	Limits int16 // index in Test.Limits, -1 when they are not kept there
+	Limits int16 // index in Test.Limits, -1 when they are not kept there; see Test.LimitsOf
 	Column int16 // MPR: place of the result in its record, from 0; -1 when the record has none; else 0
 	Flag   TestFlag
 	Parm   ParmFlag
@@ -188,6 +188,9 @@ func (p *Parts) Scan() bool {
 		if p.gaps != p.r.gaps {
 			p.gap()
 		}
+		if p.r.oddAt == p.r.at && p.r.at > 0 {
+			p.odd(p.r.rec)
+		}
 		switch p.r.kind {
 		case KindPTR:
 			p.parametric(&p.r.ptr)
@@ -259,7 +262,7 @@ func (p *Parts) abandon(s *slot, why string) {
 		}
 		d.list = append(d.list, Damage{s.opened, kind, 0, text})
 	}
-	s.isOpen, s.results = false, s.results[:0]
+	s.isOpen, s.damaged, s.results = false, false, s.results[:0]
 }
 
 // at gives the slot that a result belongs to. One without a PIR is kept: its
@@ -324,7 +327,7 @@ func (p *Parts) end(m *PRR) {
 	*part = Part{
 		Run: run.Index, Wafer: w.Index, WaferID: w.ID, Number: p.number, Offset: p.r.at, Opened: -1,
 		Head: m.Head, Site: m.Site, HardBin: Missing, SoftBin: Missing, X: Missing, Y: Missing,
-		Flag: m.Flag, Tests: m.Tests, TestTime: m.TestTime, Damaged: s.damaged && s.isOpen,
+		Flag: m.Flag, Tests: m.Tests, TestTime: m.TestTime, Damaged: s.damaged,
 		id: m.PartID, text: m.PartText,
 	}
 	if m.HardBin != NoBin {
@@ -347,12 +350,11 @@ func (p *Parts) end(m *PRR) {
 			m.Head, m.Site, plural(len(part.Results), "result"))
 	}
 	if part.Damaged {
-		p.r.damages.add(p.r.at, DamageGap, 0, "the part that ends here on head %d, site %d lies over a damaged place; %s of it are left",
+		p.r.damages.add(p.r.at, DamageGap, 0, "the part that ends here on head %d, site %d lies over a damaged place; what is left of it is %s",
 			m.Head, m.Site, plural(len(part.Results), "result"))
 	}
 	// Part.Results is a view of the slot's, good until the next Scan.
 	s.isOpen, s.damaged, s.results = false, false, s.results[:0]
-	p.results += int64(len(part.Results))
 	run.count(part)
 	w.Parts++
 	if part.Pass() == 1 {
@@ -361,6 +363,24 @@ func (p *Parts) end(m *PRR) {
 	if m.Flag.Retest() {
 		w.Retested++
 	}
+}
+
+// odd marks the part that an odd result or PRR belongs to.
+func (p *Parts) odd(rec Record) {
+	var s *slot
+	switch m := rec.(type) {
+	case *PTR:
+		s = p.at(m.Head, m.Site)
+	case *MPR:
+		s = p.at(m.Head, m.Site)
+	case *FTR:
+		s = p.at(m.Head, m.Site)
+	case *PRR:
+		s = p.slot(m.Head, m.Site)
+	default:
+		return
+	}
+	s.damaged = true
 }
 
 // gap marks what is open over a damaged place. Where records may be missing,

@@ -116,7 +116,7 @@ func (r *Reader) odd(h header) bool {
 		r.damages.add(at, DamageRecord, 0, "a field of a %s record runs over its end; that field and those behind it are read as missing", h.kind)
 	}
 	r.oddKept[h.kind]++
-	r.noteGap(0)
+	r.oddAt = at
 	r.deliver(h)
 	return true
 }
@@ -170,8 +170,8 @@ func (r *Reader) resume(at int64, why func() string) {
 // time, which only packed data can reach with a small file.
 const maxSkip = 1 << 30
 
-// noteGap counts a stretch of bytes that gave no record, or a single record
-// that is odd (0). Records may be missing between its ends.
+// noteGap counts a stretch of bytes that gave no record; 0 stands for a single
+// record that was left out, where no others can be missing.
 func (r *Reader) noteGap(bytes int64) {
 	r.gaps++
 	r.torn = r.torn || bytes > 0

@@ -55,10 +55,7 @@ func (r *Reader) begin() bool {
 			return zstd.NewReader(in, zstd.WithDecoderConcurrency(1), zstd.WithDecoderLowmem(true), zstd.WithDecoderMaxWindow(window))
 		})
 	}
-	if r.err == nil {
-		r.findOrder()
-	}
-	return r.err == nil
+	return r.findOrder()
 }
 
 // unpack puts an unpacker in front of what was read and what is left.
@@ -69,11 +66,9 @@ func (r *Reader) unpack(name string, open func(io.Reader) (io.Reader, error)) {
 	}
 	in, err := open(io.MultiReader(bytes.NewReader(read), r.src))
 	r.src.packed = name
-	r.in, r.end, r.eof = in, 0, false
+	r.in, r.end, r.eof = in, 0, err != nil
 	if err != nil {
-		r.eof = true
 		r.endOfInput(err)
-		r.noSTDF("")
 	}
 }
 
@@ -93,28 +88,27 @@ func far(b []byte) (big, ok bool) {
 
 // findOrder settles the byte order by the file attributes record; where that
 // is missing or contradicts itself, by which order makes a chain of headers.
-func (r *Reader) findOrder() {
+// False when there is no STDF V4 here.
+func (r *Reader) findOrder() bool {
 	n := r.need(6)
 	if n == 0 {
-		r.noSTDF("the file is empty")
-		return
+		return r.noSTDF("the file is empty")
 	}
 	b := r.buf[r.pos : r.pos+n]
 	big, isFAR := far(b)
 	if isFAR && n < 6 {
 		r.c.big = big
-		return // cut inside its first record: Scan says so
+		return true // cut inside its first record: Scan says so
 	}
 	if isFAR {
 		cpu, version := b[4], b[5]
 		if version >= 1 && version <= 3 {
-			r.err = &FormatError{5, fmt.Sprintf("this is STDF version %d; only version 4 is read", version), "have it written as STDF V4"}
-			return
+			return r.refuse(&FormatError{5, fmt.Sprintf("this is STDF version %d; only version 4 is read", version), "have it written as STDF V4"})
 		}
 		if version == 4 && (cpu == 1 && big || cpu == 2 && !big || cpu == 0 && !big) {
 			r.c.big = big
 			r.findFloats(cpu)
-			return
+			return true
 		}
 	}
 	little, _ := r.score(0, false)
@@ -130,8 +124,9 @@ func (r *Reader) findOrder() {
 		r.c.big = order
 		r.damages.add(0, DamageStart, 0, "the file does not start with a file attributes record; read as %s, as its headers chain so", orderName(order))
 	default:
-		r.findStart()
+		return r.findStart()
 	}
+	return true
 }
 
 // strongChain is how many headers must chain to call something STDF that does
@@ -140,11 +135,10 @@ const strongChain = 8
 
 // findStart looks for the first records behind something else: a label, a
 // transfer's preamble, a start that was overwritten.
-func (r *Reader) findStart() {
+func (r *Reader) findStart() bool {
 	b := r.buf[r.pos:r.end]
 	if bytes.HasPrefix(b, []byte{2, 0, 0, 13, 10}) || bytes.HasPrefix(b, []byte{0, 2, 0, 13, 10}) {
-		r.err = &FormatError{3, "line ends were put into the file, as by a transfer in text mode", "send it again in binary mode"}
-		return
+		return r.refuse(&FormatError{3, "line ends were put into the file, as by a transfer in text mode", "send it again in binary mode"})
 	}
 	for s := 0; r.need(s+6) >= s+6; s++ {
 		for _, big := range [...]bool{false, true} {
@@ -158,22 +152,26 @@ func (r *Reader) findStart() {
 				r.c.big = big
 				r.damages.add(0, DamageStart, int64(s), "no record starts at the first byte; read from byte %d as %s, where headers chain", s, orderName(big))
 				r.pos += s
-				return
+				return true
 			}
 		}
 	}
-	r.noSTDF("no STDF records are found here")
+	return r.noSTDF("no STDF records are found here")
 }
 
-func (r *Reader) noSTDF(text string) {
-	if r.err != nil {
-		return // it could not be read
-	}
+func (r *Reader) noSTDF(text string) bool {
 	if e := r.src.unpackErr; e != nil && r.base+int64(r.end) == 0 {
-		r.err = &FormatError{0, fmt.Sprintf("the %s data cannot be unpacked (%v)", r.src.packed, e), "fetch the file again"}
-		return
+		return r.refuse(&FormatError{0, fmt.Sprintf("the %s data cannot be unpacked (%v)", r.src.packed, e), "fetch the file again"})
 	}
-	r.err = &FormatError{0, text, "give a file in STDF V4, plain or packed with gzip or zstd"}
+	return r.refuse(&FormatError{0, text, "give a file in STDF V4, plain or packed with gzip or zstd"})
+}
+
+// refuse gives up, unless that it could not be read is known already.
+func (r *Reader) refuse(err *FormatError) bool {
+	if r.err == nil {
+		r.err = err
+	}
+	return false
 }
 
 func orderName(big bool) string {
