@@ -24,3 +24,18 @@ func BenchmarkExact(b *testing.B) {
 		})
 	}
 }
+
+func BenchmarkInvert(b *testing.B) {
+	m, err := NewModel(demoDevice(), demoTests()...)
+	if err != nil {
+		b.Fatal(err)
+	}
+	var r []Reading
+	for i := range m.Tests {
+		r = append(r, Reading{Test: i, LogRatio: 0.02})
+	}
+	prior := UsualPrior()
+	for b.Loop() {
+		m.Invert(r, prior)
+	}
+}

@@ -67,8 +67,8 @@ func (m *Model) openBaseTables() int {
 
 func (m *Model) build() error {
 	m.grid = plane2{
-		newAxis(math.Log(MinThicknessRatio), math.Log(MaxThicknessRatio), 31),
-		newAxis(math.Log(MinDopingRatio), math.Log(MaxDopingRatio), 19),
+		newAxis(math.Log(MinThicknessRatio), math.Log(MaxThicknessRatio), 33),
+		newAxis(math.Log(MinDopingRatio), math.Log(MaxDopingRatio), 16),
 	}
 	m.recipes = make([]recipe, len(m.Tests))
 	needRim := false
@@ -150,7 +150,7 @@ func (m *Model) processAt(u, v float64, rest *Process) Process {
 
 // weakEvery is how many nodes apart the weak parameters' slopes are computed; in
 // between they are interpolated on straight lines.
-const weakEvery = 3
+const weakEveryU, weakEveryV = 4, 5
 
 func (m *Model) fillPlane() error {
 	g := m.grid
@@ -171,7 +171,7 @@ func (m *Model) fillPlane() error {
 		for k := range vals {
 			m.tables[k].f[i] = vals[k]
 		}
-		if (i/g.v.n)%weakEvery != 0 || (i%g.v.n)%weakEvery != 0 {
+		if (i/g.v.n)%weakEveryU != 0 || (i%g.v.n)%weakEveryV != 0 {
 			return
 		}
 		for w, param := range weak {
@@ -198,26 +198,27 @@ func (m *Model) fillPlane() error {
 			return fmt.Errorf("junction: the device has no depletion layer at %g V: check epi, base depth and base surface concentration", t.volts)
 		}
 		for w := range t.weak {
-			t.weak[w].fillBetween(g, weakEvery)
+			t.weak[w].fillBetween(g)
 			t.weak[w].mend(g)
 		}
 	}
 	return nil
 }
 
-// fillBetween interpolates a surface of which only every k-th node is set.
-func (f surface) fillBetween(g plane2, k int) {
+// fillBetween interpolates a surface of which only every few nodes are set.
+func (f surface) fillBetween(g plane2) {
+	const ku, kv = weakEveryU, weakEveryV
 	for i := range g.u.n {
-		i0 := min(i/k*k, g.u.n-1-k)
-		a := float64(i-i0) / float64(k)
+		i0 := min(i/ku*ku, g.u.n-1-ku)
+		a := float64(i-i0) / ku
 		for j := range g.v.n {
-			j0 := min(j/k*k, g.v.n-1-k)
-			if i%k == 0 && j%k == 0 {
+			j0 := min(j/kv*kv, g.v.n-1-kv)
+			if i%ku == 0 && j%kv == 0 {
 				continue
 			}
-			b := float64(j-j0) / float64(k)
+			b := float64(j-j0) / kv
 			at := func(i, j int) float64 { return f[i*g.v.n+j] }
-			f[i*g.v.n+j] = (1-a)*((1-b)*at(i0, j0)+b*at(i0, j0+k)) + a*((1-b)*at(i0+k, j0)+b*at(i0+k, j0+k))
+			f[i*g.v.n+j] = (1-a)*((1-b)*at(i0, j0)+b*at(i0, j0+kv)) + a*((1-b)*at(i0+ku, j0)+b*at(i0+ku, j0+kv))
 		}
 	}
 }
@@ -234,9 +235,10 @@ func (m *Model) planeAt(dst []float64, p Process) {
 		t := &m.tables[k]
 		switch t.kind {
 		case openBase:
-			mid := math.Log(d.planeBreakdown(math.Exp(-level)))
-			hi := math.Log(d.planeBreakdown(math.Exp(-level - gainRange)))
-			lo := math.Log(d.planeBreakdown(math.Exp(-level + gainRange)))
+			v, near := d.planeBreakdownNear(math.Exp(-level), nil)
+			v1, _ := d.planeBreakdownNear(math.Exp(-level-gainRange), &near)
+			v0, _ := d.planeBreakdownNear(math.Exp(-level+gainRange), &near)
+			mid, hi, lo := math.Log(v), math.Log(v1), math.Log(v0)
 			dst[k], dst[k+1], dst[k+2] = mid, (hi-lo)/(2*gainRange), (hi+lo-2*mid)/(2*gainRange*gainRange)
 		case openBaseSlope, openBaseBend: // with openBase
 		case planeLimit:

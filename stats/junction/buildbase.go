@@ -64,7 +64,7 @@ type rimTable struct {
 }
 
 func (m *Model) fillRims() *rimTable {
-	t := &rimTable{n: newAxis(-1.3, 2.4, 10), r: newAxis(-1.2, 0.9, 8), s: newAxis(0, 1, 9), surface: m.nominal.surface}
+	t := &rimTable{n: newAxis(-1.3, 2.4, 8), r: newAxis(-1.2, 0.9, 7), s: newAxis(0, 1, 9), surface: m.nominal.surface}
 	t.f = make([]float64, t.n.n*t.r.n*t.s.n)
 	x := m.nominal
 	at := func(n, r, s, ns, kelvin float64) float64 {
@@ -150,7 +150,7 @@ func (k *leakTable) gain(share float64) float64 {
 	if share >= 1 {
 		return math.Inf(1)
 	}
-	if share <= k.u.lo {
+	if !(share > k.u.lo) {
 		return 1
 	}
 	s := k.u.stencil(share)

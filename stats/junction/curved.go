@@ -125,7 +125,7 @@ func (c *rim) seek(value float64, quantity func(ri float64) float64) float64 {
 		}
 		return math.Log(v / value)
 	}
-	x := bracketed(f, math.Log(0.4), math.Log(1e-4), math.Log(0.999))
+	x := bracketed(f, math.Log(0.3), 0.25, math.Log(1e-4), math.Log(0.999))
 	return c.rj * (1 - math.Exp(x))
 }
 
@@ -138,8 +138,12 @@ func (c *rim) builtIn(kelvin float64) float64 {
 	})
 }
 
-// breakdown is the applied reverse voltage at which the integral reaches 1.
+// breakdown is the applied reverse voltage at which the integral reaches 1, or at
+// which the base under the mask edge is used up before that.
 func (c *rim) breakdown(law *ionisation, kelvin float64) float64 {
 	ri := c.seek(1, func(r float64) float64 { return c.multiplication(r, law) })
+	if math.IsNaN(ri) {
+		ri = 2e-3 * c.rj
+	}
 	return c.potential(ri) - c.builtIn(kelvin)
 }

@@ -95,11 +95,17 @@ func (x *die) layerAt(volts float64) (layer, bool) { return x.prof.at(volts + x.
 // planeBreakdown is the applied voltage at which the plane junction's integral
 // reaches a level: 1 for BVcbo, 1/(1+hFE) for BVceo.
 func (x *die) planeBreakdown(level float64) float64 {
-	l, ok := x.prof.atLevel(level, &x.law)
+	v, _ := x.planeBreakdownNear(level, nil)
+	return v
+}
+
+// planeBreakdownNear starts at the layer of a similar level; it returns its own.
+func (x *die) planeBreakdownNear(level float64, near *layer) (float64, layer) {
+	l, ok := x.prof.atLevel(level, &x.law, near)
 	if !ok {
-		return math.NaN()
+		return math.NaN(), l
 	}
-	return x.prof.potential(&l) - x.vbi
+	return x.prof.potential(&l) - x.vbi, l
 }
 
 // multiplied is 1/(1-I) of the plane junction; +Inf at and above breakdown.

@@ -16,7 +16,7 @@ import (
 // which charts and drift must use: a prior centred on the target hides drift.
 //
 // Readings with a NaN ratio are skipped. It panics when a reading names no test,
-// or at more than 24 readings.
+// or at more than 23 readings.
 func (m *Model) Invert(readings []Reading, prior Prior) Posterior {
 	for _, r := range readings {
 		if r.Test < 0 || r.Test >= len(m.Tests) {
@@ -24,19 +24,22 @@ func (m *Model) Invert(readings []Reading, prior Prior) Posterior {
 		}
 	}
 	q := m.pose(readings, prior)
-	sigmaU := m.NetSigma(prior)
-	u, v := q.fit(sigmaU)
-
-	post := q.posteriorField(sigmaU)
-	like := q.zoom(m.grid.u, m.grid.v, 0, 8)
+	full := q.withPrior()
+	full.fit()
+	post := full.posteriorField()
+	// Data alone are linearised at their own best point: the prior's compromise would
+	// bend the nuisances of a lot far off target.
+	q.rest, q.u, q.v = full.rest, full.u, full.v
+	q.fit()
+	like := q.zoom(m.grid.u, m.grid.v, 8)
 
 	var p Posterior
-	p.Best = m.processAt(u, v, &q.rest)
-	q.epi(&p, post, like, sigmaU)
-	q.others(&p, post)
+	p.Best = m.processAt(full.u, full.v, &full.rest)
+	q.epi(&p, post, like)
+	full.others(&p, post)
 	q.regime(&p, post)
 	var c cell
-	q.evaluate(&c, u, v)
+	q.evaluate(&c, full.u, full.v)
 	for i := range q.exact {
 		p.Misfit += c.z[i] * c.z[i]
 	}
@@ -47,17 +50,18 @@ func (m *Model) Invert(readings []Reading, prior Prior) Posterior {
 }
 
 // posteriorField scans five prior sigmas, as far as the tables go.
-func (q *problem) posteriorField(sigmaU float64) *field2 {
-	g, sv := q.m.grid, q.prior.Sigma[EpiDoping]
+func (q *problem) posteriorField() *field2 {
+	g, sigmaU, sv := q.m.grid, q.m.NetSigma(q.prior), q.prior.Sigma[EpiDoping]
 	clip := func(a axis, sigma float64) axis {
 		return newAxis(math.Max(a.lo, -5*sigma), math.Min(a.hi(), 5*sigma), coarseNodes)
 	}
-	return q.zoom(clip(g.u, sigmaU), clip(g.v, sv), sigmaU, 9)
+	return q.zoom(clip(g.u, sigmaU), clip(g.v, sv), 9)
 }
 
 // epi fills in thickness, doping and what follows from them alone.
-func (q *problem) epi(p *Posterior, post, like *field2, sigmaU float64) {
+func (q *problem) epi(p *Posterior, post, like *field2) {
 	m := q.m
+	sigmaU := m.NetSigma(q.prior)
 	d := &m.Device
 	w := post.weights()
 	wu, wv := post.marginal(w, true), post.marginal(w, false)

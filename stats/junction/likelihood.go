@@ -10,8 +10,13 @@ type Reading struct {
 	Censor   int     // +1: the level is at least this, -1: at most
 }
 
-// maxReadings bounds a single inversion.
+// maxReadings bounds a single inversion; one place is the prior's.
 const maxReadings = 24
+
+// believed stands for the prior of the grown thickness, which is one more reading:
+// so base depth and up-diffusion are tied to the net thickness as they are in the
+// wafer.
+const believed = -1
 
 // problem is an inversion made ready: readings, and the nuisances' linearisation.
 type problem struct {
@@ -27,6 +32,40 @@ type problem struct {
 	resp   []surface               // response of each reading to thickness and doping, nuisances at their prior mean
 	flat   []float64               // its slope at nominal along thickness, for the knee
 	gain   float64                 // ln hFE ratio as measured, for the slope's error
+	u, v   float64                 // the fit
+}
+
+// withPrior is the problem with the prior of the grown thickness among its
+// readings; that of doping is added on the grid.
+func (q *problem) withPrior() *problem {
+	p := *q
+	p.exact = append([]Reading{{Test: believed, Sigma: math.Max(q.prior.Sigma[EpiThickness], 1e-4)}}, q.exact...)
+	return &p
+}
+
+// pull is 1/(2 sigma^2) of the prior of doping, 0 without a prior.
+func (q *problem) pull() float64 {
+	if len(q.exact) > 0 && q.exact[0].Test == believed {
+		return 1 / (2 * q.prior.Sigma[EpiDoping] * q.prior.Sigma[EpiDoping])
+	}
+	return 0
+}
+
+// measures is what a reading measures, "" for the prior.
+func (q *problem) measures(i int) string {
+	if t := q.reading(i).Test; t != believed {
+		return q.m.Tests[t].Measures
+	}
+	return ""
+}
+
+// response is ln of what a reading would be over nominal at a spot.
+func (q *problem) response(i int, s *spot, u float64) float64 {
+	t := q.reading(i).Test
+	if t == believed {
+		return q.m.processAt(u, s.p[EpiDoping], s.p)[EpiThickness]
+	}
+	return q.m.log(t, s) - q.m.levels[t]
 }
 
 // pose sorts the readings out. A BVceo at BVcbo is capped by its collector junction
@@ -67,8 +106,8 @@ func (m *Model) pose(readings []Reading, prior Prior) *problem {
 			q.gain = r.LogRatio
 		}
 	}
-	if n := len(q.exact) + len(q.bound); n > maxReadings {
-		panic("junction: more than 24 readings in one inversion: join readings of the same test first")
+	if q.size() >= maxReadings {
+		panic("junction: more than 23 readings in one inversion: join readings of the same test first")
 	}
 	return q
 }
@@ -92,7 +131,7 @@ func (q *problem) linearise(u, v float64) {
 		q.m.locateAt(&s, u, p)
 		out := make([]float64, n)
 		for i := range out {
-			out[i] = q.m.log(q.reading(i).Test, &s)
+			out[i] = q.response(i, &s, u)
 		}
 		return out
 	}
@@ -136,11 +175,11 @@ func (q *problem) respond() {
 	p := q.rest
 	for at := range m.grid.u.n * m.grid.v.n {
 		p[EpiDoping] = m.grid.v.at(at % m.grid.v.n)
-		m.locateAt(&s, m.grid.u.at(at/m.grid.v.n), &p)
+		u := m.grid.u.at(at / m.grid.v.n)
+		m.locateAt(&s, u, &p)
 		for i := range n {
-			test := q.reading(i).Test
 			// A leakage in breakdown is as far off as need be.
-			q.resp[i][at] = math.Min(m.log(test, &s)-m.levels[test], 20)
+			q.resp[i][at] = math.Min(q.response(i, &s, u), 20)
 		}
 	}
 	nominal := m.grid.point(0, 0)
@@ -181,16 +220,19 @@ func (q *problem) evaluate(c *cell, u, v float64) float64 {
 		// How much steeper or flatter the response is here than at nominal is what
 		// a misplaced knee gets wrong.
 		c.knee[i] = q.prior.Knee * (slope - q.flat[i])
+		if q.reading(i).Test == believed {
+			c.knee[i] = 0
+		}
 	}
 	ll := 0.0
 	for i := range n {
-		t := &m.Tests[q.reading(i).Test]
+		measures := q.measures(i)
 		for j := range i + 1 {
 			a := q.noise[i][j] + c.knee[i]*c.knee[j]
-			if i == j {
-				e := q.prior.Response * responseError(t.Measures) * c.resp[i]
+			if i == j && measures != "" {
+				e := q.prior.Response * responseError(measures) * c.resp[i]
 				a += e * e
-				if t.Measures == BVceo {
+				if measures == BVceo {
 					g := q.prior.GainSlope * 0.18 * q.gain
 					a += g * g
 				}
@@ -265,14 +307,14 @@ func (q *problem) conditional(c *cell) (mean [numNuisances]float64, cov [numNuis
 }
 
 // fit finds the most probable thickness, doping and nuisances and linearises there:
-// Gauss-Newton on the marginal problem, nuisances following by their conditional
+// a search on the marginal problem, nuisances following by their conditional
 // means. Two rounds do, since the logs are nearly straight.
-func (q *problem) fit(sigmaU float64) (u, v float64) {
+func (q *problem) fit() {
 	var c cell
-	q.linearise(0, 0)
+	q.linearise(q.u, q.v)
 	for range 2 {
-		u, v = q.climb(&c, sigmaU, u, v)
-		q.evaluate(&c, u, v)
+		q.climb(&c)
+		q.evaluate(&c, q.u, q.v)
 		if !c.ok {
 			break
 		}
@@ -281,30 +323,32 @@ func (q *problem) fit(sigmaU float64) (u, v float64) {
 			limit := 4 * q.prior.Sigma[param]
 			q.rest[param] = math.Min(math.Max(mean[k], -limit), limit)
 		}
-		q.linearise(u, v)
+		q.linearise(q.u, q.v)
 	}
-	return u, v
 }
 
 // climb maximises likelihood and prior over thickness and doping by a shrinking
 // pattern search: the function is cheap, two-dimensional and may be flat on a side.
-func (q *problem) climb(c *cell, sigmaU, u, v float64) (float64, float64) {
-	sigmaV := q.prior.Sigma[EpiDoping]
+func (q *problem) climb(c *cell) {
+	sigmaU, sigmaV := q.m.NetSigma(q.prior), q.prior.Sigma[EpiDoping]
+	pull, g := q.pull(), q.m.grid
 	f := func(u, v float64) float64 {
-		return q.evaluate(c, u, v) - u*u/(2*sigmaU*sigmaU) - v*v/(2*sigmaV*sigmaV)
+		if u < g.u.lo || u > g.u.hi() || v < g.v.lo || v > g.v.hi() {
+			return math.Inf(-1)
+		}
+		return q.evaluate(c, u, v) - pull*v*v
 	}
-	best := f(u, v)
+	best := f(q.u, q.v)
 	for step := 1.0; step > 0.02; {
 		moved := false
 		for _, d := range [8][2]float64{{1, 0}, {-1, 0}, {0, 1}, {0, -1}, {1, 1}, {-1, -1}, {1, -1}, {-1, 1}} {
-			a, b := u+d[0]*step*sigmaU, v+d[1]*step*sigmaV
+			a, b := q.u+d[0]*step*sigmaU, q.v+d[1]*step*sigmaV
 			if g := f(a, b); g > best {
-				u, v, best, moved = a, b, g, true
+				q.u, q.v, best, moved = a, b, g, true
 			}
 		}
 		if !moved {
 			step /= 2
 		}
 	}
-	return u, v
 }

@@ -24,10 +24,9 @@ type Information struct {
 // counts for little), then the linear-Gaussian gain. Expected, before the reading;
 // the actual gain depends on it.
 func (m *Model) NextTest(readings []Reading, prior Prior, candidates []Reading) []Information {
-	base := m.pose(readings, prior)
-	sigmaU := m.NetSigma(prior)
-	base.fit(sigmaU)
-	post := base.posteriorField(sigmaU)
+	base := m.pose(readings, prior).withPrior()
+	base.fit()
+	post := base.posteriorField()
 	w := post.weights()
 
 	// The candidates' responses, on the same linearisation.
@@ -39,7 +38,7 @@ func (m *Model) NextTest(readings []Reading, prior Prior, candidates []Reading) 
 		}
 		cand.exact = append(cand.exact, r)
 	}
-	cand.linearise(base.rest[EpiThickness], 0)
+	cand.linearise(base.u, base.v)
 
 	n := len(cand.exact)
 	sum := make([]moments, n)
@@ -71,7 +70,7 @@ func (m *Model) NextTest(readings []Reading, prior Prior, candidates []Reading) 
 	for k := range out {
 		out[k] = sum[k].information()
 		out[k].Test = cand.exact[k].Test
-		out[k].ThicknessShareOfPrior *= 1 / sigmaU
+		out[k].ThicknessShareOfPrior /= m.NetSigma(prior)
 	}
 	sort.SliceStable(out, func(i, j int) bool { return out[i].Bits > out[j].Bits })
 	return out

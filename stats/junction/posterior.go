@@ -73,17 +73,15 @@ type field2 struct {
 	max  float64
 }
 
-func (q *problem) scan(u, v axis, sigmaU float64) *field2 {
+// scan evaluates a grid; the prior of doping counts when that of thickness does.
+func (q *problem) scan(u, v axis) *field2 {
 	f := &field2{u: u, v: v, log: make([]float64, u.n*v.n), max: math.Inf(-1)}
 	var c cell
-	sv := q.prior.Sigma[EpiDoping]
+	pull := q.pull()
 	for i := range u.n {
 		for j := range v.n {
-			x, y := u.at(i), v.at(j)
-			ll := q.evaluate(&c, x, y)
-			if sigmaU > 0 {
-				ll -= x*x/(2*sigmaU*sigmaU) + y*y/(2*sv*sv)
-			}
+			y := v.at(j)
+			ll := q.evaluate(&c, u.at(i), y) - pull*y*y
 			f.log[i*v.n+j] = ll
 			f.max = math.Max(f.max, ll)
 		}
@@ -110,11 +108,11 @@ const coarseNodes, fineNodes = 25, 41
 
 // zoom scans coarsely over a range, then finely over what counts, until the grid
 // resolves it.
-func (q *problem) zoom(u, v axis, sigmaU, drop float64) *field2 {
-	f := q.scan(u, v, sigmaU)
+func (q *problem) zoom(u, v axis, drop float64) *field2 {
+	f := q.scan(u, v)
 	for range 3 {
 		u, v := f.box(drop)
-		next := q.scan(u, v, sigmaU)
+		next := q.scan(u, v)
 		done := (next.u.hi()-next.u.lo) > 0.6*(f.u.hi()-f.u.lo) && (next.v.hi()-next.v.lo) > 0.6*(f.v.hi()-f.v.lo)
 		f = next
 		if done {

@@ -90,9 +90,10 @@ func responseError(measures string) float64 {
 	return 0.10
 }
 
-// nuisances are the parameters that are integrated out around thickness and
-// doping. Up-diffusion is in the net thickness; a corner acts like the edge.
-var nuisances = [...]Param{BaseDose, BaseDepth, EmitterDepth, EdgeRadius, OxideCharge, Lifetime, SurfaceVelocity,
+// nuisances are the parameters that are integrated out around net thickness and
+// doping. Up-diffusion is there for the shape of the tail at a given net
+// thickness; a corner acts like the edge.
+var nuisances = [...]Param{BaseDose, BaseDepth, EmitterDepth, UpDiffusion, EdgeRadius, OxideCharge, Lifetime, SurfaceVelocity,
 	EmitterGummel, SeriesResistance, Modulation, Temperature}
 
 const numNuisances = len(nuisances)

@@ -239,17 +239,22 @@ func (p *profile) generation(l *layer, fg float64) float64 {
 // at finds the layer under a total potential.
 func (p *profile) at(psi float64) (layer, bool) {
 	// Endless epi alone would hold this charge.
-	return p.seek(psi, math.Sqrt(2*permittivity*p.nd*math.Max(psi, 1e-3)/charge), p.potential)
+	return p.seek(psi, math.Sqrt(2*permittivity*p.nd*math.Max(psi, 1e-3)/charge), 0.2, p.potential)
 }
 
-// atLevel finds the layer whose ionisation integral has a value.
-func (p *profile) atLevel(level float64, law *ionisation) (layer, bool) {
-	return p.seek(level, permittivity/charge*1.8e5, func(l *layer) float64 { return p.multiplication(l, law) })
+// atLevel finds the layer whose ionisation integral has a value, starting near the
+// charge of another or, where near is nil, of a usual field.
+func (p *profile) atLevel(level float64, law *ionisation, near *layer) (layer, bool) {
+	guess, step := permittivity/charge*1.8e5, 0.2
+	if near != nil && near.charge > 0 {
+		guess, step = near.charge, 0.06
+	}
+	return p.seek(level, guess, step, func(l *layer) float64 { return p.multiplication(l, law) })
 }
 
 // seek finds the layer at which a quantity that rises with charge has a value,
-// starting near a charge.
-func (p *profile) seek(value, guess float64, quantity func(*layer) float64) (layer, bool) {
+// starting near a charge; step is how far from it in logs to look first.
+func (p *profile) seek(value, guess, step float64, quantity func(*layer) float64) (layer, bool) {
 	full := p.acceptorsTo(p.xjc) - p.nd*p.xjc - (p.tailTo(p.xjc) - p.tailTo(0))
 	f := func(lnq float64) float64 {
 		l, ok := p.deplete(math.Exp(lnq))
@@ -266,7 +271,7 @@ func (p *profile) seek(value, guess float64, quantity func(*layer) float64) (lay
 	if !(full > 1e9) {
 		return layer{}, false
 	}
-	x := bracketed(f, math.Log(guess), lo, hi)
+	x := bracketed(f, math.Log(guess), step, lo, hi)
 	l, ok := p.deplete(math.Exp(x))
 	return l, ok
 }
@@ -293,7 +298,7 @@ func fixedBuiltIn(kelvin, nd float64, edge func(psi float64) (float64, bool)) fl
 			return math.NaN()
 		}
 		next := math.Max(0.1, vt*math.Log(n/ni*(nd/ni)))
-		if math.Abs(next-v) < 1e-7 {
+		if math.Abs(next-v) < 1e-5 {
 			return next
 		}
 		v = next

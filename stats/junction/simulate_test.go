@@ -99,25 +99,18 @@ func products() map[string]Device {
 	return map[string]Device{"A": refs["A"].device(), "B": refs["B"].device(), "knee": knee}
 }
 
-func testsFor(product, set string) []Test {
-	v := 5.0
-	hi := 30.0
-	leak := 15.0
+// testsFor is every test that a product is tried with; sets picks among them.
+func testsFor(product string) []Test {
+	v, hi, leak := 5.0, 30.0, 15.0
 	if product == "A" {
 		v, hi, leak = 10, 50, 30
 	}
-	seven := []Test{{Name: "BVCBO", Measures: BVcbo}, {Name: "BVCEO", Measures: BVceo, Current: 2e-3}, {Name: "BVEBO", Measures: BVebo},
-		{Name: "ICBO", Measures: Icbo, Voltage: leak}, {Name: "HFE", Measures: HFE}, {Name: "VCESAT", Measures: Vcesat}, {Name: "COB", Measures: Cob, Voltage: v}}
-	switch set {
-	case "two":
-		return seven[:2]
-	case "cobhi":
-		return append(seven, Test{Name: "COBHI", Measures: Cob, Voltage: hi})
-	case "rc":
-		return append(seven, Test{Name: "RC", Measures: Rc})
-	}
-	return seven
+	return []Test{{Name: "BVCBO", Measures: BVcbo}, {Name: "BVCEO", Measures: BVceo, Current: 2e-3}, {Name: "BVEBO", Measures: BVebo},
+		{Name: "ICBO", Measures: Icbo, Voltage: leak}, {Name: "HFE", Measures: HFE}, {Name: "VCESAT", Measures: Vcesat}, {Name: "COB", Measures: Cob, Voltage: v},
+		{Name: "COBHI", Measures: Cob, Voltage: hi}, {Name: "RC", Measures: Rc}, {Name: "RPINCH", Measures: Rpinch}}
 }
+
+var sets = map[string][]int{"two": {0, 1}, "seven": {0, 1, 2, 3, 4, 5, 6}, "cobhi": {0, 1, 2, 3, 4, 5, 6, 7}, "rc": {0, 1, 2, 3, 4, 5, 6, 8}}
 
 // score collects what a run of inversions got right.
 type score struct {
@@ -162,17 +155,26 @@ func median(x []float64) float64 {
 	return c[len(c)/2]
 }
 
-// simulate draws worlds and truths and inverts them.
-func simulate(t *testing.T, product, set string, worlds, truths int, pull float64, seed uint64) (w, n score, regimes map[Regime]int) {
+// tried is one product under one set of tests.
+type tried struct {
+	thickness, doping score
+	regimes           map[Regime]int
+}
+
+// simulate draws worlds and truths and inverts them under every set. With pull the
+// truths are that many prior sigmas off in thickness and doping.
+func simulate(t *testing.T, product string, worlds, truths int, pull float64, seed uint64) map[string]*tried {
 	t.Helper()
 	r := rand.New(rand.NewPCG(seed, 77))
 	prior := UsualPrior()
-	regimes = map[Regime]int{}
+	out := map[string]*tried{}
+	for name := range sets {
+		out[name] = &tried{regimes: map[Regime]int{}}
+	}
 	dev := products()[product]
 	for range worlds {
 		wd := newWorld(r, dev)
-		tests := wd.levels(testsFor(product, set))
-		m, err := NewModel(wd.knows, tests...)
+		m, err := NewModel(wd.knows, wd.levels(testsFor(product))...)
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -181,15 +183,22 @@ func simulate(t *testing.T, product, set string, worlds, truths int, pull float6
 			if pull != 0 {
 				p[EpiThickness] = pull * prior.Sigma[EpiThickness] * float64(1-2*r.IntN(2))
 				p[EpiDoping] = pull * prior.Sigma[EpiDoping] * float64(1-2*r.IntN(2))
-				p[UpDiffusion] = math.Copysign(math.Min(math.Abs(p[UpDiffusion]), prior.Sigma[UpDiffusion]), -p[EpiThickness])
 			}
-			got := m.Invert(wd.read(r, &p, m.Tests), prior)
-			w.add(math.Exp(wd.net(&p))*m.NetThickness(), got.NetThickness)
-			n.add(math.Exp(p[EpiDoping])*m.Device.EpiDopingCM3, got.Doping)
-			regimes[got.Regime]++
+			all := wd.read(r, &p, m.Tests)
+			for _, name := range sortedKeys(sets) {
+				var got []Reading
+				for _, i := range sets[name] {
+					got = append(got, all[i])
+				}
+				o := out[name]
+				post := m.Invert(got, prior)
+				o.thickness.add(math.Exp(wd.net(&p))*m.NetThickness(), post.NetThickness)
+				o.doping.add(math.Exp(p[EpiDoping])*m.Device.EpiDopingCM3, post.Doping)
+				o.regimes[post.Regime]++
+			}
 		}
 	}
-	return w, n, regimes
+	return out
 }
 
 func scale(short, long int) int {
@@ -200,16 +209,18 @@ func scale(short, long int) int {
 }
 
 func TestInvertCoverage(t *testing.T) {
-	for _, product := range []string{"A", "B", "knee"} {
-		for _, set := range []string{"two", "seven", "cobhi", "rc"} {
-			w, n, reg := simulate(t, product, set, scale(4, 30), scale(15, 40), 0, 5)
-			report := func(name string, s score) {
-				t.Logf("%-4s %-6s %-9s n %4d cover %5.3f  share %.2f  seen %4d data-only cover %5.3f  median error %.4f  blind %d (%d wrong)",
-					product, set, name, s.n, float64(s.covered)/float64(s.n), s.share/float64(s.n), s.seen, float64(s.seenCovered)/float64(s.seen), s.medianError(), s.blind, s.blindWrong)
+	for _, pull := range []float64{0, 3} {
+		for _, product := range []string{"A", "B", "knee"} {
+			got := simulate(t, product, scale(5, 40), scale(16, 50), pull, 5)
+			for _, set := range sortedKeys(got) {
+				report := func(name string, s score) {
+					t.Logf("pull %g %-4s %-6s %-9s n %4d cover %5.3f  share %.2f  seen %4d data-only cover %5.3f  median error %.4f  blind %d (%d wrong)",
+						pull, product, set, name, s.n, float64(s.covered)/float64(s.n), s.share/float64(s.n), s.seen, float64(s.seenCovered)/float64(s.seen), s.medianError(), s.blind, s.blindWrong)
+				}
+				report("thickness", got[set].thickness)
+				report("doping", got[set].doping)
+				t.Log(got[set].regimes)
 			}
-			report("thickness", w)
-			report("doping", n)
-			t.Log(reg)
 		}
 	}
 }

@@ -50,11 +50,11 @@ func root(f func(float64) float64, a, b, tol float64) float64 {
 }
 
 // bracketed finds the zero of a rising f between lo and hi, starting near guess:
-// it widens a bracket from there, which spares the far ends. NaN when there is none.
-func bracketed(f func(float64) float64, guess, lo, hi float64) float64 {
+// it widens a bracket from there by steps, which spares the far ends. NaN when
+// there is none.
+func bracketed(f func(float64) float64, guess, step, lo, hi float64) float64 {
 	a := math.Min(math.Max(guess, lo), hi)
 	fa := f(a)
-	step := 0.25
 	if fa > 0 {
 		step = -step
 	}
@@ -65,7 +65,7 @@ func bracketed(f func(float64) float64, guess, lo, hi float64) float64 {
 			return math.NaN()
 		}
 		if fa*fb <= 0 {
-			return root(f, math.Min(a, b), math.Max(a, b), 1e-9)
+			return root(f, math.Min(a, b), math.Max(a, b), 1e-8)
 		}
 		a, fa = b, fb
 		step *= 2

@@ -191,7 +191,7 @@ func (x *die) proxy(t *Test) float64 {
 func (x *die) endlessWidth(gain float64) float64 {
 	free := x.prof
 	free.t, free.lam = x.prof.xjc+1, 0 // a centimetre
-	l, ok := free.atLevel(1/(1+gain), &x.law)
+	l, ok := free.atLevel(1/(1+gain), &x.law, nil)
 	if !ok {
 		return math.NaN()
 	}
