@@ -2,9 +2,11 @@ package stats_test
 
 import (
 	"math"
+	"strings"
 
 	"kneepoint/stats"
 	"kneepoint/stats/compare"
+	"kneepoint/stats/dist"
 	"kneepoint/stats/relate"
 )
 
@@ -12,6 +14,8 @@ import (
 
 func init() {
 	for name, m := range map[string]referenceMethod{
+		"maximum likelihood with censoring: normal, lognormal, Weibull":                 {answer: referenceCensored},
+		"maximum likelihood, complete sample: normal, lognormal, #-parameter Weibull":   {answer: referenceComplete},
 		"one-way fixed-effects ANOVA":                                                   {answer: referenceOneWay},
 		"one-way ANOVA, Welch, Kruskal-Wallis, Levene, Brown-Forsythe, Bartlett":        {answer: referenceGroups},
 		"two-sample Welch t, pooled t, F ratio, Mann-Whitney, Kolmogorov-Smirnov":       {answer: referenceTwoSamples},
@@ -147,4 +151,46 @@ func referenceCorrelation(c *referenceCase) map[string]any {
 func referenceMannKendall(c *referenceCase) map[string]any {
 	t := relate.MannKendall(c.list("y"), 0.95)
 	return map[string]any{"s": t.S, "var_s": t.Variance, "z": t.Z, "p_two_sided": t.P, "sen_slope_per_step": t.Slope.Estimate}
+}
+
+func fitted(d dist.Distribution) map[string]any {
+	out := map[string]any{"loglik": d.LogLikelihood(), "aic": d.AIC(), "bic": d.BIC(),
+		"median": d.Quantile(0.5), "p01": d.Quantile(0.01), "p99": d.Quantile(0.99)}
+	location := func(n dist.Normal) {
+		out["mu"], out["sigma"], out["se_location"], out["se_log_sigma"] = n.Mu, n.Sigma, n.SEMu, n.SELogSigma
+		out["mean"], out["sd"], out["meanlog"], out["sdlog"] = n.Mu, n.Sigma, n.Mu, n.Sigma
+	}
+	switch d := d.(type) {
+	case dist.Normal:
+		location(d)
+	case dist.Lognormal:
+		location(d.Normal)
+	case dist.Weibull:
+		out["shape"], out["scale"], out["se_location"], out["se_log_sigma"] = d.Shape, d.Scale, d.SELogScale, d.SELogShape
+	}
+	return out
+}
+
+// three fits normal, lognormal and Weibull, and names the best by AIC.
+func three(r dist.Readings) (fits [3]dist.Distribution, best string) {
+	least := math.Inf(1)
+	for i, f := range []dist.Family{dist.NormalFamily, dist.LognormalFamily, dist.WeibullFamily} {
+		fits[i], _ = dist.Fit(f, r)
+		if a := fits[i].AIC(); a < least {
+			least, best = a, strings.ToLower(f.String())
+		}
+	}
+	return fits, best
+}
+
+func referenceCensored(c *referenceCase) map[string]any {
+	fits, _ := three(dist.Readings{Values: c.list("x"), Censor: c.marks("censor")})
+	n := fits[0].Count()
+	return map[string]any{"n": n.N, "n_left": n.Left, "n_right": n.Right,
+		"gaussian": fitted(fits[0]), "lognormal": fitted(fits[1]), "weibull": fitted(fits[2])}
+}
+
+func referenceComplete(c *referenceCase) map[string]any {
+	fits, best := three(dist.Readings{Values: c.list("x")})
+	return map[string]any{"normal": fitted(fits[0]), "lognormal": fitted(fits[1]), "weibull": fitted(fits[2]), "best_by_aic": best}
 }

@@ -31,13 +31,6 @@ var referenceMethods = map[string]referenceMethod{
 	"binomial proportion, # % intervals": {answer: referenceProportion, skip: map[string]string{
 		"wilson_continuity": "Wilson's interval is without continuity correction",
 	}},
-	"maximum likelihood with censoring: normal, lognormal, Weibull": {answer: referenceCensored, skip: map[string]string{
-		"weibull": "pending: dist has no Weibull yet",
-	}},
-	"maximum likelihood, complete sample: normal, lognormal, #-parameter Weibull": {answer: referenceComplete, skip: map[string]string{
-		"weibull":     "pending: dist has no Weibull yet",
-		"best_by_aic": "pending: dist has no Weibull yet",
-	}},
 }
 
 // referencePending are methods that belong to rooms not built yet, by room.
@@ -230,25 +223,4 @@ func referenceProportion(c *referenceCase) map[string]any {
 	limits := func(iv stats.Interval) []float64 { return []float64{iv.Lower, iv.Upper} }
 	return map[string]any{"estimate": w.Estimate, "wilson": limits(w), "clopper_pearson": limits(e), "agresti_coull": limits(a),
 		"upper95_one_sided_clopper_pearson": yield.UpperBound(k, n, 0.95)}
-}
-
-func fitted(d dist.Normal, quantile func(float64) float64) map[string]any {
-	return map[string]any{"mu": d.Mu, "sigma": d.Sigma, "se_location": d.SEMu, "se_log_sigma": d.SELogSigma,
-		"loglik": d.LogLik, "aic": d.AIC(), "bic": d.BIC(),
-		"median": quantile(0.5), "p01": quantile(0.01), "p99": quantile(0.99),
-		"mean": d.Mu, "sd": d.Sigma, "meanlog": d.Mu, "sdlog": d.Sigma}
-}
-
-func referenceCensored(c *referenceCase) map[string]any {
-	x, marks := c.list("x"), c.marks("censor")
-	n, _ := dist.FitNormal(x, marks)
-	l, _ := dist.FitLognormal(x, marks)
-	return map[string]any{"n": n.N, "n_left": n.Left, "n_right": n.Right,
-		"gaussian": fitted(n, n.Quantile), "lognormal": fitted(l.Normal, l.Quantile)}
-}
-
-func referenceComplete(c *referenceCase) map[string]any {
-	n, _ := dist.FitNormal(c.list("x"), nil)
-	l, _ := dist.FitLognormal(c.list("x"), nil)
-	return map[string]any{"normal": fitted(n, n.Quantile), "lognormal": fitted(l.Normal, l.Quantile)}
 }

@@ -11,7 +11,7 @@ func logPhi(z float64) float64 {
 	case z > -36:
 		return math.Log(0.5 * math.Erfc(-z/math.Sqrt2))
 	}
-	return -z*z/2 - math.Log(-z) - 0.5*math.Log(2*math.Pi) + math.Log(tail(z))
+	return -z*z/2 - math.Log(-z) - 0.5*math.Log(2*math.Pi) + math.Log(farTail(z))
 }
 
 // hazard is phi(z)/Phi(z), the derivative of logPhi.
@@ -19,12 +19,12 @@ func hazard(z float64) float64 {
 	if z > -36 {
 		return phi(z) / (0.5 * math.Erfc(-z/math.Sqrt2))
 	}
-	return -z / tail(z)
+	return -z / farTail(z)
 }
 
-// tail is -z Phi(z)/phi(z) for far negative z by its asymptotic series
+// farTail is -z Phi(z)/phi(z) for far negative z by its asymptotic series
 // (Abramowitz and Stegun 26.2.12).
-func tail(z float64) float64 {
+func farTail(z float64) float64 {
 	w := 1 / (z * z)
 	return 1 - w*(1-3*w*(1-5*w*(1-7*w)))
 }
