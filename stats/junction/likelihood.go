@@ -200,6 +200,7 @@ func (q *problem) respond() {
 // cell is the work space of one evaluation.
 type cell struct {
 	resp [maxReadings]float64              // response to thickness and doping alone
+	part [maxReadings]float64              // its error that tests of the same layer share
 	knee [maxReadings]float64              // error by the knee's place
 	r, z [maxReadings]float64              // residual, and whitened
 	l    [maxReadings][maxReadings]float64 // Cholesky factor
@@ -220,6 +221,7 @@ func (q *problem) evaluate(c *cell, u, v float64) float64 {
 		// How much steeper or flatter the response is here than at nominal is what
 		// a misplaced knee gets wrong.
 		c.knee[i] = q.prior.Knee * (slope - q.flat[i])
+		c.part[i] = q.prior.Response * sharedError(q.measures(i)) * c.resp[i]
 		if q.reading(i).Test == believed {
 			c.knee[i] = 0
 		}
@@ -228,7 +230,7 @@ func (q *problem) evaluate(c *cell, u, v float64) float64 {
 	for i := range n {
 		measures := q.measures(i)
 		for j := range i + 1 {
-			a := q.noise[i][j] + c.knee[i]*c.knee[j]
+			a := q.noise[i][j] + c.knee[i]*c.knee[j] + c.part[i]*c.part[j]
 			if i == j && measures != "" {
 				e := q.prior.Response * responseError(measures) * c.resp[i]
 				a += e * e

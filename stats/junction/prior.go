@@ -90,6 +90,17 @@ func responseError(measures string) float64 {
 	return 0.10
 }
 
+// sharedError is the part of a response's relative error that all tests of the
+// collector's depletion layer have in common: how much of the junction's voltage
+// falls in the base. A Gaussian and an exponential base part by 10 % there.
+func sharedError(measures string) float64 {
+	switch measures {
+	case Cob, BVceo, PlaneBV, Icbo, Iceo, AreaLeakage, Multiplication:
+		return 0.06
+	}
+	return 0
+}
+
 // nuisances are the parameters that are integrated out around net thickness and
 // doping. Up-diffusion is there for the shape of the tail at a given net
 // thickness; a corner acts like the edge.

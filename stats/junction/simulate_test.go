@@ -211,7 +211,7 @@ func scale(short, long int) int {
 func TestInvertCoverage(t *testing.T) {
 	for _, pull := range []float64{0, 3} {
 		for _, product := range []string{"A", "B", "knee"} {
-			got := simulate(t, product, scale(5, 40), scale(16, 50), pull, 5)
+			got := simulate(t, product, scale(5, 14), scale(16, 25), pull, 5)
 			for _, set := range sortedKeys(got) {
 				report := func(name string, s score) {
 					t.Logf("pull %g %-4s %-6s %-9s n %4d cover %5.3f  share %.2f  seen %4d data-only cover %5.3f  median error %.4f  blind %d (%d wrong)",
