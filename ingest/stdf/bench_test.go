@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"sync"
 	"testing"
+	"time"
 
 	"github.com/klauspost/compress/gzip"
 	"github.com/klauspost/compress/zstd"
@@ -41,6 +42,13 @@ var benchForms = []struct {
 	{"full", madeFile{wafers: 10, sites: 4, plainOnly: true, seed: 1}},
 }
 
+// reportCPU gives the rate per second of processor time.
+func reportCPU(b *testing.B, since time.Duration, size int) {
+	if d := cpuTime() - since; d > 0 {
+		b.ReportMetric(float64(size)*float64(b.N)/1e6/d.Seconds(), "MB/cpu-s")
+	}
+}
+
 func BenchmarkReader(b *testing.B) {
 	for _, form := range benchForms {
 		file := benchFile(b, form.m)
@@ -48,6 +56,7 @@ func BenchmarkReader(b *testing.B) {
 			b.SetBytes(int64(len(file)))
 			b.ReportAllocs()
 			var records int
+			cpu := cpuTime()
 			for b.Loop() {
 				records = 0
 				r := NewReader(bytes.NewReader(file))
@@ -63,6 +72,7 @@ func BenchmarkReader(b *testing.B) {
 				}
 			}
 			b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N)/float64(records), "ns/record")
+			reportCPU(b, cpu, len(file))
 		})
 	}
 }
@@ -73,6 +83,7 @@ func BenchmarkParts(b *testing.B) {
 		b.Run(form.name, func(b *testing.B) {
 			b.SetBytes(int64(len(file)))
 			b.ReportAllocs()
+			cpu := cpuTime()
 			for b.Loop() {
 				p := NewParts(NewReader(bytes.NewReader(file)))
 				sum := 0.0
@@ -86,6 +97,7 @@ func BenchmarkParts(b *testing.B) {
 					b.Fatal(p.Err(), p.Damages())
 				}
 			}
+			reportCPU(b, cpu, len(file))
 		})
 	}
 }
