@@ -250,7 +250,7 @@ func explain(format string, data []byte, err error) (line int, what string) {
 	return line, what
 }
 
-var yamlKind = regexp.MustCompile("^cannot unmarshal !!(\\w+) .*into (map|string)")
+var yamlKind = regexp.MustCompile(`^cannot unmarshal !!(\w+) .*into (map|string)`)
 
 // firstBadLine finds the line for an error that names none: the last of the
 // fewest lines at the file's start that give the same error.
