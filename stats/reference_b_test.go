@@ -1,6 +1,7 @@
 package stats_test
 
 import (
+	"kneepoint/stats/control"
 	"kneepoint/stats/variance"
 )
 
@@ -10,22 +11,31 @@ func init() {
 	for name, m := range map[string]referenceMethod{
 		"nested random-effects variance components lot / wafer(lot) / die by REML and by ML":              {answer: referenceREML},
 		"nested random-effects variance components by ANOVA (method of moments, unbalanced coefficients)": {answer: referenceNestedANOVA},
+		"Shewhart chart constants c#, A#, B#, B#, d#, d#, A#, D#, D#":                                     {answer: referenceConstants},
+		"EWMA chart, lambda #, asymptotic limits, target #, s #, # sigma":                                 {answer: referenceEWMA},
+		"EWMA chart with time-varying limits":                                                             {answer: referenceEWMA},
+		"same data, full precision":                                                                       {answer: referenceFullPrecision},
+		"tabular CUSUM, target #, k #, h #":                                                               {answer: referenceCUSUM},
+		"tabular CUSUM (no head start)":                                                                   {answer: referenceCUSUM},
+		"individuals chart, sigma = MRbar/#":                                                              {answer: referenceIndividuals},
+		"same data, exact d# = #/sqrt(pi)":                                                                {answer: referenceIndividuals},
+		"individuals and moving-range chart":                                                              {answer: referenceIndividuals},
+		"p chart, # wafers of # chips":                                                                    {answer: referenceP},
+		"p chart with binomial limits":                                                                    {answer: referenceP},
+		"Laney p' chart":                                                                                  {answer: referenceP},
+		"c chart, # wafers":                                                                               {answer: referenceC},
+		"u chart with varying area":                                                                       {answer: referenceU},
+		"xbar-s chart":                                                                                    {answer: referenceXbar},
+		"xbar-R chart":                                                                                    {answer: referenceXbar},
+		"Nelson's eight tests, hand-built sequence":                                                       {answer: referenceNelson},
+		"Nelson's eight tests, shifted/stratified/mixture/trend segments":                                 {answer: referenceNelson},
 	} {
 		referenceMethods[name] = m
 	}
 }
 
-// codes reads an array of whole numbers.
-func (c *referenceCase) codes(key string) []int32 {
-	out := []int32{}
-	for _, v := range c.list(key) {
-		out = append(out, int32(v))
-	}
-	return out
-}
-
 func (c *referenceCase) nested() *variance.Design {
-	return variance.New([]variance.Level{{Name: "lot", Code: c.codes("lot")}, {Name: "wafer", Code: c.codes("wafer")}}, c.list("y"))
+	return variance.New([]variance.Level{{Name: "lot", Code: c.groups("lot")}, {Name: "wafer", Code: c.groups("wafer")}}, c.list("y"))
 }
 
 func referenceREML(c *referenceCase) map[string]any {
@@ -46,6 +56,83 @@ func referenceNestedANOVA(c *referenceCase) map[string]any {
 	out := map[string]any{"k1": rows[1].Coefficient[1], "k2": rows[0].Coefficient[1], "k3": rows[0].Coefficient[0]}
 	for i, name := range []string{"lot", "wafer", "die"} {
 		out["ss_"+name], out["df_"+name], out["var_"+name] = rows[i].SS, rows[i].DF, rows[i].Variance.Estimate
+	}
+	return out
+}
+
+func referenceConstants(c *referenceCase) map[string]any {
+	k := control.ConstantsFor(int(c.number("n")))
+	return map[string]any{"c4": k.C4, "A3": k.A3, "B3": k.B3, "B4": k.B4, "d2": k.MeanRange, "d3": k.RangeSD, "A2": k.A2, "D3": k.D3, "D4": k.D4}
+}
+
+func referenceEWMA(c *referenceCase) map[string]any {
+	// One pair of limits for all points is the asymptotic form.
+	_, one := c.Expected["ucl"].(float64)
+	r := control.EWMA(c.list("x"), c.number("target"), c.number("sigma"), control.EWMAOptions{Lambda: c.number("lambda"), L: c.number("L"), Asymptotic: one})
+	out := map[string]any{"ewma": r.Points, "ucl": r.Upper, "lcl": r.Lower, "signals": r.Signals}
+	if one {
+		out["ucl"], out["lcl"] = r.Upper[0], r.Lower[0]
+	}
+	return out
+}
+
+func referenceFullPrecision(c *referenceCase) map[string]any {
+	if _, ok := c.Inputs["lambda"]; ok {
+		return referenceEWMA(c)
+	}
+	return referenceCUSUM(c)
+}
+
+func referenceCUSUM(c *referenceCase) map[string]any {
+	s := control.CUSUM(c.list("x"), c.number("target"), c.number("k"), c.number("h"), 0)
+	return map[string]any{"s_hi": s.High, "s_lo": s.Low, "signals_hi": s.SignalsHigh, "signals_lo": s.SignalsLow}
+}
+
+func referenceIndividuals(c *referenceCase) map[string]any {
+	i, mr := control.Individuals(c.list("x"))
+	if d2 := c.number("d2"); d2 == d2 { // a rounded constant
+		i = control.Against(i.Points, i.Center, mr.Center/d2)
+	}
+	return map[string]any{"center": i.Center, "sigma": i.Sigma, "ucl": i.Upper[0], "lcl": i.Lower[0], "signals": i.Signals,
+		"mr_bar": mr.Center, "mr_ucl": mr.Upper[0], "mr": mr.Points[1:]}
+}
+
+func referenceP(c *referenceCase) map[string]any {
+	d, n := c.list("defectives"), c.list("n")
+	r := control.P(d, n)
+	if _, ok := c.Expected["sigma_z"]; ok {
+		r = control.LaneyP(d, n)
+	}
+	return map[string]any{"p_bar": r.Center, "sigma_z": r.Sigma, "ucl": r.Upper, "lcl": r.Lower, "signals": r.Signals,
+		"ucl_scalar": r.Upper[0], "lcl_scalar": r.Lower[0]}
+}
+
+func referenceC(c *referenceCase) map[string]any {
+	r := control.C(c.list("counts"))
+	return map[string]any{"c_bar": r.Center, "ucl": r.Upper[0], "lcl": r.Lower[0], "signals": r.Signals}
+}
+
+func referenceU(c *referenceCase) map[string]any {
+	r := control.U(c.list("counts"), c.list("area"))
+	return map[string]any{"u_bar": r.Center, "ucl": r.Upper, "lcl": r.Lower, "signals": r.Signals}
+}
+
+func referenceXbar(c *referenceCase) map[string]any {
+	groups := c.table("subgroups")
+	m, s := control.XbarS(groups)
+	if _, ok := c.Expected["r_bar"]; ok {
+		m, s = control.XbarR(groups)
+	}
+	return map[string]any{"grand_mean": m.Center, "sigma": m.Sigma, "xbar_ucl": m.Upper[0], "xbar_lcl": m.Lower[0], "means": m.Points,
+		"s_bar": s.Center, "s_ucl": s.Upper[0], "s_lcl": s.Lower[0], "sds": s.Points,
+		"r_bar": s.Center, "r_ucl": s.Upper[0], "r_lcl": s.Lower[0]}
+}
+
+func referenceNelson(c *referenceCase) map[string]any {
+	r := control.Nelson(c.list("x"), c.number("center"), c.number("sigma"))
+	out := map[string]any{"rule5_any": r.Any5, "rule6_any": r.Any6, "rule8_no_side_requirement": r.OneSided8}
+	for k, s := range r.Signals {
+		out["rule"+string(rune('1'+k))] = s
 	}
 	return out
 }
