@@ -233,7 +233,7 @@ func (k *blocker) rowEnd(b []byte) int {
 		if n < 0 {
 			break
 		}
-		if b[i] == '#' || bytes.IndexByte(b[i:i+n], '"') < 0 {
+		if b[i] == '#' || simpleQuotes(b[i:i+n+1], k.sep) {
 			i += n + 1
 			continue
 		}
@@ -244,4 +244,28 @@ func (k *blocker) rowEnd(b []byte) int {
 		i = r.next
 	}
 	return i
+}
+
+// simpleQuotes says whether all quotes of a line stand just around its cells, so
+// that the row ends with the line.
+func simpleQuotes(line []byte, sep byte) bool {
+	if bytes.IndexByte(line, '"') < 0 {
+		return true
+	}
+	for i := 0; ; i++ {
+		if line[i] == '"' {
+			raw, end := quotedCell(line, i, sep)
+			if raw == nil {
+				return false
+			}
+			i = end
+		} else {
+			for line[i] != sep && line[i] != '\n' {
+				i++
+			}
+		}
+		if line[i] == '\n' {
+			return true
+		}
+	}
 }

@@ -290,6 +290,10 @@ func parseInt(t []byte, decimal byte) (int32, status) {
 	if st != cellNumber {
 		return Missing, st
 	}
+	return wholeNumber(v)
+}
+
+func wholeNumber(v float64) (int32, status) {
 	if v != math.Trunc(v) || v <= Missing || v > math.MaxInt32 {
 		return Missing, cellBad
 	}

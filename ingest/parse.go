@@ -70,6 +70,12 @@ type interner struct {
 	dict  []string
 	last  []byte // raw bytes of the last cell seen
 	code  int32
+	fresh []fresh // what the row at work added
+}
+
+// fresh is a text, or a way to write one, that was new.
+type fresh struct {
+	raw, text string // text "" when it was known
 }
 
 // intern gives the code of a cell.
@@ -80,19 +86,43 @@ func (t *interner) intern(raw []byte) int32 {
 	t.last = raw
 	code, ok := t.codes[string(raw)]
 	if !ok {
-		// The same text may be written in several ways (blanks around it).
-		text := cellText(raw)
-		if text == "" {
-			code = -1
-		} else if code, ok = t.codes[text]; !ok {
-			code = int32(len(t.dict))
-			t.dict = append(t.dict, text)
-			t.codes[text] = code
-		}
-		t.codes[string(raw)] = code
+		code = t.add(string(raw), cellText(raw))
 	}
 	t.code = code
 	return code
+}
+
+// add takes a way to write a text that was not seen before; the same text may
+// be written in several ways, with blanks around it.
+func (t *interner) add(raw, text string) int32 {
+	f := fresh{raw: raw}
+	code := int32(-1)
+	if text != "" {
+		known := false
+		if code, known = t.codes[text]; !known {
+			code = int32(len(t.dict))
+			t.dict = append(t.dict, text)
+			t.codes[text] = code
+			f.text = text
+		}
+	}
+	t.codes[raw] = code
+	t.fresh = append(t.fresh, f)
+	return code
+}
+
+// forget takes back what a row added that is left to the full reader, which may
+// not use it.
+func (t *interner) forget() {
+	for i := len(t.fresh) - 1; i >= 0; i-- {
+		f := t.fresh[i]
+		delete(t.codes, f.raw)
+		if f.text != "" {
+			delete(t.codes, f.text)
+			t.dict = t.dict[:len(t.dict)-1]
+		}
+	}
+	t.fresh, t.last = t.fresh[:0], nil
 }
 
 // block parses one block, into the memory of a spare chunk if there is one.
@@ -116,10 +146,17 @@ func (p *parser) block(b *block, spare *chunk) *chunk {
 		}
 		next, ok := 0, false
 		if !careful && i < lastLine {
-			next, ok = p.fastRow(buf, i, c)
+			if next, ok = p.fastRow(buf, i, c); !ok {
+				for _, s := range p.textOf {
+					p.interns[s].forget()
+				}
+			}
 		}
 		if !ok {
 			next = p.fullRow(b, i, c, slow)
+			for _, s := range p.textOf {
+				p.interns[s].fresh = p.interns[s].fresh[:0]
+			}
 		}
 		i = next
 	}
@@ -188,8 +225,8 @@ func (c *chunk) trim() {
 	}
 }
 
-// fastRow reads a row of plain cells into row c.n: unquoted, numbers in plain
-// digits, as many fields as the header. Where anything else stands it gives up
+// fastRow reads a row of plain cells into row c.n: quotes around a cell or none,
+// numbers in plain digits, as many fields as the header. Where anything else stands it gives up
 // and leaves the row to fullRow, which takes the same cells for the same
 // values.
 func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
@@ -201,14 +238,20 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 		case valueField:
 			v, j, st := scanNumber(b, i, sep, decimal)
 			if st == cellOdd {
-				return 0, false
+				var ok bool
+				if v, j, ok = quotedNumber(b, i, sep, decimal); !ok {
+					return 0, false
+				}
 			}
 			columns[k].values[n] = v
 			i = j
 		case intField:
 			v, j, st := scanInt(b, i, sep)
 			if st == cellOdd {
-				return 0, false
+				var ok bool
+				if v, j, ok = oddInt(b, i, sep, decimal); !ok {
+					return 0, false
+				}
 			}
 			columns[k].ints[n] = v
 			i = j
@@ -257,15 +300,21 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	if b[i] != '\n' || p.wafer >= 0 && columns[p.wafer].ints[n] < 0 || p.wafer < 0 && p.allEmpty(c, n) {
 		return 0, false
 	}
+	for _, s := range p.textOf {
+		if t := &p.interns[s]; len(t.fresh) > 0 {
+			t.fresh = t.fresh[:0]
+		}
+	}
 	c.n++
 	c.rows.read++
 	return i + 1, true
 }
 
-// plainCell gives the cell at i and where it ends; nil for a quoted one.
+// plainCell gives the cell at i and where it ends; nil for one whose quotes are
+// not just around it.
 func plainCell(b []byte, i int, sep byte) ([]byte, int) {
 	if b[i] == '"' {
-		return nil, 0
+		return quotedCell(b, i, sep)
 	}
 	j := i
 	for b[j] != sep && b[j] != '\n' {
@@ -275,6 +324,61 @@ func plainCell(b []byte, i int, sep byte) ([]byte, int) {
 		return dropCR(b[i:j]), j
 	}
 	return b[i:j], j
+}
+
+// quotedCell is plainCell for a cell between quotes, without others within.
+func quotedCell(b []byte, i int, sep byte) ([]byte, int) {
+	j := i + 1
+	for b[j] != '"' {
+		if b[j] == '\n' {
+			return nil, 0
+		}
+		j++
+	}
+	if j >= i+maxQuoted {
+		return nil, 0
+	}
+	end := j + 1
+	if b[end] == '\r' && b[end+1] == '\n' {
+		end++
+	}
+	if b[end] != sep && b[end] != '\n' {
+		return nil, 0
+	}
+	return b[i+1 : j : j], end
+}
+
+// quotedNumber reads a number between quotes; ok is false for anything else.
+func quotedNumber(b []byte, i int, sep, decimal byte) (v float64, end int, ok bool) {
+	if b[i] != '"' {
+		return 0, 0, false
+	}
+	v, j, st := scanNumber(b, i+1, '"', decimal)
+	if st == cellOdd || b[j] != '"' {
+		return 0, 0, false
+	}
+	end = j + 1
+	if b[end] == '\r' && b[end+1] == '\n' {
+		end++
+	}
+	return v, end, b[end] == sep || b[end] == '\n'
+}
+
+// oddInt reads a whole number that scanInt does not: with a point ("1.0") or
+// between quotes.
+func oddInt(b []byte, i int, sep, decimal byte) (int32, int, bool) {
+	v, end, st := scanNumber(b, i, sep, decimal)
+	if st == cellOdd {
+		var ok bool
+		if v, end, ok = quotedNumber(b, i, sep, decimal); !ok {
+			return 0, 0, false
+		}
+	}
+	if v != v {
+		return Missing, end, true
+	}
+	n, st := wholeNumber(v)
+	return n, end, st == cellNumber
 }
 
 // allEmpty says whether row n holds nothing at all. Nearly every row is told
