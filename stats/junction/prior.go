@@ -66,7 +66,9 @@ func UsualSigma(measures string) float64 {
 	switch measures {
 	case BVceo, BVcbo, BVces, BVebo, PlaneBV, Cob:
 		return 0.01
-	case HFE, Vcesat, Rc, Rb, FT, Rpinch:
+	case Vcesat, Rc:
+		return 0.02
+	case HFE, Rb, FT, Rpinch:
 		return 0.03
 	case EarlyVoltage:
 		return 0.05

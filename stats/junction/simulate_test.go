@@ -4,6 +4,7 @@ import (
 	"math"
 	"math/rand/v2"
 	"os"
+	"strings"
 	"testing"
 )
 
@@ -114,13 +115,22 @@ var sets = map[string][]int{"two": {0, 1}, "seven": {0, 1, 2, 3, 4, 5, 6}, "cobh
 
 // score collects what a run of inversions got right.
 type score struct {
-	n, covered, seen, seenCovered, blind, blindWrong int
-	errors                                           []float64
-	share                                            float64
+	n, covered, seen, seenCovered, blind, blindWrong, silent int
+	errors                                                   []float64
+	share                                                    float64
 }
 
-func (s *score) add(truth float64, q Quantity) {
+func (s *score) add(truth float64, q Quantity, notes []string, name string) {
 	s.n++
+	if q.Sight != Seen {
+		said := false
+		for _, n := range notes {
+			said = said || strings.Contains(n, name+" is not observable") || strings.Contains(n, "data alone say only that "+name)
+		}
+		if !said || !math.IsNaN(q.DataOnly.Estimate) {
+			s.silent++
+		}
+	}
 	s.share += q.Share
 	if q.WithPrior.Lower <= truth && truth <= q.WithPrior.Upper {
 		s.covered++
@@ -192,8 +202,8 @@ func simulate(t *testing.T, product string, worlds, truths int, pull float64, se
 				}
 				o := out[name]
 				post := m.Invert(got, prior)
-				o.thickness.add(math.Exp(wd.net(&p))*m.NetThickness(), post.NetThickness)
-				o.doping.add(math.Exp(p[EpiDoping])*m.Device.EpiDopingCM3, post.Doping)
+				o.thickness.add(math.Exp(wd.net(&p))*m.NetThickness(), post.NetThickness, post.Notes, "net thickness")
+				o.doping.add(math.Exp(p[EpiDoping])*m.Device.EpiDopingCM3, post.Doping, post.Notes, "doping")
 				o.regimes[post.Regime]++
 			}
 		}
@@ -208,18 +218,59 @@ func scale(short, long int) int {
 	return short
 }
 
+// TestInvertCoverage draws truths from the prior in worlds with other physics inside
+// and holds what the epi report promises (issue: median error under 2 % with the
+// tests that the page of the physics says suffice; 95 % intervals that cover 92 to
+// 98 % in every regime; what is not observable is said). KNEEPOINT_LONG=1 for
+// counts that judge; the short form has wide bands.
 func TestInvertCoverage(t *testing.T) {
-	for _, pull := range []float64{0, 3} {
-		for _, product := range []string{"A", "B", "knee"} {
-			got := simulate(t, product, scale(5, 14), scale(16, 25), pull, 5)
-			for _, set := range sortedKeys(got) {
-				report := func(name string, s score) {
-					t.Logf("pull %g %-4s %-6s %-9s n %4d cover %5.3f  share %.2f  seen %4d data-only cover %5.3f  median error %.4f  blind %d (%d wrong)",
-						pull, product, set, name, s.n, float64(s.covered)/float64(s.n), s.share/float64(s.n), s.seen, float64(s.seenCovered)/float64(s.seen), s.medianError(), s.blind, s.blindWrong)
+	var n, covered int
+	for _, product := range []string{"A", "B", "knee"} {
+		got := simulate(t, product, scale(2, 14), scale(12, 25), 0, 5)
+		for _, set := range sortedKeys(got) {
+			for name, s := range map[string]*score{"thickness": &got[set].thickness, "doping": &got[set].doping} {
+				c := float64(s.covered) / float64(s.n)
+				t.Logf("%-4s %-6s %-9s %4d dice: covered %.3f, width %.2f of prior, observable %d (data alone cover %.3f, median error %.4f), blind %d",
+					product, set, name, s.n, c, s.share/float64(s.n), s.seen, float64(s.seenCovered)/float64(s.seen), s.medianError(), s.blind)
+				// Worlds are few, so dice of one world err together: three standard errors.
+				if e := 3 * math.Sqrt(0.06/float64(s.n)); c < 0.92-e || c > 0.98+e {
+					t.Errorf("%s %s: 95 %% interval of %s covers %.3f of %d", product, set, name, c, s.n)
 				}
-				report("thickness", got[set].thickness)
-				report("doping", got[set].doping)
-				t.Log(got[set].regimes)
+				if s.blindWrong > 0 || s.silent > 0 {
+					t.Errorf("%s %s %s: %d blind results narrower than the prior, %d not said", product, set, name, s.blindWrong, s.silent)
+				}
+				n, covered = n+s.n, covered+s.covered
+			}
+		}
+		t.Log(product, got["seven"].regimes)
+		enough := map[string]string{"A": "rc", "B": "cobhi", "knee": "cobhi"}[product]
+		wide := 1 + 2.5/math.Sqrt(float64(got[enough].thickness.n))
+		for name, s := range map[string]*score{"thickness": &got[enough].thickness, "doping": &got[enough].doping} {
+			if e := s.medianError(); !(e < 0.02*wide) || s.seen < s.n*95/100 {
+				t.Errorf("%s %s: median error of %s %.4f, observable in %d of %d", product, enough, name, e, s.seen, s.n)
+			}
+		}
+	}
+	if c := float64(covered) / float64(n); c < 0.93 || c > 0.98 {
+		t.Errorf("95 %% intervals cover %.3f of %d in all", c, n)
+	}
+}
+
+// TestInvertFarOff puts thickness and doping three prior sigmas off, all four ways:
+// intervals from data alone must still cover where there is an estimate.
+func TestInvertFarOff(t *testing.T) {
+	for _, product := range []string{"A", "B", "knee"} {
+		got := simulate(t, product, scale(1, 14), scale(12, 25), 3, 6)
+		for _, set := range sortedKeys(got) {
+			for name, s := range map[string]*score{"thickness": &got[set].thickness, "doping": &got[set].doping} {
+				c := float64(s.seenCovered) / float64(s.seen)
+				t.Logf("%-4s %-6s %-9s observable %d of %d, data alone cover %.3f", product, set, name, s.seen, s.n, c)
+				if e := 3 * math.Sqrt(0.06/float64(s.seen)); s.seen >= 10 && c < 0.92-e {
+					t.Errorf("%s %s: data-only interval of %s covers %.3f of %d", product, set, name, c, s.seen)
+				}
+				if s.blindWrong > 0 || s.silent > 0 {
+					t.Errorf("%s %s %s: %d blind results narrower than the prior, %d not said", product, set, name, s.blindWrong, s.silent)
+				}
 			}
 		}
 	}
