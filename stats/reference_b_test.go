@@ -1,7 +1,10 @@
 package stats_test
 
 import (
+	"math"
+
 	"kneepoint/stats/control"
+	"kneepoint/stats/series"
 	"kneepoint/stats/variance"
 )
 
@@ -29,6 +32,13 @@ func init() {
 		"xbar-R chart":                                                                                    {answer: referenceXbar},
 		"Nelson's eight tests, hand-built sequence":                                                       {answer: referenceNelson},
 		"Nelson's eight tests, shifted/stratified/mixture/trend segments":                                 {answer: referenceNelson},
+		"single change point of the mean, optimal least-squares split":                                    {answer: referenceSplit},
+		"multiple change points: binary segmentation and optimal partitioning, penalty #*sigma^#*log(n)": {answer: referenceChanges},
+		"Pettitt change-point test": {answer: referencePettitt},
+		"simple linear regression (drift): estimates, standard errors, # % CI, prediction":   {answer: referenceLine},
+		"EWMA drift detection with a baseline of the first # points":                         {answer: referenceDrift},
+		"autocorrelations, Ljung-Box, runs about the median":                                 {answer: referenceDependence},
+		"polynomial least squares y = B# + B# x + ... (degree = number of coefficients - #)": {answer: referencePolynomial},
 	} {
 		referenceMethods[name] = m
 	}
@@ -135,4 +145,64 @@ func referenceNelson(c *referenceCase) map[string]any {
 		out["rule"+string(rune('1'+k))] = s
 	}
 	return out
+}
+
+func referenceSplit(c *referenceCase) map[string]any {
+	s := series.SingleSplit(c.list("y"), int(c.number("min_segment")))
+	return map[string]any{"split": s.At, "sse_no_change": s.SSENone, "sse_split": s.SSE, "gain": s.Gain, "sup_f": s.SupF,
+		"mean_before": s.MeanBefore, "mean_after": s.MeanAfter}
+}
+
+func referenceChanges(c *referenceCase) map[string]any {
+	y, min := c.list("y"), int(c.number("min_segment"))
+	sigma := series.Sigma(y)
+	penalty := series.Penalty(sigma, len(y))
+	at, cost := series.OptimalPartition(y, min, penalty)
+	greedy := series.BinarySegmentation(y, min, penalty)
+	var means []float64
+	for _, part := range series.Segments(y, greedy) {
+		means = append(means, part.Mean)
+	}
+	return map[string]any{"sigma_mad_of_differences": sigma, "penalty": penalty, "binary_segmentation": greedy,
+		"optimal_partitioning": at, "optimal_cost": cost, "segment_means_binseg": means}
+}
+
+func referencePettitt(c *referenceCase) map[string]any {
+	p := series.Pettitt(c.list("y"))
+	return map[string]any{"k": p.K, "split": p.At, "p_approx": p.P}
+}
+
+func referenceLine(c *referenceCase) map[string]any {
+	l := series.FitLine(c.list("x"), c.list("y"))
+	at := c.number("x_new")
+	return map[string]any{"intercept": l.Intercept, "slope": l.Slope, "se_intercept": l.SEIntercept, "se_slope": l.SESlope,
+		"t_slope": l.T, "p_slope": l.P, "intercept_ci95": ends(l.InterceptInterval(0.95)), "slope_ci95": ends(l.SlopeInterval(0.95)),
+		"r_squared": l.RSquared, "residual_sd": l.ResidualSD, "f": l.F, "durbin_watson": l.DurbinWatson,
+		"prediction": l.Mean(at, 0.95).Estimate, "mean_ci95": ends(l.Mean(at, 0.95)), "prediction_interval95": ends(l.Predict(at, 0.95))}
+}
+
+func referenceDrift(c *referenceCase) map[string]any {
+	d := series.EWMADrift(c.list("y"), int(c.number("baseline")), c.number("lambda"), c.number("L"))
+	half := make([]float64, len(d.Upper))
+	for i, u := range d.Upper {
+		half[i] = u - d.Center
+	}
+	out := map[string]any{"center": d.Center, "sigma": d.Sigma, "ewma": d.Points, "half_width": half, "signals": d.Signals, "first_signal": math.NaN()}
+	if d.First >= 0 {
+		out["first_signal"] = d.First
+	}
+	return out
+}
+
+func referenceDependence(c *referenceCase) map[string]any {
+	y := c.list("y")
+	one, five, r := series.LjungBox(y, 1), series.LjungBox(y, 5), series.Runs(y)
+	return map[string]any{"acf_1_to_6": series.Autocorrelation(y, 6), "ljung_box_q1": one.Q, "ljung_box_p1": one.P, "ljung_box_q5": five.Q,
+		"ljung_box_p5": five.P, "runs": r.Runs, "n_above": r.Above, "n_below": r.Below, "runs_expected": r.Expected, "runs_sd": r.SD, "runs_z": r.Z}
+}
+
+func referencePolynomial(c *referenceCase) map[string]any {
+	// The degree is that of the answer asked for.
+	p := series.FitPolynomial(c.list("x"), c.list("y"), len(c.Expected["coefficients"].([]any))-1)
+	return map[string]any{"coefficients": p.Coefficients, "standard_errors": p.StandardErrors, "residual_sd": p.ResidualSD, "r_squared": p.RSquared}
 }

@@ -53,17 +53,10 @@ var referencePending = map[string]string{
 	"AD# that gives a stated yield (inverse of each model)":                                               "yield",
 	"negative binomial ML fit to defects per die/wafer (alpha = size, mean = lambda), Poisson comparison": "yield",
 	"negative binomial fit to under-dispersed counts: no finite alpha":                                    "yield",
-	"single change point of the mean, optimal least-squares split":                                        "control",
-	"multiple change points: binary segmentation and optimal partitioning, penalty #*sigma^#*log(n)":      "control",
-	"Pettitt change-point test": "control",
-	"simple linear regression (drift): estimates, standard errors, # % CI, prediction":   "control",
-	"EWMA drift detection with a baseline of the first # points":                         "control",
-	"autocorrelations, Ljung-Box, runs about the median":                                 "control",
-	"polynomial least squares y = B# + B# x + ... (degree = number of coefficients - #)": "control",
-	"principal components of the correlation matrix":                                     "screen",
-	"squared Mahalanobis distances (sample mean and covariance, n-#)":                    "screen",
-	"two-way median polish (rows first)":                                                 "screen",
-	"minimum covariance determinant (FastMCD), h = (n+p+#)/#, reweighted":                "screen",
+	"principal components of the correlation matrix":                                                      "screen",
+	"squared Mahalanobis distances (sample mean and covariance, n-#)":                                     "screen",
+	"two-way median polish (rows first)":                                                                  "screen",
+	"minimum covariance determinant (FastMCD), h = (n+p+#)/#, reweighted":                                 "screen",
 }
 
 // referenceWafermap are the methods that package wafermap answers in a driver of
