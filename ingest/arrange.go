@@ -11,11 +11,10 @@ import (
 
 // order is how the rows of the table are arranged in lots and wafers.
 type order struct {
-	lots   []lotRange
-	perm   []int32 // row of the table by place; nil: as they are
-	rank   []int32 // by place: order of test for retests where it is not the place itself; nil otherwise
-	n      int     // places
-	lotIDs []string
+	lots []lotRange
+	perm []int32 // row of the table by place; nil: as they are
+	rank []int32 // by place: order of test for retests where it is not the place itself; nil otherwise
+	n    int     // places
 }
 
 type lotRange struct {

@@ -55,7 +55,6 @@ type testColumn struct {
 	condition    string
 	number       int
 	field        int
-	unitIsNumber bool
 }
 
 // Slots of the fixed text, whole-number and value columns.

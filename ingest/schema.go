@@ -7,9 +7,8 @@ import (
 // schema is the set of columns over all files of a batch: fixed ones by role,
 // then tests and attributes by name.
 type schema struct {
-	attributes []string // names of the text columns from textAttributes on
-	tests      []string // names of the tests
-	inProduct  []bool
+	attributes []string       // names of the text columns from textAttributes on
+	tests      []string       // names of the tests
 	testSlot   map[string]int // small letters -> test
 	attrSlot   map[string]int
 }

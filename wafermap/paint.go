@@ -112,7 +112,7 @@ func (p *Picture) draw(x, y []int32, cell []uint8, rank func(uint8) int, palette
 	}
 	colours := make(color.Palette, len(palette))
 	for i, c := range palette {
-		colours[i] = color.NRGBA{c.R, c.G, c.B, c.A}
+		colours[i] = color.NRGBA(c)
 	}
 	colours[0] = color.NRGBA{}
 	var out bytes.Buffer

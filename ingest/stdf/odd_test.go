@@ -12,7 +12,7 @@ func TestOddRecords(t *testing.T) {
 		&WRR{Head: 1, Parts: 2, Good: 2}, &MRR{})
 	find := func(s string) int {
 		i := bytes.Index(file, []byte(s))
-		if i < 0 || bytes.Index(file[i+1:], []byte(s)) >= 0 {
+		if i < 0 || bytes.Contains(file[i+1:], []byte(s)) {
 			t.Fatalf("%q is not there once", s)
 		}
 		return i

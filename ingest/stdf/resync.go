@@ -73,9 +73,9 @@ func (r *Reader) shape(k Kind) int {
 	switch k {
 	case KindPIR:
 		return 1
+	case KindPRR:
 	default:
 		return r.c.fields + 1
-	case KindPRR:
 	}
 	n := 1
 	for _, b := range [][]byte{r.prr.PartID, r.prr.PartText, r.prr.Fix} {
