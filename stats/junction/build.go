@@ -250,7 +250,7 @@ func (m *Model) planeAt(dst []float64, p Process) {
 			l, _ := d.layerAt(t.volts)
 			dst[k] = math.Log(d.prof.generation(&l, d.fg) * math.Min(maxMultiplication, gainOf(d.prof.multiplication(&l, &d.law))))
 		case multipliedBy:
-			dst[k] = math.Log(math.Min(maxMultiplication, d.multiplied(t.volts)) - 1)
+			dst[k] = math.Log(math.Max(1e-12, math.Min(maxMultiplication, d.multiplied(t.volts))-1))
 		case epiResistance:
 			dst[k] = math.Log(math.Max(1e-4, d.epiResistance()))
 		case endless:

@@ -144,7 +144,7 @@ func (d *DieInverter) pattern(mask uint16) *pattern {
 		g := make([]float64, n)
 		for j := range n {
 			for i, x := range p.index {
-				g[j] += s * s * d.q.slopes[x][k] * p.p[i*n+j]
+				g[j] += s * s * d.q.lin[x].slopes[k] * p.p[i*n+j]
 			}
 		}
 		p.gains = append(p.gains, g)
@@ -180,7 +180,7 @@ func (w *dieWorker) one(i int, columns [][]float64, censor [][]int8, out *DieCol
 	if bounds != 0 {
 		at := w.m.grid.point(u, v)
 		for t := range columns {
-			if bounds>>(t+1)&1 == 1 && float64(censor[t][i])*(w.r[t+1]-w.q.resp[t+1].value(w.m.grid, &at)) > 0 {
+			if bounds>>(t+1)&1 == 1 && float64(censor[t][i])*(w.r[t+1]-w.q.lin[t+1].resp.value(w.m.grid, &at)) > 0 {
 				mask |= 1 << (t + 1)
 			}
 		}
@@ -213,7 +213,7 @@ func (w *dieWorker) solve(mask uint16) (u, v, su, sv float64, p *pattern) {
 		at := w.m.grid.point(u, v)
 		for k, x := range p.index {
 			var f float64
-			f, w.a[k], w.b[k] = w.q.resp[x].slopes(w.m.grid, &at)
+			f, w.a[k], w.b[k] = w.q.lin[x].resp.slopes(w.m.grid, &at)
 			w.f[k] = w.r[x] - f
 		}
 		gu, gv := 0.0, pull*(w.prior[1]-v)

@@ -29,7 +29,7 @@ func (m *Model) Invert(readings []Reading, prior Prior) Posterior {
 	post := full.posteriorField()
 	// Data alone are linearised at their own best point: the prior's compromise would
 	// bend the nuisances of a lot far off target.
-	q.rest, q.u, q.v = full.rest, full.u, full.v
+	q.follow(full)
 	q.fit()
 	like := q.zoom(m.grid.u, m.grid.v, 8)
 

@@ -26,13 +26,12 @@ type problem struct {
 	bound []Reading // censored
 	notes []string
 
-	rest   Process                 // nuisances at the linearisation
-	slopes [][numNuisances]float64 // d ln test / d ln nuisance, exact then bound
-	noise  [][]float64             // covariance by noise and nuisances
-	resp   []surface               // response of each reading to thickness and doping, nuisances at their prior mean
-	flat   []float64               // its slope at nominal along thickness, for the knee
-	gain   float64                 // ln hFE ratio as measured, for the slope's error
-	u, v   float64                 // the fit
+	rest  Process     // nuisances at the linearisation
+	lin   []*linear   // of the readings, exact then bound
+	noise [][]float64 // covariance by noise and nuisances
+	flat  []float64   // slopes at nominal along thickness, for the knee
+	gain  float64     // ln hFE ratio as measured, for the slope's error
+	u, v  float64     // the fit
 }
 
 // withPrior is the problem with the prior of the grown thickness among its
@@ -41,6 +40,16 @@ func (q *problem) withPrior() *problem {
 	p := *q
 	p.exact = append([]Reading{{Test: believed, Sigma: math.Max(q.prior.Sigma[EpiThickness], 1e-4)}}, q.exact...)
 	return &p
+}
+
+// follow starts a problem without the prior at the fit of the one with it.
+func (q *problem) follow(full *problem) {
+	q.rest, q.u, q.v = full.rest, full.u, full.v
+	q.lin, q.flat = full.lin[1:], full.flat[1:]
+	q.noise = nil
+	for _, row := range full.noise[1:] {
+		q.noise = append(q.noise, row[1:])
+	}
 }
 
 // pull is 1/(2 sigma^2) of the prior of doping, 0 without a prior.
@@ -121,79 +130,74 @@ func (q *problem) reading(i int) *Reading {
 	return &q.bound[i-len(q.exact)]
 }
 
-// linearise takes the nuisances' slopes at a thickness and doping and at q.rest.
-func (q *problem) linearise(u, v float64) {
+// linear is a test's response made ready at one point: a surface over thickness and
+// doping, and slopes on the nuisances.
+type linear struct {
+	resp   surface
+	slopes [numNuisances]float64
+}
+
+// linearAt linearises what f gives (ln of a reading over nominal) at a thickness
+// and doping and at the nuisances of rest. The surface is that of nuisances at
+// their prior mean, so that they enter as deviations from it.
+func (m *Model) linearAt(u, v float64, rest *Process, f func(s *spot, u float64) float64) linear {
 	const h = 0.01
-	n := q.size()
-	q.slopes = make([][numNuisances]float64, n)
 	var s spot
-	at := func(u float64, p *Process) []float64 {
-		q.m.locateAt(&s, u, p)
-		out := make([]float64, n)
-		for i := range out {
-			out[i] = q.response(i, &s, u)
-		}
-		return out
+	var l linear
+	at := func(u float64, p *Process) float64 {
+		m.locateAt(&s, u, p)
+		return f(&s, u)
 	}
-	p := q.rest
+	p := *rest
 	p[EpiDoping] = v
+	off := 0.0
 	for k, param := range nuisances {
 		up, down := p, p
 		up[param] += h
 		down[param] -= h
-		a, b := at(u, &up), at(u, &down)
-		for i := range n {
-			if d := (a[i] - b[i]) / (2 * h); !math.IsNaN(d) && !math.IsInf(d, 0) {
-				q.slopes[i][k] = d
-			}
+		if d := (at(u, &up) - at(u, &down)) / (2 * h); !math.IsNaN(d) && !math.IsInf(d, 0) {
+			l.slopes[k] = d
 		}
+		off += l.slopes[k] * rest[param]
 	}
-	q.respond()
+	l.resp = make(surface, m.grid.u.n*m.grid.v.n)
+	for i := range l.resp {
+		p[EpiDoping] = m.grid.v.at(i % m.grid.v.n)
+		// A leakage in breakdown is as far off as need be.
+		l.resp[i] = math.Min(at(m.grid.u.at(i/m.grid.v.n), &p), 20) - off
+	}
+	l.resp.mend(m.grid)
+	return l
+}
+
+// linearise makes the readings' responses ready at a thickness and doping and at
+// q.rest, or takes the model's own at nominal.
+func (q *problem) linearise(u, v float64) {
+	n := q.size()
+	nominal := u == 0 && v == 0 && q.rest == Process{}
+	q.lin = make([]*linear, n)
+	q.flat = make([]float64, n)
+	centre := q.m.grid.point(0, 0)
+	for i := range n {
+		if t := q.reading(i).Test; nominal && t != believed {
+			q.lin[i] = &q.m.linear[t]
+		} else {
+			l := q.m.linearAt(u, v, &q.rest, func(s *spot, u float64) float64 { return q.response(i, s, u) })
+			q.lin[i] = &l
+		}
+		_, q.flat[i], _ = q.lin[i].resp.slopes(q.m.grid, &centre)
+	}
 	q.noise = make([][]float64, n)
 	for i := range n {
 		q.noise[i] = make([]float64, n)
 		for j := range i + 1 {
 			c := 0.0
 			for k, param := range nuisances {
-				c += q.slopes[i][k] * q.slopes[j][k] * q.prior.Sigma[param] * q.prior.Sigma[param]
+				c += q.lin[i].slopes[k] * q.lin[j].slopes[k] * q.prior.Sigma[param] * q.prior.Sigma[param]
 			}
 			q.noise[i][j], q.noise[j][i] = c, c
 		}
 		q.noise[i][i] += q.reading(i).Sigma * q.reading(i).Sigma
-	}
-}
-
-// respond tabulates the readings' responses on the model's grid, so that a cell of
-// the posterior costs interpolations only.
-func (q *problem) respond() {
-	m, n := q.m, q.size()
-	q.resp, q.flat = make([]surface, n), make([]float64, n)
-	for i := range n {
-		q.resp[i] = make(surface, m.grid.u.n*m.grid.v.n)
-	}
-	var s spot
-	p := q.rest
-	for at := range m.grid.u.n * m.grid.v.n {
-		p[EpiDoping] = m.grid.v.at(at % m.grid.v.n)
-		u := m.grid.u.at(at / m.grid.v.n)
-		m.locateAt(&s, u, &p)
-		for i := range n {
-			// A leakage in breakdown is as far off as need be.
-			q.resp[i][at] = math.Min(q.response(i, &s, u), 20)
-		}
-	}
-	nominal := m.grid.point(0, 0)
-	for i := range n {
-		// Nuisances enter as deviations from their prior mean.
-		off := 0.0
-		for k, param := range nuisances {
-			off += q.slopes[i][k] * q.rest[param]
-		}
-		for at := range q.resp[i] {
-			q.resp[i][at] -= off
-		}
-		q.resp[i].mend(m.grid)
-		_, q.flat[i], _ = q.resp[i].slopes(m.grid, &nominal)
 	}
 }
 
@@ -216,7 +220,7 @@ func (q *problem) evaluate(c *cell, u, v float64) float64 {
 	at := m.grid.point(u, v)
 	for i := range n {
 		var slope float64
-		c.resp[i], slope, _ = q.resp[i].slopes(m.grid, &at)
+		c.resp[i], slope, _ = q.lin[i].resp.slopes(m.grid, &at)
 		c.r[i] = q.reading(i).LogRatio - c.resp[i]
 		// How much steeper or flatter the response is here than at nominal is what
 		// a misplaced knee gets wrong.
@@ -226,7 +230,7 @@ func (q *problem) evaluate(c *cell, u, v float64) float64 {
 			c.knee[i] = 0
 		}
 	}
-	ll := 0.0
+	ll, scale := 0.0, 1.0
 	for i := range n {
 		measures := q.measures(i)
 		for j := range i + 1 {
@@ -261,13 +265,14 @@ func (q *problem) evaluate(c *cell, u, v float64) float64 {
 		z /= c.l[i][i]
 		c.z[i] = z
 		if i < ne {
-			ll -= z*z/2 + math.Log(c.l[i][i])
+			ll -= z * z / 2
+			scale *= c.l[i][i]
 		} else {
 			ll += logNormalTail(float64(q.reading(i).Censor) * z)
 		}
 	}
 	c.ok = true
-	return ll
+	return ll - math.Log(scale)
 }
 
 // logNormalTail is ln P(Z > z) for a standard normal Z.
@@ -286,7 +291,7 @@ func (q *problem) conditional(c *cell) (mean [numNuisances]float64, cov [numNuis
 	for k, param := range nuisances {
 		s2 := q.prior.Sigma[param] * q.prior.Sigma[param]
 		for i := range ne {
-			x := q.slopes[i][k] * s2
+			x := q.lin[i].slopes[k] * s2
 			for j := range i {
 				x -= c.l[i][j] * w[k][j]
 			}
@@ -308,23 +313,28 @@ func (q *problem) conditional(c *cell) (mean [numNuisances]float64, cov [numNuis
 	return mean, cov
 }
 
-// fit finds the most probable thickness, doping and nuisances and linearises there:
-// a search on the marginal problem, nuisances following by their conditional
-// means. Two rounds do, since the logs are nearly straight.
+// fit finds the most probable thickness, doping and nuisances, and linearises
+// there: a search on the marginal problem, nuisances following by their conditional
+// means. One round does, since the logs are nearly straight.
 func (q *problem) fit() {
 	var c cell
-	q.linearise(q.u, q.v)
-	for range 2 {
-		q.climb(&c)
-		q.evaluate(&c, q.u, q.v)
-		if !c.ok {
-			break
-		}
-		mean, _ := q.conditional(&c)
-		for k, param := range nuisances {
-			limit := 4 * q.prior.Sigma[param]
-			q.rest[param] = math.Min(math.Max(mean[k], -limit), limit)
-		}
+	if q.lin == nil {
+		q.linearise(0, 0)
+	}
+	q.climb(&c)
+	q.evaluate(&c, q.u, q.v)
+	if !c.ok {
+		return
+	}
+	mean, _ := q.conditional(&c)
+	moved := false
+	for k, param := range nuisances {
+		limit := 4 * q.prior.Sigma[param]
+		x := math.Min(math.Max(mean[k], -limit), limit)
+		moved = moved || math.Abs(x-q.rest[param]) > 0.25*q.prior.Sigma[param]
+		q.rest[param] = x
+	}
+	if moved {
 		q.linearise(q.u, q.v)
 	}
 }

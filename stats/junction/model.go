@@ -25,6 +25,7 @@ type Model struct {
 	base    baseTable
 	rims    *rimTable
 	levels  []float64 // log of each test's value at nominal, by the tables
+	linear  []linear  // of each test at nominal
 }
 
 // The range of net thickness and doping that is tabulated, as ratios to nominal.
@@ -41,7 +42,11 @@ const (
 // It returns [ErrPolarity] for a pnp device, and an error that names the field for
 // a device without a solution or a test it does not know.
 func NewModel(device Device, tests ...Test) (*Model, error) {
-	m := &Model{nat: natural}
+	return newModel(device, natural, tests)
+}
+
+func newModel(device Device, nat nature, tests []Test) (*Model, error) {
+	m := &Model{nat: nat}
 	var err error
 	if m.Device, m.Assumed, err = device.complete(); err != nil {
 		return nil, err
@@ -70,6 +75,10 @@ func NewModel(device Device, tests ...Test) (*Model, error) {
 				m.Tests[i].Name, m.Tests[i].Voltage, m.Tests[i].Current)
 		}
 	}
+	m.linear = make([]linear, len(m.Tests))
+	each(len(m.Tests), func(i int) {
+		m.linear[i] = m.linearAt(0, 0, &Process{}, func(s *spot, _ float64) float64 { return m.log(i, s) - m.levels[i] })
+	})
 	return m, nil
 }
 

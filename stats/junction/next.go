@@ -52,15 +52,15 @@ func (m *Model) NextTest(readings []Reading, prior Prior, candidates []Reading) 
 		mean, cov := base.conditional(&c)
 		at := m.grid.point(u, v)
 		for k := range cand.exact {
-			y := cand.resp[k].value(m.grid, &at)
+			y := cand.lin[k].resp.value(m.grid, &at)
 			e := prior.Response * responseError(m.Tests[cand.exact[k].Test].Measures) * y
 			s := cand.exact[k].Sigma
 			va := s*s + e*e
 			for a := range numNuisances {
-				ja := cand.slopes[k][a]
+				ja := cand.lin[k].slopes[a]
 				y += ja * mean[a]
 				for b := range numNuisances {
-					va += ja * cand.slopes[k][b] * cov[a][b]
+					va += ja * cand.lin[k].slopes[b] * cov[a][b]
 				}
 			}
 			sum[k].add(x, u, v, y, va)

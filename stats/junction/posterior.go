@@ -104,7 +104,7 @@ func (f *field2) box(drop float64) (u, v axis) {
 	return newAxis(f.u.at(i0), f.u.at(i1), fineNodes), newAxis(f.v.at(j0), f.v.at(j1), fineNodes)
 }
 
-const coarseNodes, fineNodes = 25, 41
+const coarseNodes, fineNodes = 21, 33
 
 // zoom scans coarsely over a range, then finely over what counts, until the grid
 // resolves it.
