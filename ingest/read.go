@@ -12,6 +12,7 @@ import (
 type Options struct {
 	Product  *config.Product         // nil: everything is found unaided
 	Lot      string                  // read only this lot; "" all
+	History  *History                // attributes of wafers, from ReadHistory; may be nil
 	Retest   Retest                  // which measurement of a retested die counts; "" last
 	Workers  int                     // parsing goroutines; 0: GOMAXPROCS
 	Progress func(done, total int64) // bytes read of all inputs, called from one goroutine; may be nil
@@ -85,7 +86,14 @@ func Read(ctx context.Context, paths []string, opt Options) (*Batch, error) {
 	if err != nil {
 		return nil, err
 	}
-	return t.lots(ctx, &opt)
+	batch, err := t.lots(ctx, &opt)
+	if err != nil || opt.History == nil {
+		return batch, err
+	}
+	for _, l := range batch.Lots {
+		opt.History.apply(l)
+	}
+	return batch, nil
 }
 
 // readFiles reads all files into one table.

@@ -173,6 +173,23 @@ func TestOxide(t *testing.T) {
 	}
 }
 
+// TestWaferHistory carries the fab's record of the wafers into the report.
+func TestWaferHistory(t *testing.T) {
+	t.Chdir(t.TempDir())
+	os.WriteFile("lot.csv", []byte(small()), 0o644)
+	os.WriteFile("history.csv", []byte("LOT,WAFER,REACTOR\nL1,1,R7\n"), 0o644)
+	r := parseReport(t, []byte(kneepoint(t, "triage", "lot.csv", "--wafer-history", "history.csv", "--json")))
+	if r.Wafers[0].Attributes["REACTOR"] != "R7" || len(r.Inputs) != 2 {
+		t.Errorf("attributes %v, inputs %v", r.Wafers[0].Attributes, r.Inputs)
+	}
+	for _, q := range r.Quality {
+		if q.Code == "wafer-without-history" {
+			return
+		}
+	}
+	t.Error("nothing says that wafer 2 has no history")
+}
+
 // TestJSONOnly prints the report and writes no file.
 func TestJSONOnly(t *testing.T) {
 	t.Chdir(t.TempDir())

@@ -1,8 +1,8 @@
 package main
 
 import (
-	"context"
 	"fmt"
+	"slices"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -16,9 +16,9 @@ import (
 
 // triageFlags are what triage is asked for on its command line.
 type triageFlags struct {
-	product, settings, out, lot string
-	json, failOnHold            bool
-	tuned                       *viper.Viper
+	product, settings, out, lot, history string
+	json, failOnHold                     bool
+	tuned                                *viper.Viper
 }
 
 func newTriage() *cobra.Command {
@@ -38,6 +38,7 @@ the terminal. Without a product file it works from what the data say of themselv
 	c.Flags().StringVarP(&f.product, "product", "p", "", "product file (YAML, TOML or JSON)")
 	c.Flags().StringVarP(&f.out, "out", "o", "out", "folder for the report")
 	c.Flags().StringVar(&f.lot, "lot", "", "the lot to triage, when the files hold several")
+	c.Flags().StringVar(&f.history, "wafer-history", "", "CSV by lot and wafer; each further column is an attribute of the wafers")
 	c.Flags().StringVar(&f.settings, "settings", "", "settings file")
 	c.Flags().BoolVar(&f.json, "json", false, "print the report as JSON; writes files only with -o")
 	c.Flags().BoolVar(&f.failOnHold, "fail-on-hold", false, "exit with 3 when the proposal is not a release")
@@ -54,13 +55,13 @@ func triage(c *cobra.Command, files []string, f triageFlags) error {
 	if err != nil {
 		return err
 	}
-	report, err := analyse(c.Context(), c, files, f.lot, product, settings)
+	report, err := analyse(c, job{files: files, lot: f.lot, history: f.history, product: product, settings: settings})
 	if err != nil {
 		return err
 	}
 	var written []string
 	if !f.json || c.Flags().Changed("out") {
-		if written, err = writeReport(f.out, files, report); err != nil {
+		if written, err = writeReport(f.out, append(slices.Clone(files), f.product, f.history, f.settings), report); err != nil {
 			return err
 		}
 	}
@@ -77,23 +78,38 @@ func triage(c *cobra.Command, files []string, f triageFlags) error {
 	return nil
 }
 
+// job is one lot to read and to report on.
+type job struct {
+	files        []string
+	lot, history string
+	product      *config.Product
+	settings     config.Settings
+}
+
 // analyse reads one lot and assembles its report.
-func analyse(ctx context.Context, c *cobra.Command, files []string, lotID string, product *config.Product, settings config.Settings) (*reports.Report, error) {
-	lot, err := readLot(ctx, c, files, lotID, product, settings)
+func analyse(c *cobra.Command, j job) (*reports.Report, error) {
+	lot, err := readLot(c, j)
 	if err != nil {
 		return nil, err
 	}
 	progress := newProgress(c, "analysing")
 	defer progress.end()
-	return build.Report(ctx, build.Input{Lot: lot, Product: product, Settings: settings, Version: version(),
+	return build.Report(c.Context(), build.Input{Lot: lot, Product: j.product, Settings: j.settings, Version: version(),
 		Progress: func(done, total int) { progress.set(int64(done), int64(total)) }})
 }
 
 // readLot reads the files and picks the one lot that is asked for.
-func readLot(ctx context.Context, c *cobra.Command, files []string, lotID string, product *config.Product, settings config.Settings) (*ingest.Lot, error) {
+func readLot(c *cobra.Command, j job) (*ingest.Lot, error) {
+	var history *ingest.History
+	if j.history != "" {
+		var err error
+		if history, err = ingest.ReadHistory(j.history); err != nil {
+			return nil, err
+		}
+	}
 	progress := newProgress(c, "reading")
-	batch, err := ingest.Read(ctx, files, ingest.Options{Product: product, Lot: lotID, Workers: settings.Workers,
-		Retest: ingest.Retest(settings.Retest), Progress: progress.set})
+	batch, err := ingest.Read(c.Context(), j.files, ingest.Options{Product: j.product, Lot: j.lot, History: history,
+		Workers: j.settings.Workers, Retest: ingest.Retest(j.settings.Retest), Progress: progress.set})
 	progress.end()
 	if err != nil {
 		return nil, err
@@ -110,7 +126,7 @@ func readLot(ctx context.Context, c *cobra.Command, files []string, lotID string
 	if len(names) > most {
 		shown += fmt.Sprintf(" and %d more", len(names)-most)
 	}
-	return nil, fmt.Errorf("%s: holds %d lots (%s); pick one with --lot", files[0], len(names), shown)
+	return nil, fmt.Errorf("%s: holds %d lots (%s); pick one with --lot", j.files[0], len(names), shown)
 }
 
 // loadProduct loads the product file, or returns nil when none is named.
