@@ -188,6 +188,10 @@ func TestSeparability(t *testing.T) {
 			t.Errorf("%s: standard tests resolve %d combinations: %.2f", name, s.Resolved, s.Singular)
 		}
 		two := m.Separability([]Reading{{Test: m.Find("BVcbo")}, {Test: m.Find("BVceo")}}, prior)
+		words := strings.Join(m.Separability(every, prior).Sentences, "\n")
+		if !strings.Contains(words, "which is the net thickness") {
+			t.Errorf("%s: the combination that is known is not said: %s", name, words)
+		}
 		blind := false
 		for _, p := range two.Unseen {
 			blind = blind || p == EpiThickness

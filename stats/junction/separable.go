@@ -3,6 +3,7 @@ package junction
 import (
 	"fmt"
 	"math"
+	"sort"
 
 	"gonum.org/v1/gonum/mat"
 )
@@ -97,30 +98,60 @@ func (m *Model) Separability(readings []Reading, prior Prior) Separability {
 		if x.A == EpiThickness && x.B == EpiDoping {
 			s.ThicknessFromDoping = false
 		}
-		s.Sentences = append(s.Sentences, m.alikeWords(x, prior))
 	}
+	s.Sentences = append(s.Sentences, s.groups(params, j, norms, prior)...)
 	if len(s.Unseen) > 0 {
 		s.Sentences = append(s.Sentences, fmt.Sprintf("these tests know nothing of %s beyond what was believed before", join(s.Unseen)))
 	}
 	return s
 }
 
-// alikeWords says what is known of a pair instead of its members.
-func (m *Model) alikeWords(x Alike, prior Prior) string {
-	switch {
-	case x.A == EpiThickness && x.B == UpDiffusion:
-		return "epi thickness and up-diffusion act as one: what is known is the net thickness, base to up-diffused tail"
-	case x.A == BaseDepth && x.B == EmitterDepth:
-		return "base and emitter depth act as one: what is known is the base width between them"
-	case x.Cos > 0:
-		return fmt.Sprintf("a rise of %s and a rise of %s look the same (|cos| %.2f): what is known is their sum in shares of %s and %s",
-			x.A, x.B, math.Abs(x.Cos), percent(prior.Sigma[x.A]), percent(prior.Sigma[x.B]))
+// groups says, of each set of parameters that are alike in pairs, what combination
+// is known instead of its members: the strongest times powers of the others.
+func (s *Separability) groups(params []Param, j *mat.Dense, norms []float64, prior Prior) []string {
+	group := make([]int, NumParams)
+	for i := range group {
+		group[i] = i
 	}
-	return fmt.Sprintf("a rise of %s and a fall of %s look the same (|cos| %.2f): what is known is their difference in shares of %s and %s",
-		x.A, x.B, math.Abs(x.Cos), percent(prior.Sigma[x.A]), percent(prior.Sigma[x.B]))
+	for _, x := range s.Alike {
+		from, to := group[x.B], group[x.A]
+		for i := range group {
+			if group[i] == from {
+				group[i] = to
+			}
+		}
+	}
+	var out []string
+	for g := range group {
+		var members []int // of params, strongest first
+		for k, p := range params {
+			if group[p] == g && norms[k] >= unseenNorm {
+				members = append(members, k)
+			}
+		}
+		if len(members) < 2 {
+			continue
+		}
+		sort.SliceStable(members, func(a, b int) bool { return norms[members[a]] > norms[members[b]] })
+		lead := members[0]
+		names := []Param{params[lead]}
+		known := params[lead].String()
+		for _, k := range members[1:] {
+			power := mat.Dot(j.ColView(k), j.ColView(lead)) / (norms[lead] * norms[lead]) * prior.Sigma[params[lead]] / prior.Sigma[params[k]]
+			names = append(names, params[k])
+			known += fmt.Sprintf(" x (%s)^%.2g", params[k], power)
+		}
+		text := fmt.Sprintf("these tests cannot tell %s apart: what is known is %s", join(names), known)
+		if len(names) == 2 && group[EpiThickness] == group[UpDiffusion] && group[EpiThickness] == g {
+			text += ", which is the net thickness, base to up-diffused tail"
+		}
+		if len(names) == 2 && group[BaseDepth] == group[EmitterDepth] && group[BaseDepth] == g {
+			text += ", which is the base width"
+		}
+		out = append(out, text)
+	}
+	return out
 }
-
-func percent(x float64) string { return fmt.Sprintf("%.3g %%", 100*x) }
 
 func join(ps []Param) string {
 	s := ""
