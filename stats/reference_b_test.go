@@ -1,11 +1,13 @@
 package stats_test
 
 import (
+	"fmt"
 	"math"
 
 	"kneepoint/stats/control"
 	"kneepoint/stats/series"
 	"kneepoint/stats/variance"
+	"kneepoint/stats/yield"
 )
 
 // Answers for variance components, yield models, control charts, sequences and
@@ -39,6 +41,10 @@ func init() {
 		"EWMA drift detection with a baseline of the first # points":                         {answer: referenceDrift},
 		"autocorrelations, Ljung-Box, runs about the median":                                 {answer: referenceDependence},
 		"polynomial least squares y = B# + B# x + ... (degree = number of coefficients - #)": {answer: referencePolynomial},
+		"yield models Y(AD#)": {answer: referenceYield},
+		"AD# that gives a stated yield (inverse of each model)":                                               {answer: referenceYield},
+		"negative binomial ML fit to defects per die/wafer (alpha = size, mean = lambda), Poisson comparison": {answer: referenceDefects},
+		"negative binomial fit to under-dispersed counts: no finite alpha":                                    {answer: referenceDefects},
 	} {
 		referenceMethods[name] = m
 	}
@@ -205,4 +211,37 @@ func referencePolynomial(c *referenceCase) map[string]any {
 	// The degree is that of the answer asked for.
 	p := series.FitPolynomial(c.list("x"), c.list("y"), len(c.Expected["coefficients"].([]any))-1)
 	return map[string]any{"coefficients": p.Coefficients, "standard_errors": p.StandardErrors, "residual_sd": p.ResidualSD, "r_squared": p.RSquared}
+}
+
+func referenceYield(c *referenceCase) map[string]any {
+	f, at := yield.Model.Yield, c.number("ad0")
+	if y := c.number("yield"); y == y {
+		f, at = yield.Model.Defects, y
+	}
+	out := map[string]any{"poisson": f(yield.Poisson, at), "murphy": f(yield.Murphy, at),
+		"exponential_1_over_1_plus_ad": f(yield.Exponential, at), "seeds_exp_minus_sqrt_ad": f(yield.SeedsRoot, at)}
+	for _, k := range c.list("layers") {
+		out[fmt.Sprintf("bose_einstein_%g_layers", k)] = f(yield.BoseEinstein(k), at)
+	}
+	for _, a := range c.list("alpha") {
+		out[fmt.Sprintf("negbin_alpha_%g", a)] = f(yield.NegativeBinomial(a), at)
+	}
+	return out
+}
+
+func referenceDefects(c *referenceCase) map[string]any {
+	counts := c.list("counts")
+	d := yield.FitDefects(counts, nil, 0.95)
+	aic, aicPoisson := d.AIC()
+	zeros := 0
+	for _, x := range counts {
+		if x == 0 {
+			zeros++
+		}
+	}
+	return map[string]any{"n": d.N, "mean": d.Mean, "variance": d.Variance, "dispersion_index": d.Dispersion,
+		"alpha_ml": d.Alpha.Estimate, "alpha_finite": !math.IsInf(d.Alpha.Estimate, 1), "alpha_se_glmnb": d.AlphaSE,
+		"loglik_negbin": d.LogLik, "loglik_poisson": d.LogLikPoisson, "lr_statistic": d.LR, "aic_negbin": aic, "aic_poisson": aicPoisson,
+		"alpha_moments": d.AlphaMoments, "fraction_zero_observed": float64(zeros) / float64(d.N),
+		"yield_negbin": d.Model().Yield(d.Density.Estimate), "yield_poisson": yield.Poisson.Yield(d.Mean)}
 }

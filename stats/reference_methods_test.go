@@ -49,14 +49,10 @@ var referencePending = map[string]string{
 	"Grubbs test, one-sided maximum":                                                                       "screen",
 	"Grubbs test for one outlier":                                                                          "screen",
 	"generalised extreme studentised deviate (Rosner #)":                                                   "screen",
-	"yield models Y(AD#)": "yield",
-	"AD# that gives a stated yield (inverse of each model)":                                               "yield",
-	"negative binomial ML fit to defects per die/wafer (alpha = size, mean = lambda), Poisson comparison": "yield",
-	"negative binomial fit to under-dispersed counts: no finite alpha":                                    "yield",
-	"principal components of the correlation matrix":                                                      "screen",
-	"squared Mahalanobis distances (sample mean and covariance, n-#)":                                     "screen",
-	"two-way median polish (rows first)":                                                                  "screen",
-	"minimum covariance determinant (FastMCD), h = (n+p+#)/#, reweighted":                                 "screen",
+	"principal components of the correlation matrix":                                                       "screen",
+	"squared Mahalanobis distances (sample mean and covariance, n-#)":                                      "screen",
+	"two-way median polish (rows first)":                                                                   "screen",
+	"minimum covariance determinant (FastMCD), h = (n+p+#)/#, reweighted":                                  "screen",
 }
 
 // referenceWafermap are the methods that package wafermap answers in a driver of

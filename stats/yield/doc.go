@@ -18,4 +18,10 @@
 // one that is meant most often: what will this process yield on other wafers
 // like these. Dice of a wafer share its fate, so the second interval is wider,
 // often ten times, and is set by how much the wafers differ.
+//
+// # Defects and where loss comes from
+//
+// A [Model] ties yield to the density of killing defects; [FitDefects] estimates
+// density and clustering from counts. [Windows] splits the loss of a lot into what
+// dice lose one by one and what they lose together.
 package yield
