@@ -234,6 +234,7 @@ type Test struct {
 	MarginalMeans string       `json:"marginal_means"`
 	LimitCurve    []LimitPoint `json:"yield_against_limit"`
 	ByWafer       []WaferLevel `json:"by_wafer"`
+	Repeatability *Repeat      `json:"repeatability"` // from retested dice; null without any
 }
 
 // Censored counts readings known only as bounds.
@@ -282,6 +283,14 @@ type Capability struct {
 	Over    string   `json:"over"` // which dice
 	Why     string   `json:"why,omitempty"`
 	Notes   []string `json:"notes"`
+}
+
+// Repeat is the gauge repeatability seen on retested dice.
+type Repeat struct {
+	Dice  int    `json:"dice"`  // dice with both readings
+	Sigma Number `json:"sigma"` // of one reading, in the test's unit
+	Shift Number `json:"shift"` // median of last less first
+	Why   string `json:"why,omitempty"`
 }
 
 // Loss is the share of tested dice that a test fails. Alone and Any are null

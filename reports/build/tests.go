@@ -60,6 +60,7 @@ func (w *lotwork) testAccount(t int, curve []yield.LimitPoint) reports.Test {
 		r.LimitCurve = append(r.LimitCurve, reports.LimitPoint{Limit: limit, Shift: num(p.Shift), Value: shown(p.Value, test.Unit), Yield: num(p.Yield)})
 	}
 	r.ByWafer = w.testByWafer(t, x, marks)
+	r.Repeatability = w.repeatability(t, x, marks)
 	return r
 }
 
@@ -161,6 +162,24 @@ func (w *lotwork) testByWafer(t int, x []float64, marks []int8) []reports.WaferL
 		out = append(out, level)
 	}
 	return out
+}
+
+// repeatability compares the first reading of retested dice with the one that
+// counts. Bounds say nothing of the gauge and are left out.
+func (w *lotwork) repeatability(t int, x []float64, marks []int8) *reports.Repeat {
+	index, unit := w.lot.FirstPass().Index, w.lot.Tests()[t].Unit
+	if index == nil {
+		return nil
+	}
+	early := w.lot.Earlier().Values[t]
+	var first, last []float64
+	for row, k := range index {
+		if k >= 0 && (marks == nil || marks[row] == 0) {
+			first, last = append(first, unit.FromSI(early[k])), append(last, x[row])
+		}
+	}
+	g := stats.RepeatabilityOf(first, last)
+	return &reports.Repeat{Dice: g.N, Sigma: num(g.Sigma), Shift: num(g.Shift), Why: g.Why}
 }
 
 // limitShifts are the moves of a limit at which the yield is given: eleven steps

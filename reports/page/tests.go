@@ -157,7 +157,11 @@ func levelFacts(t *reports.Test) factGroup {
 
 func spreadFacts(t *reports.Test) factGroup {
 	u := func(v reports.Number) string { return withUnit(value(v), t.Unit) }
-	return factGroup{"Spread and shape", []fact{{"MAD sigma", u(t.MADSigma)}, {"standard deviation", u(t.SD)}, {"skewness", ratio(t.Skewness)}, {"excess kurtosis", ratio(t.Kurtosis)}}}
+	g := factGroup{"Spread and shape", []fact{{"MAD sigma", u(t.MADSigma)}, {"standard deviation", u(t.SD)}, {"skewness", ratio(t.Skewness)}, {"excess kurtosis", ratio(t.Kurtosis)}}}
+	if r := t.Repeatability; r != nil && r.Sigma.Valid() {
+		g.Facts = append(g.Facts, fact{"repeatability", u(r.Sigma) + ", " + plural(r.Dice, "die", "dice") + " read again"})
+	}
+	return g
 }
 
 func lossFacts(t *reports.Test) factGroup {
