@@ -233,6 +233,7 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	sep, decimal, n := p.l.sep, p.l.decimal, c.n
 	fields := p.l.fields
 	columns := p.columns[:len(fields)]
+	interned := false
 	for k := range fields {
 		switch fields[k].kind {
 		case valueField:
@@ -268,6 +269,7 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 				return 0, false
 			}
 			columns[k].ints[n] = t.intern(raw)
+			interned = true
 			i = j
 		default:
 			raw, j := plainCell(b, i, sep)
@@ -300,9 +302,9 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	if b[i] != '\n' || p.wafer >= 0 && columns[p.wafer].ints[n] < 0 || p.wafer < 0 && p.allEmpty(c, n) {
 		return 0, false
 	}
-	for _, s := range p.textOf {
-		if t := &p.interns[s]; len(t.fresh) > 0 {
-			t.fresh = t.fresh[:0]
+	if interned {
+		for _, s := range p.textOf {
+			p.interns[s].fresh = p.interns[s].fresh[:0]
 		}
 	}
 	c.n++
