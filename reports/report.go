@@ -345,12 +345,17 @@ type Screen struct {
 	Text string `json:"text"`
 }
 
-// Variance is one level's part of a test's spread.
+// Variance is one level's part of a test's spread over passing dice.
 type Variance struct {
-	Test  string   `json:"test"`
-	Level string   `json:"level"`
-	Sigma Interval `json:"sigma"`
-	Share Number   `json:"share"`
+	Test       string   `json:"test"`
+	Level      string   `json:"level"` // "wafer", "zone", "zone, pattern" (the same on every wafer), "die"
+	Groups     int      `json:"groups"`
+	Unit       string   `json:"unit"` // of sigma; "ln" when the split is of the logarithm
+	Sigma      Interval `json:"sigma"`
+	Share      Number   `json:"share"`
+	ShareLower Number   `json:"share_lower"`
+	ShareUpper Number   `json:"share_upper"`
+	Text       string   `json:"text,omitempty"` // on a test's first row: where its spread comes from
 }
 
 // Group is a set of wafers whose maps are alike.

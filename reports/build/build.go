@@ -70,6 +70,9 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 	if err := w.accounts(ctx); err != nil {
 		return nil, err
 	}
+	if err := w.spread(ctx); err != nil {
+		return nil, err
+	}
 	w.lotYield()
 	w.bins()
 	w.zones()
@@ -88,12 +91,8 @@ func (w *lotwork) accounts(ctx context.Context) error {
 	w.rep.Wafers = make([]reports.Wafer, len(wafers))
 	curves := yield.AllAgainstLimits(w.data, w.pass, limitShifts(w.in.Settings.LimitShiftPercent), w.losses.StopOnFail)
 
-	workers := w.in.Settings.Workers
-	if workers <= 0 {
-		workers = runtime.GOMAXPROCS(0)
-	}
 	group, ctx := errgroup.WithContext(ctx)
-	group.SetLimit(workers)
+	group.SetLimit(w.workers())
 	done := make(chan struct{})
 	finished := make(chan struct{})
 	go func() {
@@ -130,6 +129,14 @@ func (w *lotwork) accounts(ctx context.Context) error {
 	}
 	w.compareWafers()
 	return nil
+}
+
+// workers is how many tasks may run at once.
+func (w *lotwork) workers() int {
+	if n := w.in.Settings.Workers; n > 0 {
+		return n
+	}
+	return runtime.GOMAXPROCS(0)
 }
 
 // identify fills in what the report is about.

@@ -140,9 +140,10 @@ func otherTables(r *reports.Report) []table {
 		groups.Rows = append(groups.Rows, []cell{counted(g.ID), {Text: strings.Join(g.Wafers, ", "), Class: "phrase"}, {Text: g.Text, Class: "wide"}})
 	}
 	add(groups)
-	variance := table{Caption: "Where the spread comes from", Sortable: true, Columns: []column{{Name: "Test"}, {Name: "Level"}, {Name: "Sigma", Numeric: true}, {Name: "95 % interval", Numeric: true, Plain: true}, {Name: "Share of variance", Numeric: true}}}
+	variance := table{Caption: "Where the spread of passing dice comes from", Sortable: true, Columns: []column{{Name: "Test"}, {Name: "Level"}, {Name: "Groups", Numeric: true}, {Name: "Sigma", Numeric: true}, {Name: "95 % interval", Numeric: true, Plain: true}, {Name: "Unit"}, {Name: "Share of variance", Numeric: true}, {Name: "95 % interval", Numeric: true, Plain: true}}}
 	for _, v := range r.Variance {
-		variance.Rows = append(variance.Rows, []cell{text(v.Test), text(v.Level), number(value(v.Sigma.Estimate), v.Sigma.Estimate), text(orWhy(valueRange(v.Sigma), v.Sigma.Why)), number(percent(v.Share), v.Share)})
+		share := reports.Interval{Estimate: v.Share, Lower: v.ShareLower, Upper: v.ShareUpper}
+		variance.Rows = append(variance.Rows, []cell{text(v.Test), text(v.Level), counted(v.Groups), number(value(v.Sigma.Estimate), v.Sigma.Estimate), text(orWhy(valueRange(v.Sigma), v.Sigma.Why)), text(v.Unit), number(percent(v.Share), v.Share), text(percentRange(share))})
 	}
 	add(variance)
 	associations := table{Caption: "What goes with what", Sortable: true, Columns: []column{{Name: "Of"}, {Name: "With"}, {Name: "Effect", Numeric: true}, {Name: "p", Numeric: true}, {Name: "Text", Plain: true}}}
