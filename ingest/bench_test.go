@@ -84,7 +84,7 @@ func BenchmarkRead(b *testing.B) {
 	path := filepath.Join(b.TempDir(), "lot.csv")
 	size := writeLot(b, path, dice)
 	b.Run("kneepoint", func(b *testing.B) {
-		b.SetBytes(size)
+		defer rate(b, size)()
 		for b.Loop() {
 			batch, err := Read(context.Background(), []string{path}, Options{})
 			if err != nil {
@@ -96,7 +96,7 @@ func BenchmarkRead(b *testing.B) {
 		}
 	})
 	b.Run("kneepoint-one-worker", func(b *testing.B) {
-		b.SetBytes(size)
+		defer rate(b, size)()
 		for b.Loop() {
 			if _, err := Read(context.Background(), []string{path}, Options{Workers: 1}); err != nil {
 				b.Fatal(err)
@@ -104,7 +104,7 @@ func BenchmarkRead(b *testing.B) {
 		}
 	})
 	b.Run("kneepoint-full-reader", func(b *testing.B) {
-		b.SetBytes(size)
+		defer rate(b, size)()
 		for b.Loop() {
 			if _, err := Read(context.Background(), []string{path}, Options{careful: true}); err != nil {
 				b.Fatal(err)
@@ -112,13 +112,13 @@ func BenchmarkRead(b *testing.B) {
 		}
 	})
 	b.Run("encoding-csv", func(b *testing.B) {
-		b.SetBytes(size)
+		defer rate(b, size)()
 		for b.Loop() {
 			readEncodingCSV(b, path)
 		}
 	})
 	b.Run("arrow-csv", func(b *testing.B) {
-		b.SetBytes(size)
+		defer rate(b, size)()
 		for b.Loop() {
 			readArrowCSV(b, path)
 		}
@@ -126,7 +126,7 @@ func BenchmarkRead(b *testing.B) {
 	packed := filepath.Join(b.TempDir(), "lot.csv.gz")
 	pack(b, path, packed)
 	b.Run("kneepoint-gzip", func(b *testing.B) {
-		b.SetBytes(size)
+		defer rate(b, size)()
 		for b.Loop() {
 			if _, err := Read(context.Background(), []string{packed}, Options{}); err != nil {
 				b.Fatal(err)
@@ -142,6 +142,18 @@ func BenchmarkRead(b *testing.B) {
 				b.ReportMetric(float64(peak)/float64(n), "peakB/die")
 			}
 		})
+	}
+}
+
+// rate reports bytes per second, and per second of processor time: other work on
+// the machine slows the first and hardly the second.
+func rate(b *testing.B, size int64) (end func()) {
+	b.SetBytes(size)
+	start := cpuTime()
+	return func() {
+		if d := cpuTime() - start; d > 0 {
+			b.ReportMetric(float64(size)*float64(b.N)/1e6/d.Seconds(), "MB/cpu-s")
+		}
 	}
 }
 

@@ -93,11 +93,13 @@ counted by itself.
 
   - Measurements of the same die, by lot, wafer and coordinates, else by part id,
     are retests: the last valid one counts (see [Retest]); the others are in
-    [Lot.Earlier]. Rows that repeat another in every field are duplicates.
+    [Lot.Earlier]. Rows that repeat another in every field are duplicates. Rows
+    of a die that have no test in common are parts of one measurement and joined.
   - Numbers that stand for no reading, as -9999 or 9.91e37, become missing.
   - Values at the tester's clamp are "at least", values at its floor "at most"
     ([Lot.Censor]); where the product file gives neither, a pile-up at the
-    extreme value tells.
+    extreme value tells. A value below the product file's floor is set to the
+    floor, for that is what it is at most.
   - Dice off the wafer, or without coordinates, stay in the lot and are counted.
 
 How each is told is written at the functions of clean_*.go. A file that is cut
