@@ -3,6 +3,7 @@ package yield_test
 import (
 	"fmt"
 	"math"
+	"math/rand/v2"
 
 	"kneepoint/stats/yield"
 )
@@ -43,4 +44,26 @@ func ExampleTestLosses() {
 	// BVCBO: first 2, alone 1, any 2, marginal 1
 	// ICBO: first 1, alone 1, any 2, marginal 0
 	// runs on: 2 of 2 failing dice hold readings after their first fail
+}
+
+// Five wafers with a dead ring and 5 % of the other dice failing by themselves.
+func ExampleWindows() {
+	r := rand.New(rand.NewPCG(1, 2))
+	var x, y, wafer []int32
+	var pass []bool
+	for w := range int32(5) {
+		for i := int32(-15); i <= 15; i++ {
+			for j := int32(-15); j <= 15; j++ {
+				if d := i*i + j*j; d <= 225 {
+					x, y, wafer = append(x, i), append(y, j), append(wafer, w)
+					pass = append(pass, d < 190 && r.Float64() > 0.05)
+				}
+			}
+		}
+	}
+	w := yield.Windows(x, y, wafer, pass, 0.95)
+	fmt.Printf("yield %.3f: %.3f lost together, %.3f one by one (%.1f %% of dice elsewhere)\n",
+		float64(w.Passing)/float64(w.Dice), w.Systematic.Estimate, w.Random.Estimate, 100*w.RandomRate.Estimate)
+	// Output:
+	// yield 0.798: 0.164 lost together, 0.038 one by one (4.5 % of dice elsewhere)
 }
