@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"kneepoint/stats/control"
+	"kneepoint/stats/multivariate"
 	"kneepoint/stats/series"
 	"kneepoint/stats/variance"
 	"kneepoint/stats/yield"
@@ -45,6 +46,9 @@ func init() {
 		"AD# that gives a stated yield (inverse of each model)":                                               {answer: referenceYield},
 		"negative binomial ML fit to defects per die/wafer (alpha = size, mean = lambda), Poisson comparison": {answer: referenceDefects},
 		"negative binomial fit to under-dispersed counts: no finite alpha":                                    {answer: referenceDefects},
+		"principal components of the correlation matrix":                                                      {answer: referencePCA},
+		"squared Mahalanobis distances (sample mean and covariance, n-#)":                                     {answer: referenceMahalanobis},
+		"two-way median polish (rows first)":                                                                  {answer: referencePolish},
 	} {
 		referenceMethods[name] = m
 	}
@@ -244,4 +248,51 @@ func referenceDefects(c *referenceCase) map[string]any {
 		"loglik_negbin": d.LogLik, "loglik_poisson": d.LogLikPoisson, "lr_statistic": d.LR, "aic_negbin": aic, "aic_poisson": aicPoisson,
 		"alpha_moments": d.AlphaMoments, "fraction_zero_observed": float64(zeros) / float64(d.N),
 		"yield_negbin": d.Model().Yield(d.Density.Estimate), "yield_poisson": yield.Poisson.Yield(d.Mean)}
+}
+
+// columns turns rows into columns.
+func (c *referenceCase) columns() (rows, columns [][]float64) {
+	rows = c.table("rows")
+	columns = make([][]float64, len(rows[0]))
+	for _, row := range rows {
+		for j, v := range row {
+			columns[j] = append(columns[j], v)
+		}
+	}
+	return rows, columns
+}
+
+func referencePCA(c *referenceCase) map[string]any {
+	rows, columns := c.columns()
+	p := multivariate.Components(columns)
+	var scores [][]float64
+	for _, row := range rows[:5] {
+		scores = append(scores, p.Score(row))
+	}
+	return map[string]any{"mean": p.Mean, "sd": p.SD, "correlation": p.Correlation, "eigenvalues": p.Eigenvalues,
+		"explained_fraction": p.Explained, "loadings_by_component": p.Loadings, "scores_first_5_rows": scores}
+}
+
+func referenceMahalanobis(c *referenceCase) map[string]any {
+	_, columns := c.columns()
+	d := multivariate.Mahalanobis(columns)
+	most, above, limit := 0, 0, d.Limit(0.999)
+	for i, v := range d.D2 {
+		if v > d.D2[most] {
+			most = i
+		}
+		if v > limit {
+			above++
+		}
+	}
+	return map[string]any{"d2": d.D2, "max_d2": d.D2[most], "index_max": most, "chi2_p_max": d.P(d.D2[most]),
+		"chi2_limit_999": limit, "beta_limit_999": d.ExactLimit(0.999), "n_above_limit": above}
+}
+
+func referencePolish(c *referenceCase) map[string]any {
+	parts := func(eps float64, sweeps int) map[string]any {
+		p := multivariate.MedianPolish(c.table("rows"), eps, sweeps)
+		return map[string]any{"overall": p.Overall, "row": p.Row, "col": p.Column, "residuals": p.Residual}
+	}
+	return map[string]any{"converged": parts(1e-12, 200), "default_eps_0_01": parts(0.01, 10)}
 }

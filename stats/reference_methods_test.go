@@ -46,9 +46,6 @@ var referencePending = map[string]string{
 	"Grubbs test, one-sided maximum":                                                               "screen",
 	"Grubbs test for one outlier":                                                                  "screen",
 	"generalised extreme studentised deviate (Rosner #)":                                           "screen",
-	"principal components of the correlation matrix":                                               "screen",
-	"squared Mahalanobis distances (sample mean and covariance, n-#)":                              "screen",
-	"two-way median polish (rows first)":                                                           "screen",
 	"minimum covariance determinant (FastMCD), h = (n+p+#)/#, reweighted":                          "screen",
 }
 

@@ -145,6 +145,12 @@ func (c *referenceCase) check(t *testing.T, m referenceMethod, skipped map[strin
 				compare(at+name+" ", e[name], value, inner, 0)
 			}
 		case []any:
+			if rows, ok := got.([][]float64); ok && len(rows) == len(e) {
+				for i := range e {
+					compare(fmt.Sprintf("%s[%d]", at, i), e[i], rows[i], tolerance, 0)
+				}
+				return
+			}
 			g := asNumbers(got)
 			if len(g) != len(e) {
 				t.Errorf("%s: %d values, want %d", at, len(g), len(e))
