@@ -15,6 +15,7 @@ import (
 
 func init() {
 	for name, m := range map[string]referenceMethod{
+		"Box-Cox transformation parameter by profile likelihood":                                               {answer: referenceBoxCox},
 		"univariate Gaussian mixture, unequal variances, k = #..#, EM to convergence, BIC":                     {answer: referenceMixture},
 		"normality tests: Anderson-Darling, Cramer-von Mises, Lilliefors (parameters estimated), Shapiro-Wilk": {answer: referenceNormality},
 		"Anderson-Darling A^# and Kolmogorov-Smirnov D against a FULLY SPECIFIED Weibull":                      {answer: referenceKnown},
@@ -251,4 +252,10 @@ func broad(m dist.Mixture) bool {
 		}
 	}
 	return true
+}
+
+func referenceBoxCox(c *referenceCase) map[string]any {
+	t := dist.BoxCox(c.list("x"), 0.95)
+	return map[string]any{"lambda": t.Lambda.Estimate, "lambda_ci95": ends(t.Lambda),
+		"profile_loglik_diff_lambda0": t.Log, "profile_loglik_diff_lambda1": t.Linear}
 }

@@ -11,7 +11,7 @@ import (
 type cell struct{ n, mean, spread float64 }
 
 // fewCells is about how many cells stand for a large sample.
-const fewCells = 4096
+const fewCells = 2048
 
 // cells reduces readings to cells, in ascending order. Up to fewCells different
 // values keep a cell each. Beyond that a cell takes so many neighbours that

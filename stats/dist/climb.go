@@ -107,7 +107,12 @@ func climb(p point, at func(theta, delta float64) point) (point, bool) {
 		step, moved := 1.0, false
 		for range 60 {
 			if t := p.theta + step*dt; t > 0 {
-				if q := at(t, p.delta+step*dd); q.l >= p.l-1e-13*math.Abs(p.l) {
+				// A gain below the rounding of a sum of millions is taken on trust.
+				slack := 1e-13 * math.Abs(p.l)
+				if step == 1 && gain < 1e-12*math.Abs(p.l) {
+					slack = 1e-10 * math.Abs(p.l)
+				}
+				if q := at(t, p.delta+step*dd); q.l >= p.l-slack {
 					p, moved = q, true
 					break
 				}

@@ -22,7 +22,7 @@ type Mixtures struct {
 // distant one added), so that the same readings give the same fit. A part is
 // never narrower than 0.02 standard deviations of all readings, and one that
 // holds only a handful of readings is not taken: a likelihood can be raised
-// without end by parts closing in on single readings. Above 4,096 different
+// without end by parts closing in on single readings. Above 2,048 different
 // values the readings are gathered into cells of neighbours, which costs nothing
 // that a fit could show.
 //
