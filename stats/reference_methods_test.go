@@ -35,7 +35,6 @@ var referenceMethods = map[string]referenceMethod{
 
 // referencePending are methods that belong to rooms not built yet, by room.
 var referencePending = map[string]string{
-	"Box-Cox transformation parameter by profile likelihood":                                       "dist",
 	"normal tolerance factors: k# (Howe), k# (Natrella), k# (noncentral t)":                        "capability",
 	"one-sided normal tolerance factor, small n":                                                   "capability",
 	"normal tolerance-interval k factors, one- and two-sided":                                      "capability",
