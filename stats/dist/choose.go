@@ -54,8 +54,10 @@ func Choose(x []float64, censor []int8) Choice {
 	}
 	var c Choice
 	main := c.setAside(x, censor)
+	r := Readings{Values: main, Censor: censor}
+	logged := r.logs()
 	for _, f := range []Family{NormalFamily, LognormalFamily, WeibullFamily, GammaFamily} {
-		d, err := Fit(f, Readings{Values: main, Censor: censor})
+		d, err := fit(f, r, &logged)
 		if err != nil {
 			c.Candidates = append(c.Candidates, Candidate{Family: f, Why: err.Error()})
 			continue
@@ -106,8 +108,16 @@ func (c *Choice) setAside(x []float64, censor []int8) []float64 {
 	const k = 6
 	med, sigma := s.MedianMADSigma(x)
 	lo, hi := med-k*sigma, med+k*sigma
-	m := stats.MomentsOf(x)
-	if m.Min > 0 && m.N > 0 {
+	least, most := math.Inf(1), math.Inf(-1)
+	for _, v := range x {
+		if v == v {
+			least, most = min(least, v), max(most, v)
+		}
+	}
+	if c.AsideFrom, c.AsideTo = lo, hi; least >= lo && most <= hi {
+		return x
+	}
+	if least > 0 {
 		logs := make([]float64, len(x))
 		for i, v := range x {
 			logs[i] = math.Log(v)

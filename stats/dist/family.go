@@ -68,8 +68,8 @@ func (r Readings) check() {
 	}
 }
 
-// sample reduces the readings for a location-scale fit of f(reading).
-func (r Readings) sample(f func(float64) float64) *sample {
+// sample reduces the readings for a fit.
+func (r Readings) sample() *sample {
 	r.check()
 	var s *sample
 	if r.Upper != nil {
@@ -92,9 +92,16 @@ func (r Readings) exact(f func(v float64)) {
 	}
 }
 
-// logs are the logarithms of positive readings, and the sum of those of the
-// exact ones, by which the likelihood of the readings themselves is less.
-func (r Readings) logs() (logs Readings, jacobian float64, err error) {
+// logged is readings in logarithms, for the families of positive values.
+type logged struct {
+	Readings
+	// jacobian is the sum of the logarithms of the exact readings, by which the
+	// log-likelihood of the readings themselves is less.
+	jacobian float64
+	err      error
+}
+
+func (r Readings) logs() (l logged) {
 	r.check()
 	ln := func(x []float64) []float64 {
 		out := make([]float64, len(x))
@@ -103,24 +110,24 @@ func (r Readings) logs() (logs Readings, jacobian float64, err error) {
 				out[i] = math.Inf(-1) // right for a lower limit, which then says nothing
 				atLeast := r.Upper == nil && r.Censor != nil && r.Censor[i] > 0
 				if !atLeast && (r.Upper == nil || !(r.Upper[i] > 0)) {
-					err = ErrNotPositive
+					l.err = ErrNotPositive
 				}
 			}
 		}
 		return out
 	}
-	logs = Readings{Values: ln(r.Values), Censor: r.Censor}
+	l.Values, l.Censor = ln(r.Values), r.Censor
 	if r.Upper != nil {
-		logs.Upper = ln(r.Upper)
+		l.Upper = ln(r.Upper)
 	}
 	if from, to, yes := r.screened(); yes {
-		logs.From, logs.To = logOf(from), math.Log(math.Max(to, 0))
-		if !(logs.From < logs.To) {
-			err = ErrOutside
+		l.From, l.To = logOf(from), math.Log(math.Max(to, 0))
+		if !(l.From < l.To) {
+			l.err = ErrOutside
 		}
 	}
-	logs.exact(func(v float64) { jacobian += v })
-	return logs, jacobian, err
+	l.exact(func(v float64) { l.jacobian += v })
+	return l
 }
 
 // Distribution is a distribution fitted to readings: [Normal], [Lognormal],
@@ -160,16 +167,23 @@ type Parameter struct {
 // NaNs are skipped. It panics on slices of different length and limits out of
 // order, and fails when the data do not determine a fit, or, but for the normal
 // family, when an exact value is not positive.
-func Fit(f Family, r Readings) (Distribution, error) {
+func Fit(f Family, r Readings) (Distribution, error) { return fit(f, r, nil) }
+
+// fit takes the logarithms too where the caller has them.
+func fit(f Family, r Readings, l *logged) (Distribution, error) {
+	if l == nil && f != NormalFamily {
+		logs := r.logs()
+		l = &logs
+	}
 	switch f {
 	case NormalFamily:
 		return fitNormal(r)
 	case LognormalFamily:
-		return fitLognormal(r)
+		return fitLognormal(l)
 	case WeibullFamily:
-		return fitWeibull(r)
+		return fitWeibull(l)
 	case GammaFamily:
-		return fitGamma(r)
+		return fitGamma(r, l)
 	}
 	panic("stats/dist: unknown family")
 }

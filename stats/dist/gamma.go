@@ -28,13 +28,15 @@ type Gamma struct {
 // every different bound: readings at a clamp cost nothing, but a bound of its own
 // for each of a million readings takes minutes.
 func FitGamma(x []float64, censor []int8) (Gamma, error) {
-	return fitGamma(Readings{Values: x, Censor: censor})
+	r := Readings{Values: x, Censor: censor}
+	l := r.logs()
+	return fitGamma(r, &l)
 }
 
-func fitGamma(r Readings) (Gamma, error) {
+func fitGamma(r Readings, l *logged) (Gamma, error) {
 	nan := math.NaN()
 	none := Gamma{Shape: nan, Scale: nan, SELogMean: nan, SELogShape: nan, Cov: nan, LogLik: nan}
-	g, c, start, err := newGammaSample(r)
+	g, c, start, err := newGammaSample(r, l)
 	none.Counts = c
 	if err != nil {
 		return none, err
@@ -63,9 +65,9 @@ type gammaSample struct {
 	list          []counted
 }
 
-func newGammaSample(r Readings) (g gammaSample, c Counts, start point, err error) {
-	if _, _, err := r.logs(); err != nil { // something is not positive
-		return g, c, start, err
+func newGammaSample(r Readings, l *logged) (g gammaSample, c Counts, start point, err error) {
+	if l.err != nil {
+		return g, c, start, l.err
 	}
 	r.Values = slices.Clone(r.Values)
 	for i, v := range r.Values {
@@ -73,7 +75,7 @@ func newGammaSample(r Readings) (g gammaSample, c Counts, start point, err error
 			r.Values[i] = math.Inf(-1) // a lower limit that says nothing
 		}
 	}
-	s := r.sample(nil)
+	s := r.sample()
 	if s.seen != (bound{}) {
 		s.seen.lo = math.Max(s.seen.lo, 0)
 	}

@@ -44,7 +44,7 @@ func FitNormalBetween(lower, upper []float64) (Normal, error) {
 }
 
 func fitNormal(r Readings) (Normal, error) {
-	s := r.sample(func(v float64) float64 { return v })
+	s := r.sample()
 	c, err := s.finish()
 	if err != nil {
 		return noNormal(c), err
@@ -126,16 +126,16 @@ type Lognormal struct{ Normal }
 // FitLognormal fits the logarithms of x as [FitNormal] does. Every value must be
 // positive.
 func FitLognormal(x []float64, censor []int8) (Lognormal, error) {
-	return fitLognormal(Readings{Values: x, Censor: censor})
+	l := Readings{Values: x, Censor: censor}.logs()
+	return fitLognormal(&l)
 }
 
-func fitLognormal(r Readings) (Lognormal, error) {
-	logs, jacobian, err := r.logs()
-	if err != nil {
-		return Lognormal{noNormal(Counts{})}, err
+func fitLognormal(l *logged) (Lognormal, error) {
+	if l.err != nil {
+		return Lognormal{noNormal(Counts{})}, l.err
 	}
-	n, err := fitNormal(logs)
-	n.LogLik -= jacobian
+	n, err := fitNormal(l.Readings)
+	n.LogLik -= l.jacobian
 	return Lognormal{n}, err
 }
 

@@ -69,7 +69,8 @@ func ProfileQuantile(f Family, r Readings, p, confidence float64) (stats.Interva
 // quantile at p held.
 func profiler(f Family, r Readings, d Distribution, p float64) (func(q float64) float64, error) {
 	if f == GammaFamily {
-		g, _, _, err := newGammaSample(r)
+		l := r.logs()
+		g, _, _, err := newGammaSample(r, &l)
 		if err != nil {
 			return nil, err
 		}
@@ -95,13 +96,10 @@ func profiler(f Family, r Readings, d Distribution, p float64) (func(q float64) 
 		kernel, z = extremeKernel, math.Log(-math.Log1p(-p))
 	}
 	if f != NormalFamily {
-		var err error
-		if logs, _, err = r.logs(); err != nil {
-			return nil, err
-		}
+		logs = r.logs().Readings
 		position = math.Log
 	}
-	s := logs.sample(nil)
+	s := logs.sample()
 	s.kernel = kernel
 	if f == WeibullFamily {
 		logs.exact(func(v float64) { s.values = append(s.values, v) })

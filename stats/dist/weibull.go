@@ -23,19 +23,19 @@ type Weibull struct {
 // ln x has the smallest-extreme-value distribution, of which location and spread
 // are found as for the normal one, by the same method.
 func FitWeibull(x []float64, censor []int8) (Weibull, error) {
-	return fitWeibull(Readings{Values: x, Censor: censor})
+	l := Readings{Values: x, Censor: censor}.logs()
+	return fitWeibull(&l)
 }
 
-func fitWeibull(r Readings) (Weibull, error) {
+func fitWeibull(l *logged) (Weibull, error) {
 	nan := math.NaN()
 	none := Weibull{Shape: nan, Scale: nan, SELogScale: nan, SELogShape: nan, Cov: nan, LogLik: nan}
-	logs, jacobian, err := r.logs()
-	if err != nil {
-		return none, err
+	if l.err != nil {
+		return none, l.err
 	}
-	s := logs.sample(nil)
+	s := l.sample()
 	s.kernel = extremeKernel
-	logs.exact(func(v float64) { s.values = append(s.values, v) })
+	l.exact(func(v float64) { s.values = append(s.values, v) })
 	c, err := s.finish()
 	none.Counts = c
 	if err != nil {
@@ -47,7 +47,7 @@ func fitWeibull(r Readings) (Weibull, error) {
 		return none, err
 	}
 	return Weibull{Shape: 1 / top.sigma, Scale: math.Exp(top.mu), SELogScale: top.seMu, SELogShape: top.seLogSigma,
-		Cov: top.cov, LogLik: top.logLik - jacobian, Counts: c}, nil
+		Cov: top.cov, LogLik: top.logLik - l.jacobian, Counts: c}, nil
 }
 
 const eulerGamma = 0.57721566490153286061
