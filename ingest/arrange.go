@@ -142,6 +142,7 @@ func (f *fileData) defaults() groupKey {
 // arrange sorts rows by lot, wafer and touchdown.
 func (t *readings) arrange(opt *Options) (*order, error) {
 	k := t.keys()
+	t.overlap(&k)
 	by := make([]int32, len(k.groups))
 	for i := range by {
 		by[i] = int32(i)

@@ -69,7 +69,7 @@ func survey(v []float64, odd map[status]int) extremes {
 func (d *draft) numbers(test int) []Finding {
 	odd := map[status]int{}
 	d.seen[test] = survey(d.values[test], odd)
-	findings := d.oddCells(test, odd)
+	findings := append(d.carriedOf(test), d.oddCells(test, odd)...)
 	if s := d.sentinels(test); len(s) > 0 {
 		d.seen[test] = survey(d.values[test], nil)
 		findings = append(findings, s...)
@@ -101,6 +101,8 @@ func (d *draft) oddCells(test int, counts map[status]int) []Finding {
 		{cellInf, Warning, "not-finite", "value is infinite", "values are infinite", "find out what the tester wrote there"},
 		{cellOver, Warning, "out-of-range", "cell holds a word for out of range", "cells hold a word for out of range",
 			"export the tester's largest value instead, so that it counts as a bound"},
+		{cellInvalid, Warning, "invalid-result", "result is flagged by the tester as not to be used", "results are flagged by the tester as not to be used",
+			"look at the tester's alarms for this test"},
 		{cellMissing, Info, "missing-word", "cell holds a word for no reading", "cells hold a word for no reading", ""},
 	} {
 		n := counts[k.kind]

@@ -243,9 +243,9 @@ func (c *clamping) found(sign int8) {
 	}
 	where := "the largest value of the lot"
 	if sign > 0 {
-		c.info.clamp = p.value
+		c.info.clamp, c.info.pile[0] = p.value, true
 	} else {
-		where, c.info.floor = "the smallest value of the lot", p.value
+		where, c.info.floor, c.info.pile[1] = "the smallest value of the lot", p.value, true
 	}
 	c.report(sign, p.n, p.value, fmt.Sprintf("%s, where the readings next to it let expect %.2g", where, p.expected))
 }

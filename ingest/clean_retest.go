@@ -233,7 +233,11 @@ func (d *draft) sameRow(a, b int32) bool {
 		if s == intTouchdown && !d.ownOrder {
 			continue
 		}
-		if c := d.ints[s]; c != nil && c[a] != c[b] {
+		c := d.ints[s]
+		if s == intMeasurement && c != nil && (c[a] == Missing || c[b] == Missing) {
+			continue
+		}
+		if c != nil && c[a] != c[b] {
 			return false
 		}
 	}
@@ -255,6 +259,7 @@ func (d *draft) sameRow(a, b int32) bool {
 
 func (s *retesting) report() {
 	d := s.d
+	d.findings = append(d.findings, d.takeCarried(func(f Finding) bool { return f.Code == "duplicate-row" || f.Code == "joined-rows" })...)
 	if d.duplicates > 0 {
 		d.note(Warning, "duplicate-row", fmt.Sprintf("%d %s another one in every field; counted once", d.duplicates, plural(d.duplicates, "row repeats", "rows repeat")),
 			"check whether the data were exported twice", d.duplicates)
@@ -403,6 +408,7 @@ func (d *draft) split(keep []int32) (Earlier, FirstPass) {
 	}
 	for i, r := range rows {
 		of := place[keep[r]]
+		d.after = append(d.after, rank(r) > rank(keep[r]))
 		e.Of = append(e.Of, of)
 		e.HardBin = append(e.HardBin, intOr(d.ints[intHardBin], r))
 		e.SoftBin = append(e.SoftBin, intOr(d.ints[intSoftBin], r))

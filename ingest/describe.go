@@ -39,7 +39,7 @@ func (t *readings) told() [][]said {
 // own; the product file's when it gives none, or one that cannot be; else that
 // of an earlier file.
 func (t *readings) settleUnits(product *config.Product) {
-	t.units = make([][]config.Unit, len(t.sch.tests))
+	t.units, t.si = make([][]config.Unit, len(t.sch.tests)), map[[2]int]bool{}
 	for i, all := range t.told() {
 		t.units[i] = make([]config.Unit, len(t.files))
 		var own, first config.Unit
@@ -52,6 +52,9 @@ func (t *readings) settleUnits(product *config.Product) {
 			long = long || t.files[c.file].layout.long
 			unit := t.unitOf(i, c, own, first, again)
 			t.units[i][c.file] = unit
+			if c.si {
+				t.si[[2]int{i, c.file}] = true
+			}
 			if !first.Given() {
 				first = unit
 			}
@@ -135,9 +138,10 @@ func (i *testInfo) fromFile(c said, unit config.Unit, note func(Severity, string
 	if !i.unit.Given() {
 		i.unit = unit
 	}
-	if !slices.ContainsFunc(i.fileUnits, func(u config.Unit) bool { return u.Exp == unit.Exp }) {
-		i.fileUnits = append(i.fileUnits, unit)
+	if c.si {
+		unit = config.Unit{Text: unit.Base, Base: unit.Base}
 	}
+	i.addUnits(c, unit)
 	lower, upper := unit.ToSI(c.lower), unit.ToSI(c.upper)
 	if lower == lower || upper == upper {
 		if i.limitsFrom == "" {
@@ -153,6 +157,7 @@ func (i *testInfo) fromFile(c said, unit config.Unit, note func(Severity, string
 	if i.number == Missing {
 		i.number = c.number
 	}
+	i.fromOwn(c.own)
 }
 
 // fromProduct lets the product file have its say.

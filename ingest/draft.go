@@ -1,6 +1,7 @@
 package ingest
 
 import (
+	"maps"
 	"math"
 	"slices"
 	"strings"
@@ -55,6 +56,7 @@ func (d *draft) lot(opt *Options) *Lot {
 		}
 	}
 	l.findings, l.shared = d.findings, d.shared
+	l.about, l.piles, l.after = d.about, d.piles(), d.after
 	return l
 }
 
@@ -136,11 +138,16 @@ func (d *draft) attributes(l *Lot) {
 			l.attributes[kv[0]] = kv[1]
 		}
 	}
+	maps.Copy(l.attributes, d.about.attributes)
 	for s := range d.text {
 		if d.text[s] == nil {
 			continue
 		}
-		if code, ok := oneCode(d.text[s]); ok {
+		level := d.from.sch.levels[s]
+		if level == levelDie {
+			continue
+		}
+		if code, ok := oneCode(d.text[s]); ok && level != levelWafer {
 			if code >= 0 {
 				if s == textProduct {
 					l.product = d.dict[s][code]

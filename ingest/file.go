@@ -9,6 +9,10 @@ import (
 )
 
 // fileData is one file as read.
+//
+// This is the seam between formats and everything behind it: a reader of a
+// format gives one, with a layout that says what its columns are and a chunk that
+// holds them, and cleaning, retests and findings are the same for all.
 type fileData struct {
 	layout     *layout     // nil for a Table in memory
 	lot, wafer string      // of rows that do not say
@@ -19,16 +23,20 @@ type fileData struct {
 	odd        map[oddKey]oddCells
 	notes      []Finding
 	err        *Error // reading broke off here; what came before is kept
+	container  string // folder, pattern or archive that the file was found in
+	start      int64  // seconds since 1970 when its test began, 0 unknown
+	about      lotFacts
+	carried    []Finding // of files that convert wrote: what was found in the first place, by lot
 }
 
 // readFile reads one file: its layout from the first block, then all blocks in
 // parallel. When the rows contradict what the first block made believe (a
 // column turns out to be text, numbers to have a decimal comma), it is read
 // again with that known.
-func readFile(ctx context.Context, path string, index int, sch *schema, opt *Options, progress func(int64)) (*fileData, error) {
+func readFile(ctx context.Context, in *input, index int, sch *schema, opt *Options, progress func(int64)) (*fileData, error) {
 	fix := map[string]bool{}
 	for {
-		d, err := readOnce(ctx, path, index, sch, opt, progress, fix)
+		d, err := readOnce(ctx, in, index, sch, opt, progress, fix)
 		if err != nil || !d.contradicted(fix, opt.Product) {
 			return d, err
 		}
@@ -76,8 +84,8 @@ func (d *fileData) contradicted(fix map[string]bool, product *config.Product) bo
 	return again
 }
 
-func readOnce(ctx context.Context, path string, index int, sch *schema, opt *Options, progress func(int64), fix map[string]bool) (*fileData, error) {
-	src, err := openSource(path, progress)
+func readOnce(ctx context.Context, in *input, index int, sch *schema, opt *Options, progress func(int64), fix map[string]bool) (*fileData, error) {
+	src, err := in.text(progress)
 	if err != nil {
 		return nil, err
 	}
@@ -86,7 +94,7 @@ func readOnce(ctx context.Context, path string, index int, sch *schema, opt *Opt
 	if err := k.head(); err != nil {
 		return nil, err
 	}
-	l, err := findLayout(path, k.carry, k.eof, opt.Product, fix)
+	l, err := findLayout(in, k.carry, k.eof, opt.Product, fix)
 	if err != nil {
 		if k.err != nil {
 			return nil, src.readError(k.err)
@@ -108,7 +116,8 @@ func readOnce(ctx context.Context, path string, index int, sch *schema, opt *Opt
 		}
 	}
 	src.drain()
-	d.input = Input{File: path, SHA256: src.sum(), Format: format(l, src.packed), Bytes: src.raw, Rows: int64(d.rows.read)}
+	d.input = Input{File: in.name, SHA256: src.sum(), Format: format(l, src.packed), Bytes: src.raw, Rows: int64(d.rows.read)}
+	in.amend(d)
 	return d, nil
 }
 

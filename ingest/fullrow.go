@@ -82,7 +82,7 @@ func blank(fields [][]byte) bool {
 
 // Missing values tell by the bits of their NaN why they are missing, until
 // cleaning has counted them by test.
-var oddNaN = [...]float64{cellMissing: nanWith(1), cellOver: nanWith(2), cellInf: nanWith(3), cellBad: nanWith(4)}
+var oddNaN = [...]float64{cellMissing: nanWith(1), cellOver: nanWith(2), cellInf: nanWith(3), cellBad: nanWith(4), cellInvalid: nanWith(5)}
 
 const oddNaNBits = 0x7ff8_0000_0000_0010
 
@@ -94,7 +94,7 @@ func nanStatus(v float64) status {
 	if bits&^0xf00 != oddNaNBits {
 		return cellEmpty
 	}
-	return [16]status{1: cellMissing, 2: cellOver, 3: cellInf, 4: cellBad}[bits>>8&0xf]
+	return [16]status{1: cellMissing, 2: cellOver, 3: cellInf, 4: cellBad, 5: cellInvalid}[bits>>8&0xf]
 }
 
 // store puts one cell of the full reader into row c.n.

@@ -37,6 +37,10 @@ type draft struct {
 	siteIsDie bool
 	ownOrder  bool // the file has touchdown numbers
 
+	about   lotFacts
+	carried []Finding // still to be placed among the findings
+	after   []bool    // by measurement of Earlier: it came after the one that counts
+
 	measurements, duplicates, joined int
 
 	seen      []extremes // by test
@@ -177,6 +181,9 @@ func (t *readings) unitFor(slot, file int) config.Unit {
 	if t.files[file].layout == nil {
 		return config.Unit{} // a Table has them in SI
 	}
+	if t.si[[2]int{slot, file}] {
+		return config.Unit{}
+	}
 	return t.units[slot][file]
 }
 
@@ -236,6 +243,8 @@ func (t *readings) gather(ctx context.Context, o *order, opt *Options) ([]*draft
 			if l.files[fi] {
 				d.inputs = append(d.inputs, f.input)
 				d.comments = append(d.comments, f.attributes...)
+				d.carried = append(d.carried, f.carried...)
+				d.about.add(&f.about)
 			}
 		}
 		for _, f := range t.findings {
@@ -245,6 +254,7 @@ func (t *readings) gather(ctx context.Context, o *order, opt *Options) ([]*draft
 		}
 		d.shared = len(d.findings)
 		d.files, d.from = l.files, t
+		d.findings = append(d.findings, d.takeCarried(func(f Finding) bool { return !d.carriedLater(f) })...)
 		d.tests, d.slots = t.describe(opt.Product, l.files, d.note)
 		drafts[i] = d
 	}

@@ -16,6 +16,7 @@ type layout struct {
 	decimal byte
 	// decimalSeen is false when no number of the sample had a fraction.
 	decimalSeen bool
+	waferElse   string   // wafer of a file without any, "" none
 	names       []string // header as written
 	header      [][]byte // the same as bytes, to know it again
 	headerLine  int
@@ -55,6 +56,8 @@ type testColumn struct {
 	condition    string
 	number       int
 	field        int
+	si           bool     // values and limits are SI already; the unit is for showing
+	own          *ownFact // what only files of convert say
 }
 
 // Slots of the fixed text, whole-number and value columns.
@@ -77,6 +80,7 @@ const (
 	intTouchdown
 	intHardBin
 	intSoftBin
+	intMeasurement // of files that convert wrote: place among the measurements of its die
 	intNumber
 	intColumns
 )
@@ -115,8 +119,8 @@ func (l *layout) fail(line int, column, what, remedy string) error {
 
 // findLayout studies the start of a file. fix holds what an earlier reading
 // found out: names of columns that are text, or fixDecimal.
-func findLayout(file string, head []byte, final bool, product *config.Product, fix map[string]bool) (*layout, error) {
-	l := &layout{file: file, decimal: '.'}
+func findLayout(in *input, head []byte, final bool, product *config.Product, fix map[string]bool) (*layout, error) {
+	l := &layout{file: in.name, decimal: '.', waferElse: in.waferElse()}
 	rows, at, err := l.findHeader(head, final, product)
 	if err != nil {
 		return nil, err
@@ -279,6 +283,10 @@ func (l *layout) check(product *config.Product) error {
 	switch {
 	case allNumbers(l.names):
 		return l.fail(l.headerLine, "", "no header found: the first row holds numbers only", "put a row with the names of the columns first")
+	case !wafer && l.waferElse != "":
+		l.attributes = append(l.attributes, [2]string{"wafer", l.waferElse})
+		l.note(Warning, "wafer-from-file-name", fmt.Sprintf("%s names no wafer; taken for wafer %s, after its name", l.file, l.waferElse), "add a wafer column")
+		return l.check(product)
 	case !wafer:
 		return l.fail(l.headerLine, "", "no wafer column found: looked for "+list(roleNames["wafer"][:7], 7)+" and the like; "+holds,
 			"rename the column, or name it under columns.wafer in the product file")

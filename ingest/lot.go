@@ -23,6 +23,9 @@ type Lot struct {
 	earlier     Earlier
 	first       FirstPass
 	cols        columns
+	about       lotFacts
+	after       []bool    // by measurement of earlier: it came after the one that counts
+	piles       [][2]bool // by test: its clamp, its floor is a pile-up found in the data
 }
 
 // Missing stands in integer columns where the file has nothing.

@@ -88,8 +88,8 @@ var odds = []odd{
 	{name: "UTF-16, little-endian", text: "\xff\xfeL\x00O\x00T\x00,\x00W\x00\n\x00", fails: `lot\.csv: is UTF-16 text starting "LOT,W.*; save it as UTF-8`},
 	{name: "UTF-16, big-endian", text: "\xfe\xff\x00L\x00O\x00T\x00,\x00W\x00\n", fails: `lot\.csv: is UTF-16 text`},
 	{name: "UTF-16 without mark", text: "L\x00O\x00T\x00,\x00W\x00A\x00F\x00E\x00R\x00\n\x00", fails: `lot\.csv: is UTF-16 text`},
-	{name: "zip", text: "PK\x03\x04....", fails: `lot\.csv: is a zip archive or a spreadsheet`},
-	{name: "Parquet", text: "PAR1....", fails: `lot\.csv: is a Parquet file`},
+	{name: "zip", text: "PK\x03\x04....", fails: `lot\.csv: the zip archive is damaged or cut short`},
+	{name: "Parquet", text: "PAR1....", fails: `lot\.csv: the Parquet file is damaged or cut short`},
 	{name: "prose", text: "Dear colleague,\nplease find the lot below.\n", fails: `lot\.csv:\d+: .+; .+`},
 	{name: "one column", text: table("WAFER", "1", "2"), fails: `lot\.csv:1: no table found: the rows have no comma, semicolon or tab`},
 	{name: "no wafer column", text: strings.Replace(plain(), "WAFER", "PLATE", 1), fails: `lot\.csv:1: no wafer column found: looked for wafer, waferid.*the header holds LOT, PLATE, X, Y.*; rename the column, or name it under columns\.wafer`},
@@ -253,7 +253,7 @@ func TestFilesThatCannotBeOpened(t *testing.T) {
 	dir := t.TempDir()
 	for _, c := range []struct{ path, want string }{
 		{filepath.Join(dir, "none.csv"), `none\.csv: there is no such file; .+`},
-		{dir, `is a folder; name the files in it`},
+		{dir, `the folder is empty; name a folder with data files`},
 	} {
 		_, err := Read(context.Background(), []string{c.path}, Options{})
 		if err == nil || !regexp.MustCompile(c.want).MatchString(err.Error()) {

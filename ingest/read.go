@@ -16,6 +16,7 @@ type Options struct {
 	Retest   Retest                  // which measurement of a retested die counts; "" last
 	Workers  int                     // parsing goroutines; 0: GOMAXPROCS
 	Progress func(done, total int64) // bytes read of all inputs, called from one goroutine; may be nil
+	SkipBad  bool                    // of several files, those that cannot be read become findings ("file-not-read") instead of an error
 
 	block   int  // bytes a block; 0: blockSize
 	careful bool // keep the fast path out
@@ -58,8 +59,15 @@ type Tally struct {
 	Joined       int // rows whose readings were joined to another row of the same die
 }
 
-// Read reads files into lots. Several files are read in the order given, as if
-// they were one. The same files give the same batch, whatever Workers is.
+// Read reads files into lots. A path is a file in one of the formats of the
+// package, a folder, a pattern (lot-*.csv) or a zip archive of such files.
+// Several files are read as if they were one, in the order of their start times
+// where all of them have one, else in the order given; those of a folder, pattern
+// or archive in natural order of their names. The same files give the same batch,
+// whatever Workers is.
+//
+// A file that cannot be read is an error that names it, however many others
+// there are, unless SkipBad says otherwise.
 //
 // What stands in the way of reading is an *Error; what was found in data that
 // could be read is in the lots' findings. When a packed file is damaged or a
@@ -98,36 +106,46 @@ func Read(ctx context.Context, paths []string, opt Options) (*Batch, error) {
 
 // readFiles reads all files into one table.
 func readFiles(ctx context.Context, paths []string, opt *Options) (*readings, error) {
-	total, done := int64(0), int64(0)
-	sizes := make([]int64, len(paths))
-	for i, p := range paths {
-		src, err := openSource(p, nil)
-		if err != nil {
-			return nil, err
-		}
-		sizes[i] = src.size
-		total += src.size
-		src.close()
+	found, err := findInputs(paths)
+	if err != nil {
+		return nil, err
 	}
+	defer found.close()
 	t := &readings{sch: newSchema()}
-	for i, p := range paths {
+	for _, f := range found.notes {
+		t.findings = append(t.findings, fileFinding{all, f})
+	}
+	total, done := int64(0), int64(0)
+	for _, in := range found.inputs {
+		total += in.size
+	}
+	for _, in := range found.inputs {
 		progress := func(read int64) {
 			if opt.Progress != nil {
-				opt.Progress(done+min(read, sizes[i]), total)
+				opt.Progress(done+min(read, in.size), total)
 			}
 		}
-		d, err := readFile(ctx, p, i, t.sch, opt, progress)
+		d, err := readInput(ctx, in, len(t.files), t.sch, opt, progress)
 		if err != nil {
+			if opt.SkipBad && t.skipped(err, len(found.inputs)) {
+				continue
+			}
 			return nil, err
 		}
-		done += sizes[i]
+		done += in.size
+		d.container = in.container
 		t.files = append(t.files, d)
 	}
+	if len(t.files) == 0 {
+		return nil, &Error{File: paths[0], What: "no file could be read", Remedy: "look at each by itself"}
+	}
+	t.byTime()
+	t.identify()
 	for i := range t.files {
 		for j := range t.files[:i] {
 			if t.files[i].input.SHA256 == t.files[j].input.SHA256 {
-				t.note(i, Warning, "same-file-twice", fmt.Sprintf("%s and %s hold the same bytes; the rows of the second count as duplicates", paths[j], paths[i]),
-					"name each file once", 0)
+				t.note(i, Warning, "same-file-twice", fmt.Sprintf("%s and %s hold the same bytes; the rows of the second count as duplicates",
+					t.files[j].input.File, t.files[i].input.File), "name each file once", 0)
 			}
 		}
 	}

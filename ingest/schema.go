@@ -11,10 +11,11 @@ type schema struct {
 	tests      []string       // names of the tests
 	testSlot   map[string]int // small letters -> test
 	attrSlot   map[string]int
+	levels     map[int]level // text slots whose level a file of convert gives
 }
 
 func newSchema() *schema {
-	return &schema{testSlot: map[string]int{}, attrSlot: map[string]int{}}
+	return &schema{testSlot: map[string]int{}, attrSlot: map[string]int{}, levels: map[int]level{}}
 }
 
 // test gives the slot of a test, a new one for a new name.

@@ -61,6 +61,7 @@ func (l *Lot) selectEarlier(from *Lot, rows, place []int32) {
 		}
 	}
 	e := &from.earlier
+	l.after = take(from.after, kept)
 	l.earlier.HardBin, l.earlier.SoftBin, l.earlier.Pass = take(e.HardBin, kept), take(e.SoftBin, kept), take(e.Pass, kept)
 	for _, v := range e.Values {
 		l.earlier.Values = append(l.earlier.Values, take(v, kept))

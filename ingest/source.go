@@ -16,11 +16,11 @@ import (
 	"github.com/klauspost/compress/zstd"
 )
 
-// source is one file as a stream of plain bytes, with the hash and the count
-// of its raw ones. It is used by one goroutine.
+// source is one file, or entry of an archive, as a stream of plain bytes, with
+// the hash and the count of its raw ones. It is used by one goroutine.
 type source struct {
 	path     string
-	file     *os.File
+	file     io.Reader
 	size     int64 // of the raw file
 	hash     hash.Hash
 	raw      int64  // bytes read of it
@@ -32,28 +32,43 @@ type source struct {
 
 // openSource opens a file and finds out by its first bytes how it is packed.
 func openSource(path string, progress func(int64)) (*source, error) {
-	info, err := os.Stat(path)
-	switch {
-	case errors.Is(err, fs.ErrNotExist):
-		return nil, &Error{File: path, What: "there is no such file", Remedy: "check the name and the folder", Err: err}
-	case err != nil:
-		return nil, &Error{File: path, What: "cannot be read: " + bare(err), Remedy: "check the name and the permissions", Err: err}
-	case info.IsDir():
-		return nil, &Error{File: path, What: "is a folder", Remedy: "name the files in it"}
-	case !info.Mode().IsRegular():
-		return nil, &Error{File: path, What: "is not a regular file", Remedy: "save the data to a file first"}
-	}
-	f, err := os.Open(path)
+	f, info, err := openFile(path)
 	if err != nil {
-		return nil, &Error{File: path, What: "cannot be opened: " + bare(err), Remedy: "check the permissions", Err: err}
+		return nil, err
 	}
-	s := &source{path: path, file: f, size: info.Size(), hash: sha256.New(), progress: progress}
-	s.closers = append(s.closers, func() { f.Close() })
+	s := newSource(path, f, info.Size(), progress)
 	if err := s.unpack(); err != nil {
 		s.close()
 		return nil, err
 	}
 	return s, nil
+}
+
+// openFile opens a regular file.
+func openFile(path string) (*os.File, fs.FileInfo, error) {
+	info, err := os.Stat(path)
+	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		return nil, nil, &Error{File: path, What: "there is no such file", Remedy: "check the name and the folder", Err: err}
+	case err != nil:
+		return nil, nil, &Error{File: path, What: "cannot be read: " + bare(err), Remedy: "check the name and the permissions", Err: err}
+	case info.IsDir():
+		return nil, nil, &Error{File: path, What: "is a folder", Remedy: "name the files in it"}
+	case !info.Mode().IsRegular():
+		return nil, nil, &Error{File: path, What: "is not a regular file", Remedy: "save the data to a file first"}
+	}
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, nil, &Error{File: path, What: "cannot be opened: " + bare(err), Remedy: "check the permissions", Err: err}
+	}
+	return f, info, nil
+}
+
+// newSource counts and hashes what is read of f; nothing is unpacked yet.
+func newSource(path string, f io.ReadCloser, size int64, progress func(int64)) *source {
+	s := &source{path: path, file: f, size: size, hash: sha256.New(), progress: progress}
+	s.closers = append(s.closers, func() { f.Close() })
+	return s
 }
 
 // unpack tells packed files by their magic bytes (RFC 1952, RFC 8878), as
@@ -87,17 +102,21 @@ func (s *source) unpack() error {
 	return nil
 }
 
+// knownOthers are formats that are told and not read, by their first bytes.
+var knownOthers = []struct{ magic, what, remedy string }{
+	{"PK\x03\x04", "is a zip archive or a spreadsheet where delimited text is wanted", "save it as CSV, or unpack it"},
+	{"\xd0\xcf\x11\xe0", "is an old spreadsheet file (.xls), which is not read", "save it as .xlsx or CSV"},
+	{"%PDF", "is a PDF, not delimited text", "export the table as CSV"},
+	{"BZh", "is packed with bzip2", "unpack it, or pack it with gzip or zstd"},
+	{"\xfd7zX", "is packed with xz", "unpack it, or pack it with gzip or zstd"},
+	{"\x89PNG", "is a picture", "name the data files"},
+	{"\xff\xd8\xff", "is a picture", "name the data files"},
+	{"GIF8", "is a picture", "name the data files"},
+}
+
 // knownOther refuses files that are clearly something else.
 func (s *source) knownOther(magic []byte) error {
-	for _, k := range []struct{ magic, what, remedy string }{
-		{"PK\x03\x04", "is a zip archive or a spreadsheet, not delimited text", "save it as CSV, or unpack it"},
-		{"PAR1", "is a Parquet file, not delimited text", "export it as CSV"},
-		{"ARRO", "is an Arrow file, not delimited text", "export it as CSV"},
-		{"\xd0\xcf\x11\xe0", "is an old spreadsheet file, not delimited text", "save it as CSV"},
-		{"%PDF", "is a PDF, not delimited text", "export the table as CSV"},
-		{"BZh", "is packed with bzip2", "unpack it, or pack it with gzip or zstd"},
-		{"\xfd7zX", "is packed with xz", "unpack it, or pack it with gzip or zstd"},
-	} {
+	for _, k := range knownOthers {
 		if bytes.HasPrefix(magic, []byte(k.magic)) {
 			return &Error{File: s.path, What: k.what, Remedy: k.remedy}
 		}

@@ -14,11 +14,13 @@ type readings struct {
 	files    []*fileData
 	chunks   []*chunk        // wide ones
 	units    [][]config.Unit // of the values, by test of the schema and file
+	si       map[[2]int]bool // test and file whose values are SI already
 	given    []testInfo      // tests of a Table in memory
 	findings []fileFinding
 	tally    Tally
 	// longColumns is what the rows of all long files say of their tests.
 	longColumns []testColumn
+	timed       bool // the files were put in the order of their start times
 	siteIsDie   bool // a long table without coordinates or parts: the site tells dice apart
 }
 
@@ -40,8 +42,11 @@ type testInfo struct {
 	measures     string
 	clamp, floor float64
 	number       int
-	place        int  // in the order of the data
-	declared     bool // a file gives it a unit or limits, or the product names it
+	place        int     // in the order of the data
+	declared     bool    // a file gives it a unit or limits, or the product names it
+	files        int     // that have it
+	cleaned      int     // of them, files of convert: their sentinels are gone
+	pile         [2]bool // clamp, floor were found as a pile-up
 }
 
 // note adds a finding about one file, or about all.
@@ -56,6 +61,7 @@ func (t *readings) lots(ctx context.Context, opt *Options) (*Batch, error) {
 		t.fileFindings(i)
 	}
 	t.pivot()
+	t.spread()
 	t.settleUnits(opt.Product)
 	o, err := t.arrange(opt)
 	if err != nil {

@@ -1,0 +1,260 @@
+package ingest
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"math"
+	"strconv"
+
+	"kneepoint/ingest/stdf"
+)
+
+// readSTDF reads an STDF V4 file: a row a part, in the order in which parts were
+// finished; a column a parametric test, or a column of one.
+//
+// Results are float32 in the base unit of the test. A value is the shortest
+// decimal that gives that float32, as a float64: 4.2 nA, filed as the float32
+// nearest to 4.2e-9, is 4.2e-9 again and equals the limit 4.2 nA. A reading of
+// more than seven digits was rounded to about seven when it was filed (relative
+// 6e-8), which no reader can undo.
+func readSTDF(ctx context.Context, in *input, index int, sch *schema, progress func(int64)) (*fileData, error) {
+	src, err := in.raw(progress)
+	if err != nil {
+		return nil, err
+	}
+	defer src.close()
+	s := &stdfReading{in: in, src: src, parts: stdf.NewParts(stdf.NewReader(rawReader{src}))}
+	for s.parts.Scan() {
+		if s.n&0xfff == 0 && ctx.Err() != nil {
+			return nil, ctx.Err()
+		}
+		s.add(s.parts.Part())
+	}
+	d := &fileData{odd: map[oddKey]oddCells{}}
+	if err := s.parts.Err(); err != nil {
+		var f *stdf.FormatError
+		if errors.As(err, &f) {
+			return nil, &Error{File: in.name, What: "is no STDF V4 file: " + f.Text, Remedy: f.Remedy, Err: err}
+		}
+		if ctx.Err() != nil {
+			return nil, ctx.Err()
+		}
+		d.err = src.readError(err)
+		if s.n == 0 {
+			return nil, d.err
+		}
+	}
+	if s.n == 0 {
+		return nil, s.empty()
+	}
+	src.drain()
+	d.rows.read = s.n
+	s.finish(d, index, sch)
+	order := "little-endian"
+	if s.parts.Reader().BigEndian() {
+		order = "big-endian"
+	}
+	d.input = Input{File: in.name, SHA256: src.sum(), Format: "STDF V4, " + order, Bytes: src.raw, Rows: int64(s.n)}
+	if in.packed != "" {
+		d.input.Format += ", " + in.packed
+	}
+	return d, nil
+}
+
+// empty says why a file without a part has none.
+func (s *stdfReading) empty() *Error {
+	what := "holds no tested part (no PRR record)"
+	if d := s.parts.Damages(); len(d) > 0 {
+		what += fmt.Sprintf("; byte %d: %s", d[0].Offset, d[0].Text)
+	}
+	return &Error{File: s.in.name, What: what, Remedy: "fetch the file again, or name the file of the lot's test"}
+}
+
+// stdfReading gathers parts in columns.
+type stdfReading struct {
+	in      *input
+	src     *source
+	parts   *stdf.Parts
+	n, room int
+
+	x, y, site, hard, soft, touch []int32
+	wafer, run                    []int32 // indexes of stdf.Parts
+	stretch                       []int32 // wafer, when its place holds codes
+	head                          []int32
+	pass                          []int8
+	ids                           partIDs
+	values                        [][]float64 // by column: float32 as read, or an odd NaN
+	columns                       []stdfColumn
+	of                            [][]int32 // column by test and place in a multiple result, -1 none
+	touches                       []touchState
+
+	functional, functionalFails int
+	twice                       int // results of tests that a part has twice
+}
+
+// stdfColumn is a test, or one result of a multiple one.
+type stdfColumn struct {
+	test  *stdf.Test
+	place int
+	name  string
+}
+
+// touchState counts touchdowns on one stretch of a wafer.
+type touchState struct {
+	n     int32
+	first int64 // where the first part of the touchdown at work ended
+}
+
+// grow makes room for more rows: for all that are to be expected when the rest
+// of the file is like what was read.
+func (s *stdfReading) grow() {
+	want := s.room + s.room/4 + 64
+	if s.src.raw > 0 && s.n > 0 {
+		want = max(want, int(float64(s.n)*float64(s.src.size)/float64(s.src.raw)*1.02))
+	}
+	// A packed file can expand; a damaged one must not make this reach far.
+	want = min(want, max(4*s.room, 4096))
+	for _, c := range []*[]int32{&s.x, &s.y, &s.site, &s.hard, &s.soft, &s.touch, &s.wafer, &s.run, &s.head} {
+		*c = larger(*c, want)
+	}
+	s.pass = larger(s.pass, want)
+	for i := range s.values {
+		s.values[i] = largerNaN(s.values[i], want)
+	}
+	s.room = want
+}
+
+func largerNaN(v []float64, n int) []float64 {
+	out := larger(v, n)
+	for i := len(v); i < n; i++ {
+		out[i] = math.NaN()
+	}
+	return out
+}
+
+func (s *stdfReading) add(p *stdf.Part) {
+	if s.n == s.room {
+		s.grow()
+	}
+	i := s.n
+	s.n++
+	s.x[i], s.y[i], s.hard[i], s.soft[i] = p.X, p.Y, p.HardBin, p.SoftBin
+	s.site[i], s.head[i], s.pass[i] = int32(p.Site), int32(p.Head), p.Pass()
+	s.wafer[i], s.run[i] = int32(p.Wafer), int32(p.Run)
+	s.touch[i] = s.touchdown(p)
+	s.ids.add(p)
+	for k := range p.Results {
+		s.result(i, &p.Results[k])
+	}
+}
+
+// touchdown counts: parts that were open at the same time were touched at once.
+func (s *stdfReading) touchdown(p *stdf.Part) int32 {
+	for len(s.touches) <= p.Wafer {
+		s.touches = append(s.touches, touchState{})
+	}
+	t := &s.touches[p.Wafer]
+	if t.n == 0 || p.Opened < 0 || p.Opened > t.first {
+		t.n++
+		t.first = p.Offset
+	}
+	return t.n
+}
+
+func (s *stdfReading) result(row int, r *stdf.Result) {
+	for len(s.of) <= int(r.Test) {
+		s.of = append(s.of, nil)
+	}
+	if r.Column < 0 {
+		return
+	}
+	for len(s.of[r.Test]) <= int(r.Column) {
+		s.of[r.Test] = append(s.of[r.Test], s.column(int(r.Test), len(s.of[r.Test])))
+	}
+	c := s.of[r.Test][r.Column]
+	if c < 0 {
+		s.functional++
+		if r.Raw == 0 {
+			s.functionalFails++
+		}
+		return
+	}
+	v := float64(r.Raw)
+	switch {
+	case r.Flag&stdf.NotExecuted != 0:
+		return
+	case !stdf.Usable(r.Flag, r.Parm):
+		v = oddNaN[cellInvalid]
+	case math.IsInf(v, 0):
+		v = oddNaN[cellInf]
+	case v != v:
+		return
+	}
+	if old := s.values[c][row]; old == old {
+		s.twice++
+		if v != v {
+			return // the usable one counts
+		}
+	}
+	s.values[c][row] = v
+}
+
+// column makes a column for a test; -1 for a functional one.
+func (s *stdfReading) column(test, place int) int32 {
+	t := s.parts.Tests()[test]
+	if t.Kind == stdf.KindFTR {
+		return -1
+	}
+	s.columns = append(s.columns, stdfColumn{test: t, place: place})
+	s.values = append(s.values, largerNaN(nil, s.room))
+	return int32(len(s.columns) - 1)
+}
+
+// cellInvalid is a result that the tester flags as not to be used.
+const cellInvalid status = cellBad + 1
+
+// partIDs keeps PART_ID, but for those that merely count the parts of the file
+// or of the wafer: millions of different texts that say nothing.
+type partIDs struct {
+	n       int
+	places  []int32 // of each part within its wafer, while ids may count those
+	onWafer []int32 // parts so far, by wafer
+	other   [2]bool // some id is no count of the file's, of the wafer's parts
+	text    globalText
+	codes   []int32 // nil as long as ids count
+}
+
+func (d *partIDs) add(p *stdf.Part) {
+	for len(d.onWafer) <= p.Wafer {
+		d.onWafer = append(d.onWafer, 0)
+	}
+	d.n++
+	d.onWafer[p.Wafer]++
+	place, id := d.onWafer[p.Wafer], p.ID()
+	if d.codes == nil {
+		k, err := strconv.Atoi(id)
+		plain := err == nil && id[0] != '0' && id[0] != '+'
+		wereFile := !d.other[0]
+		d.other[0] = d.other[0] || !plain || k != d.n
+		d.other[1] = d.other[1] || !plain || k != int(place)
+		if !d.other[0] || !d.other[1] {
+			d.places = append(d.places, place)
+			return
+		}
+		// No counts after all; those passed over are known.
+		d.codes = make([]int32, 0, d.n)
+		for i, k := range d.places {
+			if wereFile {
+				k = int32(i + 1)
+			}
+			d.codes = append(d.codes, d.text.code(strconv.Itoa(int(k))))
+		}
+		d.places = nil
+	}
+	code := int32(-1)
+	if id != "" {
+		code = d.text.code(id)
+	}
+	d.codes = append(d.codes, code)
+}
