@@ -81,7 +81,9 @@ func writeFileOverview(w io.Writer, f ingest.FileOverview) {
 	if f.DecimalComma {
 		decimal = ", decimal comma"
 	}
-	fmt.Fprintf(w, "  %s-separated%s, header in line %d\n", f.Separator, decimal, f.HeaderLine)
+	if f.Separator != "" { // text; other formats have no separator
+		fmt.Fprintf(w, "  %s-separated%s, header in line %d\n", f.Separator, decimal, f.HeaderLine)
+	}
 	var roles, tests, others []string
 	for _, c := range f.Columns {
 		switch {
