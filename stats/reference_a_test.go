@@ -6,6 +6,7 @@ import (
 	"strings"
 
 	"kneepoint/stats"
+	"kneepoint/stats/capability"
 	"kneepoint/stats/compare"
 	"kneepoint/stats/dist"
 	"kneepoint/stats/relate"
@@ -15,20 +16,26 @@ import (
 
 func init() {
 	for name, m := range map[string]referenceMethod{
+		"normal tolerance factors: k# (Howe), k# (Natrella), k# (noncentral t)":                                {answer: referenceTolerance},
+		"one-sided normal tolerance factor, small n":                                                           {answer: referenceTolerance},
+		"normal tolerance-interval k factors, one- and two-sided":                                              {answer: referenceTolerance},
+		"non-normal capability by percentiles of a fitted lognormal (ML), upper limit only":                    {answer: referencePercentiles(dist.LognormalFamily)},
+		"non-normal capability by percentiles of a fitted #-parameter Weibull (ML)":                            {answer: referencePercentiles(dist.WeibullFamily)},
+		"percentile capability with empirical quantiles (types # and #)":                                       {answer: referenceEmpirical},
 		"Box-Cox transformation parameter by profile likelihood":                                               {answer: referenceBoxCox},
 		"univariate Gaussian mixture, unequal variances, k = #..#, EM to convergence, BIC":                     {answer: referenceMixture},
 		"normality tests: Anderson-Darling, Cramer-von Mises, Lilliefors (parameters estimated), Shapiro-Wilk": {answer: referenceNormality},
 		"Anderson-Darling A^# and Kolmogorov-Smirnov D against a FULLY SPECIFIED Weibull":                      {answer: referenceKnown},
 		"maximum likelihood with censoring: normal, lognormal, Weibull":                                        {answer: referenceCensored},
 		"maximum likelihood, complete sample: normal, lognormal, #-parameter Weibull":                          {answer: referenceComplete},
-		"one-way fixed-effects ANOVA":                                                   {answer: referenceOneWay},
-		"one-way ANOVA, Welch, Kruskal-Wallis, Levene, Brown-Forsythe, Bartlett":        {answer: referenceGroups},
-		"two-sample Welch t, pooled t, F ratio, Mann-Whitney, Kolmogorov-Smirnov":       {answer: referenceTwoSamples},
-		"#x# table: Fisher exact, Pearson chi-square with and without Yates correction": {answer: referenceFisher},
-		"Pearson chi-square, r x c":                                                     {answer: referenceChiSquare},
-		"adjusted p-values":                                                             {answer: referenceAdjust},
-		"Pearson, Spearman, Kendall tau-b, Theil-Sen":                                   {answer: referenceCorrelation},
-		"Mann-Kendall trend test with ties":                                             {answer: referenceMannKendall},
+		"one-way fixed-effects ANOVA":                                                                          {answer: referenceOneWay},
+		"one-way ANOVA, Welch, Kruskal-Wallis, Levene, Brown-Forsythe, Bartlett":                               {answer: referenceGroups},
+		"two-sample Welch t, pooled t, F ratio, Mann-Whitney, Kolmogorov-Smirnov":                              {answer: referenceTwoSamples},
+		"#x# table: Fisher exact, Pearson chi-square with and without Yates correction":                        {answer: referenceFisher},
+		"Pearson chi-square, r x c":                                                                            {answer: referenceChiSquare},
+		"adjusted p-values":                                                                                    {answer: referenceAdjust},
+		"Pearson, Spearman, Kendall tau-b, Theil-Sen":                                                          {answer: referenceCorrelation},
+		"Mann-Kendall trend test with ties":                                                                    {answer: referenceMannKendall},
 	} {
 		referenceMethods[name] = m
 	}
@@ -258,4 +265,39 @@ func referenceBoxCox(c *referenceCase) map[string]any {
 	t := dist.BoxCox(c.list("x"), 0.95)
 	return map[string]any{"lambda": t.Lambda.Estimate, "lambda_ci95": ends(t.Lambda),
 		"profile_loglik_diff_lambda0": t.Log, "profile_loglik_diff_lambda1": t.Linear}
+}
+
+func referenceTolerance(c *referenceCase) map[string]any {
+	n, p, g := int(c.number("n")), c.number("p"), c.number("gamma")
+	return map[string]any{"k2_howe": capability.ToleranceHowe(n, p, g), "k1_natrella": capability.ToleranceNatrella(n, p, g),
+		"k1_noncentral_t": capability.ToleranceOneSided(n, p, g), "k2_exact": capability.ToleranceTwoSided(n, p, g)}
+}
+
+func percentiles(low, median, high float64, i capability.Index) map[string]any {
+	return map[string]any{"p0_135": low, "p50": median, "p99_865": high, "cp": i.Cp, "cpl": i.Cpl, "cpu": i.Cpu, "cpk": i.Cpk}
+}
+
+func referencePercentiles(family dist.Family) func(c *referenceCase) map[string]any {
+	return func(c *referenceCase) map[string]any {
+		x := c.list("x")
+		fit, _ := dist.Fit(family, dist.Readings{Values: x})
+		p := capability.ByPercentiles(capability.Input{Values: x, Lower: c.number("lsl"), Upper: c.number("usl"), MinimumN: 2, Confidence: 0.95}, fit)
+		out := percentiles(p.Low.Estimate, p.Median.Estimate, p.High.Estimate, p.Index)
+		for key, v := range fitted(fit) {
+			out[key] = v
+		}
+		out["ppm_below"], out["ppm_above"], out["cpk_equivalent_z"] = 1e6*p.Below.Estimate, 1e6*p.Above.Estimate, p.Equivalent
+		return out
+	}
+}
+
+// The cases are of fewer readings than ByPercentiles takes: "for checking
+// arithmetic only", as they say.
+func referenceEmpirical(c *referenceCase) map[string]any {
+	out := map[string]any{}
+	for name, kind := range map[string]stats.QuantileKind{"type7": stats.HyndmanFan7, "type8": stats.HyndmanFan8} {
+		q := stats.Quantiles(c.list("x"), []float64{0.00135, 0.5, 0.99865}, kind)
+		out[name] = percentiles(q[0], q[1], q[2], capability.PercentileIndices(q[0], q[1], q[2], c.number("lsl"), c.number("usl")))
+	}
+	return out
 }

@@ -35,17 +35,11 @@ var referenceMethods = map[string]referenceMethod{
 
 // referencePending are methods that belong to rooms not built yet, by room.
 var referencePending = map[string]string{
-	"normal tolerance factors: k# (Howe), k# (Natrella), k# (noncentral t)":                        "capability",
-	"one-sided normal tolerance factor, small n":                                                   "capability",
-	"normal tolerance-interval k factors, one- and two-sided":                                      "capability",
-	"non-normal capability by percentiles of a fitted lognormal (ML), upper limit only":            "capability",
-	"non-normal capability by percentiles of a fitted #-parameter Weibull (ML)":                    "capability",
-	"percentile capability with empirical quantiles (types # and #)":                               "capability",
 	"part average limits: robust mean = median, robust sigma = (Q#-Q#)/#, limits +-# robust sigma": "screen",
-	"Grubbs test, one-sided maximum":                                                               "screen",
-	"Grubbs test for one outlier":                                                                  "screen",
-	"generalised extreme studentised deviate (Rosner #)":                                           "screen",
-	"minimum covariance determinant (FastMCD), h = (n+p+#)/#, reweighted":                          "screen",
+	"Grubbs test, one-sided maximum":                                      "screen",
+	"Grubbs test for one outlier":                                         "screen",
+	"generalised extreme studentised deviate (Rosner #)":                  "screen",
+	"minimum covariance determinant (FastMCD), h = (n+p+#)/#, reweighted": "screen",
 }
 
 // referenceWafermap are the methods that package wafermap answers in a driver of

@@ -21,6 +21,12 @@
 // Note says when the readings have another one. Readings at a tester's clamp are
 // used as bounds, through a censored fit.
 //
+// For any other shape, or for readings that are mostly bounds, [ByPercentiles]
+// takes the percentiles of a fitted distribution, or of the readings themselves,
+// in place of mean and sigma, and gives the share of the population expected
+// outside the limits, with its interval. [ToleranceTwoSided] and its like turn the
+// question round: between which limits does a given share lie.
+//
 // Sources: ISO 22514-2; NIST/SEMATECH e-Handbook 6.1.6; Bissell 1990, J. R.
 // Statist. Soc. C 39, 331-340.
 package capability

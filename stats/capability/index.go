@@ -3,7 +3,6 @@ package capability
 import (
 	"math"
 
-	"gonum.org/v1/gonum/integrate/quad"
 	"gonum.org/v1/gonum/stat/distuv"
 	"kneepoint/stats"
 )
@@ -84,7 +83,7 @@ func OneSidedLowerBound(index float64, n int, confidence float64) float64 {
 	t := index * root
 	// The bound is the noncentrality at which a t this large or larger has
 	// probability 1-confidence.
-	at := noncentral(t, float64(n-1))
+	at := newNoncentral(float64(n - 1))
 	spread := math.Sqrt(1 + t*t/(2*float64(n-1)))
 	lo, hi := t-8*spread, t+8*spread
 	for range 200 {
@@ -92,36 +91,13 @@ func OneSidedLowerBound(index float64, n int, confidence float64) float64 {
 		if mid <= lo || mid >= hi {
 			break
 		}
-		if at(mid) > confidence {
+		if at.cdf(t, mid) > confidence {
 			lo = mid
 		} else {
 			hi = mid
 		}
 	}
 	return (lo + (hi-lo)/2) / root
-}
-
-// noncentral returns the distribution function of noncentral t at t as a
-// function of the noncentrality, by quadrature over the scale s = sqrt(chi2/df):
-// the mean of Phi(t s - delta). The usual series fails beyond a noncentrality of
-// 37, which an index of 1.2 reaches at 110 readings.
-func noncentral(t, df float64) func(delta float64) float64 {
-	const points = 256
-	reach := 12 / math.Sqrt(2*df)
-	s, w := make([]float64, points), make([]float64, points)
-	quad.Legendre{}.FixedLocations(s, w, math.Max(0, 1-reach), 1+reach)
-	total := 0.0
-	for i, v := range s { // density of s up to a factor, 1 at its mode
-		w[i] *= math.Exp((df-1)*math.Log(v) - df*(v*v-1)/2)
-		total += w[i]
-	}
-	return func(delta float64) float64 {
-		sum := 0.0
-		for i, v := range s {
-			sum += w[i] * 0.5 * math.Erfc((delta-t*v)/math.Sqrt2)
-		}
-		return sum / total
-	}
 }
 
 // Cpm is the index that counts the offset from a target as spread,

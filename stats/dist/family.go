@@ -253,6 +253,34 @@ func Delta(d Distribution, quantity func(Distribution) float64) float64 {
 	return math.Sqrt(math.Max(0, ga*ga+gb*gb+2*r*ga*gb))
 }
 
+// Widen returns a fit whose readings are worth less than they are in number: the
+// variance of its location times location, that of the logarithm of its spread
+// times spread, as dice do that share a wafer (design effects). Estimates stay.
+// It panics on a factor below 1.
+func Widen(d Distribution, location, spread float64) Distribution {
+	if !(location >= 1) || !(spread >= 1) {
+		panic("stats/dist: a design effect below 1")
+	}
+	u, v := math.Sqrt(location), math.Sqrt(spread)
+	normal := func(d Normal) Normal {
+		d.SEMu, d.SELogSigma, d.Cov = u*d.SEMu, v*d.SELogSigma, u*v*d.Cov
+		return d
+	}
+	switch d := d.(type) {
+	case Normal:
+		return normal(d)
+	case Lognormal:
+		return Lognormal{normal(d.Normal)}
+	case Weibull:
+		d.SELogScale, d.SELogShape, d.Cov = u*d.SELogScale, v*d.SELogShape, u*v*d.Cov
+		return d
+	case Gamma:
+		d.SELogMean, d.SELogShape, d.Cov = u*d.SELogMean, v*d.SELogShape, u*v*d.Cov
+		return d
+	}
+	panic("stats/dist: unknown family")
+}
+
 func around(at, se, confidence float64) stats.Interval {
 	checkConfidence(confidence)
 	half := tail.NormalQuantile(0.5+confidence/2) * se

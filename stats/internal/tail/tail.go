@@ -200,3 +200,14 @@ func Kolmogorov(x float64) float64 {
 	}
 	return 2 * sum
 }
+
+// BinomialAtLeast is P(K >= k) of a binomial count of n trials at p.
+func BinomialAtLeast(k, n int, p float64) float64 {
+	switch {
+	case k <= 0:
+		return 1
+	case k > n:
+		return 0
+	}
+	return mathext.RegIncBeta(float64(k), float64(n-k+1), p)
+}
