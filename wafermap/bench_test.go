@@ -1,6 +1,7 @@
 package wafermap
 
 import (
+	"math"
 	"testing"
 )
 
@@ -134,4 +135,40 @@ func BenchmarkPaintStates(b *testing.B) {
 		size = len(p.PNG)
 	}
 	b.ReportMetric(float64(size), "PNG-bytes")
+}
+
+// hurt is the wafer of the benchmarks with an edge ring, a blob and a scratch.
+func hurt(b *testing.B) SignatureInput {
+	b.Helper()
+	g, x, y, fail := benchWafer(b, 0.05)
+	for i := range x {
+		u, v := float64(x[i])/167.5, float64(y[i])/167.5
+		near := (u-0.4)*(u-0.4)+(v+0.3)*(v+0.3) < 0.02 || math.Abs(v-0.5*u-0.3) < 0.008 && u > -0.5 && u < 0.4
+		if near && i%3 != 0 || u*u+v*v > 0.88 && i%8 == 0 {
+			fail[i] = true
+		}
+	}
+	geometry := FindGeometry(x, y, Known{DiameterMM: 156, DieWidthMM: 0.45, DieHeightMM: 0.45, EdgeExclusionMM: 3})
+	return SignatureInput{Grid: g, Geometry: geometry, Fail: fail}
+}
+
+func BenchmarkSignaturesRandom(b *testing.B) {
+	g, x, y, fail := benchWafer(b, 0.05)
+	in := SignatureInput{Grid: g, Geometry: FindGeometry(x, y, Known{}), Fail: fail}
+	b.ReportAllocs()
+	for b.Loop() {
+		Signatures(in)
+	}
+}
+
+func BenchmarkSignaturesThree(b *testing.B) {
+	in := hurt(b)
+	var found []Signature
+	b.ReportAllocs()
+	for b.Loop() {
+		found = Signatures(in)
+	}
+	for _, s := range found {
+		b.Log(s.Kind)
+	}
 }

@@ -1,0 +1,130 @@
+package wafermap
+
+import (
+	"math"
+)
+
+// tally is what lies under a mask: failing dice, dice, and the fails that the model
+// so far expects there.
+type tally struct{ o, n, e float64 }
+
+func (t tally) plus(u tally) tally  { return tally{t.o + u.o, t.n + u.n, t.e + u.e} }
+func (t tally) minus(u tally) tally { return tally{t.o - u.o, t.n - u.n, t.e - u.e} }
+
+// field is one wafer's fails in the forms that the searches for patterns work on:
+// a raster of cells with running sums along rows and columns, and a polar table. Lengths
+// are in radii of the tested disc, from its centre, v up.
+type field struct {
+	in    SignatureInput
+	round bool // the wafer's disc is known
+
+	rows   []int32   // of the grid, those that take part
+	u, v   []float64 // by place in rows
+	fail   []bool
+	p      []float64 // chance that the die fails by the model so far
+	total  tally
+	radius float64 // in Unit
+	mean   float64 // fail rate
+
+	raster
+	polar
+}
+
+// farOut is how far from the centre, in radii, a die may lie to take part: one further
+// out has wrong coordinates.
+const farOut = 1.12
+
+func newField(in SignatureInput) *field {
+	g := in.Grid
+	f := &field{in: in, round: in.Geometry.Unit != ""}
+	geo := in.Geometry
+	if !f.round {
+		geo = g.boxGeometry()
+	}
+	f.radius = geo.OutlineRadius - math.Hypot(geo.DieWidthMM, geo.DieHeightMM)/2
+	if !(f.radius > 0) {
+		f.radius = geo.Radius()
+	}
+	n := g.Len()
+	f.rows = make([]int32, 0, n)
+	f.u, f.v, f.p = make([]float64, 0, n), make([]float64, 0, n), make([]float64, n)
+	f.fail = make([]bool, 0, n)
+	for _, r := range g.order {
+		mmX, mmY := geo.Position(g.x[r], g.y[r])
+		u, v := mmX/f.radius, mmY/f.radius
+		if !(u*u+v*v <= farOut*farOut) {
+			continue
+		}
+		f.rows = append(f.rows, r)
+		f.u, f.v = append(f.u, u), append(f.v, v)
+		f.fail = append(f.fail, in.Fail[r])
+		if in.Fail[r] {
+			f.total.o++
+		}
+	}
+	f.p = f.p[:len(f.rows)]
+	f.total.n = float64(len(f.rows))
+	f.mean = f.total.o / f.total.n
+	for i := range f.p {
+		f.p[i] = f.mean
+	}
+	f.layRaster(geo)
+	f.layPolar()
+	f.expect()
+	return f
+}
+
+// boxGeometry stands in where no disc could be found: the circle round the box of the
+// dice, in die widths.
+func (g *Grid) boxGeometry() Geometry {
+	b := bulk(g.x, g.y)
+	w, h := float64(b.X1-b.X0+1), float64(b.Y1-b.Y0+1)
+	return Geometry{DieWidthMM: 1, DieHeightMM: 1, CentreX: float64(b.X0+b.X1) / 2, CentreY: float64(b.Y0+b.Y1) / 2,
+		OutlineRadius: math.Hypot(w, h) / 2, Unit: "die widths"}
+}
+
+// expect refreshes the sums of expected fails after p has changed.
+func (f *field) expect() {
+	e := 0.0
+	for _, p := range f.p {
+		e += p
+	}
+	f.total.e = e
+	f.raster.sum(f)
+	f.polar.sum(f)
+}
+
+// gain is the log-likelihood ratio of a fail rate inside a mask that differs from what
+// the model expects, by one factor inside and one outside, against none (Kulldorff 1997,
+// Commun. Stat. Theory Methods 26, 1481, Bernoulli model; exactly that for an even
+// expectation). It is 0 where there are fewer fails than expected.
+func (f *field) gain(t tally) float64 {
+	if t.o <= t.e || t.e <= 0 || t.n >= f.total.n {
+		return 0
+	}
+	out := f.total.minus(t)
+	out.e = max(f.total.o-t.e, 1e-9) // the model's total is that of the data
+	return side(t) + side(out)
+}
+
+// side is the binomial log-likelihood ratio of o fails of n against e expected.
+func side(t tally) float64 {
+	l := 0.0
+	if t.o > 0 {
+		l = t.o * math.Log(t.o/t.e)
+	}
+	if pass, expected := t.n-t.o, t.n-t.e; pass > 0 && expected > 0 {
+		l += pass * math.Log(pass/expected)
+	}
+	return l
+}
+
+// hopeless reports, without logarithms, that a mask's gain cannot reach need.
+func (f *field) hopeless(t tally, need float64) bool {
+	d := t.o - t.e
+	if d <= 0 {
+		return true
+	}
+	spare := 1 - t.e/t.n
+	return d*d < 1.6*need*t.e*spare*(1-t.n/f.total.n)
+}

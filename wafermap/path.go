@@ -1,0 +1,372 @@
+package wafermap
+
+import "math"
+
+// path is a straight or gently bowed band of cells. Along its main axis (columns, or
+// lines when turned) it runs from cell from to cell to, exclusive; its middle crosses from y0
+// to y1 and bows by sag in between; thick is its breadth across. Lengths are in cells.
+type path struct {
+	turned      bool
+	from, to    int
+	y0, y1, sag float64
+	thick       float64
+	left, right int        // extent of the curve's definition: y0 holds at left, y1 at right
+	ends        [4]float64 // u, v of both ends, and of the middle
+	middle      [2]float64
+	halfWidth   float64
+}
+
+// at is the middle across at a place along.
+func (p *path) at(x float64) float64 {
+	t := 0.0
+	if p.right > p.left {
+		t = (x - float64(p.left)) / float64(p.right-p.left)
+	}
+	return p.y0 + (p.y1-p.y0)*t + 4*p.sag*t*(1-t)
+}
+
+// band is the raster as seen by lines that run along one axis: straight sums are
+// across it.
+type band struct {
+	long, wide int
+	sums       *running // sums across: row i of it is place i along
+}
+
+func (f *field) band(turned bool) band {
+	if turned {
+		return band{f.lines, f.cols, &f.along}
+	}
+	return band{f.cols, f.lines, &f.across}
+}
+
+// sweep tallies a path.
+func (b band) sweep(p *path) tally {
+	var count uint64
+	e := 0.0
+	for i := max(0, p.from); i < min(b.long, p.to); i++ {
+		y := p.at(float64(i))
+		lo := max(0, int(math.Floor(y-p.thick/2+0.5)))
+		hi := min(b.wide, int(math.Floor(y+p.thick/2+0.5)))
+		if lo < hi {
+			dc, de := b.sums.span(i, lo, hi)
+			count += dc
+			e += de
+		}
+	}
+	return unpack(count, e)
+}
+
+const (
+	shortestLine = 5  // cells
+	lineExpect   = 16 // binary digits after the point of expected fails in packed sums
+)
+
+// lineCost is the logarithm of the number of paths of a thickness, about.
+func (f *field) lineCost(thick float64) float64 {
+	return math.Log(float64(f.cols) * float64(f.lines) / (thick * thick))
+}
+
+// lineSearch looks along paths of one thickness and curvature. It packs fails (16 bits), dice
+// (16) and expected fails (32) of each cell into one word, so that one addition a cell sums
+// all three along a path.
+type lineSearch struct {
+	f      *field
+	turned bool
+	block  int // cells of the raster by cell of the search
+	thick  int // cells of the search
+	long   int // cells along and across
+	wide   int
+	cells  []uint64
+	prefix []uint64
+	list   *shortlist
+	spare  float64
+
+	cost                float64
+	slope, square, half float64 // of the paths being looked along
+	lengths             []int
+}
+
+// nearLines tells whether two lines of a shortlist overlap much: x holds turned, middle
+// along and across in cells, slope, length, and bow at the middle.
+func nearLines(a, b [6]float64) bool {
+	if a[0] != b[0] {
+		return false
+	}
+	l := max(a[4], b[4])
+	return math.Abs(a[1]-b[1]) < 0.35*l && math.Abs(a[2]+(b[1]-a[1])*a[3]-b[2]) < 2+0.06*l && math.Abs(a[3]-b[3]) < 0.25
+}
+
+// curvatures are those of the bowed lines that are looked for, in wafers' radii.
+var curvatures = []float64{-1.6, -0.8, -0.35, 0.35, 0.8, 1.6}
+
+const bowedCells = 3500 // cells of the raster that bowed lines are looked for on: blocks of cells where there are more
+
+// findLine looks for straight and gently bowed lines of all slopes, offsets, ends and a
+// few thicknesses, then fits the best few.
+func (f *field) findLine() *pattern {
+	straight, bowed := shortlist{most: 16}, shortlist{most: 16}
+	block := 1
+	for f.cols*f.lines > bowedCells*block*block {
+		block++
+	}
+	for _, turned := range []bool{false, true} {
+		for _, thick := range []int{2, 4} {
+			s := lineSearch{f: f, turned: turned, block: 1, thick: thick, list: &straight}
+			s.pack()
+			s.run(0)
+		}
+		for _, thick := range []int{1, 2} {
+			s := lineSearch{f: f, turned: turned, block: block, thick: thick, list: &bowed}
+			s.pack()
+			for _, c := range curvatures {
+				s.run(c)
+			}
+		}
+	}
+	var best *pattern
+	for _, it := range append(straight.items, bowed.items...) {
+		if p := f.bow(it); p != nil && (best == nil || p.gain-p.cost > best.gain-best.cost) {
+			best = p
+		}
+	}
+	return best
+}
+
+// pack lays the cells out along the main axis, each the sum of thick cells across.
+func (s *lineSearch) pack() {
+	f := s.f
+	b := f.band(s.turned)
+	s.spare = 1 - f.mean
+	s.long, s.wide = (b.long+s.block-1)/s.block, (b.wide+s.block-1)/s.block
+	s.cells = make([]uint64, s.long*s.wide)
+	for i := range b.long {
+		for y := range s.wide {
+			lo, hi := max(0, y-(s.thick-1)/2)*s.block, min(b.wide, (y+s.thick/2+1)*s.block)
+			c, e := b.sums.span(i, lo, hi)
+			o, n := c>>32, c&0xffffffff
+			s.cells[y*s.long+i/s.block] += o<<48 | n<<32 | uint64(e*(1<<lineExpect)+0.5)
+		}
+	}
+	s.prefix = make([]uint64, s.long+1)
+}
+
+// run looks along all paths of a curvature.
+func (s *lineSearch) run(curvature float64) {
+	if s.long < 3 {
+		return
+	}
+	half := float64(s.long-1) / 2
+	slopes := max(2, int(math.Ceil(half/(1.2*float64(s.thick))))) // the ends of neighbouring slopes lie 1.2 thicknesses apart
+	square := curvature / (2 * half)
+	shift := make([]int, s.long)
+	first := make([]int, 0, 3*s.long)
+	s.cost = s.f.lineCost(float64(s.thick * s.block))
+	for k := -slopes; k <= slopes; k++ {
+		slope := float64(k) / float64(slopes)
+		lowest, highest := 0, 0
+		for i := range shift {
+			x := float64(i) - half
+			shift[i] = int(math.Round(slope*x + square*x*x))
+			lowest, highest = min(lowest, shift[i]), max(highest, shift[i])
+		}
+		s.chooseLengths(k)
+		s.slope, s.square, s.half = slope, square, half
+		if curvature != 0 {
+			for y0 := -highest; y0 < s.wide-lowest; y0++ {
+				for b := 0; b < s.long; { // stretches of the path on the raster
+					a := b
+					for a < s.long && uint(y0+shift[a]) >= uint(s.wide) {
+						a++
+					}
+					b = a
+					for b < s.long && uint(y0+shift[b]) < uint(s.wide) {
+						b++
+					}
+					s.look(y0, a, b, shift)
+				}
+			}
+			continue
+		}
+		// first[v-lowest] is the first place with a shift of at least v, or at most -v going down
+		sign := 1
+		if k < 0 {
+			sign, lowest, highest = -1, -highest, -lowest
+		}
+		first = first[:0]
+		for i, d := range shift {
+			for len(first) <= sign*d-lowest {
+				first = append(first, i)
+			}
+		}
+		reached := func(v int) int {
+			if v -= lowest; v < 0 {
+				return 0
+			} else if v >= len(first) {
+				return s.long
+			}
+			return first[v]
+		}
+		for y0 := -max(highest, -lowest); y0 < s.wide+max(highest, -lowest); y0++ {
+			if sign > 0 { // 0 <= y0+d < wide
+				s.look(y0, reached(-y0), reached(s.wide-y0), shift)
+			} else { // d = -q: y0-wide < q <= y0
+				s.look(y0, reached(y0-s.wide+1), reached(y0+1), shift)
+			}
+		}
+	}
+}
+
+// chooseLengths picks the lengths of line that slope k is looked at for: those that
+// a short line cannot tell from the next are looked at once.
+func (s *lineSearch) chooseLengths(k int) {
+	level := 0
+	for level < 6 && k%(2<<level) == 0 {
+		level++
+	}
+	s.lengths = s.lengths[:0]
+	for _, l := range lineLengths {
+		if l < 3*s.thick || l*s.block < shortestLine {
+			continue
+		}
+		if l >= s.long {
+			break
+		}
+		if fine := float64(s.long) / float64(l); fine < 2 || float64(int(1)<<level) >= fine/1.5 {
+			s.lengths = append(s.lengths, l)
+		}
+	}
+}
+
+// look sums along a stretch of a path and tries the lines in it.
+func (s *lineSearch) look(y0, a, b int, shift []int) {
+	if (b-a)*s.block < shortestLine || b-a < 3*s.thick {
+		return
+	}
+	s.walk(y0, a, b, shift)
+	if s.prefix[b]>>48 >= 3 {
+		s.segments(y0, a, b)
+	}
+}
+
+func (s *lineSearch) walk(y0, a, b int, shift []int) {
+	run := uint64(0)
+	prefix := s.prefix[a : b+1]
+	prefix[0] = 0
+	at := y0*s.long + a
+	for i, d := range shift[a:b] {
+		run += s.cells[at+d*s.long+i]
+		prefix[i+1] = run
+	}
+}
+
+var lineLengths = []int{3, 5, 8, 13, 20, 32, 52, 83, 133, 213, 341}
+
+func (s *lineSearch) segments(y0, a, b int) {
+	need := s.need()
+	for _, l := range s.lengths {
+		if l >= b-a {
+			break
+		}
+		step := max(1, l/3)
+		lo, hi := s.prefix[a:b+1-l], s.prefix[a+l:b+1]
+		for i := 0; i < len(lo) && i < len(hi); i += step {
+			d := hi[i] - lo[i]
+			o := d >> 48
+			e := float64(d&0xffffffff) / (1 << lineExpect)
+			if over := float64(o) - e; o < 3 || over <= 0 || over*over <= need*e {
+				continue
+			}
+			need = s.try(d, y0, a+i, l)
+		}
+	}
+	s.try(s.prefix[b], y0, a, b-a)
+}
+
+// need is what (o-e)^2/e must pass for a line to get on the list, about.
+func (s *lineSearch) need() float64 { return 1.6 * (max(0, s.list.floor()) + s.cost) * s.spare }
+
+func (s *lineSearch) try(d uint64, y0, i, l int) float64 {
+	t := tally{float64(d >> 48), float64(d >> 32 & 0xffff), float64(d&0xffffffff) / (1 << lineExpect)}
+	if v := s.f.gain(t) - s.cost; t.o >= 3 && v > max(0, s.list.floor()) {
+		s.offer(v, y0, i, l, s.slope, s.square, s.half)
+	}
+	return s.need()
+}
+
+// offer puts a line on the list, in cells of the raster.
+func (s *lineSearch) offer(v float64, y0, i, l int, slope, square, half float64) {
+	turned := 0.0
+	if s.turned {
+		turned = 1
+	}
+	k := float64(s.block)
+	x := float64(i) + float64(l-1)/2 - half
+	mid := (x+half)*k + (k-1)/2
+	across := (float64(y0)+slope*x+square*x*x)*k + (k-1)/2
+	if s.thick%2 == 0 {
+		across += k / 2
+	}
+	bow := -square * sq(float64(l)/2) * k
+	s.list.offer(v, [6]float64{turned, mid, across, slope + 2*square*x, float64(l) * k, bow}, nearLines)
+}
+
+// polish tries thin lines within a broader one: their two ends must fit at once, which
+// steps along one coordinate do not find.
+func polish(x []float64, top float64, value func([]float64) float64) float64 {
+	thick := x[5]
+	start := append([]float64(nil), x...)
+	try := append([]float64(nil), x...)
+	for _, t := range []float64{1, 1.7} {
+		if t > thick {
+			break
+		}
+		try[5] = t
+		reach := math.Ceil(thick)
+		for d0 := -reach; d0 <= reach; d0 += 0.5 {
+			for d1 := -reach; d1 <= reach; d1 += 0.5 {
+				try[2], try[3] = start[2]+d0, start[3]+d1
+				if v := value(try); v > top {
+					top = v
+					copy(x, try)
+				}
+			}
+		}
+	}
+	if x[5] == thick {
+		return top
+	}
+	return climb(x, []float64{2, 2, 0.5, 0.5, 0.5, 0.5}, 3, value)
+}
+
+// bow fits a line's ends, thickness and curvature from a start.
+func (f *field) bow(it spotlight) *pattern {
+	turned := it.x[0] == 1
+	b := f.band(turned)
+	mid, across, slope, l, bow := it.x[1], it.x[2], it.x[3], it.x[4], it.x[5]
+	x := []float64{max(0, mid-(l-1)/2), min(float64(b.long-1), mid+(l-1)/2), 0, 0, bow, 2}
+	x[2], x[3] = across-slope*(mid-x[0])-bow, across+slope*(x[1]-mid)-bow
+	step := []float64{max(1, l/5), max(1, l/5), max(1, l/16), max(1, l/16), max(0.5, l/16), 1}
+	make_ := func(x []float64) path {
+		p := path{turned: turned, from: int(math.Round(x[0])), to: int(math.Round(x[1])) + 1, y0: x[2], y1: x[3], sag: x[4], thick: x[5]}
+		p.left, p.right = p.from, p.to-1
+		return p
+	}
+	value := func(x []float64) float64 {
+		p := make_(x)
+		length := math.Hypot(x[1]-x[0], x[3]-x[2]) + 1
+		if p.from < 0 || p.to > b.long || p.to-p.from < shortestLine-1 || x[5] < 0.8 || x[5] > 8 ||
+			length < 4*x[5] || math.Abs(x[4]) > 0.2*length || math.Abs(x[3]-x[2]) > 1.6*(x[1]-x[0]) {
+			return -1
+		}
+		return f.gain(b.sweep(&p)) - f.lineCost(x[5])
+	}
+	top := climb(x, step, 5, value)
+	if top <= 0 {
+		return nil
+	}
+	top = polish(x, top, value)
+	p := &pattern{shape: shapeLine, line: make_(x)}
+	p.tally = b.sweep(&p.line)
+	p.gain, p.cost = f.gain(p.tally), f.lineCost(x[5])
+	return p
+}

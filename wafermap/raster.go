@@ -1,0 +1,179 @@
+package wafermap
+
+import "math"
+
+// raster lays the dice on a grid of cells: one cell a tested position where the map
+// allows it, blocks of dice where there are too many, or where dice lie thinly.
+type raster struct {
+	cols, lines int       // columns and rows of cells
+	du, dv      float64   // size of a cell in radii; dv is negative when die y grows downwards
+	u0, v0      float64   // centre of cell (0, 0)
+	stepX       int       // die coordinates a cell
+	stepY       int       //
+	x0, y0      int       // die coordinates of the first die of cell (0, 0)
+	cell        []int32   // by die
+	o, n        []int32   // by cell
+	e           []float64 // by cell
+	along       running   // sums along rows of cells
+	across      running   // sums along columns of cells
+}
+
+// running holds sums up to each cell of a row: count packs fails (high half) and
+// dice (low half), and expected the fails expected. Row j begins at j*stride.
+type running struct {
+	stride   int
+	count    []uint64
+	expected []float64
+}
+
+func (s *running) span(j, from, to int) (count uint64, e float64) {
+	a, b := j*s.stride+from, j*s.stride+to
+	return s.count[b] - s.count[a], s.expected[b] - s.expected[a]
+}
+
+func unpack(count uint64, e float64) tally {
+	return tally{float64(count >> 32), float64(count & (1<<32 - 1)), e}
+}
+
+const (
+	cellsOfRaster  = 26000 // cells of the box at most: 20,000 dice a wafer fit one by one
+	thinnestRaster = 0.35  // dice a cell, at least
+)
+
+func (f *field) layRaster(geo Geometry) {
+	g := f.in.Grid
+	r := &f.raster
+	if len(f.rows) == 0 {
+		return
+	}
+	box := extent{math.MaxInt32, math.MinInt32, math.MaxInt32, math.MinInt32}
+	for _, k := range f.rows {
+		x, y := int(g.x[k]), int(g.y[k])
+		box.X0, box.X1 = min(box.X0, x), max(box.X1, x)
+		box.Y0, box.Y1 = min(box.Y0, y), max(box.Y1, y)
+	}
+	r.x0, r.y0 = box.X0, box.Y0
+	spacingX, spacingY := f.spacing(box)
+	r.stepX, r.stepY = spacingX, spacingY
+	for {
+		r.cols, r.lines = (box.X1-box.X0)/r.stepX+1, (box.Y1-box.Y0)/r.stepY+1
+		area := float64(r.cols) * float64(r.lines)
+		if area <= cellsOfRaster && float64(len(f.rows)) >= thinnestRaster*math.Pi/4*area || r.cols*r.lines <= 16 {
+			break
+		}
+		// the finer side first
+		if float64(r.stepX)*geo.DieWidthMM < float64(r.stepY)*geo.DieHeightMM && r.cols > 2 || r.lines <= 2 {
+			r.stepX += spacingX
+		} else {
+			r.stepY += spacingY
+		}
+	}
+	r.du, r.dv = float64(r.stepX)*geo.DieWidthMM/f.radius, float64(r.stepY)*geo.DieHeightMM/f.radius
+	mmX, mmY := geo.Position(int32(box.X0), int32(box.Y0))
+	r.u0 = mmX/f.radius + r.du*(1-1/float64(r.stepX))/2
+	r.v0 = mmY / f.radius
+	if geo.YDown {
+		r.dv = -r.dv
+	}
+	r.v0 += r.dv * (1 - 1/float64(r.stepY)) / 2
+	r.cell = make([]int32, len(f.rows))
+	cells := r.cols * r.lines
+	r.o, r.n, r.e = make([]int32, cells), make([]int32, cells), make([]float64, cells)
+	for i, k := range f.rows {
+		c := int32((int(g.y[k])-r.y0)/r.stepY*r.cols + (int(g.x[k])-r.x0)/r.stepX)
+		r.cell[i] = c
+		r.n[c]++
+		if f.fail[i] {
+			r.o[c]++
+		}
+	}
+	r.along = running{r.cols + 1, make([]uint64, (r.cols+1)*r.lines), make([]float64, (r.cols+1)*r.lines)}
+	r.across = running{r.lines + 1, make([]uint64, (r.lines+1)*r.cols), make([]float64, (r.lines+1)*r.cols)}
+	for j := range r.lines {
+		for i := range r.cols {
+			c := uint64(r.o[j*r.cols+i])<<32 | uint64(r.n[j*r.cols+i])
+			at := j*r.along.stride + i
+			r.along.count[at+1] = r.along.count[at] + c
+			at = i*r.across.stride + j
+			r.across.count[at+1] = r.across.count[at] + c
+		}
+	}
+}
+
+// spacing is the spacing of a sampled map along x and y: the common divisor of all
+// distances between columns, as of rows; 1 where all are tested.
+func (f *field) spacing(box extent) (x, y int) {
+	g := f.in.Grid
+	for _, k := range f.rows {
+		if x != 1 {
+			x = divisor(x, int(g.x[k])-box.X0)
+		}
+		if y != 1 {
+			y = divisor(y, int(g.y[k])-box.Y0)
+		}
+	}
+	return max(1, x), max(1, y)
+}
+
+func divisor(a, b int) int {
+	for b != 0 {
+		a, b = b, a%b
+	}
+	return a
+}
+
+// sum refreshes the expected fails.
+func (r *raster) sum(f *field) {
+	clear(r.e)
+	for i, p := range f.p {
+		r.e[r.cell[i]] += p
+	}
+	for j := range r.lines {
+		run := 0.0
+		at := j * r.along.stride
+		for i := range r.cols {
+			run += r.e[j*r.cols+i]
+			r.along.expected[at+i+1] = run
+		}
+	}
+	for i := range r.cols {
+		run := 0.0
+		at := i * r.across.stride
+		for j := range r.lines {
+			run += r.e[j*r.cols+i]
+			r.across.expected[at+j+1] = run
+		}
+	}
+}
+
+// ellipse tallies the cells whose centre lies in an ellipse with centre (cu, cv), half axes
+// a and b, a turned by angle.
+func (r *raster) ellipse(cu, cv, a, b, angle float64) tally {
+	s, c := math.Sincos(angle)
+	aa, bb := 1/(a*a), 1/(b*b)
+	xx, xy, yy := c*c*aa+s*s*bb, s*c*(aa-bb), s*s*aa+c*c*bb
+	half := math.Sqrt(a*a*s*s + b*b*c*c)
+	j0, j1 := (cv-half-r.v0)/r.dv, (cv+half-r.v0)/r.dv
+	if j0 > j1 {
+		j0, j1 = j1, j0
+	}
+	var count uint64
+	e := 0.0
+	for j := max(0, int(math.Ceil(j0))); j <= min(r.lines-1, int(math.Floor(j1))); j++ {
+		dy := r.v0 + float64(j)*r.dv - cv
+		root := xy*xy*dy*dy - xx*(yy*dy*dy-1)
+		if root <= 0 {
+			continue
+		}
+		root = math.Sqrt(root)
+		from := int(math.Ceil((cu + (-xy*dy-root)/xx - r.u0) / r.du))
+		to := int(math.Floor((cu+(-xy*dy+root)/xx-r.u0)/r.du)) + 1
+		from, to = max(0, from), min(r.cols, to)
+		if from < to {
+			dc, de := r.along.span(j, from, to)
+			count += dc
+			e += de
+		}
+	}
+	return unpack(count, e)
+}
