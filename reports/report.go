@@ -172,14 +172,33 @@ type Quality struct {
 // LotYield is the lot's yield.
 type LotYield struct {
 	Interval
-	Passing        int      `json:"passing"`
-	Counting       Interval `json:"counting"` // Wilson, dice as independent
-	FirstPass      Number   `json:"first_pass"`
-	SystematicLoss Number   `json:"systematic_loss"`
-	RandomLoss     Number   `json:"random_loss"`
-	LossWhy        string   `json:"loss_why,omitempty"`
-	Baseline       Number   `json:"baseline"`
-	Grades         []Grade  `json:"grades"`
+	Passing        int        `json:"passing"`
+	Counting       Interval   `json:"counting"` // Wilson, dice as independent
+	FirstPass      Number     `json:"first_pass"`
+	SystematicLoss Number     `json:"systematic_loss"`
+	RandomLoss     Number     `json:"random_loss"`
+	LossWhy        string     `json:"loss_why,omitempty"`
+	LossSplit      *LossSplit `json:"loss_split"` // how the two were found; null with loss_why
+	Baseline       Number     `json:"baseline"`
+	Grades         []Grade    `json:"grades"`
+}
+
+// LossSplit splits the loss by windows of neighbouring dice: random loss falls on
+// dice one by one, systematic loss on regions.
+type LossSplit struct {
+	Systematic Interval `json:"systematic"`
+	Random     Interval `json:"random"`
+	RandomRate Interval `json:"random_rate"` // of a die outside of what is lost together
+	Windows    []Window `json:"windows"`
+}
+
+// Window is the yield of windows of one size: all dice in it good.
+type Window struct {
+	Wide   int    `json:"wide"` // dice
+	High   int    `json:"high"`
+	Count  int    `json:"count"`
+	Yield  Number `json:"yield"`
+	Fitted Number `json:"fitted"` // null where the size was not used
 }
 
 // Grade is one passing bin.
@@ -255,20 +274,50 @@ type Quantile struct {
 // Edges[i+1]), the last bin closed. Scale is "linear" or "log" (edges then are
 // equal steps of the logarithm). Below and Above count values outside.
 type Histogram struct {
-	Scale string   `json:"scale"`
-	Rule  string   `json:"rule"`
-	Edges []Number `json:"edges"`
-	Pass  []int    `json:"pass"`
-	Fail  []int    `json:"fail"`
-	Below int      `json:"below"`
-	Above int      `json:"above"`
+	Scale  string   `json:"scale"`
+	Rule   string   `json:"rule"`
+	Edges  []Number `json:"edges"`
+	Pass   []int    `json:"pass"`
+	Fail   []int    `json:"fail"`
+	Fitted []Number `json:"fitted"` // readings that the fit expects in each; empty without one
+	Below  int      `json:"below"`
+	Above  int      `json:"above"`
 }
 
-// Fit is a distribution fitted to a test (a later issue fills it).
+// Fit is the distribution chosen to describe a test's readings.
 type Fit struct {
-	Distribution string            `json:"distribution"`
-	Reason       string            `json:"reason"`
-	Parameters   map[string]Number `json:"parameters"`
+	Distribution string       `json:"distribution"` // normal, lognormal, Weibull, gamma; "" when none could be fitted
+	Empirical    bool         `json:"empirical"`    // no family describes the readings: take percentiles from them
+	Reason       string       `json:"reason"`
+	Parameters   []Parameter  `json:"parameters"`
+	Candidates   []Candidate  `json:"candidates"`
+	Misfit       string       `json:"misfit"`    // how far the readings are from it, in a sentence
+	Gap          Number       `json:"gap"`       // largest distance of the distribution functions
+	AsideLow     int          `json:"aside_low"` // gross outliers set aside before fitting
+	AsideHigh    int          `json:"aside_high"`
+	Populations  []Population `json:"populations"` // of a mixture, when no family does
+}
+
+// Parameter is a parameter of a fit.
+type Parameter struct {
+	Name string `json:"name"`
+	Interval
+}
+
+// Candidate is a family that was tried.
+type Candidate struct {
+	Distribution string `json:"distribution"`
+	AIC          Number `json:"aic"`
+	Why          string `json:"why,omitempty"`
+}
+
+// Population is one of several populations in a test's readings.
+type Population struct {
+	Share Number `json:"share"`
+	Mean  Number `json:"mean"`
+	SD    Number `json:"sd"`
+	From  Number `json:"from"` // the stretch of readings that is this population's; null: open
+	To    Number `json:"to"`
 }
 
 // Capability is the process capability of a test.

@@ -52,6 +52,7 @@ type lotwork struct {
 	retested     []int   // by wafer
 	firstPassing []int   // by wafer: dice that passed when first measured
 	position     []int   // tests in the order of the program
+	logScale     []bool  // by test: its spread is one of ratios
 	geo          wafermap.Geometry
 	rep          *reports.Report
 }
@@ -88,6 +89,7 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 func (w *lotwork) accounts(ctx context.Context) error {
 	tests, wafers := w.lot.Tests(), w.lot.Wafers()
 	w.rep.Tests = make([]reports.Test, len(tests))
+	w.logScale = make([]bool, len(tests))
 	w.rep.Wafers = make([]reports.Wafer, len(wafers))
 	curves := yield.AllAgainstLimits(w.data, w.pass, limitShifts(w.in.Settings.LimitShiftPercent), w.losses.StopOnFail)
 

@@ -27,12 +27,42 @@ func (w *lotwork) lotYield() {
 	y.Counting = interval(counting)
 	y.Passing = k
 	y.FirstPass = share(first, n)
-	y.SystematicLoss, y.RandomLoss = reports.NaN, reports.NaN
-	y.LossWhy = "the split into systematic and random loss is not computed in this version"
+	w.lossSplit()
 	y.Baseline = reports.NaN
 	if p := w.in.Product; p != nil && p.Baseline != nil {
 		y.Baseline = num(p.Baseline.Yield)
 	}
+}
+
+// lossSplit splits the loss into what dice lose one by one and what they lose
+// together.
+func (w *lotwork) lossSplit() {
+	y := &w.rep.Yield
+	y.SystematicLoss, y.RandomLoss = reports.NaN, reports.NaN
+	if !w.lot.HasCoordinates() {
+		y.LossWhy = "the data have no die coordinates"
+		return
+	}
+	s := yield.Windows(w.lot.X(), w.lot.Y(), w.waferCode(), w.pass, confidence)
+	if y.LossWhy = s.Why; !finite(s.Systematic.Estimate) {
+		return
+	}
+	y.SystematicLoss, y.RandomLoss = num(s.Systematic.Estimate), num(s.Random.Estimate)
+	y.LossSplit = &reports.LossSplit{Systematic: interval(s.Systematic), Random: interval(s.Random), RandomRate: interval(s.RandomRate)}
+	for _, size := range s.Sizes {
+		y.LossSplit.Windows = append(y.LossSplit.Windows, reports.Window{Wide: size.Wide, High: size.High, Count: size.Windows, Yield: num(size.Good), Fitted: num(size.Fitted)})
+	}
+}
+
+// waferCode numbers each die's wafer.
+func (w *lotwork) waferCode() []int32 {
+	code := make([]int32, w.lot.Len())
+	for i, r := range w.lot.Wafers() {
+		for row := r.Lo; row < r.Hi; row++ {
+			code[row] = int32(i)
+		}
+	}
+	return code
 }
 
 // bins fills in the bins by falling count (failing ones first in line for the

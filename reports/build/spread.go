@@ -41,13 +41,7 @@ func (w *lotwork) spread(ctx context.Context) error {
 // spreadLevels numbers each die's wafer and, where the wafer's place is known, its
 // ring.
 func (w *lotwork) spreadLevels() []variance.Level {
-	wafer := make([]int32, w.lot.Len())
-	for i, r := range w.lot.Wafers() {
-		for row := r.Lo; row < r.Hi; row++ {
-			wafer[row] = int32(i)
-		}
-	}
-	levels := []variance.Level{{Name: "wafer", Code: wafer}}
+	levels := []variance.Level{{Name: "wafer", Code: w.waferCode()}}
 	if !w.lot.HasCoordinates() || w.geo.Unit == "" {
 		return levels
 	}
@@ -63,9 +57,9 @@ func (w *lotwork) testSpread(t int, levels []variance.Level) []reports.Variance 
 	test := w.lot.Tests()[t]
 	y := inUnit(w.lot.Values(t), test.Unit)
 	marks := w.lot.Censor(t)
-	log := w.onLogScale(t)
+	log := w.logScale[t]
 	unit := test.Unit.Text
-	if log {
+	if log { // a spread of ratios, as the lognormal fit says
 		unit = "ln"
 	}
 	for i := range y {
@@ -94,19 +88,4 @@ func (w *lotwork) testSpread(t int, levels []variance.Level) []reports.Variance 
 		out = append(out, r)
 	}
 	return out
-}
-
-// onLogScale says whether a test's spread is one of ratios: a leakage, whose
-// spread grows with its level.
-func (w *lotwork) onLogScale(t int) bool {
-	for _, v := range w.lot.Values(t) {
-		if v <= 0 {
-			return false
-		}
-	}
-	switch w.lot.Tests()[t].Measures {
-	case "icbo", "iceo", "iebo":
-		return true
-	}
-	return false
 }

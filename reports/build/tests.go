@@ -50,6 +50,7 @@ func (w *lotwork) testAccount(t int, curve []yield.LimitPoint) reports.Test {
 	if sum.N > 0 {
 		r.Histogram = w.histogram(x)
 	}
+	r.Fit = w.fit(t, x, marks, r.Histogram)
 	r.Capability = w.capability(t, x, marks)
 	w.testLoss(t, &r)
 	for _, p := range curve {
@@ -105,13 +106,7 @@ func (w *lotwork) capability(t int, x []float64, marks []int8) *reports.Capabili
 	if !finite(lower) && !finite(upper) {
 		return nil
 	}
-	group := make([]int32, len(x))
-	for i, wafer := range w.lot.Wafers() {
-		for row := wafer.Lo; row < wafer.Hi; row++ {
-			group[row] = int32(i)
-		}
-	}
-	c := capability.Compute(capability.Input{Values: x, Censor: marks, Group: group, Lower: lower, Upper: upper,
+	c := capability.Compute(capability.Input{Values: x, Censor: marks, Group: w.waferCode(), Lower: lower, Upper: upper,
 		MinimumN: w.in.Settings.MinimumN, Confidence: confidence})
 	return &reports.Capability{N: c.N, Cp: interval(c.Cp), Cpk: interval(c.Cpk), Pp: interval(c.Pp), Ppk: interval(c.Ppk),
 		Within: num(c.Within), Overall: num(c.Overall), Over: w.over(t) + "; failing dice too", Why: c.Why, Notes: c.Notes}

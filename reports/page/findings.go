@@ -126,6 +126,21 @@ func epiTable(rows []epiRow) *table {
 	return t
 }
 
+// others are the accounts below the tests, with the pictures that they have.
+type others struct {
+	Charts []chart
+	Tables []table
+}
+
+func newOthers(r *reports.Report) (others, error) {
+	o := others{Tables: otherTables(r)}
+	c, err := spreadChart(r.Variance)
+	if c != nil {
+		o.Charts = append(o.Charts, *c)
+	}
+	return o, err
+}
+
 // otherTables are the accounts of screens, variance, groups and associations;
 // those that the report does not have leave nothing behind.
 func otherTables(r *reports.Report) []table {

@@ -26,6 +26,7 @@ type losses struct {
 	Bins      *table
 	BinCharts []chart
 	Grades    *table
+	Split     *lossSplit
 }
 
 // testPlace says where a test's card is on the page.
@@ -76,7 +77,9 @@ func newLosses(r *reports.Report, tests []testPlace) (losses, error) {
 		return l, err
 	}
 	l.Grades = gradeTable(r.Yield.Grades)
-	return l, nil
+	var err error
+	l.Split, err = newLossSplit(r.Yield)
+	return l, err
 }
 
 func testTable(tests []testPlace) *table {

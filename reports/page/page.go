@@ -67,7 +67,7 @@ type view struct {
 	Wafers      wafers
 	Zones       zones
 	Tests       []testCard
-	Others      []table
+	Others      others
 	Record      record
 	Tool        reports.Tool
 }
@@ -98,13 +98,15 @@ func newView(r *reports.Report) (*view, error) {
 	v.Causes = newCauses(r.Causes)
 	v.Disposition = dispositionTable(r.Disposition)
 	v.Epi = newEpi(r)
-	v.Others = otherTables(r)
 	v.Record = newRecord(r)
 	var err error
 	if v.Losses, err = newLosses(r, tests); err != nil {
 		return nil, err
 	}
 	if v.Wafers, err = newWafers(r); err != nil {
+		return nil, err
+	}
+	if v.Others, err = newOthers(r); err != nil {
 		return nil, err
 	}
 	if v.Zones, err = newZones(r); err != nil {

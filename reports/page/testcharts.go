@@ -27,7 +27,7 @@ func histogram(p testPlace) (*chart, error) {
 		Key:   []keyEntry{{"pass", "dice that pass"}, {"fail", "dice that fail any test"}}}
 	marks := limitMarks(t, &s, &c)
 	s.pad(0.03)
-	pass, all, rows := steps(h, width)
+	pass, all, fitted, rows := steps(h, width)
 	x := valueX(axisName(t))
 	if s.Log {
 		x.Type = "log"
@@ -46,13 +46,19 @@ func histogram(p testPlace) (*chart, error) {
 	}
 	l.AddSeries("all", all, area(colourFail)...)
 	l.AddSeries("pass", pass, append(area(colourPass), withMarks(placeLabels(marks, s)))...)
+	stepRows := seriesRows{Offset: 1, Per: 1}
+	series := []seriesRows{stepRows, stepRows}
+	if len(h.Fitted) == n {
+		l.AddSeries("fit", fitted, charts.WithLineChartOpts(opts.LineChart{Symbol: "none"}), lineStyle(colourInk, 1.5, "solid"))
+		c.Key = append(c.Key, keyEntry{"line-fit", "fitted " + t.Fit.Distribution})
+		series = append(series, stepRows)
+	}
 	l.Accept(house{xTicks: s.ticks(6)})
 	unit := ""
 	if t.Unit != "" {
 		unit = ", " + t.Unit
 	}
-	stepRows := seriesRows{Offset: 1, Per: 1}
-	done, err := c.finish(l.JSON(), []string{"From" + unit, "To" + unit, "Pass", "Fail"}, rows, stepRows, stepRows)
+	done, err := c.finish(l.JSON(), []string{"From" + unit, "To" + unit, "Pass", "Fail", "Fit expects"}, rows, series...)
 	return &done, err
 }
 
@@ -66,7 +72,7 @@ func axisName(t *reports.Test) string {
 // steps are the points of the two stepped lines: bin centres, with an empty
 // bin before and after. A step in the middle between two centres is an edge,
 // on a log axis as well, as edges then are equal steps of the logarithm.
-func steps(h *reports.Histogram, s span) (pass, all []opts.LineData, rows [][]string) {
+func steps(h *reports.Histogram, s span) (pass, all, fitted []opts.LineData, rows [][]string) {
 	n := len(h.Pass)
 	centre := func(i int) float64 {
 		at := func(i float64) float64 { // the edge i, also beyond the ends
@@ -81,13 +87,22 @@ func steps(h *reports.Histogram, s span) (pass, all []opts.LineData, rows [][]st
 		p, f := 0, 0
 		if i >= 0 && i < n {
 			p, f = h.Pass[i], h.Fail[i]
-			rows = append(rows, []string{value(h.Edges[i]), value(h.Edges[i+1]), count(p), count(f)})
+			expects := ""
+			if len(h.Fitted) == n && h.Fitted[i].Valid() {
+				expects = significant(float64(h.Fitted[i]), 3)
+			}
+			rows = append(rows, []string{value(h.Edges[i]), value(h.Edges[i+1]), count(p), count(f), expects})
 		}
 		x := plot(reports.Number(centre(i)))
 		pass = append(pass, opts.LineData{Value: []any{x, p}})
 		all = append(all, opts.LineData{Value: []any{x, p + f}})
+		var e any
+		if i >= 0 && i < n && len(h.Fitted) == n {
+			e = plot(h.Fitted[i])
+		}
+		fitted = append(fitted, opts.LineData{Value: []any{x, e}})
 	}
-	return pass, all, rows
+	return pass, all, fitted, rows
 }
 
 // limitMarks are the lines of a test's limits and median; the span is

@@ -1,8 +1,6 @@
 package page
 
 import (
-	"maps"
-	"slices"
 	"strings"
 
 	"kneepoint/reports"
@@ -245,17 +243,29 @@ func over(which string) string {
 	return ", over " + which
 }
 
+// fitText says which distribution describes a test's readings, and how well.
 func fitText(f *reports.Fit) string {
+	var s string
+	switch {
+	case f.Distribution == "":
+		s = "No distribution fitted"
+	case f.Empirical:
+		s = "No family of distributions describes the readings; nearest is " + f.Distribution
+	default:
+		s = "Distribution: " + f.Distribution
+	}
 	var parts []string
-	for _, k := range slices.Sorted(maps.Keys(f.Parameters)) {
-		parts = append(parts, k+space+value(f.Parameters[k]))
+	for _, p := range f.Parameters {
+		parts = append(parts, p.Name+space+value(p.Estimate)+" ("+valueRange(p.Interval)+")")
 	}
-	s := "Fitted distribution: " + f.Distribution
 	if len(parts) > 0 {
-		s += " (" + strings.Join(parts, ", ") + ")"
+		s += " with " + list(parts)
 	}
-	if f.Reason != "" {
-		s += ": " + f.Reason
+	s += "."
+	for _, more := range []string{f.Reason, f.Misfit} {
+		if more != "" {
+			s += " " + sentence(more)
+		}
 	}
-	return sentence(s)
+	return s
 }
