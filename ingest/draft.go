@@ -29,11 +29,12 @@ func (d *draft) lot(opt *Options) *Lot {
 		}
 	}
 	d.places()
+	d.outlines()
 	censor := make([][]int8, len(d.tests))
 	d.eachTest(opt, func(i int) []Finding {
 		marks, findings := d.bounds(i)
 		censor[i] = marks
-		return findings
+		return append(findings, d.scale(i)...)
 	})
 	l.cols = columns{n: d.n, site: int32Column(d.ints[intSite]), touchdown: int32Column(d.ints[intTouchdown]),
 		hardBin: int32Column(d.ints[intHardBin]), softBin: int32Column(d.ints[intSoftBin]), pass: int8Column(d.pass)}
