@@ -105,7 +105,7 @@ func Pettitt(y []float64) RankSplit {
 	if n < 2 {
 		return s
 	}
-	r := midranks(v)
+	r, _ := stats.Ranks(v)
 	u := 0.0
 	s.K = -1
 	for t := 1; t < n; t++ {
@@ -117,33 +117,4 @@ func Pettitt(y []float64) RankSplit {
 	m := float64(n)
 	s.P = math.Min(1, 2*math.Exp(-6*s.K*s.K/(m*m*m+m*m)))
 	return s
-}
-
-// midranks are ranks from 1, equal values sharing their mean.
-func midranks(v []float64) []float64 {
-	order := make([]int, len(v))
-	for i := range order {
-		order[i] = i
-	}
-	slices.SortFunc(order, func(a, b int) int {
-		switch {
-		case v[a] < v[b]:
-			return -1
-		case v[a] > v[b]:
-			return 1
-		}
-		return a - b
-	})
-	r := make([]float64, len(v))
-	for i := 0; i < len(order); {
-		j := i
-		for j < len(order) && v[order[j]] == v[order[i]] {
-			j++
-		}
-		for k := i; k < j; k++ {
-			r[order[k]] = float64(i+j+1) / 2
-		}
-		i = j
-	}
-	return r
 }
