@@ -322,16 +322,36 @@ type Population struct {
 
 // Capability is the process capability of a test.
 type Capability struct {
-	N       int      `json:"n"`
-	Cp      Interval `json:"cp"`
-	Cpk     Interval `json:"cpk"`
-	Pp      Interval `json:"pp"`
-	Ppk     Interval `json:"ppk"`
-	Within  Number   `json:"within_sigma"`
-	Overall Number   `json:"overall_sigma"`
-	Over    string   `json:"over"` // which dice
-	Why     string   `json:"why,omitempty"`
-	Notes   []string `json:"notes"`
+	N             int                   `json:"n"`
+	Cp            Interval              `json:"cp"`
+	Cpk           Interval              `json:"cpk"`
+	Pp            Interval              `json:"pp"`
+	Ppk           Interval              `json:"ppk"`
+	Within        Number                `json:"within_sigma"`
+	Overall       Number                `json:"overall_sigma"`
+	Over          string                `json:"over"` // which dice
+	Why           string                `json:"why,omitempty"`
+	Notes         []string              `json:"notes"`
+	ByPercentiles *PercentileCapability `json:"by_percentiles"`
+}
+
+// PercentileCapability is capability by the 0.135, 50 and 99.865 % percentiles of
+// the chosen distribution, or of the readings where no family describes them.
+type PercentileCapability struct {
+	Source     string   `json:"source"`
+	N          int      `json:"n"`
+	AsideLow   int      `json:"aside_low"` // gross outliers that were set aside, as in the fit
+	AsideHigh  int      `json:"aside_high"`
+	Low        Interval `json:"low"`
+	Median     Interval `json:"median"`
+	High       Interval `json:"high"`
+	Pp         Interval `json:"pp"`
+	Ppk        Interval `json:"ppk"`
+	PPMBelow   Interval `json:"ppm_below"` // expected parts per million beyond the limits, of what was not set aside
+	PPMAbove   Interval `json:"ppm_above"`
+	PPMOutside Interval `json:"ppm_outside"`
+	Why        string   `json:"why,omitempty"`
+	Notes      []string `json:"notes"`
 }
 
 // Repeat is the gauge repeatability seen on retested dice.
@@ -414,13 +434,20 @@ type Group struct {
 	Text   string   `json:"text"`
 }
 
-// Association is a test or the yield against another column.
+// Association is a test or the yield against another column that it goes with by
+// more than chance.
 type Association struct {
-	Of     string `json:"of"`
-	With   string `json:"with"`
-	Effect Number `json:"effect"`
-	PValue Number `json:"p_value"`
-	Text   string `json:"text"`
+	Of       string   `json:"of"`
+	With     string   `json:"with"`
+	Cases    string   `json:"cases"` // what was taken as independent: wafers, or dice of a single wafer
+	N        int      `json:"n"`
+	Effect   Interval `json:"effect"` // in the test's unit; of the yield a share
+	Unit     string   `json:"unit"`
+	Strength Number   `json:"strength"` // share of the variance in rank, less chance
+	PValue   Number   `json:"p_value"`
+	Adjusted Number   `json:"adjusted_p_value"` // for all looks (Benjamini and Hochberg)
+	Looks    int      `json:"looks"`
+	Text     string   `json:"text"`
 }
 
 // Cause is one physical cause with its probability.

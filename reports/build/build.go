@@ -74,6 +74,7 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 	if err := w.spread(ctx); err != nil {
 		return nil, err
 	}
+	w.associate()
 	w.lotYield()
 	w.bins()
 	w.zones()

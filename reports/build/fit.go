@@ -8,8 +8,9 @@ import (
 	"kneepoint/stats/dist"
 )
 
-// fit chooses the distribution of a test's readings.
-func (w *lotwork) fit(t int, x []float64, marks []int8, h *reports.Histogram) *reports.Fit {
+// fit chooses the distribution of a test's readings; body is what it is of: the
+// readings without far bounds.
+func (w *lotwork) fit(t int, x []float64, marks []int8, h *reports.Histogram) (*reports.Fit, dist.Choice, []float64) {
 	body, low, high := setAsideBounds(x, marks)
 	c := dist.Choose(body, marks)
 	w.logScale[t] = c.Best != nil && c.Best.Family() == dist.LognormalFamily
@@ -26,7 +27,7 @@ func (w *lotwork) fit(t int, x []float64, marks []int8, h *reports.Histogram) *r
 	}
 	if c.Best == nil {
 		f.Gap = reports.NaN
-		return f
+		return f, c, body
 	}
 	f.Distribution = c.Best.Family().String()
 	for _, p := range c.Best.Parameters(confidence) {
@@ -35,7 +36,7 @@ func (w *lotwork) fit(t int, x []float64, marks []int8, h *reports.Histogram) *r
 	if h != nil {
 		h.Fitted = expected(c, body, h.Edges)
 	}
-	return f
+	return f, c, body
 }
 
 // expected is how many readings the fit puts between each two edges. The fit

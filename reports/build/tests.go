@@ -7,6 +7,7 @@ import (
 	"kneepoint/reports"
 	"kneepoint/stats"
 	"kneepoint/stats/capability"
+	"kneepoint/stats/dist"
 	"kneepoint/stats/yield"
 )
 
@@ -50,8 +51,11 @@ func (w *lotwork) testAccount(t int, curve []yield.LimitPoint) reports.Test {
 	if sum.N > 0 {
 		r.Histogram = w.histogram(x)
 	}
-	r.Fit = w.fit(t, x, marks, r.Histogram)
-	r.Capability = w.capability(t, x, marks)
+	fit, choice, body := w.fit(t, x, marks, r.Histogram)
+	r.Fit = fit
+	if r.Capability = w.capability(t, x, marks); r.Capability != nil {
+		r.Capability.ByPercentiles = w.byPercentiles(t, body, marks, choice)
+	}
 	w.testLoss(t, &r)
 	for _, p := range curve {
 		limit := "lower"
@@ -110,6 +114,33 @@ func (w *lotwork) capability(t int, x []float64, marks []int8) *reports.Capabili
 		MinimumN: w.in.Settings.MinimumN, Confidence: confidence})
 	return &reports.Capability{N: c.N, Cp: interval(c.Cp), Cpk: interval(c.Cpk), Pp: interval(c.Pp), Ppk: interval(c.Ppk),
 		Within: num(c.Within), Overall: num(c.Overall), Over: w.over(t) + "; failing dice too", Why: c.Why, Notes: c.Notes}
+}
+
+// byPercentiles is the capability of what the fit describes: gross outliers, which
+// it sets aside, are losses of another kind and are counted as such.
+func (w *lotwork) byPercentiles(t int, x []float64, marks []int8, c dist.Choice) *reports.PercentileCapability {
+	test := w.lot.Tests()[t]
+	fit := c.Best
+	if c.Empirical {
+		fit = nil
+	}
+	within := x
+	if c.AsideLow+c.AsideHigh > 0 {
+		within = append([]float64(nil), x...)
+		for i, v := range within {
+			if v < c.AsideFrom || v > c.AsideTo {
+				within[i] = math.NaN()
+			}
+		}
+	}
+	p := capability.ByPercentiles(capability.Input{Values: within, Censor: marks, Group: w.waferCode(), MinimumN: w.in.Settings.MinimumN, Confidence: confidence,
+		Lower: float64(shown(test.Lower, test.Unit)), Upper: float64(shown(test.Upper, test.Unit))}, fit)
+	ppm := func(i stats.Interval) reports.Interval {
+		i.Estimate, i.Lower, i.Upper = 1e6*i.Estimate, 1e6*i.Lower, 1e6*i.Upper
+		return interval(i)
+	}
+	return &reports.PercentileCapability{Source: p.Source, N: p.N, Low: interval(p.Low), Median: interval(p.Median), High: interval(p.High), Pp: interval(p.Pp), Ppk: interval(p.Ppk),
+		PPMBelow: ppm(p.Below), PPMAbove: ppm(p.Above), PPMOutside: ppm(p.Outside), Why: p.Why, Notes: p.Notes}
 }
 
 func (w *lotwork) testLoss(t int, r *reports.Test) {

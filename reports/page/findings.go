@@ -161,9 +161,13 @@ func otherTables(r *reports.Report) []table {
 		variance.Rows = append(variance.Rows, []cell{text(v.Test), text(v.Level), counted(v.Groups), number(value(v.Sigma.Estimate), v.Sigma.Estimate), text(orWhy(valueRange(v.Sigma), v.Sigma.Why)), text(v.Unit), number(percent(v.Share), v.Share), text(percentRange(share))})
 	}
 	add(variance)
-	associations := table{Caption: "What goes with what", Sortable: true, Columns: []column{{Name: "Of"}, {Name: "With"}, {Name: "Effect", Numeric: true}, {Name: "p", Numeric: true}, {Name: "Text", Plain: true}}}
+	associations := table{Caption: "What goes with what, by more than chance", Sortable: true, Columns: []column{{Name: "Of"}, {Name: "With"}, {Name: "Difference", Numeric: true}, {Name: "95 % interval", Numeric: true, Plain: true}, {Name: "Adjusted p", Numeric: true}, {Name: "In words", Plain: true}}}
 	for _, a := range r.Associations {
-		associations.Rows = append(associations.Rows, []cell{text(a.Of), text(a.With), number(value(a.Effect), a.Effect), number(pValue(a.PValue), a.PValue), {Text: a.Text, Class: "wide"}})
+		effect, between := withUnit(value(a.Effect.Estimate), a.Unit), valueRange(a.Effect)
+		if a.Of == "yield" {
+			effect, between = signedPercent(a.Effect.Estimate), percentRange(a.Effect)
+		}
+		associations.Rows = append(associations.Rows, []cell{text(a.Of), text(a.With), number(effect, a.Effect.Estimate), text(between), number(pValue(a.Adjusted), a.Adjusted), {Text: a.Text, Class: "wide"}})
 	}
 	add(associations)
 	screens := table{Caption: "Screens for outlying dice", Sortable: true, Columns: []column{{Name: "Screen"}, {Name: "Dice", Numeric: true}, {Name: "Yield cost", Numeric: true}, {Name: "Text", Plain: true}}}

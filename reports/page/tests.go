@@ -229,10 +229,20 @@ func capabilityTable(t *reports.Test) *table {
 		}
 		q.Rows = append(q.Rows, []cell{text(i.name), text(ratio(i.v.Estimate)), text(interval)})
 	}
+	if p := k.ByPercentiles; p != nil && p.Why == "" {
+		anything = true
+		from := " by percentiles"
+		q.Rows = append(q.Rows, []cell{text("Pp" + from), text(ratio(p.Pp.Estimate)), text(orWhy(ratioRange(p.Pp), p.Pp.Why))},
+			[]cell{text("Ppk" + from), text(ratio(p.Ppk.Estimate)), text(orWhy(ratioRange(p.Ppk), p.Ppk.Why))},
+			[]cell{text("expected outside, ppm"), text(value(p.PPMOutside.Estimate)), text(orWhy(valueRange(p.PPMOutside), p.PPMOutside.Why))})
+	}
 	if !anything && k.Why != "" {
 		return nil // the note says why
 	}
-	q.Note = "Sigma within wafers " + withUnit(value(k.Within), t.Unit) + ", overall " + withUnit(value(k.Overall), t.Unit) + "."
+	if p := k.ByPercentiles; p != nil && p.Source != "" {
+		q.Note = "Percentiles are of " + p.Source + ", without gross outliers. "
+	}
+	q.Note += "Sigma within wafers " + withUnit(value(k.Within), t.Unit) + ", overall " + withUnit(value(k.Overall), t.Unit) + "."
 	return q
 }
 
