@@ -3,6 +3,7 @@ package stats_test
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"kneepoint/stats"
@@ -10,12 +11,18 @@ import (
 	"kneepoint/stats/compare"
 	"kneepoint/stats/dist"
 	"kneepoint/stats/relate"
+	"kneepoint/stats/screen"
 )
 
 // Answers of the rooms dist, capability, screen, compare and relate.
 
 func init() {
 	for name, m := range map[string]referenceMethod{
+		"part average limits: robust mean = median, robust sigma = (Q#-Q#)/#, limits +-# robust sigma": {answer: referencePartAverage},
+		"Grubbs test, one-sided maximum":                                                                       {answer: referenceGrubbs},
+		"Grubbs test for one outlier":                                                                          {answer: referenceGrubbs},
+		"generalised extreme studentised deviate (Rosner #)":                                                   {answer: referenceGESD},
+		"minimum covariance determinant (FastMCD), h = (n+p+#)/#, reweighted":                                  {answer: referenceMCD},
 		"normal tolerance factors: k# (Howe), k# (Natrella), k# (noncentral t)":                                {answer: referenceTolerance},
 		"one-sided normal tolerance factor, small n":                                                           {answer: referenceTolerance},
 		"normal tolerance-interval k factors, one- and two-sided":                                              {answer: referenceTolerance},
@@ -300,4 +307,116 @@ func referenceEmpirical(c *referenceCase) map[string]any {
 		out[name] = percentiles(q[0], q[1], q[2], capability.PercentileIndices(q[0], q[1], q[2], c.number("lsl"), c.number("usl")))
 	}
 	return out
+}
+
+func referencePartAverage(c *referenceCase) map[string]any {
+	x, k := c.list("x"), c.number("k")
+	limits := func(o screen.Options) (screen.Limits, []int) {
+		o.K, o.MinimumN = k, 2
+		l := screen.PartAverage(x, nil, o)
+		out := []int{}
+		for i, f := range l.Outside(x, nil) {
+			if f {
+				out = append(out, i)
+			}
+		}
+		return l, out
+	}
+	answer := map[string]any{}
+	for name, kind := range map[string]stats.QuantileKind{"quantile_type6": stats.HyndmanFan6, "quantile_type7": stats.HyndmanFan7, "quantile_type8": stats.HyndmanFan8} {
+		l, out := limits(screen.Options{Kind: kind})
+		answer[name] = map[string]any{"robust_mean": l.Centre, "robust_sigma": l.SigmaLow, "lower": l.Lower, "upper": l.Upper, "outliers": out}
+	}
+	l, out := limits(screen.Options{Estimator: screen.MeanSD})
+	answer["classical_mean_sd"] = map[string]any{"mean": l.Centre, "sd": l.SigmaLow, "lower": l.Lower, "upper": l.Upper, "outliers": out}
+	l, out = limits(screen.Options{Estimator: screen.MedianMAD})
+	answer["median_mad"] = map[string]any{"median": l.Centre, "mad": l.SigmaLow, "lower": l.Lower, "upper": l.Upper, "outliers": out}
+	f := screen.Tukey(x, stats.HyndmanFan7)
+	answer["tukey_fences_type7"] = map[string]any{"inner_lower": f.InnerLower, "inner_upper": f.InnerUpper, "outer_lower": f.OuterLower, "outer_upper": f.OuterUpper}
+	return answer
+}
+
+func referenceGrubbs(c *referenceCase) map[string]any {
+	g := screen.Grubbs(c.list("x"), c.number("alpha"))
+	return map[string]any{"g_two_sided": g.G, "index": g.Index, "critical_two_sided": g.Critical, "g_max": g.Max, "g_min": g.Min,
+		"critical_one_sided": g.CriticalOneSided, "p_two_sided_bonferroni": g.P, "p_one_sided_max_bonferroni": g.PMax}
+}
+
+func referenceGESD(c *referenceCase) map[string]any {
+	e := screen.GESD(c.list("x"), int(c.number("max_outliers")), c.number("alpha"))
+	return map[string]any{"r": e.R, "lambda": e.Lambda, "removed": e.Removed, "n_outliers": e.Outliers}
+}
+
+// A subset with a smaller determinant is better, not wrong, as the cases say:
+// then only the outliers are compared.
+func referenceMCD(c *referenceCase) map[string]any {
+	rows := c.table("rows")
+	columns := make([][]float64, len(rows[0]))
+	for _, row := range rows {
+		for j, v := range row {
+			columns[j] = append(columns[j], v)
+		}
+	}
+	r := screen.RobustDistance(columns)
+	planted, _ := c.Expected["planted_outliers"].([]any)
+	order := stats.Order(r.Squared)
+	far := []int{}
+	for _, i := range order[len(order)-len(planted):] {
+		far = append(far, int(i))
+	}
+	slices.Sort(far)
+	whole := func(b []bool) (out []int) {
+		for _, v := range b {
+			if v {
+				out = append(out, 1)
+			} else {
+				out = append(out, 0)
+			}
+		}
+		return out
+	}
+	if better, _ := c.Expected["raw_covariance_det_uncorrected"].(float64); r.RawDeterminant < better*(1-1e-9) {
+		out := map[string]any{}
+		for key, v := range c.Expected {
+			out[key] = v
+		}
+		out["planted_outliers"], out["h"] = far, r.H
+		return numbers(out)
+	}
+	plain := make([][]float64, len(columns)) // without the consistency factor, which the reference does not apply
+	d := make([]float64, len(rows))
+	for j, row := range r.Covariance {
+		for _, v := range row {
+			plain[j] = append(plain[j], v/r.Factor)
+		}
+	}
+	for i, v := range r.Squared {
+		d[i] = v * r.Factor
+	}
+	return map[string]any{"h": r.H, "raw_location": r.RawLocation, "raw_covariance_det_uncorrected": r.RawDeterminant, "raw_support": whole(r.RawSupport),
+		"location": r.Location, "covariance": plain, "support_reweighted": whole(r.Support), "d2_reweighted": d, "planted_outliers": far}
+}
+
+// numbers turns the arrays of a case into those of an answer.
+func numbers(m map[string]any) map[string]any {
+	for key, v := range m {
+		list, ok := v.([]any)
+		if !ok {
+			continue
+		}
+		var flat []float64
+		var rows [][]float64
+		for _, e := range list {
+			switch e := e.(type) {
+			case float64:
+				flat = append(flat, e)
+			case []any:
+				rows = append(rows, asNumbers(numbers(map[string]any{"row": e})["row"]))
+			}
+		}
+		if m[key] = flat; rows != nil {
+			m[key] = rows
+		}
+	}
+	return m
 }

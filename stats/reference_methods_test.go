@@ -35,11 +35,6 @@ var referenceMethods = map[string]referenceMethod{
 
 // referencePending are methods that belong to rooms not built yet, by room.
 var referencePending = map[string]string{
-	"part average limits: robust mean = median, robust sigma = (Q#-Q#)/#, limits +-# robust sigma": "screen",
-	"Grubbs test, one-sided maximum":                                      "screen",
-	"Grubbs test for one outlier":                                         "screen",
-	"generalised extreme studentised deviate (Rosner #)":                  "screen",
-	"minimum covariance determinant (FastMCD), h = (n+p+#)/#, reweighted": "screen",
 }
 
 // referenceWafermap are the methods that package wafermap answers in a driver of

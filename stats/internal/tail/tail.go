@@ -30,28 +30,36 @@ func NormalQuantile(p float64) float64 {
 
 // T is P(T > t) of Student's t with df degrees of freedom.
 func T(t, df float64) float64 {
-	switch {
+	if t < 0 {
+		return 1 - T2(t, df)/2
+	}
+	return T2(t, df) / 2
+}
+
+// T2 is P(|T| > |t|), the two-sided p of Student's t.
+func T2(t, df float64) float64 {
+	t = math.Abs(t)
+	switch u := t * t; {
 	case t != t || df != df:
 		return math.NaN()
-	case t < 0:
-		return 1 - T(-t, df)
 	case math.IsInf(t, 1):
 		return 0
 	case math.IsInf(df, 1):
-		return Normal(t)
-	}
-	if df > manyDF {
-		return Normal(hill(t, df))
-	}
-	u := t * t
-	if math.IsInf(u, 1) { // beyond squares
+		return 2 * Normal(t)
+	case df > manyDF:
+		return 2 * Normal(hill(t, df))
+	case math.IsInf(u, 1): // beyond squares
 		return 0
+	default:
+		// Of the two arguments that add up to one, pass the smaller, which holds the
+		// digits; but a small p by itself, not as what is left of 1.
+		if u < df {
+			if p := 1 - mathext.RegIncBeta(0.5, df/2, u/(df+u)); p > 0.1 {
+				return p
+			}
+		}
+		return mathext.RegIncBeta(df/2, 0.5, df/(df+u))
 	}
-	// Of the two arguments that add up to one, pass the one that holds the digits.
-	if u < df {
-		return 0.5 * (1 - mathext.RegIncBeta(0.5, df/2, u/(df+u)))
-	}
-	return 0.5 * mathext.RegIncBeta(df/2, 0.5, df/(df+u))
 }
 
 // manyDF is where the incomplete beta function begins to lose digits and Hill's
@@ -66,20 +74,6 @@ func hill(t, df float64) float64 {
 	w2 := a * math.Log1p(t*t/df)
 	w := math.Sqrt(w2)
 	return w * (1 + ((w2+3)-(((4*w2+33)*w2+240)*w2+855)/(10*(b+0.8*w2*w2+100)))/b)
-}
-
-// T2 is P(|T| > |t|), the two-sided p of Student's t.
-func T2(t, df float64) float64 {
-	t = math.Abs(t)
-	if df > manyDF {
-		return 2 * T(t, df)
-	}
-	if u := t * t; u < df && u > 1 { // 1 - I would lose the digits of a small p
-		if p := mathext.RegIncBeta(df/2, 0.5, df/(df+u)); p < 0.1 {
-			return p
-		}
-	}
-	return 2 * T(t, df)
 }
 
 // TQuantile is the t > 0 with P(T > t) = upper, for 0 < upper < 1/2.
