@@ -10,7 +10,8 @@ import (
 
 // retests decides which measurement of each die counts. It returns for every
 // measurement the place of the one that counts for its die: itself, another
-// one, or duplicateRow for an exact copy. Nil says itself for all.
+// one, or duplicateRow for an exact copy. Nil says itself for all. Tests that the
+// one that counts did not measure again are filled in, see fillPartial.
 //
 // Measurements belong to the same die when they have the same coordinates on
 // the same wafer; without coordinates, the same part id. A measurement is valid
@@ -35,16 +36,17 @@ const (
 )
 
 type retesting struct {
-	d      *draft
-	keep   []int32
-	policy Retest
-	bins   config.Bins
-	groups [][]int32 // measurements of dice that have several, copies left out
-	dice   int       // measured more than once
-	joined int       // dice whose readings were spread over several rows
-	extra  int       // measurements that do not count
-	empty  int       // of them without any value or bin
-	better int       // dice that policy best passes though their last measurement fails
+	d       *draft
+	keep    []int32
+	policy  Retest
+	bins    config.Bins
+	groups  [][]int32 // measurements of dice that have several, copies left out
+	dice    int       // measured more than once
+	joined  int       // dice whose readings were spread over several rows
+	extra   int       // measurements that do not count
+	partial int       // dice whose last measurement lacks tests of earlier ones
+	empty   int       // of them without any value or bin
+	better  int       // dice that policy best passes though their last measurement fails
 }
 
 // several takes a die that has several measurements, given in order of rows.
@@ -180,6 +182,7 @@ func (s *retesting) die(own []int32) {
 	for _, r := range own {
 		s.keep[r] = chosen
 	}
+	s.fillPartial(own, chosen)
 }
 
 // valid says whether a measurement has a value or a bin.
@@ -205,14 +208,8 @@ func (d *draft) valid(r int32) bool {
 // limits that it has readings for.
 func (s *retesting) passes(r int32) bool {
 	d := s.d
-	if b := d.ints[intHardBin]; b != nil && b[r] != Missing && len(s.bins.Pass) > 0 {
-		return s.bins.PassBin(int(b[r]))
-	}
-	if d.pass != nil && d.pass[r] >= 0 {
-		return d.pass[r] == 1
-	}
-	if b := d.ints[intHardBin]; b != nil && b[r] != Missing {
-		return s.bins.PassBin(int(b[r]))
+	if v := s.verdict(r); v != 0 {
+		return v > 0
 	}
 	some := false
 	for i, v := range d.values {
@@ -259,7 +256,7 @@ func (d *draft) sameRow(a, b int32) bool {
 
 func (s *retesting) report() {
 	d := s.d
-	d.findings = append(d.findings, d.takeCarried(func(f Finding) bool { return f.Code == "duplicate-row" || f.Code == "joined-rows" })...)
+	d.findings = append(d.findings, d.takeCarried(func(f Finding) bool { return d.carriedLater(f) && !cellCodes[f.Code] })...)
 	if d.duplicates > 0 {
 		d.note(Warning, "duplicate-row", fmt.Sprintf("%d %s another one in every field; counted once", d.duplicates, plural(d.duplicates, "row repeats", "rows repeat")),
 			"check whether the data were exported twice", d.duplicates)
@@ -271,6 +268,7 @@ func (s *retesting) report() {
 	if s.dice > 0 {
 		d.note(Info, "retest", fmt.Sprintf("%d %s measured more than once, with %d further measurements; the %s valid one counts", s.dice, plural(s.dice, "die was", "dice were"), s.extra, s.policy), "", s.dice)
 	}
+	s.reportPartial()
 	if s.empty > 0 {
 		d.note(Info, "retest-empty", fmt.Sprintf("%d %s of retested dice %s neither a value nor a bin and %s not count", s.empty, plural(s.empty, "measurement", "measurements"),
 			plural(s.empty, "has", "have"), plural(s.empty, "does", "do")), "", s.empty)

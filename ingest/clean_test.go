@@ -150,8 +150,57 @@ func TestLongRetests(t *testing.T) {
 	}
 	// The touchdown tells measurements apart where rows share it.
 	l := mustRead(t, table("WAFER,X,Y,TD,TEST,VALUE", "1,0,0,1,A,1", "1,0,0,1,B,2", "1,0,0,9,B,4", "1,0,0,9,C,5"), Options{}).Lots[0]
-	if e := l.Earlier(); len(e.Of) != 1 || e.Values[0][0] != 1 || e.Values[1][0] != 2 || l.Values(1)[0] != 4 || l.Values(2)[0] != 5 || l.Values(0)[0] == l.Values(0)[0] {
+	if e := l.Earlier(); len(e.Of) != 1 || e.Values[0][0] != 1 || e.Values[1][0] != 2 || l.Values(1)[0] != 4 || l.Values(2)[0] != 5 || l.Values(0)[0] != 1 {
 		t.Errorf("by touchdown: %v", viewOf(l))
+	}
+}
+
+// A test that a retest did not measure again keeps its last reading, but for
+// the tests after a stop at a fail.
+func TestPartialRetests(t *testing.T) {
+	nan := math.NaN()
+	limits := "LSL,,,,,,22.5,80,1"
+	for _, c := range []struct {
+		name   string
+		rows   []string // of die 4, 0: bin, flag, A, B, C
+		want   []float64
+		filled int
+	}{
+		{"no bins, other test again", []string{",,20,60,5", ",,,119,"}, []float64{20, 119, 5}, 1},
+		{"no bins, all again", []string{",,20,60,5", ",,24,119,6"}, []float64{24, 119, 6}, 0},
+		{"latest reading of each", []string{",,20,60,5", ",,21,,", ",,,119,"}, []float64{21, 119, 5}, 1},
+		{"bin passes", []string{"5,,20,60,5", "1,,,119,"}, []float64{20, 119, 5}, 1},
+		{"flag passes", []string{",F,20,60,5", ",P,,119,"}, []float64{20, 119, 5}, 1},
+		{"bin stops", []string{"5,,20,60,5", "5,,,70,"}, []float64{20, 70, nan}, 1},
+		{"stopped at the first", []string{"6,,24,60,5", "5,,21,,"}, []float64{21, nan, nan}, 0},
+		{"no bins, stopped by its limit", []string{",,24,60,5", ",,21,,"}, []float64{21, nan, nan}, 0},
+		{"retest without anything", []string{",,20,60,5", ",,,,"}, []float64{20, 60, 5}, 0},
+		{"bin only", []string{"5,,20,60,5", "5,,,,"}, []float64{nan, nan, nan}, 0},
+	} {
+		lines := []string{"LOT,WAFER,X,Y,HBIN,PF,A,B,C", limits, "L,1,0,0,1,P,24.5,120,7"}
+		for _, r := range c.rows {
+			lines = append(lines, "L,1,4,0,"+r)
+		}
+		l := mustRead(t, table(lines...), Options{}).Lots[0]
+		got := []float64{l.Values(0)[1], l.Values(1)[1], l.Values(2)[1]}
+		filled := 0
+		for _, f := range l.Findings() {
+			if f.Code == "partial-retest" {
+				filled += f.Dice
+			}
+		}
+		if d := cmp.Diff(c.want, got, exactly); d != "" || filled != c.filled || len(l.Earlier().Of) != len(c.rows)-1 {
+			t.Errorf("%s: %v, want %v; %d filled, want %d; earlier %v", c.name, got, c.want, filled, c.filled, l.Earlier())
+		}
+	}
+	// Policy first takes nothing from later rows; a long table is no different.
+	l := mustRead(t, table("WAFER,X,Y,A,B", "1,0,0,1,", "1,0,0,3,4"), Options{Retest: RetestFirst}).Lots[0]
+	if l.Values(0)[0] != 1 || l.Values(1)[0] == l.Values(1)[0] {
+		t.Errorf("policy first: %v %v", l.Values(0), l.Values(1))
+	}
+	l = mustRead(t, table("WAFER,X,Y,TEST,VALUE,LSL", "1,0,0,A,1,10", "1,0,0,B,2,10", "1,0,0,A,11,10"), Options{}).Lots[0]
+	if l.Values(0)[0] != 11 || l.Values(1)[0] != 2 || l.Earlier().Values[0][0] != 1 || l.Earlier().Values[1][0] != 2 {
+		t.Errorf("long: %v %v, earlier %v", l.Values(0), l.Values(1), l.Earlier())
 	}
 }
 
