@@ -110,9 +110,10 @@ type Wafer struct {
 	MainLoss   []Share           `json:"main_loss"`               // tests that lose most on this wafer, first loss, at most three
 	Spatial    Spatial           `json:"spatial"`                 // is the fail map more than chance
 	Signatures []Signature       `json:"signatures"`              // issue of the map room
-	Epi        *Epi              `json:"epi"`                     //
-	Group      int               `json:"group"`                   // 0 when not grouped
-	Attributes map[string]string `json:"attributes"`              // wafer history
+	EpiWhy     string            `json:"epi_why,omitempty"`
+	Epi        *Epi              `json:"epi"`        //
+	Group      int               `json:"group"`      // 0 when not grouped
+	Attributes map[string]string `json:"attributes"` // wafer history
 }
 
 // Share is a named part of something.
@@ -149,6 +150,7 @@ type Cluster struct {
 	RadiusMM Number `json:"radius_mm"` // distance of the centre from the wafer's centre
 	Width    int    `json:"width"`     // extent in dice
 	Height   int    `json:"height"`
+	Why      string `json:"why,omitempty"`
 }
 
 // Signature is a spatial pattern.
@@ -247,13 +249,14 @@ type Test struct {
 	Fit           *Fit         `json:"fit"`
 	Capability    *Capability  `json:"capability"`
 	Loss          Loss         `json:"loss"`
-	LowFails      int          `json:"low_fails"`  // dice below the lower limit
-	HighFails     int          `json:"high_fails"` // dice above the upper limit
-	Marginal      Number       `json:"marginal"`   // share of this test's failing dice that fail by little
-	MarginalMeans string       `json:"marginal_means"`
+	LowFails      int          `json:"low_fails"`      // dice below the lower limit
+	HighFails     int          `json:"high_fails"`     // dice above the upper limit
+	Marginal      Number       `json:"marginal"`       // share of this test's failing dice that fail by little
+	MarginalMeans string       `json:"marginal_means"` // what the share is of, or why there is none
 	LimitCurve    []LimitPoint `json:"yield_against_limit"`
+	LimitWhy      string       `json:"yield_against_limit_why,omitempty"` // why points, or all of it, are not known
 	ByWafer       []WaferLevel `json:"by_wafer"`
-	Repeatability *Repeat      `json:"repeatability"` // from retested dice; null without any
+	Repeatability *Repeat      `json:"repeatability"` // from retested dice
 }
 
 // Censored counts readings known only as bounds.
@@ -393,6 +396,7 @@ type WaferLevel struct {
 	Q75      Number `json:"q75"`
 	Q95      Number `json:"q95"`
 	Fails    int    `json:"fails"` // dice outside a limit of this test
+	Why      string `json:"why,omitempty"`
 }
 
 // Zone is the yield of a ring or a sector over all wafers.

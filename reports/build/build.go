@@ -46,6 +46,7 @@ type lotwork struct {
 	in           Input
 	lot          *ingest.Lot
 	pass         []bool
+	unjudged     string           // why it is not known which dice pass, "" when it is
 	data         []yield.TestData // SI, in the order of lot.Tests
 	losses       yield.Losses
 	first        []int32 // first failing test of each die, -1 for none

@@ -21,7 +21,8 @@ type summary struct {
 // every other, one 'at most' as below, which is right for a clamp or a floor at
 // the end of the range. A quantile or spread that falls among the bounds is not
 // known (NaN). Mean and sd come from the maximum-likelihood normal fit that
-// takes the bounds as bounds; shape (skewness, kurtosis) is not known. Min and max
+// takes the bounds as bounds, without those that are far off the others (an open
+// contact at the clamp is no tail of the junctions' distribution); shape (skewness, kurtosis) is not known. Min and max
 // are of the readings as they stand, bounds included.
 func describe(x []float64, marks []int8, probs []float64) summary {
 	bounds := 0
@@ -31,7 +32,14 @@ func describe(x []float64, marks []int8, probs []float64) summary {
 		}
 	}
 	if bounds == 0 {
-		return summary{Summary: stats.Describe(x, probs)}
+		s := summary{Summary: stats.Describe(x, probs)}
+		switch {
+		case s.N == 0:
+			s.Why = "no readings"
+		case s.N == 1:
+			s.Why = "one reading has no spread"
+		}
+		return s
 	}
 	ordered := make([]float64, len(x))
 	low, high := math.Inf(1), math.Inf(-1)
@@ -56,9 +64,17 @@ func describe(x []float64, marks []int8, probs []float64) summary {
 	if bounds == 1 {
 		s.Why = "1 reading is a bound: the shape is not known"
 	}
-	if fit, err := dist.FitNormal(x, marks); err == nil {
+	near, farLow, farHigh := setAsideBounds(x, marks)
+	if fit, err := dist.FitNormal(near, marks); err == nil {
 		s.Mean, s.SD = fit.Mu, fit.Sigma
-		s.Why += "; mean and sd are from a normal fit that takes them as bounds"
+		switch far := farLow + farHigh; {
+		case far == bounds:
+			s.Why += "; mean and sd are without them, as they are far off the others"
+		case far > 0:
+			s.Why += fmt.Sprintf("; mean and sd are from a normal fit that takes them as bounds, but for %d far off the others, which are left out", far)
+		default:
+			s.Why += "; mean and sd are from a normal fit that takes them as bounds"
+		}
 	}
 	return s
 }

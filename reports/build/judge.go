@@ -36,6 +36,8 @@ func newJudge(lot *ingest.Lot, p *config.Product) judge {
 // rule says in words how dice are judged.
 func (j judge) rule() string {
 	switch {
+	case j.blind():
+		return "not known: the data have no bins and no pass flag, and no test has a limit"
 	case j.useBin:
 		return fmt.Sprintf("a die passes when its bin is one of %v (product file)", j.bins.Pass)
 	case j.hasFlag:
@@ -44,6 +46,19 @@ func (j judge) rule() string {
 		return "a die passes when its bin is 1 (no passing bins in the product file)"
 	}
 	return "no bins in the data: a die passes when every limit holds"
+}
+
+// blind says that nothing tells passing dice from failing ones.
+func (j judge) blind() bool {
+	if j.hasBin || j.hasFlag {
+		return false
+	}
+	for _, t := range j.tests {
+		if finite(t.Lower) || finite(t.Upper) {
+			return false
+		}
+	}
+	return true
 }
 
 // passes judges one reading of a die. hard and soft are ingest.Missing, and flag
@@ -93,6 +108,15 @@ func (w *lotwork) judgeDice() {
 		values[t], marks[t] = lot.Values(t), lot.Censor(t)
 	}
 	w.pass = make([]bool, lot.Len())
+	if j.blind() {
+		w.unjudged = "whether a die passes is " + j.rule()
+		w.note("not-judged", reports.Quality{Severity: "warning", Dice: lot.Len(), Text: w.unjudged, Remedy: "give limits in a product file, or export the bins"})
+		for i := range w.pass {
+			w.pass[i] = true // for the accounts that are over passing dice; no yield is given
+		}
+		w.retested, w.firstPassing = make([]int, len(lot.Wafers())), make([]int, len(lot.Wafers()))
+		return
+	}
 	var row int
 	value := func(t int) (float64, int8) {
 		if marks[t] == nil {
@@ -105,6 +129,31 @@ func (w *lotwork) judgeDice() {
 		w.pass[row] = j.passes(at(hard, row), at(soft, row), flagAt(flag, row), value)
 	}
 	w.firstPass(j)
+	w.tellBlankBins(j)
+}
+
+// tellBlankBins counts the dice that were judged otherwise because their bin is
+// blank where others have one.
+func (w *lotwork) tellBlankBins(j judge) {
+	if !j.hasBin || j.hasFlag && !j.useBin {
+		return
+	}
+	hard, soft := w.lot.HardBin(), w.lot.SoftBin()
+	n := 0
+	for row := range w.pass {
+		if at(hard, row) == ingest.Missing && at(soft, row) == ingest.Missing {
+			n++
+		}
+	}
+	if n == 0 {
+		return
+	}
+	by := "by the limits"
+	if j.hasFlag {
+		by = "by the file's own flag"
+	}
+	w.note("judged-without-bin", reports.Quality{Severity: "warning", Dice: n,
+		Text: fmt.Sprintf("%d dice have no bin where others have one; they are judged %s", n, by), Remedy: "see why the tester gave them no bin"})
 }
 
 // firstPass counts the dice that passed when they were first measured, by wafer.
@@ -148,6 +197,8 @@ func (w *lotwork) testLosses() {
 			w.losses.StopText += "; the order is that of the data file, which differs from the product file's"
 		} else {
 			w.lossesIn(order)
+			w.note("test-order", reports.Quality{Severity: "info", Text: "the product file lists the tests in another order than the data file; dice are charged to the first failing test in the product file's order",
+				Remedy: "list the tests in the order of the program"})
 		}
 	}
 	w.rep.Program.StopOnFail = w.losses.StopOnFail

@@ -21,6 +21,11 @@ func (w *lotwork) lotYield() {
 	}
 	n, k := w.lot.Len(), count(w.pass)
 	y := &w.rep.Yield
+	if w.unjudged != "" {
+		*y = reports.LotYield{Interval: unknown(w.unjudged), Counting: unknown(w.unjudged), FirstPass: reports.NaN,
+			SystematicLoss: reports.NaN, RandomLoss: reports.NaN, LossWhy: w.unjudged, Baseline: w.baselineYield()}
+		return
+	}
 	y.Interval = interval(yield.Process(passing, dice, confidence))
 	counting := yield.Wilson(k, n, confidence)
 	counting.Method = "Wilson, counting only"
@@ -28,10 +33,19 @@ func (w *lotwork) lotYield() {
 	y.Passing = k
 	y.FirstPass = share(first, n)
 	w.lossSplit()
-	y.Baseline = reports.NaN
+	y.Baseline = w.baselineYield()
+}
+
+func (w *lotwork) baselineYield() reports.Number {
 	if p := w.in.Product; p != nil && p.Baseline != nil {
-		y.Baseline = num(p.Baseline.Yield)
+		return num(p.Baseline.Yield)
 	}
+	return reports.NaN
+}
+
+// unknown is an interval of which nothing is known, and why.
+func unknown(why string) reports.Interval {
+	return reports.Interval{Estimate: reports.NaN, Lower: reports.NaN, Upper: reports.NaN, Why: why}
 }
 
 // lossSplit splits the loss into what dice lose one by one and what they lose
@@ -171,8 +185,6 @@ func (w *lotwork) findGeometry() {
 		EdgeExclusionMM: reports.NaN, CentreX: reports.NaN, CentreY: reports.NaN}
 	if !w.lot.HasCoordinates() {
 		g.Why = "the data have no die coordinates: maps, rings and clusters are left out"
-		w.note("no-coordinates", reports.Quality{Severity: "warning", Dice: w.lot.Len(), Text: g.Why,
-			Remedy: "name the coordinate columns in the product file's columns block, if the data have them"})
 		return
 	}
 	w.geo = wafermap.FindGeometry(w.lot.X(), w.lot.Y(), w.known())
@@ -204,7 +216,7 @@ func (w *lotwork) known() wafermap.Known {
 
 // zones fills in the yield of rings of equal area and of sectors, over all wafers.
 func (w *lotwork) zones() {
-	if !w.lot.HasCoordinates() || w.geo.Unit == "" {
+	if !w.lot.HasCoordinates() || w.geo.Unit == "" || w.unjudged != "" {
 		return
 	}
 	rings, sectors := w.in.Settings.Rings, w.in.Settings.Sectors

@@ -25,6 +25,8 @@ func (w *lotwork) pictures() error {
 	state := make([]uint8, w.lot.Len())
 	for i := range state {
 		switch {
+		case w.unjudged != "":
+			state[i] = wafermap.StateOther
 		case w.pass[i]:
 			state[i] = wafermap.StatePass
 		case lead >= 0 && w.first[i] == int32(lead):
@@ -42,7 +44,7 @@ func (w *lotwork) pictures() error {
 		r := w.raster(wafer.ID, picture)
 		for s := wafermap.StatePass; int(s) < len(labels); s++ {
 			c := wafermap.DefaultPalette[s]
-			if picture.Counts[s] > 0 || s == wafermap.StatePass || s == wafermap.StateFail {
+			if picture.Counts[s] > 0 || w.unjudged == "" && (s == wafermap.StatePass || s == wafermap.StateFail) {
 				r.Legend = append(r.Legend, reports.Swatch{R: c.R, G: c.G, B: c.B, Label: labels[s], Dice: picture.Counts[s]})
 			}
 		}
@@ -52,6 +54,9 @@ func (w *lotwork) pictures() error {
 			fail[i] = !w.pass[wafer.Lo+i]
 		}
 		stack.Add(x[wafer.Lo:wafer.Hi], y[wafer.Lo:wafer.Hi], fail)
+	}
+	if w.unjudged != "" {
+		return nil
 	}
 	picture, legend, err := stack.Paint(box)
 	if err != nil {

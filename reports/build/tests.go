@@ -1,9 +1,11 @@
 package build
 
 import (
+	"fmt"
 	"math"
 
 	"kneepoint/config"
+	"kneepoint/ingest"
 	"kneepoint/reports"
 	"kneepoint/stats"
 	"kneepoint/stats/capability"
@@ -53,11 +55,16 @@ func (w *lotwork) testAccount(t int, curve []yield.LimitPoint) reports.Test {
 	}
 	fit, choice, body := w.fit(t, x, marks, r.Histogram)
 	r.Fit = fit
-	if r.Capability = w.capability(t, x, marks); r.Capability != nil {
-		r.Capability.ByPercentiles = w.byPercentiles(t, body, marks, choice)
+	within, aside := withoutGross(x, body, choice)
+	if r.Capability = w.capability(t, within, marks, aside); len(r.Capability.Why) == 0 {
+		r.Capability.ByPercentiles = w.byPercentiles(t, within, marks, choice)
 	}
 	w.testLoss(t, &r)
+	r.LimitWhy = w.curveWhy(test)
 	for _, p := range curve {
+		if p.Upper && test.Upper == 0 || !p.Upper && test.Lower == 0 {
+			continue // a share of zero moves nothing
+		}
 		limit := "lower"
 		if p.Upper {
 			limit = "upper"
@@ -67,6 +74,19 @@ func (w *lotwork) testAccount(t int, curve []yield.LimitPoint) reports.Test {
 	r.ByWafer = w.testByWafer(t, x, marks)
 	r.Repeatability = w.repeatability(t, x, marks)
 	return r
+}
+
+// curveWhy says why the yield against the limits is not known, or not all of it.
+func (w *lotwork) curveWhy(test ingest.Test) string {
+	switch {
+	case !finite(test.Lower) && !finite(test.Upper):
+		return "the test has no limit"
+	case w.losses.StopOnFail:
+		return "the program stops at the first fail: what a wider limit would win is not known"
+	case test.Lower == 0 || test.Upper == 0:
+		return "a limit of zero cannot be moved by a share of itself"
+	}
+	return ""
 }
 
 // over says which dice the distribution of test t is over.
@@ -104,16 +124,37 @@ func (w *lotwork) histogram(x []float64) *reports.Histogram {
 	return h
 }
 
-func (w *lotwork) capability(t int, x []float64, marks []int8) *reports.Capability {
+func (w *lotwork) capability(t int, x []float64, marks []int8, aside int) *reports.Capability {
 	test := w.lot.Tests()[t]
 	lower, upper := float64(shown(test.Lower, test.Unit)), float64(shown(test.Upper, test.Unit))
 	if !finite(lower) && !finite(upper) {
-		return nil
+		none := unknown("the test has no limits")
+		return &reports.Capability{Cp: none, Cpk: none, Pp: none, Ppk: none, Within: reports.NaN, Overall: reports.NaN, Over: "nothing", Why: none.Why}
+	}
+	over := w.over(t) + "; failing dice too"
+	if aside > 0 {
+		over += fmt.Sprintf(", but without %d gross outliers, which no process spread explains and which are counted as losses", aside)
 	}
 	c := capability.Compute(capability.Input{Values: x, Censor: marks, Group: w.waferCode(), Lower: lower, Upper: upper,
 		MinimumN: w.in.Settings.MinimumN, Confidence: confidence})
 	return &reports.Capability{N: c.N, Cp: interval(c.Cp), Cpk: interval(c.Cpk), Pp: interval(c.Pp), Ppk: interval(c.Ppk),
-		Within: num(c.Within), Overall: num(c.Overall), Over: w.over(t) + "; failing dice too", Why: c.Why, Notes: c.Notes}
+		Within: num(c.Within), Overall: num(c.Overall), Over: over, Why: c.Why, Notes: c.Notes}
+}
+
+// withoutGross returns the readings that the fit describes, gross outliers NaN,
+// and how many they are.
+func withoutGross(x, body []float64, c dist.Choice) (within []float64, aside int) {
+	within = make([]float64, len(x))
+	for i, v := range body {
+		within[i] = v
+		if c.AsideLow+c.AsideHigh > 0 && (v < c.AsideFrom || v > c.AsideTo) {
+			within[i] = math.NaN()
+		}
+		if within[i] != v && x[i] == x[i] {
+			aside++
+		}
+	}
+	return within, aside
 }
 
 // byPercentiles is the capability of what the fit describes: gross outliers, which
@@ -124,16 +165,7 @@ func (w *lotwork) byPercentiles(t int, x []float64, marks []int8, c dist.Choice)
 	if c.Empirical {
 		fit = nil
 	}
-	within := x
-	if c.AsideLow+c.AsideHigh > 0 {
-		within = append([]float64(nil), x...)
-		for i, v := range within {
-			if v < c.AsideFrom || v > c.AsideTo {
-				within[i] = math.NaN()
-			}
-		}
-	}
-	p := capability.ByPercentiles(capability.Input{Values: within, Censor: marks, Group: w.waferCode(), MinimumN: w.in.Settings.MinimumN, Confidence: confidence,
+	p := capability.ByPercentiles(capability.Input{Values: x, Censor: marks, Group: w.waferCode(), MinimumN: w.in.Settings.MinimumN, Confidence: confidence,
 		Lower: float64(shown(test.Lower, test.Unit)), Upper: float64(shown(test.Upper, test.Unit))}, fit)
 	ppm := func(i stats.Interval) reports.Interval {
 		i.Estimate, i.Lower, i.Upper = 1e6*i.Estimate, 1e6*i.Lower, 1e6*i.Upper
@@ -147,6 +179,11 @@ func (w *lotwork) testLoss(t int, r *reports.Test) {
 	loss, n := w.losses.Tests[t], w.lot.Len()
 	r.Loss = reports.Loss{First: share(loss.First, n), FirstDice: loss.First, Alone: reports.NaN, Any: reports.NaN}
 	r.LowFails, r.HighFails = loss.Low, loss.High
+	if w.unjudged != "" {
+		r.Loss.First, r.Loss.Why = reports.NaN, w.unjudged
+		r.Marginal, r.MarginalMeans = reports.NaN, w.unjudged
+		return
+	}
 	if w.losses.StopOnFail {
 		r.Loss.Why = "the program stops at the first fail: which other tests a failing die would fail is not known"
 	} else {
@@ -155,7 +192,12 @@ func (w *lotwork) testLoss(t int, r *reports.Test) {
 	}
 	failing := loss.Low + loss.High
 	r.Marginal = share(loss.Marginal, failing)
-	if failing > 0 {
+	switch {
+	case failing == 0:
+		r.MarginalMeans = "no die fails this test"
+	case w.lot.Tests()[t].Lower == 0 || w.lot.Tests()[t].Upper == 0:
+		r.Marginal, r.MarginalMeans = reports.NaN, "not known: a share of a limit of zero is nothing"
+	default:
 		r.MarginalMeans = "share of the dice failing this test that are within " + percent(w.in.Settings.MarginalPercent) + " of the limit"
 	}
 }
@@ -174,6 +216,7 @@ func (w *lotwork) testByWafer(t int, x []float64, marks []int8) []reports.WaferL
 		level := reports.WaferLevel{Wafer: wafer.ID, N: sum.N, Median: num(sum.Median), MADSigma: num(sum.MADSigma),
 			Q05: reports.NaN, Q25: reports.NaN, Q75: reports.NaN, Q95: reports.NaN}
 		if len(sum.Quantiles) == len(waferLevels) {
+			level.Why = sum.Why
 			level.Q05, level.Q25, level.Q75, level.Q95 = num(sum.Quantiles[0]), num(sum.Quantiles[1]), num(sum.Quantiles[2]), num(sum.Quantiles[3])
 		}
 		for i := wafer.Lo; i < wafer.Hi; i++ {
@@ -195,7 +238,7 @@ func (w *lotwork) testByWafer(t int, x []float64, marks []int8) []reports.WaferL
 func (w *lotwork) repeatability(t int, x []float64, marks []int8) *reports.Repeat {
 	index, unit := w.lot.FirstPass().Index, w.lot.Tests()[t].Unit
 	if index == nil {
-		return nil
+		return &reports.Repeat{Sigma: reports.NaN, Shift: reports.NaN, Why: "no die was measured twice"}
 	}
 	early := w.lot.Earlier().Values[t]
 	var first, last []float64

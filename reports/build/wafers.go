@@ -6,6 +6,7 @@ import (
 
 	"kneepoint/reports"
 	"kneepoint/stats"
+	"kneepoint/stats/compare"
 	"kneepoint/stats/yield"
 	"kneepoint/wafermap"
 )
@@ -22,7 +23,12 @@ func (w *lotwork) waferAccount(i int) reports.Wafer {
 	pass := w.pass[wafer.Lo:wafer.Hi]
 	n, passing := len(pass), count(pass)
 	r := reports.Wafer{ID: wafer.ID, Dice: n, Passing: passing, Retested: w.retested[i],
-		FirstPass: share(w.firstPassing[i], n), Attributes: wafer.Attributes}
+		FirstPass: share(w.firstPassing[i], n), Attributes: wafer.Attributes, EpiWhy: noEpi}
+	if w.unjudged != "" {
+		r.Passing, r.FirstPass, r.Yield = 0, reports.NaN, unknown(w.unjudged)
+		r.Spatial.Why = w.unjudged
+		return r
+	}
 	y := yield.Wilson(passing, n, confidence)
 	y.Method = "Wilson, counting only"
 	r.Yield = interval(y)
@@ -72,6 +78,8 @@ func (w *lotwork) spatial(lo, hi int) reports.Spatial {
 		if w.inMM() {
 			dx, dy := (c.CentreX-w.geo.CentreX)*w.geo.DieWidthMM, (c.CentreY-w.geo.CentreY)*w.geo.DieHeightMM
 			rc.RadiusMM = num(math.Hypot(dx, dy))
+		} else {
+			rc.Why = "the die size is not known in millimetres"
 		}
 		s.Clusters = append(s.Clusters, rc)
 	}
@@ -85,7 +93,11 @@ const standsOut = 3
 // compareWafers ranks the wafers and marks those that stand out. The yardstick is
 // the median wafer yield, with the robust spread between wafers and the
 // binomial spread of the wafer's own count, so that a lot of unlike wafers marks
-// few and one bad wafer cannot hide itself by widening the spread.
+// few and one bad wafer cannot hide itself by widening the spread. The binomial
+// spread is of the median yield drawn in by two dice of either kind (Agresti and
+// Coull 1998), so that it is not nothing where most wafers pass whole. Fewer than
+// four wafers are compared each with the others, by Fisher's exact test, with
+// Bonferroni's adjustment for the wafers.
 func (w *lotwork) compareWafers() {
 	wafers := w.rep.Wafers
 	order := make([]int, len(wafers))
@@ -98,19 +110,46 @@ func (w *lotwork) compareWafers() {
 	for rank, i := range order {
 		wafers[i].Rank = rank + 1
 	}
+	if w.unjudged != "" {
+		return
+	}
 	if len(wafers) < 4 {
+		w.compareFew()
 		return
 	}
 	median, spread := stats.Median(yields), stats.MADSigma(yields)
 	for i := range wafers {
-		binomial := median * (1 - median) / float64(max(wafers[i].Dice, 1))
-		sigma := math.Sqrt(spread*spread + binomial)
+		n := float64(wafers[i].Dice)
+		drawn := (median*n + 2) / (n + 4)
+		sigma := math.Sqrt(spread*spread + drawn*(1-drawn)/(n+4))
 		switch d := yields[i] - median; {
-		case sigma == 0:
 		case d < -standsOut*sigma:
 			wafers[i].Stands = "low"
 		case d > standsOut*sigma:
 			wafers[i].Stands = "high"
+		}
+	}
+}
+
+func (w *lotwork) compareFew() {
+	wafers := w.rep.Wafers
+	if len(wafers) < 2 {
+		return
+	}
+	passing, dice := 0, 0
+	for _, x := range wafers {
+		passing, dice = passing+x.Passing, dice+x.Dice
+	}
+	for i := range wafers {
+		x := &wafers[i]
+		others, failing := passing-x.Passing, dice-passing-(x.Dice-x.Passing)
+		p := compare.Fisher([2][2]int{{x.Passing, x.Dice - x.Passing}, {others, failing}}, confidence).P
+		if p*float64(len(wafers)) > 0.0027 { // 3 sigma, two-sided, as above
+			continue
+		}
+		x.Stands = "low"
+		if float64(x.Passing)*float64(dice-x.Dice) > float64(others)*float64(x.Dice) {
+			x.Stands = "high"
 		}
 	}
 }

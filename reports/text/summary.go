@@ -78,6 +78,9 @@ func heading(r *reports.Report) string {
 
 func yieldLine(r *reports.Report) string {
 	y := r.Yield
+	if !y.Estimate.Valid() {
+		return "yield not known: " + y.Why
+	}
 	line := fmt.Sprintf("yield %s", Percent(y.Estimate))
 	if y.Lower.Valid() && y.Upper.Valid() {
 		line += fmt.Sprintf(" (95 %%: %s to %s)", Percent(y.Lower), Percent(y.Upper))
@@ -106,7 +109,7 @@ func (s *sheet) losses(r *reports.Report) {
 		}
 	}
 	if len(rows) == 0 {
-		s.add(false, "no test lost a die")
+		s.noTestLosses(r)
 		return
 	}
 	wide := 14
@@ -120,6 +123,28 @@ func (s *sheet) losses(r *reports.Report) {
 	}
 	if r.Program.StopOnFail {
 		s.add(false, "  the program stops at the first fail: alone and any cannot be known")
+	}
+}
+
+// noTestLosses says what is known of the loss where no test is charged with any.
+func (s *sheet) noTestLosses(r *reports.Report) {
+	lost := r.Dice - r.Yield.Passing
+	if !r.Yield.Estimate.Valid() {
+		return
+	}
+	if lost == 0 {
+		s.add(false, "no die is lost")
+		return
+	}
+	s.add(false, "%s lost, none of them by a reading outside a known limit", plural(lost, "die"))
+	var bins []string
+	for _, b := range r.Bins {
+		if !b.Pass && b.Kind == "hard" && len(bins) < testsShown {
+			bins = append(bins, strings.TrimSpace(fmt.Sprintf("%d %s", b.Bin, b.Name))+" "+Percent(b.Share))
+		}
+	}
+	if len(bins) > 0 {
+		s.add(false, "lost by bin: %s", strings.Join(bins, ", "))
 	}
 }
 
@@ -149,8 +174,8 @@ func wafersLine(r *reports.Report) string {
 		}
 	}
 	if len(low) == 0 {
-		if len(r.Wafers) < 4 {
-			return "wafers    too few to tell whether one stands out"
+		if len(r.Wafers) < 2 {
+			return "wafers    one only"
 		}
 		return "wafers    none stands out from the rest of the lot"
 	}
@@ -181,6 +206,9 @@ func clusterLine(r *reports.Report) string {
 		}
 	}
 	if tested == 0 {
+		if r.Geometry.Source == "" && r.Geometry.Why != "" {
+			return "maps      " + r.Geometry.Why
+		}
 		return ""
 	}
 	return fmt.Sprintf("maps      fails lie together by more than chance on %d of %s (join count)", clustered, plural(tested, "wafer"))
@@ -230,6 +258,9 @@ func Percent(n reports.Number) string {
 		return "n/a"
 	}
 	v := 100 * float64(n)
+	if v != 0 && math.Abs(v) < 0.005 {
+		return "< 0.01 %"
+	}
 	if v != 0 && math.Abs(v) < 0.05 {
 		return fmt.Sprintf("%.2g %%", v)
 	}

@@ -1,4 +1,5 @@
-// Charts: drawn when they come into view, all of them before printing.
+// Charts: drawn when they come into view; the others one by one while the page
+// is idle, but for those in closed cards; all of them before printing.
 
 // Width in pixels of a chart on paper, alone or beside another: what fits an A4
 // or a letter page.
@@ -95,6 +96,15 @@ function startCharts() {
     seen.observe(element);
     sized.observe(element);
   }
+  const waiting = [...all].filter((element) => !element.closest("details:not([open])"));
+  const next = () => {
+    const element = waiting.shift();
+    if (!element) return;
+    seen.unobserve(element);
+    drawChart(element);
+    setTimeout(next);
+  };
+  setTimeout(next);
 }
 
 let printing = false;
