@@ -33,10 +33,6 @@ var referenceMethods = map[string]referenceMethod{
 	}},
 }
 
-// referencePending are methods that belong to rooms not built yet, by room.
-var referencePending = map[string]string{
-}
-
 // referenceWafermap are the methods that package wafermap answers in a driver of
 // its own.
 var referenceWafermap = []string{

@@ -126,8 +126,7 @@ func RobustDistance(columns [][]float64) Robust {
 		r.Why = "most dice lie in a plane: a test is computed from others, or has few different values"
 		return r
 	}
-	p := float64(m.p)
-	r.Factor = 0.975 / (1 - tail.ChiSquared(r.Cutoff(0.975), p+2))
+	r.Factor = consistency(limit*math.Exp((raw.logDet-final.logDet)/float64(m.p)), float64(m.p))
 	r.Location, r.Covariance = m.inUnits(final)
 	for _, row := range r.Covariance {
 		for j := range row {
@@ -138,6 +137,31 @@ func RobustDistance(columns [][]float64) Robust {
 		r.Squared[m.rows[k]] = v / r.Factor
 	}
 	return r
+}
+
+// consistency is by how much the covariance of a normal population cut off at an
+// ellipse falls short, from the squared radius b of that ellipse in the cut-off
+// covariance's own metric. With rho the squared radius in the true one,
+//
+//	factor = F(rho; p) / F(rho; p+2),  b = rho factor,  F chi-square
+//
+// Taking b as it came out, rather than the 97.5 % that was aimed at, keeps the
+// factor right when a large share of outliers has inflated the raw estimate.
+func consistency(b, p float64) float64 {
+	factor := func(rho float64) float64 { return (1 - tail.ChiSquared(rho, p)) / (1 - tail.ChiSquared(rho, p+2)) }
+	lo, hi := 1e-3, b
+	if !(lo*factor(lo) < b) { // cut off to next to nothing, which no ellipse of half the dice is
+		return 1
+	}
+	for range 100 {
+		mid := lo + (hi-lo)/2
+		if mid*factor(mid) < b {
+			lo = mid
+		} else {
+			hi = mid
+		}
+	}
+	return factor(lo)
 }
 
 // mcd is the data, seen in units of each column's median and spread.
@@ -308,8 +332,7 @@ func kth(d []float64, h int) float64 {
 		slices.Sort(v)
 		return v[h-1]
 	}
-	// Type 7 puts the order statistic h at (h-1)/(n-1); it may round to a neighbour
-	// of it, which moves the subset by one die.
+	// Type 7 puts the order statistic h at (h-1)/(n-1).
 	return stats.Quantiles(d, []float64{float64(h-1) / float64(len(d)-1)}, stats.HyndmanFan7)[0]
 }
 
@@ -373,7 +396,7 @@ func (m *mcd) search(h int) (ellipse, bool) {
 		return ellipse{}, false
 	}
 	for i := range best {
-		best[i] = m.settle(best[i], rows, part, 100)
+		best[i] = m.settle(best[i], rows, part, 100, 1e-10)
 	}
 	slices.SortStableFunc(best, func(a, b ellipse) int {
 		switch {
@@ -385,19 +408,19 @@ func (m *mcd) search(h int) (ellipse, bool) {
 		return 0
 	})
 	if len(m.rows) > len(rows) {
-		return m.settle(best[0], m.rows, h, 30), true
+		return m.settle(best[0], m.rows, h, 30, 1e-6), true
 	}
 	return best[0], true
 }
 
-// settle takes steps until the determinant stands still.
-func (m *mcd) settle(e ellipse, rows []int32, h, steps int) ellipse {
+// settle takes steps until the logarithm of the determinant stands still.
+func (m *mcd) settle(e ellipse, rows []int32, h, steps int, still float64) ellipse {
 	for range steps {
 		next, ok := m.concentrate(e, rows, h)
 		if !ok {
 			return e
 		}
-		done := !(next.logDet < e.logDet-1e-10)
+		done := !(next.logDet < e.logDet-still)
 		e = next
 		if done {
 			break
