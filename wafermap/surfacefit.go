@@ -1,0 +1,395 @@
+package wafermap
+
+import (
+	"fmt"
+	"math"
+
+	"gonum.org/v1/gonum/mat"
+
+	"kneepoint/stats"
+)
+
+const (
+	tukeyTuning   = 4.685  // of the biweight: 95 % as efficient as least squares on normal data
+	madFactor     = 1.4826 // from a median absolute deviation to the standard deviation of normal data
+	surfaceRounds = 12
+	surfaceFolds  = 5
+	scaleSample   = 4000 // dice that the scale is taken from on the way
+)
+
+// Fit fits a smooth surface to a value, robustly. value has one element a row of the
+// coordinates; NaN and infinite values take no part. site, if not nil, names each row's test
+// site (Missing where not known).
+//
+// The fit is that of Zernike terms by iterated weighted least squares with Tukey's
+// biweight (Beaton and Tukey 1974, Technometrics 16, 147), started from medians of
+// zones, the scale being 1.4826 times the median absolute deviation. Orders up to six are
+// compared by five-fold cross-validation with the weights of the highest; the lowest order
+// whose error is within one standard error of the least is kept (Breiman and others 1984,
+// Classification and Regression Trees). Folds follow from the coordinates, so that the
+// order of rows does not matter.
+//
+// Intervals are t intervals with a covariance clustered by 64 blocks of the wafer (Liang
+// and Zeger 1986, Biometrika 73, 13); that of Tilt, which cannot be negative, comes from the
+// noncentral chi-squared distribution of its square.
+//
+// Fewer than 12 dice with a value, or dice that do not tell even a tilt from a constant,
+// give a surface of NaN with a Why.
+func (b *SurfaceBasis) Fit(value []float64, site []int32) Surface {
+	if len(value) != b.slots || site != nil && len(site) != b.slots {
+		panic("wafermap: value or site and coordinates differ in length")
+	}
+	if b.why != "" {
+		return b.failed(0, b.why)
+	}
+	w := b.work(value)
+	switch {
+	case len(w.y) < fewestSurface:
+		return b.failed(len(w.y), fmt.Sprintf("%d dice with a value: at least %d are needed", len(w.y), fewestSurface))
+	case !(w.scale0 > 0):
+		return b.failed(len(w.y), "the value is the same on most dice")
+	}
+	if !w.robust() {
+		return b.failed(len(w.y), "the dice do not tell a tilt from a constant")
+	}
+	s := b.failed(len(w.y), "")
+	w.compareOrders(&s)
+	w.keep(&s)
+	w.shape(&s)
+	w.variances(&s, value, site)
+	return s
+}
+
+// surfaceWork is one fit under way.
+type surfaceWork struct {
+	b        *SurfaceBasis
+	at       []int32 // places in b.rows with a value
+	y        []float64
+	weight   []float64
+	near     []float64 // y less what the surface changes from the cell's mean to the die
+	mean     float64   // taken off y
+	scale0   float64   // robust scale of y
+	scale    float64   // robust scale about the surface
+	terms    int       // that the dice can tell
+	selector stats.Selector
+	beta     [monomials]float64
+}
+
+func (b *SurfaceBasis) work(value []float64) *surfaceWork {
+	w := &surfaceWork{b: b}
+	for i, r := range b.rows {
+		if v := value[r]; !math.IsNaN(v) && !math.IsInf(v, 0) {
+			w.at, w.y = append(w.at, int32(i)), append(w.y, v)
+		}
+	}
+	if len(w.y) == 0 {
+		return w
+	}
+	w.mean, w.scale0 = w.selector.MedianMADSigma(w.y)
+	for i := range w.y {
+		w.y[i] -= w.mean
+	}
+	w.weight, w.near = make([]float64, len(w.y)), make([]float64, len(w.y))
+	return w
+}
+
+// normal are weighted sums over cells.
+type normal struct{ w, wy []float64 }
+
+func (b *SurfaceBasis) newNormal() normal {
+	return normal{make([]float64, len(b.cells)), make([]float64, len(b.cells))}
+}
+
+func (w *surfaceWork) sums() normal {
+	s := w.b.newNormal()
+	for i, p := range w.at {
+		c := w.b.cell[p]
+		s.w[c] += w.weight[i]
+		s.wy[c] += w.weight[i] * w.near[i]
+	}
+	return s
+}
+
+// equations are the normal equations of some terms.
+func (w *surfaceWork) equations(s normal, terms int) (a *mat.SymDense, b *mat.VecDense) {
+	a, b = mat.NewSymDense(terms, nil), mat.NewVecDense(terms, nil)
+	data, rhs := a.RawSymmetric().Data, b.RawVector().Data
+	for c := range s.w {
+		if s.w[c] == 0 {
+			continue
+		}
+		z := w.b.cells[c].z[:terms]
+		for j, zj := range z {
+			rhs[j] += s.wy[c] * zj
+			f := s.w[c] * zj
+			row := data[j*terms : (j+1)*terms]
+			for k := j; k < terms; k++ {
+				row[k] += f * z[k]
+			}
+		}
+	}
+	return a, b
+}
+
+// tells reports whether the first terms of a can be told apart: no term may be almost a
+// sum of those before it.
+func tells(a *mat.SymDense, terms int) bool {
+	var c mat.Cholesky
+	if !c.Factorize(a.SliceSym(0, terms)) {
+		return false
+	}
+	var l mat.TriDense
+	c.LTo(&l)
+	for j := range terms {
+		if l.At(j, j)*l.At(j, j) < 1e-3*a.At(j, j) {
+			return false
+		}
+	}
+	return true
+}
+
+func solve(a *mat.SymDense, b *mat.VecDense, terms int) (x []float64, ok bool) {
+	var c mat.Cholesky
+	if !c.Factorize(a.SliceSym(0, terms)) {
+		return nil, false
+	}
+	x = make([]float64, terms)
+	return x, c.SolveVecTo(mat.NewVecDense(terms, x), b.SliceVec(0, terms).(*mat.VecDense)) == nil
+}
+
+func termsOf(order int) int { return (order + 1) * (order + 2) / 2 }
+
+// robust fits the highest order that the dice can tell.
+func (w *surfaceWork) robust() bool {
+	for i := range w.weight {
+		w.weight[i], w.near[i] = 1, w.y[i]
+	}
+	a, _ := w.equations(w.sums(), monomials)
+	for order := surfaceOrder; order > 0; order-- {
+		if t := termsOf(order); 5*t <= len(w.y) && tells(a, t) {
+			w.terms = t
+			break
+		}
+	}
+	if w.terms == 0 && tells(a, 3) {
+		w.terms = 3
+	}
+	if w.terms == 0 {
+		return false
+	}
+	w.start()
+	for range surfaceRounds {
+		w.weigh()
+		a, b := w.equations(w.sums(), w.terms)
+		x, ok := solve(a, b, w.terms)
+		if !ok {
+			return false
+		}
+		moved := 0.0
+		for j := range x {
+			moved += sq(x[j] - w.beta[j])
+		}
+		copy(w.beta[:], x)
+		if moved < sq(1e-4*w.scale) {
+			break
+		}
+	}
+	w.weigh()
+	return true
+}
+
+// start fits six terms to the medians of zones: half the dice of a zone may be outliers.
+func (w *surfaceWork) start() {
+	const rings, sectors = 5, 8
+	var zone [rings * sectors][]float64
+	var u, v [rings * sectors]float64
+	for k := range zone {
+		zone[k] = make([]float64, 0, 2*len(w.at)/len(zone)+8)
+	}
+	for i, p := range w.at {
+		k := ring(w.b.u[p], w.b.v[p], 1, rings)*sectors + sector(w.b.u[p], w.b.v[p], sectors)
+		zone[k] = append(zone[k], w.y[i])
+		u[k] += w.b.u[p]
+		v[k] += w.b.v[p]
+	}
+	terms := min(w.terms, 6)
+	a, b := mat.NewSymDense(terms, nil), mat.NewVecDense(terms, nil)
+	for k, values := range zone {
+		if len(values) == 0 {
+			continue
+		}
+		var m [monomials]float64
+		n := float64(len(values))
+		powers(&m, u[k]/n, v[k]/n)
+		middle := w.selector.Median(values)
+		n = min(n, 20)
+		z := make([]float64, terms)
+		for t := range z {
+			for j, p := range zernikePowers[t] {
+				z[t] += p * m[j]
+			}
+		}
+		for j := range z {
+			b.SetVec(j, b.AtVec(j)+n*z[j]*middle)
+			for i := j; i < terms; i++ {
+				a.SetSym(j, i, a.At(j, i)+n*z[j]*z[i])
+			}
+		}
+	}
+	for ; terms > 0; terms-- {
+		if tells(a, terms) {
+			if x, ok := solve(a, b, terms); ok {
+				copy(w.beta[:], x)
+				break
+			}
+		}
+	}
+}
+
+// weigh sets the weights from the distances to the surface.
+func (w *surfaceWork) weigh() {
+	type plane struct{ s, su, sv float64 }
+	planes := make([]plane, len(w.b.cells))
+	for c := range w.b.cells {
+		cell := &w.b.cells[c]
+		for j := range w.terms {
+			planes[c].s += w.beta[j] * cell.z[j]
+			planes[c].su += w.beta[j] * cell.zu[j]
+			planes[c].sv += w.beta[j] * cell.zv[j]
+		}
+	}
+	stride := max(1, len(w.y)/scaleSample)
+	sample := make([]float64, 0, scaleSample+1)
+	for i, p := range w.at {
+		c := w.b.cell[p]
+		cell := &w.b.cells[c]
+		w.near[i] = w.y[i] - planes[c].su*(w.b.u[p]-cell.u) - planes[c].sv*(w.b.v[p]-cell.v)
+		w.weight[i] = w.near[i] - planes[c].s // for now the residual
+		if i%stride == 0 {
+			sample = append(sample, math.Abs(w.weight[i]))
+		}
+	}
+	w.scale = max(madFactor*w.selector.Median(sample), 1e-6*w.scale0)
+	for i, r := range w.weight {
+		t := r / (tukeyTuning * w.scale)
+		w.weight[i] = 0
+		if t*t < 1 {
+			w.weight[i] = sq(1 - t*t)
+		}
+	}
+}
+
+// compareOrders chooses the order by cross-validation.
+func (w *surfaceWork) compareOrders(s *Surface) {
+	orders := 0
+	for termsOf(orders+1) <= w.terms {
+		orders++
+	}
+	var loss [surfaceOrder + 1][surfaceFolds]float64
+	var held [surfaceFolds]normal
+	var square [surfaceFolds]float64
+	for fold := range held {
+		held[fold] = w.b.newNormal()
+	}
+	total := 0.0
+	for i, p := range w.at {
+		c, fold := w.b.cell[p], w.b.fold[p]
+		wy := w.weight[i] * w.near[i]
+		held[fold].w[c] += w.weight[i]
+		held[fold].wy[c] += wy
+		square[fold] += wy * w.near[i]
+		total += w.weight[i]
+	}
+	for fold, out := range held {
+		in := w.b.newNormal()
+		for other := range held {
+			if other != fold {
+				for c := range in.w {
+					in.w[c] += held[other].w[c]
+					in.wy[c] += held[other].wy[c]
+				}
+			}
+		}
+		a, b := w.equations(in, w.terms)
+		for order := range orders + 1 {
+			x, ok := solve(a, b, termsOf(order))
+			if !ok {
+				loss[order][fold] = math.Inf(1)
+				continue
+			}
+			l := square[fold]
+			for c := range out.w {
+				if out.w[c] == 0 {
+					continue
+				}
+				fitted := 0.0
+				for j, v := range x {
+					fitted += v * w.b.cells[c].z[j]
+				}
+				l += fitted * (fitted*out.w[c] - 2*out.wy[c])
+			}
+			loss[order][fold] = l
+		}
+	}
+	var sum [surfaceOrder + 1]float64
+	best := 0
+	for order := range orders + 1 {
+		for _, l := range loss[order] {
+			sum[order] += l
+		}
+		s.CV = append(s.CV, math.Sqrt(max(0, sum[order])/total))
+		if sum[order] < sum[best] {
+			best = order
+		}
+	}
+	for order := range best + 1 {
+		var d, dd float64
+		for fold := range surfaceFolds {
+			x := loss[order][fold] - loss[best][fold]
+			d += x
+			dd += x * x
+		}
+		// standard error of a sum of five differences
+		if order == best || d <= math.Sqrt(max(0, (dd-d*d/surfaceFolds)*surfaceFolds/(surfaceFolds-1))) {
+			s.Order, s.Terms = order, termsOf(order)
+			break
+		}
+	}
+}
+
+// keep fits the chosen order with the weights of the highest.
+func (w *surfaceWork) keep(s *Surface) {
+	a, b := w.equations(w.sums(), s.Terms)
+	x, _ := solve(a, b, s.Terms)
+	s.Coefficients = x
+	var c mat.Cholesky
+	c.Factorize(a)
+	var l mat.TriDense
+	c.LTo(&l)
+	sum := 0.0
+	for i := range w.weight {
+		sum += w.weight[i]
+	}
+	x[0] += w.mean
+	s.Orthogonal = make([]float64, s.Terms)
+	for j := range s.Terms { // the terms are the rows of L times orthogonal ones
+		for i := j; i < s.Terms; i++ {
+			s.Orthogonal[j] += l.At(i, j) * x[i] / math.Sqrt(sum)
+		}
+	}
+	for t, v := range x {
+		for j, p := range zernikePowers[t] {
+			s.coefficients[j] += v * p
+		}
+	}
+	away := make([]float64, 0, len(w.y))
+	for i, p := range w.at {
+		r := w.y[i] + w.mean - polynomial(&s.coefficients, w.b.u[p], w.b.v[p])
+		s.Residual[w.b.rows[p]] = r
+		away = append(away, math.Abs(r))
+		if w.weight[i] == 0 {
+			s.Outliers++
+		}
+	}
+	s.Noise = madFactor * w.selector.Median(away)
+}
