@@ -154,7 +154,7 @@ type surfaceCell struct {
 const (
 	cellsAcross   = 48   // cells of dice across the disc, where there are many
 	diceAsCells   = 2500 // dice up to which each is a cell
-	blocksAcross  = 8
+	blocksAcross  = 8    // at most, and six dice wide at least
 	rollOffFrom   = 0.8
 	fewestSurface = 12 // dice
 )
@@ -236,6 +236,7 @@ func (b *SurfaceBasis) group() {
 		c.edge += edgeTerm(math.Hypot(b.u[i], b.v[i]))
 		count[k]++
 	}
+	blocks := int32(min(max(math.Sqrt(4/math.Pi*float64(len(b.rows)))/6, 4), blocksAcross))
 	for k := range b.cells {
 		c := &b.cells[k]
 		c.u /= count[k]
@@ -256,8 +257,8 @@ func (b *SurfaceBasis) group() {
 				c.zv[t] += p * mv[j]
 			}
 		}
-		at := func(x float64) int32 { return min(max(int32((x+1)/2*blocksAcross), 0), blocksAcross-1) }
-		c.block = at(c.v)*blocksAcross + at(c.u)
+		at := func(x float64) int32 { return min(max(int32((x+1)/2*float64(blocks)), 0), blocks-1) }
+		c.block = at(c.v)*blocks + at(c.u)
 	}
 }
 

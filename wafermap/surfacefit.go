@@ -29,7 +29,7 @@ const (
 // Classification and Regression Trees). Folds follow from the coordinates, so that the
 // order of rows does not matter.
 //
-// Intervals are t intervals with a covariance clustered by 64 blocks of the wafer (Liang
+// Intervals are t intervals with a covariance clustered by 16 to 64 blocks of the wafer (Liang
 // and Zeger 1986, Biometrika 73, 13); that of Tilt, which cannot be negative, comes from the
 // noncentral chi-squared distribution of its square.
 //
