@@ -410,12 +410,21 @@ type Zone struct {
 	Yield Interval `json:"yield"`
 }
 
-// Screen, Variance, Group and Association belong to later issues.
+// Screen is one screen for dice that pass every limit and still do not belong, and
+// what it would cost. Screening is a proposal.
 type Screen struct {
-	Name string `json:"name"`
-	Dice int    `json:"dice"`
-	Loss Number `json:"loss"`
-	Text string `json:"text"`
+	Name       string `json:"name"`
+	Test       string `json:"test"`  // "" for a screen over several
+	Dice       int    `json:"dice"`  // passing dice that it would take
+	Extra      int    `json:"extra"` // of them, those that no screen above in the list takes
+	Loss       Number `json:"loss"`  // of yield, as a share of all tested dice
+	LossLower  Number `json:"loss_lower"`
+	LossUpper  Number `json:"loss_upper"`
+	LowerLimit Number `json:"lower_limit"` // part average limits, in the test's unit
+	UpperLimit Number `json:"upper_limit"`
+	Unit       string `json:"unit"`
+	Text       string `json:"text"`
+	Why        string `json:"why,omitempty"` // why there is no number
 }
 
 // Variance is one level's part of a test's spread over passing dice.

@@ -75,6 +75,9 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 	if err := w.spread(ctx); err != nil {
 		return nil, err
 	}
+	if err := w.screens(ctx); err != nil {
+		return nil, err
+	}
 	w.associate()
 	w.lotYield()
 	w.bins()

@@ -135,7 +135,13 @@ type others struct {
 func newOthers(r *reports.Report) (others, error) {
 	o := others{Tables: otherTables(r)}
 	c, err := spreadChart(r.Variance)
+	if err != nil {
+		return o, err
+	}
 	if c != nil {
+		o.Charts = append(o.Charts, *c)
+	}
+	if c, err = screenChart(r.Screens); c != nil {
 		o.Charts = append(o.Charts, *c)
 	}
 	return o, err
@@ -170,9 +176,20 @@ func otherTables(r *reports.Report) []table {
 		associations.Rows = append(associations.Rows, []cell{text(a.Of), text(a.With), number(effect, a.Effect.Estimate), text(between), number(pValue(a.Adjusted), a.Adjusted), {Text: a.Text, Class: "wide"}})
 	}
 	add(associations)
-	screens := table{Caption: "Screens for outlying dice", Sortable: true, Columns: []column{{Name: "Screen"}, {Name: "Dice", Numeric: true}, {Name: "Yield cost", Numeric: true}, {Name: "Text", Plain: true}}}
+	screens := table{Caption: "Screens for passing dice that do not belong, and what each would cost", Sortable: true, Columns: []column{{Name: "Screen"}, {Name: "Test"}, {Name: "Limits", Plain: true}, {Name: "Passing dice", Numeric: true}, {Name: "Extra", Numeric: true, Help: "dice that no screen above takes"}, {Name: "Yield cost", Numeric: true}, {Name: "How", Plain: true}}}
 	for _, s := range r.Screens {
-		screens.Rows = append(screens.Rows, []cell{text(s.Name), counted(s.Dice), number(percent(s.Loss), s.Loss), {Text: s.Text, Class: "wide"}})
+		limits := ""
+		if s.LowerLimit.Valid() && s.UpperLimit.Valid() {
+			limits = withUnit(value(s.LowerLimit)+" to "+value(s.UpperLimit), s.Unit)
+		}
+		how := s.Text
+		if s.Why != "" {
+			how = notAvailable + ": " + s.Why
+		}
+		screens.Rows = append(screens.Rows, []cell{text(s.Name), text(s.Test), text(limits), counted(s.Dice), counted(s.Extra), number(percent(s.Loss), s.Loss), {Text: how, Class: "wide"}})
+	}
+	if len(screens.Rows) > 0 {
+		screens.Note = "Screening is a proposal: which dice are scrapped is for the people who answer for the product, under site rules and customer agreements."
 	}
 	add(screens)
 	return out

@@ -126,3 +126,32 @@ func spreadChart(rows []reports.Variance) (*chart, error) {
 	done, err := c.finish(b.JSON(), columns, table, series...)
 	return &done, err
 }
+
+// screenChart draws what each screen would cost in yield.
+func screenChart(screens []reports.Screen) (*chart, error) {
+	var names []string
+	var data []opts.BarData
+	var rows [][]string
+	for _, s := range screens {
+		if !s.Loss.Valid() || s.Dice == 0 || len(names) == 2*chartedTests {
+			continue
+		}
+		name := s.Name
+		if s.Test != "" {
+			name = s.Test
+		}
+		names = append(names, name)
+		data = append(data, opts.BarData{Value: plot(100 * s.Loss)})
+		rows = append(rows, []string{name, count(s.Dice), percent(s.Loss)})
+	}
+	if len(names) == 0 {
+		return nil, nil
+	}
+	c := chart{ID: "chart-screens", Height: 60 + 22*len(names), Label: "Yield that each screen would cost. The numbers are in the table below.", Key: []keyEntry{{"any", "yield cost of each screen; a test's name stands for its part average limits"}}}
+	b := charts.NewBar()
+	b.SetGlobalOptions(append(globals(c.ID, c.Label, "shadow", opts.Grid{Left: "8", Right: "24", Top: "8", Bottom: "40"}), charts.WithXAxisOpts(percentX("share of tested dice")), charts.WithYAxisOpts(categoryY(names)))...)
+	b.AddSeries("cost", data, charts.WithBarChartOpts(opts.BarChart{BarCategoryGap: "40%"}), charts.WithItemStyleOpts(opts.ItemStyle{Color: colourAny}))
+	b.Accept(house{})
+	done, err := c.finish(b.JSON(), []string{"Screen", "Dice", "Yield cost"}, rows, each)
+	return &done, err
+}
