@@ -35,16 +35,19 @@ type extremes struct {
 }
 
 // survey takes that pass; odd, if not nil, counts the cells that were no
-// numbers, and makes plain NaN of them.
+// numbers, and makes plain NaN of them, but for bounds.
 func survey(v []float64, odd map[status]int) extremes {
 	e := extremes{least: math.Inf(1), most: math.Inf(-1)}
 	for i, x := range v {
 		if x != x {
 			if odd != nil {
-				if st := nanStatus(x); st != cellEmpty {
+				st := nanStatus(x)
+				if st != cellEmpty {
 					odd[st]++
 				}
-				v[i] = math.NaN()
+				if st != cellOver && st != cellUnder && st != cellBound {
+					v[i] = math.NaN() // those are still to be worked out
+				}
 			}
 			continue
 		}
@@ -65,7 +68,7 @@ func survey(v []float64, odd map[status]int) extremes {
 	return e
 }
 
-// numbers is the first look at a column: odd cells and sentinels.
+// numbers is the first look at a column: odd cells, sentinels and bounds.
 func (d *draft) numbers(test int) []Finding {
 	odd := map[status]int{}
 	d.seen[test] = survey(d.values[test], odd)
@@ -74,7 +77,7 @@ func (d *draft) numbers(test int) []Finding {
 		d.seen[test] = survey(d.values[test], nil)
 		findings = append(findings, s...)
 	}
-	return findings
+	return append(findings, d.overRange(test, odd)...)
 }
 
 // bounds is the second look, at the dice that count: missing and censored
@@ -99,8 +102,6 @@ func (d *draft) oddCells(test int, counts map[status]int) []Finding {
 	}{
 		{cellBad, Warning, "unreadable-value", "cell is no number", "cells are no numbers", "correct the cells"},
 		{cellInf, Warning, "not-finite", "value is infinite", "values are infinite", "find out what the tester wrote there"},
-		{cellOver, Warning, "out-of-range", "cell holds a word for out of range", "cells hold a word for out of range",
-			"export the tester's largest value instead, so that it counts as a bound"},
 		{cellInvalid, Warning, "invalid-result", "result is flagged by the tester as not to be used", "results are flagged by the tester as not to be used",
 			"look at the tester's alarms for this test"},
 		{cellMissing, Info, "missing-word", "cell holds a word for no reading", "cells hold a word for no reading", ""},
@@ -114,10 +115,22 @@ func (d *draft) oddCells(test int, counts map[status]int) []Finding {
 		if text != "" {
 			first = ", first " + quote(text)
 		}
+		unjudged := ""
+		if k.kind != cellMissing {
+			unjudged = d.unjudged(test, n)
+		}
 		findings = append(findings, Finding{Code: k.code, Severity: k.severity, Dice: n, Remedy: k.remedy,
-			Text: fmt.Sprintf("%stest %s: %d %s%s; taken as missing", at, d.tests[test].name, n, plural(n, k.one, k.many), first)})
+			Text: fmt.Sprintf("%stest %s: %d %s%s; taken as missing%s", at, d.tests[test].name, n, plural(n, k.one, k.many), first, unjudged)})
 	}
 	return findings
+}
+
+// unjudged says what is lost with readings of a test that has limits.
+func (d *draft) unjudged(test, n int) string {
+	if t := &d.tests[test]; t.lower != t.lower && t.upper != t.upper {
+		return ""
+	}
+	return plural(n, ", so that this die cannot be judged on this test", ", so that these dice cannot be judged on this test")
 }
 
 // missing counts the readings of one test that are missing in the end.

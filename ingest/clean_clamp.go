@@ -155,6 +155,37 @@ func distinct(v []float64, not float64) int {
 // a pile-up at the extreme value does.
 func (d *draft) clamps(test int) ([]int8, []Finding) {
 	c := clamping{v: d.values[test], e: d.seen[test], info: &d.tests[test]}
+	if bounds := d.marks[test]; bounds != nil {
+		return c.beside(bounds)
+	}
+	c.all()
+	return c.mark, c.findings
+}
+
+// beside looks at the readings that are not bounds from the first: these say
+// nothing of where the tester clamps.
+func (c *clamping) beside(bounds []int8) ([]int8, []Finding) {
+	column := c.v
+	c.v = slices.Clone(column)
+	for i, m := range bounds {
+		if m != 0 {
+			c.v[i] = math.NaN()
+		}
+	}
+	c.e = survey(c.v, nil)
+	c.all()
+	c.need()
+	for i, m := range bounds {
+		if m != 0 {
+			c.mark[i] = m
+		} else {
+			column[i] = c.v[i]
+		}
+	}
+	return c.mark, c.findings
+}
+
+func (c *clamping) all() {
 	c.known(1, c.info.clamp, "clamp")
 	c.known(-1, c.info.floor, "floor")
 	if c.up == 0 {
@@ -166,7 +197,6 @@ func (d *draft) clamps(test int) ([]int8, []Finding) {
 	if c.up == 0 && c.down == 0 {
 		c.stuck()
 	}
-	return c.mark, c.findings
 }
 
 type clamping struct {

@@ -19,7 +19,7 @@ func (s *retesting) fillPartial(own []int32, chosen int32) {
 		stop = at + 1
 	}
 	filled := false
-	for t, v := range d.values {
+	for t := range d.values {
 		if d.has(t, chosen) || d.tests[t].place >= stop {
 			continue
 		}
@@ -28,7 +28,8 @@ func (s *retesting) fillPartial(own []int32, chosen int32) {
 			if !d.earlierThan(r, chosen) || !d.has(t, r) {
 				continue
 			}
-			v[chosen], filled = v[r], true
+			d.copyReading(t, r, chosen)
+			filled = true
 			break
 		}
 	}

@@ -125,9 +125,9 @@ func (s *retesting) join(rows []int32) {
 	d, last := s.d, rows[len(rows)-1]
 	for i := len(rows) - 2; i >= 0; i-- {
 		r := rows[i]
-		for _, v := range d.values {
-			if v[last] != v[last] {
-				v[last] = v[r]
+		for t := range d.values {
+			if !d.has(t, last) {
+				d.copyReading(t, r, last)
 			}
 		}
 		for slot, c := range d.ints {
@@ -454,6 +454,7 @@ func (d *draft) compact(keep []int32, n int) {
 	}
 	for t := range d.values {
 		d.values[t] = kept(d.values[t], keep, n)
+		d.marks[t] = kept(d.marks[t], keep, n)
 	}
 	d.n, d.compacted = n, true
 }

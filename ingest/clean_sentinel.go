@@ -174,7 +174,7 @@ func (d *draft) sentinels(test int) []Finding {
 	for _, s := range findSentinels(d.values[test], d.seen[test], info.fileUnits, info.clamp, info.floor) {
 		u := info.fileUnits[0]
 		findings = append(findings, Finding{Code: "sentinel", Severity: Warning, Dice: s.n,
-			Text:   fmt.Sprintf("test %s: %d %s %s, a number that stands for no reading; taken as missing", info.name, s.n, plural(s.n, "reading is", "readings are"), show(s.value, u)),
+			Text:   fmt.Sprintf("test %s: %d %s %s, a number that stands for no reading; taken as missing%s", info.name, s.n, plural(s.n, "reading is", "readings are"), show(s.value, u), d.unjudged(test, s.n)),
 			Remedy: "leave the cell empty in the export; if the readings are real, say so to whoever owns the test program"})
 	}
 	return findings

@@ -486,3 +486,76 @@ func TestEveryRowIsAccountedFor(t *testing.T) {
 		}
 	}
 }
+
+// Readings beyond the tester's range are bounds, not missing.
+func TestOverRange(t *testing.T) {
+	nan := math.NaN()
+	clamp := aProduct(config.Test{Name: "A", Unit: unit("V"), Clamp: 80, Floor: 0.5})
+	for _, c := range []struct {
+		name    string
+		cells   string // of test A, blanks between them
+		product *config.Product
+		limits  string // lower upper, _ for none
+		want    []float64
+		marks   []int8
+		codes   string
+	}{
+		{"bounds", ">1000 <0.01 >=5 <=6e-3 7", nil, "_ _", []float64{1000, 0.01, 5, 6e-3, 7}, []int8{1, -1, 1, -1, 0}, "over-range:4"},
+		{"negative bound", ">-1234.5678901 <-3 7", nil, "_ _", []float64{-1234.5678901, -3, 7}, []int8{1, -1, 0}, "over-range:2"},
+		{"words, no limit", "OL 3 7 OVERRANGE over", nil, "_ _", []float64{7, 3, 7, 7, 7}, []int8{1, 0, 0, 1, 1}, "over-range:3"},
+		{"words, limit above", "OVL 3 7", nil, "_ 10", []float64{math.Nextafter(10, 11), 3, 7}, []int8{1, 0, 0}, "over-range:1"},
+		{"words, limit below", "OVR 3 7", nil, "_ 5", []float64{7, 3, 7}, []int8{1, 0, 0}, "over-range:1"},
+		{"words, clamp", "OL 3 7", clamp, "_ 5", []float64{80, 3, 7}, []int8{1, 0, 0}, "over-range:1"},
+		{"words, floor", "UNDER 3 7", clamp, "_ _", []float64{0.5, 3, 7}, []int8{-1, 0, 0}, "over-range:1"},
+		{"clamp that cannot be", "OL 3 97", clamp, "_ _", []float64{97, 3, 97}, []int8{1, 0, 0}, "over-range:1 above-clamp:1"},
+		{"infinite", "inf 1e999 -inf -1e999 3 7", nil, "2 9", []float64{math.Nextafter(9, 10), math.Nextafter(9, 10), math.Nextafter(2, 1), math.Nextafter(2, 1), 3, 7}, []int8{1, 1, -1, -1, 0, 0}, "over-range:2"},
+		{"nothing to go by", "OL OL", nil, "_ _", []float64{nan, nan}, []int8{0, 0}, "over-range:2 missing:2"},
+		{"nothing but a limit", "OL OL", nil, "_ 4", []float64{math.Nextafter(4, 5), math.Nextafter(4, 5)}, []int8{1, 1}, "over-range:2"},
+	} {
+		lines := []string{"WAFER,X,Y,B,A"}
+		limits := strings.Fields(strings.ReplaceAll(c.limits, "_", "-"))
+		lines = append(lines, "LSL,,,,"+limits[0], "USL,,,,"+limits[1])
+		for i, v := range strings.Fields(c.cells) {
+			lines = append(lines, fmt.Sprintf("1,%d,0,%d,%s", i, i, v))
+		}
+		l := mustRead(t, table(lines...), Options{Product: c.product}).Lots[0]
+		k := l.TestIndex("A")
+		if d := cmp.Diff(c.want, l.Values(k), exactly); d != "" {
+			t.Errorf("%s: %s", c.name, d)
+		}
+		if d := cmp.Diff(c.marks, l.Censor(k)); d != "" {
+			t.Errorf("%s: %s", c.name, d)
+		}
+		have := ""
+		for _, f := range l.Findings() {
+			have += f.Code + ":" + digitsOf(f.Dice) + " "
+		}
+		for _, code := range strings.Fields(c.codes) {
+			if !strings.Contains(have, code+" ") {
+				t.Errorf("%s: no %s in %s", c.name, code, have)
+			}
+		}
+	}
+	// In the file's unit, in long tables and through retests.
+	l := mustRead(t, table("WAFER,X,Y,TEST,VALUE,UNIT", "1,0,0,I,5,nA", "1,1,0,I,>1000,nA", "1,2,0,I,<2.5,uA", "1,1,0,V,1,V", "1,1,0,V,2,V"), Options{}).Lots[0]
+	if d := cmp.Diff([]float64{5e-9, 2.5e-6, 1000e-9}, l.Values(0), exactly); d != "" || !cmp.Equal(l.Censor(0), []int8{0, -1, 1}) {
+		t.Errorf("long: %s %v", d, l.Censor(0))
+	}
+}
+
+// What a limited test loses is a warning that says what cannot be judged.
+func TestUnjudged(t *testing.T) {
+	for _, c := range []struct {
+		limit string
+		want  bool
+	}{{"5", true}, {"", false}} {
+		for _, f := range mustRead(t, table("WAFER,X,Y,A", "USL,,,"+c.limit, "1,0,0,-9999", "1,1,0,3", "1,2,0,x7", "1,3,0,-9999"), Options{}).Lots[0].Findings() {
+			if f.Code != "sentinel" && f.Code != "unreadable-value" {
+				continue
+			}
+			if f.Severity != Warning || strings.Contains(f.Text, "cannot be judged on this test") != c.want {
+				t.Errorf("limit %q: %+v", c.limit, f)
+			}
+		}
+	}
+}

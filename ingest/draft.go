@@ -18,6 +18,7 @@ func (d *draft) lot(opt *Options) *Lot {
 	d.touchdowns()
 	d.orderTests()
 	d.seen = make([]extremes, len(d.tests))
+	d.marks = make([][]int8, len(d.tests))
 	d.eachTest(opt, d.numbers)
 	keep := d.retests(opt)
 	l := &Lot{id: d.id, inputs: d.inputs, wafers: d.wafers}

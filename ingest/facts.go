@@ -134,7 +134,7 @@ var foundAgain = set("retest", "retest-empty", "retest-best", "no-coordinates", 
 	"missing", "clamped", "at-floor", "above-clamp", "one-value", "test-not-in-data", "limits-differ")
 
 // cellCodes are those of numbers, by test.
-var cellCodes = set("unreadable-value", "not-finite", "out-of-range", "missing-word", "invalid-result", "sentinel")
+var cellCodes = set("unreadable-value", "not-finite", "out-of-range", "missing-word", "invalid-result", "sentinel", "over-range")
 
 // carriedLater says whether a carried finding has a place after the description
 // of the tests.

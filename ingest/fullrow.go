@@ -82,7 +82,7 @@ func blank(fields [][]byte) bool {
 
 // Missing values tell by the bits of their NaN why they are missing, until
 // cleaning has counted them by test.
-var oddNaN = [...]float64{cellMissing: nanWith(1), cellOver: nanWith(2), cellInf: nanWith(3), cellBad: nanWith(4), cellInvalid: nanWith(5)}
+var oddNaN = [...]float64{cellMissing: nanWith(1), cellOver: nanWith(2), cellInf: nanWith(3), cellBad: nanWith(4), cellInvalid: nanWith(5), cellUnder: nanWith(6), cellBound: nanWith(4)}
 
 const oddNaNBits = 0x7ff8_0000_0000_0010
 
@@ -92,9 +92,12 @@ func nanWith(k uint64) float64 { return math.Float64frombits(oddNaNBits | k<<8) 
 func nanStatus(v float64) status {
 	bits := math.Float64bits(v)
 	if bits&^0xf00 != oddNaNBits {
+		if _, _, ok := asBound(v); ok {
+			return cellBound
+		}
 		return cellEmpty
 	}
-	return [16]status{1: cellMissing, 2: cellOver, 3: cellInf, 4: cellBad, 5: cellInvalid}[bits>>8&0xf]
+	return [16]status{1: cellMissing, 2: cellOver, 3: cellInf, 4: cellBad, 5: cellInvalid, 6: cellUnder}[bits>>8&0xf]
 }
 
 // store puts one cell of the full reader into row c.n.
@@ -127,13 +130,15 @@ func (p *parser) store(c *chunk, k int, cell []byte, here func() place) {
 	case intField:
 		v, st := parseInt(t, p.l.decimal)
 		c.ints[f.slot][n] = v
-		if st == cellBad || st == cellInf {
+		if st != cellNumber && st != cellEmpty && st != cellMissing {
 			count(cellBad)
 		}
 	case valueField:
 		v, st := parseNumber(t, p.l.decimal)
 		if st != cellNumber && st != cellEmpty {
-			v = oddNaN[st]
+			if st != cellBound {
+				v = oddNaN[st]
+			}
 			count(st)
 		}
 		c.values[f.slot][n] = v

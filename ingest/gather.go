@@ -44,6 +44,7 @@ type draft struct {
 	measurements, duplicates, joined int
 
 	seen      []extremes // by test
+	marks     [][]int8   // by test: readings that the file gives as bounds, see overRange; nil: none
 	compacted bool       // measurements that do not count are out of the columns
 }
 
@@ -198,6 +199,8 @@ func toSI(dst, v []float64, u config.Unit) {
 	for i, x := range v {
 		if x == x { // a NaN keeps its bits, see oddNaN
 			x = u.ToSI(x)
+		} else if b, sign, ok := asBound(x); ok {
+			x = boundOf(u.ToSI(b), sign)
 		}
 		dst[i] = x
 	}
@@ -382,6 +385,9 @@ func (d *draft) constantWithin(test int) bool {
 		first := math.NaN()
 		for _, v := range d.values[test][w.Lo:w.Hi] {
 			if v != v {
+				if st := nanStatus(v); st == cellOver || st == cellUnder || st == cellBound {
+					return false // readings, of a test
+				}
 				continue
 			}
 			if first != first {

@@ -107,9 +107,9 @@ func (l *layout) judge(roles []string, product *config.Product) {
 				flags++
 			}
 			switch v, st := parseNumber([]byte(c), l.decimal); st {
-			case cellNumber:
+			case cellNumber, cellBound:
 				numbers++
-				if v != math.Trunc(v) {
+				if st == cellNumber && v != math.Trunc(v) {
 					fractions++
 				}
 				if len(c) > 1 && c[0] == '0' && c[1]-'0' <= 9 {

@@ -14,7 +14,7 @@ const (
 	cellOdd            // not a plain number: the full reader decides
 	cellMissing        // a word for "no reading": NA, NaN, -
 	cellOver           // a word for "out of range": OVL, OVERFLOW
-	cellInf            // inf, or a number too large for float64
+	cellInf            // infinite in a file of numbers; in text it is cellOver or cellUnder
 	cellBad            // text that means nothing in a column of numbers
 )
 
@@ -157,13 +157,24 @@ func convert(t []byte, decimal byte) (float64, status) {
 }
 
 // parseNumber reads a whole text, already free of blanks around it, as the
-// full reader has it: a number, a word for a missing reading, or neither.
+// full reader has it: a number, a word for a missing reading, a bound (see
+// boundOf), or neither.
 func parseNumber(t []byte, decimal byte) (float64, status) {
 	if len(t) == 0 {
 		return math.NaN(), cellEmpty
 	}
 	if isDecimal(t, decimal) {
-		return convert(t, decimal)
+		v, st := convert(t, decimal)
+		if st == cellInf {
+			st = cellOver
+			if v < 0 {
+				st = cellUnder
+			}
+		}
+		return v, st
+	}
+	if v, ok := parseBound(t, decimal); ok {
+		return v, cellBound
 	}
 	return math.NaN(), word(t)
 }
@@ -216,11 +227,13 @@ var words = map[string]status{
 
 	"ovl": cellOver, "ovr": cellOver, "overflow": cellOver, "over": cellOver, "ol": cellOver, "o.l": cellOver,
 	"o/l": cellOver, "ovld": cellOver, "overload": cellOver, "overrange": cellOver, "over range": cellOver,
-	"ovflw": cellOver, "udf": cellOver, "underflow": cellOver, "under": cellOver, "underrange": cellOver,
+	"ovflw": cellOver, "+ol": cellOver, "+ovl": cellOver, "+over": cellOver, "out of range": cellOver,
+	"udf": cellUnder, "underflow": cellUnder, "under": cellUnder, "underrange": cellUnder, "under range": cellUnder,
+	"-ol": cellUnder, "-ovl": cellUnder, "-over": cellUnder, "unfl": cellUnder,
 	"compliance": cellOver, "comp": cellOver, "clamp": cellOver, "clamped": cellOver, "sat": cellOver,
 
-	"inf": cellInf, "+inf": cellInf, "-inf": cellInf, "infinity": cellInf, "+infinity": cellInf,
-	"-infinity": cellInf, "1.#inf": cellInf, "-1.#inf": cellInf, "∞": cellInf,
+	"inf": cellOver, "+inf": cellOver, "-inf": cellUnder, "infinity": cellOver, "+infinity": cellOver,
+	"-infinity": cellUnder, "1.#inf": cellOver, "-1.#inf": cellUnder, "∞": cellOver, "+∞": cellOver, "-∞": cellUnder,
 }
 
 // word tells what a text that is no number means.

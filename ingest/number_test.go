@@ -75,7 +75,7 @@ func TestNumberEqualsStrconv(t *testing.T) {
 func TestCellsThatAreNoPlainNumbers(t *testing.T) {
 	for text, want := range map[string]status{
 		"": cellEmpty, "NA": cellMissing, "n/a": cellMissing, "NaN": cellMissing, "null": cellMissing, "-": cellMissing, "--": cellMissing,
-		"OVL": cellOver, "OVERFLOW": cellOver, "inf": cellInf, "-Infinity": cellInf, "1e999": cellInf, "-1e999": cellInf,
+		"OVL": cellOver, "OVERFLOW": cellOver, "inf": cellOver, "-Infinity": cellUnder, "1e999": cellOver, "-1e999": cellUnder,
 		"abc": cellBad, "1.2.3": cellBad, "1,5": cellBad, "0x10": cellBad, "1_000": cellBad, "1e": cellBad, "e5": cellBad, ".": cellMissing,
 		"+": cellBad, "1 2": cellBad, "12V": cellBad, strings.Repeat("x", 99): cellBad,
 	} {

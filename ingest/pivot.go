@@ -162,6 +162,9 @@ func convertUnit(v float64, from, to config.Unit) float64 {
 	if from.Exp == to.Exp {
 		return v
 	}
+	if b, sign, ok := asBound(v); ok {
+		return boundOf(to.FromSI(from.ToSI(b)), sign)
+	}
 	return to.FromSI(from.ToSI(v))
 }
 
