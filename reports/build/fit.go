@@ -61,6 +61,10 @@ func expected(c dist.Choice, x []float64, edges []reports.Number) []reports.Numb
 // distance at which dist.Choose sets readings aside.
 const farBound = 6
 
+// boundSample is how many readings, evenly taken, tell the level and spread that
+// bounds are held against: no more are needed to know what is far.
+const boundSample = 20_000
+
 // setAsideBounds returns the readings without the bounds that stand far off the
 // others, low ones and high ones counted: an open contact reads a breakdown at
 // the tester's clamp, which says nothing of how the junctions are distributed. A
@@ -70,10 +74,11 @@ func setAsideBounds(x []float64, marks []int8) (body []float64, low, high int) {
 	if marks == nil {
 		return x, 0, 0
 	}
-	exact, logs := make([]float64, 0, len(x)), make([]float64, 0, len(x))
+	step := max(1, len(x)/boundSample)
+	exact, logs := make([]float64, 0, boundSample), make([]float64, 0, boundSample)
 	positive := true
-	for i, v := range x {
-		if marks[i] == 0 && !math.IsNaN(v) {
+	for i := 0; i < len(x); i += step {
+		if v := x[i]; marks[i] == 0 && !math.IsNaN(v) {
 			exact = append(exact, v)
 			logs = append(logs, math.Log(v))
 			positive = positive && v > 0
