@@ -20,6 +20,9 @@ type cells struct {
 func (k *cells) count(st status, i int, text string) {
 	o := k.odd[st]
 	if o == nil {
+		if k.odd == nil {
+			k.odd = map[status]*oddCells{}
+		}
 		o = &oddCells{first: place{line: k.at + i + 1, text: text}}
 		k.odd[st] = o
 	}
@@ -54,20 +57,24 @@ func (k *cells) floats(to []float64) error {
 			}
 		}
 	}
-	for i, v := range to {
-		if v-v != 0 { // NaN, infinite
-			if math.IsInf(v, 0) {
-				k.count(cellInf, i, fmt.Sprint(v))
-				to[i] = oddNaN[cellInf]
-			} else {
-				to[i] = math.NaN()
-			}
-		}
-	}
+	k.infinite(to)
 	if _, ok := k.a.(*array.Float32); ok {
 		decimals(to, make([]decimalOf, 1<<12))
 	}
 	return nil
+}
+
+// infinite marks infinite values, and makes all NaN the same.
+func (k *cells) infinite(to []float64) {
+	for i, v := range to {
+		if v-v == 0 {
+			continue
+		}
+		if to[i] = math.NaN(); math.IsInf(v, 0) {
+			k.count(cellInf, i, fmt.Sprint(v))
+			to[i] = oddNaN[cellInf]
+		}
+	}
 }
 
 func (k *cells) otherFloats(to []float64) error {

@@ -4,17 +4,13 @@ import (
 	"context"
 	"errors"
 	"fmt"
-	"io"
 	"math"
-	"slices"
 	"strconv"
 	"strings"
 	"sync"
 
 	"github.com/apache/arrow/go/v17/arrow"
 	"golang.org/x/sync/errgroup"
-
-	"kneepoint/config"
 )
 
 // readColumns reads a Parquet or Arrow IPC file. A file that WriteParquet or
@@ -313,7 +309,7 @@ func (t *tableReading) column(i int, a arrow.Array, at int) error {
 	if at+n > t.room {
 		return errors.New("there are more rows than the file says")
 	}
-	k := cells{a: a, odd: map[status]*oddCells{}, at: at}
+	k := cells{a: a, at: at}
 	var err error
 	switch f.kind {
 	case valueField:
@@ -325,20 +321,26 @@ func (t *tableReading) column(i int, a arrow.Array, at int) error {
 	case textField:
 		err = k.texts(t.c.text[f.slot].codes[at:at+n], &t.text[i])
 	}
-	if len(k.odd) > 0 {
-		t.mu.Lock()
-		defer t.mu.Unlock()
-		for st, o := range k.odd {
-			key := oddKey{field: i, kind: st}
-			sum := t.d.odd[key]
-			sum.n += o.n
-			if sum.first.line == 0 || o.first.line < sum.first.line {
-				sum.first = o.first
-			}
-			t.d.odd[key] = sum
-		}
-	}
+	t.count(i, &k)
 	return err
+}
+
+// count adds up the odd cells of a column.
+func (t *tableReading) count(field int, k *cells) {
+	if len(k.odd) == 0 {
+		return
+	}
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	for st, o := range k.odd {
+		key := oddKey{field: field, kind: st}
+		sum := t.d.odd[key]
+		sum.n += o.n
+		if sum.first.line == 0 || o.first.line < sum.first.line {
+			sum.first = o.first
+		}
+		t.d.odd[key] = sum
+	}
 }
 
 // finish completes the file's data.
@@ -386,5 +388,3 @@ func shortDecimal(v float64) string {
 	}
 	return strconv.FormatFloat(v, 'g', -1, 64)
 }
-
-var _ = []any{io.EOF, slices.Sort[[]int], config.Unit{}}
