@@ -96,11 +96,12 @@ type squares struct {
 // degrees counts each present row's present neighbours.
 func (g *Grid) degrees(n Neighbours, present func(int32) bool) []uint8 {
 	degree := make([]uint8, len(g.x))
+	steps := n.later()
 	for _, r := range g.order {
 		if !present(r) {
 			continue
 		}
-		for _, s := range n.later() {
+		for _, s := range steps {
 			if q := g.at(r, s); q >= 0 && present(int32(q)) {
 				degree[r]++
 				degree[q]++

@@ -27,7 +27,7 @@ func TestAutocorrelationMomentsAreThoseOfAllOrders(t *testing.T) {
 	x := []int32{0, 1, 2, 0, 1, 2, 1, 2}
 	y := []int32{0, 0, 0, 1, 1, 2, 3, 3}
 	g := NewGrid(x, y)
-	for _, n := range []Neighbours{Rook, Queen} {
+	for _, n := range []Neighbours{Rook, Queen, Within(2.3)} {
 		for _, w := range []Weights{Binary, RowStandardised} {
 			value := []float64{1, 2.5, 3, -4, 8, 0.3, 0.1, 5}
 			a := g.Autocorrelation(value, n, w)

@@ -2,10 +2,13 @@ package wafermap
 
 import (
 	"cmp"
+	"fmt"
+	"math"
 	"slices"
 )
 
-// Neighbours says which dice count as neighbours of a die.
+// Neighbours says which dice count as neighbours of a die: Rook, Queen, or what Within
+// returns.
 type Neighbours int
 
 const (
@@ -13,11 +16,34 @@ const (
 	Queen                   // the up to 8 dice that share a side or a corner
 )
 
+// farthestNeighbour is the largest distance of neighbours, in dice.
+const farthestNeighbour = 6
+
+// Within makes all dice neighbours whose centres are no more than a distance apart,
+// counted in dice along either axis: Within(1) is Rook, Within(1.5) is Queen, Within(2)
+// has 12 neighbours, Within(3) has 28. Distances below 1 or above 6 panic.
+func Within(dice float64) Neighbours {
+	if !(dice >= 1 && dice <= farthestNeighbour) {
+		panic("wafermap: neighbours must lie within 1 to 6 dice")
+	}
+	switch square := int(dice * dice * (1 + 1e-12)); {
+	case square < 2:
+		return Rook
+	case square < 4:
+		return Queen
+	default:
+		return Neighbours(square) // of the distance
+	}
+}
+
 func (n Neighbours) String() string {
-	if n == Queen {
+	switch n {
+	case Rook:
+		return "rook"
+	case Queen:
 		return "queen"
 	}
-	return "rook"
+	return fmt.Sprintf("within %.3g dice", math.Sqrt(float64(n)))
 }
 
 // step is the way from a die to a neighbour.
@@ -26,10 +52,21 @@ type step struct{ dx, dy int }
 // later lists the neighbours that come after a die in raster order: one of each
 // pair of neighbours, so that walking them meets every join once.
 func (n Neighbours) later() []step {
-	if n == Queen {
+	switch n {
+	case Rook:
+		return []step{{1, 0}, {0, 1}}
+	case Queen:
 		return []step{{1, 0}, {-1, 1}, {0, 1}, {1, 1}}
 	}
-	return []step{{1, 0}, {0, 1}}
+	var steps []step
+	for dy := range farthestNeighbour + 1 {
+		for dx := -farthestNeighbour; dx <= farthestNeighbour; dx++ {
+			if dx*dx+dy*dy <= int(n) && (dy > 0 || dx > 0) {
+				steps = append(steps, step{dx, dy})
+			}
+		}
+	}
+	return steps
 }
 
 // all lists all neighbours.

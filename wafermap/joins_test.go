@@ -29,7 +29,7 @@ func joins(x, y []int32, fail []bool, n Neighbours) (ff, pf float64) {
 	for i := range x {
 		for j := range i {
 			dx, dy := math.Abs(float64(x[i]-x[j])), math.Abs(float64(y[i]-y[j]))
-			if n == Rook && dx+dy == 1 || n == Queen && max(dx, dy) == 1 {
+			if n == Rook && dx+dy == 1 || n == Queen && max(dx, dy) == 1 || n > Queen && dx*dx+dy*dy <= float64(n) {
 				if fail[i] && fail[j] {
 					ff++
 				} else if fail[i] != fail[j] {
@@ -54,7 +54,7 @@ func raggedMap() (x, y []int32) {
 func TestJoinMomentsAreThoseOfAllPlacements(t *testing.T) {
 	x, y := raggedMap()
 	g := NewGrid(x, y)
-	for _, n := range []Neighbours{Rook, Queen} {
+	for _, n := range []Neighbours{Rook, Queen, Within(2)} {
 		for fails := 1; fails < len(x); fails++ {
 			var count, sumFF, sumFF2, sumFF3, sumPF, sumPF2 float64
 			tail := map[float64]float64{}

@@ -2,6 +2,7 @@ package wafermap
 
 import (
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/mathext"
 )
@@ -47,30 +48,23 @@ type shapes struct {
 
 func (g *Grid) shapes(n Neighbours) shapes {
 	degree := g.degrees(n, func(int32) bool { return true })
+	steps := n.later()
+	pairs := n.sides()
+	here := make([]bool, len(steps))
 	var s shapes
 	for _, r := range g.order {
 		d := float64(degree[r])
 		s.wedges += d * (d - 1) / 2
 		s.stars += d * (d - 1) * (d - 2) / 6
-		for _, t := range n.later() {
-			if q := g.at(r, t); q >= 0 {
+		for i, t := range steps {
+			q := g.at(r, t)
+			if here[i] = q >= 0; here[i] {
 				s.paths += (d - 1) * (float64(degree[q]) - 1)
 			}
 		}
-	}
-	if n == Queen {
-		// Three dice that all touch lie in a square of four. A square is met from its
-		// first corner, or from its second where the first is empty.
-		for _, r := range g.order {
-			right, left := g.at(r, step{1, 0}) >= 0, g.at(r, step{-1, 0}) >= 0
-			under, underRight, underLeft := g.at(r, step{0, 1}) >= 0, g.at(r, step{1, 1}) >= 0, g.at(r, step{-1, 1}) >= 0
-			switch {
-			case right && under && underRight:
-				s.triangles += 4
-			case right && under, right && underRight, under && underRight:
-				s.triangles++
-			}
-			if !left && under && underLeft {
+		// a triangle is met from its first die in raster order
+		for _, p := range pairs {
+			if here[p[0]] && here[p[1]] {
 				s.triangles++
 			}
 		}
@@ -102,4 +96,17 @@ func (c *JoinCount) skewness(s shapes) float64 {
 	m, v := c.ExpectedFF, c.VarianceFF
 	third := 6*(s.triangles*all(3)+four*all(4)+five*all(5)+six*all(6)) + 3*(v+m*m-m) + m
 	return (third - 3*m*v - m*m*m) / math.Pow(v, 1.5)
+}
+
+// sides lists the pairs of later neighbours of a die that are neighbours of each other.
+func (n Neighbours) sides() (pairs [][2]int) {
+	steps, all := n.later(), n.all()
+	for i, s := range steps {
+		for j, t := range steps[:i] {
+			if slices.Contains(all, step{t.dx - s.dx, t.dy - s.dy}) {
+				pairs = append(pairs, [2]int{j, i})
+			}
+		}
+	}
+	return pairs
 }

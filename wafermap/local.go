@@ -1,0 +1,398 @@
+package wafermap
+
+import (
+	"cmp"
+	"fmt"
+	"math"
+	"math/rand/v2"
+	"slices"
+)
+
+// LocalClass says what a die's surroundings are.
+type LocalClass uint8
+
+const (
+	Ordinary LocalClass = iota // nothing beyond chance
+	HotSpot                    // high among high
+	ColdSpot                   // low among low
+	HighAmongLow
+	LowAmongHigh
+)
+
+func (c LocalClass) String() string {
+	return [...]string{"ordinary", "hot spot", "cold spot", "high among low", "low among high"}[c]
+}
+
+// Local is a local indicator of association, by row. Dice without a value, and dice
+// without neighbours in the case of LocalMoran, have NaN and Ordinary.
+type Local struct {
+	Z        []float64 // in standard deviations under randomisation
+	P        []float64 // two-sided
+	Adjusted []float64 // P adjusted for the number of dice looked at: false discovery rate
+	Class    []LocalClass
+	N        int // dice with a value
+	Isolated int // of these, without neighbours
+	Why      string
+}
+
+// HotSpots finds dice whose neighbourhood, the die itself included, has values above or
+// below the wafer's average beyond chance: the statistic Gi* of Ord and Getis 1995
+// (Geogr. Anal. 27, 286) with binary weights,
+//
+//	Gi* = (sum of the k values - k mean) / (s sqrt((n k - k^2)/(n-1)))
+//
+// s^2 being the mean square about the mean. Under randomisation the sum is that of k
+// values drawn from all, which the normal law misses by orders of magnitude where fails
+// are few or values skewed. For fails (values of 0 and 1) its tails are exact, by the
+// hypergeometric law; else they come from 20,000 random draws for each k and, beyond their
+// reach, go on as the saddlepoint approximation does (Lugannani and Rice 1980, Adv. Appl.
+// Probab. 12, 475; in the form of Barndorff-Nielsen 1986, Biometrika 73, 307). P is adjusted to the false discovery rate
+// (Benjamini and Hochberg 1995, J. R. Stat. Soc. B 57, 289; neighbourhoods overlap, which
+// keeps it valid: Benjamini and Yekutieli 2001, Ann. Stat. 29, 1165), and dice with Adjusted
+// at most level get a class.
+func (g *Grid) HotSpots(value []float64, n Neighbours, level float64) Local {
+	return g.local(value, n, level, true)
+}
+
+// FailSpots is HotSpots of a fail map.
+func (g *Grid) FailSpots(fail []bool, n Neighbours, level float64) Local {
+	g.check(len(fail))
+	value := make([]float64, len(fail))
+	for i, f := range fail {
+		if f {
+			value[i] = 1
+		}
+	}
+	return g.local(value, n, level, true)
+}
+
+// LocalMoran finds dice that lie among neighbours with like or unlike values: with z the
+// deviations from the mean, m2 their mean square and k neighbours,
+//
+//	I_i = z_i / m2 * sum of z_j over the neighbours / k
+//
+// (Anselin 1995, Geogr. Anal. 27, 93). P comes from the law of the sum of k values
+// drawn from all, given the die's own, with tails as in HotSpots; Z has the sign of I.
+func (g *Grid) LocalMoran(value []float64, n Neighbours, level float64) Local {
+	return g.local(value, n, level, false)
+}
+
+func (g *Grid) local(value []float64, n Neighbours, level float64, own bool) Local {
+	g.check(len(value))
+	l := Local{Z: make([]float64, len(value)), P: make([]float64, len(value)), Adjusted: make([]float64, len(value)), Class: make([]LocalClass, len(value))}
+	for i := range value {
+		l.Z[i], l.P[i], l.Adjusted[i] = nan, nan, nan
+	}
+	var present []float64
+	for _, r := range g.order {
+		if v := value[r]; !math.IsNaN(v) && !math.IsInf(v, 0) {
+			present = append(present, v)
+		}
+	}
+	l.N = len(present)
+	if l.N < 8 {
+		l.Why = fmt.Sprintf("%d dice with a value: at least 8 are needed", l.N)
+		return l
+	}
+	law := newSumLaw(present)
+	if law.sd == 0 {
+		l.Why = "the value is the same on all dice"
+		return l
+	}
+	steps := n.all()
+	for _, r := range g.order {
+		v := value[r]
+		if math.IsNaN(v) || math.IsInf(v, 0) {
+			continue
+		}
+		k, sum := 0, 0.0
+		for _, s := range steps {
+			if q := g.at(r, s); q >= 0 && !math.IsNaN(value[q]) && !math.IsInf(value[q], 0) {
+				k++
+				sum += value[q]
+			}
+		}
+		if k == 0 {
+			l.Isolated++
+		}
+		sign, side := 1.0, v > law.mean
+		if own {
+			k++
+			sum += v
+		} else if !side {
+			sign = -1
+		}
+		if k == 0 || k >= l.N {
+			continue
+		}
+		z, p := law.tails(k, sum)
+		l.Z[r], l.P[r] = sign*z, p
+	}
+	l.adjust(g.order)
+	for _, r := range g.order {
+		if !(l.Adjusted[r] <= level) {
+			continue
+		}
+		switch high := value[r] > law.mean; {
+		case own && l.Z[r] > 0, !own && l.Z[r] > 0 && high:
+			l.Class[r] = HotSpot
+		case own, !own && l.Z[r] > 0:
+			l.Class[r] = ColdSpot
+		case high:
+			l.Class[r] = HighAmongLow
+		default:
+			l.Class[r] = LowAmongHigh
+		}
+	}
+	return l
+}
+
+// adjust fills in Adjusted.
+func (l *Local) adjust(rows []int32) {
+	order := make([]int32, 0, len(rows))
+	for _, r := range rows {
+		if !math.IsNaN(l.P[r]) {
+			order = append(order, r)
+		}
+	}
+	slices.SortStableFunc(order, func(a, b int32) int { return cmp.Compare(l.P[a], l.P[b]) })
+	least := 1.0
+	for i := len(order) - 1; i >= 0; i-- {
+		least = min(least, l.P[order[i]]*float64(len(order))/float64(i+1))
+		l.Adjusted[order[i]] = least
+	}
+}
+
+// sumLaw is the law of a sum of values drawn from a wafer without putting them back.
+type sumLaw struct {
+	n        int
+	mean, sd float64
+	fails    int // values of 1 where all are 0 or 1, else -1
+	// else the values in groups, about the mean
+	values    []float64
+	at, share []float64
+	tables    map[int]*sumTable
+}
+
+func newSumLaw(values []float64) *sumLaw {
+	l := &sumLaw{n: len(values), values: values, tables: map[int]*sumTable{}}
+	for i, v := range values {
+		l.mean += (v - l.mean) / float64(i+1)
+		if v == 1 && l.fails >= 0 {
+			l.fails++
+		} else if v != 0 {
+			l.fails = -1
+		}
+	}
+	for _, v := range values {
+		l.sd += sq(v-l.mean) / float64(l.n)
+	}
+	if l.sd = math.Sqrt(l.sd); !(l.sd > 1e-12*math.Abs(l.mean)) {
+		l.sd = 0
+		return l
+	}
+	if l.fails >= 0 {
+		return l
+	}
+	l.group(slices.Sorted(slices.Values(values)))
+	return l
+}
+
+// group replaces sorted values by the means of groups: single ones at the ends, which
+// make the tails, and ever more towards the middle.
+func (l *sumLaw) group(sorted []float64) {
+	const singles, growth = 12, 1.25
+	take := func(from, to int) {
+		sum := 0.0
+		for _, v := range sorted[from:to] {
+			sum += v - l.mean
+		}
+		l.at, l.share = append(l.at, sum/float64(to-from)), append(l.share, float64(to-from)/float64(l.n))
+	}
+	size := 1.0
+	for lo, hi, k := 0, len(sorted), 0; lo < hi; k++ {
+		if k >= singles {
+			size *= growth
+		}
+		n := min(int(size), hi-lo)
+		take(lo, lo+n)
+		if lo += n; lo < hi {
+			n = min(int(size), hi-lo)
+			take(hi-n, hi)
+			hi -= n
+		}
+	}
+}
+
+// tails returns a sum of k values in standard deviations, and its two-sided chance: twice
+// that of a sum as far out or further on its side.
+func (l *sumLaw) tails(k int, sum float64) (z, p float64) {
+	n, count := float64(l.n), float64(k)
+	z = (sum - count*l.mean) / (l.sd * math.Sqrt(count*(n-count)/(n-1)))
+	t := l.tables[k]
+	if t == nil {
+		if l.fails >= 0 {
+			t = hypergeometric(l.n, l.fails, k)
+		} else {
+			t = l.drawn(k)
+		}
+		l.tables[k] = t
+	}
+	return z, min(1, 2*t.tail(z, sum))
+}
+
+// sumTable holds upper and lower tails: by the sum for fails, else by z with the
+// logarithm to interpolate.
+type sumTable struct {
+	exact        bool
+	upper, lower []float64
+}
+
+const (
+	saddleReach = 40.0 // standard deviations
+	saddleStep  = 0.25
+)
+
+func (t *sumTable) tail(z, sum float64) float64 {
+	if t.exact {
+		k := int(math.Round(sum))
+		return min(t.upper[k], t.lower[k])
+	}
+	side := t.upper
+	if z < 0 {
+		side, z = t.lower, -z
+	}
+	at := z / saddleStep
+	i := int(at)
+	if i >= len(side)-1 {
+		return math.Exp(side[max(0, len(side)-1)] - z) // not reached by any draw
+	}
+	return math.Exp(side[i] + (at-float64(i))*(side[i+1]-side[i]))
+}
+
+// hypergeometric tails of the number of fails among k of n dice.
+func hypergeometric(n, fails, k int) *sumTable {
+	t := &sumTable{exact: true, upper: make([]float64, k+2), lower: make([]float64, k+1)}
+	choose := func(n, k int) float64 {
+		a, _ := math.Lgamma(float64(n) + 1)
+		b, _ := math.Lgamma(float64(k) + 1)
+		c, _ := math.Lgamma(float64(n-k) + 1)
+		return a - b - c
+	}
+	p := make([]float64, k+1)
+	for j := range p {
+		if j <= fails && k-j <= n-fails {
+			p[j] = math.Exp(choose(fails, j) + choose(n-fails, k-j) - choose(n, k))
+		}
+	}
+	for j := k; j >= 0; j-- {
+		t.upper[j] = t.upper[j+1] + p[j]
+	}
+	sum := 0.0
+	for j := range p {
+		sum += p[j]
+		t.lower[j] = sum
+	}
+	return t
+}
+
+// drawn tabulates tails of a sum of k values: from random draws as far out as at least a
+// hundred of them reach, and from there on as the saddlepoint tail goes on.
+func (l *sumLaw) drawn(k int) *sumTable {
+	const draws, sure = 20000, 100
+	random := rand.New(rand.NewPCG(0x6c6f63616c, uint64(l.n)<<16|uint64(k)))
+	z := make([]float64, draws)
+	chosen := make([]int, k)
+	n, count := float64(l.n), float64(k)
+	unit := l.sd * math.Sqrt(count*(n-count)/(n-1))
+	for d := range z {
+		sum := 0.0
+		for i := 0; i < k; {
+			c := random.IntN(l.n)
+			if slices.Contains(chosen[:i], c) {
+				continue
+			}
+			chosen[i] = c
+			i++
+			sum += l.values[c]
+		}
+		z[d] = (sum - count*l.mean) / unit
+	}
+	slices.Sort(z)
+	t := &sumTable{}
+	for _, sign := range [2]float64{1, -1} {
+		var side []float64
+		s, offset, at := 0.0, nan, 0 // saddlepoint; draws less extreme
+		for x := 0.0; x <= saddleReach; x += saddleStep {
+			for at < draws && (sign > 0 && z[at] < x || sign < 0 && -z[draws-1-at] < x) {
+				at++
+			}
+			value, next, ok := l.lugannaniRice(x*l.sd/math.Sqrt(count), sign, count, s)
+			if draws-at >= sure {
+				side = append(side, math.Log(float64(draws-at)/draws))
+				offset = side[len(side)-1] - value
+			} else if ok && !math.IsNaN(offset) {
+				side = append(side, min(side[len(side)-1], value+offset))
+			} else {
+				break // further out than any sum
+			}
+			if ok {
+				s = next
+			}
+		}
+		if sign > 0 {
+			t.upper = side
+		} else {
+			t.lower = side
+		}
+	}
+	return t
+}
+
+// lugannaniRice is the logarithm of the chance that the mean of k values lies target
+// beyond the mean on the side of sign. s is where to start looking for the saddlepoint.
+func (l *sumLaw) lugannaniRice(target, sign, k, s float64) (value, saddle float64, ok bool) {
+	if target < 1e-9*l.sd {
+		return math.Log(0.5), 0, true
+	}
+	var cumulant, second float64
+	for range 60 {
+		// moments of the values tilted by exp(s x), scaled against overflow
+		top := math.Inf(-1)
+		for _, x := range l.at {
+			top = max(top, s*sign*x)
+		}
+		var m0, m1, m2 float64
+		for i, x := range l.at {
+			w := l.share[i] * math.Exp(s*sign*x-top)
+			m0 += w
+			m1 += w * sign * x
+			m2 += w * x * x
+		}
+		mean := m1 / m0
+		second = m2/m0 - mean*mean
+		cumulant = top + math.Log(m0)
+		if !(second > 1e-12*l.sd*l.sd) {
+			return 0, 0, false // beyond the largest value
+		}
+		step := (target - mean) / second
+		s += math.Max(-0.5*s, math.Min(step, 2/l.sd+s))
+		if math.Abs(target-mean) < 1e-7*l.sd {
+			break
+		}
+	}
+	w2 := 2 * k * (s*target - cumulant)
+	if !(w2 > 0) {
+		return math.Log(0.5), s, true
+	}
+	w, u := math.Sqrt(w2), s*math.Sqrt(k*second)
+	if w < 0.05 { // the formula loses its digits near the mean
+		return math.Log(upperNormal(w)), s, true
+	}
+	// Barndorff-Nielsen's form of the same: positive at any distance
+	r := w + math.Log(u/w)/w
+	if r > 35 {
+		return -r*r/2 - math.Log(r*math.Sqrt(2*math.Pi)), s, true
+	}
+	return math.Log(upperNormal(r)), s, true
+}
