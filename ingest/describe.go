@@ -269,6 +269,7 @@ func (t *readings) fileFindings(file int) {
 	if f.layout == nil {
 		return
 	}
+	t.limitFindings(file)
 	for i, fd := range f.layout.fields {
 		c := f.odd[oddKey{field: i, kind: cellBad}]
 		if fd.kind != intField && fd.kind != passField || c.n == 0 {
@@ -280,6 +281,31 @@ func (t *readings) fileFindings(file int) {
 		}
 		t.note(file, Warning, "unreadable-value", fmt.Sprintf("%s:%d: column %s: %d %s no %s, first %s; taken as missing", name, c.first.line, f.layout.names[i], c.n,
 			plural(c.n, "cell is", "cells are"), kind, quote(c.first.text)), "correct the cells, or name the right column under columns in the product file", c.n)
+	}
+}
+
+// limitFindings tells of limits in the rows of a long table that cannot be read.
+func (t *readings) limitFindings(file int) {
+	f := t.files[file]
+	for i, fd := range f.layout.fields {
+		if !f.layout.long || fd.kind != valueField || fd.slot == longValue {
+			continue
+		}
+		n, first, test := 0, place{}, ""
+		for k, o := range f.odd { // sums and the least line, the order is all one
+			if k.field != i || k.kind != cellBad {
+				continue
+			}
+			n += o.n
+			if first.line == 0 || o.first.line < first.line {
+				first, test = o.first, k.test
+			}
+		}
+		if n > 0 {
+			t.note(file, Severe, "limit-not-understood", fmt.Sprintf("%s:%d: column %s: %d %s cannot be read and %s not used, first %s of test %s", f.input.File, first.line,
+				f.layout.names[i], n, plural(n, "limit", "limits"), plural(n, "is", "are"), quote(first.text), test),
+				"write plain numbers in the test's unit, or give the limits in the product file", 0)
+		}
 	}
 }
 

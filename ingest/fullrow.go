@@ -3,6 +3,8 @@ package ingest
 import (
 	"bytes"
 	"math"
+
+	"kneepoint/config"
 )
 
 // lines finds line numbers within a block, counting on from the last place.
@@ -59,6 +61,10 @@ func (p *parser) fullRow(b *block, i int, c *chunk, where *lines) (next int) {
 	p.test = ""
 	if k := p.testField; k >= 0 && k < len(fields) {
 		p.test = cellText(fields[k])
+	}
+	p.unit = ""
+	if k := p.unitField; k >= 0 && k < len(fields) {
+		p.unit = cellText(fields[k])
 	}
 	for k := range p.l.fields {
 		var cell []byte
@@ -134,6 +140,14 @@ func (p *parser) store(c *chunk, k int, cell []byte, here func() place) {
 			count(cellBad)
 		}
 	case valueField:
+		if p.l.long && f.slot != longValue {
+			v, ok := p.limit(t, f.slot == longUpper)
+			if !ok {
+				count(cellBad)
+			}
+			c.values[f.slot][n] = v
+			return
+		}
 		v, st := parseNumber(t, p.l.decimal)
 		if st != cellNumber && st != cellEmpty {
 			if st != cellBound {
@@ -143,6 +157,19 @@ func (p *parser) store(c *chunk, k int, cell []byte, here func() place) {
 		}
 		c.values[f.slot][n] = v
 	}
+}
+
+// limit reads a limit of a row of a long table, in the row's unit.
+func (p *parser) limit(t []byte, upper bool) (float64, bool) {
+	l, ok := parseLimit(string(t), p.l.decimal, upper)
+	if !ok || !l.unit.Given() {
+		return l.value, ok
+	}
+	u, err := config.ParseUnit(p.unit)
+	if err != nil || p.unit == "" {
+		return math.NaN(), false
+	}
+	return l.in(u)
 }
 
 // isHeader says whether a row repeats the header, as when files were joined.

@@ -229,7 +229,7 @@ func (l *layout) applySpecial(special []specialRow) {
 			continue
 		}
 		for j := range l.columns {
-			l.columns[j].take(l, s.kind, cell(s.row, l.columns[j].field))
+			l.columns[j].takeAt(l, s.kind, cell(s.row, l.columns[j].field), s.row.line)
 		}
 	}
 	switch len(unnamed) {
@@ -240,8 +240,8 @@ func (l *layout) applySpecial(special []specialRow) {
 			low, high = high, low
 		}
 		for j := range l.columns {
-			l.columns[j].take(l, low, cell(unnamed[0], l.columns[j].field))
-			l.columns[j].take(l, high, cell(unnamed[1], l.columns[j].field))
+			l.columns[j].takeAt(l, low, cell(unnamed[0], l.columns[j].field), unnamed[0].line)
+			l.columns[j].takeAt(l, high, cell(unnamed[1], l.columns[j].field), unnamed[1].line)
 		}
 	default:
 		l.note(Warning, "row-not-understood", fmt.Sprintf("%s:%d: a row of numbers without lot and wafer stands above the data; it is not used", l.file, unnamed[0].line),
@@ -270,7 +270,10 @@ func cell(r headRow, i int) string {
 	return ""
 }
 
-func (c *testColumn) take(l *layout, kind rowKind, text string) {
+func (c *testColumn) take(l *layout, kind rowKind, text string) { c.takeAt(l, kind, text, 0) }
+
+// takeAt is take for a cell of a line.
+func (c *testColumn) takeAt(l *layout, kind rowKind, text string, line int) {
 	if text == "" {
 		return
 	}
@@ -280,9 +283,9 @@ func (c *testColumn) take(l *layout, kind rowKind, text string) {
 			c.unitText = text
 		}
 	case lowerRow:
-		c.lower = l.limit(text)
+		c.limitCells[0] = headCell{line, text}
 	case upperRow:
-		c.upper = l.limit(text)
+		c.limitCells[1] = headCell{line, text}
 	case numberRow:
 		if n, st := parseInt([]byte(text), l.decimal); st == cellNumber {
 			c.number = int(n)
@@ -292,8 +295,8 @@ func (c *testColumn) take(l *layout, kind rowKind, text string) {
 	}
 }
 
-// parseColumnUnits reads the units of all columns together: the letter M means
-// what the others make likely.
+// parseColumnUnits reads the units of all columns together, as the letter M means
+// what the others make likely, and then the limits.
 func (l *layout) parseColumnUnits() {
 	var texts []string
 	var of []int
@@ -310,6 +313,51 @@ func (l *layout) parseColumnUnits() {
 		}
 		l.note(Warning, "unit-not-understood", fmt.Sprintf("%s: test %s: %v", l.file, l.columns[j].name, errs[k]),
 			"correct the unit; the product file's is used if it gives one")
+	}
+	l.settleLimits()
+}
+
+// limitNotUnderstood notes a limit that is left out.
+func (l *layout) limitNotUnderstood(test string, c headCell) {
+	l.note(Severe, "limit-not-understood", fmt.Sprintf("%s: test %s: the limit %s cannot be read and is not used; the test is judged without it", l.at(c.line), test, quote(c.text)),
+		"write a plain number in the test's unit, or give the limit in the product file")
+}
+
+// at names a line of the file, 0 the file.
+func (l *layout) at(line int) string {
+	if line == 0 {
+		return l.file
+	}
+	return fmt.Sprintf("%s:%d", l.file, line)
+}
+
+// settleLimits reads limits and brings them into the unit of the test's values. A test without
+// unit takes that of its limits.
+func (l *layout) settleLimits() {
+	for j := range l.columns {
+		c := &l.columns[j]
+		for k, to := range []*float64{&c.lower, &c.upper} {
+			cell := c.limitCells[k]
+			if cell.text == "" {
+				continue
+			}
+			limit, ok := parseLimit(cell.text, l.decimal, k == 1)
+			if !ok {
+				l.limitNotUnderstood(c.name, cell)
+				continue
+			}
+			if !c.unit.Given() && limit.unit.Given() {
+				c.unit, c.unitText = limit.unit, limit.unit.Text
+				if p := productTest(l.product, c.name); p >= 0 && l.product.Tests[p].Unit.Given() {
+					c.unit = l.product.Tests[p].Unit // in which values without unit are
+				}
+				l.note(Warning, "unit-from-limit", fmt.Sprintf("%s: test %s has no unit but in its limit %s; its values are taken to be in %s", l.at(cell.line), c.name,
+					quote(cell.text), showUnit(c.unit)), "give the unit in a unit row or in the header")
+			}
+			if *to, ok = limit.in(c.unit); !ok {
+				l.limitNotUnderstood(c.name, cell)
+			}
+		}
 	}
 }
 

@@ -2,7 +2,6 @@ package ingest
 
 import (
 	"fmt"
-	"math"
 	"strings"
 
 	"kneepoint/config"
@@ -28,6 +27,7 @@ type layout struct {
 	notes       []Finding
 	columns     []testColumn // of a wide table, by field.slot
 	sample      [][]string   // first data rows
+	product     *config.Product
 }
 
 // fieldKind says how the cells of a column are read.
@@ -56,8 +56,9 @@ type testColumn struct {
 	condition    string
 	number       int
 	field        int
-	si           bool     // values and limits are SI already; the unit is for showing
-	own          *ownFact // what only files of convert say
+	limitCells   [2]headCell // lower and upper limit as written
+	si           bool        // values and limits are SI already; the unit is for showing
+	own          *ownFact    // what only files of convert say
 }
 
 // Slots of the fixed text, whole-number and value columns.
@@ -97,6 +98,12 @@ var textRoles = map[string]int{"lot": textLot, "wafer": textWafer, "part": textP
 var intRoles = map[string]int{"x": intX, "y": intY, "site": intSite, "touchdown": intTouchdown, "hard_bin": intHardBin,
 	"soft_bin": intSoftBin, roleNumber: intNumber}
 var longValues = map[string]int{"value": longValue, "lower": longLower, "upper": longUpper}
+
+// headCell is a cell of a row under the header, line 0: none.
+type headCell struct {
+	line int
+	text string
+}
 
 // headRow is one row of the head as text.
 type headRow struct {
@@ -155,6 +162,7 @@ func findLayout(in *input, head []byte, final bool, product *config.Product, fix
 // assignRoles gives each role its column: those of the product file first,
 // then by the usual names. Returned by column of the file.
 func (l *layout) assignRoles(product *config.Product) ([]string, error) {
+	l.product = product
 	roles := make([]string, len(l.names))
 	seen := map[string]int{}
 	for i, n := range l.names {
@@ -314,9 +322,6 @@ func allNumbers(cells []string) bool {
 
 // limit reads a cell of a limit row, NaN for none.
 func (l *layout) limit(cell string) float64 {
-	v, st := parseNumber([]byte(cell), l.decimal)
-	if st != cellNumber || math.Abs(v) >= 1e30 {
-		return math.NaN()
-	}
-	return v
+	v, _ := parseLimit(cell, l.decimal, true)
+	return v.value
 }

@@ -19,7 +19,8 @@ type parser struct {
 	// waferKnown says that a comment gives the wafer of rows that do not.
 	waferKnown bool
 	testField  int    // column of the test names of a long table, -1 none
-	test       string // of the row at work
+	unitField  int    // and of the units
+	test, unit string // of the row at work
 }
 
 // column is where the cells of a column go.
@@ -37,6 +38,7 @@ func newParser(l *layout, sch *schema, file int, careful bool) *parser {
 	}
 	p.interns = make([]interner, textAttributes+len(sch.attributes))
 	p.columns, p.wafer, p.testField = make([]column, len(l.fields)), -1, -1
+	p.unitField = -1
 	p.waferKnown = l.commented("wafer") != ""
 	for k, f := range l.fields {
 		if f.kind == textField {
@@ -45,6 +47,8 @@ func newParser(l *layout, sch *schema, file int, careful bool) *parser {
 				p.wafer = k
 			} else if f.slot == textTest && l.long {
 				p.testField = k
+			} else if f.slot == textUnit && l.long {
+				p.unitField = k
 			}
 		}
 	}
