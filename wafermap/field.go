@@ -28,13 +28,21 @@ type field struct {
 
 	raster
 	polar
+
+	// what the last full search for the dear shapes came up with
+	starts  []spotlight
+	periods []spotlight
+	pending int // dear shapes that were found and are not yet part of the model
 }
 
 // farOut is how far from the centre, in radii, a die may lie to take part: one further
 // out has wrong coordinates.
 const farOut = 1.12
 
-func newField(in SignatureInput) *field {
+func newField(in SignatureInput) *field { return newFieldOf(in, cellsOfRaster) }
+
+// newFieldOf lays the dice on a raster of at most cells cells.
+func newFieldOf(in SignatureInput, cells int) *field {
 	g := in.Grid
 	f := &field{in: in, round: in.Geometry.Unit != ""}
 	geo := in.Geometry
@@ -68,7 +76,7 @@ func newField(in SignatureInput) *field {
 	for i := range f.p {
 		f.p[i] = f.mean
 	}
-	f.layRaster(geo)
+	f.layRaster(geo, cells)
 	f.layPolar()
 	f.expect()
 	return f

@@ -40,7 +40,7 @@ const (
 	thinnestRaster = 0.35  // dice a cell, at least
 )
 
-func (f *field) layRaster(geo Geometry) {
+func (f *field) layRaster(geo Geometry, cells int) {
 	g := f.in.Grid
 	r := &f.raster
 	if len(f.rows) == 0 {
@@ -58,7 +58,7 @@ func (f *field) layRaster(geo Geometry) {
 	for {
 		r.cols, r.lines = (box.X1-box.X0)/r.stepX+1, (box.Y1-box.Y0)/r.stepY+1
 		area := float64(r.cols) * float64(r.lines)
-		if area <= cellsOfRaster && float64(len(f.rows)) >= thinnestRaster*math.Pi/4*area || r.cols*r.lines <= 16 {
+		if area <= float64(cells) && float64(len(f.rows)) >= thinnestRaster*math.Pi/4*area || r.cols*r.lines <= 16 {
 			break
 		}
 		// the finer side first
@@ -77,8 +77,8 @@ func (f *field) layRaster(geo Geometry) {
 	}
 	r.v0 += r.dv * (1 - 1/float64(r.stepY)) / 2
 	r.cell = make([]int32, len(f.rows))
-	cells := r.cols * r.lines
-	r.o, r.n, r.e = make([]int32, cells), make([]int32, cells), make([]float64, cells)
+	count := r.cols * r.lines
+	r.o, r.n, r.e = make([]int32, count), make([]int32, count), make([]float64, count)
 	for i, k := range f.rows {
 		c := int32((int(g.y[k])-r.y0)/r.stepY*r.cols + (int(g.x[k])-r.x0)/r.stepX)
 		r.cell[i] = c
