@@ -141,7 +141,7 @@ func (in *input) sniffEntry(e *zip.File) error {
 	in.packed, in.kind = packed, kindOf(inner, in.name)
 	in.size = int64(min(e.UncompressedSize64, 1<<62))
 	switch in.kind {
-	case kindParquet, kindArrowFile, kindZip:
+	case kindParquet, kindArrowFile, kindArrowStream, kindZip:
 	default:
 		return nil
 	}

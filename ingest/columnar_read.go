@@ -30,9 +30,7 @@ func readColumns(ctx context.Context, in *input, index int, sch *schema, opt *Op
 	var hashed sync.WaitGroup
 	defer hashed.Wait()
 	var t *tableReading
-	if in.kind != kindArrowStream {
-		hashed.Go(src.drain)
-	}
+	hashed.Go(src.drain)
 	err = guard(in.name, func() error {
 		t = &tableReading{ctx: ctx, in: in, index: index, sch: sch, opt: opt, limit: newLimit(in), d: &fileData{odd: map[oddKey]oddCells{}}}
 		switch in.kind {
@@ -41,9 +39,7 @@ func readColumns(ctx context.Context, in *input, index int, sch *schema, opt *Op
 		case kindArrowFile:
 			return t.arrowFile()
 		}
-		err := t.arrowStream(rawReader{src})
-		src.drain()
-		return err
+		return t.arrowStream()
 	})
 	if err != nil {
 		if ctx.Err() != nil {

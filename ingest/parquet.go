@@ -24,6 +24,9 @@ func (t *tableReading) parquet() error {
 		return err
 	}
 	defer done()
+	if err := checkParquet(at, size); err != nil {
+		return err
+	}
 	props := parquet.NewReaderProperties(t.limit)
 	pf, err := file.NewParquetReader(io.NewSectionReader(at, 0, size), file.WithReadProps(props))
 	if err != nil {
@@ -241,6 +244,9 @@ func (t *tableReading) arrowFile() error {
 		return err
 	}
 	defer done()
+	if err := checkArrowFile(at, size); err != nil {
+		return err
+	}
 	r, err := ipc.NewFileReader(io.NewSectionReader(at, 0, size), ipc.WithAllocator(t.limit))
 	if err != nil {
 		return err
@@ -257,17 +263,30 @@ func (t *tableReading) arrowFile() error {
 	})
 }
 
-// arrowStream reads an Arrow IPC stream.
-func (t *tableReading) arrowStream(from io.Reader) error {
-	r, err := ipc.NewReader(from, ipc.WithAllocator(t.limit))
+// arrowStream reads an Arrow IPC stream, as far as its messages are sound.
+func (t *tableReading) arrowStream() error {
+	at, size, done, err := t.in.at()
+	if err != nil {
+		return err
+	}
+	defer done()
+	sound, broken := checkStream(at, size)
+	if sound == 0 && broken != nil {
+		return broken
+	}
+	r, err := ipc.NewReader(io.NewSectionReader(at, 0, sound), ipc.WithAllocator(t.limit))
 	if err != nil {
 		return err
 	}
 	defer r.Release()
-	return t.batches(r.Schema(), func() (arrow.Record, error) {
+	err = t.batches(r.Schema(), func() (arrow.Record, error) {
 		rec, err := r.Read()
+		if err == io.EOF && broken != nil {
+			err = broken
+		}
 		return rec, err
 	})
+	return err
 }
 
 // batches reads batch after batch. One that is damaged or cut off ends the
