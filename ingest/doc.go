@@ -44,7 +44,49 @@ shapes:
   - Text is UTF-8, with or without byte-order mark; what is no UTF-8 is read as
     Windows-1252. UTF-16 is refused. Files may be packed with gzip or zstd,
     which is told by content and not by name.
-  - Several files are read one after the other, as if they were one.
+  - Several files are read one after the other, as if they were one; see below.
+
+# Other formats
+
+A format is told by content first and by name second. Each gives the same columns
+to the same cleaning, so that a lot is the same Lot in any of them.
+
+  - STDF V4 (package stdf), both byte orders. The lot is that of the MIR, its other
+    fields become attributes; a part is a row, touchdowns are counted from which
+    parts were open at once, PTR and MPR results are tests named by their text, and
+    #number behind it where several tests share a text. Results are float32 in the
+    base unit; a value is the shortest decimal of its float32, so that 4.2 nA is
+    4.2 nA. Results flagged as invalid are missing and counted. FTR results are left
+    out. Damage is a finding with its byte; whole parts are kept.
+  - Parquet and Arrow IPC, file and stream. What [WriteParquet] and [WriteArrow]
+    wrote is read back as the same Lot, values to the last bit; columns of other
+    programs' files are found by name, as in text. Lists and structures are not
+    read. The whole batches of a stream that was cut are kept.
+  - xlsx, the first sheet, as if it were text; see the function workbook.
+  - zip archives of any of these, but not of archives.
+
+What a file of a few bytes can make of memory is bounded: a packed one by 200 times
+its size, or 256 MB.
+
+# Several files
+
+A path may be a file, a folder, a pattern or a zip archive. Files in these three
+are read in natural order of their names; those whose names and contents are of no
+kind that is read are skipped, and a finding names them. Folders in a folder are
+not read.
+
+  - A file without lot id is of the lot of the others, when that is one. Files of
+    one folder, pattern or archive, none of which names a lot, are one lot, named
+    after it. Any other file is a lot named after itself.
+  - A file in a folder, pattern or archive that names no wafer is the wafer in its
+    name: W07 or wafer-7, else the whole name.
+  - Different lot ids are different lots.
+  - The same die in two files is a retest; the later file is that which started
+    later, where all files say so (STDF), else that which is named later.
+  - What the files say differently of the lot becomes an attribute of wafers or
+    dice.
+  - One that cannot be read is an error, however many others there are, unless
+    [Options].SkipBad says that it is a finding.
 
 # Columns
 
