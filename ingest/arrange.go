@@ -42,7 +42,7 @@ func (t *readings) keys() rowKeys {
 	k := rowKeys{}
 	ids := map[groupKey]int32{}
 	row := int32(0)
-	unnamed, unnamedLot := 0, ""
+	unnamed, unnamedLot, summaries := 0, "", 0
 	for _, c := range t.chunks {
 		lots, wafers := &c.text[textLot], &c.text[textWafer]
 		def := t.files[c.file].defaults()
@@ -61,7 +61,8 @@ func (t *readings) keys() rowKeys {
 				key.wafer = wafers.dict[wc]
 			}
 			group := int32(-1)
-			if key.wafer != "" {
+			summary := isSummary(key) && c.unplaced(i, end)
+			if key.wafer != "" && !summary {
 				id, ok := ids[key]
 				if !ok {
 					id = int32(len(k.groups))
@@ -85,6 +86,9 @@ func (t *readings) keys() rowKeys {
 			if group >= 0 {
 				k.counts[group] += end - i
 				k.rows[group] += rows
+			} else if summary {
+				t.tally.Discarded["summary-row"] += rows
+				summaries += rows
 			} else {
 				t.tally.Discarded["no-wafer"] += rows // of a Table; files were told by row
 			}
@@ -93,6 +97,11 @@ func (t *readings) keys() rowKeys {
 			i = end
 		}
 	}
+	if summaries > 0 {
+		t.note(all, Warning, "summary-row", fmt.Sprintf("%d %s a word for a sum or a mean where lot or wafer should stand, and no coordinates; not used", summaries, plural(summaries, "row has", "rows have")),
+			"export the dice without rows of totals", summaries)
+	}
+	t.sameWafers(&k)
 	if unnamed > 0 {
 		t.note(all, Warning, "no-lot", fmt.Sprintf("%d %s an empty lot cell; taken for lot %s", unnamed, plural(unnamed, "row has", "rows have"), unnamedLot), "fill the lot column", unnamed)
 	}

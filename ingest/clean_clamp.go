@@ -165,16 +165,18 @@ func (d *draft) clamps(test int) ([]int8, []Finding) {
 // beside looks at the readings that are not bounds from the first: these say
 // nothing of where the tester clamps.
 func (c *clamping) beside(bounds []int8) ([]int8, []Finding) {
-	column := c.v
+	column, some := c.v, false
 	c.v = slices.Clone(column)
 	for i, m := range bounds {
 		if m != 0 {
-			c.v[i] = math.NaN()
+			c.v[i], some = math.NaN(), true
 		}
 	}
 	c.e = survey(c.v, nil)
 	c.all()
-	c.need()
+	if some {
+		c.need()
+	}
 	for i, m := range bounds {
 		if m != 0 {
 			c.mark[i] = m

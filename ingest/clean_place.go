@@ -13,9 +13,9 @@ func (d *draft) places() {
 	x, y := d.ints[intX], d.ints[intY]
 	if x == nil || y == nil {
 		if x != nil || y != nil {
-			d.note(Warning, "no-coordinates", "only one of the two die coordinates has a column; maps need both", "name the other under columns in the product file", 0)
+			d.note(Warning, "no-coordinates", "only one of the two die coordinates has a column; maps need both", "name the other under columns in the product file", d.n)
 		} else {
-			d.note(Info, "no-coordinates", "the data have no die coordinates; what needs a map is left out", "export die x and y to get maps", 0)
+			d.note(Warning, "no-coordinates", "the data have no die coordinates; what needs a map is left out", "export die x and y to get maps", d.n)
 		}
 		return
 	}

@@ -509,7 +509,7 @@ func TestOverRange(t *testing.T) {
 		{"words, floor", "UNDER 3 7", clamp, "_ _", []float64{0.5, 3, 7}, []int8{-1, 0, 0}, "over-range:1"},
 		{"clamp that cannot be", "OL 3 97", clamp, "_ _", []float64{97, 3, 97}, []int8{1, 0, 0}, "over-range:1 above-clamp:1"},
 		{"infinite", "inf 1e999 -inf -1e999 3 7", nil, "2 9", []float64{math.Nextafter(9, 10), math.Nextafter(9, 10), math.Nextafter(2, 1), math.Nextafter(2, 1), 3, 7}, []int8{1, 1, -1, -1, 0, 0}, "over-range:2"},
-		{"nothing to go by", "OL OL", nil, "_ _", []float64{nan, nan}, []int8{0, 0}, "over-range:2 missing:2"},
+		{"nothing to go by", "OL OL", nil, "_ _", []float64{nan, nan}, nil, "over-range:2 missing:2"},
 		{"nothing but a limit", "OL OL", nil, "_ 4", []float64{math.Nextafter(4, 5), math.Nextafter(4, 5)}, []int8{1, 1}, "over-range:2"},
 	} {
 		lines := []string{"WAFER,X,Y,B,A"}

@@ -109,6 +109,7 @@ func (t *readings) describe(product *config.Product, files []bool, note func(Sev
 		if !used {
 			continue
 		}
+		i.uncross(note)
 		if i.product >= 0 {
 			i.fromProduct(&product.Tests[i.product], note)
 		}
@@ -160,6 +161,17 @@ func (i *testInfo) fromFile(c said, unit config.Unit, note func(Severity, string
 	i.fromOwn(c.own)
 }
 
+// uncross drops limits of the data file of which the lower is above the upper:
+// no die could hold both.
+func (i *testInfo) uncross(note func(Severity, string, string, string, int)) {
+	if !(i.lower > i.upper) {
+		return
+	}
+	note(Severe, "limits-crossed", fmt.Sprintf("test %s: the data file's lower limit is above its upper one, %s; neither is used", i.name, showLimits(i.lower, i.upper, i.unit)),
+		"correct the limits in the data, or give them in the product file", 0)
+	i.lower, i.upper, i.limitsFrom = math.NaN(), math.NaN(), ""
+}
+
 // fromProduct lets the product file have its say.
 func (i *testInfo) fromProduct(p *config.Test, note func(Severity, string, string, string, int)) {
 	i.declared = true
@@ -188,6 +200,12 @@ func (i *testInfo) fromProduct(p *config.Test, note func(Severity, string, strin
 		i.upper = p.Upper
 	}
 	i.limitsFrom = "product file"
+	if i.lower > i.upper {
+		note(Severe, "limits-crossed", fmt.Sprintf("test %s: the product file gives one limit and the data file another that it contradicts, %s; the data file's is not used", i.name,
+			showLimits(i.lower, i.upper, i.unit)), "give both limits in the product file", 0)
+		i.lower, i.upper = p.Lower, p.Upper
+		return
+	}
 	if had && (p.Lower == p.Lower && differ(p.Lower, fileLower) || p.Upper == p.Upper && differ(p.Upper, fileUpper)) {
 		note(Warning, "limits-differ", fmt.Sprintf("test %s: the data file has limits %s, the product file %s; the product file's hold", i.name,
 			showLimits(fileLower, fileUpper, i.unit), showLimits(i.lower, i.upper, i.unit)), "check which revision of the test program was run", 0)

@@ -280,12 +280,13 @@ func (l *layout) findDecimal() {
 
 // check refuses a layout that cannot be a table of dice.
 func (l *layout) check(product *config.Product) error {
-	wafer, values := l.commented("wafer") != "", 0
+	wafer, values, verdict := l.commented("wafer") != "", 0, false
 	for _, f := range l.fields {
 		wafer = wafer || f.kind == textField && f.slot == textWafer
 		if f.kind == valueField {
 			values++
 		}
+		verdict = verdict || f.kind == passField || f.kind == intField && (f.slot == intHardBin || f.slot == intSoftBin)
 	}
 	holds := "the header holds " + list(l.names, 12)
 	switch {
@@ -300,6 +301,8 @@ func (l *layout) check(product *config.Product) error {
 			"rename the column, or name it under columns.wafer in the product file")
 	case len(l.sample) == 0:
 		return l.fail(l.headerLine, "", "there is a header and no data row under it", "export the table again")
+	case values == 0 && verdict:
+		l.note(Info, "no-tests", l.file+" has bins or pass flags and no readings; what needs readings is left out", "")
 	case values == 0:
 		return l.fail(l.headerLine, "", "no column of numbers found that could be a test; "+holds, "check the export, and that decimal signs and separators are what they seem")
 	}

@@ -17,6 +17,7 @@ func (p *pivoting) chunk() *chunk {
 	}
 	// The units of all rows together, as the letter M wants it.
 	units, errs := config.ParseUnits(p.text[textUnit].dict)
+	p.settleUnits(info, units)
 	row := 0
 	for _, from := range p.long {
 		for i := range from.n {
@@ -102,6 +103,8 @@ type longTest struct {
 	unit      config.Unit
 	unitCode  int32 // text of the unit, -1 none
 	others    int   // rows in another unit
+	foreign   int   // rows in a unit that does not convert
+	example   string
 	limits    map[[2]float64]int
 	order     [][2]float64
 	condition string
@@ -117,8 +120,50 @@ func (p *pivoting) tests() []longTest {
 	return info
 }
 
-// copyValues puts readings in place. All values of a test are kept in the unit
-// of its first row.
+// settleUnits decides in which unit the values of each test are kept: that of
+// its first row, unless more rows are in units of another dimension.
+func (p *pivoting) settleUnits(info []longTest, units []config.Unit) {
+	counts := make([][]int, len(info)) // rows by test and text of the unit
+	order := make([][]int32, len(info))
+	row := 0
+	for _, from := range p.long {
+		unit := p.textCodes(from, textUnit)
+		for i := range from.n {
+			code, slot := unit(i), p.test[row+i]
+			if code < 0 || slot < 0 || p.meas[row+i] < 0 {
+				continue
+			}
+			if counts[slot] == nil {
+				counts[slot] = make([]int, len(units))
+			}
+			if counts[slot][code] == 0 {
+				order[slot] = append(order[slot], code)
+			}
+			counts[slot][code]++
+		}
+		row += from.n
+	}
+	for slot := range info {
+		best, most := int32(-1), 0
+		for _, code := range order[slot] {
+			n := 0 // rows in units that convert to this one
+			for _, o := range order[slot] {
+				if o == code || units[o].Given() && units[code].Given() && units[o].Compatible(units[code]) {
+					n += counts[slot][o]
+				}
+			}
+			if n > most {
+				best, most = code, n
+			}
+		}
+		if best >= 0 {
+			info[slot].unitCode, info[slot].unit = best, units[best]
+		}
+	}
+}
+
+// copyValues puts readings in place. All values of a test are kept in one unit;
+// those in a unit of another dimension are missing.
 func (p *pivoting) copyValues(c, from *chunk, row int, info []longTest, units []config.Unit) {
 	unit := p.textCodes(from, textUnit)
 	for i := range from.n {
@@ -136,11 +181,15 @@ func (p *pivoting) copyValues(c, from *chunk, row int, info []longTest, units []
 		if code := unit(i); code >= 0 {
 			u := units[code]
 			switch {
-			case t.unitCode < 0:
-				t.unitCode, t.unit = code, u
-			case code != t.unitCode:
+			case code == t.unitCode:
+			case t.unit.Given() && (!u.Given() || !u.Compatible(t.unit)):
+				if t.foreign++; t.foreign == 1 {
+					t.example = p.text[textUnit].dict[code]
+				}
+				v, lower, upper = math.NaN(), math.NaN(), math.NaN()
+			default:
 				t.others++
-				if u.Given() && t.unit.Given() && u.Base == t.unit.Base {
+				if u.Given() && t.unit.Given() {
 					v, lower, upper = convertUnit(v, u, t.unit), convertUnit(lower, u, t.unit), convertUnit(upper, u, t.unit)
 				}
 			}
@@ -214,8 +263,12 @@ func (p *pivoting) finish(info []longTest, errs []error) {
 				"correct the unit; the product file's is used if it gives one", 0)
 		}
 		if t.others > 0 {
-			p.t.note(all, Info, "mixed-units", fmt.Sprintf("test %s: %d %s in another unit than the first; converted to %s", c.name, t.others,
+			p.t.note(all, Info, "mixed-units", fmt.Sprintf("test %s: %d %s in another unit than the others; converted to %s", c.name, t.others,
 				plural(t.others, "row is", "rows are"), t.unit.Text), "", 0)
+		}
+		if t.foreign > 0 {
+			p.t.note(all, Severe, "unit-conflict", fmt.Sprintf("test %s: %d %s in a unit that does not convert to %s, first %s; these readings are missing", c.name, t.foreign,
+				plural(t.foreign, "row is", "rows are"), showUnit(t.unit), quote(t.example)), "correct the unit in the data, or give the readings a test name of their own", t.foreign)
 		}
 		t.majority(p.t, &c)
 		p.t.longColumns = append(p.t.longColumns, c)
