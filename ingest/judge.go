@@ -96,6 +96,8 @@ func (l *layout) rowKind(r headRow, roles []string) rowKind {
 // judge settles by the sample what columns without a role hold, and takes a
 // role away where the content cannot be it.
 func (l *layout) judge(roles []string, product *config.Product) {
+	l.betterCoordinates("x", roles, product)
+	l.betterCoordinates("y", roles, product)
 	for i := range roles {
 		numbers, texts, zeros, flags, fractions := 0, 0, 0, 0, 0
 		for _, r := range l.sample {
@@ -140,6 +142,10 @@ func (l *layout) judge(roles []string, product *config.Product) {
 				roles[i] = "attribute"
 			}
 		}
+		if roles[i] == secondColumn && fractions > 0 && !text && weakNames[plainName(l.names[i])] {
+			roles[i] = ""
+			continue
+		}
 		if roles[i] != "" {
 			continue
 		}
@@ -151,6 +157,45 @@ func (l *layout) judge(roles []string, product *config.Product) {
 			roles[i] = "attribute"
 		}
 	}
+}
+
+// betterCoordinates gives the role of x or y to the next best column when the
+// best one holds no whole numbers, as positions in millimetres do.
+func (l *layout) betterCoordinates(role string, roles []string, product *config.Product) {
+	now := -1
+	for i, r := range roles {
+		if r == role {
+			now = i
+		}
+	}
+	if now < 0 || l.wholeNumbers(now) || product != nil && product.Columns[role] != "" {
+		return
+	}
+	for _, n := range roleNames[role] {
+		for i, name := range l.names {
+			if roles[i] == secondColumn && plainName(name) == n && l.wholeNumbers(i) {
+				l.note(Info, "column-not-understood", fmt.Sprintf("column %s holds no whole numbers; column %s is taken for the die's %s", quote(l.names[now]), quote(name), role), "")
+				roles[now], roles[i] = secondColumn, role
+				return
+			}
+		}
+	}
+}
+
+// wholeNumbers says whether a column of the sample holds whole numbers, mostly.
+func (l *layout) wholeNumbers(i int) bool {
+	whole, others := 0, 0
+	for _, r := range l.sample {
+		if i >= len(r) || r[i] == "" {
+			continue
+		}
+		if _, st := parseInt([]byte(r[i]), l.decimal); st == cellNumber {
+			whole++
+		} else if st == cellBad {
+			others++
+		}
+	}
+	return whole > others
 }
 
 // isPosition tells "X (mm)", a die's position in a unit of length.

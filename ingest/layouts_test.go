@@ -316,3 +316,24 @@ func stripped(v []view) []view {
 	}
 	return v
 }
+
+// Which column is the die's x, when several could be.
+func TestWhichCoordinates(t *testing.T) {
+	for _, c := range []struct {
+		name, header, row string // row: of die 3, 4
+		tests             string
+	}{
+		{"die-named beside positions", "WAFER,X,Y,DIE_X,DIE_Y,BV", "1,-12500,7300,3,4,25.5", "BV"},
+		{"die-named beside fractions", "WAFER,X,Y,DIE_X,DIE_Y,BV", "1,-12.5,7.3,3,4,25.5", "BV"},
+		{"fractions under the best name", "WAFER,X,Y,COL,ROW,BV", "1,-12.5,7.3,3,4,25.5", "BV"},
+		{"a star", "WAFER,*x,*y,\"die, x\",\"die, y\",BV", "1,7,8,3,4,25.5", "BV"},
+		{"tests of short names", "WAFER,X,Y,TD,W,DX,DY,COL,NO,BV", "1,3,4,1,2.5,0.5,1.5,3.25,4.5,25.5", "W DX DY COL NO BV"},
+		{"German", "Los,Scheibe,Spalte,Zeile,BV", "L,1,3,4,25.5", "BV"},
+		{"no second column", "WAFER,DX,DY,BV", "1,3,4,25.5", "BV"},
+	} {
+		l := mustRead(t, table(c.header, c.row), Options{}).Lots[0]
+		if !l.HasCoordinates() || l.X()[0] != 3 || l.Y()[0] != 4 || testNames(l) != c.tests {
+			t.Errorf("%s: x %v, y %v, tests %s", c.name, l.X(), l.Y(), testNames(l))
+		}
+	}
+}

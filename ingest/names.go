@@ -8,10 +8,10 @@ import (
 // roleNames are the usual spellings of each column role, best first, as
 // letters and digits only (see plainName). They are common practice, no source.
 var roleNames = map[string][]string{
-	"lot":       {"lot", "lotid", "lotno", "lotnumber", "lotnum", "lotnr", "lotname", "lotcode", "batch", "batchid", "batchno", "run", "runid", "lotref"},
-	"wafer":     {"wafer", "waferid", "waferno", "wafernumber", "wafernum", "wafernr", "wafername", "waf", "wafid", "wafno", "wfr", "wfrid", "wfrno", "wf", "wfid", "wno", "wid", "slice", "sliceno", "sliceid", "w"},
-	"x":         {"x", "diex", "xdie", "xcoord", "xcoordinate", "coordx", "xpos", "xposition", "posx", "xloc", "locx", "xindex", "indexx", "xaddress", "xaddr", "dx", "col", "column", "diecol", "diecolumn", "colno"},
-	"y":         {"y", "diey", "ydie", "ycoord", "ycoordinate", "coordy", "ypos", "yposition", "posy", "yloc", "locy", "yindex", "indexy", "yaddress", "yaddr", "dy", "row", "dierow", "rowno"},
+	"lot":       {"lot", "lotid", "lotno", "lotnumber", "lotnum", "lotnr", "lotname", "lotcode", "batch", "batchid", "batchno", "run", "runid", "lotref", "los", "losnr", "losnummer"},
+	"wafer":     {"wafer", "waferid", "waferno", "wafernumber", "wafernum", "wafernr", "wafername", "waf", "wafid", "wafno", "wfr", "wfrid", "wfrno", "wf", "wfid", "wno", "wid", "slice", "sliceno", "sliceid", "scheibe", "scheibennr", "scheibennummer", "w"},
+	"x":         {"diex", "xdie", "diecol", "diecolumn", "x", "xcoord", "xcoordinate", "coordx", "xpos", "xposition", "posx", "xloc", "locx", "xindex", "indexx", "xaddress", "xaddr", "dx", "col", "column", "colno", "spalte"},
+	"y":         {"diey", "ydie", "dierow", "y", "ycoord", "ycoordinate", "coordy", "ypos", "yposition", "posy", "yloc", "locy", "yindex", "indexy", "yaddress", "yaddr", "dy", "row", "rowno", "zeile"},
 	"site":      {"site", "siteno", "sitenumber", "sitenum", "sitenr", "siteid", "testsite", "probesite", "dut", "dutno"},
 	"touchdown": {"touchdown", "touchdownno", "touchdownnumber", "td", "tdno", "tdnr", "seq", "seqno", "sequence", "sequenceno", "sequencenumber", "testorder", "order", "testseq", "testsequence", "index", "dieindex", "dieno", "dienumber", "dienr", "recno", "record", "recordno", "rowid", "no", "nr"},
 	"hard_bin":  {"hbin", "hardbin", "hardbinno", "hardbinnumber", "hbinno", "hbinnum", "hardwarebin", "hwbin", "hb", "bin", "binno", "binnumber", "bincode", "binid"},
@@ -53,6 +53,10 @@ var attributeNames = set("temp", "temperature", "testtemp", "testtemperature", "
 	"ring", "quadrant", "radius", "shot", "shotx", "shoty", "reticle", "reticlex", "reticley", "fieldx", "fieldy", "week", "year", "month",
 	"tool", "equipment", "split", "splitid", "group", "fab", "flow", "step", "level", "nsites", "needle", "elapsed", "elapsedms", "testtimems",
 	"touchdown", "index", "sequence")
+
+// weakNames are role names that tests bear too: a second column of such a name,
+// beside a better one for the role, is a test when it holds fractions.
+var weakNames = set("w", "wf", "dx", "dy", "col", "column", "row", "no", "nr", "order", "index", "slice", "run", "td", "hb", "sb", "pf", "id", "sn", "seq", "flag", "good")
 
 func set(words ...string) map[string]bool {
 	m := make(map[string]bool, len(words))
