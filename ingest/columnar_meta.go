@@ -20,9 +20,12 @@ import (
 //
 // then a column a test, then the attributes of wafers and dice. measurement
 // counts a die's from 1; of several, the row with a touchdown is the one that
-// counts. Missing is null. The metadata of a field say what it is:
+// counts. Missing is null. A test some of whose readings the file gave as bounds
+// only (">1000", OL) has a column of 1 at least, -1 at most, behind them; clamped
+// readings are found again by their values and have none. The metadata of a field say what it is:
 //
-//	role        the names above, "test", "wafer attribute", "die attribute"
+//	role        the names above, "test", "wafer attribute", "die attribute", "bound"
+//	test        of a bound: the name of its test
 //	name        where the column could not bear it
 //	unit        of the column's values, with unit_base and unit_exponent
 //	show_unit   in which to show them, where that is another one
@@ -61,7 +64,37 @@ const (
 	roleMeasurement = "measurement"
 	roleWaferNote   = "wafer attribute"
 	roleDieNote     = "die attribute"
+	roleBound       = "bound" // of the test that "test" names
 )
+
+// markPrefix stands before the names of text columns that are none: marks on the
+// values of a test, until cleaning takes them.
+const markPrefix = "\x00"
+
+// takeMarks turns such columns into marks.
+func (d *draft) takeMarks() {
+	for s, codes := range d.text {
+		name, ok := strings.CutPrefix(d.textNames[s], markPrefix)
+		if !ok || codes == nil {
+			continue
+		}
+		d.text[s] = nil
+		i := slices.IndexFunc(d.tests, func(t testInfo) bool { return strings.EqualFold(t.name, name) })
+		if i < 0 {
+			continue
+		}
+		sign := make([]int8, len(d.dict[s]))
+		for k, t := range d.dict[s] {
+			sign[k] = map[string]int8{"1": 1, "-1": -1}[t]
+		}
+		d.marks[i] = make([]int8, len(codes))
+		for r, c := range codes {
+			if c >= 0 && d.has(i, int32(r)) {
+				d.marks[i][r] = sign[c]
+			}
+		}
+	}
+}
 
 // stored is how a test's values stand in a column.
 type stored struct {

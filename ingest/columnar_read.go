@@ -155,6 +155,11 @@ func (t *tableReading) ownLayout(m *lotMeta) error {
 			fd.kind, fd.slot = intField, intMeasurement
 		case role == "pass":
 			fd.kind = passField
+		case role == roleBound:
+			name = markPrefix + md["test"]
+			fd = field{kind: textField, slot: textAttributes + attributes}
+			attributes++
+			t.levels[i] = levelDie
 		case role == roleTest:
 			c := ownColumn(name, md)
 			c.field = i

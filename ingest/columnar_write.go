@@ -5,6 +5,7 @@ import (
 	"io"
 	"math"
 	"runtime"
+	"slices"
 
 	"github.com/apache/arrow/go/v17/arrow"
 	"github.com/apache/arrow/go/v17/arrow/array"
@@ -155,6 +156,11 @@ func newColumnTable(l *Lot) (*columnTable, error) {
 	store := t.stored()
 	for _, i := range byPlace(l.tests) {
 		add(l.tests[i].Name, arrow.PrimitiveTypes.Float64, metaOf(&l.tests[i], l.piles[i], store[i]), t.valueColumn(i, store[i].unit))
+	}
+	for i := range l.tests {
+		if i < len(l.given) && slices.ContainsFunc(l.given[i], func(m int8) bool { return m != 0 }) {
+			add(l.tests[i].Name+" bound", arrow.PrimitiveTypes.Int8, map[string]string{"role": roleBound, "test": l.tests[i].Name}, t.markColumn(l.given[i]))
+		}
 	}
 	t.waferAttributes(add, waferOf)
 	for i, name := range l.DieAttributes() {
@@ -370,6 +376,19 @@ func (t *columnTable) passColumn(pass []int8) func(lo, hi int) arrow.Array {
 			}
 		}
 		return b.NewArray()
+	}
+}
+
+func (t *columnTable) markColumn(marks []int8) func(lo, hi int) arrow.Array {
+	return func(lo, hi int) arrow.Array {
+		v, b := make([]int8, hi-lo), newBitmap(hi-lo)
+		for i, row := range t.rows[lo:hi] {
+			if row >= 0 {
+				v[i] = marks[row]
+			}
+			b.set(i, v[i] != 0)
+		}
+		return array.NewInt8Data(primitive(arrow.PrimitiveTypes.Int8, v, b))
 	}
 }
 

@@ -19,6 +19,7 @@ func (d *draft) lot(opt *Options) *Lot {
 	d.orderTests()
 	d.seen = make([]extremes, len(d.tests))
 	d.marks = make([][]int8, len(d.tests))
+	d.takeMarks()
 	d.eachTest(opt, d.numbers)
 	keep := d.retests(opt)
 	l := &Lot{id: d.id, inputs: d.inputs, wafers: d.wafers}
@@ -58,7 +59,7 @@ func (d *draft) lot(opt *Options) *Lot {
 		}
 	}
 	l.findings, l.shared = d.findings, d.shared
-	l.about, l.piles, l.after = d.about, d.piles(), d.after
+	l.about, l.piles, l.after, l.given = d.about, d.piles(), d.after, d.marks
 	return l
 }
 

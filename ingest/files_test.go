@@ -449,6 +449,7 @@ func TestConvertedLotIsTheLot(t *testing.T) {
 	for name, text := range map[string]string{
 		"attributes": "# fab: north\n# device = N24\n" + table("Lot,Wafer,X,Y,HBIN,P/F,Reactor,Card,Part ID,BATCH,BV [V],ICBO [nA]", "A,1,0,0,1,P,R1,c1,a,b1,41.5,1.25", "A,1,1,0,5,F,R1,c2,b,b1,OVL,-9999",
 			"A,1,1,0,5,F,R1,c2,b,b1,OVL,-9999", "A,1,1,0,1,P,R1,c2,b,b1,41.6,1.5", "A,2,0,0,1,P,R2,c1,c,b1,x41,-9999", "A,2,1,0,1,,R2,c1,,b1,41.7,3.5", "A,2,,,1,P,R2,c1,d,b1,41.8,4.5"),
+		"bounds":    table("Lot,Wafer,X,Y,BV [V],ICBO [nA]", "A,1,0,0,41.5,>1000", "A,1,1,0,OVL,1.5", "A,1,2,0,41,<0.01", "A,1,3,0,40.5,2.5", "A,1,3,0,OVL,"),
 		"no places": table("Lot,Wafer,Site,BV [V]", "A,1,1,41.5", "A,1,2,41.6", "A,2,1,41.7"),
 		"names":     table("Lot,Wafer,X,Y,lot_2,measurement,touchdown no,pass", "A,1,0,0,1.5,2.5,4,3.5", "A,1,1,0,1.25,2.25,5,3.25"),
 		"made":      wideText(t, aLot(2), wideFormat),

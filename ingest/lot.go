@@ -25,6 +25,7 @@ type Lot struct {
 	cols        columns
 	about       lotFacts
 	after       []bool    // by measurement of earlier: it came after the one that counts
+	given       [][]int8  // by test: marks of Censor that the file itself gives; nil none
 	piles       [][2]bool // by test: its clamp, its floor is a pile-up found in the data
 }
 

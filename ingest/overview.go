@@ -3,6 +3,7 @@ package ingest
 import (
 	"math"
 	"slices"
+	"strings"
 )
 
 // Overview is what a batch holds, before any statistics: for a person who has
@@ -75,7 +76,7 @@ func (b *Batch) Overview() Overview {
 			f.Long, f.DecimalComma, f.HeaderLine, f.Comments = l.long, l.decimal == ',', l.headerLine, l.attributes
 			f.Separator = separatorNames[l.sep]
 			for k, fd := range l.fields {
-				f.Columns = append(f.Columns, ColumnOverview{l.names[k], fd.as()})
+				f.Columns = append(f.Columns, ColumnOverview{strings.TrimPrefix(l.names[k], markPrefix), fd.as()})
 			}
 		}
 		o.Files = append(o.Files, f)

@@ -42,6 +42,10 @@ func (l *Lot) Select(keep []bool) *Lot {
 	for _, a := range c.attributes {
 		out.cols.attributes = append(out.cols.attributes, dieAttribute{a.name, int32Column(take(a.codes.Int32Values(), rows)), a.labels})
 	}
+	out.given = nil
+	for _, m := range l.given {
+		out.given = append(out.given, take(m, rows))
+	}
 	out.selectEarlier(l, rows, place)
 	return &out
 }
