@@ -25,6 +25,7 @@ func (d *draft) retests(opt *Options) []int32 {
 		d.sameDice(w.Lo, w.Hi, s.several)
 	}
 	s.settle()
+	s.untested()
 	s.report()
 	return s.keep
 }
@@ -33,6 +34,7 @@ func (d *draft) retests(opt *Options) []int32 {
 const (
 	duplicateRow = -1 // repeats another exactly
 	joinedRow    = -2 // its readings were joined to those of another
+	untestedRow  = -3 // of a die that was not tested
 )
 
 type retesting struct {
@@ -45,6 +47,7 @@ type retesting struct {
 	joined  int       // dice whose readings were spread over several rows
 	extra   int       // measurements that do not count
 	partial int       // dice whose last measurement lacks tests of earlier ones
+	gone    int       // dice that were not tested
 	empty   int       // of them without any value or bin
 	better  int       // dice that policy best passes though their last measurement fails
 }
@@ -265,10 +268,11 @@ func (s *retesting) report() {
 		d.note(Info, "joined-rows", fmt.Sprintf("the readings of %d %s stand in several rows without a test in common; %d rows were joined to others", s.joined, plural(s.joined, "die", "dice"), d.joined), "", s.joined)
 		d.compacted = true // the columns changed
 	}
+	s.reportPartial()
+	s.reportUntested()
 	if s.dice > 0 {
 		d.note(Info, "retest", fmt.Sprintf("%d %s measured more than once, with %d further measurements; the %s valid one counts", s.dice, plural(s.dice, "die was", "dice were"), s.extra, s.policy), "", s.dice)
 	}
-	s.reportPartial()
 	if s.empty > 0 {
 		d.note(Info, "retest-empty", fmt.Sprintf("%d %s of retested dice %s neither a value nor a bin and %s not count", s.empty, plural(s.empty, "measurement", "measurements"),
 			plural(s.empty, "has", "have"), plural(s.empty, "does", "do")), "", s.empty)

@@ -25,6 +25,8 @@ func (d *draft) lot(opt *Options) *Lot {
 	l := &Lot{id: d.id, inputs: d.inputs, wafers: d.wafers}
 	d.attributes(l)
 	l.earlier, l.first = d.split(keep)
+	d.wafers = slices.DeleteFunc(d.wafers, func(w Wafer) bool { return w.Lo == w.Hi }) // nothing tested
+	l.wafers = d.wafers
 	for i := range l.wafers {
 		if l.wafers[i].Attributes == nil {
 			l.wafers[i].Attributes = map[string]string{}

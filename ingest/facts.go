@@ -139,7 +139,7 @@ var cellCodes = set("unreadable-value", "not-finite", "out-of-range", "missing-w
 // carriedLater says whether a carried finding has a place after the description
 // of the tests.
 func (d *draft) carriedLater(f Finding) bool {
-	return cellCodes[f.Code] || f.Code == "duplicate-row" || f.Code == "joined-rows" || f.Code == "partial-retest"
+	return cellCodes[f.Code] || f.Code == "duplicate-row" || f.Code == "joined-rows" || f.Code == "partial-retest" || f.Code == "untested"
 }
 
 // takeCarried takes the carried findings out that are wanted.

@@ -43,6 +43,10 @@ type draft struct {
 
 	measurements, duplicates, joined int
 
+	weight       []int32 // rows of the files in each measurement; nil: one
+	untested     int     // measurements of dice that were not tested
+	untestedRows int     // rows of the files in these
+
 	seen      []extremes // by test
 	marks     [][]int8   // by test: readings that the file gives as bounds, see overRange; nil: none
 	compacted bool       // measurements that do not count are out of the columns
@@ -78,6 +82,25 @@ func (t *readings) flatInts(slot int, release bool) []int32 {
 		out = append(out, c.ints[slot]...)
 		if release {
 			c.ints[slot] = nil
+		}
+	}
+	return out
+}
+
+// flatWeight joins the rows of the files in each measurement; nil when each is
+// one row.
+func (t *readings) flatWeight() []int32 {
+	if !slices.ContainsFunc(t.chunks, func(c *chunk) bool { return c.weight != nil }) {
+		return nil
+	}
+	var out []int32
+	for _, c := range t.chunks {
+		if c.weight != nil {
+			out = append(out, c.weight...)
+			continue
+		}
+		for range c.n {
+			out = append(out, 1)
 		}
 	}
 	return out
@@ -269,6 +292,10 @@ func (t *readings) gather(ctx context.Context, o *order, opt *Options) ([]*draft
 		for i, d := range drafts {
 			d.ints[slot] = pick(flat, o, &o.lots[i])
 		}
+	}
+	weight := t.flatWeight()
+	for i, d := range drafts {
+		d.weight = pick(weight, o, &o.lots[i])
 	}
 	pass := t.flatPass()
 	for i, d := range drafts {

@@ -78,11 +78,18 @@ func (t *readings) lots(ctx context.Context, opt *Options) (*Batch, error) {
 	if err != nil {
 		return nil, err
 	}
+	if err := t.unknownProduct(drafts, opt.Product); err != nil {
+		return nil, err
+	}
 	t.constants(drafts)
 	for _, d := range drafts {
 		l := d.lot(opt)
 		b.Lots = append(b.Lots, l)
-		t.tally.Measurements += d.measurements
+		t.tally.Measurements += d.measurements - d.untested
+		if d.untested > 0 {
+			t.tally.Used -= d.untestedRows
+			t.tally.Discarded["untested"] += d.untestedRows
+		}
 		t.tally.Dice += l.Len()
 		t.tally.Earlier += len(l.earlier.Of)
 		t.tally.Duplicates += d.duplicates
