@@ -116,7 +116,7 @@ var badInputs = []badInput{
 		args: []string{"product", "lot.csv", "-o", "product.yaml"}, want: `product\.yaml: exists already`},
 
 	{name: "cut in the middle of a line", data: strings.TrimSuffix(small(), "5.80,0.9\n"), quality: "cut-short"},
-	{name: "nan, inf and 1e999", data: strings.Replace(strings.Replace(strings.Replace(small(), "25.00", "nan", 1), "25.10", "inf", 1), "25.20", "1e999", 1), quality: "not-finite"},
+	{name: "nan, inf and 1e999", data: strings.Replace(strings.Replace(strings.Replace(small(), "25.00", "nan", 1), "25.10", "inf", 1), "25.20", "1e999", 1), quality: "over-range"},
 	{name: "text in a number column", data: strings.Replace(small(), "25.10", "25.l0", 1), quality: "unreadable-value"},
 	{name: "a sentinel", data: strings.ReplaceAll(strings.ReplaceAll(small(), "25.10", "-9999"), "25.20", "-9999"), quality: "sentinel"},
 	{name: "short row", data: strings.Replace(small(), "L1,1,2,0,1,25.20,0.3", "L1,1,2,0,1", 1), quality: "short-row"},
