@@ -90,8 +90,9 @@ func (w *schemaWalk) fields(at, n, depth int) {
 	}
 }
 
-// checkMessage walks a message and gives the length of its body.
-func checkMessage(b []byte) (body int64, err error) {
+// checkMessage walks a message and gives the length of its body and the rows that
+// it says it has.
+func checkMessage(b []byte) (body, rows int64, err error) {
 	err = inBounds(func() error {
 		w := &schemaWalk{b, len(b)}
 		m := w.follow(0)
@@ -117,10 +118,13 @@ func checkMessage(b []byte) (body int64, err error) {
 			}
 		case 3:
 			w.batch(h)
+			if s := w.slot(h, 0); s != 0 {
+				rows = w.i64(s)
+			}
 		}
 		return nil
 	})
-	return body, err
+	return body, rows, err
 }
 
 func (w *schemaWalk) batch(table int) {
@@ -139,9 +143,9 @@ func inBounds(do func() error) (err error) {
 	return do()
 }
 
-// messageAt reads and checks the message at a place; next is the place behind it
-// and its body. io.EOF says that the stream ends here.
-func messageAt(from io.ReaderAt, at, size int64) (next int64, err error) {
+// messageAt reads and checks the message at a place, and adds its rows up; next is
+// the place behind it and its body. io.EOF says that the stream ends here.
+func messageAt(from io.ReaderAt, at, size int64, rows *int64) (next int64, err error) {
 	var head [8]byte
 	if _, err := from.ReadAt(head[:4], at); err != nil {
 		if at >= size {
@@ -167,53 +171,55 @@ func messageAt(from io.ReaderAt, at, size int64) (next int64, err error) {
 	if _, err := from.ReadAt(meta, start); err != nil {
 		return at, io.ErrUnexpectedEOF
 	}
-	body, err := checkMessage(meta)
+	body, n, err := checkMessage(meta)
 	if err != nil {
 		return at, err
 	}
-	if body < 0 || body > size-start-n {
+	start += int64(len(meta))
+	if body < 0 || body > size-start {
 		return at, io.ErrUnexpectedEOF
 	}
-	return start + n + body, nil
+	*rows += min(max(n, 0), 1<<31)
+	return start + body, nil
 }
 
 // checkStream walks the messages of an IPC stream and gives how far they are
 // sound, and why no further: nil at the stream's end.
-func checkStream(from io.ReaderAt, size int64) (sound int64, err error) {
+func checkStream(from io.ReaderAt, size int64) (sound, rows int64, err error) {
 	for at := int64(0); ; {
-		next, err := messageAt(from, at, size)
+		next, err := messageAt(from, at, size, &rows)
 		if err == io.EOF {
-			return next, nil
+			return next, rows, nil
 		}
 		if err != nil {
-			return at, fmt.Errorf("byte %d of %d: %w", at, size, err)
+			return at, rows, fmt.Errorf("byte %d of %d: %w", at, size, err)
 		}
 		at = next
 	}
 }
 
 // checkArrowFile walks the footer of an IPC file and the messages that it names.
-func checkArrowFile(from io.ReaderAt, size int64) error {
+func checkArrowFile(from io.ReaderAt, size int64) (rows int64, err error) {
 	const tail = 10 // length of the footer, and the mark
 	var end [tail]byte
 	if size < 2*tail {
-		return io.ErrUnexpectedEOF
+		return 0, io.ErrUnexpectedEOF
 	}
 	if _, err := from.ReadAt(end[:], size-tail); err != nil {
-		return err
+		return 0, err
 	}
 	if string(end[4:]) != "ARROW1" {
-		return errors.New("it does not end as such a file does")
+		return 0, errors.New("it does not end as such a file does")
 	}
 	n := int64(int32(binary.LittleEndian.Uint32(end[:])))
 	if n <= 0 || n > size-tail {
-		return errClaims
+		return 0, errClaims
 	}
 	b := make([]byte, n)
 	if _, err := from.ReadAt(b, size-tail-n); err != nil {
-		return err
+		return 0, err
 	}
-	return inBounds(func() error {
+	err = inBounds(func() error {
 		w := &schemaWalk{b, len(b)}
 		f := w.follow(0)
 		if s := w.slot(f, 1); s != 0 {
@@ -227,13 +233,14 @@ func checkArrowFile(from io.ReaderAt, size int64) error {
 				if offset < 0 || offset > size || meta < 0 || body < 0 || meta > size-offset || body > size-offset-meta {
 					return errClaims
 				}
-				if _, err := messageAt(from, offset, size); err != nil {
+				if _, err := messageAt(from, offset, size, &rows); err != nil {
 					return err
 				}
 			}
 		}
 		return nil
 	})
+	return rows, err
 }
 
 // checkParquet walks the footer of a Parquet file.

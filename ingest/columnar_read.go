@@ -73,6 +73,7 @@ type tableReading struct {
 	levels []level // of text columns, by field
 	c      *chunk
 	room   int
+	expect int64        // rows that the batches of a file say they have
 	text   []globalText // by field
 	mu     sync.Mutex   // of odd
 }

@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"runtime"
 	"sync/atomic"
 
 	"github.com/apache/arrow/go/v17/arrow"
@@ -244,7 +245,7 @@ func (t *tableReading) arrowFile() error {
 		return err
 	}
 	defer done()
-	if err := checkArrowFile(at, size); err != nil {
+	if t.expect, err = checkArrowFile(at, size); err != nil {
 		return err
 	}
 	r, err := ipc.NewFileReader(io.NewSectionReader(at, 0, size), ipc.WithAllocator(t.limit))
@@ -270,7 +271,8 @@ func (t *tableReading) arrowStream() error {
 		return err
 	}
 	defer done()
-	sound, broken := checkStream(at, size)
+	sound, rows, broken := checkStream(at, size)
+	t.expect = rows
 	if sound == 0 && broken != nil {
 		return broken
 	}
@@ -306,6 +308,10 @@ func (t *tableReading) batches(s *arrow.Schema, next func() (arrow.Record, error
 		}
 		if err == nil {
 			err = guard(t.in.name, func() error { return t.batch(s, rec, first) })
+		}
+		if n := t.limit.made.Load(); n > 32<<20 {
+			t.limit.made.Add(-n)
+			runtime.GC() // the batches before are garbage; a large lot must not stand in memory twice
 		}
 		var e *Error
 		switch {
@@ -355,6 +361,9 @@ func (t *tableReading) batch(s *arrow.Schema, rec arrow.Record, first bool) erro
 	if n < 0 || n > 1<<31-1-t.c.n {
 		return fmt.Errorf("a batch says that it holds %d rows", n)
 	}
+	if first && t.expect > int64(n) && t.expect < min(8*t.in.size, 1<<31) {
+		_ = t.makeRoom(int(t.expect)) // only a claim: what is too much shows when the rows come
+	}
 	if want := t.c.n + n; want > t.room {
 		if err := t.makeRoom(max(want, t.room+t.room/2)); err != nil {
 			if err := t.makeRoom(want); err != nil {
@@ -376,6 +385,7 @@ type limitAllocator struct {
 	file string
 	most int64
 	used atomic.Int64
+	made atomic.Int64 // by arrays, whether still in use or not
 }
 
 func newLimit(in *input) *limitAllocator {
@@ -383,6 +393,7 @@ func newLimit(in *input) *limitAllocator {
 }
 
 func (l *limitAllocator) take(n int) {
+	l.made.Add(int64(n))
 	if n < 0 || l.used.Add(int64(n)) > l.most {
 		l.used.Add(-int64(n))
 		panic(&Error{File: l.file, What: fmt.Sprintf("unpacks to more than %d times its size, or is damaged; it is not read", unpackRatio), Remedy: "fetch or export the file again"})

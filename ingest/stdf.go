@@ -109,12 +109,20 @@ type touchState struct {
 // grow makes room for more rows: for all that are to be expected when the rest
 // of the file is like what was read.
 func (s *stdfReading) grow() {
-	want := s.room + s.room/4 + 64
-	if s.src.raw > 0 && s.n > 0 {
-		want = max(want, int(float64(s.n)*float64(s.src.size)/float64(s.src.raw)*1.02))
+	want := max(s.room+s.room/4, 4096)
+	if s.n > 0 {
+		at := s.parts.Reader().Position()
+		if s.in.packed != "" {
+			at = s.src.raw
+		}
+		want = max(want, int(float64(s.n)*float64(s.src.size)/float64(at)*1.02))
 	}
-	// A packed file can expand; a damaged one must not make this reach far.
-	want = min(want, max(4*s.room, 4096))
+	if s.in.packed == "" {
+		const part = 21 // bytes of a PRR, at least
+		want = min(want, max(s.room+64, int(s.src.size/part)+64))
+	} else {
+		want = min(want, max(4*s.room, 4096)) // no file should make this reach far by a guess
+	}
 	for _, c := range []*[]int32{&s.x, &s.y, &s.site, &s.hard, &s.soft, &s.touch, &s.wafer, &s.run, &s.head} {
 		*c = larger(*c, want)
 	}
