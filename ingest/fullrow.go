@@ -149,6 +149,9 @@ func (p *parser) store(c *chunk, k int, cell []byte, here func() place) {
 			return
 		}
 		v, st := parseNumber(t, p.l.decimal)
+		if st == cellBad {
+			v, st = p.quantity(k, string(t))
+		}
 		if st != cellNumber && st != cellEmpty {
 			if st != cellBound {
 				v = oddNaN[st]
@@ -157,6 +160,30 @@ func (p *parser) store(c *chunk, k int, cell []byte, here func() place) {
 		}
 		c.values[f.slot][n] = v
 	}
+}
+
+// quantity reads a number with thousands apart, or with a unit behind it, which
+// is converted to the unit of the column or of the row.
+func (p *parser) quantity(k int, t string) (float64, status) {
+	v, text, ok := splitQuantity(t, p.l.decimal)
+	if !ok || text == "" {
+		if ok {
+			return v, cellNumber
+		}
+		return math.NaN(), cellBad
+	}
+	unit := p.units[k]
+	if p.l.long {
+		unit, _ = config.ParseUnit(p.unit)
+		if p.unit == "" {
+			unit = config.Unit{}
+		}
+	}
+	u, err := config.ParseUnit(text)
+	if err != nil || !unit.Given() || !u.Compatible(unit) {
+		return math.NaN(), cellBad
+	}
+	return convertUnit(v, u, unit), cellNumber
 }
 
 // limit reads a limit of a row of a long table, in the row's unit.

@@ -118,8 +118,15 @@ func (l *layout) judge(roles []string, product *config.Product) {
 					zeros++
 				}
 			case cellBad:
-				texts++
+				if _, ok := parseGrouped(c); ok && roles[i] == "" {
+					numbers++
+				} else {
+					texts++
+				}
 			}
+		}
+		if texts > numbers && roles[i] == "" && l.unitInCells(i) {
+			numbers, texts = numbers+texts, 0
 		}
 		text := texts > numbers
 		switch _, whole := intRoles[roles[i]]; {
@@ -198,6 +205,36 @@ func (l *layout) wholeNumbers(i int) bool {
 	return whole > others
 }
 
+// unitInCells says whether all cells of a column are numbers with a unit behind
+// them, of one dimension and some with a fraction: "5A" may be a name. The first
+// unit is that of the column.
+func (l *layout) unitInCells(i int) bool {
+	var first config.Unit
+	fraction := false
+	for _, r := range l.sample {
+		if i >= len(r) || r[i] == "" || word([]byte(r[i])) != cellBad {
+			continue
+		}
+		v, text, ok := splitQuantity(r[i], l.decimal)
+		u, err := config.ParseUnit(text)
+		if !ok || text == "" || err != nil || !first.Compatible(u) {
+			return false
+		}
+		if !first.Given() {
+			first = u
+		}
+		fraction = fraction || v != math.Trunc(v)
+	}
+	if !first.Given() || !fraction {
+		return false
+	}
+	if l.cellUnits == nil {
+		l.cellUnits = map[int]string{}
+	}
+	l.cellUnits[i] = first.Text
+	return true
+}
+
 // isPosition tells "X (mm)", a die's position in a unit of length.
 func isPosition(header string) bool {
 	name, inside := bracket(header)
@@ -239,7 +276,11 @@ func (l *layout) place(roles []string, product *config.Product) {
 			attributes++
 		} else if role == "" {
 			f.kind, f.slot = valueField, len(l.columns)
-			l.columns = append(l.columns, l.testColumn(i, stripped, product))
+			c := l.testColumn(i, stripped, product)
+			if c.unitText == "" {
+				c.unitText = l.cellUnits[i]
+			}
+			l.columns = append(l.columns, c)
 		}
 	}
 }

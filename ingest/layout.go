@@ -28,6 +28,7 @@ type layout struct {
 	columns     []testColumn // of a wide table, by field.slot
 	sample      [][]string   // first data rows
 	product     *config.Product
+	cellUnits   map[int]string // of columns whose cells hold their unit, see unitInCells
 }
 
 // fieldKind says how the cells of a column are read.

@@ -54,3 +54,28 @@ func findingBy(fs []Finding, code string) *Finding {
 	}
 	return nil
 }
+
+// Numbers with thousands apart, and with their unit in the cell.
+func TestQuantitiesInCells(t *testing.T) {
+	for _, c := range []struct {
+		name, text string
+		want       []float64
+	}{
+		{"thousands, decimal comma", table("Los;Scheibe;X;Y;A", "L;1;0;0;1.120,5", "L;1;1;0;999,5"), []float64{1120.5, 999.5}},
+		{"thousands in quotes", table("WAFER,X,Y,A", `1,0,0,"1,234.5"`, "1,1,0,999.5"), []float64{1234.5, 999.5}},
+		{"all in thousands", table("WAFER,X,Y,A", `1,0,0,"1,234.5"`, `1,1,0,"2,345.5"`), []float64{1234.5, 2345.5}},
+		{"unit in every cell", table("WAFER,X,Y,A", "1,0,0,1.2nA", "1,1,0,3.5 nA"), []float64{1.2e-9, 3.5e-9}},
+		{"units of one dimension", table("WAFER,X,Y,A", "1,0,0,1.2nA", "1,1,0,350pA", "1,2,0,1uA"), []float64{1.2e-9, 350e-12, 1e-6}},
+		{"unit in a cell of a column with a unit", table("WAFER,X,Y,A [nA]", "1,0,0,1.2", "1,1,0,350pA"), []float64{1.2e-9, 350e-12}},
+		{"unit in a cell of a long table", table("WAFER,X,Y,TEST,VALUE,UNIT", "1,0,0,A,1.2,nA", "1,1,0,A,350pA,nA"), []float64{1.2e-9, 350e-12}},
+	} {
+		l := mustRead(t, c.text, Options{}).Lots[0]
+		if testNames(l) != "A" || !cmp.Equal(c.want, l.Values(0), exactly) {
+			t.Errorf("%s: tests %q %v, want %v", c.name, testNames(l), l.Values(0), c.want)
+		}
+	}
+	l := mustRead(t, table("WAFER,X,Y,POCKETNAME,A", "1,0,0,5A,1.5", "1,1,0,6A,2.5"), Options{}).Lots[0]
+	if testNames(l) != "A" {
+		t.Errorf("names taken for quantities: %s", testNames(l))
+	}
+}

@@ -3,6 +3,8 @@ package ingest
 import (
 	"bytes"
 	"math"
+
+	"kneepoint/config"
 )
 
 // parser turns blocks into chunks. One goroutine uses it at a time.
@@ -18,9 +20,10 @@ type parser struct {
 	wafer    int        // column of the wafer ids, -1 none
 	// waferKnown says that a comment gives the wafer of rows that do not.
 	waferKnown bool
-	testField  int    // column of the test names of a long table, -1 none
-	unitField  int    // and of the units
-	test, unit string // of the row at work
+	testField  int                 // column of the test names of a long table, -1 none
+	unitField  int                 // and of the units
+	units      map[int]config.Unit // of the columns of a wide table
+	test, unit string              // of the row at work
 }
 
 // column is where the cells of a column go.
@@ -38,7 +41,10 @@ func newParser(l *layout, sch *schema, file int, careful bool) *parser {
 	}
 	p.interns = make([]interner, textAttributes+len(sch.attributes))
 	p.columns, p.wafer, p.testField = make([]column, len(l.fields)), -1, -1
-	p.unitField = -1
+	p.unitField, p.units = -1, map[int]config.Unit{}
+	for i := range l.columns {
+		p.units[l.columns[i].field] = l.columns[i].unit
+	}
 	p.waferKnown = l.commented("wafer") != ""
 	for k, f := range l.fields {
 		if f.kind == textField {
