@@ -191,9 +191,7 @@ func metaOfLot(l *Lot) (string, error) {
 			m.Findings = append(m.Findings, findingMeta{f, i < l.shared})
 		}
 	}
-	for _, in := range l.inputs {
-		m.Sources = append(m.Sources, in)
-	}
+	m.Sources = append(m.Sources, l.inputs...)
 	b, err := json.Marshal(m)
 	return string(b), err
 }

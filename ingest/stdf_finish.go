@@ -133,9 +133,7 @@ func mirAttributes(r *stdf.Run) [][2]string {
 		a = append(a, [2]string{"start time", stdf.Time(m.StartTime).Format("2006-01-02 15:04:05")})
 	}
 	for _, sdr := range r.SDRs {
-		for _, kv := range [][2]string{{"probe card", sdr.CardID}, {"load board", sdr.LoadBoardID}, {"prober", sdr.HandlerID}} {
-			a = append(a, kv)
-		}
+		a = append(a, [][2]string{{"probe card", sdr.CardID}, {"load board", sdr.LoadBoardID}, {"prober", sdr.HandlerID}}...)
 	}
 	var given [][2]string
 	for _, kv := range a {

@@ -141,10 +141,11 @@ func BenchmarkPaintStates(b *testing.B) {
 func hurt(b *testing.B) SignatureInput {
 	b.Helper()
 	g, x, y, fail := benchWafer(b, 0.05)
+	often, seldom := scatter(len(x), 0.6, 10), scatter(len(x), 0.12, 11)
 	for i := range x {
 		u, v := float64(x[i])/167.5, float64(y[i])/167.5
 		near := (u-0.4)*(u-0.4)+(v+0.3)*(v+0.3) < 0.02 || math.Abs(v-0.5*u-0.3) < 0.008 && u > -0.5 && u < 0.4
-		if near && i%3 != 0 || u*u+v*v > 0.88 && i%8 == 0 {
+		if near && often[i] || u*u+v*v > 0.88 && seldom[i] {
 			fail[i] = true
 		}
 	}

@@ -13,7 +13,8 @@ const layers = 12
 type explained struct {
 	*pattern
 	depth  []uint8 // by die
-	hidden bool    // a remainder of an earlier pattern, not worth a name
+	hidden bool    // a remainder of another pattern's outline, not worth a name
+	mends  int     // that pattern's place in the model
 }
 
 // layerEdges are the outer edges of layers in units of the outline's reach: 1 is the
@@ -150,7 +151,6 @@ type mixture struct {
 	kind  []int32   // by die
 	depth [][]uint8 // by pattern, by kind of die
 	o, n  []float64 // by kind of die
-	p     []float64 // by kind of die
 }
 
 func (f *field) mix(found []*explained) *mixture {

@@ -30,9 +30,11 @@ type field struct {
 	polar
 
 	// what the last full search for the dear shapes came up with
-	starts  []spotlight
-	periods []spotlight
-	pending int // dear shapes that were found and are not yet part of the model
+	starts      []spotlight
+	periods     []spotlight
+	kept        []spotlight // starts and periods of patterns that became part of a model
+	keptPeriods []spotlight
+	pending     int // dear shapes that were found and are not yet part of the model
 }
 
 // farOut is how far from the centre, in radii, a die may lie to take part: one further

@@ -1,6 +1,9 @@
 package wafermap
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 // path is a straight or gently bowed band of cells. Along its main axis (columns, or
 // lines when turned) it runs from cell from to cell to, exclusive; its middle crosses from y0
@@ -10,10 +13,7 @@ type path struct {
 	from, to    int
 	y0, y1, sag float64
 	thick       float64
-	left, right int        // extent of the curve's definition: y0 holds at left, y1 at right
-	ends        [4]float64 // u, v of both ends, and of the middle
-	middle      [2]float64
-	halfWidth   float64
+	left, right int // y0 holds at left, y1 at right
 }
 
 // at is the middle across at a place along.
@@ -102,8 +102,31 @@ var curvatures = []float64{-1.6, -0.8, -0.35, 0.35, 0.8, 1.6}
 const bowedCells = 3500 // cells of the raster that bowed lines are looked for on: blocks of cells where there are more
 
 // findLine looks for straight and gently bowed lines of all slopes, offsets, ends and a
-// few thicknesses, then fits the best few.
-func (f *field) findLine() *pattern {
+// few thicknesses, then fits the best few. Unless fresh, it fits those of the last time
+// again.
+func (f *field) findLine(fresh bool) *pattern {
+	if fresh || f.starts == nil {
+		f.starts = f.lineStarts()
+	}
+	const polished = 6
+	best := shortlist{most: polished}
+	starts := append(slices.Clone(f.starts), f.kept...)
+	for i, it := range starts {
+		if x, v := f.bow(it); v > 0 {
+			best.offer(v, [6]float64{float64(i), x[0], x[1], x[2], x[3]}, func(a, b [6]float64) bool { return a == b })
+		}
+	}
+	var top *pattern
+	for _, it := range best.items {
+		if p := f.fitLine(starts[int(it.x[0])]); top == nil || p.gain-p.cost > top.gain-top.cost {
+			top = p
+		}
+	}
+	return top
+}
+
+// lineStarts are the places of lines worth fitting.
+func (f *field) lineStarts() []spotlight {
 	straight, bowed := shortlist{most: 16}, shortlist{most: 16}
 	block := 1
 	for f.cols*f.lines > bowedCells*block*block {
@@ -123,13 +146,7 @@ func (f *field) findLine() *pattern {
 			}
 		}
 	}
-	var best *pattern
-	for _, it := range append(straight.items, bowed.items...) {
-		if p := f.bow(it); p != nil && (best == nil || p.gain-p.cost > best.gain-best.cost) {
-			best = p
-		}
-	}
-	return best
+	return append(straight.items, bowed.items...)
 }
 
 // pack lays the cells out along the main axis, each the sum of thick cells across.
@@ -338,35 +355,45 @@ func polish(x []float64, top float64, value func([]float64) float64) float64 {
 	return climb(x, []float64{2, 2, 0.5, 0.5, 0.5, 0.5}, 3, value)
 }
 
-// bow fits a line's ends, thickness and curvature from a start.
-func (f *field) bow(it spotlight) *pattern {
-	turned := it.x[0] == 1
-	b := f.band(turned)
-	mid, across, slope, l, bow := it.x[1], it.x[2], it.x[3], it.x[4], it.x[5]
-	x := []float64{max(0, mid-(l-1)/2), min(float64(b.long-1), mid+(l-1)/2), 0, 0, bow, 2}
+// lineFit is the fitting of one line: its ends, thickness and bow.
+type lineFit struct {
+	f      *field
+	band   band
+	turned bool
+}
+
+func (l lineFit) path(x []float64) path {
+	p := path{turned: l.turned, from: int(math.Round(x[0])), to: int(math.Round(x[1])) + 1, y0: x[2], y1: x[3], sag: x[4], thick: x[5]}
+	p.left, p.right = p.from, p.to-1
+	return p
+}
+
+func (l lineFit) value(x []float64) float64 {
+	p := l.path(x)
+	length := math.Hypot(x[1]-x[0], x[3]-x[2]) + 1
+	if p.from < 0 || p.to > l.band.long || p.to-p.from < shortestLine-1 || x[5] < 0.8 || x[5] > 8 ||
+		length < 4*x[5] || math.Abs(x[4]) > 0.2*length || math.Abs(x[3]-x[2]) > 1.6*(x[1]-x[0]) {
+		return -1
+	}
+	return l.f.gain(l.band.sweep(&p)) - l.f.lineCost(x[5])
+}
+
+// bow fits a line from a start.
+func (f *field) bow(it spotlight) (x []float64, top float64) {
+	l := lineFit{f, f.band(it.x[0] == 1), it.x[0] == 1}
+	mid, across, slope, length, bow := it.x[1], it.x[2], it.x[3], it.x[4], it.x[5]
+	x = []float64{max(0, mid-(length-1)/2), min(float64(l.band.long-1), mid+(length-1)/2), 0, 0, bow, 2}
 	x[2], x[3] = across-slope*(mid-x[0])-bow, across+slope*(x[1]-mid)-bow
-	step := []float64{max(1, l/5), max(1, l/5), max(1, l/16), max(1, l/16), max(0.5, l/16), 1}
-	make_ := func(x []float64) path {
-		p := path{turned: turned, from: int(math.Round(x[0])), to: int(math.Round(x[1])) + 1, y0: x[2], y1: x[3], sag: x[4], thick: x[5]}
-		p.left, p.right = p.from, p.to-1
-		return p
-	}
-	value := func(x []float64) float64 {
-		p := make_(x)
-		length := math.Hypot(x[1]-x[0], x[3]-x[2]) + 1
-		if p.from < 0 || p.to > b.long || p.to-p.from < shortestLine-1 || x[5] < 0.8 || x[5] > 8 ||
-			length < 4*x[5] || math.Abs(x[4]) > 0.2*length || math.Abs(x[3]-x[2]) > 1.6*(x[1]-x[0]) {
-			return -1
-		}
-		return f.gain(b.sweep(&p)) - f.lineCost(x[5])
-	}
-	top := climb(x, step, 5, value)
-	if top <= 0 {
-		return nil
-	}
-	top = polish(x, top, value)
-	p := &pattern{shape: shapeLine, line: make_(x)}
-	p.tally = b.sweep(&p.line)
+	step := []float64{max(1, length/5), max(1, length/5), max(1, length/16), max(1, length/16), max(0.5, length/16), 1}
+	return x, climb(x, step, 5, l.value)
+}
+
+func (f *field) fitLine(it spotlight) *pattern {
+	l := lineFit{f, f.band(it.x[0] == 1), it.x[0] == 1}
+	x, top := f.bow(it)
+	polish(x, top, l.value)
+	p := &pattern{shape: shapeLine, line: l.path(x), start: it}
+	p.tally = l.band.sweep(&p.line)
 	p.gain, p.cost = f.gain(p.tally), f.lineCost(x[5])
 	return p
 }

@@ -38,12 +38,15 @@ type pattern struct {
 	from, to            int   // band, order: first and one after last
 	sites               []int32
 
+	start spotlight // line, shot, comb: what it was fitted from
+
 	tally
 	gain  float64 // log-likelihood ratio
 	cost  float64 // logarithm of the number of places of this size that were looked at, about
-	score float64 // gain less cost less what chance reaches anyhow
-	named float64
-	p     float64 // chance of such a score among all places of all shapes
+	p     float64 // chance that the best place of any shape does as well on a wafer without
+	told  bool    // whether that is small enough to tell it
+	net   float64 // gain less the price of having looked for it
+	named float64 // net of depth and freedom, by which shapes are compared
 }
 
 // climb looks for the highest value by steps along one coordinate at a time, halved when

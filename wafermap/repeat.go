@@ -47,10 +47,44 @@ func (f *field) newFolder() *folder {
 }
 
 // findRepeats looks for dice that fail in step with a period along both axes (shot) and
-// along one (comb), of all periods and, for shots, the one given.
-func (f *field) findRepeats() (shot, comb *pattern) {
+// along one (comb), of all periods and, for shots, the one given. Unless fresh, it
+// tries the periods of the last time again.
+func (f *field) findRepeats(fresh bool) (shot, comb *pattern) {
 	d := f.newFolder()
 	mx, my := min(longestPeriod, d.cols/fewestPeriods), min(longestPeriod, d.lines/fewestPeriods)
+	if fresh || f.periods == nil {
+		f.periods = d.foldAll(mx, my)
+	}
+	better := func(p, q *pattern) *pattern {
+		if p == nil || q != nil && q.gain-q.cost >= p.gain-p.cost {
+			return q
+		}
+		return p
+	}
+	if sx, sy := f.in.ShotColumns, f.in.ShotRows; sx > 1 && sy > 1 {
+		px, py := sx/divisor(sx, d.spaceX), sy/divisor(sy, d.spaceY)
+		if px*py > 1 && px < d.cols && py < d.lines {
+			shot = better(d.settle(px, py, 0), shot)
+		}
+	}
+	for _, it := range append(slices.Clone(f.periods), f.keptPeriods...) {
+		if px, py := int(it.x[0]), int(it.x[1]); px > 1 && py > 1 {
+			shot = better(d.settle(px, py, math.Log(float64((mx-1)*(my-1)))), shot)
+		} else {
+			comb = better(d.settle(px, py, math.Log(float64(mx+my-2))), comb)
+		}
+	}
+	if shot != nil {
+		shot.shape = shapeShot
+	}
+	if comb != nil {
+		comb.shape = shapeComb
+	}
+	return shot, comb
+}
+
+// foldAll tries all pairs of periods and returns the best few.
+func (d *folder) foldAll(mx, my int) []spotlight {
 	both, one := shortlist{most: 6}, shortlist{most: 2}
 	same := func(a, b [6]float64) bool { return a[0] == b[0] && a[1] == b[1] }
 	for px := 1; px <= mx; px++ {
@@ -67,31 +101,7 @@ func (f *field) findRepeats() (shot, comb *pattern) {
 			list.offer(d.peak(px*py)-math.Log(float64(px*py)), [6]float64{float64(px), float64(py)}, same)
 		}
 	}
-	better := func(p, q *pattern) *pattern {
-		if p == nil || q != nil && q.gain-q.cost >= p.gain-p.cost {
-			return q
-		}
-		return p
-	}
-	if sx, sy := f.in.ShotColumns, f.in.ShotRows; sx > 1 && sy > 1 {
-		px, py := sx/divisor(sx, d.spaceX), sy/divisor(sy, d.spaceY)
-		if px*py > 1 && px < d.cols && py < d.lines {
-			shot = better(d.settle(px, py, 0), shot)
-		}
-	}
-	for _, it := range both.items {
-		shot = better(d.settle(int(it.x[0]), int(it.x[1]), math.Log(float64((mx-1)*(my-1)))), shot)
-	}
-	for _, it := range one.items {
-		comb = better(d.settle(int(it.x[0]), int(it.x[1]), math.Log(float64(mx+my-2))), comb)
-	}
-	if shot != nil {
-		shot.shape = shapeShot
-	}
-	if comb != nil {
-		comb.shape = shapeComb
-	}
-	return shot, comb
+	return append(both.items, one.items...)
 }
 
 func (d *folder) foldColumns(px int) {
@@ -172,7 +182,7 @@ func (d *folder) settle(px, py int, free float64) *pattern {
 		}
 		gain := f.gain(t)
 		if best == nil || gain-choices > best.gain-best.cost {
-			best = &pattern{periodX: px * d.spaceX, periodY: py * d.spaceY, cells: slices.Clone(order[:k+1]), tally: t, gain: gain, cost: choices}
+			best = &pattern{start: spotlight{x: [6]float64{float64(px), float64(py)}}, periodX: px * d.spaceX, periodY: py * d.spaceY, cells: slices.Clone(order[:k+1]), tally: t, gain: gain, cost: choices}
 		}
 	}
 	if best != nil {

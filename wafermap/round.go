@@ -5,7 +5,7 @@ import "math"
 const (
 	centreReach  = 0.18 // a disc whose centre is nearer to the wafer's is a centre, else a blob
 	annulusReach = 0.22 // farthest that the centre of an annulus may lie from the wafer's
-	ringReach    = 0.15 // and that of the inside of an edge ring
+	ringReach    = 0.06 // and that of the inside of an edge ring
 	widestCentre = 0.62 // largest radius of a centre
 	deepestRing  = 0.58 // smallest inner radius of an edge ring
 )
@@ -241,8 +241,8 @@ func (f *field) findRing() *pattern {
 }
 
 // findArc looks for a part of the edge ring, and findSector for a slice of the cake.
-func (f *field) findArc() *pattern    { return f.findWedge(shapeArc, 32, 62, 5, 106) }
-func (f *field) findSector() *pattern { return f.findWedge(shapeSector, 0, 0, 6, 60) }
+func (f *field) findArc() *pattern    { return f.findWedge(shapeArc, 32, 62, 5, 89) }
+func (f *field) findSector() *pattern { return f.findWedge(shapeSector, 0, 0, 6, 50) }
 
 func (f *field) findWedge(s shape, r0, r1, narrow, wide int) *pattern {
 	top := 0.0

@@ -14,16 +14,22 @@ const (
 	lineLike    = 1<<shapeArc | 1<<shapeSector | 1<<shapeBlob | 1<<shapeBand | 1<<shapeOrder
 )
 
-// candidates looks for shapes of a set and returns the best of each, best first.
-func (f *field) candidates(set int) []*pattern {
+// candidates looks for shapes of a set and returns the best of each, ranked. The
+// shapes that take longest are looked for anew only when fresh, else among what was
+// found the last time.
+func (f *field) candidates(set int, fresh bool) []*pattern {
 	var all []*pattern
 	add := func(s shape, find func() *pattern) {
 		if set>>s&1 == 0 {
 			return
 		}
+		f.pending &^= 1 << s
 		if p := find(); p != nil && p.gain > 0 {
-			p.judge(f)
+			f.judge(p)
 			all = append(all, p)
+			if dearShapes>>s&1 == 1 && p.told {
+				f.pending |= 1 << s
+			}
 		}
 	}
 	if f.round {
@@ -35,36 +41,43 @@ func (f *field) candidates(set int) []*pattern {
 	}
 	add(shapeRamp, f.findRamp)
 	add(shapeBlob, f.findBlob)
-	add(shapeLine, f.findLine)
+	add(shapeLine, func() *pattern { return f.findLine(fresh) })
 	if set&(1<<shapeShot|1<<shapeComb) != 0 {
-		shot, comb := f.findRepeats()
+		shot, comb := f.findRepeats(fresh)
 		add(shapeShot, func() *pattern { return shot })
-		if f.in.Site == nil {
-			add(shapeComb, func() *pattern { return comb })
-		}
+		add(shapeComb, func() *pattern { return comb })
 	}
 	add(shapeSite, f.findSite)
 	add(shapeOrder, f.findOrder)
 	add(shapeBand, f.findBand)
-	slices.SortStableFunc(all, func(a, b *pattern) int { return cmp.Compare(b.score, a.score) })
+	return ranked(all)
+}
+
+// ranked sorts patterns: those beyond chance first, then by net evidence.
+func ranked(all []*pattern) []*pattern {
+	slices.SortStableFunc(all, func(a, b *pattern) int {
+		if a.told != b.told {
+			if a.told {
+				return -1
+			}
+			return 1
+		}
+		return cmp.Compare(b.net, a.net)
+	})
 	return all
 }
-
-func (p *pattern) judge(f *field) {
-	p.score = (p.gain - p.cost - nullLevel[p.shape] - 0.6*(math.Log10(max(f.total.o, 3))-2)*nullSlope[p.shape]) / 1.2
-	p.p = 0
-}
-
-var nullLevel = [shapes_]float64{.9, 2.7, 1.1, 4.9, 4.0, 2.9, .4, 1.1, -2.4, -2, 1.4, -1.2, 1.8}
-var nullSlope = [shapes_]float64{.2, .2, .2, .4, 1, 1, 0, 0, 0, 0, .3, 0, .3}
-var freedom = [shapes_]float64{1, 3, 2, 3, 4, 5, 1, 2, 0, 0, 2, 0, 2}
-
-const enoughScore = 7
 
 // choose names the pattern: of the candidates whose evidence comes near the best, the
 // one that explains most for what it is free to fit.
 func (f *field) choose(found []*explained, c []*pattern) *explained {
-	return f.rank(found, c)[0]
+	x := f.rank(found, c)[0]
+	switch x.shape {
+	case shapeLine:
+		f.kept = append(f.kept, x.start)
+	case shapeShot, shapeComb:
+		f.keptPeriods = append(f.keptPeriods, x.start)
+	}
+	return x
 }
 
 func (f *field) rank(found []*explained, c []*pattern) []*explained {
@@ -74,7 +87,7 @@ func (f *field) rank(found []*explained, c []*pattern) []*explained {
 		before = f.fitMixture(f.mix(found)).likelihood
 	}
 	for _, p := range c {
-		if p.score < 0.6*c[0].score || p.score < enoughScore {
+		if p.net < 0.6*c[0].net || !p.told {
 			break
 		}
 		x := f.explain(p)
@@ -85,53 +98,70 @@ func (f *field) rank(found []*explained, c []*pattern) []*explained {
 		if len(found) > 0 {
 			gain += f.fitMixture(f.mix(append(slices.Clone(found), x))).likelihood - before - f.depthGain(x)
 		}
-		p.named = p.score + (gain-p.gain-freedom[p.shape]/2*math.Log(2*max(gain, 1)))/1.2
+		p.named = p.net + gain - p.gain - p.freedom()/2*math.Log(2*max(gain, 1))
 		all = append(all, x)
 	}
 	slices.SortStableFunc(all, func(a, b *explained) int { return cmp.Compare(b.named, a.named) })
 	return all
 }
 
+// freedom is the number of continuous parameters of a shape: each costs half the
+// logarithm of the evidence when shapes are compared (Schwarz 1978, Ann. Stat. 6, 461),
+// because the better the evidence, the more finely it tells them.
+var freedom = [shapes_]float64{shapeRing: 1, shapeArc: 3, shapeCentre: 2, shapeAnnulus: 3, shapeLine: 4, shapeBlob: 5, shapeRamp: 1, shapeSector: 2, shapeBand: 2, shapeOrder: 2}
+
+func (p *pattern) freedom() float64 {
+	k := freedom[p.shape]
+	if (p.shape == shapeRing || p.shape == shapeAnnulus) && math.Hypot(p.cu, p.cv) > 0.02 {
+		k += 2
+	}
+	return k
+}
+
 const mostPatterns = 8
 
-// grow adds patterns of a set of shapes to a model until no more are found. Lines and
-// repeats take longest to look for, so they come last, each as long as it is found.
+// grow adds patterns of a set of shapes to a model until no more are found.
 func (f *field) grow(found []*explained, set int) []*explained {
 	for len(found) < mostPatterns {
 		f.refit(found)
-		c := f.candidates(set &^ dearShapes)
-		if len(c) == 0 || c[0].score < enoughScore {
-			if c = f.candidates(set & dearShapes); len(c) == 0 || c[0].score < enoughScore {
-				break
-			}
-		} else if set>>shapeLine&1 == 1 && lineLike>>c[0].shape&1 == 1 {
-			c = merge(c, f.candidates(1<<shapeLine))
+		c := f.candidates(set&^dearShapes|set&f.pending, false)
+		switch {
+		case len(c) == 0 || !c[0].told:
+			c = f.candidates(set&dearShapes, true)
+		case lineLike>>c[0].shape&1 == 1 && set>>shapeLine&1 == 1 && f.pending>>shapeLine&1 == 0:
+			c = ranked(append(c, f.candidates(1<<shapeLine, false)...))
+		}
+		if len(c) == 0 || !c[0].told {
+			break
 		}
 		found = append(found, f.choose(found, c))
 	}
 	return found
 }
 
-func merge(a, b []*pattern) []*pattern {
-	all := append(a, b...)
-	slices.SortStableFunc(all, func(a, b *pattern) int { return cmp.Compare(b.score, a.score) })
-	return all
-}
-
 // search finds the patterns of a wafer. A first pattern that is the best
 // compromise between two that overlap leads on to a crowd of small repairs; so where
 // patterns overlap, other first patterns are tried, and at the end each pattern is
-// looked for and named again with the others known.
-func (f *field) search() []*explained {
-	c := f.candidates(allShapes)
-	if len(c) == 0 || c[0].score < enoughScore {
-		return nil
+// looked for and named again with the others known. Where nothing is found, p is that of
+// the strongest place.
+func (f *field) search() (found []*explained, p float64) {
+	c := f.candidates(allShapes, true)
+	if len(c) == 0 {
+		return nil, 1
 	}
+	if !c[0].told {
+		p = 1
+		for _, x := range c {
+			p = min(p, x.p)
+		}
+		return nil, p
+	}
+	f.choose(nil, c)
 	starts := f.rank(nil, c)
 	if roundShapes>>starts[0].shape&1 == 0 {
-		return f.settle(f.grow(starts[:1:1], allShapes))
+		return f.settle(f.grow(starts[:1:1], allShapes)), 0
 	}
-	found := f.grow(starts[:1:1], allShapes)
+	found = f.grow(starts[:1:1], allShapes)
 	if touching(found) {
 		best := f.worth(found)
 		for k := 1; k < len(starts) && k < 4; k++ {
@@ -144,7 +174,7 @@ func (f *field) search() []*explained {
 			}
 		}
 	}
-	return f.settle(f.grow(found, allShapes))
+	return f.settle(f.grow(found, allShapes)), 0
 }
 
 // settle looks for each pattern again with the others known, drops those that are
@@ -162,8 +192,8 @@ func (f *field) settle(found []*explained) []*explained {
 			if roundShapes>>found[k].shape&1 == 0 {
 				set = lineLike | 1<<found[k].shape
 			}
-			c := f.candidates(set)
-			if len(c) == 0 || c[0].score < enoughScore {
+			c := f.candidates(set, false)
+			if len(c) == 0 || !c[0].told {
 				found, changed = others, true
 				k--
 				continue
@@ -184,11 +214,12 @@ func (f *field) settle(found []*explained) []*explained {
 		}
 		k++
 	}
-	for _, x := range found {
-		x.hidden = false
-		for _, y := range found {
-			if x != y && x.shape == y.shape && x.gain < mending[x.shape]*y.gain && touches(x, []*explained{y}) {
-				x.hidden = true
+	for k, x := range found {
+		for j, y := range found {
+			if j != k && x.shape == y.shape && x.gain < mending[x.shape]*y.gain && touches(x, []*explained{y}) {
+				if !x.hidden || y.gain > found[x.mends].gain {
+					x.hidden, x.mends = true, j
+				}
 			}
 		}
 	}
@@ -234,7 +265,7 @@ func touching(found []*explained) bool {
 func (f *field) worth(found []*explained) float64 {
 	w := f.refit(found).likelihood
 	for _, x := range found {
-		w -= x.cost + nullLevel[x.shape] + freedom[x.shape]/2*math.Log(2*max(x.gain, 1)) + 3
+		w -= f.price(x.pattern) + x.freedom()/2*math.Log(2*max(x.gain, 1))
 	}
 	return w
 }
