@@ -19,5 +19,6 @@ var (
 	ErrInfinite    = errors.New("an infinite value")
 	ErrNotPositive = errors.New("a value that is not positive")
 	ErrOutside     = errors.New("a value outside the limits that readings were screened by")
+	ErrNarrow      = errors.New("a spread so small that a gamma distribution is a normal one")
 	ErrNoFit       = errors.New("the likelihood has no maximum at a positive spread")
 )

@@ -41,6 +41,12 @@ func fitGamma(r Readings, l *logged) (Gamma, error) {
 	if err != nil {
 		return none, err
 	}
+	switch {
+	case !(start.theta > 1e-9 && start.theta < 1e9):
+		return none, ErrNoFit
+	case start.theta > 3e4 && len(g.list) > 0:
+		return none, ErrNarrow
+	}
 	top, ok := climb(g.at(start.theta, start.delta), g.at)
 	if !ok {
 		return none, ErrNoFit
@@ -146,6 +152,9 @@ func (g gammaSample) bound(p *point, c counted) {
 // large shape its terms all but cancel, and the asymptotic series is used
 // (Abramowitz and Stegun 6.1.41).
 func stirling(k float64) (l, slope, curve float64) {
+	if !(k > 1e-30) { // a spread beyond all measure
+		return math.Inf(-1), math.NaN(), math.NaN()
+	}
 	if k < 20 {
 		g, _ := math.Lgamma(k)
 		ln := math.Log(k)

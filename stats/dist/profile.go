@@ -38,6 +38,11 @@ func ProfileQuantile(f Family, r Readings, p, confidence float64) (stats.Interva
 		se /= d.Quantile(p)
 	}
 	best := to(d.Quantile(p))
+	if !(se > 0 && se < math.MaxFloat64) {
+		iv := stats.NoInterval("the standard error is out of the range of numbers")
+		iv.Estimate = from(best)
+		return iv, nil
+	}
 	drop := tail.NormalQuantile(0.5 + confidence/2)
 	drop = drop * drop / 2
 	top := profile(from(best))
