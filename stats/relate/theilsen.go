@@ -29,15 +29,15 @@ type Line struct {
 // when y - t x puts it out of order), the candidates are closed in on, and only
 // the slopes between them are formed.
 //
-// There is no line with fewer than two different x or an infinite value.
+// There is no line with fewer than two different x or a value beyond 1e150.
 // Sources: Theil 1950; Sen 1968, J. Amer. Statist. Assoc. 63, 1379-1389.
 func TheilSen(x, y []float64, confidence float64) Line {
 	checkConfidence(confidence)
 	a, b := pairs(x, y)
 	l := Line{Slope: stats.NoInterval(""), Intercept: math.NaN(), InterceptOfMedians: math.NaN(), N: len(a)}
 	for i := range a {
-		if math.IsInf(a[i], 0) || math.IsInf(b[i], 0) {
-			l.Why = "an infinite value"
+		if math.Abs(a[i]) > 1e150 || math.Abs(b[i]) > 1e150 {
+			l.Why = "an infinite value, or one too large for slopes"
 		}
 	}
 	k := concordance(a, b)
