@@ -12,6 +12,7 @@ import (
 
 	"kneepoint/config"
 	"kneepoint/ingest"
+	"kneepoint/reports/text"
 )
 
 // lotWriters are the formats that convert writes, by the ending of the file.
@@ -78,7 +79,7 @@ the same as one of the files that it was made of, but for the inputs it names.`,
 // said prints what was written, and what in the data a reader should know.
 func said(w io.Writer, out, format string, lot *ingest.Lot, bytes int64) error {
 	var b strings.Builder
-	fmt.Fprintf(&b, "%s: %s, lot %s, %s on %s, %s", clean(out), format, clean(lot.ID()), counted(lot.Len(), "die", "dice"),
+	fmt.Fprintf(&b, "%s: %s, lot %s, %s on %s, %s", text.Printable(out), format, text.Printable(lot.ID()), counted(lot.Len(), "die", "dice"),
 		counted(len(lot.Wafers()), "wafer", "wafers"), counted(len(lot.Tests()), "test", "tests"))
 	if n := len(lot.Earlier().Of); n > 0 {
 		fmt.Fprintf(&b, ", %s", counted(n, "earlier measurement", "earlier measurements"))
@@ -86,7 +87,7 @@ func said(w io.Writer, out, format string, lot *ingest.Lot, bytes int64) error {
 	fmt.Fprintf(&b, ", %s\n", size(bytes))
 	for _, f := range lot.Findings() {
 		if f.Severity == ingest.Severe {
-			fmt.Fprintf(&b, "%-8s %s\n", f.Severity, clean(f.Text))
+			fmt.Fprintf(&b, "%-8s %s\n", f.Severity, text.Printable(f.Text))
 		}
 	}
 	_, err := io.WriteString(w, b.String())

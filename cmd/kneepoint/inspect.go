@@ -12,6 +12,7 @@ import (
 
 	"kneepoint/config"
 	"kneepoint/ingest"
+	"kneepoint/reports/text"
 )
 
 func newInspect() *cobra.Command {
@@ -59,10 +60,10 @@ func writeOverview(w io.Writer, o ingest.Overview) {
 		fmt.Fprintf(w, "%d lots\n", len(o.Lots))
 	}
 	for i, l := range o.Lots {
-		fmt.Fprintf(w, "\nlot %s: %s on %s%s\n", clean(orNone(l.ID)), counted(l.Dice, "die", "dice"), counted(len(l.Wafers), "wafer", "wafers"), lotExtras(l))
+		fmt.Fprintf(w, "\nlot %s: %s on %s%s\n", text.Printable(orNone(l.ID)), counted(l.Dice, "die", "dice"), counted(len(l.Wafers), "wafer", "wafers"), lotExtras(l))
 		if i >= lotsInFull {
 			if len(l.Findings) > 0 {
-				fmt.Fprintf(w, "  %s: see them with --lot %s\n", counted(len(l.Findings), "finding", "findings"), clean(l.ID))
+				fmt.Fprintf(w, "  %s: see them with --lot %s\n", counted(len(l.Findings), "finding", "findings"), text.Printable(l.ID))
 			}
 			continue
 		}
@@ -73,7 +74,7 @@ func writeOverview(w io.Writer, o ingest.Overview) {
 }
 
 func writeFileOverview(w io.Writer, f ingest.FileOverview) {
-	fmt.Fprintf(w, "%s\n  %s, %s, %s\n", clean(f.File), clean(f.Format), size(f.Bytes), counted(int(f.Rows), "data row", "data rows"))
+	fmt.Fprintf(w, "%s\n  %s, %s, %s\n", text.Printable(f.File), text.Printable(f.Format), size(f.Bytes), counted(int(f.Rows), "data row", "data rows"))
 	if len(f.Columns) == 0 {
 		return
 	}
@@ -102,7 +103,7 @@ func writeFileOverview(w io.Writer, f ingest.FileOverview) {
 		names []string
 	}{{"columns", roles}, {"tests", tests}, {"others", others}} {
 		if len(part.names) > 0 {
-			fmt.Fprintf(w, "  %-8s %s\n", part.label, clean(shortList(part.names, 16)))
+			fmt.Fprintf(w, "  %-8s %s\n", part.label, text.Printable(shortList(part.names, 16)))
 		}
 	}
 }
@@ -110,7 +111,7 @@ func writeFileOverview(w io.Writer, f ingest.FileOverview) {
 func writeTally(w io.Writer, t ingest.Tally) {
 	fmt.Fprintf(w, "\n%s read: %s with %s", counted(t.Rows, "row", "rows"), counted(t.Dice, "die", "dice"), counted(t.Measurements, "measurement", "measurements"))
 	if t.Earlier > 0 {
-		fmt.Fprintf(w, ", %s of retested dice among them", thousands(t.Earlier))
+		fmt.Fprintf(w, ", %s of retested dice among them", text.Thousands(t.Earlier))
 	}
 	fmt.Fprintln(w)
 	for _, reason := range sortedKeys(t.Discarded) {
@@ -121,7 +122,7 @@ func writeTally(w io.Writer, t ingest.Tally) {
 func lotExtras(l ingest.LotOverview) string {
 	var parts []string
 	if l.Product != "" {
-		parts = append(parts, "product "+clean(l.Product))
+		parts = append(parts, "product "+text.Printable(l.Product))
 	}
 	if l.Retested > 0 {
 		parts = append(parts, counted(l.Retested, "retested die", "retested dice"))
@@ -138,11 +139,11 @@ func lotExtras(l ingest.LotOverview) string {
 }
 
 func writeWafers(w io.Writer, l ingest.LotOverview) {
-	fmt.Fprintf(w, "  wafers   %s\n", clean(waferList(l.Wafers)))
+	fmt.Fprintf(w, "  wafers   %s\n", text.Printable(waferList(l.Wafers)))
 	if len(l.HardBins) > 0 {
 		var bins []string
 		for _, b := range l.HardBins {
-			bins = append(bins, fmt.Sprintf("%d (%s)", b.Bin, thousands(b.Dice)))
+			bins = append(bins, fmt.Sprintf("%d (%s)", b.Bin, text.Thousands(b.Dice)))
 		}
 		fmt.Fprintf(w, "  bins     %s\n", shortList(bins, 20))
 	}
@@ -151,10 +152,10 @@ func writeWafers(w io.Writer, l ingest.LotOverview) {
 		for _, k := range sortedKeys(l.Attributes) {
 			parts = append(parts, k+" "+l.Attributes[k])
 		}
-		fmt.Fprintf(w, "  of lot   %s\n", clean(shortList(parts, 12)))
+		fmt.Fprintf(w, "  of lot   %s\n", text.Printable(shortList(parts, 12)))
 	}
 	if len(l.DieColumns) > 0 {
-		fmt.Fprintf(w, "  of dice  %s\n", clean(shortList(l.DieColumns, 12)))
+		fmt.Fprintf(w, "  of dice  %s\n", text.Printable(shortList(l.DieColumns, 12)))
 	}
 }
 
@@ -164,7 +165,7 @@ func waferList(wafers []ingest.WaferOverview) string {
 	same := true
 	for _, wafer := range wafers {
 		names = append(names, wafer.ID)
-		counts = append(counts, fmt.Sprintf("%s (%s)", wafer.ID, thousands(wafer.Dice)))
+		counts = append(counts, fmt.Sprintf("%s (%s)", wafer.ID, text.Thousands(wafer.Dice)))
 		same = same && wafer.Dice == wafers[0].Dice
 	}
 	if same && len(wafers) > 1 {
@@ -177,8 +178,8 @@ func writeTests(w io.Writer, l ingest.LotOverview) {
 	t := tabwriter.NewWriter(w, 0, 0, 2, ' ', 0)
 	fmt.Fprintln(t, "  test\tmeasures\tunit\tlower\tupper\treadings\tmissing\tclamped\tfloored\tmin\tmax\tmin to max")
 	for _, x := range l.Tests {
-		fmt.Fprintf(t, "  %s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\n", clean(x.Name), orDash(x.Measures), orDash(x.Unit.Text),
-			value(x.Lower, x.Unit), value(x.Upper, x.Unit), thousands(x.N), orZero(x.Missing), orZero(x.AtLeast), orZero(x.AtMost),
+		fmt.Fprintf(t, "  %s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\t%s\n", text.Printable(x.Name), orDash(x.Measures), orDash(x.Unit.Text),
+			value(x.Lower, x.Unit), value(x.Upper, x.Unit), text.Thousands(x.N), orZero(x.Missing), orZero(x.AtLeast), orZero(x.AtMost),
 			value(x.Min, x.Unit), value(x.Max, x.Unit), spark(x.Spark))
 	}
 	t.Flush()
@@ -186,9 +187,9 @@ func writeTests(w io.Writer, l ingest.LotOverview) {
 
 func writeFindings(w io.Writer, indent string, findings []ingest.Finding) {
 	for _, f := range findings {
-		fmt.Fprintf(w, "%s%-8s %s\n", indent, f.Severity, clean(f.Text))
+		fmt.Fprintf(w, "%s%-8s %s\n", indent, f.Severity, text.Printable(f.Text))
 		if f.Remedy != "" {
-			fmt.Fprintf(w, "%s         %s\n", indent, clean(f.Remedy))
+			fmt.Fprintf(w, "%s         %s\n", indent, text.Printable(f.Remedy))
 		}
 	}
 }

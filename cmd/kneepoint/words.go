@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"sort"
 	"strings"
+
+	"kneepoint/reports/text"
 )
 
 // counted writes a number with its noun: 1 die, 1,234 dice.
@@ -11,15 +13,7 @@ func counted(n int, one, many string) string {
 	if n == 1 {
 		return "1 " + one
 	}
-	return thousands(n) + " " + many
-}
-
-func thousands(n int) string {
-	s := fmt.Sprint(n)
-	for i := len(s) - 3; i > 0; i -= 3 {
-		s = s[:i] + "," + s[i:]
-	}
-	return s
+	return text.Thousands(n) + " " + many
 }
 
 func size(bytes int64) string {
@@ -62,23 +56,12 @@ func orDash(s string) string {
 	if s == "" {
 		return "-"
 	}
-	return clean(s)
+	return text.Printable(s)
 }
 
 func orZero(n int) string {
 	if n == 0 {
 		return "-"
 	}
-	return thousands(n)
-}
-
-// clean replaces control characters, which data files may hold and a terminal
-// would obey.
-func clean(s string) string {
-	return strings.Map(func(r rune) rune {
-		if r < ' ' || (r >= 0x7f && r < 0xa0) {
-			return '?'
-		}
-		return r
-	}, s)
+	return text.Thousands(n)
 }

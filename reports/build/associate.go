@@ -18,7 +18,7 @@ func (w *lotwork) associate() {
 	if len(factors) == 0 {
 		return
 	}
-	findings := assoc.Scan(w.responses(), factors, assoc.Units{Wafer: w.waferCode()})
+	findings := assoc.Scan(w.responses(), factors, assoc.Units{Wafer: w.code})
 	for _, f := range findings {
 		if !f.Dependent() {
 			continue

@@ -46,6 +46,7 @@ type lotwork struct {
 	in           Input
 	lot          *ingest.Lot
 	pass         []bool
+	code         []int32          // by die: index of its wafer
 	unjudged     string           // why it is not known which dice pass, "" when it is
 	data         []yield.TestData // SI, in the order of lot.Tests
 	losses       yield.Losses
@@ -65,6 +66,7 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 	if !in.Settings.CountEdgeDice {
 		w.leaveOutEdge()
 	}
+	w.code = waferCode(w.lot)
 	w.identify()
 	w.judgeDice()
 	w.testLosses()

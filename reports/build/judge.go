@@ -88,12 +88,9 @@ func (j judge) passes(hard, soft int32, flag int8, value func(test int) (float64
 	return read
 }
 
-// outside reports whether a reading breaks a limit. A reading at the limit
-// holds it, a missing one breaks none, and a censored one breaks a limit only
-// when every value it may stand for does.
+// outside reports whether a reading breaks a limit.
 func outside(v float64, mark int8, lower, upper float64) bool {
-	low := v < lower && mark <= 0
-	high := v > upper && mark >= 0
+	low, high := yield.Breaks(v, mark, lower, upper)
 	return low || high
 }
 

@@ -57,7 +57,7 @@ func (w *lotwork) lossSplit() {
 		y.LossWhy = "the data have no die coordinates"
 		return
 	}
-	s := yield.Windows(w.lot.X(), w.lot.Y(), w.waferCode(), w.pass, confidence)
+	s := yield.Windows(w.lot.X(), w.lot.Y(), w.code, w.pass, confidence)
 	if y.LossWhy = s.Why; !finite(s.Systematic.Estimate) {
 		return
 	}
@@ -69,9 +69,9 @@ func (w *lotwork) lossSplit() {
 }
 
 // waferCode numbers each die's wafer.
-func (w *lotwork) waferCode() []int32 {
-	code := make([]int32, w.lot.Len())
-	for i, r := range w.lot.Wafers() {
+func waferCode(lot *ingest.Lot) []int32 {
+	code := make([]int32, lot.Len())
+	for i, r := range lot.Wafers() {
 		for row := r.Lo; row < r.Hi; row++ {
 			code[row] = int32(i)
 		}

@@ -41,7 +41,7 @@ func (w *lotwork) spread(ctx context.Context) error {
 // spreadLevels numbers each die's wafer and, where the wafer's place is known, its
 // ring.
 func (w *lotwork) spreadLevels() []variance.Level {
-	levels := []variance.Level{{Name: "wafer", Code: w.waferCode()}}
+	levels := []variance.Level{{Name: "wafer", Code: w.code}}
 	if !w.lot.HasCoordinates() || w.geo.Unit == "" {
 		return levels
 	}

@@ -135,7 +135,7 @@ func (w *lotwork) capability(t int, x []float64, marks []int8, aside int) *repor
 	if aside > 0 {
 		over += fmt.Sprintf(", but without %d gross outliers, which no process spread explains and which are counted as losses", aside)
 	}
-	c := capability.Compute(capability.Input{Values: x, Censor: marks, Group: w.waferCode(), Lower: lower, Upper: upper,
+	c := capability.Compute(capability.Input{Values: x, Censor: marks, Group: w.code, Lower: lower, Upper: upper,
 		MinimumN: w.in.Settings.MinimumN, Confidence: confidence})
 	return &reports.Capability{N: c.N, Cp: interval(c.Cp), Cpk: interval(c.Cpk), Pp: interval(c.Pp), Ppk: interval(c.Ppk),
 		Within: num(c.Within), Overall: num(c.Overall), Over: over, Why: c.Why, Notes: c.Notes}
@@ -165,7 +165,7 @@ func (w *lotwork) byPercentiles(t int, x []float64, marks []int8, c dist.Choice)
 	if c.Empirical {
 		fit = nil
 	}
-	p := capability.ByPercentiles(capability.Input{Values: x, Censor: marks, Group: w.waferCode(), MinimumN: w.in.Settings.MinimumN, Confidence: confidence,
+	p := capability.ByPercentiles(capability.Input{Values: x, Censor: marks, Group: w.code, MinimumN: w.in.Settings.MinimumN, Confidence: confidence,
 		Lower: float64(shown(test.Lower, test.Unit)), Upper: float64(shown(test.Upper, test.Unit))}, fit)
 	ppm := func(i stats.Interval) reports.Interval {
 		i.Estimate, i.Lower, i.Upper = 1e6*i.Estimate, 1e6*i.Lower, 1e6*i.Upper

@@ -57,7 +57,7 @@ type sheet struct {
 }
 
 func (s *sheet) add(strong bool, format string, args ...any) {
-	line := []rune(printable(fmt.Sprintf(format, args...)))
+	line := []rune(Printable(fmt.Sprintf(format, args...)))
 	if len(line) > Width {
 		line = append(line[:Width-1], '…')
 	}
@@ -274,10 +274,11 @@ func plural(n int, noun string) string {
 			noun = "dice"
 		}
 	}
-	return thousands(n) + " " + noun
+	return Thousands(n) + " " + noun
 }
 
-func thousands(n int) string {
+// Thousands writes a number with commas between its thousands.
+func Thousands(n int) string {
 	s := fmt.Sprint(n)
 	for i := len(s) - 3; i > 0; i -= 3 {
 		s = s[:i] + "," + s[i:]
@@ -293,9 +294,9 @@ func name(s string) string {
 	return s
 }
 
-// printable replaces control characters, which data files may carry and a
+// Printable replaces control characters, which data files may carry and a
 // terminal would obey.
-func printable(s string) string {
+func Printable(s string) string {
 	return strings.Map(func(r rune) rune {
 		if r < ' ' || r == 0x7f || (r >= 0x80 && r < 0xa0) {
 			return '?'

@@ -17,13 +17,17 @@ type TestData struct {
 
 // fails tells which limits die i breaks.
 func (t *TestData) fails(i int) (low, high bool) {
-	v := t.Values[i]
-	low, high = v < t.Lower, v > t.Upper
-	if t.Censor != nil && (low || high) {
-		low = low && t.Censor[i] <= 0
-		high = high && t.Censor[i] >= 0
+	var mark int8
+	if t.Censor != nil {
+		mark = t.Censor[i]
 	}
-	return low, high
+	return Breaks(t.Values[i], mark, t.Lower, t.Upper)
+}
+
+// Breaks tells which limits a reading breaks, by the rule of TestData; mark is its
+// entry in Censor, 0 for an exact reading.
+func Breaks(v float64, mark int8, lower, upper float64) (low, high bool) {
+	return v < lower && mark <= 0, v > upper && mark >= 0
 }
 
 // Loss is what one test costs, in dice. All counts are over failing dice.
