@@ -301,3 +301,12 @@ func orWhy(written, why string) string {
 	}
 	return written
 }
+
+// partsPerMillion writes expected parts per million; what no lot could ever show
+// is not spelled out.
+func partsPerMillion(v reports.Number) string {
+	if v > 0 && v < 0.001 {
+		return "<0.001"
+	}
+	return value(v)
+}

@@ -216,7 +216,7 @@ func capabilityTable(t *reports.Test) *table {
 		return nil
 	}
 	anything := false
-	q := &table{Caption: "Capability" + over(k.Over) + ", n" + space + count(k.N), Columns: []column{{Name: "Index"}, {Name: "Estimate", Numeric: true}, {Name: "95 % interval", Numeric: true}}}
+	q := &table{Caption: "Capability, n" + space + count(k.N), Columns: []column{{Name: "Index"}, {Name: "Estimate", Numeric: true}, {Name: "95 % interval", Numeric: true}}}
 	for _, i := range []struct {
 		name string
 		v    reports.Interval
@@ -234,23 +234,19 @@ func capabilityTable(t *reports.Test) *table {
 		from := " by percentiles"
 		q.Rows = append(q.Rows, []cell{text("Pp" + from), text(ratio(p.Pp.Estimate)), text(orWhy(ratioRange(p.Pp), p.Pp.Why))},
 			[]cell{text("Ppk" + from), text(ratio(p.Ppk.Estimate)), text(orWhy(ratioRange(p.Ppk), p.Ppk.Why))},
-			[]cell{text("expected outside, ppm"), text(value(p.PPMOutside.Estimate)), text(orWhy(valueRange(p.PPMOutside), p.PPMOutside.Why))})
+			[]cell{text("expected outside, ppm"), text(partsPerMillion(p.PPMOutside.Estimate)), text(orWhy(partsPerMillion(p.PPMOutside.Lower)+" to "+partsPerMillion(p.PPMOutside.Upper), p.PPMOutside.Why))})
 	}
 	if !anything && k.Why != "" {
 		return nil // the note says why
 	}
+	if k.Over != "" {
+		q.Note = "Over " + k.Over + ". "
+	}
 	if p := k.ByPercentiles; p != nil && p.Source != "" {
-		q.Note = "Percentiles are of " + p.Source + ", without gross outliers. "
+		q.Note += "Percentiles are of " + p.Source + ", without gross outliers. "
 	}
 	q.Note += "Sigma within wafers " + withUnit(value(k.Within), t.Unit) + ", overall " + withUnit(value(k.Overall), t.Unit) + "."
 	return q
-}
-
-func over(which string) string {
-	if which == "" {
-		return ""
-	}
-	return ", over " + which
 }
 
 // fitText says which distribution describes a test's readings, and how well.
@@ -272,10 +268,11 @@ func fitText(f *reports.Fit) string {
 		s += " with " + list(parts)
 	}
 	s += "."
-	for _, more := range []string{f.Reason, f.Misfit} {
-		if more != "" {
-			s += " " + sentence(more)
-		}
+	if f.Reason != "" {
+		s += " " + sentence(f.Reason)
+	}
+	if f.Misfit != "" && !strings.Contains(f.Reason, f.Misfit) {
+		s += " " + sentence(f.Misfit)
 	}
 	return s
 }
