@@ -151,44 +151,49 @@ type mixture struct {
 	kind  []int32   // by die
 	depth [][]uint8 // by pattern, by kind of die
 	o, n  []float64 // by kind of die
+	p     []float64 // by kind of die
 }
 
 func (f *field) mix(found []*explained) *mixture {
-	m := &mixture{kind: make([]int32, len(f.rows))}
-	kinds := 1
+	m := &mixture{kind: make([]int32, len(f.rows)), o: []float64{f.total.o}, n: []float64{f.total.n}}
 	for _, x := range found {
-		next := make([]int32, kinds*layers)
-		for i, d := range x.depth {
-			next[int(m.kind[i])*layers+int(d)] = 1
-		}
-		var from []int32
-		var depth []uint8
-		for c, used := range next {
-			if used == 1 {
-				next[c] = int32(len(from))
-				from, depth = append(from, int32(c/layers)), append(depth, uint8(c%layers))
-			}
-		}
-		for i, d := range x.depth {
-			m.kind[i] = next[int(m.kind[i])*layers+int(d)]
-		}
-		for k, old := range m.depth {
-			m.depth[k] = make([]uint8, len(from))
-			for c, q := range from {
-				m.depth[k][c] = old[q]
-			}
-		}
-		m.depth = append(m.depth, depth)
-		kinds = len(from)
-	}
-	m.o, m.n = make([]float64, kinds), make([]float64, kinds)
-	for i, c := range m.kind {
-		m.n[c]++
-		if f.fail[i] {
-			m.o[c]++
-		}
+		m = f.split(m, x)
 	}
 	return m
+}
+
+// split tells the dice of a mixture apart by their depth in one more pattern too.
+func (f *field) split(m *mixture, x *explained) *mixture {
+	next := make([]int32, len(m.n)*layers)
+	for i, d := range x.depth {
+		next[int(m.kind[i])*layers+int(d)] = 1
+	}
+	var from []int32
+	var depth []uint8
+	for c, used := range next {
+		if used == 1 {
+			next[c] = int32(len(from))
+			from, depth = append(from, int32(c/layers)), append(depth, uint8(c%layers))
+		}
+	}
+	s := &mixture{kind: make([]int32, len(m.kind)), o: make([]float64, len(from)), n: make([]float64, len(from))}
+	for i, d := range x.depth {
+		c := next[int(m.kind[i])*layers+int(d)]
+		s.kind[i] = c
+		s.n[c]++
+		if f.fail[i] {
+			s.o[c]++
+		}
+	}
+	for _, old := range m.depth {
+		moved := make([]uint8, len(from))
+		for c, q := range from {
+			moved[c] = old[q]
+		}
+		s.depth = append(s.depth, moved)
+	}
+	s.depth = append(s.depth, depth)
+	return s
 }
 
 // fit is a model fitted to a mixture: a background and what each pattern adds by depth.

@@ -32,7 +32,7 @@ type field struct {
 	// what the last full search for the dear shapes came up with
 	starts      []spotlight
 	periods     []spotlight
-	kept        []spotlight // starts and periods of patterns that became part of a model
+	keptStarts  []spotlight // starts and periods of patterns that became part of a model
 	keptPeriods []spotlight
 	pending     int // dear shapes that were found and are not yet part of the model
 }

@@ -1,18 +1,43 @@
 package wafermap
 
 import (
+	"cmp"
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 )
 
-// kind names a pattern. Every few columns or rows fail together when a test site is at
-// fault; where the sites are recorded and it is none of them, it is a stripe.
+// kind names a pattern. Every few columns fail together when one test site of several side by
+// side is at fault, so that is a site where the sites are not recorded; where they are, and
+// every few rows, it is a stripe. Where the test order runs along columns it is the other
+// way round.
 func (f *field) kind(p *pattern) string {
-	if p.shape == shapeComb && f.in.Site != nil {
+	if p.shape == shapeComb && (f.in.Site != nil || (p.periodX > 1) == f.ordersColumns()) {
 		return shapeKind[shapeBand]
 	}
 	return shapeKind[p.shape]
+}
+
+// ordersColumns reports whether the test order runs along columns: from one touchdown to the
+// next, y changes more often than x.
+func (f *field) ordersColumns() bool {
+	if f.in.Order == nil {
+		return false
+	}
+	g := f.in.Grid
+	rows := slices.Clone(f.rows)
+	slices.SortStableFunc(rows, func(a, b int32) int { return cmp.Compare(f.in.Order[a], f.in.Order[b]) })
+	moves := 0
+	for i := 1; i < len(rows); i++ {
+		if g.x[rows[i]] == g.x[rows[i-1]] {
+			moves++
+		}
+		if g.y[rows[i]] == g.y[rows[i-1]] {
+			moves--
+		}
+	}
+	return moves > 0
 }
 
 func degrees(a float64) float64 {

@@ -45,8 +45,8 @@ func (b band) sweep(p *path) tally {
 	e := 0.0
 	for i := max(0, p.from); i < min(b.long, p.to); i++ {
 		y := p.at(float64(i))
-		lo := max(0, int(math.Floor(y-p.thick/2+0.5)))
-		hi := min(b.wide, int(math.Floor(y+p.thick/2+0.5)))
+		lo := max(0, int(math.Floor(y-p.thick/2)+1)) // cells whose middle lies inside
+		hi := min(b.wide, int(math.Floor(y+p.thick/2)+1))
 		if lo < hi {
 			dc, de := b.sums.span(i, lo, hi)
 			count += dc
@@ -110,7 +110,7 @@ func (f *field) findLine(fresh bool) *pattern {
 	}
 	const polished = 6
 	best := shortlist{most: polished}
-	starts := append(slices.Clone(f.starts), f.kept...)
+	starts := append(slices.Clone(f.starts), f.keptStarts...)
 	for i, it := range starts {
 		if x, v := f.bow(it); v > 0 {
 			best.offer(v, [6]float64{float64(i), x[0], x[1], x[2], x[3]}, func(a, b [6]float64) bool { return a == b })

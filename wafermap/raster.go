@@ -12,6 +12,7 @@ type raster struct {
 	stepY       int       //
 	x0, y0      int       // die coordinates of the first die of cell (0, 0)
 	cell        []int32   // by die
+	fullest     int32     // dice in the fullest cell
 	o, n        []int32   // by cell
 	e           []float64 // by cell
 	along       running   // sums along rows of cells
@@ -83,6 +84,7 @@ func (f *field) layRaster(geo Geometry, cells int) {
 		c := int32((int(g.y[k])-r.y0)/r.stepY*r.cols + (int(g.x[k])-r.x0)/r.stepX)
 		r.cell[i] = c
 		r.n[c]++
+		r.fullest = max(r.fullest, r.n[c])
 		if f.fail[i] {
 			r.o[c]++
 		}

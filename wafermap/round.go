@@ -80,6 +80,12 @@ func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64)
 		half := int(math.Sqrt(max(0, r*r-sq(float64(j)*dv))) / f.du)
 		spans = append(spans, span{j, -half, half + 1})
 	}
+	widest := 0.0
+	for _, s := range spans {
+		widest += float64(s.to - s.from)
+	}
+	// no window holds more dice than this, so none costs less
+	least := max(0, math.Log(f.total.n/(widest*float64(f.fullest))))
 	stepX, stepY := max(1, int(0.4*r/f.du)), max(1, int(0.4*r/dv))
 	for y := stepY / 2; y < f.lines; y += stepY {
 		cv := f.v0 + float64(y)*f.dv
@@ -103,11 +109,11 @@ func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64)
 				continue
 			}
 			t := unpack(count, e)
-			cost := sizeCost(t, f.total)
 			floor := max(0, list.floor())
-			if f.hopeless(t, floor+cost) {
+			if f.hopeless(t, floor+least) {
 				continue
 			}
+			cost := sizeCost(t, f.total)
 			if v := f.gain(t) - cost; v > floor {
 				list.offer(v, [6]float64{cu, cv, r}, near)
 			}

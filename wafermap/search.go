@@ -11,6 +11,7 @@ const (
 	roundShapes = 1<<shapeRing | 1<<shapeArc | 1<<shapeCentre | 1<<shapeAnnulus | 1<<shapeSector | 1<<shapeRamp | 1<<shapeBlob
 	allShapes   = 1<<shapes_ - 1
 	dearShapes  = 1<<shapeLine | 1<<shapeShot | 1<<shapeComb
+	compromise  = 1<<shapeArc | 1<<shapeBlob | 1<<shapeSector // that two others together may look like
 	lineLike    = 1<<shapeArc | 1<<shapeSector | 1<<shapeBlob | 1<<shapeBand | 1<<shapeOrder
 )
 
@@ -71,32 +72,46 @@ func ranked(all []*pattern) []*pattern {
 // one that explains most for what it is free to fit.
 func (f *field) choose(found []*explained, c []*pattern) *explained {
 	x := f.rank(found, c)[0]
-	switch x.shape {
-	case shapeLine:
-		f.kept = append(f.kept, x.start)
-	case shapeShot, shapeComb:
-		f.keptPeriods = append(f.keptPeriods, x.start)
-	}
+	f.keep(x)
 	return x
 }
 
-func (f *field) rank(found []*explained, c []*pattern) []*explained {
-	var all []*explained
-	before := 0.0
-	if len(found) > 0 {
-		before = f.fitMixture(f.mix(found)).likelihood
+// keep remembers what a pattern of the dear shapes was fitted from, to find it again.
+func (f *field) keep(x *explained) {
+	switch x.shape {
+	case shapeLine:
+		f.keptStarts = append(f.keptStarts, x.start)
+	case shapeShot, shapeComb:
+		f.keptPeriods = append(f.keptPeriods, x.start)
 	}
-	for _, p := range c {
-		if p.net < 0.6*c[0].net || !p.told {
-			break
-		}
+}
+
+// rank explains the fails by each of the candidates that come near the first, and sorts
+// them by what that is worth.
+func (f *field) rank(found []*explained, c []*pattern) []*explained {
+	rivals := 1
+	for rivals < len(c) && c[rivals].told && c[rivals].net >= 0.6*c[0].net {
+		rivals++
+	}
+	if rivals == 1 {
+		return []*explained{f.explain(c[0])}
+	}
+	var all []*explained
+	var before float64
+	var m *mixture
+	if len(found) > 0 {
+		m = f.mix(found)
+		before = f.fitMixture(m).likelihood
+	}
+	for _, p := range c[:rivals] {
 		x := f.explain(p)
+		depth := f.depthGain(x)
 		gain := p.gain
 		if p.shape != shapeRamp {
-			gain = max(gain, f.depthGain(x)-1)
+			gain = max(gain, depth-1)
 		}
-		if len(found) > 0 {
-			gain += f.fitMixture(f.mix(append(slices.Clone(found), x))).likelihood - before - f.depthGain(x)
+		if len(found) > 0 { // what it adds to the others, overlap and all
+			gain += f.fitMixture(f.split(m, x)).likelihood - before - depth
 		}
 		p.named = p.net + gain - p.gain - p.freedom()/2*math.Log(2*max(gain, 1))
 		all = append(all, x)
@@ -156,25 +171,28 @@ func (f *field) search() (found []*explained, p float64) {
 		}
 		return nil, p
 	}
-	f.choose(nil, c)
 	starts := f.rank(nil, c)
+	f.keep(starts[0])
 	if roundShapes>>starts[0].shape&1 == 0 {
 		return f.settle(f.grow(starts[:1:1], allShapes)), 0
 	}
 	found = f.grow(starts[:1:1], allShapes)
-	if touching(found) {
-		best := f.worth(found)
+	if touching(found) || len(found) == 1 && compromise>>starts[0].shape&1 == 1 {
+		best, replaced := f.worth(found), false
 		for k := 1; k < len(starts) && k < 4; k++ {
 			if roundShapes>>starts[k].shape&1 == 0 {
 				continue
 			}
 			other := f.grow(starts[k:k+1:k+1], allShapes&^dearShapes)
 			if w := f.worth(other); w > best {
-				best, found = w, other
+				best, found, replaced = w, other, true
 			}
 		}
+		if replaced {
+			found = f.grow(found, allShapes)
+		}
 	}
-	return f.settle(f.grow(found, allShapes)), 0
+	return f.settle(found), 0
 }
 
 // settle looks for each pattern again with the others known, drops those that are
@@ -193,6 +211,9 @@ func (f *field) settle(found []*explained) []*explained {
 				set = lineLike | 1<<found[k].shape
 			}
 			c := f.candidates(set, false)
+			if (len(c) == 0 || !c[0].told) && dearShapes>>found[k].shape&1 == 1 {
+				c = f.candidates(set, true)
+			}
 			if len(c) == 0 || !c[0].told {
 				found, changed = others, true
 				k--
@@ -214,6 +235,7 @@ func (f *field) settle(found []*explained) []*explained {
 		}
 		k++
 	}
+	f.close(found)
 	for k, x := range found {
 		for j, y := range found {
 			if j != k && x.shape == y.shape && x.gain < mending[x.shape]*y.gain && touches(x, []*explained{y}) {
@@ -224,6 +246,27 @@ func (f *field) settle(found []*explained) []*explained {
 		}
 	}
 	return found
+}
+
+// close tries whole rings for arcs: where another pattern covers the rest of a ring, an arc
+// explains no less than the ring.
+func (f *field) close(found []*explained) {
+	if len(found) < 2 {
+		return
+	}
+	for k, x := range found {
+		if x.shape != shapeArc {
+			continue
+		}
+		p := *x.pattern
+		p.shape, p.b, p.cost = shapeRing, farOut, 0
+		try := slices.Clone(found)
+		try[k] = f.explain(&p)
+		if f.worth(try) > f.worth(found) {
+			f.judge(&p)
+			found[k] = try[k]
+		}
+	}
 }
 
 // mending is the share of the gain of a pattern below which another of the same shape on or
