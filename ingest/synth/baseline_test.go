@@ -101,7 +101,9 @@ func TestDemoBaseline(t *testing.T) {
 func off(got, want float64) float64 { return math.Abs(got/want - 1) }
 
 // demoProduct reads the demo's product file.
-func demoProduct(t *testing.T) *config.Product {
+func demoProduct(t *testing.T) *config.Product { return demoProductFile(t) }
+
+func demoProductFile(t testing.TB) *config.Product {
 	t.Helper()
 	p, err := config.ParseProduct("demo.yaml", []byte(DemoProductYAML))
 	if err != nil {

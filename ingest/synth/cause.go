@@ -1,6 +1,9 @@
 package synth
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 // Cause is one thing that went wrong, or that always goes a little wrong.
 //
@@ -23,13 +26,18 @@ type Cause struct {
 	Jitter float64   // spread of the size from wafer to wafer (lognormal sigma)
 
 	Place   Place
+	Places  []Place // by position in Wafers, in place of Place; nil: Place on all
 	Shift   Process // at strength 1
 	Share   float64 // chance that a die at strength 1 is hit; above 1 counts as 1
 	Scatter float64 // spread of the shift from hit die to hit die (lognormal sigma)
 	Damage  Damage
 
-	// Fault distorts one test's reading on the dice in place.
-	Fault *Fault
+	// Leak multiplies the collector's leakage of hit dice: a local defect, on top
+	// of what the shift does. 0 counts as 1.
+	Leak float64
+
+	// Faults distort tests' readings on the dice in place.
+	Faults []Fault
 
 	// Recover is the chance that the damage is gone when the die is measured
 	// again: a bad contact recovers, a scratch does not.
@@ -55,17 +63,16 @@ type Fault struct {
 	Factor float64 // 0 counts as 1
 	Offset float64 // in the test's unit
 	Top    float64 // readings end here; 0: no end of its own
+
+	// The limits that the tester judges by instead of the test's; 0: the test's own.
+	WrongLower, WrongUpper float64
 }
 
 func (f *Fault) apply(v float64) float64 {
 	if f.Factor != 0 {
 		v *= f.Factor
 	}
-	v += f.Offset
-	if f.Top != 0 {
-		v = min(v, f.Top)
-	}
-	return v
+	return v + f.Offset
 }
 
 // Shape is the pattern of a Place.
@@ -78,10 +85,12 @@ const (
 	Ring             // 0 inside Inner, rising linearly to 1 at Outer and beyond
 	Annulus          // bell of width Width around Inner
 	Tilt             // 0 to 1 across the wafer towards Angle
-	Line             // 1 within Width of the segment From-To
+	Line             // 1 within Width of the segment From-To, which may have a Bend
 	Blob             // bell of width Width around From
 	Sector           // 1 within Width degrees either side of Angle, outside Inner
-	ShotCell         // 1 on the die at Shot within each exposure
+	ShotCell         // 1 on the die at Shot, or at one of Shots, within each exposure
+	Chords           // 1 within Width of Count parallel lines across Angle: the first at Inner, the next Outer further
+	Positions        // 1 on a share Width of the die positions, the same on all wafers; Salt picks them
 )
 
 // Place is where on the wafer a cause acts, and how strongly. Lengths are in
@@ -91,7 +100,11 @@ type Place struct {
 	Inner, Outer float64
 	Width, Angle float64
 	From, To     [2]float64
+	Bend         float64 // of a Line: its middle lies so far aside
 	Shot         [2]int
+	Shots        [][2]int
+	Count        int
+	Salt         uint64
 
 	// The filters hold on top of any shape. Sites: only these (from 1); nil all.
 	// Between: only touchdowns within this share of the wafer's; zero value all.
@@ -133,14 +146,22 @@ func (p *Place) strength(d *place) float64 {
 		a := p.Angle * math.Pi / 180
 		return (1 + d.u*math.Cos(a) + d.v*math.Sin(a)) / 2
 	case Line:
-		return step(fromSegment(d.u, d.v, p.From, p.To) <= p.Width)
+		return step(fromSegment(d.u, d.v, p.From, p.To, p.Bend) <= p.Width)
 	case Blob:
 		return bell(math.Hypot(d.u-p.From[0], d.v-p.From[1]) / p.Width)
 	case Sector:
 		off := math.Remainder(math.Atan2(d.v, d.u)*180/math.Pi-p.Angle, 360)
 		return step(math.Abs(off) <= p.Width && d.r >= p.Inner)
 	case ShotCell:
-		return step(int(d.sx) == p.Shot[0] && int(d.sy) == p.Shot[1])
+		at := [2]int{int(d.sx), int(d.sy)}
+		return step(at == p.Shot || slices.Contains(p.Shots, at))
+	case Chords:
+		a := p.Angle * math.Pi / 180
+		across := d.u*math.Cos(a) + d.v*math.Sin(a)
+		k := math.Round((across - p.Inner) / p.Outer)
+		return step(k >= 0 && int(k) < p.Count && math.Abs(across-p.Inner-k*p.Outer) <= p.Width)
+	case Positions:
+		return step(root(p.Salt).at(uint64(uint32(d.x))<<32|uint64(uint32(d.y))).uniform() < p.Width)
 	}
 	return 1
 }
@@ -154,14 +175,29 @@ func step(in bool) float64 {
 
 func bell(z float64) float64 { return math.Exp(-z * z / 2) }
 
-// fromSegment is the distance of (u, v) from the segment a-b.
-func fromSegment(u, v float64, a, b [2]float64) float64 {
+// fromSegment is the distance of (u, v) from the segment a-b, or from a parabola
+// whose middle lies bend to the left of it.
+func fromSegment(u, v float64, a, b [2]float64, bend float64) float64 {
 	du, dv := b[0]-a[0], b[1]-a[1]
 	t := 0.0
 	if l := du*du + dv*dv; l > 0 {
 		t = min(max(((u-a[0])*du+(v-a[1])*dv)/l, 0), 1)
 	}
+	if l := math.Hypot(du, dv); bend != 0 && l > 0 {
+		aside := bend * 4 * t * (1 - t) / l
+		u, v = u+aside*dv, v-aside*du
+	}
 	return math.Hypot(u-a[0]-t*du, v-a[1]-t*dv)
+}
+
+// place is where the cause acts on a wafer.
+func (c *Cause) place(wafer int) *Place {
+	if c.Places != nil {
+		if i := slices.Index(c.Wafers, wafer); i >= 0 {
+			return &c.Places[i]
+		}
+	}
+	return &c.Place
 }
 
 // size is how strongly the cause acts on a wafer, 0 when not at all.

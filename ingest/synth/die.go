@@ -14,7 +14,9 @@ type die struct {
 	process Process
 	ideal   []float64 // after damage that stays
 	spoiled []float64 // after damage that may recover
+	top     []float64 // where the tester's readings end
 	reading []float64
+	moved   []moved // limits that a fault has the tester use on this die
 	hard    int32
 	soft    int32
 }
@@ -24,18 +26,26 @@ type acting struct {
 	cause  *Cause
 	number int
 	size   float64
+	place  *Place
+	faults []int // index of each fault's test
+}
+
+// moved are wrong limits of one test.
+type moved struct {
+	test         int
+	lower, upper float64
 }
 
 func (f *fab) newDie(wafer int) *die {
 	n := len(f.spec.Tests)
-	d := &die{fab: f, wafer: wafer, ideal: make([]float64, n), spoiled: make([]float64, n), reading: make([]float64, n)}
+	d := &die{fab: f, wafer: wafer, ideal: make([]float64, n), spoiled: make([]float64, n), top: make([]float64, n), reading: make([]float64, n)}
 	for q := range d.smooth {
 		d.smooth[q] = f.smooth(wafer, q)
 	}
 	for i := range f.spec.Causes {
 		c := &f.spec.Causes[i]
 		if size := c.size(f.seed, i, wafer); size != 0 {
-			d.causes = append(d.causes, acting{c, i, size})
+			d.causes = append(d.causes, acting{c, i, size, c.place(wafer), f.faults[i]})
 		}
 	}
 	return d
@@ -43,7 +53,7 @@ func (f *fab) newDie(wafer int) *die {
 
 // hit reports how strongly a cause acts on this die, 0 when not.
 func (d *die) hit(a *acting) float64 {
-	strength := a.cause.Place.strength(d.at) * a.size
+	strength := a.place.strength(d.at) * a.size
 	if strength == 0 || a.cause.Share <= 0 {
 		return strength
 	}
@@ -62,9 +72,13 @@ func (d *die) take(at *place) {
 	f := d.fab
 	d.at = at
 	d.key = dieKey(f.seed, d.wafer, at.x, at.y)
+	bowl, saddle := f.spec.Smooth.bowl(at.r), f.spec.Smooth.Saddle != 0
 	for q := range d.process {
 		sm := &d.smooth[q]
-		v := sm.level + sm.bowl*(at.r*at.r-bowlMiddle) + sm.tiltX*at.u + sm.tiltY*at.v
+		v := sm.level + sm.bowl*bowl + sm.tiltX*at.u + sm.tiltY*at.v
+		if saddle {
+			v += sm.saddle[0]*(at.u*at.u-at.v*at.v) + sm.saddle[1]*2*at.u*at.v
+		}
 		if sd := f.spec.Spread[q].Die; sd > 0 {
 			v += sd * d.key.at(dieLatent+uint64(q)).normal()
 		}
@@ -81,10 +95,26 @@ func (d *die) take(at *place) {
 			}
 		}
 	}
-	f.model.values(d.ideal, &d.process)
+	f.forward.values(d.ideal, &d.process)
 	for i := range d.causes {
+		if a := &d.causes[i]; a.cause.Leak > 0 {
+			d.leak(a)
+		}
 		if a := &d.causes[i]; a.cause.Recover == 0 && a.cause.Damage != NoDamage && d.hit(a) != 0 {
 			damage(d.ideal, f.spec.Tests, a.cause.Damage, d.key.at(dieCause+uint64(a.number)))
+		}
+	}
+}
+
+// leak raises the leakage of a hit die.
+func (d *die) leak(a *acting) {
+	h := d.hit(a)
+	if h == 0 {
+		return
+	}
+	for t := range d.ideal {
+		if m := d.fab.spec.Tests[t].Measures; m == "icbo" || m == "iceo" {
+			d.ideal[t] *= math.Pow(a.cause.Leak, h)
 		}
 	}
 }
@@ -93,14 +123,14 @@ func (d *die) take(at *place) {
 func (d *die) measure(attempt uint64) {
 	f := d.fab
 	copy(d.spoiled, d.ideal)
+	d.moved = d.moved[:0]
+	for t := range d.top {
+		d.top[t] = f.spec.Tests[t].Clamp
+	}
 	for i := range d.causes {
 		a := &d.causes[i]
-		if f := a.cause.Fault; f != nil && d.hit(a) != 0 {
-			for t := range d.spoiled {
-				if d.fab.spec.Tests[t].Name == f.Test {
-					d.spoiled[t] = f.apply(d.spoiled[t])
-				}
-			}
+		if len(a.cause.Faults) > 0 && d.hit(a) != 0 {
+			d.distort(a)
 		}
 		if a.cause.Recover == 0 || a.cause.Damage == NoDamage || d.hit(a) == 0 {
 			continue
@@ -112,7 +142,7 @@ func (d *die) measure(attempt uint64) {
 	}
 	noise := d.key.at(dieNoise + attempt)
 	for t := range f.spec.Tests {
-		d.reading[t] = read(&f.spec.Tests[t], d.spoiled[t], f.offset[d.at.site-1][t], f.scale[t], noise.at(f.names[t]))
+		d.reading[t] = read(&f.spec.Tests[t], d.spoiled[t], d.top[t], f.offset[d.at.site-1][t], f.scale[t], noise.at(f.names[t]))
 	}
 	d.bin()
 	if f.spec.Missing > 0 {
@@ -125,18 +155,52 @@ func (d *die) measure(attempt uint64) {
 	}
 }
 
+// distort has the tester read wrongly what a cause's faults say.
+func (d *die) distort(a *acting) {
+	for i := range a.cause.Faults {
+		f, t := &a.cause.Faults[i], a.faults[i]
+		d.spoiled[t] = f.apply(d.spoiled[t])
+		if f.Top != 0 && !(d.top[t] < f.Top) {
+			d.top[t] = f.Top
+		}
+		if f.WrongLower != 0 || f.WrongUpper != 0 {
+			d.moved = append(d.moved, moved{t, f.WrongLower, f.WrongUpper})
+		}
+	}
+}
+
+// limits are those that the tester judges the die by.
+func (d *die) limits(t int) (lower, upper float64) {
+	test := &d.fab.spec.Tests[t]
+	lower, upper = test.Lower, test.Upper
+	for _, m := range d.moved {
+		if m.test == t {
+			lower, upper = wrong(lower, m.lower), wrong(upper, m.upper)
+		}
+	}
+	return lower, upper
+}
+
+// wrong is a limit that a fault replaces, unless by 0.
+func wrong(limit, by float64) float64 {
+	if by != 0 {
+		return by
+	}
+	return limit
+}
+
 // read is what the tester returns for an ideal value: the float64 nearest to the
 // decimal that is printed, so that a reader of the text holds the same value
 // against the limits.
-func read(t *Test, v, offset, scale float64, k key) float64 {
+func read(t *Test, v, top, offset, scale float64, k key) float64 {
 	if !math.IsInf(v, 0) {
 		v *= 1 + offset
 		v += math.Hypot(t.Noise, t.Gauge*v) * k.normal()
-	} else if math.IsNaN(t.Clamp) {
+	} else if math.IsNaN(top) {
 		v = 10 * t.Typical // no end is known: read something far beyond
 	}
-	if v > t.Clamp {
-		v = t.Clamp
+	if v > top {
+		v = top
 	}
 	if v < t.Floor {
 		v = t.Floor
@@ -155,7 +219,8 @@ func (d *die) bin() {
 	s := d.fab.spec
 	for t := range s.Tests {
 		test, v := &s.Tests[t], d.reading[t]
-		low, high := v < test.Lower, v > test.Upper
+		lower, upper := d.limits(t)
+		low, high := v < lower, v > upper
 		if !low && !high {
 			continue
 		}

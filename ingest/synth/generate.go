@@ -35,22 +35,24 @@ func parallel(n int, do func(i int)) {
 
 // fab is a spec made ready: what is the same for all wafers.
 type fab struct {
-	spec   *Spec
-	seed   uint64
-	dice   []place
-	model  *model
-	lot    Process     // lot level
-	names  []uint64    // of the tests, as keys
-	offset [][]float64 // [site-1][test], share of the value
-	scale  []float64   // power of ten at which a reading is a whole number, 0 for none
-	grade  int         // index of the grade test, -1 without
+	spec    *Spec
+	seed    uint64
+	dice    []place
+	model   *model // for the geometry, and for readings without Physics
+	forward forward
+	faults  [][]int     // by cause: the test of each of its faults
+	lot     Process     // lot level
+	names   []uint64    // of the tests, as keys
+	offset  [][]float64 // [site-1][test], share of the value
+	scale   []float64   // power of ten at which a reading is a whole number, 0 for none
+	grade   int         // index of the grade test, -1 without
 }
 
 func newFab(s *Spec, seed uint64) *fab {
 	if len(s.Tests) == 0 {
 		panic("synth: spec without tests")
 	}
-	f := &fab{spec: s, seed: seed, model: newModel(s), grade: -1}
+	f := &fab{spec: s, seed: seed, model: newModel(s), grade: -1, forward: s.forward()}
 	f.dice, _, _ = s.Grid.layout()
 	sites := max(s.Grid.SiteColumns, 1) * max(s.Grid.SiteRows, 1)
 	f.offset = make([][]float64, sites)
@@ -75,19 +77,39 @@ func newFab(s *Spec, seed uint64) *fab {
 			f.grade = t
 		}
 	}
-	for i := range s.Causes {
-		if fault := s.Causes[i].Fault; fault != nil && !s.hasTest(fault.Test) {
-			panic(fmt.Sprintf("synth: fault of test %q, which is not in the program", fault.Test))
-		}
-	}
+	f.faults = f.faultTests()
 	if len(s.Grades) > 0 && f.grade < 0 {
 		panic(fmt.Sprintf("synth: grade test %q is not in the program", s.GradeTest))
 	}
 	return f
 }
 
-func (s *Spec) hasTest(name string) bool {
-	return slices.ContainsFunc(s.Tests, func(t Test) bool { return t.Name == name })
+// faultTests finds the tests of each cause's faults.
+func (f *fab) faultTests() [][]int {
+	out := make([][]int, len(f.spec.Causes))
+	for i := range f.spec.Causes {
+		for _, fault := range f.spec.Causes[i].Faults {
+			t := f.spec.test(fault.Test)
+			if t < 0 {
+				panic(fmt.Sprintf("synth: fault of test %q, which is not in the program", fault.Test))
+			}
+			out[i] = append(out[i], t)
+		}
+	}
+	return out
+}
+
+// test finds a test by name, -1 when absent.
+func (s *Spec) test(name string) int {
+	return slices.IndexFunc(s.Tests, func(t Test) bool { return t.Name == name })
+}
+
+// forward is what gives readings for the spec's program.
+func (s *Spec) forward() forward {
+	if s.Physics != nil {
+		return s.Physics.bind(s.Tests)
+	}
+	return newModel(s)
 }
 
 // bowlMiddle is about the mean r^2 of the whole dice inside a usual edge
@@ -96,17 +118,32 @@ func (s *Spec) hasTest(name string) bool {
 const bowlMiddle = 0.43
 
 // smooth is one latent on one wafer: level and the shape within.
-type smooth struct{ level, bowl, tiltX, tiltY float64 }
+type smooth struct {
+	level, bowl, tiltX, tiltY float64
+	saddle                    [2]float64
+}
+
+// bowl is the bowl's height at r, its mean over a wafer about 0.
+func (s *Smooth) bowl(r float64) float64 {
+	if s.Power == 0 || s.Power == 2 {
+		return r*r - bowlMiddle
+	}
+	return math.Pow(r, s.Power) - 2*math.Pow(2*bowlMiddle, s.Power/2)/(s.Power+2)
+}
 
 func (f *fab) smooth(wafer, q int) smooth {
 	s := f.spec.Spread[q]
 	k := root(f.seed).at(branchWafer).at(uint64(wafer)).at(uint64(q))
-	return smooth{
+	sm := smooth{
 		level: f.lot[q] + s.Wafer*k.at(0).normal(),
 		bowl:  s.MeanBowl + s.Bowl*k.at(1).normal(),
 		tiltX: s.Tilt * k.at(2).normal(),
 		tiltY: s.Tilt * k.at(3).normal(),
 	}
+	if depth := f.spec.Smooth.Saddle * s.Bowl; depth != 0 {
+		sm.saddle = [2]float64{depth * k.at(4).normal(), depth * k.at(5).normal()}
+	}
+	return sm
 }
 
 func (f *fab) wafer(i int) Wafer {

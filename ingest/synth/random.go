@@ -13,11 +13,13 @@ type key uint64
 // The branches under a seed. A new kind of number gets a new branch, so that
 // lots made earlier stay what they were.
 const (
-	branchLot   = 1 // latents, lot level
-	branchWafer = 2 // latents, wafer level and smooth shape
-	branchDie   = 3 // everything of one die
-	branchSite  = 4 // tester offsets by site
-	branchCause = 5 // what a cause draws once a wafer
+	branchLot     = 1 // latents, lot level
+	branchWafer   = 2 // latents, wafer level and smooth shape
+	branchDie     = 3 // everything of one die
+	branchSite    = 4 // tester offsets by site
+	branchCause   = 5 // what a cause draws once a wafer
+	branchPhysics = 6 // variants of the device model
+	branchSpec    = 7 // what [Maker.Random] draws once a lot
 )
 
 // Numbers of one die, by offset.

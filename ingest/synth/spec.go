@@ -9,6 +9,8 @@ type Spec struct {
 	Grid    Grid
 	Device  Device
 	Laws    Laws
+	Physics *Physics // in place of Laws for readings; nil: Laws
+	Smooth  Smooth   // shape of the smooth part within a wafer
 	Spread  [NumLatents]Spread
 	Tests   []Test // in the order of the program
 
@@ -76,6 +78,13 @@ type Spread struct {
 	Bowl            float64 // of the bowl's depth from wafer to wafer
 	Tilt            float64 // of each tilt from wafer to wafer
 	MeanBowl        float64 // the bowl all wafers share, high at the rim when positive
+}
+
+// Smooth is the shape of the smooth part within a wafer. The zero value is a
+// paraboloid.
+type Smooth struct {
+	Power  float64 // of the bowl: r^Power; 0 counts as 2
+	Saddle float64 // depth of a saddle, in bowls, its axes turned from wafer to wafer
 }
 
 // Test is one test of the program. Levels, limits, clamp, floor and resolution
