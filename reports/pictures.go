@@ -5,6 +5,10 @@ type Pictures struct {
 	Wafers  []Raster // one a wafer, in the order of Report.Wafers; empty without coordinates
 	Stacked *Raster  // fail rate of each die position over all wafers; nil without coordinates
 	Why     string   // why there are none
+
+	// Epi is the layer die by die on the wafer that is farthest from the baseline: net
+	// thickness where it is observable, and doping.
+	Epi []Raster
 }
 
 // Raster is a paletted PNG with one pixel a die (or a block of Step x Step dice

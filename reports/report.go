@@ -490,16 +490,100 @@ type Next struct {
 	InformationBits Number `json:"information_bits"`
 }
 
-// Epi is what the electrical data say of the epi layer.
+// Epi is what the electrical data say of the epi layer: of a wafer, or of a lot's
+// typical wafer. Estimates are with the prior that the product's spec stands for;
+// DataOnly is without, for charts and drift. Errors of the device model and of the
+// baseline are common to all wafers: a lot's interval is hardly narrower than a
+// wafer's.
 type Epi struct {
-	NetThicknessUM      Interval `json:"net_thickness_um"`
-	ThicknessUM         Interval `json:"thickness_um"`
-	DopingCM3           Interval `json:"doping_cm3"`
-	ResistivityOhmCM    Interval `json:"resistivity_ohm_cm"`
-	Regime              string   `json:"regime"`
-	ThicknessObservable bool     `json:"thickness_observable"`
-	Separable           bool     `json:"separable"`
-	Note                string   `json:"note"`
+	NetThicknessUM      Interval       `json:"net_thickness_um"` // what tests see: thickness less base and up-diffused tail
+	ThicknessUM         SpecInterval   `json:"thickness_um"`     // as grown
+	DopingCM3           Interval       `json:"doping_cm3"`
+	ResistivityOhmCM    SpecInterval   `json:"resistivity_ohm_cm"` // at 23 C, ASTM F723
+	Regime              string         `json:"regime" enum:"reach-through,no reach-through,borderline"`
+	DepletionRatio      Interval       `json:"depletion_ratio"`      // net thickness over the depletion width at BVceo in endless epi
+	ThicknessObservable bool           `json:"thickness_observable"` // data alone bound the net thickness from both sides
+	DopingObservable    bool           `json:"doping_observable"`
+	ThicknessShare      Number         `json:"net_thickness_share_of_prior"` // width of the interval over that of the prior alone; from 0.9 up not observable
+	DopingShare         Number         `json:"doping_share_of_prior"`
+	Separable           bool           `json:"separable"` // thickness from doping
+	DataOnly            EpiData        `json:"data_only"`
+	Parameters          []EpiParameter `json:"parameters"`
+	Readings            []EpiReading   `json:"readings"`       // what went in
+	Zones               []EpiZone      `json:"zones"`          // of a wafer: centre, middle, edge
+	BetweenWafers       *EpiSpread     `json:"between_wafers"` // of a lot; null on a wafer
+	Next                []Next         `json:"next"`           // of a lot: measurements that would tell more, most first
+	Note                string         `json:"note"`
+}
+
+// SpecInterval is an interval against spec limits. InSpec is null where the data
+// leave both open, or do not see the quantity: the prior alone proves nothing.
+type SpecInterval struct {
+	Interval
+	SpecLower Number `json:"spec_lower"`
+	SpecUpper Number `json:"spec_upper"`
+	InSpec    *bool  `json:"in_spec"`
+}
+
+// EpiData is what the data alone say, without a belief about thickness and doping.
+type EpiData struct {
+	NetThicknessUM   SightInterval `json:"net_thickness_um"`
+	ThicknessUM      SightInterval `json:"thickness_um"`
+	DopingCM3        SightInterval `json:"doping_cm3"`
+	ResistivityOhmCM SightInterval `json:"resistivity_ohm_cm"`
+}
+
+// SightInterval is an interval that may be open: there is an estimate only where
+// both sides are bounded.
+type SightInterval struct {
+	Interval
+	Sight string `json:"sight" enum:"observable,lower bound only,upper bound only,not observable"`
+}
+
+// EpiParameter is another process parameter that the same inversion gives, as a
+// ratio to the baseline.
+type EpiParameter struct {
+	Name string `json:"name"`
+	Interval
+	Prior    Interval `json:"prior"`     // believed beforehand
+	DataOnly Interval `json:"data_only"` // null where the data do not see it
+	Seen     bool     `json:"seen"`
+}
+
+// EpiReading is a test's level that went into the inversion.
+type EpiReading struct {
+	Test   string `json:"test"`
+	Ratio  Number `json:"ratio"` // over the baseline's level
+	Sigma  Number `json:"sigma"` // of its logarithm
+	Bound  string `json:"bound,omitempty" enum:"at least,at most,"`
+	Dice   int    `json:"dice"`   // or wafers, of a lot
+	Misses int    `json:"misses"` // dice that were whole and have no reading of it
+}
+
+// EpiZone is the layer on a part of a wafer, as found die by die and put on the
+// wafer's own estimate.
+type EpiZone struct {
+	Name           string `json:"name"`
+	Dice           int    `json:"dice"`
+	NetThicknessUM Number `json:"net_thickness_um"` // null where thickness is not observable
+	DopingCM3      Number `json:"doping_cm3"`
+}
+
+// EpiSpread compares wafers with one another, where what is common to all drops out.
+type EpiSpread struct {
+	Differ         bool     `json:"differ"`
+	NetThicknessUM Range    `json:"net_thickness_um"` // lowest to highest wafer
+	DopingCM3      Range    `json:"doping_cm3"`
+	Apart          []string `json:"apart"` // wafers that stand apart from the typical one
+	Text           string   `json:"text"`
+}
+
+// Range is the lowest and the highest of several, and whose they are.
+type Range struct {
+	Lower   Number `json:"lower"`
+	Upper   Number `json:"upper"`
+	LowerOf string `json:"lower_of"`
+	UpperOf string `json:"upper_of"`
 }
 
 // Disposition is the proposal: advice, never a release.

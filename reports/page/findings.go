@@ -121,7 +121,7 @@ func epiTable(rows []epiRow) *table {
 		return text(value(i.Estimate) + " (" + valueRange(i) + ")")
 	}
 	for _, r := range rows {
-		t.Rows = append(t.Rows, []cell{text(r.name), estimate(r.NetThicknessUM), estimate(r.ThicknessUM), estimate(r.DopingCM3), estimate(r.ResistivityOhmCM)})
+		t.Rows = append(t.Rows, []cell{text(r.name), estimate(r.NetThicknessUM), estimate(r.ThicknessUM.Interval), estimate(r.DopingCM3), estimate(r.ResistivityOhmCM.Interval)})
 	}
 	return t
 }
