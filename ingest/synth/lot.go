@@ -88,6 +88,25 @@ func (l *Lot) Yield() float64 {
 	return float64(n) / float64(l.Dice())
 }
 
+// Limits are those that the program prints for a test, NaN for none: the test's
+// own, unless a wrong limit was in force for the whole lot.
+func (s *Spec) Limits(test int) (lower, upper float64) {
+	t := &s.Tests[test]
+	lower, upper = t.Lower, t.Upper
+	for i := range s.Causes {
+		c := &s.Causes[i]
+		if c.Off || c.Wafers != nil {
+			continue
+		}
+		for _, f := range c.Faults {
+			if f.Test == t.Name {
+				lower, upper = wrong(lower, f.WrongLower), wrong(upper, f.WrongUpper)
+			}
+		}
+	}
+	return lower, upper
+}
+
 // PassBin reports whether a hard bin is a passing one.
 func (s *Spec) PassBin(bin int) bool {
 	if len(s.Grades) == 0 {

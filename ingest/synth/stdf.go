@@ -17,7 +17,9 @@ func (l *Lot) WriteSTDF(w io.Writer, bigEndian bool) error {
 	f.out.LeaveOut = true
 	f.optional = make([]stdf.Optional, len(l.Spec.Tests))
 	for i := range l.Spec.Tests {
-		f.optional[i] = optional(&l.Spec.Tests[i])
+		t := l.Spec.Tests[i]
+		t.Lower, t.Upper = l.Spec.Limits(i)
+		f.optional[i] = optional(&t)
 	}
 	f.put(&stdf.FAR{})
 	f.put(&stdf.MIR{Mode: ' ', Retest: ' ', Protection: ' ', BurnIn: 65535, CommandMode: ' ', LotID: l.ID, PartType: l.Product})

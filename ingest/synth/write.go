@@ -103,8 +103,9 @@ func newText(f Format, s *Spec) *text {
 			suffix = t.field(append(suffix, f.Separator), test.Unit)
 		}
 		if f.LimitRows {
-			suffix = t.limit(append(suffix, f.Separator), test.Lower)
-			suffix = t.limit(append(suffix, f.Separator), test.Upper)
+			lower, upper := s.Limits(i)
+			suffix = t.limit(append(suffix, f.Separator), lower)
+			suffix = t.limit(append(suffix, f.Separator), upper)
 		}
 		t.suffix = append(t.suffix, suffix)
 	}
@@ -156,22 +157,22 @@ func (t *text) head(wide bool) []byte {
 		b = append(append(b, sep), name...)
 	}
 	b = append(b, '\n')
-	row := func(label string, cell func(b []byte, test *Test) []byte) {
+	row := func(label string, cell func(b []byte, test int) []byte) {
 		b = append(b, label...)
 		for range len(ids) - 1 {
 			b = append(b, sep)
 		}
 		for i := range t.spec.Tests {
-			b = cell(append(b, sep), &t.spec.Tests[i])
+			b = cell(append(b, sep), i)
 		}
 		b = append(b, '\n')
 	}
 	if t.UnitRow {
-		row("UNIT", func(b []byte, test *Test) []byte { return t.field(b, test.Unit) })
+		row("UNIT", func(b []byte, i int) []byte { return t.field(b, t.spec.Tests[i].Unit) })
 	}
 	if t.LimitRows {
-		row("LOWER", func(b []byte, test *Test) []byte { return t.limit(b, test.Lower) })
-		row("UPPER", func(b []byte, test *Test) []byte { return t.limit(b, test.Upper) })
+		row("LOWER", func(b []byte, i int) []byte { lower, _ := t.spec.Limits(i); return t.limit(b, lower) })
+		row("UPPER", func(b []byte, i int) []byte { _, upper := t.spec.Limits(i); return t.limit(b, upper) })
 	}
 	return b
 }
