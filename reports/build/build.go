@@ -57,6 +57,8 @@ type lotwork struct {
 	logScale     []bool  // by test: its spread is one of ratios
 	geo          wafermap.Geometry
 	rep          *reports.Report
+	model        *device // see lotwork.device
+	modelWhy     string
 }
 
 // Report assembles the report of a lot. It fails only when ctx is cancelled or a
@@ -85,6 +87,9 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 	w.bins()
 	w.zones()
 	if err := w.pictures(); err != nil {
+		return nil, err
+	}
+	if err := w.inferEpi(ctx); err != nil {
 		return nil, err
 	}
 	w.conclude()

@@ -5,8 +5,6 @@ import (
 	"kneepoint/reports"
 )
 
-const noEpi = "this version does not infer the epi layer yet"
-
 // conclude fills in what stands at the end: the quality rows of the data, and
 // the parts that this version does not compute, each with its reason.
 func (w *lotwork) conclude() {
@@ -29,7 +27,6 @@ func (w *lotwork) conclude() {
 	const noCauses = "this version does not weigh physical causes yet"
 	none := reports.Interval{Estimate: reports.NaN, Lower: reports.NaN, Upper: reports.NaN, Why: noCauses}
 	r.Causes = []reports.Cause{{Cause: "unexplained", Probability: reports.NaN, Why: noCauses, Loss: none}}
-	r.EpiWhy = noEpi
 	r.Disposition = reports.Disposition{Proposal: "cannot-say", YieldIfFixed: none,
 		Because: []string{noCauses + ": read the losses and maps, and decide by the site's rules"}}
 	r.Cautions = append(r.Cautions,

@@ -6,6 +6,7 @@ import (
 	"math"
 	"sort"
 	"strings"
+	"sync"
 
 	"kneepoint/config"
 	"kneepoint/stats/junction"
@@ -89,15 +90,15 @@ func deviceModel(p *config.Product, own map[string]float64) (d *device, why stri
 // build builds the model, leaving out tests that have no solution on the device.
 func (d *device) build(dev junction.Device, tests, extra []junction.Test) (*junction.Model, error) {
 	all := append(append([]junction.Test(nil), tests...), extra...)
-	m, err := junction.NewModel(dev, all...)
+	m, err := newModel(dev, all...)
 	kept := len(extra)
 	if err != nil {
-		if _, bare := junction.NewModel(dev); bare != nil {
+		if _, bare := newModel(dev); bare != nil {
 			return nil, bare
 		}
 		all, kept = nil, 0
 		for i, t := range append(append([]junction.Test(nil), tests...), extra...) {
-			_, err := junction.NewModel(dev, t)
+			_, err := newModel(dev, t)
 			switch {
 			case err == nil:
 				all = append(all, t)
@@ -111,7 +112,7 @@ func (d *device) build(dev junction.Device, tests, extra []junction.Test) (*junc
 		if len(all) == kept {
 			return nil, errors.New("no test of the product has a solution on the device of the product file")
 		}
-		if m, err = junction.NewModel(dev, all...); err != nil {
+		if m, err = newModel(dev, all...); err != nil {
 			return nil, err
 		}
 	}
@@ -119,6 +120,40 @@ func (d *device) build(dev junction.Device, tests, extra []junction.Test) (*junc
 		d.Monitors = append(d.Monitors, i)
 	}
 	return m, nil
+}
+
+// models are the device models built by this process, latest last: building one
+// takes most of a second, and a week has many lots of a product.
+var models struct {
+	sync.Mutex
+	list []builtModel
+}
+
+type builtModel struct {
+	key   string
+	model *junction.Model
+	err   error
+}
+
+// mostModels is how many models are kept.
+const mostModels = 8
+
+func newModel(dev junction.Device, tests ...junction.Test) (*junction.Model, error) {
+	models.Lock()
+	defer models.Unlock()
+	key := fmt.Sprintf("%+v %+v", dev, tests)
+	for _, b := range models.list {
+		if b.key == key {
+			return b.model, b.err
+		}
+	}
+	b := builtModel{key: key}
+	b.model, b.err = junction.NewModel(dev, tests...)
+	models.list = append(models.list, b)
+	if len(models.list) > mostModels {
+		models.list = append([]builtModel(nil), models.list[1:]...)
+	}
+	return b.model, b.err
 }
 
 func plainError(err error) string { return strings.TrimPrefix(err.Error(), "junction: ") }

@@ -23,7 +23,7 @@ func (w *lotwork) waferAccount(i int) reports.Wafer {
 	pass := w.pass[wafer.Lo:wafer.Hi]
 	n, passing := len(pass), count(pass)
 	r := reports.Wafer{ID: wafer.ID, Dice: n, Passing: passing, Retested: w.retested[i],
-		FirstPass: share(w.firstPassing[i], n), Attributes: wafer.Attributes, EpiWhy: noEpi}
+		FirstPass: share(w.firstPassing[i], n), Attributes: wafer.Attributes}
 	if w.unjudged != "" {
 		r.Passing, r.FirstPass, r.Yield = 0, reports.NaN, unknown(w.unjudged)
 		r.Spatial.Why = w.unjudged
