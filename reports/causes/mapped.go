@@ -1,0 +1,138 @@
+package causes
+
+import (
+	"math"
+	"slices"
+
+	"kneepoint/wafermap"
+)
+
+// groups are the classes whose dice are looked at together on a map.
+var groups = []struct {
+	name    string
+	classes []string
+}{
+	{"hard", []string{"short", "emitter-short", "wreck"}},
+	{"open", []string{"open", "resistive"}},
+	{"pipe", []string{"pipe"}},
+	{"edge-low", []string{"edge-low"}},
+	{"leaky", []string{"leaky"}},
+	{"single", []string{"gain", "single"}},
+}
+
+// leastMapped is the fewest dice of a group whose map is judged.
+const leastMapped = 6
+
+// group returns the index in groups of a class, -1 for none.
+func (k *Catalogue) group(class int8) int {
+	if class < 0 {
+		return -1
+	}
+	for g := range groups {
+		if slices.Contains(groups[g].classes, k.Classes[class].Class) {
+			return g
+		}
+	}
+	return -1
+}
+
+// patterns are the map patterns of wafer w's single dice, by group.
+func (o *observer) patterns(w int) []Pattern {
+	c, s := o.c, o.c.Wafers[w]
+	if c.X == nil || c.Y == nil {
+		return nil
+	}
+	var grid *wafermap.Grid
+	var out []Pattern
+	of := o.groupOf()
+	for g := range groups {
+		fail, n := make([]bool, s.Hi-s.Lo), 0
+		for i := s.Lo; i < s.Hi; i++ {
+			if o.e.class[i] >= 0 && of[o.e.class[i]] == g {
+				fail[i-s.Lo] = true
+				n++
+			}
+		}
+		if n < leastMapped {
+			continue
+		}
+		if grid == nil {
+			grid = wafermap.NewGrid(c.X[s.Lo:s.Hi], c.Y[s.Lo:s.Hi])
+		}
+		in := wafermap.SignatureInput{Grid: grid, Geometry: c.Geometry, Fail: fail, ShotColumns: c.ShotColumns, ShotRows: c.ShotRows}
+		if c.Site != nil {
+			in.Site = c.Site[s.Lo:s.Hi]
+		}
+		if c.Order != nil {
+			in.Order = c.Order[s.Lo:s.Hi]
+		}
+		out = appendPatterns(out, g, in)
+	}
+	return out
+}
+
+func appendPatterns(out []Pattern, g int, in wafermap.SignatureInput) []Pattern {
+	for _, p := range wafermap.Signatures(in) {
+		out = append(out, Pattern{Group: groups[g].name, Kind: p.Kind, Loss: p.Loss, P: p.PValue})
+	}
+	return out
+}
+
+// groupOf is the group of each class.
+func (o *observer) groupOf() []int {
+	of := make([]int, len(o.k.Classes))
+	for k := range of {
+		of[k] = o.k.group(int8(k))
+	}
+	return of
+}
+
+// stacked looks at all wafers laid on each other: a position counts as failing
+// where more wafers have a single die of the group than chance places there. So a
+// pattern of few dice a wafer shows as well.
+func (o *observer) stacked() []Pattern {
+	c := o.c
+	if c.X == nil || c.Y == nil || len(c.Wafers) < 3 {
+		return nil
+	}
+	of := o.groupOf()
+	var out []Pattern
+	for g := range groups {
+		x, y, fail := o.stack(of, g)
+		if fail == nil {
+			continue
+		}
+		out = appendPatterns(out, g, wafermap.SignatureInput{Grid: wafermap.NewGrid(x, y), Geometry: c.Geometry, Fail: fail,
+			ShotColumns: c.ShotColumns, ShotRows: c.ShotRows})
+	}
+	return out
+}
+
+func (o *observer) stack(of []int, g int) (x, y []int32, fail []bool) {
+	c := o.c
+	count := wafermap.NewStack()
+	n := 0
+	for _, s := range c.Wafers {
+		hit := make([]bool, s.Hi-s.Lo)
+		for i := s.Lo; i < s.Hi; i++ {
+			if k := o.e.class[i]; k >= 0 && of[k] == g {
+				hit[i-s.Lo] = true
+				n++
+			}
+		}
+		count.Add(c.X[s.Lo:s.Hi], c.Y[s.Lo:s.Hi], hit)
+	}
+	if n < 2*leastMapped || len(count.X) == 0 {
+		return nil, nil, nil
+	}
+	var tested, failing int32
+	for i := range count.X {
+		tested, failing = tested+count.Tested[i], failing+count.Failing[i]
+	}
+	fail = make([]bool, len(count.X))
+	for i := range fail {
+		expected := float64(failing) / float64(tested) * float64(count.Tested[i])
+		fail[i] = float64(count.Failing[i]) > expected+2.3*math.Sqrt(expected)+0.5
+	}
+	return count.X, count.Y, fail
+}

@@ -1,0 +1,224 @@
+package causes
+
+import (
+	"math"
+	"slices"
+)
+
+// diceTable is what the single dice of a lot say, ready to be held against causes.
+type diceTable struct {
+	classes  int
+	excess   []float64 // by class: dice beyond what healthy lots have
+	sum      float64
+	share    float64 // of the lot's dice
+	strength float64 // how many dice's worth of evidence there is, at most a dozen
+}
+
+// healthyLoss is the yield loss of a healthy lot when nothing is known of it.
+const healthyLoss = 0.05
+
+func (e *Evidence) healthyLoss() float64 {
+	if y := e.cols.BaselineYield; y > 0 && y < 1 {
+		return max(1-y, 0.002)
+	}
+	return healthyLoss
+}
+
+// healthyCap is how large a part of a healthy lot's loss may lie in a class: point
+// defects, edge dice, pipes. What lines have differs, so the parts sum to more than
+// one. Common practice, no source.
+var healthyCap = map[string]float64{"short": 0.6, "emitter-short": 0.5, "leaky": 0.45, "wreck": 0.3, "open": 0.3, "pipe": 0.35,
+	"edge-low": 0.15, "single": 0.3, "gain": 0.15, "resistive": 0.12}
+
+func (e *Evidence) diceTable(k *Catalogue) diceTable {
+	d := diceTable{classes: len(k.Classes), excess: make([]float64, len(k.Classes))}
+	counts := e.single(d.classes)
+	n := float64(e.Dice)
+	for c := range counts {
+		expected := n * (2e-4 + e.healthyLoss()*healthyCap[k.Classes[c].Class])
+		d.excess[c] = max(0, counts[c]-expected-2*math.Sqrt(expected))
+		d.sum += d.excess[c]
+	}
+	if n > 0 {
+		d.share = d.sum / n
+	}
+	const most, small = 12, 0.004
+	d.strength = most * -math.Expm1(-d.sum/most) * -math.Expm1(-d.share/small)
+	return d
+}
+
+// against is the log likelihood of the excess under chances of classes (nil: none),
+// against equal chances, with what is left of them spread over all classes.
+func (d *diceTable) against(chances []float64, blur float64) float64 {
+	if d.sum == 0 {
+		return 0
+	}
+	ll, covered := 0.0, 0.0
+	for c, n := range d.excess {
+		if chances != nil && chances[c] > supported {
+			covered += n / d.sum
+		}
+	}
+	for c, n := range d.excess {
+		p := blur / float64(d.classes)
+		if chances != nil {
+			// a cause does not always make its classes in the same ratio: half of the
+			// chance is as given, half as seen among those that it makes
+			own := chances[c]
+			if chances[c] > supported && covered > 0 {
+				own = (own + n/d.sum/covered) / 2
+			} else {
+				own /= 2
+			}
+			p += (1 - blur) * own
+		}
+		ll += n / d.sum * math.Log(p*float64(d.classes))
+	}
+	return d.strength * ll
+}
+
+// supported is the least chance of a class that a cause is said to make.
+const supported = 0.03
+
+// chances are a cause's chances of the classes, nil when it makes no single dice.
+func (k *Catalogue) chances(e *Entry) []float64 {
+	if len(e.Dice) == 0 {
+		return nil
+	}
+	p, sum := make([]float64, len(k.Classes)), 0.0
+	for c := range k.Classes {
+		p[c] = e.Dice[k.Classes[c].Class]
+		sum += p[c]
+	}
+	for c := range p {
+		p[c] /= sum
+	}
+	return p
+}
+
+// diceOf is the view of the single dice for a cause.
+func (d *diceTable) of(k *Catalogue, e *Entry) float64 {
+	chances := k.chances(e)
+	switch {
+	case chances == nil:
+		return d.against(nil, 0.4) // a strong shift may leave some
+	case len(e.Shifts) > 0:
+		return d.against(chances, 0.2)
+	}
+	// a cause that lives by single dice must show them
+	return d.against(chances, 0.1) - 4*math.Exp(-d.share/0.003)
+}
+
+// mapTable is how much of a lot's patterns are of each kind, by group.
+type mapTable struct {
+	share    [][]float64 // by group and pattern
+	strength []float64   // by group: maps' worth of evidence, at most four
+}
+
+func (e *Evidence) mapTable() mapTable {
+	m := mapTable{share: make([][]float64, len(groups)), strength: make([]float64, len(groups))}
+	for g := range m.share {
+		m.share[g] = make([]float64, len(patterns))
+		maps := 0.0
+		add := func(list []Pattern, weight float64) {
+			sum := 0.0
+			for _, p := range list {
+				if p.Group == groups[g].name && p.Kind != "none" {
+					sum += p.Loss
+				}
+			}
+			if sum <= 0 {
+				return
+			}
+			for _, p := range list {
+				if p.Group == groups[g].name && p.Kind != "none" {
+					m.share[g][slices.Index(patterns, p.Kind)] += weight * p.Loss / sum
+				}
+			}
+			maps += weight
+		}
+		for w := range e.Wafers {
+			add(e.Wafers[w].Patterns, 1)
+		}
+		add(e.Stacked, 2)
+		for p := range m.share[g] {
+			m.share[g][p] /= max(maps, 1)
+		}
+		m.strength[g] = 4 * -math.Expm1(-maps/4)
+	}
+	return m
+}
+
+// of is the view of the maps for a cause: by group, as far as the excess lies in the
+// group and the cause makes such dice.
+func (m *mapTable) of(k *Catalogue, e *Entry, d *diceTable) float64 {
+	chances := k.chances(e)
+	if chances == nil || d.sum == 0 || len(e.Maps) == 0 {
+		return 0
+	}
+	total := 0.0
+	for _, w := range e.Maps {
+		total += w
+	}
+	ll := 0.0
+	for g := range groups {
+		weight := 0.0
+		for c := range chances {
+			if k.group(int8(c)) == g && chances[c] > supported {
+				weight += d.excess[c] / d.sum
+			}
+		}
+		for p, share := range m.share[g] {
+			if share > 0 {
+				const blur = 0.06
+				chance := (1-blur)*e.Maps[patterns[p]]/total + blur/float64(len(patterns))
+				ll += weight * m.strength[g] * share * math.Log(chance*float64(len(patterns)))
+			}
+		}
+	}
+	return ll
+}
+
+// flagView is the view of the flags for causes that hold together.
+func (e *Evidence) flagsOf(k *Catalogue, causes ...*Entry) float64 {
+	ll := 0.0
+	for _, f := range k.Flags {
+		raised, known := e.Flags[f.Flag]
+		if !known {
+			continue
+		}
+		p := f.Usual
+		if len(causes) > 0 {
+			not := 1.0
+			named := false
+			for _, c := range causes {
+				if own, ok := c.Flags[f.Flag]; ok {
+					not *= 1 - own
+					named = true
+				}
+			}
+			if named {
+				p = 1 - not
+			}
+		}
+		if raised {
+			ll += math.Log(p / f.Usual)
+		} else {
+			ll += math.Log((1 - p) / (1 - f.Usual))
+		}
+	}
+	return ll
+}
+
+// lossOf is the view of the yield: nothing wrong means nothing lost beyond what
+// healthy lots lose; a cause worth naming costs something.
+func (e *Evidence) lossOf() (nothing, cause float64) {
+	usual := e.healthyLoss()
+	spread := 0.015 + 0.3*usual
+	if !(e.cols.BaselineYield > 0) {
+		spread += 0.03
+	}
+	excess := 1 - e.yield() - usual
+	z := max(0, excess-0.5*spread) / spread
+	return -compress(z * z / 2), -2.5 * math.Exp(-max(0, excess)/0.012)
+}
