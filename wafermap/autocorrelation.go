@@ -49,7 +49,7 @@ func (g *Grid) Autocorrelation(value []float64, n Neighbours, w Weights) Autocor
 	g.check(len(value))
 	undefined := Moment{nan, nan, nan, nan, nan}
 	a := Autocorrelation{Moran: undefined, MoranNormality: undefined, Geary: undefined}
-	present := func(r int32) bool { return !math.IsNaN(value[r]) && !math.IsInf(value[r], 0) }
+	present := func(r int32) bool { return value[r]-value[r] == 0 } // neither NaN nor infinite
 	mean := 0.0
 	for _, r := range g.order {
 		if present(r) {
@@ -61,7 +61,10 @@ func (g *Grid) Autocorrelation(value []float64, n Neighbours, w Weights) Autocor
 		a.Why = fmt.Sprintf("%d dice with a value: at least 4 are needed", a.N)
 		return a
 	}
-	degree := g.degrees(n, present)
+	var degree []uint8
+	if w == RowStandardised {
+		degree = g.degrees(n, present)
+	}
 	var s squares
 	for _, r := range g.order {
 		if present(r) {

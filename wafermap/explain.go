@@ -38,28 +38,27 @@ func (f *field) reach(p *pattern) func(i int) float64 {
 		s, c := math.Sincos(p.angle)
 		return func(i int) float64 {
 			u, v := f.u[i]-p.cu, f.v[i]-p.cv
-			return math.Hypot((u*c+v*s)/p.a, (v*c-u*s)/p.b)
+			return math.Sqrt(sq((u*c+v*s)/p.a) + sq((v*c-u*s)/p.b))
 		}
 	case shapeAnnulus:
 		return func(i int) float64 {
-			r := math.Hypot(f.u[i]-p.cu, f.v[i]-p.cv)
+			r := math.Sqrt(sq(f.u[i]-p.cu) + sq(f.v[i]-p.cv))
 			return math.Abs(r-(p.a+p.b)/2) / ((p.b - p.a) / 2)
 		}
 	case shapeRing:
 		return func(i int) float64 {
-			r := math.Hypot(f.u[i]-p.cu, f.v[i]-p.cv)
+			r := math.Sqrt(sq(f.u[i]-p.cu) + sq(f.v[i]-p.cv))
 			return max(0, 1-(r-p.a)/(1-p.a))
 		}
 	case shapeArc:
 		depth := 1 - p.a
 		return func(i int) float64 {
-			r := math.Hypot(f.u[i], f.v[i])
-			past := math.Abs(halfTurn(math.Atan2(f.v[i], f.u[i])-p.theta)) - p.width/2
-			return max(0, 1+max((p.a-r)/depth, past*r/depth))
+			past := math.Abs(halfTurn(f.turn[i]-p.theta)) - p.width/2
+			return max(0, 1+max((p.a-f.far[i])/depth, past*f.far[i]/depth))
 		}
 	case shapeSector:
 		return func(i int) float64 {
-			return math.Abs(halfTurn(math.Atan2(f.v[i], f.u[i])-p.theta)) / (p.width / 2)
+			return math.Abs(halfTurn(f.turn[i]-p.theta)) / (p.width / 2)
 		}
 	case shapeLine:
 		return f.pathReach(&p.line)
@@ -151,13 +150,29 @@ type mixture struct {
 	kind  []int32   // by die
 	depth [][]uint8 // by pattern, by kind of die
 	o, n  []float64 // by kind of die
-	p     []float64 // by kind of die
 }
 
+// link is a pattern of a model and the mixture up to it.
+type link struct {
+	*explained
+	*mixture
+}
+
+// mix counts the dice for a model. It goes on from what this model and the last one begin
+// with alike.
 func (f *field) mix(found []*explained) *mixture {
+	same := 0
+	for same < len(found) && same < len(f.chain) && f.chain[same].explained == found[same] {
+		same++
+	}
+	f.chain = f.chain[:same]
 	m := &mixture{kind: make([]int32, len(f.rows)), o: []float64{f.total.o}, n: []float64{f.total.n}}
-	for _, x := range found {
+	if same > 0 {
+		m = f.chain[same-1].mixture
+	}
+	for _, x := range found[same:] {
 		m = f.split(m, x)
+		f.chain = append(f.chain, link{x, m})
 	}
 	return m
 }

@@ -28,6 +28,8 @@ type field struct {
 
 	raster
 	polar
+	lattice *lattice // nil until repeats are looked for
+	chain   []link   // the last model's mixture and those of its parts
 
 	// what the last full search for the dear shapes came up with
 	starts      []spotlight

@@ -77,7 +77,7 @@ func (g *Grid) JoinCount(fail []bool, n Neighbours) JoinCount {
 		c.PFF, c.Method = 1, "exact"
 		return c
 	}
-	g.judge(&c, n)
+	g.judge(&c, n, degrees)
 	return c
 }
 

@@ -12,11 +12,12 @@ import (
 const gammaFrom = 5
 
 // judge fills in SkewnessFF, PFF and its Method.
-func (g *Grid) judge(c *JoinCount, n Neighbours) {
-	c.SkewnessFF = c.skewness(g.shapes(n))
+func (g *Grid) judge(c *JoinCount, n Neighbours, degrees []uint8) {
+	shapes := g.shapes(n, degrees)
+	c.SkewnessFF = c.skewness(shapes)
 	switch {
 	case c.Fails <= 3:
-		c.PFF, c.Method = g.exactTail(c, n), "exact"
+		c.PFF, c.Method = c.exactTail(shapes), "exact"
 	case c.ExpectedFF < gammaFrom || c.ExpectedPP < gammaFrom || math.IsNaN(c.SkewnessFF+c.ZFF):
 		c.PFF, c.Method = g.permutedTail(c, n)
 	default:
@@ -46,8 +47,7 @@ type shapes struct {
 	paths     float64 // three joins in a row, through four dice
 }
 
-func (g *Grid) shapes(n Neighbours) shapes {
-	degree := g.degrees(n, func(int32) bool { return true })
+func (g *Grid) shapes(n Neighbours, degree []uint8) shapes {
 	steps := n.later()
 	pairs := n.sides()
 	here := make([]bool, len(steps))

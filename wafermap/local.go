@@ -1,7 +1,6 @@
 package wafermap
 
 import (
-	"cmp"
 	"fmt"
 	"math"
 	"math/rand/v2"
@@ -83,9 +82,9 @@ func (g *Grid) local(value []float64, n Neighbours, level float64, own bool) Loc
 	for i := range value {
 		l.Z[i], l.P[i], l.Adjusted[i] = nan, nan, nan
 	}
-	var present []float64
+	present := make([]float64, 0, len(g.order))
 	for _, r := range g.order {
-		if v := value[r]; !math.IsNaN(v) && !math.IsInf(v, 0) {
+		if v := value[r]; v-v == 0 { // neither NaN nor infinite
 			present = append(present, v)
 		}
 	}
@@ -94,20 +93,21 @@ func (g *Grid) local(value []float64, n Neighbours, level float64, own bool) Loc
 		l.Why = fmt.Sprintf("%d dice with a value: at least 8 are needed", l.N)
 		return l
 	}
+	steps := n.all()
 	law := newSumLaw(present)
+	law.most = min(len(steps)+1, l.N-1)
 	if law.sd == 0 {
 		l.Why = "the value is the same on all dice"
 		return l
 	}
-	steps := n.all()
 	for _, r := range g.order {
 		v := value[r]
-		if math.IsNaN(v) || math.IsInf(v, 0) {
+		if v-v != 0 {
 			continue
 		}
 		k, sum := 0, 0.0
 		for _, s := range steps {
-			if q := g.at(r, s); q >= 0 && !math.IsNaN(value[q]) && !math.IsInf(value[q], 0) {
+			if q := g.at(r, s); q >= 0 && value[q]-value[q] == 0 {
 				k++
 				sum += value[q]
 			}
@@ -149,17 +149,17 @@ func (g *Grid) local(value []float64, n Neighbours, level float64, own bool) Loc
 
 // adjust fills in Adjusted.
 func (l *Local) adjust(rows []int32) {
-	order := make([]int32, 0, len(rows))
+	place, p := make([]int32, 0, len(rows)), make([]float64, 0, len(rows))
 	for _, r := range rows {
 		if !math.IsNaN(l.P[r]) {
-			order = append(order, r)
+			place, p = append(place, r), append(p, l.P[r])
 		}
 	}
-	slices.SortStableFunc(order, func(a, b int32) int { return cmp.Compare(l.P[a], l.P[b]) })
+	order := ascending(p)
 	least := 1.0
 	for i := len(order) - 1; i >= 0; i-- {
-		least = min(least, l.P[order[i]]*float64(len(order))/float64(i+1))
-		l.Adjusted[order[i]] = least
+		least = min(least, p[order[i]]*float64(len(order))/float64(i+1))
+		l.Adjusted[place[order[i]]] = least
 	}
 }
 
@@ -169,13 +169,15 @@ type sumLaw struct {
 	mean, sd float64
 	fails    int // values of 1 where all are 0 or 1, else -1
 	// else the values in groups, about the mean
-	values    []float64
-	at, share []float64
-	tables    map[int]*sumTable
+	values       []float64
+	at, share    []float64
+	most         int         // values in a sum
+	above, below []sumCounts // by number of values less 1: draws at least so far out
+	tables       []*sumTable // by number of values
 }
 
 func newSumLaw(values []float64) *sumLaw {
-	l := &sumLaw{n: len(values), values: values, tables: map[int]*sumTable{}}
+	l := &sumLaw{n: len(values), values: values}
 	for i, v := range values {
 		l.mean += (v - l.mean) / float64(i+1)
 		if v == 1 && l.fails >= 0 {
@@ -194,7 +196,11 @@ func newSumLaw(values []float64) *sumLaw {
 	if l.fails >= 0 {
 		return l
 	}
-	l.group(slices.Sorted(slices.Values(values)))
+	sorted := make([]float64, len(values))
+	for i, k := range ascending(values) {
+		sorted[i] = values[k]
+	}
+	l.group(sorted)
 	return l
 }
 
@@ -229,6 +235,9 @@ func (l *sumLaw) group(sorted []float64) {
 func (l *sumLaw) tails(k int, sum float64) (z, p float64) {
 	n, count := float64(l.n), float64(k)
 	z = (sum - count*l.mean) / (l.sd * math.Sqrt(count*(n-count)/(n-1)))
+	if k >= len(l.tables) {
+		l.tables = append(l.tables, make([]*sumTable, k+1-len(l.tables))...)
+	}
 	t := l.tables[k]
 	if t == nil {
 		if l.fails >= 0 {
@@ -249,9 +258,13 @@ type sumTable struct {
 }
 
 const (
-	saddleReach = 40.0 // standard deviations
-	saddleStep  = 0.25
+	draws       = 20000
+	saddleStep  = 0.25 // standard deviations
+	saddleSteps = 160
 )
+
+// sumCounts are numbers of draws by how far out they are.
+type sumCounts [saddleSteps + 1]int32
 
 func (t *sumTable) tail(z, sum float64) float64 {
 	if t.exact {
@@ -296,40 +309,66 @@ func hypergeometric(n, fails, k int) *sumTable {
 	return t
 }
 
-// drawn tabulates tails of a sum of k values: from random draws as far out as at least a
-// hundred of them reach, and from there on as the saddlepoint tail goes on.
-func (l *sumLaw) drawn(k int) *sumTable {
-	const draws, sure = 20000, 100
-	random := rand.New(rand.NewPCG(0x6c6f63616c, uint64(l.n)<<16|uint64(k)))
-	z := make([]float64, draws)
-	chosen := make([]int, k)
-	n, count := float64(l.n), float64(k)
-	unit := l.sd * math.Sqrt(count*(n-count)/(n-1))
-	for d := range z {
+// drawSums counts, for sums of 1, 2, ... most values, how many of 20,000 random draws of so
+// many lie in each step of saddleStep standard deviations above and below the mean. The
+// sums share their draws.
+func (l *sumLaw) drawSums(most int) {
+	random := rand.New(rand.NewPCG(0x6c6f63616c, uint64(l.n)<<16|uint64(most)))
+	l.above, l.below = make([]sumCounts, most), make([]sumCounts, most)
+	chosen := make([]int, most)
+	units := make([]float64, most)
+	n := float64(l.n)
+	for k := range units {
+		count := float64(k + 1)
+		units[k] = l.sd * math.Sqrt(count*(n-count)/(n-1))
+	}
+	for range draws {
 		sum := 0.0
-		for i := 0; i < k; {
+		for i := 0; i < most; {
 			c := random.IntN(l.n)
 			if slices.Contains(chosen[:i], c) {
 				continue
 			}
 			chosen[i] = c
+			sum += l.values[c] - l.mean
+			z := sum / units[i] / saddleStep
+			if z >= 0 {
+				l.above[i][int(min(z, saddleSteps))]++
+			}
+			if z <= 0 {
+				l.below[i][int(min(-z, saddleSteps))]++
+			}
 			i++
-			sum += l.values[c]
 		}
-		z[d] = (sum - count*l.mean) / unit
 	}
-	slices.Sort(z)
+	for i := range most { // from counts in steps to counts beyond
+		for s := saddleSteps - 1; s >= 0; s-- {
+			l.above[i][s] += l.above[i][s+1]
+			l.below[i][s] += l.below[i][s+1]
+		}
+	}
+}
+
+// drawn tabulates tails of a sum of k values: from random draws as far out as at least a
+// hundred of them reach, and from there on as the saddlepoint tail goes on.
+func (l *sumLaw) drawn(k int) *sumTable {
+	const sure = 100
+	if k > len(l.above) {
+		l.drawSums(max(k, l.most))
+	}
 	t := &sumTable{}
 	for _, sign := range [2]float64{1, -1} {
 		var side []float64
-		s, offset, at := 0.0, nan, 0 // saddlepoint; draws less extreme
-		for x := 0.0; x <= saddleReach; x += saddleStep {
-			for at < draws && (sign > 0 && z[at] < x || sign < 0 && -z[draws-1-at] < x) {
-				at++
-			}
-			value, next, ok := l.lugannaniRice(x*l.sd/math.Sqrt(count), sign, count, s)
-			if draws-at >= sure {
-				side = append(side, math.Log(float64(draws-at)/draws))
+		beyond := &l.above[k-1]
+		if sign < 0 {
+			beyond = &l.below[k-1]
+		}
+		s, offset := 0.0, nan // saddlepoint
+		for step := range saddleSteps + 1 {
+			x := saddleStep * float64(step)
+			value, next, ok := l.lugannaniRice(x*l.sd/math.Sqrt(float64(k)), sign, float64(k), s)
+			if beyond[step] >= sure {
+				side = append(side, math.Log(float64(beyond[step])/draws))
 				offset = side[len(side)-1] - value
 			} else if ok && !math.IsNaN(offset) {
 				side = append(side, min(side[len(side)-1], value+offset))

@@ -176,7 +176,7 @@ func (s *lineSearch) run(curvature float64) {
 	slopes := max(2, int(math.Ceil(half/(1.2*float64(s.thick))))) // the ends of neighbouring slopes lie 1.2 thicknesses apart
 	square := curvature / (2 * half)
 	shift := make([]int, s.long)
-	first := make([]int, 0, 3*s.long)
+	ends := make([][2]int, 0, 4*s.long)
 	s.cost = s.f.lineCost(float64(s.thick * s.block))
 	for k := -slopes; k <= slopes; k++ {
 		slope := float64(k) / float64(slopes)
@@ -188,49 +188,52 @@ func (s *lineSearch) run(curvature float64) {
 		}
 		s.chooseLengths(k)
 		s.slope, s.square, s.half = slope, square, half
-		if curvature != 0 {
-			for y0 := -highest; y0 < s.wide-lowest; y0++ {
-				for b := 0; b < s.long; { // stretches of the path on the raster
-					a := b
-					for a < s.long && uint(y0+shift[a]) >= uint(s.wide) {
-						a++
-					}
-					b = a
-					for b < s.long && uint(y0+shift[b]) < uint(s.wide) {
-						b++
-					}
-					s.look(y0, a, b, shift)
-				}
+		// Along the path the shift rises to both sides, or falls: the places where it is below
+		// some value, or not below, are one stretch. Inside the raster, 0 <= y0+shift < wide.
+		ends = stretches(ends[:0], shift, lowest, highest, curvature >= 0)
+		stretch := func(v int) [2]int { return ends[min(max(v-lowest, 0), highest+1-lowest)] }
+		for y0 := -highest; y0 < s.wide-lowest; y0++ {
+			outer, inner := stretch(s.wide-y0), stretch(-y0)
+			if curvature < 0 {
+				outer, inner = inner, outer
 			}
-			continue
-		}
-		// first[v-lowest] is the first place with a shift of at least v, or at most -v going down
-		sign := 1
-		if k < 0 {
-			sign, lowest, highest = -1, -highest, -lowest
-		}
-		first = first[:0]
-		for i, d := range shift {
-			for len(first) <= sign*d-lowest {
-				first = append(first, i)
+			if inner[0] >= inner[1] {
+				s.look(y0, outer[0], outer[1], shift)
+				continue
 			}
-		}
-		reached := func(v int) int {
-			if v -= lowest; v < 0 {
-				return 0
-			} else if v >= len(first) {
-				return s.long
-			}
-			return first[v]
-		}
-		for y0 := -max(highest, -lowest); y0 < s.wide+max(highest, -lowest); y0++ {
-			if sign > 0 { // 0 <= y0+d < wide
-				s.look(y0, reached(-y0), reached(s.wide-y0), shift)
-			} else { // d = -q: y0-wide < q <= y0
-				s.look(y0, reached(y0-s.wide+1), reached(y0+1), shift)
-			}
+			s.look(y0, outer[0], inner[0], shift)
+			s.look(y0, inner[1], outer[1], shift)
 		}
 	}
+}
+
+// stretches lists, for values v from lowest to highest+1, the stretch from a to b (exclusive)
+// where the shift is below v, or where it is at least v.
+func stretches(ends [][2]int, shift []int, lowest, highest int, below bool) [][2]int {
+	sign, first := 1, lowest
+	if !below {
+		sign, first = -1, -highest
+	}
+	tip := 0 // of the bow
+	for i, d := range shift {
+		if sign*d < sign*shift[tip] {
+			tip = i
+		}
+	}
+	a, b := tip, tip
+	for v := range highest - lowest + 2 {
+		for a > 0 && sign*shift[a-1] < first+v {
+			a--
+		}
+		for b < len(shift) && sign*shift[b] < first+v {
+			b++
+		}
+		ends = append(ends, [2]int{a, b})
+	}
+	if !below { // -shift < w is shift >= 1-w
+		slices.Reverse(ends)
+	}
+	return ends
 }
 
 // chooseLengths picks the lengths of line that slope k is looked at for: those that

@@ -16,7 +16,7 @@ const (
 // fails, from how many sets of that many dice hold how many joins. Among three
 // dice there can be three joins (a triangle), two (two joins that share a die,
 // not part of a triangle) or one.
-func (g *Grid) exactTail(c *JoinCount, n Neighbours) float64 {
+func (c *JoinCount) exactTail(shapes shapes) float64 {
 	dice, joins := float64(c.N), float64(c.Joins)
 	if c.FailFail == 0 {
 		return 1
@@ -24,7 +24,6 @@ func (g *Grid) exactTail(c *JoinCount, n Neighbours) float64 {
 	if c.Fails == 2 {
 		return joins / (dice * (dice - 1) / 2)
 	}
-	shapes := g.shapes(n)
 	triangles, wedges := shapes.triangles, shapes.wedges // a triangle has three wedges
 	sets := triangles
 	switch c.FailFail {

@@ -10,7 +10,8 @@ const (
 )
 
 type polar struct {
-	at              []uint16 // cell by die: ring*polarAngles + angle
+	far, turn       []float64 // by die: distance from the centre and angle, -pi to pi
+	at              []uint16  // cell by die: ring*polarAngles + angle
 	failing, tested []int32
 	expecting       []float64
 	sums            []tally // [ring][angle], below both; angles run twice round
@@ -23,9 +24,11 @@ func (f *field) layPolar() {
 	q := &f.polar
 	q.at = make([]uint16, len(f.rows))
 	q.failing, q.tested, q.expecting = make([]int32, polarRings*polarAngles), make([]int32, polarRings*polarAngles), make([]float64, polarRings*polarAngles)
+	q.far, q.turn = make([]float64, len(f.rows)), make([]float64, len(f.rows))
 	for i := range f.rows {
-		r := min(int(math.Hypot(f.u[i], f.v[i])*polarRings), polarRings-1)
-		turn := math.Atan2(f.v[i], f.u[i]) / (2 * math.Pi)
+		q.far[i], q.turn[i] = math.Sqrt(f.u[i]*f.u[i]+f.v[i]*f.v[i]), math.Atan2(f.v[i], f.u[i])
+		r := min(int(q.far[i]*polarRings), polarRings-1)
+		turn := q.turn[i] / (2 * math.Pi)
 		if turn < 0 {
 			turn++
 		}

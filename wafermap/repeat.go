@@ -12,38 +12,87 @@ const (
 	mostCells     = 16 // places of a period that one pattern may hold
 )
 
-// folder sums what exceeds the model over dice that agree in place modulo two
-// periods. Places count in spacings of the sampled map.
-type folder struct {
-	f              *field
+// lattice holds a wafer's dice by column and line, in spacings of the sampled map.
+type lattice struct {
 	cols, lines    int
-	col, line      []int32 // by die
 	spaceX, spaceY int
-	over           []float64 // by die: fail less its chance
-	column         []float64 // by line and column modulo px
-	cell           []float64 // by line modulo py and column modulo px
+	at             []int32   // by die
+	o, n, e        []float64 // by line and column
 }
 
-func (f *field) newFolder() *folder {
+// mostPlaces is the number of columns times lines beyond which repeats are not looked
+// for: no wafer has as many.
+const mostPlaces = 1 << 22
+
+func (f *field) newLattice() *lattice {
 	g := f.in.Grid
-	n := len(f.rows)
-	d := &folder{f: f, col: make([]int32, n), line: make([]int32, n), over: make([]float64, n)}
+	l := &lattice{at: make([]int32, len(f.rows))}
 	x1, y1 := f.x0, f.y0
 	for _, r := range f.rows {
 		x1, y1 = max(x1, int(g.x[r])), max(y1, int(g.y[r]))
 	}
-	d.spaceX, d.spaceY = f.spacing(extent{f.x0, x1, f.y0, y1})
-	d.cols, d.lines = (x1-f.x0)/d.spaceX+1, (y1-f.y0)/d.spaceY+1
+	l.spaceX, l.spaceY = f.spacing(extent{f.x0, x1, f.y0, y1})
+	l.cols, l.lines = (x1-f.x0)/l.spaceX+1, (y1-f.y0)/l.spaceY+1
+	if l.cols > mostPlaces/l.lines {
+		l.cols, l.lines = 0, 0
+		return l
+	}
+	l.o, l.n, l.e = make([]float64, l.cols*l.lines), make([]float64, l.cols*l.lines), make([]float64, l.cols*l.lines)
 	for i, r := range f.rows {
-		d.col[i], d.line[i] = int32((int(g.x[r])-f.x0)/d.spaceX), int32((int(g.y[r])-f.y0)/d.spaceY)
-		d.over[i] = -f.p[i]
+		c := (int(g.y[r])-f.y0)/l.spaceY*l.cols + (int(g.x[r])-f.x0)/l.spaceX
+		l.at[i] = int32(c)
+		l.n[c]++
 		if f.fail[i] {
-			d.over[i]++
+			l.o[c]++
 		}
 	}
-	d.column = make([]float64, d.lines*longestPeriod)
-	d.cell = make([]float64, longestPeriod*longestPeriod)
-	return d
+	return l
+}
+
+// folder sums over places that agree modulo two periods.
+type folder struct {
+	f *field
+	*lattice
+}
+
+func (f *field) newFolder() folder {
+	if f.lattice == nil {
+		f.lattice = f.newLattice()
+	}
+	l := f.lattice
+	if l.cols > 0 {
+		clear(l.e)
+		for i, c := range l.at {
+			l.e[c] += f.p[i]
+		}
+	}
+	return folder{f, l}
+}
+
+// fold adds up, in each row of a table width wide, what agrees modulo period.
+func fold(into, table []float64, width, period int) {
+	clear(into)
+	for ; len(table) >= width; table, into = table[width:], into[period:] {
+		sum, row := into[:period], table[:width]
+		for ; len(row) >= period; row = row[period:] {
+			addTo(sum, row[:period])
+		}
+		addTo(sum[:len(row)], row)
+	}
+}
+
+// addTo adds row to sum, place by place.
+func addTo(sum, row []float64) {
+	for len(sum) >= 4 && len(row) >= 4 { // written out: it is most of the work
+		sum[0] += row[0]
+		sum[1] += row[1]
+		sum[2] += row[2]
+		sum[3] += row[3]
+		sum, row = sum[4:], row[4:]
+	}
+	for i, v := range row {
+		sum[i] += v
+	}
 }
 
 // findRepeats looks for dice that fail in step with a period along both axes (shot) and
@@ -51,6 +100,9 @@ func (f *field) newFolder() *folder {
 // tries the periods of the last time again.
 func (f *field) findRepeats(fresh bool) (shot, comb *pattern) {
 	d := f.newFolder()
+	if d.cols == 0 {
+		return nil, nil
+	}
 	mx, my := min(longestPeriod, d.cols/fewestPeriods), min(longestPeriod, d.lines/fewestPeriods)
 	if fresh || f.periods == nil {
 		f.periods = d.foldAll(mx, my)
@@ -84,12 +136,32 @@ func (f *field) findRepeats(fresh bool) (shot, comb *pattern) {
 }
 
 // foldAll tries all pairs of periods and returns the best few.
-func (d *folder) foldAll(mx, my int) []spotlight {
+func (d folder) foldAll(mx, my int) []spotlight {
 	both, one := shortlist{most: 6}, shortlist{most: 2}
 	same := func(a, b [6]float64) bool { return a[0] == b[0] && a[1] == b[1] }
-	for px := 1; px <= mx; px++ {
-		d.foldColumns(px)
-		for py := 1; py <= my; py++ {
+	over := make([]float64, len(d.o))
+	for c := range over {
+		over[c] = d.o[c] - d.e[c]
+	}
+	// what agrees modulo 8 is added up from what agrees modulo 16
+	var columns, cells [longestPeriod + 1][]float64
+	for px := mx; px > 0; px-- {
+		from, width := over, d.cols
+		if 2*px <= mx {
+			from, width = columns[2*px], 2*px
+		}
+		columns[px] = make([]float64, d.lines*px)
+		fold(columns[px], from, width, px)
+		for py := my; py > 0; py-- {
+			from, lines := columns[px], d.lines
+			if 2*py <= my {
+				from, lines = cells[2*py], 2*py
+			}
+			if cap(cells[py]) == 0 {
+				cells[py] = make([]float64, py*mx)
+			}
+			cells[py] = cells[py][:px*py]
+			fold(cells[py], from, lines*px, py*px)
 			if px*py == 1 {
 				continue
 			}
@@ -97,66 +169,41 @@ func (d *folder) foldAll(mx, my int) []spotlight {
 			if px == 1 || py == 1 {
 				list = &one
 			}
-			d.foldLines(px, py)
-			list.offer(d.peak(px*py)-math.Log(float64(px*py)), [6]float64{float64(px), float64(py)}, same)
+			list.offer(d.peak(cells[py])-math.Log(float64(px*py)), [6]float64{float64(px), float64(py)}, same)
 		}
 	}
 	return append(both.items, one.items...)
 }
 
-func (d *folder) foldColumns(px int) {
-	clear(d.column[:d.lines*px])
-	modulo := make([]int32, d.cols)
-	for i := range modulo {
-		modulo[i] = int32(i % px)
-	}
-	for i, col := range d.col {
-		d.column[int(d.line[i])*px+int(modulo[col])] += d.over[i]
-	}
-}
-
-func (d *folder) foldLines(px, py int) {
-	cell := d.cell[:px*py]
-	clear(cell)
-	at := 0
-	for j := range d.lines {
-		into := cell[at : at+px]
-		for i, v := range d.column[j*px : j*px+px] {
-			into[i] += v
-		}
-		if at += px; at == px*py {
-			at = 0
-		}
-	}
-}
-
 // peak is about the gain of the fullest cell.
-func (d *folder) peak(cells int) float64 {
+func (d folder) peak(cells []float64) float64 {
 	top := 0.0
-	for _, v := range d.cell[:cells] {
-		top = max(top, v)
+	for _, v := range cells {
+		if v > top {
+			top = v
+		}
 	}
-	e := d.f.total.o / float64(cells)
+	e := d.f.total.o / float64(len(cells))
 	return (e+top)*math.Log1p(top/e) - top
 }
 
 // settle tallies the cells of a pair of periods and joins those that fail together.
-func (d *folder) settle(px, py int, free float64) *pattern {
+func (d folder) settle(px, py int, free float64) *pattern {
 	f := d.f
 	cells := make([]tally, px*py)
-	column, line := make([]int32, d.cols), make([]int32, d.lines)
-	for i := range column {
-		column[i] = int32(i % px)
-	}
-	for i := range line {
-		line[i] = int32(i % py * px)
-	}
-	for i, col := range d.col {
-		t := &cells[line[d.line[i]]+column[col]]
-		t.n++
-		t.e += f.p[i]
-		if f.fail[i] {
-			t.o++
+	column, cell := make([]float64, d.lines*px), make([]float64, px*py)
+	for _, part := range []struct {
+		table []float64
+		into  func(t *tally) *float64
+	}{
+		{d.o, func(t *tally) *float64 { return &t.o }},
+		{d.n, func(t *tally) *float64 { return &t.n }},
+		{d.e, func(t *tally) *float64 { return &t.e }},
+	} {
+		fold(column, part.table, d.cols, px)
+		fold(cell, column, d.lines*px, py*px)
+		for c, v := range cell {
+			*part.into(&cells[c]) = v
 		}
 	}
 	order := make([]int, 0, len(cells))

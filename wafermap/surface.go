@@ -60,11 +60,14 @@ const (
 
 // polynomial is the value of sum c[k] u^i v^j with the monomials by i+j, then j.
 func polynomial(c *[monomials]float64, u, v float64) float64 {
-	var m [monomials]float64
-	powers(&m, u, v)
 	sum := 0.0
-	for k := range m {
-		sum += c[k] * m[k]
+	for j := surfaceOrder; j >= 0; j-- {
+		p, at := 0.0, surfaceOrder*(surfaceOrder+1)/2+j // of u^(surfaceOrder-j) v^j
+		for order := surfaceOrder; order >= j; order-- {
+			p = p*u + c[at]
+			at -= order
+		}
+		sum = sum*v + p
 	}
 	return sum
 }
@@ -80,6 +83,24 @@ func powers(m *[monomials]float64, u, v float64) {
 		}
 		m[next+order] = m[at+order-1] * v
 		at = next
+	}
+}
+
+// addPowers adds the monomials u^i v^j to sums.
+func addPowers(sum *[monomials]float64, u, v float64) {
+	var ui [surfaceOrder + 1]float64
+	ui[0] = 1
+	for i := 1; i <= surfaceOrder; i++ {
+		ui[i] = ui[i-1] * u
+	}
+	vj := 1.0
+	for j := range surfaceOrder + 1 {
+		at := j*(j+1)/2 + j // of u^0 v^j; u^i v^j is in order i+j
+		for i := 0; i <= surfaceOrder-j; i++ {
+			sum[at] += ui[i] * vj
+			at += i + j + 1
+		}
+		vj *= v
 	}
 }
 
@@ -178,6 +199,7 @@ func NewSurfaceBasis(g Geometry, x, y []int32) *SurfaceBasis {
 		b.why = "the wafer is not known: " + g.Why
 		return b
 	}
+	b.rows, b.u, b.v = make([]int32, 0, len(x)), make([]float64, 0, len(x)), make([]float64, 0, len(x))
 	for i := range x {
 		mmX, mmY := g.Position(x[i], y[i])
 		u, v := mmX/b.radius, mmY/b.radius
@@ -207,33 +229,27 @@ func (g Geometry) testedRadius() float64 {
 // group puts dice into cells.
 func (b *SurfaceBasis) group() {
 	b.cell = make([]int32, len(b.rows))
-	across := cellsAcross
-	index := map[int32]int32{}
+	var index [(cellsAcross + 1) * (cellsAcross + 1)]int32 // cells by place, counted from 1
 	var count []float64
 	for i := range b.rows {
 		k := int32(i)
 		if len(b.rows) > diceAsCells {
-			at := func(x float64) int32 { return int32((x + farthest) / (2 * farthest) * float64(across)) }
-			key := at(b.v[i])*int32(across+1) + at(b.u[i])
-			var ok bool
-			if k, ok = index[key]; !ok {
-				k = int32(len(b.cells))
-				index[key] = k
+			at := func(x float64) int { return int((x + farthest) / (2 * farthest) * cellsAcross) }
+			place := &index[at(b.v[i])*(cellsAcross+1)+at(b.u[i])]
+			if *place == 0 {
+				*place = int32(len(b.cells)) + 1
 			}
+			k = *place - 1
 		}
 		if int(k) == len(b.cells) {
 			b.cells, count = append(b.cells, surfaceCell{}), append(count, 0)
 		}
 		b.cell[i] = k
 		c := &b.cells[k]
-		var m [monomials]float64
-		powers(&m, b.u[i], b.v[i])
-		for j := range m {
-			c.z[j] += m[j]
-		}
+		addPowers(&c.z, b.u[i], b.v[i])
 		c.u += b.u[i]
 		c.v += b.v[i]
-		c.edge += edgeTerm(math.Hypot(b.u[i], b.v[i]))
+		c.edge += edgeTerm(math.Sqrt(b.u[i]*b.u[i] + b.v[i]*b.v[i]))
 		count[k]++
 	}
 	blocks := int32(min(max(math.Sqrt(4/math.Pi*float64(len(b.rows)))/6, 4), blocksAcross))

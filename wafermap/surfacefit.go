@@ -76,7 +76,7 @@ type surfaceWork struct {
 }
 
 func (b *SurfaceBasis) work(value []float64) *surfaceWork {
-	w := &surfaceWork{b: b}
+	w := &surfaceWork{b: b, at: make([]int32, 0, len(b.rows)), y: make([]float64, 0, len(b.rows))}
 	for i, r := range b.rows {
 		if v := value[r]; !math.IsNaN(v) && !math.IsInf(v, 0) {
 			w.at, w.y = append(w.at, int32(i)), append(w.y, v)
@@ -114,21 +114,38 @@ func (w *surfaceWork) sums() normal {
 func (w *surfaceWork) equations(s normal, terms int) (a *mat.SymDense, b *mat.VecDense) {
 	a, b = mat.NewSymDense(terms, nil), mat.NewVecDense(terms, nil)
 	data, rhs := a.RawSymmetric().Data, b.RawVector().Data
+	last := -1 // a cell that waits for another: two at a time take half the loads and stores
 	for c := range s.w {
 		if s.w[c] == 0 {
 			continue
 		}
-		z := w.b.cells[c].z[:terms]
-		for j, zj := range z {
-			rhs[j] += s.wy[c] * zj
-			f := s.w[c] * zj
-			row := data[j*terms : (j+1)*terms]
-			for k := j; k < terms; k++ {
-				row[k] += f * z[k]
-			}
+		if last < 0 {
+			last = c
+			continue
 		}
+		addPair(data, rhs, w.b.cells[last].z[:terms], w.b.cells[c].z[:terms], s.w[last], s.w[c], s.wy[last], s.wy[c])
+		last = -1
+	}
+	if last >= 0 {
+		z := w.b.cells[last].z[:terms]
+		addPair(data, rhs, z, z, s.w[last], 0, s.wy[last], 0)
 	}
 	return a, b
+}
+
+// addPair adds two cells to normal equations.
+func addPair(data, rhs, p, q []float64, wp, wq, yp, yq float64) {
+	terms := len(rhs)
+	for j, pj := range p {
+		qj := q[j]
+		rhs[j] += yp*pj + yq*qj
+		fp, fq := wp*pj, wq*qj
+		row := data[j*terms+j : (j+1)*terms]
+		p, q := p[j:][:len(row)], q[j:][:len(row)]
+		for k := range row {
+			row[k] += fp*p[k] + fq*q[k]
+		}
+	}
 }
 
 // tells reports whether the first terms of a can be told apart: no term may be almost a
@@ -206,8 +223,13 @@ func (w *surfaceWork) start() {
 	for k := range zone {
 		zone[k] = make([]float64, 0, 2*len(w.at)/len(zone)+8)
 	}
+	of := make([]int, len(w.b.cells))
+	for c := range of {
+		cell := &w.b.cells[c]
+		of[c] = ring(cell.u, cell.v, 1, rings)*sectors + sector(cell.u, cell.v, sectors)
+	}
 	for i, p := range w.at {
-		k := ring(w.b.u[p], w.b.v[p], 1, rings)*sectors + sector(w.b.u[p], w.b.v[p], sectors)
+		k := of[w.b.cell[p]]
 		zone[k] = append(zone[k], w.y[i])
 		u[k] += w.b.u[p]
 		v[k] += w.b.v[p]
