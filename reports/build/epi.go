@@ -56,6 +56,7 @@ func (w *lotwork) inferEpi(ctx context.Context) error {
 	}
 	e.lotPos = d.Invert(in, d.Prior)
 	e.relate = e.compare(all)
+	e.growOnLot()
 	if err := e.zonesAndMaps(ctx); err != nil {
 		return err
 	}
@@ -220,6 +221,10 @@ func (e *epiwork) parameters(p *junction.Posterior) []reports.EpiParameter {
 	return out
 }
 
+// drawnSigmas is how many prior sigmas from target data alone must be for the reader
+// to be told that the prior draws the value.
+const drawnSigmas = 2
+
 // epiWords are the sentences of one posterior, without those that are the same for
 // every wafer, and with what the data alone say where the prior draws it away.
 func epiWords(d *device, p *junction.Posterior) []string {
@@ -244,7 +249,7 @@ func epiWords(d *device, p *junction.Posterior) []string {
 		sigma      float64
 	}{{"net thickness", "um", p.NetThickness, d.NetThickness(), d.NetSigma(d.Prior)},
 		{"doping", "cm^-3", p.Doping, d.Device.EpiDopingCM3, d.Prior.Sigma[junction.EpiDoping]}} {
-		if z := math.Log(x.q.DataOnly.Estimate/x.nominal) / x.sigma; math.Abs(z) > 3 {
+		if z := math.Log(x.q.DataOnly.Estimate/x.nominal) / x.sigma; math.Abs(z) > drawnSigmas {
 			out = append(out, fmt.Sprintf("data alone put %s at %.3g %s, %.1f sigmas of the spec's spread from target: believe them rather than the value with the prior, which is drawn to target",
 				x.name, x.q.DataOnly.Estimate, x.unit, math.Abs(z)))
 		}
@@ -266,6 +271,44 @@ func paragraph(words []string) string {
 	}
 	return text
 }
+
+// fewestForGrown is the fewest wafers that make a typical one.
+const fewestForGrown = 5
+
+// growOnLot gives wafers the thickness as grown that follows from the typical
+// wafer's and from how their net thickness differs from it. Base depth and
+// up-diffused tail come from steps that the wafers of a lot go through together, so a
+// quarter of their spread is left between wafers (common practice, no source); epi
+// is grown wafer by wafer or reactor load by load. Without this, a few thin wafers
+// would be put down to a tail that their neighbours do not have.
+func (e *epiwork) growOnLot() {
+	lot := &e.lotPos
+	if e.d.Own || e.waferCount() < fewestForGrown || lot.NetThickness.Sight != junction.Seen {
+		return
+	}
+	dev, net := &e.d.Device, e.d.NetThickness()
+	grown := dev.EpiThicknessUM * e.d.Prior.Sigma[junction.EpiThickness]
+	offset := math.Sqrt(math.Max(0, math.Pow(net*e.d.NetSigma(e.d.Prior), 2)-grown*grown))
+	for i, s := range e.relate {
+		p := &e.post[i]
+		if e.levels[i] == nil || p.NetThickness.Sight != junction.Seen || !finite(s.thickness) {
+			continue
+		}
+		w := lot.NetThickness.WithPrior.Estimate
+		differ := w * math.Hypot(s.thicknessSigma, sharedResponse*s.thickness)
+		own := z95 * math.Hypot(differ, offset/4)
+		at := lot.Thickness.WithPrior.Estimate + w*math.Expm1(s.thickness)
+		l := lot.Thickness.WithPrior
+		p.Thickness.WithPrior = junction.Interval{Estimate: at, Lower: at - math.Hypot(l.Estimate-l.Lower, own), Upper: at + math.Hypot(l.Upper-l.Estimate, own)}
+		out := &e.rep.Wafers[i].Epi.ThicknessUM
+		*out = specInterval(p.Thickness, e.in.Product.Device.Epi.ThicknessUM)
+		out.Method = "the lot's typical wafer, and this wafer's net thickness against it"
+	}
+}
+
+// sharedResponse is the relative error of a difference in thickness by the model's
+// response (common practice, no source).
+const sharedResponse = 0.08
 
 // lotAccount fills in the lot's own account: the typical wafer, how wafers differ,
 // and what to measure next.
