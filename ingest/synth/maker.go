@@ -77,7 +77,7 @@ type MadeCause struct {
 	ID, Direction, Variety string
 	Number                 int // in Spec.Causes
 	Size                   float64
-	// Loss is about what it costs, judged from a few dice; [Spec.CauseTruth] knows.
+	// Loss is about what it costs, judged from a few dice; [Lot.CauseTruth] knows.
 	Loss float64
 	// Reached is false when no believable size costs what was asked; Note says so.
 	Reached bool

@@ -44,7 +44,7 @@ func (z *sizer) draw(d *draws, want Wanted, o RandomOptions) (Cause, MadeCause, 
 	if err != nil {
 		return Cause{}, MadeCause{}, err
 	}
-	v, err := pickVariety(want.ID, want.Variety, want.Direction, d)
+	v, err := pickVariety(want.ID, want.Variety, want.Direction, want.Size > 0, d)
 	if err != nil {
 		return Cause{}, MadeCause{}, err
 	}
@@ -168,7 +168,7 @@ func (z *sizer) adjust(k *sketch, d *draws, size, loss, least float64, made *Mad
 	switch {
 	case k.fixed:
 		made.Loss = cost(0)
-	case size > 0:
+	case size > 0: // as it is asked for
 		made.Size, made.Loss = size, cost(size)
 		return
 	default:

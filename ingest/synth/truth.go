@@ -3,9 +3,10 @@ package synth
 // Truth is what a lot really lost to what: the answer sheet. As JSON it is a
 // made-up lot's truth file.
 type Truth struct {
-	Lot  string `json:"lot"`
-	Seed uint64 `json:"seed"`
-	Dice int    `json:"dice"`
+	Lot     string `json:"lot"`
+	Physics string `json:"physics,omitempty"` // of [Made]
+	Seed    uint64 `json:"seed"`
+	Dice    int    `json:"dice"`
 
 	// Yield as made, and Clean with every cause off. Clean less Yield is the sum
 	// of the causes' losses and of Shared.
@@ -30,9 +31,16 @@ type CauseTruth struct {
 	Background bool   `json:"background"`
 	Number     int    `json:"number"` // in Spec.Causes
 
+	// Of [MadeCause], for causes that were drawn.
+	Variety string  `json:"variety,omitempty"`
+	Size    float64 `json:"size,omitempty"`
+	Note    string  `json:"note,omitempty"`
+
 	// Wafers it acts on, and for each the passing dice without it less those with it.
 	Wafers []string `json:"wafers"`
 	Lost   []int    `json:"lost"`
+	// Dice it acts on: hit by chance, or shifted by at least a tenth of its full size.
+	Dice int `json:"dice"`
 	// Loss is yield without the cause less yield with it, on the same random
 	// numbers.
 	Loss float64 `json:"loss"`
@@ -115,8 +123,7 @@ func (s Spec) Truth(seed uint64) Truth {
 		if cause.Off {
 			continue
 		}
-		ct := CauseTruth{ID: cause.ID, Direction: cause.Direction, Text: cause.Text, Background: cause.Background, Number: c,
-			Wafers: []string{}, Lost: []int{}}
+		ct := newCauseTruth(cause, c)
 		lost := 0
 		for i := range truth.Wafers {
 			if cause.size(seed, c, i) == 0 {
@@ -125,10 +132,78 @@ func (s Spec) Truth(seed uint64) Truth {
 			n := pass[first+c][i] - pass[0][i]
 			ct.Wafers, ct.Lost = append(ct.Wafers, truth.Wafers[i].ID), append(ct.Lost, n)
 			lost += n
+			ct.Dice += with.hits(c, i)
 		}
 		ct.Loss = float64(lost) / float64(truth.Dice)
 		truth.Shared -= ct.Loss
 		truth.Causes = append(truth.Causes, ct)
 	}
 	return truth
+}
+
+func newCauseTruth(c *Cause, number int) CauseTruth {
+	return CauseTruth{ID: c.ID, Direction: c.Direction, Text: c.Text, Background: c.Background, Number: number,
+		Wafers: []string{}, Lost: []int{}}
+}
+
+// hits counts the dice of a wafer that a cause acts on.
+func (f *fab) hits(number, wafer int) int {
+	d, n := f.newDie(wafer), 0
+	for i := range d.causes {
+		a := &d.causes[i]
+		if a.number != number {
+			continue
+		}
+		for j := range f.dice {
+			d.at = &f.dice[j]
+			d.key = dieKey(f.seed, wafer, d.at.x, d.at.y)
+			if h := d.hit(a); h >= 0.1 {
+				n++
+			}
+		}
+	}
+	return n
+}
+
+// CauseTruth says what one cause of the lot cost, by its number in Spec.Causes. It
+// makes the wafers that the cause acts on once more without it.
+func (l *Lot) CauseTruth(number int) CauseTruth {
+	s := l.Spec
+	s.Causes = append([]Cause(nil), s.Causes...)
+	s.Causes[number].Off = true
+	with, without := newFab(&l.Spec, l.Seed), newFab(&s, l.Seed)
+	cause := &l.Spec.Causes[number]
+	lost, dice := make([]int, s.Wafers), make([]int, s.Wafers)
+	on := func(i int) bool { return cause.size(l.Seed, number, i) != 0 }
+	parallel(s.Wafers, func(i int) {
+		if on(i) {
+			w := without.wafer(i)
+			lost[i] = w.passing(&s) - l.Wafers[i].passing(&l.Spec)
+			dice[i] = with.hits(number, i)
+		}
+	})
+	ct, sum := newCauseTruth(cause, number), 0
+	for i := range l.Wafers {
+		if on(i) {
+			ct.Wafers, ct.Lost = append(ct.Wafers, l.Wafers[i].ID), append(ct.Lost, lost[i])
+			ct.Dice += dice[i]
+			sum += lost[i]
+		}
+	}
+	ct.Loss = float64(sum) / float64(l.Dice())
+	return ct
+}
+
+// Truth is the answer sheet of a drawn lot.
+func (m *Made) Truth() Truth {
+	t := m.Spec.Truth(m.Seed)
+	t.Physics = m.Physics
+	for i := range t.Causes {
+		for _, c := range m.Causes {
+			if c.Number == t.Causes[i].Number {
+				t.Causes[i].Variety, t.Causes[i].Size, t.Causes[i].Note = c.Variety, c.Size, c.Note
+			}
+		}
+	}
+	return t
 }

@@ -12,6 +12,7 @@ type variety struct {
 	name     string
 	weight   float64
 	directed bool // only it has the entry's directions, of an entry that has others without
+	own      bool // its size is not what the catalogue says: not picked for a size that is given
 	draw     func(k *sketch)
 }
 
@@ -43,14 +44,14 @@ func Varieties(id string) []string {
 	return names
 }
 
-func pickVariety(id, name, direction string, d *draws) (*variety, error) {
+func pickVariety(id, name, direction string, sized bool, d *draws) (*variety, error) {
 	list := varieties[id]
 	mixed := slices.ContainsFunc(list, func(v variety) bool { return v.directed })
 	weights := make([]float64, len(list))
 	names := make([]string, len(list))
 	for i, v := range list {
 		names[i] = v.name
-		if (name == "" || name == v.name) && (!mixed || direction == "" || v.directed) {
+		if (name == v.name || name == "" && !(sized && v.own)) && (!mixed || direction == "" || v.directed) {
 			weights[i] = v.weight
 		}
 	}
@@ -65,27 +66,27 @@ func pickVariety(id, name, direction string, d *draws) (*variety, error) {
 }
 
 var varieties = map[string][]variety{
-	"epi-thickness": {{"smooth", 1, false, func(k *sketch) {
+	"epi-thickness": {{"smooth", 1, false, false, func(k *sketch) {
 		k.shift(EpiThickness, k.sign < 0, 0.02, 0.5, 0.8)
 		k.cause.Place = k.smooth(0.25)
 	}}},
-	"epi-doping": {{"smooth", 1, false, func(k *sketch) {
+	"epi-doping": {{"smooth", 1, false, false, func(k *sketch) {
 		k.shift(EpiDoping, k.sign > 0, 0.03, 0.65, 1.5)
 		k.cause.Place = k.smooth(0.25)
 	}}},
-	"base-profile": {{"wafer", 1, false, func(k *sketch) {
+	"base-profile": {{"wafer", 1, false, false, func(k *sketch) {
 		k.shift(BaseDose, k.sign < 0, 0.03, 0.75, 3)
 		k.cause.Place = k.smooth(0.6)
-	}}, {"smooth", 1, false, func(k *sketch) {
+	}}, {"smooth", 1, false, false, func(k *sketch) {
 		k.shift(BaseDose, k.sign < 0, 0.03, 0.75, 3)
 		k.cause.Place = k.smooth(0)
 	}}},
-	"emitter-depth": {{"emitter", 1, false, func(k *sketch) {
+	"emitter-depth": {{"emitter", 1, false, false, func(k *sketch) {
 		dev := &k.spec.Device
 		deepest := 0.88*dev.BaseDepthUM/or(dev.EmitterDepthUM, dev.BaseDepthUM/3) - 1
 		k.shift(EmitterDepth, k.sign > 0, 0.02, 0.6, min(deepest, 1.5))
 		k.cause.Place = k.smooth(0.4)
-	}}, {"base", 1, false, func(k *sketch) {
+	}}, {"base", 1, false, false, func(k *sketch) {
 		// A shallower base drive narrows the base as a deeper emitter does.
 		dev := &k.spec.Device
 		shallowest := 1 - 1.15*or(dev.EmitterDepthUM, dev.BaseDepthUM/3)/dev.BaseDepthUM
@@ -93,10 +94,10 @@ var varieties = map[string][]variety{
 		k.cause.Place = k.smooth(0.4)
 		k.text = "base drive"
 	}}},
-	"emitter-efficiency": {{"wafer", 2, false, func(k *sketch) {
+	"emitter-efficiency": {{"wafer", 2, false, false, func(k *sketch) {
 		k.shift(EmitterGummel, k.sign < 0, 0.03, 0.8, 2)
 		k.cause.Place = k.smooth(0.8)
-	}}, {"smooth", 1, false, func(k *sketch) {
+	}}, {"smooth", 1, false, false, func(k *sketch) {
 		k.shift(EmitterGummel, k.sign < 0, 0.03, 0.8, 2)
 		k.cause.Place = k.smooth(0)
 	}}},
@@ -104,9 +105,9 @@ var varieties = map[string][]variety{
 	"surface-charge":         surfaceCharge,
 	"lifetime":               lifetime,
 	"emitter-collector-pipe": pipes,
-	"series-resistance": {{"wafer", 1, false, func(k *sketch) {
+	"series-resistance": {{"wafer", 1, false, false, func(k *sketch) {
 		k.times(Process{SeriesResistance: 1}, 1.2, 60)
-	}}, {"pattern", 1, false, func(k *sketch) {
+	}}, {"pattern", 1, false, false, func(k *sketch) {
 		k.times(Process{SeriesResistance: 1}, 1.2, 100)
 		k.cause.Place = k.backside()
 	}}},
@@ -115,7 +116,7 @@ var varieties = map[string][]variety{
 	"shot-repeat":     shotRepeat,
 	"probe-contact":   probeContact,
 	"test-setup":      testSetup,
-	"random-defects": {{"random", 1, false, func(k *sketch) {
+	"random-defects": {{"random", 1, false, false, func(k *sketch) {
 		k.share(Defect)
 	}}},
 }

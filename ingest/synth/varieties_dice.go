@@ -2,14 +2,14 @@ package synth
 
 import "math"
 
-var edgeField = []variety{{"tail", 2, false, func(k *sketch) {
+var edgeField = []variety{{"tail", 2, false, false, func(k *sketch) {
 	k.shift(EdgeRadius, false, 0.03, 0.85, 0)
 	k.cause.Share, k.cause.Scatter = k.d.between(max(1.2*k.loss, 0.05), max(1.2*k.loss, 0.6)), k.d.between(0.2, 0.5)
 	k.localLeak()
-}}, {"all", 1, false, func(k *sketch) {
+}}, {"all", 1, false, false, func(k *sketch) {
 	k.shift(EdgeRadius, false, 0.03, 0.85, 0)
 	k.cause.Place = k.smooth(0.5)
-}}, {"mask", 1, false, func(k *sketch) {
+}}, {"mask", 1, false, false, func(k *sketch) {
 	k.shift(EdgeRadius, false, 0.03, 0.85, 0)
 	k.repeating(min(1.2*k.loss, 0.5))
 	k.cause.Share, k.cause.Scatter = k.d.between(0.8, 1), k.d.between(0.05, 0.3)
@@ -23,15 +23,15 @@ func (k *sketch) localLeak() {
 	}
 }
 
-var surfaceCharge = []variety{{"charge", 1, false, func(k *sketch) {
+var surfaceCharge = []variety{{"charge", 1, false, false, func(k *sketch) {
 	k.times(Process{OxideCharge: 1}, 1.5, 150)
 	k.cause.Place = k.wholeOrEdge()
-}}, {"velocity", 1, false, func(k *sketch) {
+}}, {"velocity", 1, false, true, func(k *sketch) {
 	// The size is that of the charge that would come with it: s0 goes with its 2.5th
 	// power in the catalogue.
 	k.times(Process{SurfaceVelocity: 2.5}, 1.5, 40)
 	k.cause.Place = k.wholeOrEdge()
-}}, {"both", 1, false, func(k *sketch) {
+}}, {"both", 1, false, false, func(k *sketch) {
 	k.times(Process{OxideCharge: 1, SurfaceVelocity: k.d.between(1, 3.5)}, 1.5, 60)
 	k.cause.Place = k.wholeOrEdge()
 }}}
@@ -43,20 +43,20 @@ func (k *sketch) wholeOrEdge() Place {
 	return k.smooth(0.6)
 }
 
-var lifetime = []variety{{"smooth", 2, false, func(k *sketch) {
+var lifetime = []variety{{"smooth", 2, false, false, func(k *sketch) {
 	k.times(Process{Lifetime: -1}, 2, 600)
 	k.cause.Place = k.smooth(0.4)
-}}, {"contact", 1, false, func(k *sketch) { // where something dirty touched the wafer
+}}, {"contact", 1, false, false, func(k *sketch) { // where something dirty touched the wafer
 	k.times(Process{Lifetime: -1}, 2, 600)
 	k.cause.Place = k.blob(0.15, 0.45)
-}}, {"edge", 1, false, func(k *sketch) {
+}}, {"edge", 1, false, false, func(k *sketch) {
 	k.times(Process{Lifetime: -1}, 2, 600)
 	k.cause.Place = k.rim()
 }}}
 
-var pipes = []variety{{"random", 2, false, func(k *sketch) {
+var pipes = []variety{{"random", 2, false, false, func(k *sketch) {
 	k.share(Pipe)
-}}, {"slip", 1, false, func(k *sketch) {
+}}, {"slip", 1, false, false, func(k *sketch) {
 	k.share(Pipe)
 	k.lo = 0.2
 	k.cause.Place = Place{Shape: Chords, Angle: 45*float64(k.d.below(8)) + k.d.between(-5, 5), Inner: k.d.between(0.1, 0.4),
@@ -74,7 +74,7 @@ func (k *sketch) pitch() float64 {
 	return max(w, h) / (k.spec.Grid.DiameterMM / 2)
 }
 
-var handling = []variety{{"scratch", 2, false, func(k *sketch) {
+var handling = []variety{{"scratch", 2, false, false, func(k *sketch) {
 	k.share(oneOf(k.d, Wreck, Wreck, Short))
 	k.lo = 0.6
 	a, turn, r := k.d.between(0, 2*math.Pi), k.d.between(-0.9, 0.9), k.d.between(0.2, 0.9)
@@ -87,7 +87,7 @@ var handling = []variety{{"scratch", 2, false, func(k *sketch) {
 		return c.Place.Width < 0.16
 	}
 	k.elsewhere()
-}}, {"blob", 1, false, func(k *sketch) {
+}}, {"blob", 1, false, false, func(k *sketch) {
 	k.share(oneOf(k.d, Wreck, Wreck, Open))
 	k.lo = 0.6
 	k.cause.Place = k.blob(0.08, 0.2)
@@ -112,12 +112,12 @@ func (k *sketch) elsewhere() {
 	}
 }
 
-var edgeDice = []variety{{"ring", 3, false, func(k *sketch) {
+var edgeDice = []variety{{"ring", 3, false, false, func(k *sketch) {
 	k.share(Wreck)
 	k.lo = 0.3
 	k.cause.Place = k.edgeRing(1)
 	k.grow = k.widen
-}}, {"arc", 1, false, func(k *sketch) {
+}}, {"arc", 1, false, false, func(k *sketch) {
 	k.share(Wreck)
 	k.lo = 0.3
 	ring := k.edgeRing(1 + k.d.below(2))
@@ -140,7 +140,7 @@ func (k *sketch) widen(c *Cause) bool {
 	return c.Place.Inner > k.edgeRing(3).Inner-k.pitch()/2
 }
 
-var shotRepeat = []variety{{"cell", 1, false, func(k *sketch) {
+var shotRepeat = []variety{{"cell", 1, false, false, func(k *sketch) {
 	k.share(oneOf(k.d, Short, EmitterShort, Open))
 	k.lo = 0.6
 	if k.spec.Grid.ShotColumns*k.spec.Grid.ShotRows < 2 {
@@ -156,7 +156,7 @@ var shotRepeat = []variety{{"cell", 1, false, func(k *sketch) {
 		c.Place = k.shots(len(c.Place.Shots) + 1)
 		return true
 	}
-}}, {"mask", 1, false, func(k *sketch) { // a full-field mask: the same dice on every wafer
+}}, {"mask", 1, false, false, func(k *sketch) { // a full-field mask: the same dice on every wafer
 	k.share(oneOf(k.d, Short, EmitterShort, Open))
 	k.lo = 0.6
 	k.repeating(1.1 * k.loss)

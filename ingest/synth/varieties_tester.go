@@ -4,11 +4,11 @@ import (
 	"math"
 )
 
-var probeContact = []variety{{"site", 2, false, func(k *sketch) {
+var probeContact = []variety{{"site", 2, false, false, func(k *sketch) {
 	k.share(Open)
 	k.cause.Place = Place{Sites: k.oneSite()}
 	k.contact()
-}}, {"burst", 2, false, func(k *sketch) {
+}}, {"burst", 2, false, false, func(k *sketch) {
 	k.share(Open)
 	k.lo = 0.1
 	from := k.d.between(0, 0.7)
@@ -28,7 +28,7 @@ var probeContact = []variety{{"site", 2, false, func(k *sketch) {
 		b[0], b[1] = max(b[0]-0.05, 0), min(b[1]+0.1, 1)
 		return b[0] > 0 || b[1] < 1
 	}
-}}, {"resistance", 1, false, func(k *sketch) { // a bad contact adds its resistance
+}}, {"resistance", 1, false, true, func(k *sketch) { // a bad contact adds its resistance
 	k.cause.Place = Place{Sites: k.oneSite()}
 	t := k.testOf("vcesat")
 	if t == nil {
@@ -66,10 +66,10 @@ func (k *sketch) testOf(measures string) *Test {
 	return nil
 }
 
-var testSetup = []variety{{"temperature", 2, true, func(k *sketch) {
+var testSetup = []variety{{"temperature", 2, true, false, func(k *sketch) {
 	k.lo, k.hi = 5, 80
 	k.set = func(c *Cause, size float64) { c.Shift = Process{Temperature: k.sign * size} }
-}}, {"light", 1, false, func(k *sketch) {
+}}, {"light", 1, false, true, func(k *sketch) {
 	// Light on the die generates the same current in all of them.
 	var faults []Fault
 	for i := range k.spec.Tests {
@@ -89,12 +89,12 @@ var testSetup = []variety{{"temperature", 2, true, func(k *sketch) {
 			c.Faults[i].Offset *= size
 		}
 	}
-}}, {"scale", 1, false, (*sketch).scale}, {"offset", 1, false, func(k *sketch) {
+}}, {"scale", 1, false, true, (*sketch).scale}, {"offset", 1, false, true, func(k *sketch) {
 	t, sign := k.limited()
 	k.text = "offset on " + t.Name
 	k.lo, k.hi = 0.005, 0.9
 	k.set = func(c *Cause, size float64) { c.Faults = []Fault{{Test: t.Name, Offset: sign * size * t.Typical}} }
-}}, {"range", 1, false, func(k *sketch) {
+}}, {"range", 1, false, true, func(k *sketch) {
 	// The range ends in the distribution: above the limit it costs nothing, below it
 	// every reading ends there and fails.
 	t := k.lowerLimited()
@@ -109,7 +109,7 @@ var testSetup = []variety{{"temperature", 2, true, func(k *sketch) {
 		top = t.Lower * k.d.between(0.9, 0.998)
 	}
 	k.set = func(c *Cause, _ float64) { c.Faults = []Fault{{Test: t.Name, Top: top}} }
-}}, {"limit", 1, false, func(k *sketch) {
+}}, {"limit", 1, false, true, func(k *sketch) {
 	t, sign := k.limited()
 	k.text = "wrong limit on " + t.Name
 	k.lo, k.hi = 0.001, 0.9
@@ -123,7 +123,7 @@ var testSetup = []variety{{"temperature", 2, true, func(k *sketch) {
 		}
 		c.Faults = []Fault{f}
 	}
-}}, {"crossed", 1, false, func(k *sketch) {
+}}, {"crossed", 1, false, true, func(k *sketch) {
 	ceo, cbo := k.testOf("bvceo"), k.testOf("bvcbo")
 	if ceo == nil || cbo == nil {
 		k.scale()
