@@ -56,7 +56,7 @@ func (d *Diagnosis) Evidence(ctx context.Context, lot *ingest.Lot, settings conf
 // columns are the lot's dice as the room of causes takes them.
 func (w *lotwork) columns(d *Diagnosis) *causes.Columns {
 	lot := w.lot
-	c := &causes.Columns{X: lot.X(), Y: lot.Y(), Site: lot.Site(), Order: lot.Touchdown(), Pass: w.pass,
+	c := &causes.Columns{X: lot.X(), Y: lot.Y(), Site: lot.Site(), Order: w.firstOrder(), Pass: w.pass,
 		Geometry: w.geo, Spread: junction.UsualPrior(), BaselineYield: math.NaN(), Missing: ingest.Missing, Baseline: "none"}
 	if w.geo.Unit == "" {
 		c.X, c.Y = nil, nil
@@ -87,6 +87,23 @@ func (w *lotwork) columns(d *Diagnosis) *causes.Columns {
 	c.Retest = w.retestedDice()
 	c.Raised = w.raised()
 	return c
+}
+
+// firstOrder is the order of test with the dice that were measured again left out:
+// the measurement that counts came at the end of their wafer, and dice that failed
+// would all seem to have failed there.
+func (w *lotwork) firstOrder() []int32 {
+	order, index := w.lot.Touchdown(), w.lot.FirstPass().Index
+	if index == nil {
+		return order
+	}
+	out := append([]int32(nil), order...)
+	for row, first := range index {
+		if first >= 0 {
+			out[row] = ingest.Missing
+		}
+	}
+	return out
 }
 
 // majority is the median of every test, by name, SI.

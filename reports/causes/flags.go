@@ -259,7 +259,48 @@ func (o *observer) repeatFlag(f map[string]bool) {
 			singles += n
 		}
 	}
-	f["repeats-mostly"] = at >= 10 && float64(at) > 0.4*singles
+	f["repeats-mostly"] = at >= 10 && float64(at) > 0.4*singles || o.overlap() > 0.4
+}
+
+// overlap is how alike the single dice of wafers lie, beyond chance: the mean over
+// pairs of wafers that have some of (common - expected) / (fewest - expected).
+func (o *observer) overlap() float64 {
+	c := o.c
+	type die struct{ x, y int32 }
+	var maps []map[die]bool
+	var dice []float64
+	for _, s := range c.Wafers {
+		m := map[die]bool{}
+		for i := s.Lo; i < s.Hi; i++ {
+			if o.e.class[i] >= 0 {
+				m[die{c.X[i], c.Y[i]}] = true
+			}
+		}
+		if n := s.Hi - s.Lo; len(m) >= 10 && 10*len(m) > n {
+			maps, dice = append(maps, m), append(dice, float64(n))
+		}
+	}
+	sum, pairs := 0.0, 0.0
+	for a := range maps {
+		for b := range a {
+			common := 0.0
+			for d := range maps[a] {
+				if maps[b][d] {
+					common++
+				}
+			}
+			na, nb := float64(len(maps[a])), float64(len(maps[b]))
+			expected := na * nb / dice[a]
+			if fewest := min(na, nb); fewest > expected {
+				sum += (common - expected) / (fewest - expected)
+				pairs++
+			}
+		}
+	}
+	if pairs == 0 {
+		return 0
+	}
+	return sum / pairs
 }
 
 // fewWafers: nine in ten of the single dice beyond the usual number lie on at most

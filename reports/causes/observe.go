@@ -264,10 +264,43 @@ func (o *observer) zoneLevel(t int, s Span, z int8, buf []float64) (level, sigma
 		return math.NaN(), math.NaN(), 0
 	}
 	level = median(buf)
-	for i, v := range buf {
-		buf[i] = math.Abs(v - level)
+	sigma = spreadAbout(buf, level)
+	// Where dice are of two kinds, the level is that of the healthy kind as long as a
+	// quarter of them is: the others then stand alone.
+	if within := o.within(t); sigma > 2.5*within {
+		near := buf[:0]
+		for _, v := range buf {
+			if math.Abs(v) < 3.5*within {
+				near = append(near, v)
+			}
+		}
+		if 4*len(near) >= n && len(near) >= leastDice {
+			level = median(near)
+			return level, spreadAbout(near, level), len(near)
+		}
 	}
-	return level, 1.4826 * median(buf), n
+	return level, sigma, n
+}
+
+// spreadAbout is the robust sigma of v about a level.
+func spreadAbout(v []float64, level float64) float64 {
+	d := make([]float64, len(v))
+	for i, x := range v {
+		d[i] = math.Abs(x - level)
+	}
+	return 1.4826 * median(d)
+}
+
+// within is the log sigma of dice of a healthy lot, +Inf when not known.
+func (o *observer) within(t int) float64 {
+	test := &o.c.Tests[t]
+	if !(test.Median > 0) {
+		return math.Inf(1)
+	}
+	if s := firstAbove(relative(test.Within, test.Median), relative(test.Sigma, test.Median), 0); s > 0 {
+		return s
+	}
+	return math.Inf(1)
 }
 
 // ratio is the log of a reading over its healthy level; readings at or below zero

@@ -11,6 +11,7 @@ type diceTable struct {
 	excess   []float64 // by class: dice beyond what healthy lots have
 	sum      float64
 	share    float64 // of the lot's dice
+	beyond   float64 // how unlikely they are in a healthy lot, nats
 	strength float64 // how many dice's worth of evidence there is, at most a dozen
 }
 
@@ -33,18 +34,40 @@ var healthyCap = map[string]float64{"short": 0.6, "emitter-short": 0.5, "leaky":
 func (e *Evidence) diceTable(k *Catalogue) diceTable {
 	d := diceTable{classes: len(k.Classes), excess: make([]float64, len(k.Classes))}
 	counts := e.single(d.classes)
-	n := float64(e.Dice)
+	n, all := float64(e.Dice), 0.0
 	for c := range counts {
 		expected := n * (2e-4 + e.healthyLoss()*healthyCap[k.Classes[c].Class])
 		d.excess[c] = max(0, counts[c]-expected-2*math.Sqrt(expected))
 		d.sum += d.excess[c]
+		all += counts[c]
+		d.beyond = max(d.beyond, beyondHealthy(counts[c], expected))
 	}
+	// beyond the healthy loss altogether, though in no class by itself
+	healthy := n * e.healthyLoss()
+	if beyond := all - 1.2*healthy - 2*math.Sqrt(healthy); d.sum < 0.3*beyond {
+		for c := range counts {
+			d.excess[c] += counts[c] / all * (beyond - d.sum)
+		}
+		d.sum = beyond
+	}
+	d.beyond = max(d.beyond, beyondHealthy(all, 1.1*healthy))
 	if n > 0 {
 		d.share = d.sum / n
 	}
 	const most, small = 12, 0.004
-	d.strength = most * -math.Expm1(-d.sum/most) * -math.Expm1(-d.share/small)
+	d.strength = most * -math.Expm1(-d.sum/most) * -math.Expm1(-d.share/small) * -math.Expm1(-d.beyond)
 	return d
+}
+
+// beyondHealthy is how unlikely a count is in a healthy lot, in nats: lots differ in
+// their defects by a factor (lognormal, common practice, no source) on top of chance.
+func beyondHealthy(count, expected float64) float64 {
+	const factor = 0.45
+	if count <= expected {
+		return 0
+	}
+	x := math.Log(count/expected) / math.Sqrt(factor*factor+1/max(expected, 1))
+	return x * x / 2
 }
 
 // against is the log likelihood of the excess under chances of classes (nil: none),
@@ -62,13 +85,11 @@ func (d *diceTable) against(chances []float64, blur float64) float64 {
 	for c, n := range d.excess {
 		p := blur / float64(d.classes)
 		if chances != nil {
-			// a cause does not always make its classes in the same ratio: half of the
-			// chance is as given, half as seen among those that it makes
-			own := chances[c]
+			// a cause does not always make its classes in the same ratio: part of the
+			// chance is as given, part as seen among those that it makes often
+			own := 0.6 * chances[c]
 			if chances[c] > supported && covered > 0 {
-				own = (own + n/d.sum/covered) / 2
-			} else {
-				own /= 2
+				own += 0.4 * n / d.sum / covered * min(1, chances[c]/0.15)
 			}
 			p += (1 - blur) * own
 		}

@@ -37,6 +37,23 @@ func (v *Verdict) Table() string {
 			}
 		}
 	}
+	if h := j.all[order[0]]; len(h.sees) > 0 && h.sees[0] != nil {
+		x := h.sees[0]
+		fmt.Fprintf(&b, "\n  best variant test %d moves", x.v.test)
+		if len(x.v.moves) > 0 {
+			for i, m := range x.v.moves[len(x.v.moves)/2] {
+				fmt.Fprintf(&b, " %s %.3f", j.e.cols.Tests[j.f.tests[i]].Name, m)
+			}
+		}
+		for w := range x.affected {
+			if x.affected[w] > 3 {
+				fmt.Fprintf(&b, "\n   wafer %d (%.1f)", w, x.affected[w])
+				for i := range j.f.tests {
+					fmt.Fprintf(&b, " %.3f(%.1f)", j.s.wafers[w][i], j.s.wafers[w][i]/j.f.wafer[i])
+				}
+			}
+		}
+	}
 	b.WriteString("\n")
 	for _, i := range order[:6] {
 		h := j.all[i]

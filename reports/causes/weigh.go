@@ -68,7 +68,7 @@ func judge(e *Evidence, k *Catalogue) *judged {
 	nothing, loss := e.lossOf()
 
 	h := &hypothesis{odds: math.Log(k.WithinBaseline.Odds * float64(len(k.Causes)))}
-	h.views[diceView] = j.dice.against(nil, 0.06)
+	h.views[diceView] = -compress(j.dice.beyond)
 	h.views[flagView] = e.flagsOf(k)
 	h.views[lossView] = nothing
 	h.views[lotView], h.views[waferView], h.views[zoneView] = -math.Ln2, -math.Ln2, -math.Ln2
@@ -89,15 +89,15 @@ func judge(e *Evidence, k *Catalogue) *judged {
 // of levels; the variants share the cause's odds.
 func (j *judged) singles(loss float64) {
 	best := map[[2]int]*seen{}
-	count := map[[2]int]int{}
+	merits := map[[2]int][]float64{}
 	merit := func(x *seen) float64 {
 		v, w := x.views(), UsualWeights()
 		return w.View[lotView]*v[lotView] + w.View[waferView]*v[waferView] + w.View[zoneView]*v[zoneView]
 	}
 	for _, v := range j.f.variants(j.k) {
 		key := [2]int{v.cause, v.direction}
-		count[key]++
 		x := j.s.see(v)
+		merits[key] = append(merits[key], merit(x))
 		if b := best[key]; b == nil || merit(x) > merit(b) {
 			best[key] = x
 		}
@@ -111,9 +111,8 @@ func (j *judged) singles(loss float64) {
 			h.sees = []*seen{x}
 			if x != nil {
 				h.views = x.views()
-				if e.Setup { // many variants, one of them true
-					h.odds -= math.Log(math.Sqrt(float64(max(1, count[[2]int{c, d}]))))
-				}
+				// one of the variants is true: the cause is as likely as their mean
+				h.odds += logMean(merits[[2]int{c, d}]) - merit(x)
 			} else {
 				h.views[lotView], h.views[waferView], h.views[zoneView] = -math.Ln2, -math.Ln2, -math.Ln2
 			}
