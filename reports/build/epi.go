@@ -295,8 +295,7 @@ func (e *epiwork) growOnLot() {
 			continue
 		}
 		w := lot.NetThickness.WithPrior.Estimate
-		differ := w * math.Hypot(s.thicknessSigma, sharedResponse*s.thickness)
-		own := z95 * math.Hypot(differ, offset/4)
+		own := z95 * math.Hypot(w*s.thicknessSigma, offset/4)
 		at := lot.Thickness.WithPrior.Estimate + w*math.Expm1(s.thickness)
 		l := lot.Thickness.WithPrior
 		p.Thickness.WithPrior = junction.Interval{Estimate: at, Lower: at - math.Hypot(l.Estimate-l.Lower, own), Upper: at + math.Hypot(l.Upper-l.Estimate, own)}
@@ -305,10 +304,6 @@ func (e *epiwork) growOnLot() {
 		out.Method = "the lot's typical wafer, and this wafer's net thickness against it"
 	}
 }
-
-// sharedResponse is the relative error of a difference in thickness by the model's
-// response (common practice, no source).
-const sharedResponse = 0.08
 
 // lotAccount fills in the lot's own account: the typical wafer, how wafers differ,
 // and what to measure next.

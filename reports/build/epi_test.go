@@ -45,7 +45,7 @@ func prepared(lot *ingest.Lot, p *config.Product) *lotwork {
 // tally is what a run of wafers got right of one quantity.
 type tally struct {
 	n, covered, seen, seenCovered, silent, narrow int
-	errors                                       []float64
+	errors                                        []float64
 }
 
 func (y *tally) add(truth float64, with reports.Interval, data reports.SightInterval, share reports.Number, note, name string) {

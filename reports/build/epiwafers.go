@@ -15,8 +15,8 @@ import (
 )
 
 // waferShift is how a wafer stands against the lot's typical one, as logs with
-// their sigmas: what is common to all wafers (tester, baseline, the device model's
-// own error) drops out.
+// their sigmas. What is common to all wafers (tester, baseline, process) drops out;
+// of the device model's error a share of the shift itself is left.
 type waferShift struct {
 	thickness, doping           float64
 	thicknessSigma, dopingSigma float64
@@ -26,7 +26,12 @@ type waferShift struct {
 // one wafer of a lot to the next (common practice, no source).
 const betweenGauge = 0.2
 
-// compare inverts every wafer's levels against the typical wafer's.
+// responseShare is the relative error of a shift by the model's response: of thickness
+// and doping together some tests' responses are off by 5 to 10 %.
+const responseShare = 0.08
+
+// compare takes every wafer's shift against the typical wafer: the difference of the
+// estimates, with the sigma that the levels' own repeatability leaves.
 func (e *epiwork) compare(all []level) []waferShift {
 	var tests []int
 	var sigmas []float64
@@ -45,11 +50,10 @@ func (e *epiwork) compare(all []level) []waferShift {
 	n := len(e.levels)
 	columns, marks := make([][]float64, len(all)), make([][]int8, len(all))
 	for k := range columns {
-		columns[k], marks[k] = make([]float64, n+1), make([]int8, n+1)
+		columns[k], marks[k] = make([]float64, n), make([]int8, n)
 		put := func(row int, v level) {
 			columns[k][row], marks[k][row] = e.d.Level(v.Test)*math.Exp(v.Log), int8(v.Censor)
 		}
-		put(n, all[k])
 		for i, w := range e.levels {
 			columns[k][i] = math.NaN()
 			for _, v := range w {
@@ -62,8 +66,14 @@ func (e *epiwork) compare(all []level) []waferShift {
 	got := e.d.Dice(tests, sigmas, e.d.Prior, e.centre(&e.lotPos)).Invert(columns, marks)
 	out := make([]waferShift, n)
 	for i := range out {
-		out[i] = waferShift{thickness: math.Log(got.Thickness[i] / got.Thickness[n]), doping: math.Log(got.Doping[i] / got.Doping[n]),
-			thicknessSigma: got.ThicknessSigma[i], dopingSigma: got.DopingSigma[i]}
+		s := &out[i]
+		if s.thickness, s.doping = math.NaN(), math.NaN(); e.levels[i] == nil {
+			continue
+		}
+		s.thickness = math.Log(e.post[i].NetThickness.WithPrior.Estimate / e.lotPos.NetThickness.WithPrior.Estimate)
+		s.doping = math.Log(e.post[i].Doping.WithPrior.Estimate / e.lotPos.Doping.WithPrior.Estimate)
+		s.thicknessSigma = math.Hypot(got.ThicknessSigma[i], responseShare*s.thickness)
+		s.dopingSigma = math.Hypot(got.DopingSigma[i], responseShare*s.doping)
 	}
 	return out
 }
@@ -179,7 +189,7 @@ type dieColumns struct {
 }
 
 // mostMapped is how many dice of a wafer are inverted for its zones.
-const mostMapped = 5000
+const mostMapped = 2000
 
 // dice inverts a wafer's dice around the wafer's own estimate, and puts their
 // median on it; at most about most of them.

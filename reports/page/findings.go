@@ -65,67 +65,6 @@ func dispositionTable(d reports.Disposition) *table {
 	return t
 }
 
-// epi is what the electrical data say of the epitaxial layer.
-type epi struct {
-	Table *table
-	Texts []string
-}
-
-func newEpi(r *reports.Report) *epi {
-	var list []epiRow
-	if r.Epi != nil {
-		list = append(list, epiRow{"lot", r.Epi})
-	}
-	for i := range r.Wafers {
-		if r.Wafers[i].Epi != nil {
-			list = append(list, epiRow{r.Wafers[i].ID, r.Wafers[i].Epi})
-		}
-	}
-	if len(list) == 0 {
-		return nil // the record says why
-	}
-	e := &epi{Table: epiTable(list)}
-	if r.Epi == nil {
-		if r.EpiWhy != "" {
-			e.Texts = append(e.Texts, sentence(r.EpiWhy))
-		}
-		return e
-	}
-	if r.Epi.Regime != "" {
-		e.Texts = append(e.Texts, "Regime: "+r.Epi.Regime+".")
-	}
-	if !r.Epi.ThicknessObservable {
-		e.Texts = append(e.Texts, "The thickness cannot be seen in these tests.")
-	}
-	if !r.Epi.Separable {
-		e.Texts = append(e.Texts, "Thickness and doping cannot be told apart by these tests.")
-	}
-	if r.Epi.Note != "" {
-		e.Texts = append(e.Texts, sentence(r.Epi.Note))
-	}
-	return e
-}
-
-type epiRow struct {
-	name string
-	*reports.Epi
-}
-
-func epiTable(rows []epiRow) *table {
-	t := &table{Caption: "Epi layer inferred from electrical data, with 95 % intervals", Columns: []column{{Name: "Of"},
-		{Name: "Net thickness, µm", Numeric: true}, {Name: "Thickness, µm", Numeric: true}, {Name: "Doping, cm⁻³", Numeric: true}, {Name: "Resistivity, Ω cm", Numeric: true}}}
-	estimate := func(i reports.Interval) cell {
-		if !i.Estimate.Valid() {
-			return text(orWhy(notAvailable, i.Why))
-		}
-		return text(value(i.Estimate) + " (" + valueRange(i) + ")")
-	}
-	for _, r := range rows {
-		t.Rows = append(t.Rows, []cell{text(r.name), estimate(r.NetThicknessUM), estimate(r.ThicknessUM.Interval), estimate(r.DopingCM3), estimate(r.ResistivityOhmCM.Interval)})
-	}
-	return t
-}
-
 // others are the accounts below the tests, with the pictures that they have.
 type others struct {
 	Charts []chart

@@ -97,9 +97,11 @@ func newView(r *reports.Report) (*view, error) {
 	v.Head = newHead(r, tests)
 	v.Causes = newCauses(r.Causes)
 	v.Disposition = dispositionTable(r.Disposition)
-	v.Epi = newEpi(r)
 	v.Record = newRecord(r)
 	var err error
+	if v.Epi, err = newEpi(r); err != nil {
+		return nil, err
+	}
 	if v.Losses, err = newLosses(r, tests); err != nil {
 		return nil, err
 	}
