@@ -28,7 +28,7 @@ var arrows = map[string][]string{
 	"reports/ledger":      {"reports"},
 	"reports/epi":         {"reports", "reports/build", "reports/ledger", "reports/page"},
 	"reports/weekly":      {"reports", "reports/build", "reports/ledger", "reports/page"},
-	"reports/rehearse":    {"reports", "reports/build", "reports/ledger", "reports/page", "ingest", "config"},
+	"reports/rehearse":    {"config", "stats", "wafermap", "ingest", "ingest/synth", "ingest/synth/memory", "reports", "reports/build", "reports/causes", "reports/ledger", "reports/page"},
 	"cmd":                 {"config", "ingest", "stats", "wafermap", "reports"},
 }
 
@@ -123,6 +123,9 @@ func TestArrowsRefuse(t *testing.T) {
 		{"reports/build", "ingest", true},
 		{"reports/build", "ingest/synth", false},
 		{"reports/causes", "ingest", false},
+		{"reports/rehearse", "ingest/synth", true},
+		{"reports/rehearse", "ingest/synth/memory", true},
+		{"reports/page", "reports/rehearse", false},
 		{"cmd/kneepoint", "ingest/synth", true},
 		{"cmd/kneepoint", "reports/page", true},
 	} {
