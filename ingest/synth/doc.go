@@ -27,6 +27,20 @@
 // file. Levels are ratios around each test's Typical value, in the unit of its data
 // file: the laws supply slopes, never absolute levels.
 //
+// # Lots drawn at random
+//
+// A [Maker] draws lots of a product for calibration and rehearsal. What is known
+// holds: the baseline's levels, spreads and yield, the limits, the device. What is
+// not known is drawn for each lot: the physics ([Laws] with slopes drawn around the
+// reference model's, or [Physics], a variant of the device model), how a spread
+// divides between lot, wafer, smooth shape and die, the shape of bowls, noise,
+// resolution, site offsets, ends of range, retests, missing readings, what kind of
+// defects make up the baseline's loss. A cause that is asked for is drawn in one of
+// its [Varieties], on wafers and places of its own, and its size adjusted until it
+// costs a wanted share of the dice; where the product's limits cannot see it, until
+// it moves a test visibly, and the lot says so. [ClassProducts] are three invented
+// products to try all that on.
+//
 // # Random numbers
 //
 // No number is drawn in sequence. Each is a hash of the seed, of what it is for

@@ -49,20 +49,27 @@ func NewPhysics(p *config.Product, n int) (*Physics, error) {
 	var v junction.Variation
 	if n > 0 {
 		d := newDraws(root(uint64(n)).at(branchPhysics))
-		v = junction.Variation{Narrowing: d.factor(0.1), Tunnelling: d.factor(0.15), Recombination: d.factor(0.5),
+		v = junction.Variation{Narrowing: d.factor(0.1), Tunnelling: d.factor(0.15),
 			OxideDepth: d.factor(0.3), Spreading: d.between(0.6, 1.2), ExponentialBase: d.chance(0.3)}
 		dev.BaseSurfaceCM3 *= d.factor(0.15)
 		dev.OxideChargeCM2 = 5e10 * d.factor(0.5)
-		dev.SurfaceVelocityCMS = 20 * d.factor(0.6)
+		dev.SurfaceVelocityCMS = 20 * d.factor(0.35)
 		dev.Modulation = min(0.4*d.factor(0.25), 0.9)
 		dev.StrayF = 0.3e-12 * d.factor(0.3)
 		dev.ReverseGain = 4 * d.factor(0.3)
 	}
 	var tests []junction.Test
+	gains := 0
 	for i := range p.Tests {
 		if t := &p.Tests[i]; t.Measures != "" {
 			tests = append(tests, junctionTest(p, t))
+			if t.Measures == junction.HFE {
+				gains++
+			}
 		}
+	}
+	if n > 0 && gains < 2 { // two gains tell the recombination between them
+		v.Recombination = newDraws(root(uint64(n)).at(branchPhysics)).under(1).factor(0.5)
 	}
 	m, err := junction.NewVariant(dev, v, tests...)
 	if err != nil {
@@ -143,11 +150,11 @@ func (b *bound) values(dst []float64, p *Process) {
 	}
 	q[junction.Temperature] = math.Log1p(p[Temperature] / b.kelvin)
 	var buf [32]float64
-	logs := buf[:0]
-	if n := len(b.model.Tests); n > len(buf) {
-		logs = make([]float64, n)
-	} else {
+	var logs []float64
+	if n := len(b.model.Tests); n <= len(buf) {
 		logs = buf[:n]
+	} else {
+		logs = make([]float64, n)
 	}
 	b.model.LogRatios(logs, &q)
 	for t := range b.tests {
