@@ -72,10 +72,10 @@ func (d *die) take(at *place) {
 	f := d.fab
 	d.at = at
 	d.key = dieKey(f.seed, d.wafer, at.x, at.y)
-	bowl, saddle := f.spec.Smooth.bowl(at.r), f.spec.Smooth.Saddle != 0
+	saddle := f.spec.Smooth.Saddle != 0
 	for q := range d.process {
 		sm := &d.smooth[q]
-		v := sm.level + sm.bowl*bowl + sm.tiltX*at.u + sm.tiltY*at.v
+		v := sm.level + sm.bowl*at.bowl + sm.tiltX*at.u + sm.tiltY*at.v
 		if saddle {
 			v += sm.saddle[0]*(at.u*at.u-at.v*at.v) + sm.saddle[1]*2*at.u*at.v
 		}

@@ -54,6 +54,9 @@ func newFab(s *Spec, seed uint64) *fab {
 	}
 	f := &fab{spec: s, seed: seed, model: newModel(s), grade: -1, forward: s.forward()}
 	f.dice, _, _ = s.Grid.layout()
+	for i := range f.dice {
+		f.dice[i].bowl = s.Smooth.bowl(f.dice[i].r)
+	}
 	sites := max(s.Grid.SiteColumns, 1) * max(s.Grid.SiteRows, 1)
 	f.offset = make([][]float64, sites)
 	for i := range f.offset {

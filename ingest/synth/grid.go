@@ -36,6 +36,7 @@ type place struct {
 	touchdown  int32   // from 1; the dice of one touchdown share it
 	sx, sy     int32   // position within the exposure shot, 0 without shots
 	touchShare float64 // touchdown as a share of all, 0 to 1
+	bowl       float64 // height of the lot's bowl here, see Smooth
 }
 
 // Dice returns how many dice the grid has, with the die size in millimetres
