@@ -508,7 +508,7 @@ type Epi struct {
 	DopingShare         Number         `json:"doping_share_of_prior"`
 	Separable           bool           `json:"separable"` // thickness from doping
 	DataOnly            EpiData        `json:"data_only"`
-	Parameters          []EpiParameter `json:"parameters"`
+	Parameters          []EpiParameter `json:"parameters"`     // of a lot
 	Readings            []EpiReading   `json:"readings"`       // what went in
 	Zones               []EpiZone      `json:"zones"`          // of a wafer: centre, middle, edge
 	BetweenWafers       *EpiSpread     `json:"between_wafers"` // of a lot; null on a wafer

@@ -141,8 +141,9 @@ func (e *epiwork) account(p *junction.Posterior, levels []level, words []string)
 		ThicknessShare: num(p.NetThickness.Share), DopingShare: num(p.Doping.Share), Separable: p.Separate.ThicknessFromDoping,
 		DataOnly: reports.EpiData{NetThicknessUM: sightInterval(p.NetThickness), ThicknessUM: sightInterval(p.Thickness),
 			DopingCM3: sightInterval(p.Doping), ResistivityOhmCM: sightInterval(p.Resistivity)},
-		Parameters: e.parameters(p), Note: paragraph(words),
+		Note: paragraph(words),
 	}
+	r.NetThicknessUM.Method, r.DataOnly.NetThicknessUM.Method = "device model on a grid, nuisances integrated out", "profile likelihood"
 	for _, v := range levels {
 		sigma := math.Hypot(junction.UsualSigma(e.d.Tests[v.Test].Measures), v.SE)
 		r.Readings = append(r.Readings, reports.EpiReading{Test: e.d.Tests[v.Test].Name, Ratio: num(math.Exp(v.Log)), Sigma: num(sigma),
@@ -151,15 +152,12 @@ func (e *epiwork) account(p *junction.Posterior, levels []level, words []string)
 	return r
 }
 
-const epiMethod = "device model on a grid, nuisances integrated out"
-
 func epiInterval(i junction.Interval) reports.Interval {
-	return reports.Interval{Estimate: num(i.Estimate), Lower: num(i.Lower), Upper: num(i.Upper), Method: epiMethod}
+	return reports.Interval{Estimate: num(i.Estimate), Lower: num(i.Lower), Upper: num(i.Upper)}
 }
 
 func sightInterval(q junction.Quantity) reports.SightInterval {
 	out := reports.SightInterval{Interval: epiInterval(q.DataOnly), Sight: q.Sight.String()}
-	out.Method = "profile likelihood"
 	switch q.Sight {
 	case junction.Blind:
 		out.Why = "these tests do not see it"
@@ -196,7 +194,6 @@ func (e *epiwork) parameters(p *junction.Posterior) []reports.EpiParameter {
 	var out []reports.EpiParameter
 	add := func(name string, q junction.Quantity, sigma float64) {
 		r := reports.EpiParameter{Name: name, Interval: epiInterval(q.WithPrior), DataOnly: epiInterval(q.DataOnly), Seen: q.Sight == junction.Seen}
-		r.DataOnly.Method = "prior divided out"
 		r.Prior = reports.Interval{Estimate: 1, Lower: num(math.Exp(-z95 * sigma)), Upper: num(math.Exp(z95 * sigma))}
 		if !r.Seen {
 			r.DataOnly.Why = "these tests do not see it"
@@ -318,6 +315,7 @@ func (e *epiwork) lotAccount(all []level) {
 		words = append(words, text)
 	}
 	r := e.account(&e.lotPos, all, nil)
+	r.Parameters = e.parameters(&e.lotPos)
 	r.BetweenWafers = e.between()
 	r.Note = paragraph(append([]string{r.BetweenWafers.Text}, words...))
 	r.Next = e.next(all)

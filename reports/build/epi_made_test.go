@@ -26,7 +26,7 @@ func draw(r *rand.Rand, sigma float64) float64 {
 	return sigma * math.Max(-3.5, math.Min(3.5, r.NormFloat64()))
 }
 
-// newFab sets the product's baseline. With as false the fab's physics are those of the
+// newFab sets the product's baseline. Without other the fab's physics are those of the
 // analysis.
 func newFab(p *config.Product, seed uint64, other bool) *fab {
 	r := rand.New(rand.NewPCG(seed, 4))
@@ -60,6 +60,26 @@ func newFab(p *config.Product, seed uint64, other bool) *fab {
 		f.sens = append(f.sens, f.world.Sensitivity(i))
 	}
 	return f
+}
+
+var fabs = map[string]struct {
+	f *fab
+	p *config.Product
+}{}
+
+// fabOf is a fab and its product, made once a test run, with draws of its own.
+func fabOf(device string, seed uint64, tests ...string) (*fab, *config.Product) {
+	key := fmt.Sprint(device, tests)
+	if _, ok := fabs[key]; !ok {
+		p := madeProduct(device, tests...)
+		fabs[key] = struct {
+			f *fab
+			p *config.Product
+		}{newFab(p, 7, true), p}
+	}
+	f, p := *fabs[key].f, *fabs[key].p
+	f.r = rand.New(rand.NewPCG(seed, 5))
+	return &f, &p
 }
 
 // net is the net epi at a process point over that of this fab's typical device.

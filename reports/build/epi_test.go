@@ -1,6 +1,7 @@
 package build
 
 import (
+	"bytes"
 	"context"
 	"math"
 	"os"
@@ -108,8 +109,11 @@ func TestEpiCoverage(t *testing.T) {
 			var thick, dope tally
 			regimes := map[string]int{}
 			for n := range fabs {
-				p := madeProduct(c.device, c.tests...)
-				f := newFab(p, uint64(100*n+7), true)
+				f, p := fabOf(c.device, uint64(n)+uint64(pull), c.tests...)
+				if n > 0 {
+					p = madeProduct(c.device, c.tests...)
+					f = newFab(p, uint64(100*n+7), true)
+				}
 				prior := specPrior(p)
 				var made []madeWafer
 				for range wafers {
@@ -158,5 +162,158 @@ func TestEpiCoverage(t *testing.T) {
 	}
 	for k, y := range all {
 		t.Logf("%s: covered %.3f of %d in all", [...]string{"net thickness", "doping"}[k], float64(share(y.covered, y.n)), y.n)
+	}
+}
+
+// TestEpiOpens has half the dice of every wafer without contact, which pass
+// breakdown at a clamp and have no gain: levels must not move.
+func TestEpiOpens(t *testing.T) {
+	f, p := fabOf("B", 1, with("cob-high")...)
+	at := f.truth(specPrior(p), 0)
+	clean, half, dead := f.wafer(at, false), f.wafer(at, false), f.wafer(at, false)
+	clean.opens, half.opens, dead.opens = 0, 0.55, 1
+	rep := inferred(t, f.lot("MADE", 12, p, clean, half, dead), p)
+	a, b := rep.Wafers[0].Epi, rep.Wafers[1].Epi
+	if a == nil || b == nil {
+		t.Fatal(rep.Wafers[0].EpiWhy, rep.Wafers[1].EpiWhy)
+	}
+	if d := math.Abs(float64(a.NetThicknessUM.Estimate/b.NetThicknessUM.Estimate) - 1); d > 0.01 {
+		t.Errorf("net thickness %.4f of clean dice, %.4f with half open", a.NetThicknessUM.Estimate, b.NetThicknessUM.Estimate)
+	}
+	if rep.Wafers[2].Epi != nil || !strings.Contains(rep.Wafers[2].EpiWhy, "opens, shorts") {
+		t.Errorf("a wafer of opens: %v %q", rep.Wafers[2].Epi, rep.Wafers[2].EpiWhy)
+	}
+}
+
+// TestEpiWafersDiffer makes some wafers a quarter thin: the lot's values are the others',
+// the thin ones are named, their thickness is out of spec, and the rest is not.
+func TestEpiWafersDiffer(t *testing.T) {
+	f, p := fabOf("B", 2, with("cob-high")...)
+	var made []madeWafer
+	for i := range 12 {
+		var at junction.Process
+		at[junction.EpiThickness] = draw(f.r, 0.004)
+		if i == 3 || i == 4 || i == 9 {
+			at[junction.EpiThickness] -= 0.28
+		}
+		made = append(made, f.wafer(at, false))
+	}
+	lot := f.lot("MADE", 10, p, made...)
+	rep := inferred(t, lot, p)
+	s := rep.Epi.BetweenWafers
+	if got := strings.Join(s.Apart, " "); !s.Differ || got != "04 05 10" || !strings.Contains(rep.Epi.Note, "afers differ") {
+		t.Errorf("apart: %q, %+v", got, s)
+	}
+	if e := rep.Epi.ThicknessUM; e.InSpec == nil || !*e.InSpec {
+		t.Errorf("typical wafer: %+v", e)
+	}
+	for i, w := range rep.Wafers {
+		thin := i == 3 || i == 4 || i == 9
+		if v := w.Epi.ThicknessUM.InSpec; v == nil && thin || v != nil && *v == thin {
+			t.Errorf("wafer %s: thin %v, %+v", w.ID, thin, w.Epi.ThicknessUM)
+		}
+		if len(w.Epi.Zones) != 3 || w.Epi.Zones[0].NetThicknessUM <= w.Epi.Zones[2].NetThicknessUM {
+			t.Errorf("wafer %s: the made bowl is thick in the middle: %+v", w.ID, w.Epi.Zones)
+		}
+	}
+	if len(rep.Pictures.Epi) != 2 || !strings.HasPrefix(rep.Pictures.Epi[0].Name, "04") && !strings.HasPrefix(rep.Pictures.Epi[0].Name, "05") && !strings.HasPrefix(rep.Pictures.Epi[0].Name, "10") {
+		t.Errorf("pictures %d", len(rep.Pictures.Epi))
+	}
+	// The same on one core.
+	w := prepared(lot, p)
+	w.in.Settings.Workers = 1
+	if err := w.inferEpi(context.Background()); err != nil {
+		t.Fatal(err)
+	}
+	var one, all bytes.Buffer
+	if err := w.rep.WriteJSON(&one); err != nil {
+		t.Fatal(err)
+	}
+	if err := rep.WriteJSON(&all); err != nil {
+		t.Fatal(err)
+	}
+	if !bytes.Equal(one.Bytes(), all.Bytes()) {
+		t.Error("another report on one core")
+	}
+}
+
+// TestEpiWithoutBaseline takes the lot's own majority: nothing is said of the lot
+// from data, and thin wafers stand out all the same.
+func TestEpiWithoutBaseline(t *testing.T) {
+	f, p := fabOf("B", 3, with("cob-high")...)
+	p.Baseline = nil
+	var made []madeWafer
+	for i := range 7 {
+		var at junction.Process
+		if i == 2 {
+			at[junction.EpiThickness] = -0.15
+		}
+		made = append(made, f.wafer(at, false))
+	}
+	rep := inferred(t, f.lot("MADE", 10, p, made...), p)
+	if rep.Epi == nil {
+		t.Fatal(rep.EpiWhy)
+	}
+	if rep.Epi.ThicknessObservable || rep.Epi.DataOnly.NetThicknessUM.Estimate.Valid() || rep.Epi.ThicknessUM.InSpec != nil || !strings.Contains(rep.Epi.Note, "no baseline") {
+		t.Errorf("a lot against itself: %+v", rep.Epi)
+	}
+	if got := strings.Join(rep.Epi.BetweenWafers.Apart, " "); got != "03" {
+		t.Errorf("apart: %q, want 03", got)
+	}
+	w := rep.Wafers[2].Epi
+	if w.DataOnly.NetThicknessUM.Estimate.Valid() || w.ThicknessUM.InSpec != nil || !strings.Contains(w.Note, "own majority") {
+		t.Errorf("wafer against the majority: %+v", w)
+	}
+}
+
+// TestLevel takes medians with bounds, blanks and few dice.
+func TestLevel(t *testing.T) {
+	f, p := fabOf("B", 4, with("cob-high")...)
+	d, why := deviceModel(p, nil)
+	if d == nil {
+		t.Fatal(why)
+	}
+	one := f.wafer(junction.Process{}, false)
+	one.opens = 0
+	bv := d.Test(junction.BVcbo)
+	base := d.Level(bv)
+	take := func(change func(i int, v *float64)) level {
+		table := ingest.NewTable("MADE", f.tests...)
+		for i := range 101 {
+			values := append([]float64(nil), one.levels...)
+			values[bv] *= 1 + 0.001*float64(i-50)
+			change(i, &values[bv])
+			table.Add(ingest.Die{Wafer: "1", X: int32(i % 11), Y: int32(i / 11), HardBin: 1, Values: values})
+		}
+		table.Tests = append([]ingest.Test(nil), f.tests...)
+		table.Tests[bv].Clamp = 1.02 * base
+		lot, err := ingest.Build(table, ingest.Options{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		levels, _, why := newLeveller(d, lot).wafer(0, lot.Len())
+		for _, v := range levels {
+			if v.Test == bv {
+				return v
+			}
+		}
+		t.Fatal("no level: ", why)
+		return level{}
+	}
+	clamp := func(i int, v *float64) { *v = math.Min(*v, 1.02*base) }
+	if v := take(clamp); v.Censor != 0 || math.Abs(v.Log) > 1e-9 || v.N != 101 {
+		t.Errorf("30 %% at the clamp: %+v, want the median as if there were no clamp", v)
+	}
+	if v := take(func(i int, v *float64) { *v *= 1.05; clamp(i, v) }); v.Censor != 1 || math.Abs(v.Log-math.Log(1.02)) > 1e-9 {
+		t.Errorf("80 %% at the clamp: %+v, want a bound", v)
+	}
+	whole := take(func(int, *float64) {})
+	v := take(func(i int, v *float64) {
+		if i < 30 {
+			*v = math.NaN()
+		}
+	})
+	if v.N != 71 || v.Misses != 30 || v.SE <= whole.SE || math.Abs(v.Log) > 3*v.SE {
+		t.Errorf("low dice blank: %+v, want a standard error that holds the shift of the median", v)
 	}
 }

@@ -66,6 +66,9 @@ func newEpi(r *reports.Report) (*epi, error) {
 	return e, nil
 }
 
+// signs writes units of plain text as the page does.
+var signs = strings.NewReplacer(" um", " µm", "cm^-3", "cm⁻³")
+
 // say puts the lot's account in words.
 func (e *epi) say(x *reports.Epi) {
 	interval := func(i reports.Interval, unit string) string {
@@ -76,7 +79,7 @@ func (e *epi) say(x *reports.Epi) {
 	line += "; resistivity " + interval(x.ResistivityOhmCM.Interval, "Ω cm") + verdictWords(x.ResistivityOhmCM) + "."
 	e.Texts = append(e.Texts, line)
 	if s := x.BetweenWafers; s != nil && s.Text != "" {
-		e.Texts = append(e.Texts, sentence(s.Text))
+		e.Texts = append(e.Texts, signs.Replace(sentence(s.Text)))
 	}
 	seen := func(ok bool, share reports.Number) string {
 		if ok {
@@ -98,7 +101,7 @@ func (e *epi) say(x *reports.Epi) {
 	for _, s := range strings.SplitAfter(x.Note, ". ") {
 		s = strings.TrimSpace(s)
 		if s != "" && !strings.EqualFold(strings.TrimSuffix(s, "."), between) {
-			e.Notes = append(e.Notes, s)
+			e.Notes = append(e.Notes, signs.Replace(s))
 		}
 	}
 }
@@ -231,50 +234,64 @@ func (e *epi) maps(pictures []reports.Raster) {
 		m := newWaferMap(p)
 		wafer, what, _ := strings.Cut(p.Name, ", ")
 		name, unit, _ := strings.Cut(what, ", ")
-		m.Text = strings.ToUpper(name[:1]) + name[1:] + ", " + strings.NewReplacer("um", "µm", "cm^-3", "cm⁻³").Replace(unit) + ", die by die"
+		m.Text = strings.ToUpper(name[:1]) + name[1:] + ", " + signs.Replace(" " + unit)[1:] + ", die by die"
 		m.Alt = "Map of " + name + " on wafer " + wafer
 		e.MapTitle = "Die by die on wafer " + wafer + ", the one farthest from the baseline"
 		e.Maps = append(e.Maps, m)
 	}
 }
 
+// tenfold is the power of ten that dopings are written in, and its name.
+func tenfold(rows []epiRow) (float64, string) {
+	for _, r := range rows {
+		if v := float64(r.DopingCM3.Estimate); v > 0 {
+			e := math.Floor(math.Log10(v))
+			return math.Pow(10, e), "1e" + fixed(e, 0)
+		}
+	}
+	return 1, "1"
+}
+
 func epiTable(rows []epiRow) table {
+	ten, unit := tenfold(rows)
 	t := table{Caption: "Epi layer inferred from electrical data, with 95 % intervals", Sortable: true, Columns: []column{{Name: "Of"},
 		{Name: "Net thickness, µm", Numeric: true}, {Name: "Data alone", Numeric: true}, {Name: "As grown, µm", Numeric: true}, {Name: "Spec"},
-		{Name: "Doping, cm⁻³", Numeric: true}, {Name: "Data alone", Numeric: true}, {Name: "Resistivity, Ω cm", Numeric: true}, {Name: "Spec"}},
+		{Name: "Doping, " + unit + " cm⁻³", Numeric: true}, {Name: "Data alone", Numeric: true}, {Name: "Resistivity, Ω cm", Numeric: true}, {Name: "Spec"}},
 		Note: "With the prior that the product's spec stands for, and from data alone, which charts over lots and drift must use. A verdict needs data that decide it: what rests on the prior is not decided."}
-	with := func(i reports.Interval) cell {
+	with := func(i reports.Interval, unit float64) cell {
 		if !i.Estimate.Valid() {
 			return text(orWhy(notAvailable, i.Why))
 		}
-		return number(significant(float64(i.Estimate), 3)+" ("+significant(float64(i.Lower), 3)+" to "+significant(float64(i.Upper), 3)+")", i.Estimate)
+		at := func(v reports.Number) string { return significant(float64(v)/unit, 3) }
+		return number(at(i.Estimate)+" ("+at(i.Lower)+" to "+at(i.Upper)+")", i.Estimate)
 	}
-	alone := func(s reports.SightInterval) cell {
+	alone := func(s reports.SightInterval, unit float64) cell {
 		switch {
 		case s.Sight == "lower bound only":
-			return number("at least "+significant(float64(s.Lower), 3), s.Lower)
+			return number("at least "+significant(float64(s.Lower)/unit, 3), s.Lower)
 		case s.Sight == "upper bound only":
-			return number("at most "+significant(float64(s.Upper), 3), s.Upper)
+			return number("at most "+significant(float64(s.Upper)/unit, 3), s.Upper)
 		case !s.Estimate.Valid():
 			return number("not seen", reports.NaN)
 		}
-		return with(s.Interval)
+		return with(s.Interval, unit)
 	}
 	for _, r := range rows {
-		t.Rows = append(t.Rows, []cell{text(r.name), with(r.NetThicknessUM), alone(r.DataOnly.NetThicknessUM), with(r.ThicknessUM.Interval), verdict(r.ThicknessUM),
-			with(r.DopingCM3), alone(r.DataOnly.DopingCM3), with(r.ResistivityOhmCM.Interval), verdict(r.ResistivityOhmCM)})
+		t.Rows = append(t.Rows, []cell{text(r.name), with(r.NetThicknessUM, 1), alone(r.DataOnly.NetThicknessUM, 1), with(r.ThicknessUM.Interval, 1), verdict(r.ThicknessUM),
+			with(r.DopingCM3, ten), alone(r.DataOnly.DopingCM3, ten), with(r.ResistivityOhmCM.Interval, 1), verdict(r.ResistivityOhmCM)})
 	}
 	return t
 }
 
 func epiZoneTable(rows []epiRow) table {
-	t := table{Caption: "Across the wafer: means of zones of equal area, on the wafer's own estimate", Sortable: true, Columns: []column{{Name: "Wafer"}}}
+	ten, unit := tenfold(rows)
+	t := table{Caption: "Across the wafer: net thickness in µm and doping in " + unit + " cm⁻³, means of zones of equal area on the wafer's own estimate", Sortable: true, Columns: []column{{Name: "Wafer"}}}
 	for _, r := range rows {
 		if len(r.Zones) == 0 {
 			continue
 		}
 		if len(t.Columns) == 1 {
-			for _, q := range []string{"Net thickness, µm, ", "Doping, cm⁻³, "} {
+			for _, q := range []string{"Thickness, ", "Doping, "} {
 				for _, z := range r.Zones {
 					t.Columns = append(t.Columns, column{Name: q + z.Name, Numeric: true})
 				}
@@ -285,7 +302,7 @@ func epiZoneTable(rows []epiRow) table {
 			row = append(row, number(significant(float64(z.NetThicknessUM), 3), z.NetThicknessUM))
 		}
 		for _, z := range r.Zones {
-			row = append(row, number(significant(float64(z.DopingCM3), 3), z.DopingCM3))
+			row = append(row, number(significant(float64(z.DopingCM3)/ten, 3), z.DopingCM3))
 		}
 		t.Rows = append(t.Rows, row)
 	}
