@@ -8,16 +8,21 @@ import (
 	"os"
 	"runtime"
 	"slices"
+	"strconv"
 	"sync"
 	"testing"
 )
 
-// manyMaps is how many maps the two tests below make: all 4,000 with KNEEPOINT_LONG.
+// manyMaps is how many maps each of the tests below makes: 4,000 with KNEEPOINT_LONG=1, as many
+// as it says when it is a larger number.
 func manyMaps() int {
-	if os.Getenv("KNEEPOINT_LONG") != "" {
+	switch n, _ := strconv.Atoi(os.Getenv("KNEEPOINT_LONG")); {
+	case n > 1:
+		return n
+	case n == 1:
 		return 4000
 	}
-	return 300
+	return 120
 }
 
 // eachMap runs work on maps 0 to n-1 on all cores; results must go to a place of their own.
@@ -131,11 +136,18 @@ type foundPattern struct {
 	about        string
 }
 
-// madeMap draws the k-th map with one or two patterns of contrast 1.5 to 10, and judges what
+// A generator makes wafers and patterns on them.
+type generator struct {
+	seed    uint64
+	wafer   func(*rand.Rand) madeWafer
+	pattern func(random *rand.Rand, m madeWafer, kind string) *madePattern
+}
+
+// judge draws the k-th map with one or two patterns of contrast 1.5 to 10, and judges what
 // Signatures makes of it.
-func judgeMadeMap(seed uint64, k int) (patterns []foundPattern, extra int) {
-	random := rand.New(rand.NewPCG(seed, uint64(k)))
-	m := makeWafer(random)
+func (g generator) judge(k int) (patterns []foundPattern, extra int) {
+	random := rand.New(rand.NewPCG(g.seed, uint64(k)))
+	m := g.wafer(random)
 	rate := madeRate(random)
 	var made []*madePattern
 	var contrast []float64
@@ -145,7 +157,7 @@ func judgeMadeMap(seed uint64, k int) (patterns []foundPattern, extra int) {
 		if len(made) == 1 && made[0].kind == kind && !slices.Contains([]string{"line", "blob", "edge-arc"}, kind) {
 			continue // a wafer has only one of these
 		}
-		if p := makePattern(random, m, kind); p != nil {
+		if p := g.pattern(random, m, kind); p != nil {
 			made = append(made, p)
 			contrast = append(contrast, between(random, 1.5, math.Max(1.6, math.Min(10, 0.95/rate))))
 		}
@@ -198,10 +210,18 @@ func (p *madePattern) lift(s Signature) float64 {
 // the pattern (and the other one) gives p < 1e-6, at least 95 % must be found and 95 % of
 // the found ones be named rightly.
 func TestMadePatternsAreFoundAndNamed(t *testing.T) {
+	testPatterns(t, generator{20240502, makeWafer, makePattern})
+}
+
+func TestPlainPatternsAreFoundAndNamed(t *testing.T) {
+	testPatterns(t, generator{20240503, makePlainWafer, makePlainPattern})
+}
+
+func testPatterns(t *testing.T, g generator) {
 	n := manyMaps()
 	all := make([][]foundPattern, n)
 	extras := make([]int, n)
-	eachMap(n, func(k int) { all[k], extras[k] = judgeMadeMap(20240502, k) })
+	eachMap(n, func(k int) { all[k], extras[k] = g.judge(k) })
 
 	edges := []float64{0, 3, 4, 4.892, 6, 8, 12, 20, math.Inf(1)} // z; chi-squared with one degree of freedom gives 1e-6 at 4.892
 	const plain = 3

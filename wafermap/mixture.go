@@ -1,0 +1,275 @@
+package wafermap
+
+import "math"
+
+const (
+	refitRounds = 40
+	surestFail  = 0.98 // no die is expected to fail more surely
+)
+
+// mixture is the dice of a wafer counted by their depths in all patterns of a model:
+// dice of equal depths are alike to it.
+type mixture struct {
+	kind  []int32   // by die
+	depth [][]uint8 // by pattern, by kind of die
+	o, n  []float64 // by kind of die
+}
+
+// link is a pattern of a model and the mixture up to it.
+type link struct {
+	*explained
+	*mixture
+}
+
+// mix counts the dice for a model. It goes on from what this model and the last one begin
+// with alike.
+func (f *field) mix(found []*explained) *mixture {
+	same := 0
+	for same < len(found) && same < len(f.chain) && f.chain[same].explained == found[same] {
+		same++
+	}
+	f.chain = f.chain[:same]
+	m := &mixture{kind: make([]int32, len(f.rows)), o: []float64{f.total.o}, n: []float64{f.total.n}}
+	if same > 0 {
+		m = f.chain[same-1].mixture
+	}
+	for _, x := range found[same:] {
+		m = f.split(m, x)
+		f.chain = append(f.chain, link{x, m})
+	}
+	return m
+}
+
+// split tells the dice of a mixture apart by their depth in one more pattern too.
+func (f *field) split(m *mixture, x *explained) *mixture {
+	next := make([]int32, len(m.n)*layers)
+	for i, d := range x.depth {
+		next[int(m.kind[i])*layers+int(d)] = 1
+	}
+	var from []int32
+	var depth []uint8
+	for c, used := range next {
+		if used == 1 {
+			next[c] = int32(len(from))
+			from, depth = append(from, int32(c/layers)), append(depth, uint8(c%layers))
+		}
+	}
+	s := &mixture{kind: make([]int32, len(m.kind)), o: make([]float64, len(from)), n: make([]float64, len(from))}
+	for i, d := range x.depth {
+		c := next[int(m.kind[i])*layers+int(d)]
+		s.kind[i] = c
+		s.n[c]++
+		if f.fail[i] {
+			s.o[c]++
+		}
+	}
+	for _, old := range m.depth {
+		moved := make([]uint8, len(from))
+		for c, q := range from {
+			moved[c] = old[q]
+		}
+		s.depth = append(s.depth, moved)
+	}
+	s.depth = append(s.depth, depth)
+	return s
+}
+
+// fit is a model fitted to a mixture: a background and what each pattern adds by depth.
+type fit struct {
+	chained    bool    // causes act one after the other; else they multiply rates
+	base       float64 // background rate
+	level      [][layers]float64
+	likelihood float64 // logarithm, up to a constant of the data
+}
+
+// rate is the fail rate of dice of a kind, without pattern skip (-1: with all).
+func (t *fit) rate(m *mixture, c, skip int) float64 {
+	if t.chained {
+		h := -math.Log1p(-t.base)
+		for k := range t.level {
+			if k != skip {
+				h += t.level[k][m.depth[k][c]]
+			}
+		}
+		return min(-math.Expm1(-h), surestFail)
+	}
+	p := t.base
+	for k := range t.level {
+		if k != skip {
+			p *= t.level[k][m.depth[k][c]]
+		}
+	}
+	return min(p, surestFail)
+}
+
+func (t *fit) judge(m *mixture) {
+	t.likelihood = 0
+	for c := range m.n {
+		p := t.rate(m, c, -1)
+		if m.o[c] > 0 {
+			t.likelihood += m.o[c] * math.Log(p)
+		}
+		if m.n[c] > m.o[c] {
+			t.likelihood += (m.n[c] - m.o[c]) * math.Log1p(-p)
+		}
+	}
+}
+
+// fitMixture finds the fail rate of every kind of die as a background raised by
+// each pattern by its depth, falling from the core outwards: maximum likelihood under that
+// order, one pattern after the other until nothing moves (isotonic regression by pooling
+// adjacent violators: Ayer and others 1955, Ann. Math. Stat. 26, 641). Where patterns
+// overlap, either their factors multiply or the causes act one after the other, each
+// on the dice still good (their rates add up as -log(1-rate)): whichever fits better.
+func (f *field) fitMixture(m *mixture) *fit {
+	t := f.fitProduct(m)
+	if len(m.depth) > 1 {
+		if chain := f.fitChain(m); chain.likelihood > t.likelihood {
+			return chain
+		}
+	}
+	return t
+}
+
+func (f *field) fitProduct(m *mixture) *fit {
+	t := &fit{base: f.mean, level: make([][layers]float64, len(m.depth))}
+	for k := range t.level {
+		for d := range t.level[k] {
+			t.level[k][d] = 1
+		}
+	}
+	for range refitRounds {
+		moved := 0.0
+		for k := range t.level {
+			var o, e [layers]float64
+			level := &t.level[k]
+			for c, d := range m.depth[k] {
+				e[d] += t.rate(m, c, -1) * m.n[c]
+				o[d] += m.o[c]
+			}
+			old := *level
+			for d := range level {
+				e[d] /= level[d]
+			}
+			*level = falling(o, e)
+			last := level[layers-1]
+			for d := range level {
+				level[d] = min(level[d]/last, 1e4)
+				moved = max(moved, math.Abs(level[d]-old[d])/old[d])
+			}
+			t.base = min(t.base*last, surestFail)
+		}
+		sum := 0.0
+		for c := range m.n {
+			sum += t.rate(m, c, -1) * m.n[c]
+		}
+		if scale := f.total.o / sum; sum > 0 {
+			t.base = min(t.base*scale, surestFail)
+			moved = max(moved, math.Abs(scale-1))
+		}
+		if moved < 0.003 || len(t.level) == 0 {
+			break
+		}
+	}
+	t.judge(m)
+	return t
+}
+
+// fitChain steps by Fisher scoring in h = -log(1-rate), to which patterns add.
+func (f *field) fitChain(m *mixture) *fit {
+	h := -math.Log1p(-min(f.mean, surestFail))
+	t := &fit{chained: true, base: -math.Expm1(-0.8 * h), level: make([][layers]float64, len(m.depth))}
+	var best *fit
+	for range refitRounds / 2 {
+		moved := 0.0
+		for k := -1; k < len(t.level); k++ {
+			var score, weight [layers]float64
+			for c := range m.n {
+				d := uint8(0)
+				if k >= 0 {
+					d = m.depth[k][c]
+				}
+				p := t.rate(m, c, -1)
+				score[d] += (m.o[c] - m.n[c]*p) / p
+				weight[d] += m.n[c] * (1 - p) / p
+			}
+			if k < 0 {
+				h := -math.Log1p(-t.base)
+				next := min(max(h+score[0]/max(weight[0], 1e-9), 0.3*h, 1e-7), 4)
+				moved = max(moved, math.Abs(next-h)/h)
+				t.base = -math.Expm1(-next)
+				continue
+			}
+			level := &t.level[k]
+			var target [layers]float64
+			for d := range layers - 1 {
+				target[d] = max(0, level[d]*weight[d]+score[d])
+			}
+			target[layers-1], weight[layers-1] = 0, 0
+			next := falling(target, weight)
+			next[layers-1] = 0
+			for d := range layers - 1 {
+				if weight[d] == 0 && d > 0 {
+					next[d] = next[d-1]
+				}
+				next[d] = min(next[d], 4)
+				moved = max(moved, math.Abs(next[d]-level[d])/(h+level[d]))
+			}
+			*level = next
+		}
+		t.judge(m)
+		if best == nil || t.likelihood > best.likelihood {
+			best = &fit{true, t.base, append([][layers]float64(nil), t.level...), t.likelihood}
+		}
+		if moved < 0.003 {
+			break
+		}
+	}
+	return best
+}
+
+// refit makes the dice's fail rates those of a model and returns it.
+func (f *field) refit(found []*explained) *fit {
+	m := f.mix(found)
+	t := f.fitMixture(m)
+	p := make([]float64, len(m.n))
+	for c := range p {
+		p[c] = t.rate(m, c, -1)
+	}
+	for i, c := range m.kind {
+		f.p[i] = p[c]
+	}
+	f.expect()
+	return t
+}
+
+// falling is the isotonic regression of o/e with weights e, not rising from layer to
+// layer. Layers without expectation take the value of the layer outside of them.
+func falling(o, e [layers]float64) (out [layers]float64) {
+	type block struct{ o, e float64 }
+	var blocks [layers]block
+	var size [layers]int
+	n := 0
+	for k := range o {
+		blocks[n], size[n] = block{o[k], e[k]}, 1
+		n++
+		for n > 1 && (blocks[n-2].e == 0 || blocks[n-1].e > 0 && blocks[n-2].o*blocks[n-1].e <= blocks[n-1].o*blocks[n-2].e) {
+			blocks[n-2].o += blocks[n-1].o
+			blocks[n-2].e += blocks[n-1].e
+			size[n-2] += size[n-1]
+			n--
+		}
+	}
+	k := 0
+	for b := range n {
+		v := 1.0
+		if blocks[b].e > 0 {
+			v = max(blocks[b].o, 0.1) / blocks[b].e
+		}
+		for range size[b] {
+			out[k] = v
+			k++
+		}
+	}
+	return out
+}
