@@ -1,7 +1,7 @@
 // Package text writes the terminal summary of a Report: at most MaxLines lines
 // that say, in this order, what the lot is, how it yields, what lost most, which
-// wafers stand out, what is wrong with the data, what is proposed, and where the
-// full report is.
+// wafers stand out, what the epi layer is, what is wrong with the data, what is
+// proposed, and where the full report is.
 package text
 
 import (
@@ -35,6 +35,9 @@ func Summary(w io.Writer, r *reports.Report, files []string, bold bool) error {
 	s.losses(r)
 	s.add(false, "%s", wafersLine(r))
 	if line := clusterLine(r); line != "" {
+		s.add(false, "%s", line)
+	}
+	if line := epiLine(r); line != "" {
 		s.add(false, "%s", line)
 	}
 	s.quality(r)
