@@ -129,12 +129,16 @@ type model struct {
 	bvcbo, bvceo   float64 // typical, V
 	satShare       float64 // collector resistance's part of Vcesat
 	fixShare       float64
+	width          []float64 // of the depletion layer at target and each test's bias, cm
 }
 
 func newModel(s *Spec) *model {
 	m := &model{laws: s.Laws, dev: s.Device, tests: s.Tests}
 	m.n0 = DopingFromResistivity(m.dev.EpiResistivityOhmCM)
 	m.w0 = m.net(&Process{})
+	for i := range s.Tests {
+		m.width = append(m.width, m.depletion(m.w0, m.n0, s.Tests[i].Bias))
+	}
 	for _, t := range s.Tests {
 		switch t.Measures {
 		case "bvceo":
@@ -217,8 +221,9 @@ func (m *model) values(dst []float64, p *Process) {
 		plane := breakdown(m.reach(w), n, m.ecCBO*math.Exp(l.CriticalField*p[EpiDoping]))/epiShare - builtIn
 		bvcbo = min(edge, plane)
 	}
-	leak := func(v float64) float64 {
-		width := math.Pow(m.depletion(w, n, v)/m.depletion(m.w0, m.n0, v), l.GenerationWidth)
+	leak := func(test int) float64 {
+		v := m.tests[test].Bias
+		width := math.Pow(m.depletion(w, n, v)/m.width[test], l.GenerationWidth)
 		r := ((1-l.SurfaceLeak)*width/tau + l.SurfaceLeak*surface) * math.Exp2(p[Temperature]/l.LeakDouble)
 		if m.hasCBO {
 			if v >= bvcbo {
@@ -247,9 +252,9 @@ func (m *model) values(dst []float64, p *Process) {
 		case "bvebo":
 			r = math.Exp(l.BVEBODose * p[BaseDose])
 		case "icbo":
-			r = leak(t.Bias)
+			r = leak(i)
 		case "iceo":
-			r = leak(t.Bias) * gain(10e-6)
+			r = leak(i) * gain(10e-6)
 		case "iebo":
 			r = recombine * math.Exp2(p[Temperature]/l.LeakDouble)
 		case "hfe":
@@ -265,7 +270,7 @@ func (m *model) values(dst []float64, p *Process) {
 		case "rb":
 			r = math.Sqrt(pinch) // half under the emitter, half outside it
 		case "cob":
-			r = l.Stray + (1-l.Stray)*m.depletion(m.w0, m.n0, t.Bias)/m.depletion(w, n, t.Bias)
+			r = l.Stray + (1-l.Stray)*m.width[i]/m.depletion(w, n, t.Bias)
 		case "ft":
 			r = math.Exp(-(p[BaseDepth] - p[EmitterDepth])) // transit time goes with base width
 		}
