@@ -6,11 +6,10 @@ import (
 	"io"
 	"math"
 	"runtime"
-	"sync/atomic"
+	"sync"
 
 	"github.com/apache/arrow/go/v17/arrow"
 	"github.com/apache/arrow/go/v17/arrow/ipc"
-	"github.com/apache/arrow/go/v17/arrow/memory"
 	"github.com/apache/arrow/go/v17/parquet"
 	"github.com/apache/arrow/go/v17/parquet/file"
 	"github.com/apache/arrow/go/v17/parquet/pqarrow"
@@ -41,6 +40,9 @@ func (t *tableReading) parquet() error {
 	if err != nil {
 		return err
 	}
+	if err := t.checkSizes(pf, size); err != nil {
+		return err
+	}
 	rows := pf.NumRows()
 	if rows == 0 {
 		return t.noRows()
@@ -59,7 +61,14 @@ func (t *tableReading) parquet() error {
 	if int64(offset[len(offset)-1]) != rows {
 		return errors.New("the row groups do not add up to the rows of the file")
 	}
+	walks := sync.Pool{New: func() any { return &pageWalk{from: at, size: size, limit: t.limit} }}
 	read := func(group, field int, do func(arrow.Array, int) error) error {
+		// A nested field has no column of its own, and is not read.
+		w := walks.Get().(*pageWalk)
+		err := w.chunk(pf.RowGroup(group), fr.Manifest.Fields[field].ColIndex, nil)
+		if walks.Put(w); err != nil {
+			return fmt.Errorf("row group %d, column %s: %w", group, quote(s.Field(field).Name), err)
+		}
 		chunks, err := fr.RowGroup(group).Column(field).Read(t.ctx)
 		if err != nil {
 			return fmt.Errorf("row group %d, column %s: %w", group, quote(s.Field(field).Name), err)
@@ -111,7 +120,9 @@ func (t *tableReading) parquet() error {
 				if err := ctx.Err(); err != nil {
 					return err
 				}
-				err := t.doubles(pf, group, leaf, field, offset[group], offset[group+1])
+				w := walks.Get().(*pageWalk)
+				defer walks.Put(w)
+				err := t.doubles(w, pf.RowGroup(group), leaf, field, offset[group], offset[group+1])
 				if err != nil {
 					err = fmt.Errorf("row group %d, column %s: %w", group, quote(s.Field(field).Name), err)
 				}
@@ -147,58 +158,59 @@ func (t *tableReading) parquet() error {
 	return g.Wait()
 }
 
+// checkSizes holds the footer's claims against the size of the file: chunks do not
+// share bytes, and a row takes a bit at least.
+func (t *tableReading) checkSizes(pf *file.Reader, size int64) error {
+	const fewRows = 64 << 10 // that may be all alike
+	if n := pf.NumRows(); n > fewRows && n/8 > size {
+		return &Error{File: t.in.name, What: fmt.Sprintf("says that it holds %d rows, which cannot be in a file of %d bytes", n, size), Remedy: "fetch or export the file again"}
+	}
+	left := size
+	for g := range pf.NumRowGroups() {
+		meta := pf.MetaData().RowGroup(g)
+		for i := range meta.NumColumns() {
+			c, err := meta.ColumnChunk(i)
+			if err != nil {
+				return err
+			}
+			if n := c.TotalCompressedSize(); n < 0 || n > left {
+				return errClaims
+			}
+			left -= c.TotalCompressedSize()
+		}
+	}
+	return nil
+}
+
 // doubles reads a column of float64 of a row group straight into the chunk, with
 // no array in between.
-func (t *tableReading) doubles(pf *file.Reader, group, leaf, field, lo, hi int) error {
-	col, err := pf.RowGroup(group).Column(leaf)
-	if err != nil {
-		return err
-	}
-	r, ok := col.(*file.Float64ColumnChunkReader)
-	if !ok || col.Descriptor().MaxRepetitionLevel() > 0 || col.Descriptor().MaxDefinitionLevel() > 1 {
-		return errors.New("the schema contradicts itself")
-	}
-	const step = 16 << 10
-	var defined []int16
-	if col.Descriptor().MaxDefinitionLevel() == 1 {
-		defined = make([]int16, step)
-	}
+func (t *tableReading) doubles(w *pageWalk, group *file.RowGroupReader, leaf, field, lo, hi int) error {
 	to := t.c.values[t.layout.fields[field].slot][lo:hi]
+	at := 0
 	k := cells{at: lo}
-	for at := 0; at < len(to); {
-		n := min(step, len(to)-at)
-		levels, values, err := r.ReadBatch(int64(n), to[at:at+n], defined, nil)
-		if err != nil {
+	err := w.chunk(group, leaf, func(c *pageChunk, p *page) error {
+		if err := c.doubles(p, to[at:at+p.n]); err != nil {
 			return err
 		}
-		if levels <= 0 || levels > int64(n) || values > int(levels) {
-			return fmt.Errorf("it ends after %d of %d rows", at, len(to))
-		}
-		n = int(levels)
-		if values < n {
-			if defined == nil {
-				return errors.New("it has fewer values than rows")
-			}
-			spreadNulls(to[at:at+n], defined[:n], values)
-		}
 		k.at = lo + at
-		k.infinite(to[at : at+n])
-		at += n
-	}
+		k.infinite(to[at : at+p.n])
+		at += p.n
+		return nil
+	})
 	t.count(field, &k)
-	return nil
+	return err
 }
 
 // spreadNulls moves values that were read without the nulls between them to their
 // rows, from the last on.
-func spreadNulls(to []float64, defined []int16, values int) {
+func spreadNulls(to []float64, levels []uint32, values int) {
 	for i := len(to) - 1; i >= 0; i-- {
-		if defined[i] == 0 {
+		if levels[i] == 0 {
 			to[i] = math.NaN()
 			continue
 		}
 		values--
-		to[i] = to[values] // out of range only in a damaged file: see guard
+		to[i] = to[values]
 	}
 }
 
@@ -376,45 +388,4 @@ func (t *tableReading) batch(s *arrow.Schema, rec arrow.Record, first bool) erro
 	}
 	t.c.n += n
 	return nil
-}
-
-// limitAllocator bounds the memory that a file can make the libraries take, as a
-// length in a damaged file may claim anything.
-type limitAllocator struct {
-	memory.Allocator
-	file string
-	most int64
-	used atomic.Int64
-	made atomic.Int64 // by arrays, whether still in use or not
-}
-
-func newLimit(in *input) *limitAllocator {
-	return &limitAllocator{Allocator: memory.NewGoAllocator(), file: in.name, most: unpackLimit(in.size)}
-}
-
-func (l *limitAllocator) take(n int) {
-	l.made.Add(int64(n))
-	if n < 0 || l.used.Add(int64(n)) > l.most {
-		l.used.Add(-int64(n))
-		panic(&Error{File: l.file, What: fmt.Sprintf("unpacks to more than %d times its size, or is damaged; it is not read", unpackRatio), Remedy: "fetch or export the file again"})
-	}
-}
-
-func (l *limitAllocator) Allocate(n int) []byte {
-	l.take(n)
-	return l.Allocator.Allocate(n)
-}
-
-func (l *limitAllocator) Reallocate(n int, b []byte) []byte {
-	if n > len(b) {
-		l.take(n - len(b))
-	} else {
-		l.used.Add(int64(n - len(b)))
-	}
-	return l.Allocator.Reallocate(n, b)
-}
-
-func (l *limitAllocator) Free(b []byte) {
-	l.used.Add(-int64(len(b)))
-	l.Allocator.Free(b)
 }

@@ -89,7 +89,7 @@ func (s *source) unpack() error {
 		s.plain = z
 	case bytes.HasPrefix(magic, []byte{0x28, 0xb5, 0x2f, 0xfd}):
 		s.packed = "zstd"
-		z, err := zstd.NewReader(raw, zstd.WithDecoderConcurrency(1), zstd.WithDecoderMaxMemory(1<<30))
+		z, err := zstd.NewReader(raw, zstd.WithDecoderConcurrency(1), zstd.WithDecoderLowmem(true), zstd.WithDecoderMaxWindow(zstdWindowOf(s.size)))
 		if err != nil {
 			return s.readError(err)
 		}
@@ -100,6 +100,19 @@ func (s *source) unpack() error {
 		return s.knownOther(magic)
 	}
 	return nil
+}
+
+// Windows of zstd, that a frame claims and the decoder makes room for before it
+// has read a byte. RFC 8878 (3.1.1.1.2) recommends that 8 MB be read by all;
+// a writer of long distance (its common setting is 128 MB) has a file of some size.
+const (
+	zstdWindow     = 8 << 20
+	zstdWindowMost = 512 << 20
+)
+
+// zstdWindowOf bounds the window of a packed file by its size.
+func zstdWindowOf(size int64) uint64 {
+	return uint64(min(max(zstdWindow, unpackRatio*size), zstdWindowMost))
 }
 
 // knownOthers are formats that are told and not read, by their first bytes.
@@ -139,7 +152,10 @@ func (r rawReader) Read(p []byte) (int, error) {
 
 func (s *source) readError(err error) *Error {
 	e := &Error{File: s.path, Err: err}
-	if s.packed != "" {
+	if errors.Is(err, zstd.ErrWindowSizeExceeded) {
+		e.What = fmt.Sprintf("is packed with a zstd window of more than %d MB, which a file of %d bytes does not need", zstdWindowOf(s.size)>>20, s.size)
+		e.Remedy = "pack it again with a smaller window, or unpack it if you trust it"
+	} else if s.packed != "" {
 		e.What = fmt.Sprintf("the %s data are damaged or cut short at about byte %d of %d: %s", s.packed, s.raw, s.size, bare(err))
 		e.Remedy = "fetch the file again"
 	} else {
