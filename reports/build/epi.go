@@ -69,7 +69,7 @@ func (w *lotwork) device() (*device, string) {
 	if w.model == nil && w.modelWhy == "" {
 		var own map[string]float64
 		if p := w.in.Product; p != nil && !hasBaseline(p) {
-			own = w.ownLevels()
+			own = w.majority()
 		}
 		w.model, w.modelWhy = deviceModel(w.in.Product, own)
 	}

@@ -28,18 +28,12 @@ func inferred(t testing.TB, lot *ingest.Lot, p *config.Product) *reports.Report 
 // prepared is a lot as inferEpi finds it, without the accounts that it does not use.
 func prepared(lot *ingest.Lot, p *config.Product) *lotwork {
 	w := &lotwork{in: Input{Lot: lot, Product: p, Settings: config.DefaultSettings()}, lot: lot, rep: &reports.Report{}}
+	w.code = waferCode(lot)
 	w.findGeometry()
 	for _, x := range lot.Wafers() {
 		w.rep.Wafers = append(w.rep.Wafers, reports.Wafer{ID: x.ID})
 	}
-	for t := range lot.Tests() {
-		var one reports.Test
-		for _, x := range lot.Wafers() {
-			sum := describe(inUnit(lot.Values(t)[x.Lo:x.Hi], lot.Tests()[t].Unit), nil, nil)
-			one.ByWafer = append(one.ByWafer, reports.WaferLevel{Wafer: x.ID, Median: num(sum.Median)})
-		}
-		w.rep.Tests = append(w.rep.Tests, one)
-	}
+	w.judgeDice()
 	return w
 }
 

@@ -245,22 +245,6 @@ func readings(d *device, levels []level) []junction.Reading {
 	return out
 }
 
-// ownLevels are the medians of the lot's majority by test name, SI: of each wafer,
-// then over wafers.
-func (w *lotwork) ownLevels() map[string]float64 {
-	out := map[string]float64{}
-	for t, test := range w.lot.Tests() {
-		var x []float64
-		for _, one := range w.rep.Tests[t].ByWafer {
-			x = append(x, float64(one.Median))
-		}
-		if v := test.Unit.ToSI(stats.Median(x)); v > 0 && !math.IsInf(v, 0) {
-			out[test.Name] = v
-		}
-	}
-	return out
-}
-
 // blanks says which levels are over fewer dice than there are.
 func (l *leveller) blanks(levels []level) string {
 	var names []string

@@ -14,27 +14,27 @@ func epiLine(r *reports.Report) string {
 		return ""
 	}
 	line := fmt.Sprintf("epi       net %s um", between(e.NetThicknessUM))
-	if !e.ThicknessObservable {
-		line += ", not seen by these tests"
+	if b := e.BetweenWafers; b != nil && b.Differ && b.NetThicknessUM.Lower.Valid() {
+		line += fmt.Sprintf(", wafers %.3g to %.3g", float64(b.NetThicknessUM.Lower), float64(b.NetThicknessUM.Upper))
 	}
-	in, out, open := 0, 0, 0
+	if !e.ThicknessObservable {
+		return line + "; these tests do not see it"
+	}
+	in, out, all := 0, 0, 0
 	for i := range r.Wafers {
 		w := r.Wafers[i].Epi
-		switch {
-		case w == nil:
-		case w.ThicknessUM.InSpec == nil:
-			open++
-		case *w.ThicknessUM.InSpec:
+		if w == nil {
+			continue
+		}
+		all++
+		if v := w.ThicknessUM.InSpec; v != nil && *v {
 			in++
-		default:
+		} else if v != nil {
 			out++
 		}
 	}
-	if spec := e.ThicknessUM; (spec.SpecLower.Valid() || spec.SpecUpper.Valid()) && in+out+open > 0 {
-		line += fmt.Sprintf("; thickness out of spec on %d, in on %d of %s", out, in, plural(in+out+open, "wafer"))
-	}
-	if b := e.BetweenWafers; b != nil && b.Differ && b.NetThicknessUM.Lower.Valid() {
-		line += fmt.Sprintf("; wafers differ, %.3g to %.3g", float64(b.NetThicknessUM.Lower), float64(b.NetThicknessUM.Upper))
+	if spec := e.ThicknessUM; spec.SpecLower.Valid() || spec.SpecUpper.Valid() {
+		line += fmt.Sprintf("; as grown in spec on %d of %s, out on %d", in, plural(all, "wafer"), out)
 	}
 	return line
 }
