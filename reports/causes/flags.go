@@ -182,42 +182,50 @@ func (o *observer) find(measures string) int {
 	return slices.IndexFunc(o.c.Tests, func(t Test) bool { return t.Measures == measures })
 }
 
-// pileUp: readings end at a value that is not the tester's known end and is near
-// the test's level.
+// pileUp: the readings of a wafer end at a value that is not the tester's known end
+// and is near the test's level.
 func (o *observer) pileUp(f map[string]bool) {
 	f["pile-up"] = false
 	for t := range o.c.Tests {
 		test := &o.c.Tests[t]
-		if kind(test.Measures) == leakage || len(test.Values) == 0 {
+		if kind(test.Measures) == leakage {
 			continue
 		}
-		lo, hi := math.Inf(1), math.Inf(-1)
-		n := 0
-		for _, v := range test.Values {
-			if !math.IsNaN(v) {
-				lo, hi, n = min(lo, v), max(hi, v), n+1
+		piled := 0
+		for _, s := range o.c.Wafers {
+			if o.pile(t, test.Values[s.Lo:s.Hi]) {
+				piled++
 			}
 		}
-		atLo, atHi := 0, 0
-		for _, v := range test.Values {
-			if v == lo {
-				atLo++
-			}
-			if v == hi {
-				atHi++
-			}
-		}
-		wide := max(6*o.e.Scatter[t], 0.1)
-		near := func(v float64) bool {
-			return v > 0 && math.Abs(math.Log(v/o.majority[t])) < wide
-		}
-		enough := max(10, 0.04*float64(n))
-		if hi > lo && (float64(atHi) > enough && hi != test.Clamp && near(hi) || float64(atLo) > enough && lo != test.Floor && near(lo)) {
-			if !o.coarse(t, n) {
-				f["pile-up"] = true
-			}
+		if piled > 0 && 20*piled >= len(o.c.Wafers) && !o.coarse(t, o.e.Dice) {
+			f["pile-up"] = true
 		}
 	}
+}
+
+// pile says whether one in ten readings is the very highest or lowest of them.
+func (o *observer) pile(t int, values []float64) bool {
+	test := &o.c.Tests[t]
+	lo, hi := math.Inf(1), math.Inf(-1)
+	n := 0
+	wide := max(8*o.e.Scatter[t], 0.25)
+	near := func(v float64) bool { return v > 0 && math.Abs(math.Log(v/o.majority[t])) < wide }
+	for _, v := range values {
+		if !math.IsNaN(v) && near(v) {
+			lo, hi, n = min(lo, v), max(hi, v), n+1
+		}
+	}
+	atLo, atHi := 0, 0
+	for _, v := range values {
+		if v == lo {
+			atLo++
+		}
+		if v == hi {
+			atHi++
+		}
+	}
+	enough := max(8, n/10)
+	return hi > lo && (atHi > enough && hi != test.Clamp || atLo > enough && lo != test.Floor) || n > 20 && hi == lo
 }
 
 // coarse says whether a test reads in so few steps that its ends hold many dice

@@ -114,6 +114,9 @@ func (f *frame) zoneSigma(t int, within float64) float64 {
 // drawn towards none: no model of it is exact.
 func (f *frame) correlate() {
 	n := len(f.tests)
+	if n == 0 {
+		return // no test has a level: single dice, maps and flags are all there is
+	}
 	f.correlation = mat.NewDense(n, n, nil)
 	for i := range n {
 		f.correlation.Set(i, i, 1)

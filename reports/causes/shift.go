@@ -42,6 +42,9 @@ type density struct {
 // independent sigmas extra.
 func (f *frame) newDensity(sigma, extra, centre []float64) *density {
 	n := len(sigma)
+	if n == 0 {
+		return &density{}
+	}
 	s := mat.NewSymDense(n, nil)
 	for i := range n {
 		for j := range i {

@@ -3,6 +3,8 @@ package causes
 import (
 	"math"
 	"slices"
+
+	"kneepoint/stats"
 )
 
 // diceTable is what the single dice of a lot say, ready to be held against causes.
@@ -134,10 +136,11 @@ func (d *diceTable) of(k *Catalogue, e *Entry) float64 {
 type mapTable struct {
 	share    [][]float64 // by group and pattern
 	strength []float64   // by group: maps' worth of evidence, at most four
+	part     []float64   // by group: share of the lot's single dice
 }
 
-func (e *Evidence) mapTable() mapTable {
-	m := mapTable{share: make([][]float64, len(groups)), strength: make([]float64, len(groups))}
+func (e *Evidence) mapTable(k *Catalogue) mapTable {
+	m := mapTable{share: make([][]float64, len(groups)), strength: make([]float64, len(groups)), part: make([]float64, len(groups))}
 	for g := range m.share {
 		m.share[g] = make([]float64, len(patterns))
 		maps := 0.0
@@ -158,16 +161,70 @@ func (e *Evidence) mapTable() mapTable {
 			}
 			maps += weight
 		}
+		weights, n := e.mapWeights(k, g)
 		for w := range e.Wafers {
-			add(e.Wafers[w].Patterns, 1)
+			add(e.Wafers[w].Patterns, weights[w])
 		}
 		add(e.Stacked, 2)
 		for p := range m.share[g] {
-			m.share[g][p] /= max(maps, 1)
+			m.share[g][p] /= max(maps, 1e-9)
 		}
 		m.strength[g] = 4 * -math.Expm1(-maps/4)
+		m.part[g] = n
+	}
+	all := 0.0
+	for _, n := range m.part {
+		all += n
+	}
+	for g := range m.part {
+		m.part[g] /= max(all, 1)
 	}
 	return m
+}
+
+// mapWeights are how much each wafer's map of a group counts: wafers that have
+// more of its dice than the others count most. n is the number of dice.
+func (e *Evidence) mapWeights(k *Catalogue, g int) (weights []float64, n float64) {
+	weights = make([]float64, len(e.Wafers))
+	for w := range e.Wafers {
+		for c, x := range e.Wafers[w].Single {
+			if k.group(int8(c)) == g {
+				weights[w] += x
+			}
+		}
+		n += weights[w]
+	}
+	if len(weights) == 0 {
+		return weights, n
+	}
+	usual, most := 0.8*stats.Median(slices.Clone(weights)), slices.Max(weights)
+	for w := range weights {
+		weights[w] = min(1, max(0.05, (weights[w]-usual)/max(most-usual, 1)))
+	}
+	return weights, n
+}
+
+// healthyMaps are the patterns of a healthy lot's single dice. Common practice, no
+// source.
+var healthyMaps = map[string]float64{"random": 10, "none": 2, "edge-ring": 4, "edge-arc": 0.8, "gradient": 0.6, "annulus": 0.2, "sector": 0.2,
+	"centre": 0.2, "blob": 0.2, "stripe": 0.2, "line": 0.15, "site": 0.1, "shot-repeat": 0.1}
+
+// healthy is the view of the maps when nothing is wrong: all groups count, as far
+// as the single dice are in them.
+func (m *mapTable) healthy() float64 {
+	total := 0.0
+	for _, w := range healthyMaps {
+		total += w
+	}
+	ll := 0.0
+	for g := range groups {
+		for p, share := range m.share[g] {
+			if share > 0 {
+				ll += m.part[g] * m.strength[g] * share * math.Log((healthyMaps[patterns[p]]/total+0.002)*float64(len(patterns)))
+			}
+		}
+	}
+	return ll
 }
 
 // of is the view of the maps for a cause: by group, as far as the excess lies in the
