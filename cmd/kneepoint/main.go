@@ -88,7 +88,7 @@ much yield was lost, where on the wafers and on which tests, and writes a report
 	root.SetFlagErrorFunc(func(c *cobra.Command, err error) error {
 		return hinted{err, fmt.Sprintf("see '%s --help'", c.CommandPath())}
 	})
-	root.AddCommand(newTriage(), newInspect(), newProduct(), newConvert(), newDemo(), newSynth(), newVersion())
+	root.AddCommand(newTriage(), newInspect(), newProduct(), newConvert(), newDemo(), newSynth(), newRehearse(), newVersion())
 	return root
 }
 

@@ -52,6 +52,7 @@ func (s *Summary) Text() string {
 const (
 	calibrationStream = 0x63616c
 	rehearsalStream   = 0x726568
+	addedStream       = 0x616464
 )
 
 // Usual losses: what the causes of made-up lots cost.

@@ -121,8 +121,7 @@ type Cause struct {
 	Direction string  `json:"direction,omitempty"`
 	Variety   string  `json:"variety,omitempty"`
 	Size      float64 `json:"size,omitempty"`
-	// Loss is the share of the lot's dice that it costs, judged from some of them; of
-	// what no cause explains it is not told.
+	// Loss is the share of the lot's dice that it costs.
 	Loss float64 `json:"loss,omitempty"`
 }
 
@@ -139,6 +138,7 @@ func (t *Truth) Names() []string {
 type loss struct {
 	min, max float64
 	physics  string // "" either
+	exact    bool   // count what causes really cost: makes each lot twice
 }
 
 // attempts are so many draws of a cause before the next one stands in for it: other
@@ -151,12 +151,19 @@ func (l *Lot) make(ctx context.Context, m *synth.Maker, cost loss) (*causes.Evid
 	if err != nil {
 		return nil, truth, err
 	}
-	lot, err := memory.Lot(made.Generate(), ingest.Options{Product: made.Product, Workers: 1})
+	whole := made.Generate()
+	if cost.exact {
+		for i := range truth.Causes { // the wanted causes are the last
+			number := len(made.Spec.Causes) - len(truth.Causes) + i
+			truth.Causes[i].Loss = whole.CauseTruth(number).Loss
+		}
+	}
+	lot, err := memory.Lot(whole, ingest.Options{Product: made.Product, Workers: 1})
 	if err != nil {
 		return nil, truth, err
 	}
 	settings := config.DefaultSettings()
-	settings.Workers = 1 // lots run side by side
+	settings.Workers = 1                         // lots run side by side
 	own, err := build.NewDiagnosis(made.Product) // the lot has a die size of its own
 	if err != nil {
 		return nil, truth, err
@@ -172,9 +179,13 @@ func (l *Lot) draw(m *synth.Maker, cost loss) (*synth.Made, Truth, error) {
 	if l.Kind == Single {
 		wanted, others = l.Causes[:1], l.Causes[1:]
 	}
+	least := cost.min
+	if l.Kind == Pair {
+		least = max(least, leastLoss) // a part of a pair that costs less is hardly one
+	}
 	for {
 		for try := range uint64(attempts) {
-			o := synth.RandomOptions{Seed: l.Seed + try, Wafers: l.Wafers, Dice: l.Dice, LossMin: cost.min, LossMax: cost.max, Physics: cost.physics}
+			o := synth.RandomOptions{Seed: l.Seed + try, Wafers: l.Wafers, Dice: l.Dice, LossMin: least, LossMax: cost.max, Physics: cost.physics}
 			for _, id := range wanted {
 				o.Causes = append(o.Causes, synth.Wanted{ID: id})
 			}
@@ -196,7 +207,7 @@ func (l *Lot) draw(m *synth.Maker, cost loss) (*synth.Made, Truth, error) {
 			}
 		}
 		if len(others) == 0 {
-			return nil, truth, fmt.Errorf("made-up lot %d: no cause of the catalogue can cost %.3g %% of the dice with the limits of this product; check limits and baseline", l.Index, 100*cost.min)
+			return nil, truth, fmt.Errorf("made-up lot %d: no cause of the catalogue can cost %.3g %% of the dice with the limits of this product; check limits and baseline", l.Index, 100*least)
 		}
 		truth.Missed = append(truth.Missed, wanted[0])
 		wanted, others = others[:1], others[1:]
