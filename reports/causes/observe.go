@@ -92,8 +92,26 @@ func (o *observer) findMajority() {
 		o.e.Reference[t] = o.c.Tests[t].Median
 		if !(o.e.Reference[t] > 0) {
 			o.e.Reference[t] = o.majority[t]
+		} else if o.nearReference(t) {
+			o.majority[t] = o.e.Reference[t] // most wafers may be ruined
 		}
 	}
+}
+
+// nearReference says whether one die in seven reads about the healthy level.
+func (o *observer) nearReference(t int) bool {
+	step, n, near := steps[kind(o.c.Tests[t].Measures)], 0, 0
+	ref := o.e.Reference[t]
+	for _, v := range o.c.Tests[t].Values {
+		if math.IsNaN(v) {
+			continue
+		}
+		n++
+		if v > ref*math.Exp(step.collapse) && v < ref*math.Exp(step.extreme) {
+			near++
+		}
+	}
+	return 7*near >= n
 }
 
 // median reorders v; NaN when it is empty.
