@@ -3,6 +3,7 @@ package build
 import (
 	"bytes"
 	"context"
+	"fmt"
 	"math"
 	"os"
 	"strings"
@@ -89,73 +90,85 @@ var trials = []trial{
 // data-only intervals. KNEEPOINT_LONG=1 for counts that judge: in the short form one
 // fab stands for all, whose wafers err together, and the bands are wide.
 func TestEpiCoverage(t *testing.T) {
-	fabs, wafers := 1, 25
-	short := os.Getenv("KNEEPOINT_LONG") == ""
-	list := trials
-	if !short {
-		fabs, wafers = 12, 50
-	} else {
-		list = trials[1:3]
+	fabs, wafers, list := 1, 25, trials[1:3]
+	if os.Getenv("KNEEPOINT_LONG") != "" {
+		fabs, wafers, list = 24, 25, trials
 	}
-	var all [2]tally
 	for _, c := range list {
-		for _, pull := range []float64{0, 3} {
-			var thick, dope tally
-			regimes := map[string]int{}
-			for n := range fabs {
-				f, p := fabOf(c.device, uint64(n)+uint64(pull), c.tests...)
-				if n > 0 {
-					p = madeProduct(c.device, c.tests...)
-					f = newFab(p, uint64(100*n+7), true)
-				}
-				prior := specPrior(p)
-				var made []madeWafer
-				for range wafers {
-					made = append(made, f.wafer(f.truth(prior, pull), true))
-				}
-				lot := f.lot("MADE", 9, p, made...)
-				rep := inferred(t, lot, p)
-				d, _ := deviceModel(p, nil)
-				for i, w := range rep.Wafers {
-					if w.Epi == nil {
-						t.Fatalf("%s %s: %s", c.device, c.set, w.EpiWhy)
-					}
-					e, at := w.Epi, &made[i].truth
-					thick.add(f.net(at)*d.NetThickness(), e.NetThicknessUM, e.DataOnly.NetThicknessUM, e.ThicknessShare, e.Note, "net thickness")
-					dope.add(math.Exp(at[junction.EpiDoping])*d.Device.EpiDopingCM3, e.DopingCM3, e.DataOnly.DopingCM3, e.DopingShare, e.Note, "doping")
-					regimes[e.Regime]++
-				}
+		t.Run(c.device+" "+c.set, func(t *testing.T) { c.try(t, fabs, wafers) })
+	}
+}
+
+func (c trial) try(t *testing.T, fabs, wafers int) {
+	// By truths from the prior or far off, then by quantity.
+	var tallies [2][2]tally
+	regimes := [2]map[string]int{{}, {}}
+	byFab := ""
+	for n := range fabs {
+		f, p := fabOf(c.device, 1, c.tests...)
+		if n > 0 {
+			p = madeProduct(c.device, c.tests...)
+			f = newFab(p, uint64(100*n+7), true)
+		}
+		for far, pull := range []float64{0, 3} {
+			var made []madeWafer
+			for range wafers {
+				made = append(made, f.wafer(f.truth(specPrior(p), pull), true))
 			}
-			for k, y := range []*tally{&thick, &dope} {
-				name := [...]string{"net thickness", "doping"}[k]
-				cover, data, miss := share(y.covered, y.n), share(y.seenCovered, y.seen), stats.Median(y.errors)
-				t.Logf("%-4s %-34s pull %.0f %-13s n %4d covered %.3f, observable %4d, data alone cover %.3f, median error %.4f %v", c.device, c.set, pull, name, y.n, float64(cover), y.seen, float64(data), miss, regimes)
-				if y.silent > 0 || y.narrow > 0 {
-					t.Errorf("%s %s %s: %d not observable but not said or with a point, %d narrower than the prior", c.device, c.set, name, y.silent, y.narrow)
-				}
-				slack := 0.0
-				if short { // wafers of one fab err together: as few as five to judge by
-					slack = 3 * math.Sqrt(0.05*0.95/5)
-				} else {
-					slack = 3 * math.Sqrt(0.05*0.95/float64(y.n)*4)
-				}
-				if pull == 0 {
-					all[k].n += y.n
-					all[k].covered += y.covered
-					if cover := float64(cover); cover < 0.95-slack || cover > 0.98+slack {
-						t.Errorf("%s %s: 95 %% interval of %s covers %.3f of %d", c.device, c.set, name, cover, y.n)
-					}
-					if c.enough && (y.seen < y.n*95/100 || miss > 0.02*(1+2*slack)) {
-						t.Errorf("%s %s: %s observable on %d of %d, median error %.4f", c.device, c.set, name, y.seen, y.n, miss)
-					}
-				} else if y.seen >= 10 && float64(data) < 0.95-slack {
-					t.Errorf("%s %s: data alone cover %s in %.3f of %d", c.device, c.set, name, float64(data), y.seen)
-				}
+			before := tallies[far][0].covered
+			c.one(t, f, p, made, &tallies[far], regimes[far])
+			if pull == 0 {
+				byFab += fmt.Sprintf(" %d", tallies[far][0].covered-before)
 			}
 		}
 	}
-	for k, y := range all {
-		t.Logf("%s: covered %.3f of %d in all", [...]string{"net thickness", "doping"}[k], float64(share(y.covered, y.n)), y.n)
+	t.Logf("net thickness covered of %d wafers by fab:%s", wafers, byFab)
+	for far := range tallies {
+		for k := range tallies[far] {
+			y, name := &tallies[far][k], [...]string{"net thickness", "doping"}[k]
+			t.Logf("%s: %s n %4d covered %.3f, observable %4d, data alone cover %.3f, median error %.4f %v", [...]string{"from the prior", "three sigmas off"}[far],
+				name, y.n, float64(share(y.covered, y.n)), y.seen, float64(share(y.seenCovered, y.seen)), stats.Median(y.errors), regimes[far])
+			c.judge(t, name, y, far == 1, fabs)
+		}
+	}
+}
+
+// one infers a lot and tallies its wafers.
+func (c trial) one(t *testing.T, f *fab, p *config.Product, made []madeWafer, y *[2]tally, regimes map[string]int) {
+	rep := inferred(t, f.lot("MADE", 9, p, made...), p)
+	d, why := deviceModel(p, nil)
+	if d == nil {
+		t.Fatal(why)
+	}
+	for i, w := range rep.Wafers {
+		if w.Epi == nil {
+			t.Fatalf("wafer %s: %s", w.ID, w.EpiWhy)
+		}
+		e, at := w.Epi, &made[i].truth
+		y[0].add(f.net(at)*d.NetThickness(), e.NetThicknessUM, e.DataOnly.NetThicknessUM, e.ThicknessShare, e.Note, "net thickness")
+		y[1].add(math.Exp(at[junction.EpiDoping])*d.Device.EpiDopingCM3, e.DopingCM3, e.DataOnly.DopingCM3, e.DopingShare, e.Note, "doping")
+		regimes[e.Regime]++
+	}
+}
+
+// judge holds the promises. Wafers of a fab err together, so that about four of each
+// count for one another.
+func (c trial) judge(t *testing.T, name string, y *tally, far bool, fabs int) {
+	if y.silent > 0 || y.narrow > 0 {
+		t.Errorf("%s: %d not observable but not said or with a point, %d narrower than the prior", name, y.silent, y.narrow)
+	}
+	slack := 3 * math.Sqrt(0.05*0.95/float64(5*fabs))
+	if far {
+		if data := float64(y.seenCovered) / float64(y.seen); y.seen >= 10 && data < 0.95-slack {
+			t.Errorf("%s three sigmas off: data alone cover %.3f of %d", name, data, y.seen)
+		}
+		return
+	}
+	if cover := float64(y.covered) / float64(y.n); cover < 0.95-slack || cover > 0.98+slack {
+		t.Errorf("95 %% interval of %s covers %.3f of %d", name, cover, y.n)
+	}
+	if miss := stats.Median(y.errors); c.enough && (y.seen < y.n*95/100 || miss > 0.02*(1+2*slack)) {
+		t.Errorf("%s: observable on %d of %d, median error %.4f", name, y.seen, y.n, miss)
 	}
 }
 
