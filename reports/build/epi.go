@@ -254,19 +254,19 @@ func epiWords(d *device, p *junction.Posterior) []string {
 	return out
 }
 
-// paragraph joins sentences.
+// paragraph joins sentences. A first word that is a name or a symbol keeps its case.
 func paragraph(words []string) string {
 	var out []string
 	for _, s := range words {
-		if s = strings.TrimSpace(s); s != "" {
-			out = append(out, strings.ToUpper(s[:1])+s[1:]+".")
+		if s = strings.TrimSpace(s); s == "" {
+			continue
 		}
+		if first, _, _ := strings.Cut(s, " "); first == strings.ToLower(first) {
+			s = strings.ToUpper(s[:1]) + s[1:]
+		}
+		out = append(out, s+".")
 	}
-	text := strings.Join(out, " ")
-	for _, name := range []string{"BVceo", "hFE"} { // symbols keep their case
-		text = strings.ReplaceAll(text, strings.ToUpper(name[:1])+name[1:], name)
-	}
-	return text
+	return strings.Join(out, " ")
 }
 
 // fewestForGrown is the fewest wafers that make a typical one.

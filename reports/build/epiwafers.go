@@ -277,6 +277,9 @@ func (e *epiwork) zonesOf(i int, c *dieColumns) {
 			continue
 		}
 		z := e.geo.Ring(x[row], y[row], len(epiZones))
+		if z < 0 {
+			continue
+		}
 		thick[z], dope[z] = append(thick[z], c.thickness[k]), append(dope[z], c.doping[k])
 	}
 	r := e.rep.Wafers[i].Epi
