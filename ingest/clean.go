@@ -101,7 +101,6 @@ func (d *draft) oddCells(test int, counts map[status]int) []Finding {
 		remedy    string
 	}{
 		{cellBad, Warning, "unreadable-value", "cell is no number", "cells are no numbers", "correct the cells"},
-		{cellInf, Warning, "not-finite", "value is infinite", "values are infinite", "find out what the tester wrote there"},
 		{cellInvalid, Warning, "invalid-result", "result is flagged by the tester as not to be used", "results are flagged by the tester as not to be used",
 			"look at the tester's alarms for this test"},
 		{cellMissing, Info, "missing-word", "cell holds a word for no reading", "cells hold a word for no reading", ""},

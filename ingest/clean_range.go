@@ -19,6 +19,8 @@ import (
 const (
 	cellUnder status = cellInvalid + 1 // a word for "under range", or -inf
 	cellBound status = cellInvalid + 2 // a number with a comparison sign
+	// cellThousands is a number such as "2,500" in a file whose columns commas part.
+	cellThousands status = cellInvalid + 3
 )
 
 // A bound is kept as a NaN until cleaning: bits that no other NaN here has,

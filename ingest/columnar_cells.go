@@ -8,13 +8,16 @@ import (
 
 	"github.com/apache/arrow/go/v17/arrow"
 	"github.com/apache/arrow/go/v17/arrow/array"
+
+	"kneepoint/config"
 )
 
 // cells reads one Arrow array as numbers, whole numbers, flags or texts.
 type cells struct {
-	a   arrow.Array
-	at  int // row of the file of the first cell
-	odd map[status]*oddCells
+	a    arrow.Array
+	at   int         // row of the file of the first cell
+	unit config.Unit // of the column, for cells that give their own
+	odd  map[status]*oddCells
 }
 
 func (k *cells) count(st status, i int, text string) {
@@ -29,7 +32,7 @@ func (k *cells) count(st status, i int, text string) {
 	o.n++
 }
 
-// floats reads numbers. Infinite ones and texts that are no numbers are odd; a
+// floats reads numbers. Infinite ones and texts that are bounds or no numbers are odd; a
 // float32 is read as its shortest decimal, see readSTDF.
 func (k *cells) floats(to []float64) error {
 	switch a := k.a.(type) {
@@ -64,17 +67,27 @@ func (k *cells) floats(to []float64) error {
 	return nil
 }
 
-// infinite marks infinite values, and makes all NaN the same.
+// infinite makes bounds of infinite values, as text has them, and makes all NaN
+// the same.
 func (k *cells) infinite(to []float64) {
 	for i, v := range to {
 		if v-v == 0 {
 			continue
 		}
 		if to[i] = math.NaN(); math.IsInf(v, 0) {
-			k.count(cellInf, i, fmt.Sprint(v))
-			to[i] = oddNaN[cellInf]
+			st := infinityIs(v)
+			k.count(st, i, fmt.Sprint(v))
+			to[i] = oddNaN[st]
 		}
 	}
+}
+
+// infinityIs tells what an infinite reading says: it is beyond the range.
+func infinityIs(v float64) status {
+	if v < 0 {
+		return cellUnder
+	}
+	return cellOver
 }
 
 func (k *cells) otherFloats(to []float64) error {
@@ -95,9 +108,14 @@ func (k *cells) otherFloats(to []float64) error {
 			}
 		}
 		v, st := parseNumber([]byte(t), '.')
+		if st == cellBad {
+			v, st = quantity(t, '.', k.unit)
+		}
 		if st != cellNumber && st != cellEmpty {
 			k.count(st, i, t)
-			v = oddNaN[st]
+			if st != cellBound {
+				v = oddNaN[st]
+			}
 		}
 		to[i] = v
 	}
@@ -121,7 +139,7 @@ func (k *cells) ints(to []int32) error {
 	if err := k.floats(v); err != nil {
 		return err
 	}
-	for _, st := range []status{cellMissing, cellOver, cellInf} {
+	for _, st := range []status{cellMissing, cellOver, cellUnder, cellBound} {
 		delete(k.odd, st)
 	}
 	for i, x := range v {

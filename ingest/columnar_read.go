@@ -312,6 +312,9 @@ func (t *tableReading) column(i int, a arrow.Array, at int) error {
 		return errors.New("there are more rows than the file says")
 	}
 	k := cells{a: a, at: at}
+	if f.kind == valueField && !t.layout.long {
+		k.unit = t.layout.columns[f.slot].unit
+	}
 	var err error
 	switch f.kind {
 	case valueField:

@@ -288,6 +288,7 @@ func (t *readings) fileFindings(file int) {
 		return
 	}
 	t.limitFindings(file)
+	t.thousandsFinding(file)
 	for i, fd := range f.layout.fields {
 		c := f.odd[oddKey{field: i, kind: cellBad}]
 		if fd.kind != intField && fd.kind != passField || c.n == 0 {
@@ -299,6 +300,23 @@ func (t *readings) fileFindings(file int) {
 		}
 		t.note(file, Warning, "unreadable-value", fmt.Sprintf("%s:%d: column %s: %d %s no %s, first %s; taken as missing", name, c.first.line, f.layout.names[i], c.n,
 			plural(c.n, "cell is", "cells are"), kind, quote(c.first.text)), "correct the cells, or name the right column under columns in the product file", c.n)
+	}
+}
+
+// thousandsFinding tells of numbers whose comma was taken to part thousands.
+func (t *readings) thousandsFinding(file int) {
+	f, n, first := t.files[file], 0, place{}
+	for k, o := range f.odd { // sums and the least line, the order is all one
+		if k.kind != cellThousands {
+			continue
+		}
+		if n += o.n; first.line == 0 || o.first.line < first.line {
+			first = o.first
+		}
+	}
+	if n > 0 {
+		t.note(file, Info, "thousands", fmt.Sprintf("%s:%d: %d %s such as %s %s taken as thousands, as commas part the columns of this file and points the fractions", f.input.File,
+			first.line, n, plural(n, "cell", "cells"), quote(first.text), plural(n, "is", "are")), "write numbers without a comma if these are fractions", n)
 	}
 }
 

@@ -88,7 +88,7 @@ func blank(fields [][]byte) bool {
 
 // Missing values tell by the bits of their NaN why they are missing, until
 // cleaning has counted them by test.
-var oddNaN = [...]float64{cellMissing: nanWith(1), cellOver: nanWith(2), cellInf: nanWith(3), cellBad: nanWith(4), cellInvalid: nanWith(5), cellUnder: nanWith(6), cellBound: nanWith(4)}
+var oddNaN = [...]float64{cellMissing: nanWith(1), cellOver: nanWith(2), cellBad: nanWith(4), cellInvalid: nanWith(5), cellUnder: nanWith(6), cellBound: nanWith(4)}
 
 const oddNaNBits = 0x7ff8_0000_0000_0010
 
@@ -103,7 +103,7 @@ func nanStatus(v float64) status {
 		}
 		return cellEmpty
 	}
-	return [16]status{1: cellMissing, 2: cellOver, 3: cellInf, 4: cellBad, 5: cellInvalid, 6: cellUnder}[bits>>8&0xf]
+	return [16]status{1: cellMissing, 2: cellOver, 4: cellBad, 5: cellInvalid, 6: cellUnder}[bits>>8&0xf]
 }
 
 // store puts one cell of the full reader into row c.n.
@@ -153,7 +153,7 @@ func (p *parser) store(c *chunk, k int, cell []byte, here func() place) {
 			v, st = p.quantity(k, string(t))
 		}
 		if st != cellNumber && st != cellEmpty {
-			if st != cellBound {
+			if st != cellBound && st != cellThousands {
 				v = oddNaN[st]
 			}
 			count(st)
@@ -165,12 +165,8 @@ func (p *parser) store(c *chunk, k int, cell []byte, here func() place) {
 // quantity reads a number with thousands apart, or with a unit behind it, which
 // is converted to the unit of the column or of the row.
 func (p *parser) quantity(k int, t string) (float64, status) {
-	v, text, ok := splitQuantity(t, p.l.decimal)
-	if !ok || text == "" {
-		if ok {
-			return v, cellNumber
-		}
-		return math.NaN(), cellBad
+	if v, ok := p.l.thousands(t); ok {
+		return v, cellThousands
 	}
 	unit := p.units[k]
 	if p.l.long {
@@ -178,6 +174,18 @@ func (p *parser) quantity(k int, t string) (float64, status) {
 		if p.unit == "" {
 			unit = config.Unit{}
 		}
+	}
+	return quantity(t, p.l.decimal, unit)
+}
+
+// quantity reads a number with thousands apart, or with a unit behind it.
+func quantity(t string, decimal byte, unit config.Unit) (float64, status) {
+	v, text, ok := splitQuantity(t, decimal)
+	if !ok || text == "" {
+		if ok {
+			return v, cellNumber
+		}
+		return math.NaN(), cellBad
 	}
 	u, err := config.ParseUnit(text)
 	if err != nil || !unit.Given() || !u.Compatible(unit) {

@@ -118,7 +118,8 @@ func (l *layout) judge(roles []string, product *config.Product) {
 					zeros++
 				}
 			case cellBad:
-				if _, ok := parseGrouped(c); ok && roles[i] == "" {
+				_, ok := parseGrouped(c)
+				if _, thousands := l.thousands(c); (ok || thousands) && roles[i] == "" {
 					numbers++
 				} else {
 					texts++

@@ -2,6 +2,7 @@ package ingest
 
 import (
 	"fmt"
+	"slices"
 	"strings"
 
 	"kneepoint/config"
@@ -208,7 +209,49 @@ func (l *layout) assignRoles(product *config.Product) ([]string, error) {
 			l.findRole(role, roles, taken, isTest)
 		}
 	}
+	l.pairCoordinates(roles, product)
 	return roles, nil
+}
+
+// pairCoordinates gives x and y to two columns of the same kind: DIE_X with X and Y
+// beside it, and no DIE_Y, is something else.
+func (l *layout) pairCoordinates(roles []string, product *config.Product) {
+	x, y := slices.Index(roles, "x"), slices.Index(roles, "y")
+	if x < 0 || y < 0 || product != nil && (product.Columns["x"] != "" || product.Columns["y"] != "") || otherAxis(plainName(l.names[x])) == plainName(l.names[y]) {
+		return
+	}
+	find := func(role, name string) int {
+		for i := range roles {
+			if (roles[i] == role || roles[i] == secondColumn) && plainName(l.names[i]) == name {
+				return i
+			}
+		}
+		return -1
+	}
+	for _, n := range roleNames["x"] {
+		i, k := find("x", n), find("y", otherAxis(n))
+		if i < 0 || k < 0 {
+			continue
+		}
+		l.note(Info, "column-not-understood", fmt.Sprintf("columns %s and %s are no pair; %s and %s are taken for the die's x and y", quote(l.names[x]), quote(l.names[y]), quote(l.names[i]), quote(l.names[k])), "")
+		roles[x], roles[y] = secondColumn, secondColumn
+		roles[i], roles[k] = "x", "y"
+		return
+	}
+}
+
+// otherAxis gives the plain name that goes with that of an x column.
+func otherAxis(x string) string {
+	for _, p := range [][2]string{{"column", "row"}, {"col", "row"}, {"spalte", "zeile"}} {
+		if strings.Contains(x, p[0]) {
+			return strings.Replace(x, p[0], p[1], 1)
+		}
+	}
+	if rest, ok := strings.CutPrefix(x, "x"); ok {
+		return "y" + rest
+	}
+	rest, _ := strings.CutSuffix(x, "x")
+	return rest + "y"
 }
 
 // secondColumn stands for the role of a column that says again what another
@@ -268,13 +311,15 @@ func (l *layout) findDecimal() {
 			switch {
 			case strings.IndexByte(c, '.') >= 0 && isDecimal([]byte(c), '.'):
 				points++
+			case l.sep == ',' && oneComma.MatchString(c):
+				// thousands, unless another cell shows that commas part fractions
 			case strings.IndexByte(c, ',') >= 0 && isDecimal([]byte(c), ','):
 				commas++
 			}
 		}
 	}
 	if commas > points {
-		l.decimal = ','
+		l.decimal = ',' // also for "2,500", as one file writes numbers one way
 	}
 	l.decimalSeen = points+commas > 0
 }

@@ -14,7 +14,7 @@ const (
 	cellOdd            // not a plain number: the full reader decides
 	cellMissing        // a word for "no reading": NA, NaN, -
 	cellOver           // a word for "out of range": OVL, OVERFLOW
-	cellInf            // infinite in a file of numbers; in text it is cellOver or cellUnder
+	cellInf            // too large for a number; parseNumber makes it cellOver or cellUnder
 	cellBad            // text that means nothing in a column of numbers
 )
 

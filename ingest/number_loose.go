@@ -37,6 +37,21 @@ func parseGrouped(t string) (float64, bool) {
 	return v, st == cellNumber
 }
 
+// oneComma matches what may be thousands or a fraction; a zero in front would be
+// no thousands.
+var oneComma = regexp.MustCompile(`^[+-]?[1-9][0-9]{0,2},[0-9]{3}$`)
+
+// thousands reads "2,500" where commas part the columns, so that whoever wrote the
+// file put it between quotes: with points for fractions, it is two thousand five
+// hundred. (In a file with another separator a comma parts the fraction.)
+func (l *layout) thousands(t string) (float64, bool) {
+	if l.sep != ',' || l.decimal != '.' || !oneComma.MatchString(t) {
+		return 0, false
+	}
+	v, st := convert([]byte(strings.ReplaceAll(t, ",", "")), '.')
+	return v, st == cellNumber
+}
+
 // splitQuantity parts "1.2 nA" into number and unit; ok is false where there is
 // no number in front. The text of the unit may be empty.
 func splitQuantity(t string, decimal byte) (v float64, unit string, ok bool) {

@@ -195,7 +195,7 @@ func (s *stdfReading) result(row int, r *stdf.Result) {
 	case !stdf.Usable(r.Flag, r.Parm):
 		v = oddNaN[cellInvalid]
 	case math.IsInf(v, 0):
-		v = oddNaN[cellInf]
+		v = oddNaN[infinityIs(v)]
 	case v != v:
 		return
 	}
