@@ -418,3 +418,41 @@ func (o *observer) reasonFlag(f map[string]bool) {
 	}
 	f["fails-without-reason"] = without > 5 && 5*without > failing && float64(without) > 0.01*float64(o.e.Dice)
 }
+
+// scaledFlag: the typical wafer is off in one test alone, and by the same factor on
+// every wafer and zone, as no process does it.
+func (f *frame) scaledFlag() (raised, known bool) {
+	if c := f.e.cols; c.Baseline == "lot majority" || c.Baseline == "none" || len(f.tests) < 4 {
+		return false, false
+	}
+	off := -1
+	for i, t := range f.tests {
+		switch z := math.Abs(f.e.Lot[t]) / f.lot[i]; {
+		case z > 5 && off >= 0:
+			return false, true // two tests are off
+		case z > 5:
+			off = i
+		}
+	}
+	if off < 0 {
+		return false, true
+	}
+	t := f.tests[off]
+	for i, u := range f.tests {
+		if i != off && math.Abs(f.e.Lot[u])/f.lot[i] > 2.5 {
+			return false, true
+		}
+	}
+	var levels, zones []float64
+	for w := range f.e.Wafers {
+		levels = append(levels, f.e.Wafers[w].Level[t])
+		for _, z := range f.e.Wafers[w].Zone {
+			if z != nil {
+				zones = append(zones, z[t])
+			}
+		}
+	}
+	const even = 0.12 // of the shift: what wafers and zones of a real one differ by at least
+	shift := math.Abs(f.e.Lot[t])
+	return stats.MADSigma(present(levels)) < even*shift && stats.MADSigma(present(zones)) < even*shift, true
+}

@@ -33,6 +33,9 @@ func Observe(ctx context.Context, c *Columns, k *Catalogue) (*Evidence, error) {
 	}
 	o.typical()
 	e.Flags = o.flags()
+	if raised, known := newFrame(e, k).scaledFlag(); known {
+		e.Flags["one-test-scaled"] = raised
+	}
 	e.Stacked = o.stacked()
 	return e, ctx.Err()
 }

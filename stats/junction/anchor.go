@@ -67,7 +67,7 @@ func (m *Model) anchorGain() {
 	part := func(t *Test) float64 { return x.recombination() / math.Sqrt(is*t.Current) }
 	if low.Current*10 <= high.Current && low.Voltage == high.Voltage {
 		scale := (1/low.Baseline.Median - 1/high.Baseline.Median) / (part(low) - part(high))
-		m.nat.recombine = math.Min(math.Max(scale, 0.02), 50)
+		m.nat.recombine *= math.Min(math.Max(scale, 0.02), 50) // part has the present one in it
 		if scale < 0.02 || scale > 50 {
 			m.say("hFE of %.4g at %.3g A against %.4g at %.3g A is no usual fall towards low current; recombination is taken at its limit",
 				low.Baseline.Median, low.Current, high.Baseline.Median, high.Current)
