@@ -24,6 +24,9 @@ const (
 	calibrateAgain = "again"
 )
 
+// calibration is how many lots a calibration makes, and of which kind; tests make few.
+var calibration rehearse.Options
+
 // bindCalibrate gives a command the flag that says where the weights of causes come
 // from.
 func bindCalibrate(c *cobra.Command, mode *string) {
@@ -61,7 +64,7 @@ func newDiagnosis(c *cobra.Command, p *config.Product, mode string) (*build.Diag
 			return rehearse.Diagnosis(p, known.Weights, known.Summary.Text())
 		}
 	}
-	w, summary, err := calibrate(c, p, rehearse.Options{})
+	w, summary, err := calibrate(c, p, calibration)
 	var bad *config.FileError
 	switch {
 	case errors.Is(err, context.Canceled) || errors.As(err, &bad):

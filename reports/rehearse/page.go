@@ -144,7 +144,7 @@ func (r *Result) sizes() template.HTML {
 		}
 		fmt.Fprintf(&s, `<circle class="%s" cx="%.1f" cy="%.1f" r="4.5"><title>%s</title></circle>`, class, x(m.Loss), y, template.HTMLEscapeString(m.text()))
 	}
-	s.text("label mid", left+width/2, height-6, "loss of the lot's dice at which it is named first nine times in ten (open: at or beyond the end)")
+	s.text("label mid", left+width/2, height-6, "loss of the lot's dice; open: at or beyond the end of what was tried")
 	s.WriteString("</svg>")
 	return template.HTML(s.String()) //nolint // numbers and escaped names alone
 }

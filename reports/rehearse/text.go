@@ -88,8 +88,8 @@ func (r *Result) confusionText(b *strings.Builder) {
 
 // sizesText is the account by cause with the smallest size that is found.
 func (r *Result) sizesText(b *strings.Builder) {
-	fmt.Fprintf(b, "%-23s%-28s%s\n", "", "named first, 3 % or more", "loss at which it is named first")
-	fmt.Fprintf(b, "%-23s%-28s%s\n", "", "share (95 %)     within", "nine times in ten (95 %)")
+	fmt.Fprintf(b, "%-23s%-28s%s\n", "", "named first, 3 % or more", "loss from which it is named")
+	fmt.Fprintf(b, "%-23s%-28s%s\n", "", "share (95 %)     within", "first 9 times in 10 (95 %)")
 	for i := range r.Causes {
 		c := &r.Causes[i]
 		first, within := "-", "-"
