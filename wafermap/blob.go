@@ -58,7 +58,7 @@ func (f *field) findBlob() *pattern {
 	return best
 }
 
-// scanDiscs offers all discs of one radius with centres two fifths of it apart.
+// scanDiscs offers all discs of one radius with centres half of it apart.
 func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64) bool) {
 	dv := math.Abs(f.dv)
 	type span struct{ j, from, to int }
@@ -73,7 +73,7 @@ func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64)
 	}
 	// no window holds more dice than this, so none costs less
 	least := max(0, math.Log(f.total.n/(widest*float64(f.fullest))))
-	stepX, stepY := max(1, int(0.4*r/f.du)), max(1, int(0.4*r/dv))
+	stepX, stepY := max(1, int(0.5*r/f.du+0.5)), max(1, int(0.5*r/dv+0.5))
 	for y := stepY / 2; y < f.lines; y += stepY {
 		cv := f.v0 + float64(y)*f.dv
 		for x := stepX / 2; x < f.cols; x += stepX {

@@ -46,6 +46,12 @@ func (f *field) judge(p *pattern) {
 	p.net = p.gain - f.price(p)
 }
 
+// needed is the gain less cost from which a shape is told.
+func (f *field) needed(s shape) float64 {
+	g := chance(s, f.total.o)
+	return g.level - g.scale*math.Log(-math.Log1p(-falseAlarm*allowance[s]))
+}
+
 // price is the gain that a pattern needs to be told from chance at about even odds.
 func (f *field) price(p *pattern) float64 {
 	g := chance(p.shape, f.total.o)

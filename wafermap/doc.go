@@ -30,10 +30,37 @@
 // in standard deviations (z), and how often chance does as much (p).
 // Autocorrelation asks the same of a measured value (Moran's I, Geary's C).
 //
-// Clusters are groups of fails that hang together neighbour by neighbour;
-// DensityClusters groups by local density and forgives gaps. A Stack lays the
-// wafers of a lot on each other and counts, for each die position, on how many
-// wafers it fails. ZernikeFit is the smooth shape of a value over the disc.
+// FailSpots, HotSpots and LocalMoran say which dice do so.
+//
+// Clusters are groups of fails that hang together neighbour by neighbour (components);
+// DensityClusters groups by local density and forgives gaps. A Scan looks for the circle or
+// ellipse with the most surplus of fails and compares it with random placements of as many.
+// A component says how fails hang together, a scan whether that is more than chance.
+//
+// A Surface is the smooth shape of a value over the disc, in Zernike terms; its Residual is
+// what is left, a map again. A SurfaceBasis is what fits to several values of the same dice
+// share, and the fast way; ZernikeFit is the plain least-squares fit.
+//
+// A Signature is a pattern of fails with a name: an edge ring, a line, a repeat of the
+// exposure's shot and so on. It has an Outline, which says where it lies, a Strength and Loss
+// (the shares of fails and of dice that it costs) and a PValue (how often a wafer without
+// patterns shows as much). A wafer has several signatures, or one that says there is nothing:
+// "random" (fails without structure) or "none" (too few fails to say so).
+//
+// A Stack lays the wafers of a lot on each other and counts, for each die position, on how
+// many wafers it fails. A Repeater is a position that fails on more of them than chance
+// would have it. Groups sort the wafers of a lot by how alike their maps are. A Picture is a
+// painted map as PNG, with Swatches for its legend.
+//
+// A typical use, wafer by wafer:
+//
+//	geometry := FindGeometry(x, y, known) // once for the lot, of all its dice
+//	grid := NewGrid(x, y)                 // of one wafer
+//	joins := grid.JoinCount(fail, Queen)
+//	found := Signatures(SignatureInput{Grid: grid, Geometry: geometry, Fail: fail, Site: site, Order: touchdown})
+//	for _, s := range found {
+//		fmt.Println(s.Kind, s.Text(geometry.Unit), s.Loss, s.PValue)
+//	}
 //
 // # The rules
 //

@@ -2,6 +2,7 @@ package wafermap_test
 
 import (
 	"fmt"
+	"math/rand/v2"
 
 	"kneepoint/wafermap"
 )
@@ -67,4 +68,30 @@ func ExampleFindGeometry() {
 	// Output:
 	// centre (-0.5, -0.5), 100 mm
 	// ring of die (50, 0): 3
+}
+
+// A scratch and an edge ring among fails that have nothing to do with each other.
+func ExampleSignatures() {
+	random := rand.New(rand.NewPCG(1, 2))
+	var x, y []int32
+	var fail []bool
+	for j := int32(-40); j <= 40; j++ {
+		for i := int32(-40); i <= 40; i++ {
+			r2 := i*i + j*j
+			if r2 > 40*40 {
+				continue
+			}
+			scattered, ring := random.Float64() < 0.03, r2 > 37*37 && random.Float64() < 0.3
+			scratch := i-2*j >= 5 && i-2*j <= 7 && i > -15 && i < 25
+			x, y, fail = append(x, i), append(y, j), append(fail, scattered || ring || scratch)
+		}
+	}
+	geometry := wafermap.FindGeometry(x, y, wafermap.Known{DieWidthMM: 1.2, DieHeightMM: 1.2})
+	found := wafermap.Signatures(wafermap.SignatureInput{Grid: wafermap.NewGrid(x, y), Geometry: geometry, Fail: fail})
+	for _, s := range found {
+		fmt.Printf("%s: %s, %.1f %% of the dice\n", s.Kind, s.Text(geometry.Unit), 100*s.Loss)
+	}
+	// Output:
+	// edge-ring: from a radius of 44.3 mm out to the edge, 4.2 % of the dice
+	// line: from (-16.8, -12) to (28.8, 10.8) mm, 2.1 mm wide, 1.1 % of the dice
 }

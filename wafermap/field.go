@@ -33,6 +33,7 @@ type field struct {
 
 	// what the last full search for the dear shapes came up with
 	starts      []spotlight
+	crowded     bool // lines that might be told found no place among the starts
 	periods     []spotlight
 	keptStarts  []spotlight // starts and periods of patterns that became part of a model
 	keptPeriods []spotlight

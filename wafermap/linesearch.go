@@ -55,6 +55,9 @@ func (f *field) lineStarts() []spotlight {
 	for _, turned := range []bool{false, true} {
 		for _, thick := range []int{2, 4} {
 			s := lineSearch{f: f, turned: turned, block: 1, thick: thick, list: &straight}
+			if thick == 4 && block > 1 {
+				s.block, s.thick = 2, 2
+			}
 			s.pack()
 			s.run(0)
 		}
@@ -66,6 +69,7 @@ func (f *field) lineStarts() []spotlight {
 			}
 		}
 	}
+	f.crowded = max(straight.floor(), bowed.floor()) >= f.needed(shapeLine)
 	return append(straight.items, bowed.items...)
 }
 

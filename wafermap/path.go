@@ -136,6 +136,31 @@ func (l lineFit) value(x []float64) float64 {
 	return l.f.gain(l.band.sweep(&p)) - l.f.lineCost(x[5])
 }
 
+// slide moves the ends of a line along itself, which steps in one coordinate cannot.
+func (l lineFit) slide(x []float64, top float64) float64 {
+	try := make([]float64, len(x))
+	for step := math.Ceil((x[1] - x[0]) / 4); step >= 1; step = math.Floor(step / 2) {
+		for moved := true; moved; {
+			moved = false
+			for _, d := range [4][2]float64{{-step, 0}, {0, step}, {step, 0}, {0, -step}} {
+				p := l.path(x)
+				copy(try, x)
+				try[0], try[1] = math.Round(x[0]+d[0]), math.Round(x[1]+d[1])
+				if try[1] <= try[0] {
+					continue
+				}
+				try[2], try[3] = p.at(try[0]), p.at(try[1])
+				try[4] *= sq((try[1] - try[0]) / (x[1] - x[0]))
+				if v := l.value(try); v > top {
+					top, moved = v, true
+					copy(x, try)
+				}
+			}
+		}
+	}
+	return top
+}
+
 // bow fits a line from a start.
 func (f *field) bow(it spotlight) (x []float64, top float64) {
 	l := lineFit{f, f.band(it.x[0] == 1), it.x[0] == 1}
@@ -143,13 +168,13 @@ func (f *field) bow(it spotlight) (x []float64, top float64) {
 	x = []float64{max(0, mid-(length-1)/2), min(float64(l.band.long-1), mid+(length-1)/2), 0, 0, bow, 2}
 	x[2], x[3] = across-slope*(mid-x[0])-bow, across+slope*(x[1]-mid)-bow
 	step := []float64{max(1, length/5), max(1, length/5), max(1, length/16), max(1, length/16), max(0.5, length/16), 1}
-	return x, climb(x, step, 5, l.value)
+	return x, l.slide(x, climb(x, step, 5, l.value))
 }
 
 func (f *field) fitLine(it spotlight) *pattern {
 	l := lineFit{f, f.band(it.x[0] == 1), it.x[0] == 1}
 	x, top := f.bow(it)
-	polish(x, top, l.value)
+	l.slide(x, polish(x, top, l.value))
 	p := &pattern{shape: shapeLine, line: l.path(x), start: it}
 	p.tally = l.band.sweep(&p.line)
 	p.gain, p.cost = f.gain(p.tally), f.lineCost(x[5])

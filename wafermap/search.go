@@ -113,7 +113,7 @@ func (f *field) rank(found []*explained, c []*pattern) []*explained {
 		if len(found) > 0 { // what it adds to the others, overlap and all
 			gain += f.fitMixture(f.split(m, x)).likelihood - before - depth
 		}
-		p.named = p.net + gain - p.gain - p.freedom()/2*math.Log(2*max(gain, 1))
+		p.named = p.net + gain - p.gain - p.freedom()/4*math.Log(2*max(gain, 1))
 		all = append(all, x)
 	}
 	slices.SortStableFunc(all, func(a, b *explained) int { return cmp.Compare(b.named, a.named) })
@@ -121,8 +121,9 @@ func (f *field) rank(found []*explained, c []*pattern) []*explained {
 }
 
 // freedom is the number of continuous parameters of a shape: each costs half the
-// logarithm of the evidence when shapes are compared (Schwarz 1978, Ann. Stat. 6, 461),
-// because the better the evidence, the more finely it tells them.
+// logarithm of the evidence when models are compared (Schwarz 1978, Ann. Stat. 6, 461),
+// because the better the evidence, the more finely it tells them. When shapes are
+// compared that have also paid for the number of places looked at, it is half of that.
 var freedom = [shapes_]float64{shapeRing: 1, shapeArc: 3, shapeCentre: 2, shapeAnnulus: 3, shapeLine: 4, shapeBlob: 5, shapeRamp: 1, shapeSector: 2, shapeBand: 2, shapeOrder: 2}
 
 func (p *pattern) freedom() float64 {
@@ -137,14 +138,20 @@ const mostPatterns = 8
 
 // grow adds patterns of a set of shapes to a model until no more are found.
 func (f *field) grow(found []*explained, set int) []*explained {
+	searched := false // lines and repeats, when the last pattern was found
 	for len(found) < mostPatterns {
 		f.refit(found)
 		c := f.candidates(set&^dearShapes|set&f.pending, false)
 		switch {
 		case len(c) == 0 || !c[0].told:
-			c = f.candidates(set&dearShapes, true)
+			if searched && found[len(found)-1].shape == shapeLine && !f.crowded {
+				return found // the other starts were tried just now
+			}
+			c, searched = f.candidates(set&dearShapes, true), true
 		case lineLike>>c[0].shape&1 == 1 && set>>shapeLine&1 == 1 && f.pending>>shapeLine&1 == 0:
-			c = ranked(append(c, f.candidates(1<<shapeLine, false)...))
+			c, searched = ranked(append(c, f.candidates(1<<shapeLine, false)...)), false
+		default:
+			searched = false
 		}
 		if len(c) == 0 || !c[0].told {
 			break

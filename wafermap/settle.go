@@ -116,7 +116,7 @@ func touching(found []*explained) bool {
 }
 
 func (f *field) worth(found []*explained) float64 {
-	w := f.refit(found).likelihood
+	w := f.fitMixture(f.mix(found)).likelihood
 	for _, x := range found {
 		w -= f.price(x.pattern) + x.freedom()/2*math.Log(2*max(x.gain, 1))
 	}

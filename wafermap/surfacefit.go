@@ -126,7 +126,7 @@ func (w *surfaceWork) robust() bool {
 			moved += sq(x[j] - w.beta[j])
 		}
 		copy(w.beta[:], x)
-		if moved < sq(1e-4*w.scale) {
+		if moved < sq(3e-4*w.scale) { // a tenth of a standard error even with 150,000 dice
 			break
 		}
 	}
