@@ -296,7 +296,10 @@ func (e *Evidence) lossOf() (nothing, cause float64) {
 	if !(e.cols.BaselineYield > 0) {
 		spread += 0.03
 	}
-	excess := 1 - e.yield() - usual
+	excess := 0.0
+	if e.Dice > 0 {
+		excess = 1 - e.yield() - usual
+	}
 	z := max(0, excess-0.5*spread) / spread
 	return -compress(z * z / 2), -2.5 * math.Exp(-max(0, excess)/0.012)
 }

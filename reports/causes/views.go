@@ -134,7 +134,7 @@ func (s *sample) see(v *variant) *seen {
 }
 
 // shares of affected wafers that are tried.
-var waferShares = []float64{0.04, 0.15, 0.4, 0.8}
+var sharesTried = []float64{0.04, 0.15, 0.4, 0.8}
 
 // seeWafers asks which wafers stand out in the variant's direction, by sizes that
 // are alike within a grid step or two; or whether single wafers lack what the
@@ -180,7 +180,7 @@ func (s *sample) waferMixture(at []*density, sign float64) (total float64, odds 
 		for w := range own {
 			own[w] = logMean(ratio[w][max(0, a-2):min(g, a+3)])
 		}
-		for _, share := range waferShares {
+		for _, share := range sharesTried {
 			sum := 0.0
 			for w := range own {
 				sum += logSum(math.Log1p(-share), math.Log(share)+own[w])
@@ -223,7 +223,7 @@ func (s *sample) seeZones(v *variant, x *seen) {
 	}
 	var all []float64
 	for a := range g {
-		for _, share := range waferShares {
+		for _, share := range sharesTried {
 			sum := 0.0
 			for w := range ratio {
 				own := logMean(ratio[w][max(0, a-1):min(g, a+2)])
