@@ -5,6 +5,8 @@ import (
 	"context"
 	"crypto/sha256"
 	"encoding/hex"
+	"fmt"
+	"io"
 	"math"
 	"os"
 	"path/filepath"
@@ -14,6 +16,7 @@ import (
 	"github.com/google/go-cmp/cmp"
 
 	"kneepoint/config"
+	"kneepoint/ingest/stdf"
 )
 
 const oxide = "../testdata/ingest/oxide.csv"
@@ -326,5 +329,69 @@ func TestDraft(t *testing.T) {
 	if len(p.Tests) != 3 || p.Tests[0].Measures != "bvcbo" || p.Tests[1].Measures != "icbo" || p.Tests[1].Upper != 5e-9 || p.Tests[2].Measures != "" ||
 		len(p.Tests[2].At) != 1 || p.Tests[2].At[0].Value != 0.001 {
 		t.Errorf("draft %+v", p.Tests)
+	}
+}
+
+// The wafer and the passing bins are drafted where the files tell them, and where
+// they do not, the draft says so.
+func TestDraftOfWaferAndBins(t *testing.T) {
+	rows := func(head string, row func(x, y int) string) string {
+		all := []string{head}
+		for y := range 10 {
+			for x := range 20 {
+				all = append(all, fmt.Sprintf("1,%d,%d,%s", x, y, row(x, y)))
+			}
+		}
+		return table(all...)
+	}
+	for _, c := range []struct {
+		name, text string
+		pass       []int
+		says       []string
+	}{
+		{"flags", rows("WAFER,X,Y,HBIN,PF,BV", func(x, y int) string { return []string{"1,P,41.5", "2,P,40.5", "7,F,12.5"}[(x+y)%3] }), []int{1, 2},
+			[]string{"passing by the pass flags: hard bin 1 (67 of 67 dice), 2 (67 of 67 dice)", "20 columns by 10 rows", "0.5 times as wide"}},
+		{"limits", rows("WAFER,X,Y,HBIN,BV", func(x, y int) string { return []string{"3,41.5", "4,40.5", "7,12.5"}[(x+y)%3] }), nil, []string{"neither pass flags nor"}},
+		{"mixed", rows("WAFER,X,Y,HBIN,PF,BV", func(x, y int) string { return []string{"1,P,41.5", "2,P,40.5", "2,F,12.5"}[(x+y)%3] }), []int{1},
+			[]string{"not settled by the pass flags, so left out: hard bin 2 (67 of 133 dice pass)"}},
+		{"none", table("WAFER,BV", "1,41.5", "1,41.25"), nil, []string{"no coordinates", "without them bin 1 passes"}},
+	} {
+		if c.name == "limits" { // the same with limits
+			c.pass, c.says = []int{3, 4}, []string{"passing by the limits: hard bin 3 (67 of 67 dice), 4"}
+			c.text = strings.Replace(c.text, "\n", "\nLSL,,,,20\n", 1)
+		}
+		b := mustRead(t, c.text, Options{})
+		notes := strings.Join(DraftNotes(b), "\n")
+		if p := Draft(b); !cmp.Equal(p.Bins.Pass, c.pass) || p.Wafer.DiameterMM != 0 {
+			t.Errorf("%s: %+v %+v\n%s", c.name, p.Bins, p.Wafer, notes)
+		}
+		for _, want := range c.says {
+			if !strings.Contains(notes, want) {
+				t.Errorf("%s: no %q in\n%s", c.name, want, notes)
+			}
+		}
+	}
+	// STDF tells of the wafer (WCR, here in millimetres), of parts that pass and of the names of bins.
+	b, err := Read(context.Background(), []string{save(t, "lot.stdf", func(w io.Writer) error {
+		_, err := io.WriteString(w, stdfBytes(t, stdf.LittleEndian, &stdf.MIR{LotID: "A"}, &stdf.WIR{Head: 1, WaferID: "1"},
+			&stdf.PIR{Head: 1, Site: 1}, &stdf.PTR{Number: 1, Head: 1, Site: 1, Result: 41, Text: "BV"}, &stdf.PRR{Head: 1, Site: 1, HardBin: 2, SoftBin: 2},
+			&stdf.PIR{Head: 1, Site: 1}, &stdf.PTR{Number: 1, Head: 1, Site: 1, Result: 4, Text: "BV"}, &stdf.PRR{Head: 1, Site: 1, Flag: stdf.PartFailed, HardBin: 5, SoftBin: 5, X: 1},
+			&stdf.WRR{Head: 1, Parts: 2}, &stdf.WCR{WaferSize: 100, DieWidth: 0.5, DieHeight: 0.75, Units: 3, Flat: 'D'},
+			&stdf.HBR{Head: stdf.AllSites, Number: 5, Count: 1, PassFail: 'F', Name: "breakdown"}, &stdf.MRR{}))
+		return err
+	})}, Options{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	p := Draft(b)
+	if want := (config.Wafer{DiameterMM: 100, DieWidthMM: 0.5, DieHeightMM: 0.75, Notch: "down"}); p.Wafer != want || !cmp.Equal(p.Bins, config.Bins{Pass: []int{2}, Names: map[int]string{5: "breakdown"}}) {
+		t.Errorf("%+v %+v %q", p.Wafer, p.Bins, DraftNotes(b))
+	}
+	var out bytes.Buffer
+	if err := config.Write(&out, p); err != nil {
+		t.Fatal(err)
+	}
+	if again, err := config.ParseProduct("draft.yaml", out.Bytes()); err != nil || again.Wafer != p.Wafer || !cmp.Equal(again.Bins, p.Bins) {
+		t.Errorf("%v %+v\n%s", err, again, out.String())
 	}
 }

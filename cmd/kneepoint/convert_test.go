@@ -9,10 +9,12 @@ import (
 	"os"
 	"path/filepath"
 	"regexp"
+	"strconv"
 	"strings"
 	"testing"
 
 	"github.com/google/go-cmp/cmp"
+	"github.com/xuri/excelize/v2"
 
 	"kneepoint/ingest/synth"
 )
@@ -45,6 +47,41 @@ func waferZip(t *testing.T, name, text string, headers int) {
 	os.WriteFile(name, b.Bytes(), 0o644)
 }
 
+// workbook writes a wide table as the first sheet of a workbook: numbers as
+// numbers, and what has a zero in front, as wafer ids do, as text.
+func workbook(t *testing.T, name, text string) {
+	t.Helper()
+	f := excelize.NewFile()
+	defer f.Close()
+	w, err := f.NewStreamWriter("Sheet1")
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i, line := range strings.Split(strings.TrimRight(text, "\n"), "\n") {
+		var row []any
+		for _, cell := range strings.Split(line, ",") {
+			v, err := strconv.ParseFloat(cell, 64)
+			switch {
+			case cell == "":
+				row = append(row, nil)
+			case err != nil || len(cell) > 1 && cell[0] == '0' && cell[1] != '.':
+				row = append(row, cell)
+			default:
+				row = append(row, v)
+			}
+		}
+		if err := w.SetRow("A"+strconv.Itoa(i+1), row); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if err := w.Flush(); err != nil {
+		t.Fatal(err)
+	}
+	if err := f.SaveAs(name); err != nil {
+		t.Fatal(err)
+	}
+}
+
 // TestFormatsGiveOneReport triages one made-up lot in every format: the report
 // must be the same but for the inputs. STDF holds float32, which is enough for the
 // digits of the made-up tester; and it says which parts passed, which the bins say
@@ -62,6 +99,7 @@ func TestFormatsGiveOneReport(t *testing.T) {
 	}
 	os.WriteFile("lot.csv", text.Bytes(), 0o644)
 	waferZip(t, "lot.zip", text.String(), 4)
+	workbook(t, "lot.xlsx", text.String())
 	for name, write := range map[string]func(io.Writer) error{
 		"long.csv":    func(w io.Writer) error { return lot.WriteLong(w, format) },
 		"little.stdf": func(w io.Writer) error { return lot.WriteSTDF(w, false) },
@@ -81,7 +119,7 @@ func TestFormatsGiveOneReport(t *testing.T) {
 		}
 	}
 	var want map[string]any
-	for _, name := range []string{"lot.csv", "long.csv", "lot.zip", "little.stdf", "big.stdf", "lot.parquet", "plain.parquet", "lot.arrow", "lot.arrows"} {
+	for _, name := range []string{"lot.csv", "long.csv", "lot.zip", "lot.xlsx", "little.stdf", "big.stdf", "lot.parquet", "plain.parquet", "lot.arrow", "lot.arrows"} {
 		kneepoint(t, "triage", name, "-p", "product.yaml", "-o", "out-"+name)
 		found, _ := filepath.Glob("out-" + name + "/*.json")
 		if len(found) != 1 {

@@ -17,8 +17,8 @@ func newProduct() *cobra.Command {
 		Use:   "product FILE...",
 		Short: "draft a product file from a data file",
 		Long: `product reads data files and drafts a product file: tests with their units and limits, roles
-guessed from names and units, the die grid. Read it through and fill in what the data cannot
-tell; without -o it is printed.`,
+guessed from names and units, the wafer where the file tells its size, passing bins by pass flags
+or limits. Read it through and fill in what the data cannot tell; without -o it is printed.`,
 		Example: "  kneepoint product lot.csv -o product.yaml",
 		Args:    needFiles,
 		RunE: func(c *cobra.Command, files []string) error {
@@ -31,6 +31,9 @@ tell; without -o it is printed.`,
 			var buf bytes.Buffer
 			if err := config.Write(&buf, ingest.Draft(batch)); err != nil {
 				return err
+			}
+			for _, note := range ingest.DraftNotes(batch) {
+				fmt.Fprintln(c.ErrOrStderr(), "hint:", note)
 			}
 			if out == "" {
 				_, err = c.OutOrStdout().Write(buf.Bytes())
