@@ -37,7 +37,8 @@ type Report struct {
 	Groups       []Group       `json:"groups"`
 	Associations []Association `json:"associations"`
 	Causes       []Cause       `json:"causes"`
-	Epi          *Epi          `json:"epi"` // null with EpiWhy when not computed
+	CausesBy     string        `json:"causes_by"` // how the probabilities were weighed, and whether that was calibrated for this product
+	Epi          *Epi          `json:"epi"`       // null with EpiWhy when not computed
 	EpiWhy       string        `json:"epi_why,omitempty"`
 	Disposition  Disposition   `json:"disposition"`
 	Cautions     []string      `json:"cautions"`
@@ -463,20 +464,27 @@ type Association struct {
 	Text     string   `json:"text"`
 }
 
-// Cause is one physical cause with its probability.
+// Cause is one physical cause with its probability. Loss is what the lot would yield
+// more without it, as a share of all tested dice.
 type Cause struct {
 	Cause       string     `json:"cause"`
+	Text        string     `json:"text"` // what happened, in words
 	Direction   string     `json:"direction"`
 	Probability Number     `json:"probability"`
+	Prior       Number     `json:"prior_probability"` // before any evidence; odds are the catalogue's or the product file's
 	Why         string     `json:"why,omitempty"`
 	Loss        Interval   `json:"loss"`
+	Dice        int        `json:"dice"` // that failed by it
 	Wafers      []string   `json:"wafers"`
 	For         []Evidence `json:"for"`
 	Against     []Evidence `json:"against"`
+	Alike       []string   `json:"alike"` // causes that these tests cannot tell from it by levels
 	Next        []Next     `json:"next"`
 }
 
-// Evidence is one observation that speaks for or against a cause.
+// Evidence is one observation that speaks for or against a cause. LogOdds are natural
+// logs of odds against nothing being wrong; of within-baseline and unexplained,
+// against the likeliest other cause.
 type Evidence struct {
 	Text    string   `json:"text"`
 	LogOdds Number   `json:"log_odds"`
@@ -484,10 +492,11 @@ type Evidence struct {
 	Wafers  []string `json:"wafers"`
 }
 
-// Next is a measurement worth making.
+// Next is a measurement worth making. Caution says what can hurt in making it.
 type Next struct {
 	Text            string `json:"text"`
 	InformationBits Number `json:"information_bits"`
+	Caution         string `json:"caution,omitempty"`
 }
 
 // Epi is what the electrical data say of the epi layer: of a wafer, or of a lot's
