@@ -38,13 +38,13 @@ func prepared(lot *ingest.Lot, p *config.Product) *lotwork {
 	return w
 }
 
-// tally is what a run of wafers got right of one quantity.
-type tally struct {
+// coverTally is what a run of wafers got right of one quantity.
+type coverTally struct {
 	n, covered, seen, seenCovered, silent, narrow int
 	errors                                        []float64
 }
 
-func (y *tally) add(truth float64, with reports.Interval, data reports.SightInterval, share reports.Number, note, name string) {
+func (y *coverTally) add(truth float64, with reports.Interval, data reports.SightInterval, share reports.Number, note, name string) {
 	y.n++
 	within := func(i reports.Interval) bool { return float64(i.Lower) <= truth && truth <= float64(i.Upper) }
 	if within(with) {
@@ -101,7 +101,7 @@ func TestEpiCoverage(t *testing.T) {
 
 func (c trial) try(t *testing.T, fabs, wafers int) {
 	// By truths from the prior or far off, then by quantity.
-	var tallies [2][2]tally
+	var tallies [2][2]coverTally
 	regimes := [2]map[string]int{{}, {}}
 	byFab := ""
 	for n := range fabs {
@@ -134,7 +134,7 @@ func (c trial) try(t *testing.T, fabs, wafers int) {
 }
 
 // one infers a lot and tallies its wafers.
-func (c trial) one(t *testing.T, f *fab, p *config.Product, made []madeWafer, y *[2]tally, regimes map[string]int) {
+func (c trial) one(t *testing.T, f *fab, p *config.Product, made []madeWafer, y *[2]coverTally, regimes map[string]int) {
 	rep := inferred(t, f.lot("MADE", 9, p, made...), p)
 	d, why := deviceModel(p, nil)
 	if d == nil {
@@ -153,7 +153,7 @@ func (c trial) one(t *testing.T, f *fab, p *config.Product, made []madeWafer, y 
 
 // judge holds the promises. Wafers of a fab err together, so that about four of each
 // count for one another.
-func (c trial) judge(t *testing.T, name string, y *tally, far bool, fabs int) {
+func (c trial) judge(t *testing.T, name string, y *coverTally, far bool, fabs int) {
 	if y.silent > 0 || y.narrow > 0 {
 		t.Errorf("%s: %d not observable but not said or with a point, %d narrower than the prior", name, y.silent, y.narrow)
 	}
