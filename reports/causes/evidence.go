@@ -49,6 +49,8 @@ type Pattern struct {
 	Kind  string
 	Loss  float64 // share of the wafer's dice
 	P     float64
+
+	rows []int32 // dice inside its outline, counted from the wafer's first
 }
 
 // single counts the dice that stand alone, by class, over all wafers.

@@ -73,7 +73,7 @@ func (o *observer) patterns(w int) []Pattern {
 
 func appendPatterns(out []Pattern, g int, in wafermap.SignatureInput) []Pattern {
 	for _, p := range wafermap.Signatures(in) {
-		out = append(out, Pattern{Group: groups[g].name, Kind: p.Kind, Loss: p.Loss, P: p.PValue})
+		out = append(out, Pattern{Group: groups[g].name, Kind: p.Kind, Loss: p.Loss, P: p.PValue, rows: p.Dice})
 	}
 	return out
 }

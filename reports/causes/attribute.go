@@ -1,0 +1,365 @@
+package causes
+
+import (
+	"context"
+	"math"
+
+	"kneepoint/stats/yield"
+)
+
+// Amount is a number of something with its 95 % interval.
+type Amount struct{ Value, Lower, Upper float64 }
+
+// attribution is what one cause cost.
+type attribution struct {
+	lost     []float64 // by wafer: dice that would pass without the cause
+	saved    []float64 // by wafer: of them, those that levels cost
+	odds     []float64 // by wafer: log odds that the cause's levels are there; nil when it moves none
+	total    Amount    // dice of the lot
+	affected []bool    // by wafer
+}
+
+// attributor shares the failing dice of a lot among its causes.
+//
+// Causes that move levels: the size of the move is estimated by wafer, smoothly over
+// the wafer's face, along the direction in which the cause moves the tests; every
+// die's readings are then judged again with that move taken out. Dice that fail and
+// would pass count for the cause, dice that pass and would fail against it.
+//
+// Causes that ruin single dice: failing dice of a class and a map pattern count as
+// far as there are more of them than healthy lots have, shared among causes by how
+// often each makes such dice in such patterns. What a healthy lot has is what the
+// typical wafer of this lot has, as long as it is no more than the healthy loss.
+//
+// A die that several causes claim is shared among them by their probability. The
+// interval has the counting of what healthy lots have, the uncertainty of the size,
+// and that of the sharing.
+type attributor struct {
+	v      *Verdict
+	list   []Judged
+	levels []*levelCause // by cause of the list; nil when it moves no level
+	like   [][][]float64 // by cause, class and pattern: how often beside any cause; nil when it makes no single dice
+	cells  [][]float64   // by wafer: failing single dice by class and pattern
+	usual  []float64     // healthy share of dice by class and pattern
+	setup  int           // test-setup in the list when dice fail for no reason, -1
+}
+
+// claim is how much stronger a die that would pass without a cause speaks for it
+// than a die of which nothing is known.
+const claim = 10
+
+// attribute shares the failing dice among the causes of the list.
+func (v *Verdict) attribute(list []Judged) []attribution {
+	a := &attributor{v: v, list: list, setup: -1, levels: make([]*levelCause, len(list)), like: make([][][]float64, len(list))}
+	for i := range list {
+		if list[i].entry < 0 {
+			continue
+		}
+		e := &v.j.k.Causes[list[i].entry]
+		a.levels[i] = v.j.levelCause(list[i].see, &v.weigh)
+		a.like[i] = v.j.likeness(e)
+		if e.Setup && v.j.e.Flags["fails-without-reason"] {
+			a.setup = i
+		}
+	}
+	wafers := len(v.j.e.Wafers)
+	a.cells = make([][]float64, wafers)
+	kinds := make([][]int8, wafers)
+	_ = each(context.Background(), wafers, func(w int) { a.cells[w], kinds[w] = v.j.cellsOf(w) })
+	a.usual = a.usualCells()
+	shares := make([]*waferLoss, wafers)
+	_ = each(context.Background(), wafers, func(w int) { shares[w] = a.wafer(w, kinds[w]) })
+	return a.sum(shares)
+}
+
+// waferLoss are one wafer's dice by cause of the list.
+type waferLoss struct {
+	levels, single        []float64
+	less, more            []float64 // levels with the size off by two sigmas
+	background, undecided []float64 // dice of healthy lots among those counted; sum of share x (1 - share)
+}
+
+func (a *attributor) wafer(w int, kinds []int8) *waferLoss {
+	n := len(a.list)
+	s := &waferLoss{make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)}
+	span := a.v.j.e.cols.Wafers[w]
+	saved := make([][]int8, n)
+	chance := make([]float64, n)
+	for c, l := range a.levels {
+		if l == nil {
+			continue
+		}
+		var sums [3]float64
+		chance[c] = logistic(l.odds[w])
+		saved[c], sums = l.without(w)
+		s.less[c], s.more[c] = chance[c]*sums[1], chance[c]*sums[2]
+	}
+	weight := make([]float64, n)
+	for i := range span.Hi - span.Lo {
+		row := span.Lo + i
+		if a.levelShares(i, saved, chance, weight) {
+			sum := a.rest()
+			for _, x := range weight {
+				sum += math.Abs(x)
+			}
+			for c, x := range weight {
+				s.levels[c] += x / sum
+				s.undecided[c] += math.Abs(x) / sum * (1 - math.Abs(x)/sum)
+			}
+			continue
+		}
+		class := a.v.j.e.class[row]
+		if a.v.j.e.cols.Pass[row] {
+			continue
+		}
+		if class < 0 {
+			if a.setup >= 0 && a.withoutReason(row) {
+				s.single[a.setup]++
+			}
+			continue
+		}
+		a.single(s, w, int(class), int(kinds[i]), weight)
+	}
+	return s
+}
+
+// rest is the weight of what is in no cause of the list.
+func (a *attributor) rest() float64 { return 0.02 + a.v.Unknown }
+
+// levelShares weighs the causes whose move the die would do without; a negative
+// weight is a die that passes only because of it.
+func (a *attributor) levelShares(i int, saved [][]int8, chance, weight []float64) bool {
+	any := false
+	for c := range weight {
+		weight[c] = 0
+		if saved[c] != nil && saved[c][i] != 0 {
+			weight[c] = float64(saved[c][i]) * claim * a.list[c].Probability * chance[c]
+			any = any || weight[c] != 0
+		}
+	}
+	return any
+}
+
+// single shares a failing die that stands alone.
+func (a *attributor) single(s *waferLoss, w, class, kind int, weight []float64) {
+	cell := class*len(patterns) + kind
+	n := a.cells[w][cell]
+	healthy := min(1, a.usual[cell]*float64(a.v.j.e.Wafers[w].Dice)/max(n, 1))
+	sum := a.rest()
+	for c := range weight {
+		weight[c] = 0
+		if a.like[c] != nil {
+			weight[c] = a.list[c].Probability * a.like[c][class][kind]
+			sum += weight[c]
+		}
+	}
+	for c, x := range weight {
+		share := x / sum
+		s.single[c] += (1 - healthy) * share
+		s.background[c] += healthy * share
+		s.undecided[c] += (1 - healthy) * share * (1 - share)
+	}
+}
+
+// withoutReason says whether a failing die reads inside every limit.
+func (a *attributor) withoutReason(row int) bool {
+	for t := range a.v.j.e.cols.Tests {
+		test := &a.v.j.e.cols.Tests[t]
+		if low, high := test.breaks(row, test.Values[row]); low || high {
+			return false
+		}
+	}
+	return true
+}
+
+// breaks says which limits a reading in place of a row's breaks.
+func (t *Test) breaks(row int, value float64) (low, high bool) {
+	var mark int8
+	if t.Censor != nil {
+		mark = t.Censor[row]
+	}
+	return yield.Breaks(value, mark, t.Lower, t.Upper)
+}
+
+// sum adds the wafers' shares and finds the intervals and the affected wafers.
+func (a *attributor) sum(shares []*waferLoss) []attribution {
+	failing := float64(a.v.j.e.Failing)
+	out := make([]attribution, len(a.list))
+	for c := range out {
+		x := &out[c]
+		var size [3]float64
+		var counting, sharing, single float64
+		for _, s := range shares {
+			x.lost = append(x.lost, max(0, s.levels[c]+s.single[c]))
+			x.saved = append(x.saved, s.levels[c])
+			size[0], size[1], size[2] = size[0]+s.levels[c], size[1]+s.less[c], size[2]+s.more[c]
+			counting += s.background[c]
+			single += s.single[c]
+			sharing += s.undecided[c]
+		}
+		bySize := 0.0
+		if l := a.levels[c]; l != nil {
+			x.odds = l.odds
+			bySize = math.Abs(size[2]-size[1]) / (2 * z95)
+			bySize *= min(1, a.list[c].Probability+0.2)
+		}
+		total := max(0, size[0]+single)
+		sd := math.Sqrt(counting + 0.1*total + bySize*bySize + sharing*sharing)
+		x.total = Amount{total, max(0, total-z95*sd), min(failing, total+z95*sd)}
+		if failing < total {
+			x.total.Value = failing
+		}
+		x.affected = a.affected(c, x, shares)
+	}
+	return out
+}
+
+const z95 = 1.959964
+
+// affected are the wafers on which a cause is likelier there than not: by its levels,
+// or by dice beyond what chance and healthy lots make.
+func (a *attributor) affected(c int, x *attribution, shares []*waferLoss) []bool {
+	out := make([]bool, len(shares))
+	most := 0.0
+	for w := range shares {
+		most = max(most, shares[w].single[c]/max(1, float64(a.v.j.e.Wafers[w].Dice)))
+	}
+	for w, s := range shares {
+		dice := float64(a.v.j.e.Wafers[w].Dice)
+		if x.odds != nil && x.odds[w] > 0 {
+			out[w] = true
+		}
+		if n := s.single[c]; n >= 3 && n > 2.5*math.Sqrt(s.background[c]+1) && n/max(1, dice) > 0.15*most {
+			out[w] = true
+		}
+	}
+	return out
+}
+
+// likeness is how often a cause makes each class of dice in each pattern, beside
+// equal chances; nil when it makes none.
+func (j *judged) likeness(e *Entry) [][]float64 {
+	chances := j.k.chances(e)
+	if chances == nil {
+		return nil
+	}
+	total := 0.0
+	for _, w := range e.Maps {
+		total += w
+	}
+	const blur = 0.1
+	out := make([][]float64, len(chances))
+	for c, p := range chances {
+		out[c] = make([]float64, len(patterns))
+		for k := range patterns {
+			at := 1.0
+			if total > 0 {
+				at = (1-blur)*e.Maps[patterns[k]]/total*float64(len(patterns)) + blur
+			}
+			out[c][k] = ((1-blur)*p*float64(len(chances)) + blur*0.2) * at
+		}
+	}
+	return out
+}
+
+// cellsOf counts the failing single dice of wafer w by class and pattern, and finds
+// the pattern of each of its dice. A die outside of every pattern is one of random.
+func (j *judged) cellsOf(w int) (cells []float64, kinds []int8) {
+	span := j.e.cols.Wafers[w]
+	random := int8(patternIndex("random"))
+	byGroup := make([][]int8, len(groups))
+	for g := range groups {
+		for _, p := range j.e.Wafers[w].Patterns {
+			k := patternIndex(p.Kind)
+			if p.Group != groups[g].name || k < 0 || p.Kind == "random" || p.Kind == "none" {
+				continue
+			}
+			if byGroup[g] == nil {
+				byGroup[g] = make([]int8, span.Hi-span.Lo)
+				for i := range byGroup[g] {
+					byGroup[g][i] = random
+				}
+			}
+			for _, i := range p.rows {
+				if byGroup[g][i] == random { // patterns come by falling cost
+					byGroup[g][i] = int8(k)
+				}
+			}
+		}
+	}
+	cells = make([]float64, len(j.k.Classes)*len(patterns))
+	kinds = make([]int8, span.Hi-span.Lo)
+	of := make([]int, len(j.k.Classes))
+	for c := range of {
+		of[c] = j.k.group(int8(c))
+	}
+	for i := range kinds {
+		kinds[i] = random
+		c := j.e.class[span.Lo+i]
+		if c < 0 || j.e.cols.Pass[span.Lo+i] {
+			continue
+		}
+		if g := of[c]; g >= 0 && byGroup[g] != nil {
+			kinds[i] = byGroup[g][i]
+		}
+		cells[int(c)*len(patterns)+int(kinds[i])]++
+	}
+	return cells, kinds
+}
+
+func patternIndex(kind string) int {
+	for k, p := range patterns {
+		if p == kind {
+			return k
+		}
+	}
+	return -1
+}
+
+// usualCells is the share of dice that a healthy lot loses in each cell: as much as
+// the typical wafer here, all cells together at most the healthy loss. A lot of few
+// wafers has no typical one: there it is the catalogue's.
+func (a *attributor) usualCells() []float64 {
+	j := a.v.j
+	out := make([]float64, len(j.k.Classes)*len(patterns))
+	loss := j.e.healthyLoss()
+	capped, total := make([]float64, len(out)), 0.0
+	caps, maps := 0.0, 0.0
+	for _, k := range j.k.Classes {
+		caps += healthyCap[k.Class]
+	}
+	for _, p := range patterns {
+		maps += healthyMaps[p]
+	}
+	for c := range j.k.Classes {
+		for p := range patterns {
+			capped[c*len(patterns)+p] = loss * healthyCap[j.k.Classes[c].Class] / caps * healthyMaps[patterns[p]] / maps
+		}
+	}
+	const few = 5
+	for cell := range out {
+		if len(a.cells) < few {
+			out[cell] = capped[cell]
+			continue
+		}
+		rates := make([]float64, 0, len(a.cells))
+		for w := range a.cells {
+			if n := j.e.Wafers[w].Dice; n > 0 {
+				rates = append(rates, a.cells[w][cell]/float64(n))
+			}
+		}
+		out[cell] = median(rates)
+		if math.IsNaN(out[cell]) {
+			out[cell] = 0
+		}
+		total += out[cell]
+	}
+	if total > loss {
+		for cell := range out {
+			out[cell] *= loss / total
+		}
+	}
+	return out
+}
+
+func logistic(x float64) float64 { return 1 / (1 + math.Exp(-x)) }
