@@ -1,8 +1,10 @@
 package causes
 
 import (
+	"context"
 	"math"
 	"slices"
+	"sort"
 
 	"kneepoint/wafermap"
 )
@@ -36,39 +38,68 @@ func (k *Catalogue) group(class int8) int {
 	return -1
 }
 
-// patterns are the map patterns of wafer w's single dice, by group.
-func (o *observer) patterns(w int) []Pattern {
-	c, s := o.c, o.c.Wafers[w]
+// mapped is how many wafers of a group have their maps judged: those with most of
+// its dice. The stack of all wafers is judged beside them.
+const mappedWafers = 8
+
+// healthyGroup is about how large a part of a healthy lot's loss lies in a group.
+// Common practice, no source.
+var healthyGroup = map[string]float64{"hard": 0.7, "open": 0.1, "pipe": 0.1, "edge-low": 0.05, "leaky": 0.25, "single": 0.15}
+
+// findPatterns judges the maps of single dice, by group, on the wafers that have
+// most of them.
+func (o *observer) findPatterns(ctx context.Context) error {
+	c := o.c
 	if c.X == nil || c.Y == nil {
 		return nil
 	}
-	var grid *wafermap.Grid
-	var out []Pattern
 	of := o.groupOf()
+	type job struct{ g, w int }
+	var jobs []job
 	for g := range groups {
-		fail, n := make([]bool, s.Hi-s.Lo), 0
-		for i := s.Lo; i < s.Hi; i++ {
-			if o.e.class[i] >= 0 && of[o.e.class[i]] == g {
-				fail[i-s.Lo] = true
-				n++
+		counts := make([]int, len(c.Wafers))
+		var order []int
+		for w, s := range c.Wafers {
+			for _, k := range o.e.class[s.Lo:s.Hi] {
+				if k >= 0 && of[k] == g {
+					counts[w]++
+				}
+			}
+			usual := o.e.healthyLoss() * healthyGroup[groups[g].name] * float64(s.Hi-s.Lo)
+			if counts[w] >= leastMapped && float64(counts[w]) > 0.8*usual {
+				order = append(order, w)
 			}
 		}
-		if n < leastMapped {
-			continue
+		sort.SliceStable(order, func(a, b int) bool { return counts[order[a]] > counts[order[b]] })
+		for _, w := range order[:min(len(order), mappedWafers)] {
+			jobs = append(jobs, job{g, w})
 		}
-		if grid == nil {
-			grid = wafermap.NewGrid(c.X[s.Lo:s.Hi], c.Y[s.Lo:s.Hi])
-		}
-		in := wafermap.SignatureInput{Grid: grid, Geometry: c.Geometry, Fail: fail, ShotColumns: c.ShotColumns, ShotRows: c.ShotRows}
-		if c.Site != nil {
-			in.Site = c.Site[s.Lo:s.Hi]
-		}
-		if c.Order != nil {
-			in.Order = c.Order[s.Lo:s.Hi]
-		}
-		out = appendPatterns(out, g, in)
 	}
-	return out
+	found := make([][]Pattern, len(jobs))
+	err := each(ctx, len(jobs), func(i int) { found[i] = o.patterns(jobs[i].w, jobs[i].g, of) })
+	for i, j := range jobs {
+		o.e.Wafers[j.w].Patterns = append(o.e.Wafers[j.w].Patterns, found[i]...)
+	}
+	return err
+}
+
+// patterns are the map patterns of group g's dice on wafer w.
+func (o *observer) patterns(w, g int, of []int) []Pattern {
+	c, s := o.c, o.c.Wafers[w]
+	fail := make([]bool, s.Hi-s.Lo)
+	for i := range fail {
+		k := o.e.class[s.Lo+i]
+		fail[i] = k >= 0 && of[k] == g
+	}
+	in := wafermap.SignatureInput{Grid: wafermap.NewGrid(c.X[s.Lo:s.Hi], c.Y[s.Lo:s.Hi]), Geometry: c.Geometry, Fail: fail,
+		ShotColumns: c.ShotColumns, ShotRows: c.ShotRows}
+	if c.Site != nil {
+		in.Site = c.Site[s.Lo:s.Hi]
+	}
+	if c.Order != nil {
+		in.Order = c.Order[s.Lo:s.Hi]
+	}
+	return appendPatterns(nil, g, in)
 }
 
 func appendPatterns(out []Pattern, g int, in wafermap.SignatureInput) []Pattern {

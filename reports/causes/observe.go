@@ -25,13 +25,16 @@ func Observe(ctx context.Context, c *Columns, k *Catalogue) (*Evidence, error) {
 	o.findMajority()
 	// Levels are taken twice: the second time without the readings that stood alone
 	// the first time.
-	for _, step := range []func(w int){o.place, o.levels, o.singles, o.levels, o.singles, o.findPatterns} {
+	for _, step := range []func(w int){o.place, o.levels, o.singles, o.levels, o.singles} {
 		if err := each(ctx, len(c.Wafers), step); err != nil {
 			return nil, err
 		}
 		o.settle()
 	}
 	o.typical()
+	if err := o.findPatterns(ctx); err != nil {
+		return nil, err
+	}
 	e.Flags = o.flags()
 	if raised, known := newFrame(e, k).scaledFlag(); known {
 		e.Flags["one-test-scaled"] = raised

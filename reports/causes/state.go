@@ -120,8 +120,6 @@ func (o *observer) singles(w int) {
 	}
 }
 
-func (o *observer) findPatterns(w int) { o.e.Wafers[w].Patterns = o.patterns(w) }
-
 // reach is where one test's steps lie in one zone, SI.
 type reach struct {
 	collapse, low, high, extreme float64
