@@ -129,6 +129,9 @@ func each(ctx context.Context, n int, progress func(done, total int), task func(
 	group.SetLimit(runtime.GOMAXPROCS(0))
 	var mu sync.Mutex
 	done := 0
+	if progress != nil {
+		progress(0, n) // the first lots wait for the device models
+	}
 	for i := range n {
 		if within.Err() != nil {
 			break

@@ -50,7 +50,10 @@ func NewCalibration(p *config.Product, w causes.Weights, s Summary) *Calibration
 	return &Calibration{Tool: Version(), Product: p.SHA256, Weights: w, Summary: s}
 }
 
-// shipped is the calibration of the demo's product.
+//go:generate go test . -run TestShipped -update
+
+// shipped is the calibration of the demo's product. The test that writes it also holds
+// it to this version.
 //
 //go:embed demo-calibration.json
 var shipped []byte
