@@ -6,9 +6,19 @@ type Pictures struct {
 	Stacked *Raster  // fail rate of each die position over all wafers; nil without coordinates
 	Why     string   // why there are none
 
+	Stacks   []Raster   // one for each of Report.Stacks, in its order
+	Surfaces []Surfaces // of the tests that matter most
+
 	// Epi is the layer die by die on the wafer that is farthest from the baseline: net
 	// thickness where it is observable, and doping.
 	Epi []Raster
+}
+
+// Surfaces is a test's typical wafer: the smooth part, and what is left of each
+// position's median over the wafers.
+type Surfaces struct {
+	Test             string
+	Smooth, Residual Raster
 }
 
 // Raster is a paletted PNG with one pixel a die (or a block of Step x Step dice

@@ -35,6 +35,12 @@ type Report struct {
 	Screens      []Screen      `json:"screens"`
 	Variance     []Variance    `json:"variance"`
 	Groups       []Group       `json:"groups"`
+	GroupsWhy    string        `json:"groups_why,omitempty"` // why the wafers are in no groups
+	Signatures   []Signature   `json:"signatures"`           // of all wafers laid on each other
+	Stacks       []Stack       `json:"stacks"`               // wafers laid on each other by group, and by test that loses most
+	StacksWhy    string        `json:"stacks_why,omitempty"` // why nothing is laid on each other
+	Repeaters    []Repeater    `json:"repeaters"`            // die positions that fail on more wafers than chance allows, at most 100
+	RepeatersAll int           `json:"repeaters_total"`
 	Associations []Association `json:"associations"`
 	Causes       []Cause       `json:"causes"`
 	CausesBy     string        `json:"causes_by"` // how the probabilities were weighed, and whether that was calibrated for this product
@@ -110,7 +116,7 @@ type Wafer struct {
 	Stands     string            `json:"stands" enum:"low,high,"` // "low", "high" or "" against the rest of the lot
 	MainLoss   []Share           `json:"main_loss"`               // tests that lose most on this wafer, first loss, at most three
 	Spatial    Spatial           `json:"spatial"`                 // is the fail map more than chance
-	Signatures []Signature       `json:"signatures"`              // issue of the map room
+	Signatures []Signature       `json:"signatures"`              // patterns of the fail map; empty with spatial.why
 	EpiWhy     string            `json:"epi_why,omitempty"`
 	Epi        *Epi              `json:"epi"`        //
 	Group      int               `json:"group"`      // 0 when not grouped
@@ -124,12 +130,61 @@ type Share struct {
 	Dice  int    `json:"dice"`
 }
 
-// Spatial holds the first-floor map statistics of one wafer.
+// Spatial holds the map statistics of one wafer's fails.
 type Spatial struct {
 	JoinCount *JoinCount `json:"join_count"`
+	Alike     *Alike     `json:"autocorrelation"` // of pass and fail
+	HotSpots  *HotSpots  `json:"hot_spots"`
+	Scan      *Scan      `json:"scan"`
 	Clusters  []Cluster  `json:"clusters"` // largest first, at most ten; Total says how many there are
 	Total     int        `json:"clusters_total"`
 	Why       string     `json:"why,omitempty"`
+}
+
+// Alike says how alike neighbouring dice are: up to eight neighbours, moments with
+// the values permuted over the dice.
+type Alike struct {
+	N     int    `json:"n"`
+	Moran Moment `json:"moran"` // Moran's I: 0 by chance, towards 1 where neighbours are alike
+	Geary Moment `json:"geary"` // Geary's C: 1 by chance, towards 0 where neighbours are alike
+	Why   string `json:"why,omitempty"`
+}
+
+// Moment is a map statistic against chance. Z is positive where neighbours are
+// alike; the p-value is two-sided.
+type Moment struct {
+	Value    Number `json:"value"`
+	Expected Number `json:"expected"`
+	Z        Number `json:"z"`
+	PValue   Number `json:"p_value"`
+}
+
+// HotSpots are dice among more failing dice, themselves included, than chance
+// allows: Getis and Ord's local statistic at a false discovery rate.
+type HotSpots struct {
+	Level   Number    `json:"level"`   // false discovery rate
+	Dice    int       `json:"dice"`    // with such surroundings, failing or not
+	Fails   int       `json:"fails"`   // of these, failing
+	Regions []Cluster `json:"regions"` // that hang together, largest first, at most five
+	Why     string    `json:"why,omitempty"`
+}
+
+// Scan is the spatial scan statistic: the circle in which fails are most unlike
+// chance, with the chance that a wafer with as many fails placed at random has any
+// circle as unlikely.
+type Scan struct {
+	X           Number `json:"x"` // centre, die coordinates
+	Y           Number `json:"y"`
+	Radius      Number `json:"radius"`
+	Unit        string `json:"unit"` // of the radius
+	Dice        int    `json:"dice"`
+	Fails       int    `json:"fails"`
+	Expected    Number `json:"expected"` // fails, at the wafer's rate
+	PValue      Number `json:"p_value"`
+	Simulations int    `json:"simulations"`
+	Windows     int    `json:"windows"`
+	Method      string `json:"method"`
+	Why         string `json:"why,omitempty"` // why there is no circle
 }
 
 // JoinCount is the fail-fail join-count test under randomisation.
@@ -154,13 +209,55 @@ type Cluster struct {
 	Why      string `json:"why,omitempty"`
 }
 
-// Signature is a spatial pattern.
+// Signature is a spatial pattern of fails: random where fails have no structure,
+// none where they are too few to judge. Those of a stack are found in the positions
+// that fail on more wafers than usual.
 type Signature struct {
-	Kind     string `json:"kind" enum:"edge-ring,edge-arc,centre,annulus,line,blob,gradient,sector,shot-repeat,site,stripe,near-total,random,none"`
-	Strength Number `json:"strength"`
+	Kind       string   `json:"kind" enum:"edge-ring,edge-arc,centre,annulus,line,blob,gradient,sector,shot-repeat,site,stripe,near-total,random,none"`
+	Strength   Number   `json:"strength"`   // share of the fails that are due to it
+	PValue     Number   `json:"p_value"`    // chance that fails without it show any place that stands out as much
+	Loss       Number   `json:"loss"`       // share of the tested dice
+	Rate       Number   `json:"rate"`       // fail rate inside the outline
+	Background Number   `json:"background"` // fail rate there without it; of a stack: outside of all outlines
+	Cover      Number   `json:"cover"`      // share of the tested dice inside the outline
+	Wafers     []string `json:"wafers"`     // of a stack: wafers that fail more inside than outside, beyond chance
+	PeriodX    int      `json:"period_x,omitempty"`
+	PeriodY    int      `json:"period_y,omitempty"`
+	Outline    []Path   `json:"outline"` // lines to draw on the map; empty where the kind has none
+	Text       string   `json:"text,omitempty"`
+}
+
+// Path is a line on the wafer through points in die coordinates, whole numbers being
+// the dice's middles; a closed one ends where it begins.
+type Path struct {
+	X []Number `json:"x"`
+	Y []Number `json:"y"`
+}
+
+// Stack is wafers laid on each other: how often each die position fails.
+type Stack struct {
+	Of         string      `json:"of" enum:"group,test"`
+	Group      int         `json:"group"` // 0 for a test
+	Test       string      `json:"test"`  // "" for a group: all fails
+	Wafers     int         `json:"wafers"`
+	Positions  int         `json:"positions"`
+	Rate       Number      `json:"rate"` // fail rate
+	Signatures []Signature `json:"signatures"`
+	Why        string      `json:"why,omitempty"`
+}
+
+// Repeater is a die position that fails on more wafers than chance allows, given how
+// often dice fail on each wafer at that distance from its centre.
+type Repeater struct {
+	X        int    `json:"x"`
+	Y        int    `json:"y"`
+	Tested   int    `json:"tested"`  // wafers
+	Failing  int    `json:"failing"` // wafers
+	Expected Number `json:"expected"`
 	PValue   Number `json:"p_value"`
-	Loss     Number `json:"loss"`
-	Text     string `json:"text,omitempty"`
+	Adjusted Number `json:"adjusted_p_value"` // for all positions (Benjamini and Hochberg)
+	RadiusMM Number `json:"radius_mm"`
+	Main     string `json:"main"` // test that fails there most often first
 }
 
 // Quality is one thing about the data that a reader must know.
@@ -257,6 +354,8 @@ type Test struct {
 	LimitCurve    []LimitPoint `json:"yield_against_limit"`
 	LimitWhy      string       `json:"yield_against_limit_why,omitempty"` // why points, or all of it, are not known
 	ByWafer       []WaferLevel `json:"by_wafer"`
+	Surface       *Surface     `json:"surface"` // of the median over the wafers at each die position
+	SurfaceWhy    string       `json:"surface_why,omitempty"`
 	Repeatability *Repeat      `json:"repeatability"` // from retested dice
 }
 
@@ -398,6 +497,31 @@ type WaferLevel struct {
 	Q95      Number `json:"q95"`
 	Fails    int    `json:"fails"` // dice outside a limit of this test
 	Why      string `json:"why,omitempty"`
+
+	Surface *Surface `json:"surface"` // null with the test's surface_why
+}
+
+// Surface is the smooth shape of a test's readings over the wafer: Zernike terms,
+// as many as cross-validation asks for, robust to outliers. Shares are of the
+// variance of its readings without outliers. Bowl is the edge less the centre, tilt the
+// rise from edge to edge, roll-off what the last fifth of the radius has beyond both.
+type Surface struct {
+	N         int      `json:"n"` // readings or positions fitted
+	Outliers  int      `json:"outliers"`
+	Over      string   `json:"over"` // what was fitted
+	Unit      string   `json:"unit"` // of noise, bowl, tilt, roll-off; "ln" when the fit is of the logarithm
+	Terms     int      `json:"terms"`
+	Order     int      `json:"order"` // radial
+	Smooth    Number   `json:"smooth_share"`
+	Site      Number   `json:"site_share"` // null where test sites are not known
+	Die       Number   `json:"die_share"`
+	Noise     Number   `json:"noise"` // robust sigma about the surface
+	Bowl      Interval `json:"bowl"`
+	Tilt      Interval `json:"tilt"`
+	Direction Number   `json:"tilt_direction"` // of steepest rise, degrees counter-clockwise from +x
+	RollOff   Interval `json:"roll_off"`
+	Alike     *Alike   `json:"autocorrelation"` // of the readings
+	Why       string   `json:"why,omitempty"`
 }
 
 // Zone is the yield of a ring or a sector over all wafers.
@@ -445,6 +569,8 @@ type Variance struct {
 type Group struct {
 	ID     int      `json:"id"`
 	Wafers []string `json:"wafers"`
+	Dice   int      `json:"dice"`
+	Yield  Number   `json:"yield"`
 	Text   string   `json:"text"`
 }
 

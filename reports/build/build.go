@@ -56,6 +56,7 @@ type lotwork struct {
 	position     []int   // tests in the order of the program
 	logScale     []bool  // by test: its spread is one of ratios
 	geo          wafermap.Geometry
+	maps         mapwork
 	rep          *reports.Report
 	model        *device // see lotwork.device
 	modelWhy     string
@@ -73,6 +74,7 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 	w.judgeDice()
 	w.testLosses()
 	w.findGeometry()
+	w.prepareMaps()
 	if err := w.accounts(ctx); err != nil {
 		return nil, err
 	}
@@ -86,6 +88,9 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 	w.lotYield()
 	w.bins()
 	w.zones()
+	if err := w.mapsOfLot(ctx); err != nil {
+		return nil, err
+	}
 	if err := w.pictures(); err != nil {
 		return nil, err
 	}

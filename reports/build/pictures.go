@@ -35,7 +35,6 @@ func (w *lotwork) pictures() error {
 			state[i] = wafermap.StateFail
 		}
 	}
-	stack := wafermap.NewStack()
 	for _, wafer := range w.lot.Wafers() {
 		picture, err := wafermap.PaintStates(x[wafer.Lo:wafer.Hi], y[wafer.Lo:wafer.Hi], state[wafer.Lo:wafer.Hi], wafermap.DefaultPalette, box)
 		if err != nil {
@@ -49,25 +48,8 @@ func (w *lotwork) pictures() error {
 			}
 		}
 		p.Wafers = append(p.Wafers, r)
-		fail := make([]bool, wafer.Hi-wafer.Lo)
-		for i := range fail {
-			fail[i] = !w.pass[wafer.Lo+i]
-		}
-		stack.Add(x[wafer.Lo:wafer.Hi], y[wafer.Lo:wafer.Hi], fail)
 	}
-	if w.unjudged != "" {
-		return nil
-	}
-	picture, legend, err := stack.Paint(box)
-	if err != nil {
-		return err
-	}
-	r := w.raster("all wafers stacked", picture)
-	for i, e := range legend {
-		r.Legend = append(r.Legend, reports.Swatch{R: e.Colour.R, G: e.Colour.G, B: e.Colour.B, Label: e.Label, Dice: picture.Counts[i+1]})
-	}
-	p.Stacked = &r
-	return nil
+	return w.stackPictures(box)
 }
 
 // leadingTest is the test with the largest first loss, -1 when none loses.

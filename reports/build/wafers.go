@@ -8,14 +8,7 @@ import (
 	"kneepoint/stats"
 	"kneepoint/stats/compare"
 	"kneepoint/stats/yield"
-	"kneepoint/wafermap"
 )
-
-// clustersShown is how many fail clusters of a wafer a report lists.
-const clustersShown = 10
-
-// smallestCluster is the fewest touching fails that are called a cluster.
-const smallestCluster = 3
 
 // waferAccount makes the account of wafer i.
 func (w *lotwork) waferAccount(i int) reports.Wafer {
@@ -26,14 +19,14 @@ func (w *lotwork) waferAccount(i int) reports.Wafer {
 		FirstPass: share(w.firstPassing[i], n), Attributes: wafer.Attributes}
 	if w.unjudged != "" {
 		r.Passing, r.FirstPass, r.Yield = 0, reports.NaN, unknown(w.unjudged)
-		r.Spatial.Why = w.unjudged
+		w.spatial(i, &r)
 		return r
 	}
 	y := yield.Wilson(passing, n, confidence)
 	y.Method = "Wilson, counting only"
 	r.Yield = interval(y)
 	r.MainLoss = w.mainLoss(wafer.Lo, wafer.Hi)
-	r.Spatial = w.spatial(wafer.Lo, wafer.Hi)
+	w.spatial(i, &r)
 	return r
 }
 
@@ -54,36 +47,6 @@ func (w *lotwork) mainLoss(lo, hi int) []reports.Share {
 		out = append(out, reports.Share{Name: w.lot.Tests()[t].Name, Dice: counts[t], Share: share(counts[t], hi-lo)})
 	}
 	return out
-}
-
-// spatial asks whether the fails of rows [lo, hi) lie together.
-func (w *lotwork) spatial(lo, hi int) reports.Spatial {
-	if !w.lot.HasCoordinates() {
-		return reports.Spatial{Why: "the data have no die coordinates"}
-	}
-	x, y := w.lot.X()[lo:hi], w.lot.Y()[lo:hi]
-	grid := wafermap.NewGrid(x, y)
-	fail := make([]bool, hi-lo)
-	for i := range fail {
-		fail[i] = !w.pass[lo+i]
-	}
-	jc := grid.JoinCount(fail, wafermap.Queen)
-	clusters := grid.Clusters(fail, wafermap.Queen, smallestCluster)
-	s := reports.Spatial{Total: len(clusters), Why: jc.Why}
-	s.JoinCount = &reports.JoinCount{Neighbours: "queen", FailFail: num(jc.FailFail), Expected: num(jc.ExpectedFF),
-		Variance: num(jc.VarianceFF), Z: num(jc.ZFF), PValue: num(jc.PFF), Method: jc.Method}
-	for _, c := range clusters[:min(len(clusters), clustersShown)] {
-		rc := reports.Cluster{Dice: c.Dice, X: num(c.CentreX), Y: num(c.CentreY), RadiusMM: reports.NaN,
-			Width: int(c.MaxX-c.MinX) + 1, Height: int(c.MaxY-c.MinY) + 1}
-		if w.inMM() {
-			dx, dy := (c.CentreX-w.geo.CentreX)*w.geo.DieWidthMM, (c.CentreY-w.geo.CentreY)*w.geo.DieHeightMM
-			rc.RadiusMM = num(math.Hypot(dx, dy))
-		} else {
-			rc.Why = "the die size is not known in millimetres"
-		}
-		s.Clusters = append(s.Clusters, rc)
-	}
-	return s
 }
 
 // standsOut is how many sigmas off the lot's median yield a wafer must be to
