@@ -35,7 +35,7 @@ var allowance = [shapes_]float64{shapeRing: 0.05, shapeArc: 0.09, shapeCentre: 0
 	shapeRamp: 0.04, shapeSector: 0.05, shapeShot: 0.1, shapeComb: 0.03, shapeBand: 0.03, shapeSite: 0.03, shapeOrder: 0.03}
 
 // falseAlarm is the chance that a wafer without patterns is told one.
-const falseAlarm = 0.012
+const falseAlarm = 0.01
 
 // judge sets what a pattern's evidence is worth.
 func (f *field) judge(p *pattern) {

@@ -100,7 +100,7 @@ const (
 // Methods 26, 1481), the best are fitted more finely, and the number of places of that size
 // is taken off (Walther 2010, Ann. Stat. 38, 1010). What chance reaches is known from simulated
 // random wafers (chanceTable); a pattern is told when a random wafer shows any as
-// strong once in about eighty times. Among shapes that compete for the same fails
+// strong once in a hundred times. Among shapes that compete for the same fails
 // the one with the highest likelihood, its rate falling with depth, less the price of its free
 // parameters (Schwarz 1978) gives the name. The rates of all patterns found are then fitted
 // together, fails that exceed these are searched again, and so on until nothing stands out;
