@@ -313,7 +313,11 @@ func (t *tableReading) column(i int, a arrow.Array, at int) error {
 	}
 	k := cells{a: a, at: at}
 	if f.kind == valueField && !t.layout.long {
-		k.unit = t.layout.columns[f.slot].unit
+		for j := range t.layout.columns {
+			if c := &t.layout.columns[j]; c.field == i {
+				k.unit = c.unit
+			}
+		}
 	}
 	var err error
 	switch f.kind {

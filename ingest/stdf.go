@@ -24,13 +24,27 @@ func readSTDF(ctx context.Context, in *input, index int, sch *schema, progress f
 		return nil, err
 	}
 	defer src.close()
-	s := &stdfReading{in: in, src: src, parts: stdf.NewParts(stdf.NewReader(rawReader{src}))}
-	for s.parts.Scan() {
-		if s.n&0xfff == 0 && ctx.Err() != nil {
+	ahead := newReadAhead(rawReader{src})
+	defer ahead.close()
+	s := &stdfReading{in: in, src: src, parts: stdf.NewParts(stdf.NewReader(ahead))}
+	feed := s.feed(ahead)
+	defer feed.close()
+	for b := range feed.full {
+		if ctx.Err() != nil {
 			return nil, ctx.Err()
 		}
-		s.add(s.parts.Part())
+		s.known, s.at = b.tests, b.at
+		from, fromID := 0, 0
+		for i := range b.parts {
+			s.add(&b.parts[i], b.results[from:b.resultsEnd[i]], b.ids[fromID:b.idsEnd[i]])
+			from, fromID = b.resultsEnd[i], b.idsEnd[i]
+		}
+		feed.spare <- b
 	}
+	if feed.failed != nil {
+		panic(feed.failed)
+	}
+	ahead.drain()
 	d := &fileData{odd: map[oddKey]oddCells{}}
 	if err := s.parts.Err(); err != nil {
 		var f *stdf.FormatError
@@ -48,7 +62,6 @@ func readSTDF(ctx context.Context, in *input, index int, sch *schema, progress f
 	if s.n == 0 {
 		return nil, s.empty()
 	}
-	src.drain()
 	d.rows.read = s.n
 	s.finish(d, index, sch)
 	order := "little-endian"
@@ -75,7 +88,9 @@ func (s *stdfReading) empty() *Error {
 type stdfReading struct {
 	in      *input
 	src     *source
-	parts   *stdf.Parts
+	parts   *stdf.Parts  // another goroutine's until all parts are in
+	known   []*stdf.Test // as far as parts have come
+	at      int64        // and where they end, in bytes of the stream; of the file where that is packed
 	n, room int
 
 	x, y, site, hard, soft, touch []int32
@@ -86,7 +101,8 @@ type stdfReading struct {
 	ids                           partIDs
 	values                        [][]float64 // by column: float32 as read, or an odd NaN
 	columns                       []stdfColumn
-	of                            [][]int32 // column by test and place in a multiple result, -1 none
+	of                            [][]int32   // column by test and place in a multiple result, -1 none
+	plain                         [][]float64 // values of the first column by test, nil none
 	touches                       []touchState
 
 	functional, functionalFails int
@@ -111,11 +127,7 @@ type touchState struct {
 func (s *stdfReading) grow() {
 	want := max(s.room+s.room/4, 4096)
 	if s.n > 0 {
-		at := s.parts.Reader().Position()
-		if s.in.packed != "" {
-			at = s.src.raw
-		}
-		want = max(want, int(float64(s.n)*float64(s.src.size)/float64(at)*1.02))
+		want = max(want, int(float64(s.n)*float64(s.src.size)/float64(max(s.at, 1))*1.02))
 	}
 	if s.in.packed == "" {
 		const part = 21 // bytes of a PRR, at least
@@ -131,6 +143,20 @@ func (s *stdfReading) grow() {
 		s.values[i] = largerNaN(s.values[i], want)
 	}
 	s.room = want
+	for test := range s.of {
+		s.setPlain(test)
+	}
+}
+
+// setPlain notes where the first results of a test go.
+func (s *stdfReading) setPlain(test int) {
+	for len(s.plain) <= test {
+		s.plain = append(s.plain, nil)
+	}
+	s.plain[test] = nil
+	if of := s.of[test]; len(of) > 0 && of[0] >= 0 {
+		s.plain[test] = s.values[of[0]]
+	}
 }
 
 func largerNaN(v []float64, n int) []float64 {
@@ -141,7 +167,7 @@ func largerNaN(v []float64, n int) []float64 {
 	return out
 }
 
-func (s *stdfReading) add(p *stdf.Part) {
+func (s *stdfReading) add(p *stdf.Part, results []stdf.Result, id []byte) {
 	if s.n == s.room {
 		s.grow()
 	}
@@ -151,9 +177,17 @@ func (s *stdfReading) add(p *stdf.Part) {
 	s.site[i], s.head[i], s.pass[i] = int32(p.Site), int32(p.Head), p.Pass()
 	s.wafer[i], s.run[i] = int32(p.Wafer), int32(p.Run)
 	s.touch[i] = s.touchdown(p)
-	s.ids.add(p)
-	for k := range p.Results {
-		s.result(i, &p.Results[k])
+	s.ids.add(p.Wafer, id)
+	for k := range results {
+		r := &results[k]
+		if int(r.Test) < len(s.plain) && r.Flag|stdf.TestFlag(r.Parm) == 0 {
+			// Most are so: a test of one column, and nothing to say of the result.
+			if c := s.plain[r.Test]; c != nil && uint32(r.Column) == 0 && r.Raw-r.Raw == 0 && c[i] != c[i] {
+				c[i] = float64(r.Raw)
+				continue
+			}
+		}
+		s.result(i, r)
 	}
 }
 
@@ -179,6 +213,7 @@ func (s *stdfReading) result(row int, r *stdf.Result) {
 	}
 	for len(s.of[r.Test]) <= int(r.Column) {
 		s.of[r.Test] = append(s.of[r.Test], s.column(int(r.Test), len(s.of[r.Test])))
+		s.setPlain(int(r.Test))
 	}
 	c := s.of[r.Test][r.Column]
 	if c < 0 {
@@ -210,7 +245,7 @@ func (s *stdfReading) result(row int, r *stdf.Result) {
 
 // column makes a column for a test; -1 for a functional one.
 func (s *stdfReading) column(test, place int) int32 {
-	t := s.parts.Tests()[test]
+	t := s.known[test]
 	if t.Kind == stdf.KindFTR {
 		return -1
 	}
@@ -233,16 +268,36 @@ type partIDs struct {
 	codes   []int32 // nil as long as ids count
 }
 
-func (d *partIDs) add(p *stdf.Part) {
-	for len(d.onWafer) <= p.Wafer {
+// plainCount reads a count as one writes it: digits, no zero in front.
+func plainCount(b []byte) (n int, ok bool) {
+	if len(b) == 0 || len(b) > 18 || b[0] == '0' {
+		return 0, false
+	}
+	neg := b[0] == '-' // of no use, and yet a number
+	if neg {
+		b = b[1:]
+	}
+	for _, c := range b {
+		if c-'0' > 9 {
+			return 0, false
+		}
+		n = 10*n + int(c-'0')
+	}
+	if neg {
+		n = -n
+	}
+	return n, len(b) > 0
+}
+
+func (d *partIDs) add(wafer int, raw []byte) {
+	for len(d.onWafer) <= wafer {
 		d.onWafer = append(d.onWafer, 0)
 	}
 	d.n++
-	d.onWafer[p.Wafer]++
-	place, id := d.onWafer[p.Wafer], p.ID()
+	d.onWafer[wafer]++
+	place := d.onWafer[wafer]
 	if d.codes == nil {
-		k, err := strconv.Atoi(id)
-		plain := err == nil && id[0] != '0' && id[0] != '+'
+		k, plain := plainCount(raw)
 		wereFile := !d.other[0]
 		d.other[0] = d.other[0] || !plain || k != d.n
 		d.other[1] = d.other[1] || !plain || k != int(place)
@@ -261,7 +316,7 @@ func (d *partIDs) add(p *stdf.Part) {
 		d.places = nil
 	}
 	code := int32(-1)
-	if id != "" {
+	if id := stdf.Text(raw); id != "" {
 		code = d.text.code(id)
 	}
 	d.codes = append(d.codes, code)

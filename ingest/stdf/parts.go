@@ -34,6 +34,7 @@ type Parts struct {
 	part    Part
 	heads   [256]*[256]*slot
 	open    []*slot // every slot made, in the order made
+	last    *slot   // of the last parametric result
 	runs    []*Run
 	wafers  []*Wafer
 	onHead  [256]*Wafer
@@ -74,6 +75,10 @@ type Part struct {
 
 // ID is PART_ID.
 func (p *Part) ID() string { return text(p.id) }
+
+// RawID is PART_ID as it stands in the file, good until the next Scan; Text makes
+// text of it.
+func (p *Part) RawID() []byte { return p.id }
 
 // Text is PART_TXT.
 func (p *Part) Text() string { return text(p.text) }
@@ -280,7 +285,11 @@ func (p *Parts) parametric(m *PTR) {
 	if m.Test.Index < 0 || m.Flag&NotExecuted != 0 && !p.isOpen(m.Head, m.Site) {
 		return // its test is beyond the bounds, which is counted; or it only defines defaults
 	}
-	s := p.at(m.Head, m.Site)
+	s := p.last
+	if s == nil || s.head != m.Head || s.site != m.Site || !s.isOpen {
+		s = p.at(m.Head, m.Site)
+		p.last = s
+	}
 	s.results = append(s.results, Result{int32(m.Test.Index), m.Result, int16(m.which), 0, m.Flag, m.Parm})
 }
 

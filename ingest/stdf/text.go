@@ -42,7 +42,11 @@ func (n *interner) get(b []byte) string {
 // text makes a string of a C*n. The standard says ASCII; older testers write
 // the letters above it (µ, °, Ω's neighbours) as Latin-1, which is turned into
 // UTF-8 here, so that no invalid text gets further.
-func text(b []byte) string {
+func text(b []byte) string { return Text(b) }
+
+// Text makes UTF-8 of a text of the file: taken as it is where it is UTF-8, else
+// as Latin-1.
+func Text(b []byte) string {
 	if utf8.Valid(b) {
 		return string(b)
 	}
