@@ -54,14 +54,15 @@ func benchRead(b *testing.B, path string, ofFile bool) {
 		b.Fatal(err)
 	}
 	l := readOne(b, path, Options{})
-	b.SetBytes(l.Bytes())
+	size := l.Bytes()
 	if ofFile {
-		b.SetBytes(info.Size())
+		size = info.Size()
 	}
 	l = nil
 	runtime.GC()
 	b.ReportAllocs()
 	b.ResetTimer()
+	defer rate(b, size)()
 	for b.Loop() {
 		batch, err := Read(context.Background(), []string{path}, Options{})
 		if err != nil {
@@ -91,9 +92,10 @@ func BenchmarkReadSTDF(b *testing.B) {
 // Decoding alone, without cleaning: columns in memory as they stand in the file.
 func BenchmarkDecodeParquet(b *testing.B) {
 	path, l := benchFile(b, "lot.parquet", 10, func(w io.Writer, _ *synth.Lot, l *Lot) error { return WriteParquet(w, l) })
-	b.SetBytes(l.Bytes())
+	size := l.Bytes()
 	l = nil
 	runtime.GC()
+	defer rate(b, size)()
 	for b.Loop() {
 		found, err := findInputs([]string{path})
 		if err != nil {
