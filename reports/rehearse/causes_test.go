@@ -46,6 +46,9 @@ func groups() []*group {
 // make such lots again. The short one takes few lots of the demo's product with the
 // calibration that is shipped.
 func TestCauses(t *testing.T) {
+	if testing.Short() {
+		t.Skip("makes dozens of lots")
+	}
 	ctx := context.Background()
 	if !long() {
 		p := demoProduct(t)
@@ -176,6 +179,17 @@ func byCause(text *strings.Builder, all []Outcome) {
 	for i, w := range c.worst(all) {
 		if i < 14 {
 			fmt.Fprintf(text, "%s named %s: %d of %d, seeds %d\n", w.There, w.Named, w.Lots, w.Of, w.Examples)
+		}
+	}
+	for i, row := range c.Counts { // once only is no habit, but many of them are one
+		var once []string
+		for j, n := range row {
+			if n == 1 && i != j {
+				once = append(once, c.Causes[j])
+			}
+		}
+		if len(once) > 1 {
+			fmt.Fprintf(text, "%s named once each %s\n", c.Causes[i], strings.Join(once, ", "))
 		}
 	}
 	missed := map[string]int{}
