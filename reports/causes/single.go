@@ -53,12 +53,81 @@ func (e *Evidence) diceTable(k *Catalogue) diceTable {
 		d.sum = beyond
 	}
 	d.beyond = max(d.beyond, beyondHealthy(all, 1.1*healthy))
+	d.addWafers(e)
+	d.addPatterns(e, k)
+	d.sum = 0
+	for _, x := range d.excess {
+		d.sum += x
+	}
 	if n > 0 {
 		d.share = d.sum / n
 	}
 	const most, small = 12, 0.004
 	d.strength = most * -math.Expm1(-d.sum/most) * -math.Expm1(-d.share/small) * -math.Expm1(-d.beyond)
 	return d
+}
+
+// addWafers takes in what single wafers have beyond the others of the lot: a lot may
+// be as good as any and still have three wafers that are not.
+func (d *diceTable) addWafers(e *Evidence) {
+	if len(e.Wafers) < 4 {
+		return
+	}
+	counts := make([]float64, len(e.Wafers))
+	for c := range d.excess {
+		for w := range e.Wafers {
+			counts[w] = e.Wafers[w].Single[c]
+		}
+		usual := stats.Median(slices.Clone(counts))
+		excess, beyond := 0.0, 0.0
+		for _, n := range counts {
+			const factor, clear = 0.35, 3 // how wafers of a healthy lot differ; nats that some wafer has by chance
+			x := math.Log((n+0.5)/(usual+0.5)) / math.Sqrt(factor*factor+1/(usual+1))
+			if x > 0 && x*x/2 > clear {
+				excess += n - usual - math.Sqrt(usual)
+				beyond += x*x/2 - clear
+			}
+		}
+		d.excess[c] = max(d.excess[c], excess)
+		d.beyond = max(d.beyond, beyond)
+	}
+}
+
+// unhealthy are the patterns that a healthy lot's dice do not form, with the nats that
+// one of them on one wafer counts against such a lot: a search that finds one in two
+// of a hundred random maps leaves ln 50.
+var unhealthy = map[string]float64{"line": 3, "blob": 3, "shot-repeat": 3, "stripe": 2, "site": 3, "sector": 2, "edge-arc": 1.5, "annulus": 2, "centre": 2}
+
+// addPatterns takes in the dice of patterns, however few they are beside the healthy
+// loss.
+func (d *diceTable) addPatterns(e *Evidence, k *Catalogue) {
+	counts := e.single(d.classes)
+	nats := 0.0
+	for g := range groups {
+		inGroup, inPatterns := 0.0, 0.0
+		for c := range counts {
+			if k.group(int8(c)) == g {
+				inGroup += counts[c]
+			}
+		}
+		for w := range e.Wafers {
+			for _, p := range e.Wafers[w].Patterns {
+				if n, ok := unhealthy[p.Kind]; ok && p.Group == groups[g].name {
+					inPatterns += p.Loss * float64(e.Wafers[w].Dice)
+					nats += n
+				}
+			}
+		}
+		if inGroup == 0 {
+			continue
+		}
+		for c := range counts {
+			if k.group(int8(c)) == g {
+				d.excess[c] = max(d.excess[c], min(1, inPatterns/inGroup)*counts[c])
+			}
+		}
+	}
+	d.beyond = max(d.beyond, nats)
 }
 
 // beyondHealthy is how unlikely a count is in a healthy lot, in nats: lots differ in
@@ -290,7 +359,10 @@ func (e *Evidence) flagsOf(k *Catalogue, causes ...*Entry) float64 {
 
 // lossOf is the view of the yield: nothing wrong means nothing lost beyond what
 // healthy lots lose; a cause worth naming costs something.
-func (e *Evidence) lossOf() (nothing, cause float64) {
+//
+// Dice that stand alone beyond what healthy lots have, on single wafers or in
+// patterns, are a loss even in a lot that is as good as any.
+func (e *Evidence) lossOf(d *diceTable) (nothing, cause float64) {
 	usual := e.healthyLoss()
 	spread := 0.015 + 0.3*usual
 	if !(e.cols.BaselineYield > 0) {
@@ -301,5 +373,6 @@ func (e *Evidence) lossOf() (nothing, cause float64) {
 		excess = 1 - e.yield() - usual
 	}
 	z := max(0, excess-0.5*spread) / spread
+	excess = max(excess, d.share*-math.Expm1(-d.beyond))
 	return -compress(z * z / 2), -2.5 * math.Exp(-max(0, excess)/0.012)
 }

@@ -65,7 +65,7 @@ const pairsOf = 7
 func judge(e *Evidence, k *Catalogue) *judged {
 	f := newFrame(e, k)
 	j := &judged{e: e, k: k, f: f, s: f.sample(f.null()), dice: e.diceTable(k), maps: e.mapTable(k)}
-	nothing, loss := e.lossOf()
+	nothing, loss := e.lossOf(&j.dice)
 
 	h := &hypothesis{odds: math.Log(k.WithinBaseline.Odds * float64(len(k.Causes)))}
 	h.views[diceView] = -compress(j.dice.beyond)
@@ -101,6 +101,13 @@ func (j *judged) singles(loss float64) {
 		merits[key] = append(merits[key], merit(x))
 		if b := best[key]; b == nil || merit(x) > merit(b) {
 			best[key] = x
+		}
+	}
+	// Zones tell that a parameter varies, not to which side the lot is off: where the
+	// device answers unevenly, each direction fits one side of it better.
+	for key, x := range best {
+		if other := best[[2]int{key[0], 1 - key[1]}]; other != nil {
+			x.zones = max(x.zones, other.zones)
 		}
 	}
 	for c := range j.k.Causes {
