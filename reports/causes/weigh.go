@@ -2,6 +2,7 @@ package causes
 
 import (
 	"math"
+	"slices"
 	"sort"
 )
 
@@ -120,7 +121,7 @@ func (j *judged) singles(loss float64) {
 			if x != nil {
 				h.views = x.views()
 				// one of the variants is true: the cause is as likely as their mean
-				h.odds += logMean(merits[[2]int{c, d}]) - merit(x)
+				h.odds += logMean(merits[[2]int{c, d}]) - slices.Max(merits[[2]int{c, d}])
 			} else {
 				h.views[lotView], h.views[waferView], h.views[zoneView] = -math.Ln2, -math.Ln2, -math.Ln2
 			}
