@@ -37,7 +37,7 @@ generator, and is the same every time.`,
 			if err != nil {
 				return err
 			}
-			report, err := analyse(c, job{files: []string{data}, product: product, settings: settings})
+			report, err := analyse(c, job{files: []string{data}, product: product, settings: settings, calibrate: calibrateAuto})
 			if err != nil {
 				return err
 			}

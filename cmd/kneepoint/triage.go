@@ -16,9 +16,9 @@ import (
 
 // triageFlags are what triage is asked for on its command line.
 type triageFlags struct {
-	product, settings, out, lot, history string
-	json, failOnHold                     bool
-	tuned                                *viper.Viper
+	product, settings, out, lot, history, calibrate string
+	json, failOnHold                                bool
+	tuned                                           *viper.Viper
 }
 
 func newTriage() *cobra.Command {
@@ -40,6 +40,7 @@ the terminal. Without a product file it works from what the data say of themselv
 	c.Flags().StringVar(&f.lot, "lot", "", "the lot to triage, when the files hold several")
 	c.Flags().StringVar(&f.history, "wafer-history", "", "CSV by lot and wafer; each further column is an attribute of the wafers")
 	c.Flags().StringVar(&f.settings, "settings", "", "settings file")
+	bindCalibrate(c, &f.calibrate)
 	c.Flags().BoolVar(&f.json, "json", false, "print the report as JSON; writes files only with -o")
 	c.Flags().BoolVar(&f.failOnHold, "fail-on-hold", false, "exit with 3 when the proposal is not a release")
 	bindSettings(c, f.tuned)
@@ -55,7 +56,7 @@ func triage(c *cobra.Command, files []string, f triageFlags) error {
 	if err != nil {
 		return err
 	}
-	report, err := analyse(c, job{files: files, lot: f.lot, history: f.history, product: product, settings: settings})
+	report, err := analyse(c, job{files: files, lot: f.lot, history: f.history, product: product, settings: settings, calibrate: f.calibrate})
 	if err != nil {
 		return err
 	}
@@ -72,7 +73,7 @@ func triage(c *cobra.Command, files []string, f triageFlags) error {
 	} else if err := printSummary(c.OutOrStdout(), report, written); err != nil {
 		return err
 	}
-	if f.failOnHold && !strings.HasPrefix(report.Disposition.Proposal, "release") {
+	if f.failOnHold && report.Disposition.Proposal != "release" {
 		return errHold
 	}
 	return nil
@@ -84,6 +85,7 @@ type job struct {
 	lot, history string
 	product      *config.Product
 	settings     config.Settings
+	calibrate    string // see bindCalibrate
 }
 
 // analyse reads one lot and assembles its report.
@@ -92,9 +94,13 @@ func analyse(c *cobra.Command, j job) (*reports.Report, error) {
 	if err != nil {
 		return nil, err
 	}
+	diagnosis, err := newDiagnosis(c, j.product, j.calibrate)
+	if err != nil {
+		return nil, err
+	}
 	progress := newProgress(c, "analysing")
 	defer progress.end()
-	return build.Report(c.Context(), build.Input{Lot: lot, Product: j.product, Settings: j.settings, Version: version(),
+	return build.Report(c.Context(), build.Input{Lot: lot, Product: j.product, Settings: j.settings, Diagnosis: diagnosis, Version: version(),
 		Progress: func(done, total int) { progress.set(int64(done), int64(total)) }})
 }
 

@@ -25,6 +25,7 @@ import (
 	"kneepoint/config"
 	"kneepoint/ingest"
 	"kneepoint/reports"
+	"kneepoint/reports/causes"
 	"kneepoint/stats/yield"
 	"kneepoint/wafermap"
 )
@@ -37,8 +38,11 @@ type Input struct {
 	Lot      *ingest.Lot
 	Product  *config.Product // nil: no product file
 	Settings config.Settings
-	Version  string                // of kneepoint
-	Progress func(done, total int) // tasks done; may be nil; called from one goroutine at a time
+	// Diagnosis is what naming causes needs of the product; nil: made here, with usual
+	// weights, which the report says.
+	Diagnosis *Diagnosis
+	Version   string                // of kneepoint
+	Progress  func(done, total int) // tasks done; may be nil; called from one goroutine at a time
 }
 
 // lotwork is what the steps of one report share.
@@ -60,10 +64,12 @@ type lotwork struct {
 	rep          *reports.Report
 	model        *device // see lotwork.device
 	modelWhy     string
+	verdict      []causes.Account // see explain
 }
 
-// Report assembles the report of a lot. It fails only when ctx is cancelled or a
-// picture cannot be encoded; what cannot be computed is said in the report.
+// Report assembles the report of a lot. It fails only when ctx is cancelled, a
+// picture cannot be encoded, or the product file has a cause that cannot be used;
+// what cannot be computed is said in the report.
 func Report(ctx context.Context, in Input) (*reports.Report, error) {
 	w := &lotwork{in: in, lot: in.Lot, rep: &reports.Report{Schema: reports.SchemaVersion}}
 	if !in.Settings.CountEdgeDice {
@@ -95,6 +101,9 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 		return nil, err
 	}
 	if err := w.inferEpi(ctx); err != nil {
+		return nil, err
+	}
+	if err := w.explain(ctx); err != nil {
 		return nil, err
 	}
 	w.conclude()

@@ -12,27 +12,28 @@ type Account struct {
 	Lost   []float64 // the same by wafer
 	Wafers []string  // affected
 
+	Listed       bool // has reasons
 	For, Against []Reason
 	Alike        []string // causes that these tests cannot tell from it by levels
 	Next         []Measurement
 }
 
-// Accounts tells of the causes with at least a probability, or of the first few, most
-// probable first. Nothing and the unknown have no dice of their own: what the unknown
-// lost is what no other cause is charged with.
+// Accounts tells of all causes, most probable first. Those with at least a probability,
+// and the first few, are Listed with their reasons; of the others there is only what
+// they claim of the dice. Nothing has no dice of its own, and what the unknown lost is
+// what no listed cause is charged with.
 func (v *Verdict) Accounts(least float64, few int) []Account {
-	n := 0
-	for n < len(v.Causes) && (n < few || v.Causes[n].Probability >= least) {
-		n++
+	listed := 0
+	for listed < len(v.Causes) && (listed < few || v.Causes[listed].Probability >= least) {
+		listed++
 	}
-	list := v.Causes[:n]
-	dice := v.attribute(list)
-	all := v.measurements(list)
-	out := make([]Account, n)
+	dice := v.attribute(v.Causes)
+	all := v.measurements(v.Causes[:listed])
+	out := make([]Account, len(v.Causes))
 	total := v.j.priorTotal()
-	for i, g := range list {
+	for i, g := range v.Causes {
 		a := &out[i]
-		a.Judged, a.Dice, a.Lost = g, dice[i].total, dice[i].lost
+		a.Judged, a.Dice, a.Lost, a.Listed = g, dice[i].total, dice[i].lost, i < listed
 		a.Prior = v.j.priorOf(&g) / total
 		for w, yes := range dice[i].affected {
 			if yes {
@@ -41,6 +42,9 @@ func (v *Verdict) Accounts(least float64, few int) []Account {
 		}
 		if g.entry >= 0 {
 			a.Text = v.j.k.Causes[g.entry].Text
+		}
+		if !a.Listed {
+			continue
 		}
 		a.For, a.Against = v.reasons(&g, &dice[i])
 		a.Next = nextOf(all, g.Cause, i == 0)
@@ -69,7 +73,7 @@ func (v *Verdict) unexplained(list []Account) {
 			s := &v.j.e.Wafers[w]
 			rest := float64(s.Failing) - v.j.e.healthyLoss()*float64(s.Dice)
 			for k := range list {
-				if list[k].entry >= 0 {
+				if list[k].entry >= 0 && list[k].Listed {
 					rest -= list[k].Lost[w]
 				}
 			}

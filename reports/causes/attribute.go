@@ -44,6 +44,12 @@ type attributor struct {
 	setup  int           // test-setup in the list when dice fail for no reason, -1
 }
 
+// Causes below leastLevels in probability are not asked what their levels cost: it
+// would take as long again for every one of them. leastClaim is the least probability
+// with which a cause shares single dice: what is improbable for the lot may still be
+// what ruined one wafer.
+const leastLevels, leastClaim = 0.01, 0.02
+
 // claim is how much stronger a die that would pass without a cause speaks for it
 // than a die of which nothing is known.
 const claim = 10
@@ -56,7 +62,9 @@ func (v *Verdict) attribute(list []Judged) []attribution {
 			continue
 		}
 		e := &v.j.k.Causes[list[i].entry]
-		a.levels[i] = v.j.levelCause(list[i].see, &v.weigh)
+		if i == 0 || list[i].Probability >= leastLevels {
+			a.levels[i] = v.j.levelCause(list[i].see, &v.weigh)
+		}
 		a.like[i] = v.j.likeness(e)
 		if e.Setup && v.j.e.Flags["fails-without-reason"] {
 			a.setup = i
@@ -84,6 +92,7 @@ func (a *attributor) wafer(w int, kinds []int8) *waferLoss {
 	s := &waferLoss{make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)}
 	span := a.v.j.e.cols.Wafers[w]
 	saved := make([][]int8, n)
+	logs := a.v.j.logs(w)
 	chance := make([]float64, n)
 	for c, l := range a.levels {
 		if l == nil {
@@ -91,7 +100,7 @@ func (a *attributor) wafer(w int, kinds []int8) *waferLoss {
 		}
 		var sums [3]float64
 		chance[c] = logistic(l.odds[w])
-		saved[c], sums = l.without(w)
+		saved[c], sums = l.without(w, logs)
 		s.less[c], s.more[c] = chance[c]*sums[1], chance[c]*sums[2]
 	}
 	weight := make([]float64, n)
@@ -149,7 +158,7 @@ func (a *attributor) single(s *waferLoss, w, class, kind int, weight []float64) 
 	for c := range weight {
 		weight[c] = 0
 		if a.like[c] != nil {
-			weight[c] = a.list[c].Probability * a.like[c][class][kind]
+			weight[c] = max(leastClaim, a.list[c].Probability) * a.like[c][class][kind]
 			sum += weight[c]
 		}
 	}
@@ -317,42 +326,32 @@ func patternIndex(kind string) int {
 }
 
 // usualCells is the share of dice that a healthy lot loses in each cell: as much as
-// the typical wafer here, all cells together at most the healthy loss. A lot of few
-// wafers has no typical one: there it is the catalogue's.
+// the typical wafer here, at most what healthy lots lose in such a class and pattern,
+// all cells together at most the healthy loss. A lot of few wafers has no typical
+// one: there it is what healthy lots lose on average.
 func (a *attributor) usualCells() []float64 {
 	j := a.v.j
 	out := make([]float64, len(j.k.Classes)*len(patterns))
 	loss := j.e.healthyLoss()
-	capped, total := make([]float64, len(out)), 0.0
-	caps, maps := 0.0, 0.0
+	caps, maps, total := 0.0, 0.0, 0.0
 	for _, k := range j.k.Classes {
 		caps += healthyCap[k.Class]
 	}
 	for _, p := range patterns {
 		maps += healthyMaps[p]
 	}
+	const few, much = 5, 4 // much: times the mean, what one lot may have of a pattern
 	for c := range j.k.Classes {
 		for p := range patterns {
-			capped[c*len(patterns)+p] = loss * healthyCap[j.k.Classes[c].Class] / caps * healthyMaps[patterns[p]] / maps
-		}
-	}
-	const few = 5
-	for cell := range out {
-		if len(a.cells) < few {
-			out[cell] = capped[cell]
-			continue
-		}
-		rates := make([]float64, 0, len(a.cells))
-		for w := range a.cells {
-			if n := j.e.Wafers[w].Dice; n > 0 {
-				rates = append(rates, a.cells[w][cell]/float64(n))
+			cell := c*len(patterns) + p
+			of, in := loss*healthyCap[j.k.Classes[c].Class], healthyMaps[patterns[p]]/maps
+			if len(a.cells) < few {
+				out[cell] = of / caps * in
+			} else {
+				out[cell] = min(a.typical(cell), of*min(1, much*in))
 			}
+			total += out[cell]
 		}
-		out[cell] = median(rates)
-		if math.IsNaN(out[cell]) {
-			out[cell] = 0
-		}
-		total += out[cell]
 	}
 	if total > loss {
 		for cell := range out {
@@ -360,6 +359,20 @@ func (a *attributor) usualCells() []float64 {
 		}
 	}
 	return out
+}
+
+// typical is the median over wafers of a cell's share of the dice.
+func (a *attributor) typical(cell int) float64 {
+	rates := make([]float64, 0, len(a.cells))
+	for w := range a.cells {
+		if n := a.v.j.e.Wafers[w].Dice; n > 0 {
+			rates = append(rates, a.cells[w][cell]/float64(n))
+		}
+	}
+	if len(rates) == 0 {
+		return 0
+	}
+	return median(rates)
 }
 
 func logistic(x float64) float64 { return 1 / (1 + math.Exp(-x)) }

@@ -4,6 +4,8 @@ import (
 	"math"
 	"sort"
 	"strings"
+
+	"kneepoint/stats/junction"
 )
 
 // Measurement is one worth making, with what it is expected to tell of which cause is
@@ -138,9 +140,22 @@ func (v *Verdict) electrical() []Measurement {
 				parts = append(parts, o.name+" has it "+change(mean)+" healthy")
 			}
 		}
-		out = append(out, Measurement{Text: text + ": " + strings.Join(parts, ", "), Bits: bits})
+		out = append(out, Measurement{Text: text + ": " + strings.Join(parts, ", "), Bits: bits, Caution: hazard(&m.Tests[i])})
 	}
 	return out
+}
+
+// hazard is the caution of an electrical test: breakdown and what is read next to it.
+func hazard(t *junction.Test) string {
+	const touchable = 40 // V, common practice, no source
+	switch t.Measures {
+	case junction.BVceo, junction.BVcbo, junction.BVces, junction.PlaneBV, junction.Multiplication:
+		return "voltage"
+	}
+	if t.Voltage > touchable {
+		return "voltage"
+	}
+	return ""
 }
 
 // outcomes are the hypotheses' expectations of model test i, by the single causes

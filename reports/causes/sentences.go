@@ -117,27 +117,28 @@ func (j *judged) waferReasons(x *seen, a *attribution, total float64) []Reason {
 	return j.perTest(mean, x.v.moves[at], j.f.wafer, total, who, "the typical wafer", j.ids(apart))
 }
 
-// perTest shares a view's log odds among the tests: what each adds to the ratio of
-// the densities, the others being known.
+// perTest shares a view's log odds among the tests, by the ratio of each test's own
+// Gaussian densities about the move and about none.
 func (j *judged) perTest(y, move, sigma []float64, total float64, who, beside string, wafers []string) []Reason {
-	with, without := j.f.about(sigma, move), j.f.newDensity(sigma, nil, nil)
-	ratio := func(y []float64) float64 { return with.at(y) - without.at(y) }
-	all := ratio(y)
-	own, sum := make([]float64, len(y)), 0.0
-	less := make([]float64, len(y))
-	for i := range y {
-		copy(less, y)
-		less[i] = math.NaN()
-		own[i] = all - ratio(less)
-		if !math.IsNaN(y[i]) {
-			sum += own[i]
-		}
+	size := 0.0
+	for i, m := range move {
+		size += m * m / (sigma[i] * sigma[i])
 	}
-	scale := 1.0
-	if sum > 1 && total > 0 {
-		scale = total / sum
-	} else if total != 0 && all != 0 {
-		scale = min(1, math.Abs(total/all))
+	size = math.Sqrt(size)
+	own, sum := make([]float64, len(y)), 0.0
+	for i, m := range move {
+		if math.IsNaN(y[i]) {
+			continue
+		}
+		s := math.Sqrt(sigma[i]*sigma[i]*(1+spillError*size*spillError*size) + moveError*m*moveError*m)
+		z0, z1 := y[i]/sigma[i], (y[i]-m)/s
+		own[i] = (z0*z0-z1*z1)/2 - math.Log(s/sigma[i])
+		sum += own[i]
+	}
+	// the view's weight, and what is drawn in of very many sigmas
+	scale := 0.3
+	if sum*total > 0 {
+		scale = min(1, total/sum)
 	}
 	var out []Reason
 	for i, t := range j.f.tests {
@@ -237,7 +238,13 @@ func (j *judged) diceReasons(e *Entry, total float64) []Reason {
 	}
 	var named, other []string
 	nNamed, nOther := 0.0, 0.0
-	for c, n := range d.excess {
+	order := make([]int, d.classes)
+	for c := range order {
+		order[c] = c
+	}
+	sort.SliceStable(order, func(a, b int) bool { return d.excess[order[a]] > d.excess[order[b]] })
+	for _, c := range order[:min(3, len(order))] {
+		n := d.excess[c]
 		if n < 0.05*d.sum {
 			continue
 		}

@@ -117,14 +117,14 @@ func (l *levelCause) move(a float64) []float64 {
 // without judges the dice of wafer w again with the move taken out: by die +1 for one
 // that fails and would pass, -1 for the reverse. The sums are of the size as found, and
 // of two sigmas less and more.
-func (l *levelCause) without(w int) (saved []int8, sums [3]float64) {
+func (l *levelCause) without(w int, logs [][]float64) (saved []int8, sums [3]float64) {
 	span := l.j.e.cols.Wafers[w]
 	saved = make([]int8, span.Hi-span.Lo)
 	const negligible = -8 // log odds
 	if l.odds[w] < negligible {
 		return saved, sums
 	}
-	sizes := l.sizes(w)
+	sizes := l.sizes(w, logs)
 	const steps = 64
 	top := 1.5 * l.at[len(l.at)-1]
 	factors := make([][]float64, steps+1)
@@ -203,7 +203,7 @@ const (
 // sizes are the move's size at each die of wafer w: of every die that does not stand
 // alone the size along the move's direction, fitted by a surface of second order with
 // a term for a steeper bowl. Dice without a place take the wafer's size.
-func (l *levelCause) sizes(w int) []float64 {
+func (l *levelCause) sizes(w int, logs [][]float64) []float64 {
 	span, e := l.j.e.cols.Wafers[w], l.j.e
 	out := make([]float64, span.Hi-span.Lo)
 	for i := range out {
@@ -223,7 +223,7 @@ func (l *levelCause) sizes(w int) []float64 {
 		if e.class[row] >= 0 || math.IsNaN(x[i]) {
 			continue
 		}
-		s, ok := l.sizeOf(row, along, slope, base)
+		s, ok := l.sizeOf(i, logs, along, slope, base)
 		if !ok {
 			continue
 		}
@@ -256,21 +256,39 @@ func (l *levelCause) sizes(w int) []float64 {
 }
 
 // sizeOf is a die's size less its wafer's, by projection of its readings.
-func (l *levelCause) sizeOf(row int, along, slope, base []float64) (size float64, ok bool) {
+func (l *levelCause) sizeOf(die int, logs [][]float64, along, slope, base []float64) (size float64, ok bool) {
 	have := 0.0
-	for i, t := range l.j.f.tests {
-		v := l.j.e.cols.Tests[t].Values[row]
-		if !(v > 0) {
+	for i := range along {
+		v := logs[i][die]
+		if math.IsNaN(v) {
 			continue
 		}
 		have += along[i] * slope[i]
-		size += along[i] * (math.Log(v/l.j.e.Reference[t]) - base[i])
+		size += along[i] * (v - base[i])
 	}
 	if have < 0.5 {
 		return 0, false
 	}
 	const far = 12 // a reading far off by itself is no place on a smooth surface
 	return min(max(size/have, -far), far+l.at[len(l.at)-1]), true
+}
+
+// logs are the log ratios of the readings of wafer w, by test of the frame and die; NaN
+// for one that is missing or not above zero.
+func (j *judged) logs(w int) [][]float64 {
+	span := j.e.cols.Wafers[w]
+	out := make([][]float64, len(j.f.tests))
+	for i, t := range j.f.tests {
+		out[i] = make([]float64, span.Hi-span.Lo)
+		base := math.Log(j.e.Reference[t])
+		for k, v := range j.e.cols.Tests[t].Values[span.Lo:span.Hi] {
+			out[i][k] = math.NaN()
+			if v > 0 {
+				out[i][k] = math.Log(v) - base
+			}
+		}
+	}
+	return out
 }
 
 // direction is the move's slope at a size and the weights of tests that project onto

@@ -6,65 +6,6 @@ import (
 	"kneepoint/reports"
 )
 
-// causeCard is one physical cause with its evidence.
-type causeCard struct {
-	Name        string
-	Probability string
-	Bar         *bar
-	Why         string
-	Facts       []fact
-	For         *table
-	Against     *table
-	Next        *table
-}
-
-func newCauses(causes []reports.Cause) []causeCard {
-	var cards []causeCard
-	for _, c := range causes {
-		card := causeCard{Name: causeName(c), Probability: chance(c.Probability), Bar: shareBar(c.Probability, 1), Why: sentence(c.Why)}
-		if c.Loss.Estimate.Valid() {
-			card.Facts = append(card.Facts, fact{"loss", percent(c.Loss.Estimate) + " (" + percentRange(c.Loss) + ")"})
-		} else if c.Loss.Why != "" {
-			card.Facts = append(card.Facts, fact{"loss", notAvailable + ": " + c.Loss.Why})
-		}
-		if len(c.Wafers) > 0 {
-			card.Facts = append(card.Facts, fact{"wafers", strings.Join(c.Wafers, ", ")})
-		}
-		card.For, card.Against = evidenceTable("Speaks for it", c.For), evidenceTable("Speaks against it", c.Against)
-		if len(c.Next) > 0 {
-			card.Next = &table{Caption: "Measure next", Columns: []column{{Name: "Measurement"}, {Name: "Information, bits", Numeric: true}}}
-			for _, n := range c.Next {
-				card.Next.Rows = append(card.Next.Rows, []cell{{Text: n.Text, Class: "wide"}, text(significant(float64(n.InformationBits), 2))})
-			}
-		}
-		cards = append(cards, card)
-	}
-	return cards
-}
-
-func evidenceTable(caption string, list []reports.Evidence) *table {
-	if len(list) == 0 {
-		return nil
-	}
-	t := &table{Caption: caption, Columns: []column{{Name: "Observation"}, {Name: "Log odds", Numeric: true}, {Name: "Test"}, {Name: "Wafers"}}}
-	for _, e := range list {
-		t.Rows = append(t.Rows, []cell{{Text: e.Text, Class: "wide"}, text(score(e.LogOdds)), text(e.Test), {Text: strings.Join(e.Wafers, ", "), Class: "phrase"}})
-	}
-	return t
-}
-
-// dispositionTable is the proposal wafer by wafer.
-func dispositionTable(d reports.Disposition) *table {
-	if len(d.Wafers) == 0 {
-		return nil
-	}
-	t := &table{Caption: "Proposal by wafer", Sortable: true, Columns: []column{{Name: "Wafer"}, {Name: "Proposal"}, {Name: "Because", Plain: true}}}
-	for _, w := range d.Wafers {
-		t.Rows = append(t.Rows, []cell{text(w.ID), text(words(w.Proposal)), {Text: strings.Join(w.Because, "; "), Class: "wide"}})
-	}
-	return t
-}
-
 // others are the accounts below the tests, with the pictures that they have.
 type others struct {
 	Charts []chart

@@ -51,25 +51,24 @@ func Render(w io.Writer, r *reports.Report) error {
 
 // view is all that the templates show.
 type view struct {
-	Title       string
-	Policy      string
-	Style       template.CSS
-	Echarts     template.JS
-	Script      template.JS
-	License     string
-	Notice      string
-	EchartsIs   string
-	Head        head
-	Causes      []causeCard
-	Disposition *table
-	Epi         *epi
-	Losses      losses
-	Wafers      wafers
-	Zones       zones
-	Tests       []testCard
-	Others      others
-	Record      record
-	Tool        reports.Tool
+	Title     string
+	Policy    string
+	Style     template.CSS
+	Echarts   template.JS
+	Script    template.JS
+	License   string
+	Notice    string
+	EchartsIs string
+	Head      head
+	Why       *why
+	Epi       *epi
+	Losses    losses
+	Wafers    wafers
+	Zones     zones
+	Tests     []testCard
+	Others    others
+	Record    record
+	Tool      reports.Tool
 }
 
 func newView(r *reports.Report) (*view, error) {
@@ -95,8 +94,7 @@ func newView(r *reports.Report) (*view, error) {
 	v.Policy = policy(string(v.Echarts), string(v.Script))
 	tests := byLoss(r.Tests)
 	v.Head = newHead(r, tests)
-	v.Causes = newCauses(r.Causes)
-	v.Disposition = dispositionTable(r.Disposition)
+	v.Why = newWhy(r)
 	v.Record = newRecord(r)
 	var err error
 	if v.Epi, err = newEpi(r); err != nil {

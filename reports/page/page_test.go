@@ -279,7 +279,7 @@ func TestPolicyAndLicenceTravel(t *testing.T) {
 
 func TestEmptyListsLeaveNoHeadings(t *testing.T) {
 	text := shown(tree(t, render(t, bareReport())))
-	for _, heading := range []string{"Causes and proposal", "Epi layer", "What was lost", "Rings and sectors", "Stacked map", "More findings", "Cautions", "Grades", "Yield by wafer"} {
+	for _, heading := range []string{"Why, and what to do", "Epi layer", "What was lost", "Rings and sectors", "Stacked map", "More findings", "Cautions", "Grades", "Yield by wafer"} {
 		if strings.Contains(text, heading) {
 			t.Errorf("a report without it has the heading %q", heading)
 		}

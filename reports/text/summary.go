@@ -1,7 +1,7 @@
 // Package text writes the terminal summary of a Report: at most MaxLines lines
 // that say, in this order, what the lot is, how it yields, what lost most, which
-// wafers stand out, what the epi layer is, what is wrong with the data, what is
-// proposed, and where the full report is.
+// wafers stand out, what the epi layer is, what is wrong with the data, the likely
+// cause, what to measure next, what is proposed, and where the full report is.
 package text
 
 import (
@@ -22,7 +22,6 @@ const Width = 100
 
 const (
 	testsShown   = 6
-	causesShown  = 3
 	qualityShown = 3
 )
 
@@ -42,7 +41,7 @@ func Summary(w io.Writer, r *reports.Report, files []string, bold bool) error {
 	}
 	s.quality(r)
 	s.causes(r)
-	s.add(false, "proposal  %s: %s", r.Disposition.Proposal, strings.Join(r.Disposition.Because, "; "))
+	s.proposal(r)
 	for i, f := range files {
 		label := "report   "
 		if i > 0 {
@@ -236,23 +235,6 @@ func (s *sheet) quality(r *reports.Report) {
 	if n := len(rows) - qualityShown; n > 0 {
 		s.add(false, "data      and %d more: see the report", n)
 	}
-}
-
-func (s *sheet) causes(r *reports.Report) {
-	shown := 0
-	for _, c := range r.Causes {
-		if c.Probability.Valid() && shown < causesShown {
-			s.add(false, "cause     %s %s: %s", strings.TrimSpace(c.Cause+" "+c.Direction), Percent(c.Probability), firstText(c.For))
-			shown++
-		}
-	}
-}
-
-func firstText(e []reports.Evidence) string {
-	if len(e) == 0 {
-		return "see the report"
-	}
-	return e[0].Text
 }
 
 // Percent shows a share: 87.3 %, or n/a where it is not known.

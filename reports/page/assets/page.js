@@ -29,7 +29,7 @@ function openTarget() {
 let opened = [];
 
 function beforePrint() {
-  opened = [...document.querySelectorAll("details.card:not([open])")];
+  opened = [...document.querySelectorAll("details.card:not([open]), details.rest:not([open])")];
   for (const card of opened) card.open = true;
   chartsForPaper();
 }
