@@ -33,7 +33,7 @@ func readSTDF(ctx context.Context, in *input, index int, sch *schema, progress f
 		if ctx.Err() != nil {
 			return nil, ctx.Err()
 		}
-		s.known, s.at = b.tests, b.at
+		s.known, s.at, s.atParts = b.tests, b.at, s.n+len(b.parts)
 		from, fromID := 0, 0
 		for i := range b.parts {
 			s.add(&b.parts[i], b.results[from:b.resultsEnd[i]], b.ids[fromID:b.idsEnd[i]])
@@ -91,6 +91,7 @@ type stdfReading struct {
 	parts   *stdf.Parts  // another goroutine's until all parts are in
 	known   []*stdf.Test // as far as parts have come
 	at      int64        // and where they end, in bytes of the stream; of the file where that is packed
+	atParts int          // how many there are up to there
 	n, room int
 
 	x, y, site, hard, soft, touch []int32
@@ -127,7 +128,7 @@ type touchState struct {
 func (s *stdfReading) grow() {
 	want := max(s.room+s.room/4, 4096)
 	if s.n > 0 {
-		want = max(want, int(float64(s.n)*float64(s.src.size)/float64(max(s.at, 1))*1.02))
+		want = max(want, int(float64(s.atParts)*float64(s.src.size)/float64(max(s.at, 1))*1.02))
 	}
 	if s.in.packed == "" {
 		const part = 21 // bytes of a PRR, at least

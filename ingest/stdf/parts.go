@@ -199,6 +199,7 @@ func (p *Parts) Scan() bool {
 		switch p.r.kind {
 		case KindPTR:
 			p.parametric(&p.r.ptr)
+			p.r.plainRun(p)
 		case KindPIR:
 			p.begin(&p.r.pir)
 		case KindPRR:

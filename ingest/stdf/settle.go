@@ -1,6 +1,10 @@
 package stdf
 
-import "slices"
+import (
+	"bytes"
+	"math"
+	"slices"
+)
 
 // What a result means beyond its own bytes: whose test it is, and which unit
 // and limits hold for it. This happens when it is sure that the record is one.
@@ -57,7 +61,58 @@ func (r *Reader) quickPTR(body []byte) bool {
 	}
 	t.size = len(body)
 	t.Records++
+	if m.which == t.Default && !(t.tail.known && t.tail.run == r.run && t.tail.which == m.which && bytes.Equal(t.tail.raw, body[12:])) {
+		t.tail = ptrTail{append(t.tail.raw[:0], body[12:]...), r.run, m.which, true}
+	}
 	return true
+}
+
+// plainRun delivers the PTRs that follow, as long as each is like one of its test
+// before but for its result: those that quickPTR would take, without a word on
+// each. It may stop at any record, and leaves that to Scan.
+func (r *Reader) plainRun(p *Parts) {
+	if r.c.vax {
+		return
+	}
+	for {
+		b := r.buf[r.pos:r.end]
+		if len(b) < 4+12+4 {
+			return
+		}
+		h := parseHeader(b, r.c.big)
+		whole := 4 + h.size
+		if h.kind != KindPTR || h.size < 12 || whole+4 > len(b) || !r.likely(parseHeader(b[whole:], r.c.big)) {
+			return
+		}
+		body := b[4:whole]
+		number, last := u4(body, r.c.big), r.tests.last
+		if last == nil {
+			return
+		}
+		t := last.next
+		if t == nil || t.Number != number {
+			t = last
+		}
+		flag := TestFlag(body[6])
+		if t.Number != number || t.Kind != KindPTR || t.Index < 0 || flag&NotExecuted != 0 || !t.tail.known || t.tail.run != r.run || t.tail.which != t.Default ||
+			!bytes.Equal(t.tail.raw, body[12:]) {
+			return
+		}
+		s := p.last
+		if s == nil || s.head != body[4] || s.site != body[5] || !s.isOpen {
+			if s = p.slot(body[4], body[5]); !s.isOpen {
+				return // its first result opens a part; see Parts.at
+			}
+			p.last = s
+		}
+		r.tests.last = t
+		r.at = r.offset()
+		r.pos += whole
+		r.counts[KindPTR]++
+		t.size = h.size
+		t.Records++
+		s.results = append(s.results, Result{int32(t.Index), math.Float32frombits(u4(body[8:], r.c.big)), int16(t.Default), 0, flag, ParmFlag(body[7])})
+	}
 }
 
 // plainPTR delivers any PTR whose fields fit.

@@ -37,6 +37,17 @@ type Test struct {
 	given    bool   // some record has given limits
 	size     int    // of the body of its last PTR
 	seen     [2]*seen
+	tail     ptrTail
+}
+
+// ptrTail is what stood behind RESULT in a record that was judged by the defaults:
+// text, alarm and optional part, of which no more needs to be known when the same
+// bytes come again.
+type ptrTail struct {
+	raw   []byte
+	run   int // of the Reader
+	which int
+	known bool
 }
 
 // Bounds on what a damaged or hostile file can make of tests. Records of tests
