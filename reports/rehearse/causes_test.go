@@ -56,7 +56,7 @@ func TestCauses(t *testing.T) {
 		if kept == nil {
 			t.Fatal("no calibration is shipped; see TestShipped")
 		}
-		lots := deal(64, 71, Mix{Healthy: 4, Single: 10, Pair: 2})
+		lots := deal(48, 71, Mix{Healthy: 4, Single: 10, Pair: 2})
 		all := tried(t, ctx, p, kept.Weights, lots, "laws")
 		report(t, []*group{{class: "24 V", tests: "all tests", all: all}}, bars{within: 0.75, healthy: 0.13, gap: 0.2, class: 0.5})
 		return
