@@ -213,7 +213,8 @@ func (a *attributor) sum(shares []*waferLoss) []attribution {
 			bySize *= min(1, a.list[c].Probability+0.2)
 		}
 		total := max(0, size[0]+single)
-		sd := math.Sqrt(counting + 0.1*total + bySize*bySize + sharing*sharing)
+		healthy := counting + lotsDiffer*counting*lotsDiffer*counting
+		sd := math.Sqrt(healthy + 0.1*total + bySize*bySize + sharing*sharing)
 		x.total = Amount{total, max(0, total-z95*sd), min(failing, total+z95*sd)}
 		if failing < total {
 			x.total.Value = failing
@@ -224,6 +225,10 @@ func (a *attributor) sum(shares []*waferLoss) []attribution {
 }
 
 const z95 = 1.959964
+
+// lotsDiffer is the log sigma by which healthy lots differ in a kind of defect, as
+// beyondHealthy takes it.
+const lotsDiffer = 0.45
 
 // affected are the wafers on which a cause is likelier there than not: by its levels,
 // or by dice beyond what chance and healthy lots make.
