@@ -11,44 +11,55 @@ type Alike struct {
 
 const alikeCosine = 0.95
 
-// alike compares the directions of all causes that shift levels, at a middle size,
-// in the spread of healthy lots.
+// alike compares the directions of all causes that shift levels, at a middle size, in
+// the spread of healthy lots. A cause that can move levels in several ways is taken
+// by the one that fits the lot best where the lot shows one, else by its usual one.
 func (j *judged) alike() []Alike {
-	type direction struct {
-		cause int
-		moves []float64
-	}
-	var all []direction
+	moves := make([][]float64, len(j.k.Causes))
 	for c := range j.k.Causes {
 		e := &j.k.Causes[c]
-		for s := range e.Shifts {
-			v := j.f.shiftVariant(&e.Shifts[s], 1)
-			if len(v.moves) == 0 {
-				continue
-			}
-			all = append(all, direction{c, j.f.whiten(v.moves[len(v.moves)/2])})
+		if len(e.Shifts) == 0 {
+			continue
+		}
+		v := j.f.shiftVariant(&e.Shifts[0], 1)
+		if own := j.supported(c); own != nil {
+			v = own
+		}
+		if len(v.moves) > 0 {
+			moves[c] = j.f.whiten(v.moves[len(v.moves)/2])
 		}
 	}
 	var out []Alike
-	best := map[[2]int]float64{}
-	for a := range all {
-		for b := range a {
-			if all[a].cause == all[b].cause {
+	for a := range moves {
+		for b := a + 1; b < len(moves); b++ {
+			if moves[a] == nil || moves[b] == nil {
 				continue
 			}
-			c := math.Abs(cosine(all[a].moves, all[b].moves))
-			key := [2]int{all[b].cause, all[a].cause}
-			best[key] = max(best[key], c)
-		}
-	}
-	for a := range j.k.Causes {
-		for b := range j.k.Causes {
-			if c, ok := best[[2]int{a, b}]; ok && c >= alikeCosine {
+			if c := math.Abs(cosine(moves[a], moves[b])); c >= alikeCosine {
 				out = append(out, Alike{j.k.Causes[a].Cause, j.k.Causes[b].Cause, c})
 			}
 		}
 	}
 	return out
+}
+
+// supported is the variant of a cause that the lot's levels speak for, nil when they
+// do for none.
+func (j *judged) supported(cause int) *variant {
+	var best *seen
+	top := 2.0 // nats
+	for _, h := range j.all {
+		if len(h.causes) != 1 || h.causes[0] != cause || h.sees[0] == nil || h.sees[0].v.test >= 0 {
+			continue
+		}
+		if v := h.views[lotView] + h.views[waferView] + h.views[zoneView]; v > top {
+			best, top = h.sees[0], v
+		}
+	}
+	if best == nil {
+		return nil
+	}
+	return best.v
 }
 
 // whiten divides moves by the healthy spread, correlation taken out.

@@ -257,10 +257,7 @@ func (j *judged) likeness(e *Entry) [][]float64 {
 	if chances == nil {
 		return nil
 	}
-	total := 0.0
-	for _, w := range e.Maps {
-		total += w
-	}
+	total := totalOf(e.Maps)
 	const blur = 0.1
 	out := make([][]float64, len(chances))
 	for c, p := range chances {

@@ -150,13 +150,14 @@ func (c *Catalogue) check(e *Entry) error {
 		if !(s.From > 0 && s.To > s.From) {
 			return fmt.Errorf("%s: a shift needs 0 < from < to, not %v and %v", e.Cause, s.From, s.To)
 		}
-		for name := range s.Parameters {
+		for _, name := range sortedKeys(s.Parameters) {
 			if _, ok := parameters[name]; !ok {
 				return fmt.Errorf("%s: no parameter %q; there are %s", e.Cause, name, strings.Join(sortedKeys(parameters), ", "))
 			}
 		}
 	}
-	for name, p := range e.Dice {
+	for _, name := range sortedKeys(e.Dice) {
+		p := e.Dice[name]
 		if !slices.ContainsFunc(c.Classes, func(k Class) bool { return k.Class == name }) {
 			return fmt.Errorf("%s: no class of dice %q", e.Cause, name)
 		}
@@ -164,7 +165,8 @@ func (c *Catalogue) check(e *Entry) error {
 			return fmt.Errorf("%s: chance %v of %s", e.Cause, p, name)
 		}
 	}
-	for name, p := range e.Flags {
+	for _, name := range sortedKeys(e.Flags) {
+		p := e.Flags[name]
 		if !slices.ContainsFunc(c.Flags, func(f Flag) bool { return f.Flag == name }) {
 			return fmt.Errorf("%s: no flag %q", e.Cause, name)
 		}
@@ -172,7 +174,8 @@ func (c *Catalogue) check(e *Entry) error {
 			return fmt.Errorf("%s: chance of %s must be between 0 and 1, not %v", e.Cause, name, p)
 		}
 	}
-	for name, p := range e.Maps {
+	for _, name := range sortedKeys(e.Maps) {
+		p := e.Maps[name]
 		if !slices.Contains(patterns, name) || !(p >= 0) {
 			return fmt.Errorf("%s: no map pattern %q with weight %v", e.Cause, name, p)
 		}

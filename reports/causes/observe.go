@@ -21,7 +21,8 @@ func Observe(ctx context.Context, c *Columns, k *Catalogue) (*Evidence, error) {
 	e := &Evidence{cols: c, Dice: n, Reference: make([]float64, tests), Scatter: make([]float64, tests),
 		Lot: make([]float64, tests), Wafers: make([]WaferEvidence, len(c.Wafers)),
 		class: make([]int8, n), zone: make([]int8, n)}
-	o := &observer{c: c, k: k, e: e, majority: make([]float64, tests), hard: make([]bool, n), odd: make([]uint64, n), spread: make([][]float64, len(c.Wafers))}
+	o := &observer{c: c, k: k, e: e, majority: make([]float64, tests), hard: make([]bool, n), odd: make([]uint64, n), spread: make([][]float64, len(c.Wafers)),
+		sound: make([][zones + 1][]int32, len(c.Wafers))}
 	o.findMajority()
 	// Levels are taken twice: the second time without the readings that stood alone
 	// the first time.
@@ -63,10 +64,11 @@ type observer struct {
 	c        *Columns
 	k        *Catalogue
 	e        *Evidence
-	majority []float64 // by test: median of the wafers' medians, SI
-	hard     []bool    // by row: a reading that no shift of a level explains
-	odd      []uint64  // by row: tests (of the first 64) whose reading stands alone
-	spread   [][]float64
+	majority []float64            // by test: median of the wafers' medians, SI
+	hard     []bool               // by row: a reading that no shift of a level explains
+	odd      []uint64             // by row: tests (of the first 64) whose reading stands alone
+	sound    [][zones + 1][]int32 // by wafer and zone (the first without a place): rows that are not hard
+	spread   [][]float64          // by wafer and test
 }
 
 // findMajority takes the level that most wafers have, and with it the healthy
@@ -139,6 +141,9 @@ func (o *observer) place(w int) {
 				o.hard[i] = true
 				break
 			}
+		}
+		if z := o.e.zone[i] + 1; !o.hard[i] {
+			o.sound[w][z] = append(o.sound[w][z], int32(i))
 		}
 	}
 }
@@ -217,7 +222,7 @@ func (o *observer) levels(w int) {
 		}
 	}
 	spread := nans(tests)
-	buf := make([]float64, 0, s.Hi-s.Lo)
+	buf := make([]float64, 0, 2*(s.Hi-s.Lo))
 	for t := range c.Tests {
 		var sum, weight, errors float64
 		var sigmas []float64
@@ -229,7 +234,7 @@ func (o *observer) levels(w int) {
 			if have == 0 {
 				continue
 			}
-			m, sigma, n := o.zoneLevel(t, s, z, buf)
+			m, sigma, n := o.zoneLevel(t, w, z, buf)
 			if n < leastDice || 10*n < 3*have && n < 40 {
 				continue
 			}
@@ -266,12 +271,12 @@ func (o *observer) levels(w int) {
 // zoneLevel is the median log ratio of a test to its reference over the dice of
 // zone z (-1: those without a place) that are not hard, with the robust sigma of a
 // die and how many there are. NaN where the median is only a bound.
-func (o *observer) zoneLevel(t int, s Span, z int8, buf []float64) (level, sigma float64, n int) {
+func (o *observer) zoneLevel(t, w int, z int8, buf []float64) (level, sigma float64, n int) {
 	test := &o.c.Tests[t]
 	buf = buf[:0]
 	bounds := 0
-	for i := s.Lo; i < s.Hi; i++ {
-		if o.e.zone[i] != z || o.hard[i] || t < 64 && o.odd[i]>>t&1 == 1 {
+	for _, i := range o.sound[w][z+1] {
+		if t < 64 && o.odd[i]>>t&1 == 1 {
 			continue
 		}
 		v := test.Values[i]
@@ -308,7 +313,7 @@ func (o *observer) zoneLevel(t int, s Span, z int8, buf []float64) (level, sigma
 
 // spreadAbout is the robust sigma of v about a level.
 func spreadAbout(v []float64, level float64) float64 {
-	d := make([]float64, len(v))
+	d := append(v[len(v):], v...) // in what room is left behind v
 	for i, x := range v {
 		d[i] = math.Abs(x - level)
 	}

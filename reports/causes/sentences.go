@@ -273,10 +273,7 @@ func (j *judged) mapReasons(e *Entry, weight float64) []Reason {
 	if chances == nil || d.sum == 0 || len(e.Maps) == 0 {
 		return nil
 	}
-	total := 0.0
-	for _, w := range e.Maps {
-		total += w
-	}
+	total := totalOf(e.Maps)
 	var out []Reason
 	for g := range groups {
 		in := 0.0

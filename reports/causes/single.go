@@ -278,13 +278,19 @@ func (e *Evidence) mapWeights(k *Catalogue, g int) (weights []float64, n float64
 var healthyMaps = map[string]float64{"random": 10, "none": 2, "edge-ring": 4, "edge-arc": 0.8, "gradient": 0.6, "annulus": 0.2, "sector": 0.2,
 	"centre": 0.2, "blob": 0.2, "stripe": 0.2, "line": 0.15, "site": 0.1, "shot-repeat": 0.1}
 
+// totalOf sums the weights of patterns, in their fixed order.
+func totalOf(maps map[string]float64) float64 {
+	sum := 0.0
+	for _, p := range patterns {
+		sum += maps[p]
+	}
+	return sum
+}
+
 // healthy is the view of the maps when nothing is wrong: all groups count, as far
 // as the single dice are in them.
 func (m *mapTable) healthy() float64 {
-	total := 0.0
-	for _, w := range healthyMaps {
-		total += w
-	}
+	total := totalOf(healthyMaps)
 	ll := 0.0
 	for g := range groups {
 		for p, share := range m.share[g] {
@@ -303,10 +309,7 @@ func (m *mapTable) of(k *Catalogue, e *Entry, d *diceTable) float64 {
 	if chances == nil || d.sum == 0 || len(e.Maps) == 0 {
 		return 0
 	}
-	total := 0.0
-	for _, w := range e.Maps {
-		total += w
-	}
+	total := totalOf(e.Maps)
 	ll := 0.0
 	for g := range groups {
 		weight := 0.0

@@ -242,10 +242,7 @@ func (m *mapTable) ofPair(k *Catalogue, a, b *Entry, d *diceTable) float64 {
 		joint.Dice[k.Classes[c].Class] = pa[c] + pb[c]
 	}
 	for _, e := range []*Entry{a, b} {
-		sum := 0.0
-		for _, w := range e.Maps {
-			sum += w
-		}
+		sum := totalOf(e.Maps)
 		for _, p := range patterns {
 			if w := e.Maps[p]; w > 0 {
 				joint.Maps[p] += w / sum
