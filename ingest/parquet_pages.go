@@ -14,10 +14,10 @@ import (
 	"github.com/klauspost/compress/zstd"
 )
 
-// The library for Parquet trusts the pages of a file: levels that end early keep
-// it going round for ever, an index beyond the dictionary or a length in a packed
-// page lets it make room that no machine has, and neither is a panic that could be
-// caught. So each page is walked here first: what it says of itself must fit into
+// The library for Parquet trusts the pages of a file: it has loops that need levels
+// for all the rows that a page claims, and makes room for whatever index, length or
+// number a page gives, which may be more than any machine has. Neither is a panic
+// that could be caught. So each page is walked here first: what it says of itself must fit into
 // its bytes, and into what a file of this size may unpack to. Columns of float64,
 // most of any lot, are then taken from here straight into their place.
 
