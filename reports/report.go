@@ -498,7 +498,7 @@ type WaferLevel struct {
 	Fails    int    `json:"fails"` // dice outside a limit of this test
 	Why      string `json:"why,omitempty"`
 
-	Surface *Surface `json:"surface"` // null with the test's surface_why
+	Surface *Surface `json:"surface"` // null but for the few tests that lose most or have most shape
 }
 
 // Surface is the smooth shape of a test's readings over the wafer: Zernike terms,

@@ -28,6 +28,7 @@ type mapwork struct {
 	all     *stack     // of the lot; nil with fewer than two wafers
 	stacks  []*stack   // in the order of Report.Stacks
 	typical []*typical // by test; nil where there is none
+	shown   []int      // tests whose typical wafer is drawn
 }
 
 // prepareMaps makes room for what the wafers' accounts find.
@@ -162,14 +163,15 @@ func (w *lotwork) hotSpots(grid *wafermap.Grid, fail []bool) *reports.HotSpots {
 }
 
 // scan looks for the circle with the most unlikely fails. Ellipses would take ten
-// times as long and tell little more beside the search for patterns.
+// times as long, and wide ones twice, and tell little more beside the search for
+// patterns.
 func (w *lotwork) scan(grid *wafermap.Grid, fail []bool) *reports.Scan {
 	out := &reports.Scan{X: reports.NaN, Y: reports.NaN, Radius: reports.NaN, Expected: reports.NaN, PValue: reports.NaN, Unit: w.geo.Unit}
 	if len(fail) > scanMost {
 		out.Why = "wafers of more than 200,000 dice are not scanned: the random wafers would take too long"
 		return out
 	}
-	o := wafermap.ScanOptions{CirclesOnly: true, Simulations: 199}
+	o := wafermap.ScanOptions{CirclesOnly: true, Simulations: 199, MaxShare: 0.25}
 	if len(fail) > scanFine {
 		o.Simulations = 99
 	}

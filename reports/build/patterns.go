@@ -2,6 +2,7 @@ package build
 
 import (
 	"math"
+	"slices"
 
 	"kneepoint/reports"
 	"kneepoint/wafermap"
@@ -34,7 +35,11 @@ func (w *lotwork) paths(s *wafermap.Signature, box wafermap.Box) []reports.Path 
 		return nil
 	}
 	tolerance := 0.002 * w.geo.Radius() / math.Min(w.geo.DieWidthMM, w.geo.DieHeightMM)
-	for _, path := range s.Paths() {
+	paths := s.Paths()
+	if s.Kind == "line" {
+		paths = [][]wafermap.Point{w.band(paths[0], s.Outline.Width/2)}
+	}
+	for _, path := range paths {
 		points := make([][2]float64, len(path))
 		for i, p := range path {
 			points[i][0], points[i][1] = w.onGrid(p)
@@ -42,6 +47,29 @@ func (w *lotwork) paths(s *wafermap.Signature, box wafermap.Box) []reports.Path 
 		out = append(out, pathOf(simplify(points, tolerance)))
 	}
 	return out
+}
+
+// band is the outline of a line of half a width, as far as it lies on the wafer.
+func (w *lotwork) band(line []wafermap.Point, half float64) []wafermap.Point {
+	var there, back []wafermap.Point
+	for i, p := range line {
+		if math.Hypot(p.X, p.Y) > w.geo.Radius() {
+			continue
+		}
+		a, b := line[max(i-1, 0)], line[min(i+1, len(line)-1)]
+		long := math.Hypot(b.X-a.X, b.Y-a.Y)
+		if long == 0 {
+			continue
+		}
+		dx, dy := -half*(b.Y-a.Y)/long, half*(b.X-a.X)/long
+		there = append(there, wafermap.Point{X: p.X + dx, Y: p.Y + dy})
+		back = append(back, wafermap.Point{X: p.X - dx, Y: p.Y - dy})
+	}
+	if len(there) < 2 {
+		return line
+	}
+	slices.Reverse(back)
+	return append(append(there, back...), there[0])
 }
 
 func pathOf(points [][2]float64) reports.Path {

@@ -39,7 +39,7 @@ func (w *lotwork) stackPictures(box wafermap.Box) error {
 			p.Stacks = append(p.Stacks, r)
 		}
 	}
-	for _, t := range w.shownSurfaces() {
+	for _, t := range w.maps.shown {
 		s, err := w.paintTypical(t, box)
 		if err != nil {
 			return err

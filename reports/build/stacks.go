@@ -142,13 +142,12 @@ func leastOften(n int, rate float64) int32 {
 
 // patterns looks for patterns in a stack.
 func (w *lotwork) patterns(p *places, s *stack, fails func(row int) bool) []reports.Signature {
-	rate, tested, positions := s.rate()
+	rate, tested, _ := s.rate()
 	if tested == 0 {
 		return nil
 	}
-	often := s.often(rate)
 	in := wafermap.SignatureInput{Geometry: w.geo}
-	in.Grid, in.Fail, in.Site = w.gridOf(p, s, often, positions)
+	in.Grid, in.Fail, in.Site = s.sample(p, s.often(rate))
 	if product := w.in.Product; product != nil {
 		in.ShotColumns, in.ShotRows = product.Wafer.ShotColumns, product.Wafer.ShotRows
 	}
@@ -160,29 +159,30 @@ func (w *lotwork) patterns(p *places, s *stack, fails func(row int) bool) []repo
 		out[i] = w.signature(&found[i], box)
 		members[i] = w.members(p, &found[i], &out[i])
 	}
-	w.weighStack(p, s, rate, out, members)
+	inside := overlaps(len(p.x), members)
+	weighStack(s, rate, out, members, inside)
 	for i := range out {
 		if members[i] != nil {
-			out[i].Wafers = w.onWafers(p, s, members[i], fails)
+			out[i].Wafers = w.onWafers(p, s, members[i], inside, fails)
 		}
 	}
 	return out
 }
 
-// gridOf is the stacked map of the positions that were tested.
-func (w *lotwork) gridOf(p *places, s *stack, often []bool, positions int) (*wafermap.Grid, []bool, []int32) {
-	x, y, fail := make([]int32, 0, positions), make([]int32, 0, positions), make([]bool, 0, positions)
-	var site []int32
-	for k, n := range s.tested {
-		if n == 0 {
-			continue
-		}
-		x, y, fail = append(x, p.x[k]), append(y, p.y[k]), append(fail, often[k])
-		if p.site != nil {
-			site = append(site, p.site[k])
+// sample is the stacked map of the positions that were tested, or of some of very many:
+// what many wafers have in common shows in a part of their dice.
+func (s *stack) sample(p *places, often []bool) (*wafermap.Grid, []bool, []int32) {
+	var rows []int
+	for _, k := range thin(p.x, p.y, 0, len(p.x), stackedDice) {
+		if s.tested[k] > 0 {
+			rows = append(rows, k)
 		}
 	}
-	return wafermap.NewGrid(x, y), fail, site
+	fail := make([]bool, len(rows))
+	for i, k := range rows {
+		fail[i] = often[k]
+	}
+	return wafermap.NewGrid(pickInts(p.x, rows), pickInts(p.y, rows)), fail, pickInts(p.site, rows)
 }
 
 // members says which positions lie inside a pattern; nil where its outline does not
@@ -210,19 +210,27 @@ func (w *lotwork) members(p *places, s *wafermap.Signature, r *reports.Signature
 	return out
 }
 
-// weighStack gives the patterns of a stack their rates and losses in dice. The
-// search knows positions that fail often only; what they cost is the fails inside an
-// outline beyond the rate outside of all.
-func (w *lotwork) weighStack(p *places, s *stack, rate float64, out []reports.Signature, members [][]bool) {
-	tested := sumOver(s.tested, nil)
-	outside := make([]bool, len(p.x))
-	for k := range outside {
-		outside[k] = true
-		for _, m := range members {
-			if m != nil && m[k] {
-				outside[k] = false
+// overlaps counts for each position the patterns that it lies in.
+func overlaps(positions int, members [][]bool) []uint8 {
+	out := make([]uint8, positions)
+	for _, m := range members {
+		for k, in := range m {
+			if in {
+				out[k]++
 			}
 		}
+	}
+	return out
+}
+
+// weighStack gives the patterns of a stack their rates and losses in dice. The
+// search knows positions that fail often only; what they cost is the fails inside an
+// outline beyond the rate outside of all. Patterns that overlap share.
+func weighStack(s *stack, rate float64, out []reports.Signature, members [][]bool, inside []uint8) {
+	tested := sumOver(s.tested, nil)
+	outside := make([]bool, len(inside))
+	for k, n := range inside {
+		outside[k] = n == 0
 	}
 	background := rate
 	if n := sumOver(s.tested, outside); n > 0 {
@@ -230,11 +238,16 @@ func (w *lotwork) weighStack(p *places, s *stack, rate float64, out []reports.Si
 	}
 	for i := range out {
 		r := &out[i]
-		switch {
-		case members[i] != nil:
-			n := sumOver(s.tested, members[i])
-			r.Rate, r.Background, r.Cover = num(sumOver(s.failing, members[i])/n), num(background), num(n/tested)
-			r.Loss = num(math.Max(0, sumOver(s.failing, members[i])-n*background) / tested)
+		switch m := members[i]; {
+		case m != nil:
+			n, lost := sumOver(s.tested, m), 0.0
+			for k, in := range m {
+				if in {
+					lost += (float64(s.failing[k]) - background*float64(s.tested[k])) / float64(inside[k])
+				}
+			}
+			r.Rate, r.Background, r.Cover = num(sumOver(s.failing, m)/n), num(background), num(n/tested)
+			r.Loss = num(math.Max(0, lost) / tested)
 		case structured(r.Kind) && r.Kind != "near-total":
 			r.Rate, r.Background, r.Cover, r.Loss = reports.NaN, reports.NaN, reports.NaN, reports.NaN
 		default:
@@ -262,25 +275,21 @@ func sumOver(counts []int32, set []bool) float64 {
 // outline than outside to be named with it.
 const clearlyMore = 3
 
-// onWafers are the wafers of a stack that have a pattern: more fails inside than
-// outside, beyond chance.
-func (w *lotwork) onWafers(p *places, s *stack, member []bool, fails func(row int) bool) []string {
+// onWafers are the wafers of a stack that have a pattern: more fails where it alone
+// lies than outside of all, beyond chance.
+func (w *lotwork) onWafers(p *places, s *stack, member []bool, inside []uint8, fails func(row int) bool) []string {
 	var out []string
 	for _, i := range s.wafers {
 		wafer := w.lot.Wafers()[i]
-		var n, o [2]float64
+		var n, o [2]float64 // outside, inside
 		for row := wafer.Lo; row < wafer.Hi; row++ {
 			k := p.of[row]
-			if k < 0 {
+			if k < 0 || inside[k] > 1 || inside[k] == 1 && !member[k] {
 				continue
 			}
-			in := 0
-			if member[k] {
-				in = 1
-			}
-			n[in]++
+			n[inside[k]]++
 			if fails(row) {
-				o[in]++
+				o[inside[k]]++
 			}
 		}
 		if n[0] == 0 || n[1] == 0 {

@@ -10,7 +10,7 @@ import (
 )
 
 const (
-	surfaceDice = 4000  // dice of a wafer that a surface is fitted to, and
+	surfaceDice = 2000  // dice of a wafer that a surface is fitted to, and
 	stackedDice = 20000 // positions of the typical wafer: more would tell no more
 	boundShare  = 0.1   // readings known as bounds only, from which a surface says nothing
 )
@@ -22,51 +22,45 @@ type typical struct {
 	log     bool
 }
 
-// surfaces fits the smooth shape of every test, on every wafer and on the typical one.
+// surfaces fits the smooth shape of every test on the typical wafer, and that of the
+// tests that matter most on every wafer.
 func (w *lotwork) surfaces(ctx context.Context, p *places) error {
 	tests, wafers := w.lot.Tests(), w.lot.Wafers()
 	w.maps.typical = make([]*typical, len(tests))
-	why := ""
-	if w.geo.Unit == "" {
-		why = "the wafer's geometry is not known: " + w.geo.Why
-	}
-	readings := make([][]float64, len(tests))
-	err := w.each(ctx, len(tests), func(t int) {
-		r := &w.rep.Tests[t]
-		if r.SurfaceWhy = why; why == "" {
-			readings[t], r.SurfaceWhy = w.smoothReadings(t)
-		}
-	})
-	if err != nil || why != "" {
-		return err
-	}
-	err = w.each(ctx, len(wafers), func(i int) { w.waferSurfaces(i, readings) })
-	if err != nil {
-		return err
-	}
 	grid := wafermap.NewGrid(p.x, p.y)
 	rows := thin(p.x, p.y, 0, len(p.x), stackedDice)
 	basis := w.basis(p.x, p.y, rows)
-	return w.each(ctx, len(tests), func(t int) {
-		if readings[t] == nil {
+	readings := make([][]float64, len(tests))
+	over := "median over the wafers at each die position"
+	if len(wafers) == 1 {
+		over = "dice"
+	}
+	err := w.each(ctx, len(tests), func(t int) {
+		v, why := w.smoothReadings(t)
+		if w.rep.Tests[t].SurfaceWhy = why; why != "" {
 			return
 		}
-		v := &typical{value: w.typicalWafer(p, readings[t]), log: w.logScale[t]}
-		w.maps.typical[t] = v
-		v.surface = basis.Fit(pick(v.value, rows), pickInts(p.site, rows))
-		over := "median over the wafers at each die position"
-		if len(wafers) == 1 {
-			over = "dice"
-		}
-		r := w.surface(t, &v.surface, over)
-		r.Alike = alike(grid, v.value)
+		readings[t] = v
+		typical := &typical{value: w.typicalWafer(p, v), log: w.logScale[t]}
+		typical.surface = basis.Fit(pick(typical.value, rows), pickInts(p.site, rows))
+		w.maps.typical[t] = typical
+		r := w.surface(t, &typical.surface, over)
+		r.Alike = alike(grid, typical.value)
 		w.rep.Tests[t].Surface = r
 	})
+	if err != nil {
+		return err
+	}
+	w.maps.shown = w.shownSurfaces()
+	return w.each(ctx, len(wafers), func(i int) { w.waferSurfaces(i, readings) })
 }
 
 // smoothReadings are a test's readings on the scale on which they are symmetric, in
 // the unit that is shown; bounds are left out.
 func (w *lotwork) smoothReadings(t int) ([]float64, string) {
+	if w.geo.Unit == "" {
+		return nil, "the wafer's geometry is not known: " + w.geo.Why
+	}
 	out := inUnit(w.lot.Values(t), w.lot.Tests()[t].Unit)
 	marks, bounds, n := w.lot.Censor(t), 0, 0
 	for i, v := range out {
@@ -90,7 +84,7 @@ func (w *lotwork) smoothReadings(t int) ([]float64, string) {
 	return out, ""
 }
 
-// waferSurfaces fits all tests of wafer i.
+// waferSurfaces fits the tests that are drawn on wafer i.
 func (w *lotwork) waferSurfaces(i int, readings [][]float64) {
 	lo, hi := w.lot.Wafers()[i].Lo, w.lot.Wafers()[i].Hi
 	x, y := w.lot.X(), w.lot.Y()
@@ -102,13 +96,10 @@ func (w *lotwork) waferSurfaces(i int, readings [][]float64) {
 	if len(rows) < hi-lo {
 		over = "some dice spread evenly"
 	}
-	for t, v := range readings {
-		if v == nil {
-			continue
-		}
-		s := basis.Fit(pick(v, rows), site)
+	for _, t := range w.maps.shown {
+		s := basis.Fit(pick(readings[t], rows), site)
 		r := w.surface(t, &s, over)
-		r.Alike = alike(grid, v[lo:hi])
+		r.Alike = alike(grid, readings[t][lo:hi])
 		w.rep.Tests[t].ByWafer[i].Surface = r
 	}
 }

@@ -162,13 +162,13 @@ func TestPageInBrowser(t *testing.T) {
 		if none := eval[[]string](p, "return "+empty); len(none) > 0 {
 			t.Errorf("empty charts: %v", none)
 		}
-		if n := eval[int](p, `return document.querySelectorAll(".chart[data-drawn]").length`); n != 5+27 {
-			t.Errorf("%d charts drawn, want 32", n)
+		if n := eval[int](p, `return document.querySelectorAll(".chart[data-drawn]").length`); n != 6+27 {
+			t.Errorf("%d charts drawn, want 33", n)
 		}
 		if n := eval[int](p, `document.querySelector('[data-counts="log"]').click();
-			document.querySelector("details.numbers summary").click();
-			await wait(() => document.querySelector("details.numbers table"));
-			return document.querySelector("details.numbers tbody").rows.length`); n != 70 {
+			document.querySelector("#tests details.numbers summary").click();
+			await wait(() => document.querySelector("#tests details.numbers table"));
+			return document.querySelector("#tests details.numbers tbody").rows.length`); n != 70 {
 			t.Errorf("the histogram's table has %d rows, want 70", n)
 		}
 		if none := eval[[]string](p, "return "+empty); len(none) > 0 {
@@ -203,6 +203,10 @@ func TestPageInBrowser(t *testing.T) {
 	t.Run("reads a die from the keyboard", func(t *testing.T) {
 		p := open(t, b, lot, 1440)
 		title := `return document.getElementById("viewer").open ? document.getElementById("viewer-title").textContent : "closed"`
+		if hidden := eval[bool](p, `const button = document.querySelector("[data-signs]"), shown = () => getComputedStyle(document.querySelector("#gallery .signs")).display !== "none";
+			const before = shown(); button.click(); const after = shown(); button.click(); return before && !after && shown()`); !hidden {
+			t.Error("the outlines do not go and come with their button")
+		}
 		eval[bool](p, `document.querySelector('button.map[data-map="2"]').focus(); return true`)
 		p.do(chromedp.KeyEvent(kb.Enter))
 		if got := eval[string](p, title); got != "Wafer 03" {

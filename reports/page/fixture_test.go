@@ -288,6 +288,40 @@ func (f *fixtureLot) finish() {
 		r.Zones = append(r.Zones, z)
 	}
 	f.stack()
+	f.patterns()
+}
+
+// patterns gives the wafers patterns, groups, stacks and the rest that maps have.
+func (f *fixtureLot) patterns() {
+	r := f.report
+	n := reports.Number(f.radius)
+	square := []reports.Path{{X: []reports.Number{-n / 2, n / 2, n / 2, -n / 2, -n / 2}, Y: []reports.Number{-n / 2, -n / 2, n / 2, n / 2, -n / 2}}}
+	blob := reports.Signature{Kind: "blob", Strength: 0.6, PValue: 3e-12, Loss: 0.08, Rate: 0.7, Background: 0.03, Cover: 0.12, Wafers: []string{"03", "04"}, Outline: square, Text: "20 by 20 mm at (0, 0) mm"}
+	random := reports.Signature{Kind: "random", Strength: 1, PValue: 0.4, Loss: 0.05, Rate: 0.05, Text: "no structure beyond chance"}
+	moment := reports.Moment{Value: 0.31, Expected: -0.001, Z: 22, PValue: 4e-80}
+	for i := range r.Wafers {
+		w := &r.Wafers[i]
+		w.Group, w.Signatures = 1, []reports.Signature{random}
+		if i >= 2 && i < 6 {
+			w.Group, w.Signatures = 2, []reports.Signature{blob}
+		}
+		w.Spatial.Alike = &reports.Alike{N: w.Dice, Moran: moment, Geary: moment}
+		w.Spatial.HotSpots = &reports.HotSpots{Level: 0.05, Dice: 12}
+		w.Spatial.Scan = &reports.Scan{X: 1, Y: 2, Radius: 12, Unit: "mm", Dice: 60, Fails: 40, Expected: 5.2, PValue: 0.005}
+	}
+	r.Signatures = []reports.Signature{blob}
+	r.Groups = []reports.Group{{ID: 1, Wafers: []string{"01", "02"}, Dice: 100, Yield: 0.95, Text: "no pattern in common"}, {ID: 2, Wafers: []string{"03", "04"}, Dice: 100, Yield: 0.7, Text: "blob"}}
+	r.Stacks = []reports.Stack{{Of: "group", Group: 1, Wafers: 2, Positions: 50, Rate: 0.05, Signatures: []reports.Signature{random}},
+		{Of: "group", Group: 2, Wafers: 2, Positions: 50, Rate: 0.3, Signatures: []reports.Signature{blob}}, {Of: "test", Test: "BVCBO", Wafers: 4, Positions: 50, Rate: 0.02, Signatures: []reports.Signature{random}}}
+	for range r.Stacks {
+		r.Pictures.Stacks = append(r.Pictures.Stacks, *r.Pictures.Stacked)
+	}
+	r.Repeaters, r.RepeatersAll = []reports.Repeater{{X: 3, Y: -4, Tested: 25, Failing: 22, Expected: 1.4, PValue: 1e-20, Adjusted: 1e-17, RadiusMM: 11.2, Main: "BVCBO"}}, 1
+	r.Pictures.Surfaces = []reports.Surfaces{{Test: "BVCEO", Smooth: *r.Pictures.Stacked, Residual: *r.Pictures.Stacked}}
+	for i := range r.Tests {
+		e := reports.Interval{Estimate: 0.3, Lower: 0.1, Upper: 0.5}
+		r.Tests[i].Surface = &reports.Surface{N: 900, Over: "dice", Unit: r.Tests[i].Unit, Terms: 15, Order: 4, Smooth: 0.7, Site: 0.05, Die: 0.25, Noise: 0.1, Bowl: e, Tilt: e, Direction: 90, RollOff: e, Alike: &reports.Alike{N: 900, Moran: moment, Geary: moment}}
+	}
 }
 
 func (f *fixtureLot) stack() {

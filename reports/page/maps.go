@@ -16,7 +16,7 @@ type gallery struct {
 	Wafers  []waferMap
 	Stacked *waferMap
 	Key     []swatch // over all wafers, with counts
-	Data    template.JS
+	Signs   bool     // some map has an outline of a pattern
 	Why     string
 }
 
@@ -26,6 +26,7 @@ type waferMap struct {
 	Index  int // in the page's map data
 	Name   string
 	Text   string // yield, or what is stacked
+	Words  string // its patterns, briefly
 	Alt    string
 	Low    bool // stands out low
 	Order  int
@@ -37,7 +38,8 @@ type waferMap struct {
 	View   string // view box
 	CX, CY string // outline; empty when the wafer's radius is not known
 	RX, RY string
-	Notch  string // path
+	Notch  string   // path
+	Signs  []string // paths of its patterns' outlines
 	Key    []swatch
 	Ratio  string // width over height of the view box
 }
@@ -51,16 +53,17 @@ type swatch struct {
 
 // mapData is what the page's script needs to read a die back from a picture.
 type mapData struct {
-	Name    string  `json:"name"`
-	Text    string  `json:"text"`
-	Columns int     `json:"columns"`
-	Rows    int     `json:"rows"`
-	X0      int     `json:"x0"`
-	Y0      int     `json:"y0"`
-	YDown   bool    `json:"yDown"`
-	Step    int     `json:"step"`
-	Aspect  float64 `json:"aspect"`
-	Legend  []entry `json:"legend"`
+	Title   string   `json:"title"`
+	Text    string   `json:"text"`
+	Signs   []string `json:"signs"`
+	Columns int      `json:"columns"`
+	Rows    int      `json:"rows"`
+	X0      int      `json:"x0"`
+	Y0      int      `json:"y0"`
+	YDown   bool     `json:"yDown"`
+	Step    int      `json:"step"`
+	Aspect  float64  `json:"aspect"`
+	Legend  []entry  `json:"legend"`
 }
 
 type entry struct {
@@ -72,51 +75,77 @@ type entry struct {
 // thumbnailPixels is how many dice across a small map shows one by one.
 const thumbnailPixels = 130
 
-func newGallery(r *reports.Report) (gallery, error) {
+// atlas collects what the script needs of all maps of the page.
+type atlas struct{ data []mapData }
+
+// add takes a map in; nil for a picture without pixels.
+func (a *atlas) add(p *reports.Raster, title, text string, patterns []reports.Signature) *waferMap {
+	if p == nil || len(p.PNG) == 0 || p.Columns <= 0 || p.Rows <= 0 {
+		return nil
+	}
+	m := newWaferMap(p)
+	m.Index, m.Alt, m.Text = len(a.data), title, text
+	m.Signs = outlines(p, patterns)
+	m.Words = briefly(patterns)
+	d := mapData{
+		Title: title, Text: text, Signs: []string{}, Columns: p.Columns, Rows: p.Rows, X0: p.X0, Y0: p.Y0, YDown: p.YDown, Step: max(1, p.Step), Aspect: aspect(p),
+		Legend: []entry{}, // never null for the script
+	}
+	for _, s := range patterns {
+		d.Signs = append(d.Signs, patternSentence(s))
+	}
+	for _, s := range p.Legend {
+		d.Legend = append(d.Legend, entry{[3]uint8{s.R, s.G, s.B}, s.Label, count(s.Dice)})
+	}
+	a.data = append(a.data, d)
+	return &m
+}
+
+// script is the collected data; empty without maps.
+func (a *atlas) script() (template.JS, error) {
+	if len(a.data) == 0 {
+		return "", nil
+	}
+	b, err := json.Marshal(a.data)
+	return template.JS(b), err
+}
+
+func newGallery(r *reports.Report, a *atlas) gallery {
 	g := gallery{Why: r.Pictures.Why}
 	byID := make(map[string]*reports.Wafer, len(r.Wafers))
 	for i := range r.Wafers {
 		byID[r.Wafers[i].ID] = &r.Wafers[i]
 	}
-	var data []mapData
-	add := func(p *reports.Raster) *waferMap {
-		m := newWaferMap(p)
-		m.Index = len(data)
-		d := mapData{
-			Name: p.Name, Columns: p.Columns, Rows: p.Rows, X0: p.X0, Y0: p.Y0, YDown: p.YDown, Step: max(1, p.Step), Aspect: aspect(p),
-			Legend: []entry{}, // never null for the script
-		}
-		for _, s := range p.Legend {
-			d.Legend = append(d.Legend, entry{[3]uint8{s.R, s.G, s.B}, s.Label, count(s.Dice)})
-		}
-		data = append(data, d)
-		return &m
-	}
 	for i := range r.Pictures.Wafers {
 		p := &r.Pictures.Wafers[i]
-		if len(p.PNG) == 0 || p.Columns <= 0 || p.Rows <= 0 {
+		w := byID[p.Name]
+		var patterns []reports.Signature
+		text := ""
+		if w != nil {
+			patterns = w.Signatures
+			text = "yield " + percent(w.Yield.Estimate) + " (" + percentRange(w.Yield) + "), " + plural(w.Dice, "die", "dice")
+		}
+		m := a.add(p, "Wafer "+p.Name, text, patterns)
+		if m == nil {
 			continue
 		}
-		m := add(p)
-		m.Order, m.Alt, m.Sort = i, "Map of wafer "+p.Name, ""
-		if w := byID[p.Name]; w != nil {
+		m.Order, m.Alt = i, "Map of wafer "+p.Name
+		if w != nil {
 			m.Text, m.Low, m.Sort = percent(w.Yield.Estimate), w.Stands == "low", sortKey(float64(w.Yield.Estimate))
 			m.Alt += ", yield " + m.Text
-			data[m.Index].Text = "yield " + m.Text + " (" + percentRange(w.Yield) + "), " + plural(w.Dice, "die", "dice")
+			if m.Words != "" {
+				m.Alt += ", " + m.Words
+			}
 		}
+		g.Signs = g.Signs || len(m.Signs) > 0
 		g.Wafers = append(g.Wafers, *m)
 	}
-	if p := r.Pictures.Stacked; p != nil && len(p.PNG) > 0 && p.Columns > 0 && p.Rows > 0 {
-		m := add(p)
-		m.Alt = "Stacked map: " + p.Name
-		m.Text = p.Name
-		data[m.Index].Text = "all wafers, one above the other"
+	if m := a.add(r.Pictures.Stacked, "Stacked map", "all wafers, one above the other", r.Signatures); m != nil {
+		m.Alt, m.Text = "Stacked map: "+r.Pictures.Stacked.Name, r.Pictures.Stacked.Name
 		g.Stacked = m
 	}
 	g.Key = sumLegends(r.Pictures.Wafers)
-	b, err := json.Marshal(data)
-	g.Data = template.JS(b)
-	return g, err
+	return g
 }
 
 func aspect(p *reports.Raster) float64 {

@@ -64,6 +64,8 @@ type view struct {
 	Epi       *epi
 	Losses    losses
 	Wafers    wafers
+	Patterns  patterns
+	MapData   template.JS
 	Zones     zones
 	Tests     []testCard
 	Others    others
@@ -103,7 +105,14 @@ func newView(r *reports.Report) (*view, error) {
 	if v.Losses, err = newLosses(r, tests); err != nil {
 		return nil, err
 	}
-	if v.Wafers, err = newWafers(r); err != nil {
+	var maps atlas
+	if v.Wafers, err = newWafers(r, &maps); err != nil {
+		return nil, err
+	}
+	if v.Patterns, err = newPatterns(r, &maps); err != nil {
+		return nil, err
+	}
+	if v.MapData, err = maps.script(); err != nil {
 		return nil, err
 	}
 	if v.Others, err = newOthers(r); err != nil {

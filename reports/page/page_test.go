@@ -82,6 +82,11 @@ func hostileReport(t testing.TB) *reports.Report {
 	for i := range r.Zones {
 		r.Zones[i].Name = attack
 	}
+	for i := range r.Stacks {
+		r.Stacks[i].Test, r.Groups[0].Text, r.Groups[0].Wafers[0] = attack, attack, attack
+		r.Stacks[i].Signatures[0].Text, r.Stacks[i].Signatures[0].Wafers, r.Wafers[0].Signatures[0].Text = attack, []string{attack}, attack
+	}
+	r.Repeaters[0].Main, r.Pictures.Surfaces[0].Test, r.Wafers[0].Spatial.Scan.Unit = attack, attack, attack
 	for i := range r.Bins {
 		r.Bins[i].Name = attack
 	}
@@ -374,7 +379,7 @@ func TestChartsHaveTheirNumbers(t *testing.T) {
 			}
 		}
 	})
-	if want := 2 + 1 + 2 + 3*9; charts != want {
+	if want := 2 + 1 + 1 + 2 + 3*9; charts != want {
 		t.Errorf("%d charts, want %d", charts, want)
 	}
 }

@@ -1,8 +1,6 @@
 package page
 
 import (
-	"cmp"
-	"fmt"
 	"maps"
 	"slices"
 	"strings"
@@ -17,12 +15,9 @@ type wafers struct {
 	Table *table
 }
 
-func newWafers(r *reports.Report) (wafers, error) {
-	var w wafers
+func newWafers(r *reports.Report, a *atlas) (wafers, error) {
+	w := wafers{Maps: newGallery(r, a)}
 	var err error
-	if w.Maps, err = newGallery(r); err != nil {
-		return w, err
-	}
 	if len(r.Wafers) == 0 {
 		return w, nil
 	}
@@ -48,17 +43,8 @@ func waferTable(r *reports.Report, low float64) *table {
 		{Name: "Dice", Numeric: true}, {Name: "First pass", Numeric: true}, {Name: "Retested", Numeric: true},
 	}}
 	has := waferExtras(r)
-	if has.spatial {
-		t.Columns = append(t.Columns, column{Name: "Joins z", Numeric: true, Help: "fail-fail joins against chance, in standard deviations"},
-			column{Name: "p", Numeric: true, Help: "chance of so many joins or more, fails scattered at random"},
-			column{Name: "Largest cluster", Numeric: true, Help: "dice of the largest connected group of fails, its centre, and that one's distance from the wafer's"})
-		t.Note = "Joins: failing neighbours of failing dice, against what chance gives; a large z with a small p says that the fails are clustered."
-	}
-	if has.spatialWhy != "" {
-		t.Note = sentence("Join counts and clusters: " + notAvailable + reason(has.spatialWhy))
-	}
 	if has.signatures {
-		t.Columns = append(t.Columns, column{Name: "Pattern", Plain: true})
+		t.Columns = append(t.Columns, column{Name: "Patterns", Plain: true, Help: "patterns of the fail map with the loss to each, those that cost most first"})
 	}
 	if has.group {
 		t.Columns = append(t.Columns, column{Name: "Group", Numeric: true})
@@ -85,11 +71,8 @@ func waferRow(w *reports.Wafer, low float64, has extras) []cell {
 		{Text: shares(w.MainLoss), Class: "wide losses"},
 		counted(w.Dice), number(percent(w.FirstPass), w.FirstPass), counted(w.Retested),
 	}
-	if has.spatial {
-		row = append(row, spatialCells(&w.Spatial)...)
-	}
 	if has.signatures {
-		row = append(row, cell{Text: signatures(w.Signatures), Class: "phrase"})
+		row = append(row, cell{Text: patternsWithLoss(w.Signatures), Class: "phrase"})
 	}
 	if has.group {
 		c := cell{}
@@ -109,10 +92,9 @@ func waferRow(w *reports.Wafer, low float64, has extras) []cell {
 
 // extras are the columns that only some reports have.
 type extras struct {
-	spatial, signatures, group bool
-	spatialWhy                 string // when no wafer has any
-	attributes                 []string
-	proposals                  map[string]string
+	signatures, group bool
+	attributes        []string
+	proposals         map[string]string
 }
 
 func waferExtras(r *reports.Report) extras {
@@ -120,16 +102,11 @@ func waferExtras(r *reports.Report) extras {
 	names := map[string]bool{}
 	for i := range r.Wafers {
 		w := &r.Wafers[i]
-		e.spatial = e.spatial || w.Spatial.JoinCount != nil || len(w.Spatial.Clusters) > 0
-		e.spatialWhy = cmp.Or(e.spatialWhy, w.Spatial.Why)
 		e.signatures = e.signatures || len(w.Signatures) > 0
 		e.group = e.group || w.Group != 0
 		for a := range w.Attributes {
 			names[a] = true
 		}
-	}
-	if e.spatial {
-		e.spatialWhy = ""
 	}
 	e.attributes = slices.Sorted(maps.Keys(names))
 	if len(r.Disposition.Wafers) > 0 {
@@ -147,47 +124,6 @@ func shares(list []reports.Share) string {
 		parts = append(parts, s.Name+space+percent(s.Share))
 	}
 	return strings.Join(parts, ", ")
-}
-
-func spatialCells(s *reports.Spatial) []cell {
-	z, p := text(notAvailable), text(notAvailable)
-	if s.Why != "" {
-		p = text(notAvailable + ": " + s.Why)
-	}
-	if j := s.JoinCount; j != nil {
-		z, p = number(score(j.Z), j.Z), number(pValue(j.PValue), j.PValue)
-	}
-	largest := text("none")
-	if len(s.Clusters) > 0 {
-		c := s.Clusters[0]
-		largest = counted(c.Dice)
-		largest.Class = "loose"
-		if c.X.Valid() && c.Y.Valid() {
-			largest.Text += fmt.Sprintf(" at x%s%s, y%s%s", space, fixed(float64(c.X), 0), space, fixed(float64(c.Y), 0))
-		}
-		if c.RadiusMM.Valid() {
-			largest.Text += ", r" + space + fixed(float64(c.RadiusMM), 1) + space + "mm"
-		}
-	} else if s.Why != "" {
-		largest = text(notAvailable)
-	}
-	return []cell{z, p, largest}
-}
-
-func signatures(list []reports.Signature) string {
-	var parts []string
-	for _, s := range list {
-		part := s.Kind
-		if s.Loss.Valid() {
-			part += " (loss " + percent(s.Loss)
-			if s.PValue.Valid() {
-				part += ", p " + pValue(s.PValue)
-			}
-			part += ")"
-		}
-		parts = append(parts, part)
-	}
-	return strings.Join(parts, "; ")
 }
 
 // waferChart draws each wafer's yield with its interval, against the lot's and

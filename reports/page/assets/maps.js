@@ -23,6 +23,9 @@ function startMaps() {
   for (const button of document.querySelectorAll("button[data-order]")) {
     button.addEventListener("click", () => orderMaps(button));
   }
+  for (const button of document.querySelectorAll("button[data-signs]")) {
+    button.addEventListener("click", () => toggleSigns(button));
+  }
   for (const button of viewer.dialog.querySelectorAll("[data-step]")) {
     button.addEventListener("click", () => stepMap(Number(button.dataset.step)));
   }
@@ -48,6 +51,13 @@ function orderMaps(pressed) {
   const figures = [...gallery.children];
   figures.sort((a, b) => key(a) - key(b) || Number(a.dataset.order) - Number(b.dataset.order));
   gallery.append(...figures);
+}
+
+// The outlines of patterns on all maps, the larger view's too.
+function toggleSigns(button) {
+  const shown = button.getAttribute("aria-pressed") !== "true";
+  button.setAttribute("aria-pressed", String(shown));
+  document.body.classList.toggle("no-signs", !shown);
 }
 
 // The maps in the order in which the page shows them now.
@@ -82,12 +92,22 @@ function openMap(index) {
   plate.replaceChildren(viewer.svg);
   viewer.column = Math.floor(map.columns / 2);
   viewer.row = Math.floor(map.rows / 2);
-  const stacked = !mapButton(index).closest("#gallery");
-  document.getElementById("viewer-title").textContent = stacked ? "Stacked map" : "Wafer " + map.name;
+  document.getElementById("viewer-title").textContent = map.title;
   document.getElementById("viewer-text").textContent = map.text;
   document.getElementById("viewer-die").textContent = "Point at a die, or go to the map and use the arrow keys.";
+  showSigns(map);
   showLegend(map);
   if (!viewer.dialog.open) viewer.dialog.showModal();
+}
+
+function showSigns(map) {
+  const list = document.getElementById("viewer-signs");
+  list.replaceChildren();
+  for (const text of map.signs) {
+    const item = document.createElement("li");
+    item.textContent = text;
+    list.append(item);
+  }
 }
 
 function showLegend(map) {
