@@ -131,15 +131,6 @@ var demo = sync.OnceValues(func() (*reports.Report, synth.Truth) {
 	return r, synth.DemoSpec().Truth(synth.DemoSeed)
 })
 
-func causeOf(r *reports.Report, id string) *reports.Cause {
-	for i := range r.Causes {
-		if r.Causes[i].Cause == id {
-			return &r.Causes[i]
-		}
-	}
-	return nil
-}
-
 // TestDemoCauses holds the report of the demo lot against its answer sheet: which
 // cause, on which wafers, what it cost (yield without the cause less yield with it on
 // the same random numbers), by the lot and by the wafer.

@@ -27,7 +27,7 @@ func (s *sheet) causes(r *reports.Report) {
 	}
 	if len(r.Causes) > 0 && len(r.Causes[0].Next) > 0 {
 		n := r.Causes[0].Next[0]
-		s.add(false, "next      %s (%s bits)", n.Text, bits(n.InformationBits))
+		s.add(false, "next      %s bits: %s", bits(n.InformationBits), n.Text)
 	}
 }
 

@@ -28,7 +28,7 @@ func TestCauseLines(t *testing.T) {
 	out := b.String()
 	for _, want := range []string{
 		"cause     epi-thickness low 93 %: cost 8.0 % (7.0 % to 9.0 %), wafers 03 04; not told apart from ep…",
-		"cause     edge-dice 6 %", "next      measure Cob (0.41 bits)", "proposal  hold: a\n          b\n",
+		"cause     edge-dice 6 %", "next      0.41 bits: measure Cob", "proposal  hold: a\n          b\n",
 		"without the probable causes the yield would be 95.0 % (94.0 % to 96.0 %)",
 	} {
 		if !strings.Contains(out, want) {
