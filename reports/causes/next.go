@@ -127,17 +127,12 @@ func (v *Verdict) electrical() []Measurement {
 			continue
 		}
 		text := m.Tests[i].Name + ", on an affected and a healthy wafer"
-		var parts []string
 		sort.SliceStable(list, func(a, b int) bool { return list[a].p > list[b].p })
-		for _, o := range list[:min(2, len(list))] {
-			mean := 0.0
-			for k := range o.mean {
-				mean += o.weight[k] * o.mean[k]
-			}
-			if math.Abs(mean) < 0.005 {
-				parts = append(parts, o.name+" leaves it where it is")
-			} else {
-				parts = append(parts, o.name+" has it "+change(mean)+" healthy")
+		parts := []string{list[0].says()}
+		for k := 1; k < len(list); k++ {
+			if math.Abs(list[k].middle()-list[0].middle()) > list[0].sigma[0] { // the likeliest that it tells apart
+				parts = append(parts, list[k].says())
+				break
 			}
 		}
 		out = append(out, Measurement{Text: text + ": " + strings.Join(parts, ", "), Bits: bits, Caution: hazard(&m.Tests[i])})
@@ -158,8 +153,26 @@ func hazard(t *junction.Test) string {
 	return ""
 }
 
-// outcomes are the hypotheses' expectations of model test i, by the single causes
-// with some probability, nothing and the unknown.
+// middle is the mean of a mixture.
+func (o *outcome) middle() float64 {
+	m := 0.0
+	for k := range o.mean {
+		m += o.weight[k] * o.mean[k]
+	}
+	return m
+}
+
+func (o *outcome) says() string {
+	m := o.middle()
+	if math.Abs(m) < 0.005 {
+		return o.name + " leaves it where it is"
+	}
+	return o.name + " has it " + change(m) + " healthy"
+}
+
+// outcomes are the hypotheses' expectations of model test i, pairs among them: a
+// reading does not tell causes apart that may hold together. Those of hardly any
+// probability are left out.
 func (v *Verdict) outcomes(i int) []outcome {
 	j := v.j
 	m := j.e.cols.Model
@@ -172,51 +185,81 @@ func (v *Verdict) outcomes(i int) []outcome {
 	}
 	const wafers = waferShare // of what lots spread
 	sigma := math.Hypot(readError(m.Tests[i].Measures), wafers*math.Sqrt(spread))
+	const least = 0.003
 	var out []outcome
-	for c := range v.Causes {
-		g := &v.Causes[c]
-		if g.Probability < 0.01 {
+	sum := 0.0
+	for n, p := range j.posterior(&v.weigh) {
+		h := j.all[n]
+		if p < least {
 			continue
 		}
-		o := outcome{p: g.Probability, name: strings.TrimSpace(g.Cause + " " + g.Direction)}
-		still := func(s float64) { o.weight, o.mean, o.sigma = []float64{1}, []float64{0}, []float64{s} }
-		still(sigma)
-		if g.Cause == Unknown {
-			still(6 * sigma)
-		} else if shift, at := j.shiftOf(g.see); shift != nil {
-			o.weight, o.mean, o.sigma = nil, nil, nil
-			chance := j.sizeChances(g.see)
-			sum := 0.0
-			for k, size := range at {
-				move := j.moveOf(i, shift, size)
-				if math.IsNaN(move) {
-					continue
-				}
-				o.weight, o.mean = append(o.weight, chance[k]), append(o.mean, move)
-				o.sigma = append(o.sigma, math.Hypot(sigma, moveError*move))
-				sum += chance[k]
-			}
-			if sum <= 0 {
-				still(sigma)
-			} else {
-				for k := range o.weight {
-					o.weight[k] /= sum
-				}
-			}
+		o := outcome{p: p, name: j.nameOf(h), weight: []float64{1}, mean: []float64{0}, sigma: []float64{sigma}}
+		if h.unknown {
+			o.sigma[0] *= 6
+		}
+		for _, x := range h.sees {
+			j.shifted(&o, i, x)
 		}
 		out = append(out, o)
+		sum += p
 	}
 	if len(out) < 2 {
 		return nil
-	}
-	sum := 0.0
-	for _, o := range out {
-		sum += o.p
 	}
 	for k := range out {
 		out[k].p /= sum
 	}
 	return out
+}
+
+func (j *judged) nameOf(h *hypothesis) string {
+	var names []string
+	for n, c := range h.causes {
+		e := &j.k.Causes[c]
+		name := e.Cause
+		if len(e.Directions) > 0 {
+			name += " " + e.Directions[h.dirs[n]]
+		}
+		names = append(names, name)
+	}
+	switch {
+	case h.unknown:
+		return Unknown
+	case len(names) == 0:
+		return Nothing
+	}
+	return strings.Join(names, " and ")
+}
+
+// shifted moves an expectation of model test i by a cause's shift, over its sizes.
+func (j *judged) shifted(o *outcome, i int, x *seen) {
+	shift, at := j.shiftOf(x)
+	if shift == nil {
+		return
+	}
+	chance := j.sizeChances(x)
+	base := *o
+	o.weight, o.mean, o.sigma = nil, nil, nil
+	sum := 0.0
+	for k, size := range at {
+		move := j.moveOf(i, shift, size)
+		if math.IsNaN(move) {
+			continue
+		}
+		for b := range base.mean {
+			o.weight = append(o.weight, chance[k]*base.weight[b])
+			o.mean = append(o.mean, base.mean[b]+move)
+			o.sigma = append(o.sigma, math.Hypot(base.sigma[b], moveError*move))
+			sum += chance[k] * base.weight[b]
+		}
+	}
+	if !(sum > 0) {
+		*o = base
+		return
+	}
+	for k := range o.weight {
+		o.weight[k] /= sum
+	}
 }
 
 // moveOf is the change of a model test's log reading by a shift of a log size.
