@@ -30,7 +30,11 @@ var calibration rehearse.Options
 // bindCalibrate gives a command the flag that says where the weights of causes come
 // from.
 func bindCalibrate(c *cobra.Command, mode *string) {
-	c.Flags().StringVar(mode, "calibrate", calibrateAuto,
+	usual := calibrateAuto
+	if v := os.Getenv("KNEEPOINT_CALIBRATE"); v != "" {
+		usual = v
+	}
+	c.Flags().StringVar(mode, "calibrate", usual,
 		"calibration of causes: auto (kept from before, or made now), again (made now), off (usual weights)")
 }
 
@@ -49,13 +53,11 @@ func newDiagnosis(c *cobra.Command, p *config.Product, mode string) (*build.Diag
 	warn := func(format string, args ...any) {
 		fmt.Fprintf(c.ErrOrStderr(), "warning: %s\n", text.Printable(fmt.Sprintf(format, args...)))
 	}
-	dir, err := cacheFolder()
-	if err != nil {
-		warn("%v; the calibration will not be kept", err)
-	}
+	dir := cacheFolder()
 	if mode == calibrateAuto {
 		known := rehearse.Shipped(p)
 		if known == nil && dir != "" {
+			var err error
 			if known, err = rehearse.Load(dir, p); err != nil {
 				warn("%v; calibrating again", err)
 			}
@@ -95,18 +97,22 @@ func calibrate(c *cobra.Command, p *config.Product, o rehearse.Options) (causes.
 	return rehearse.Calibrate(c.Context(), p, o)
 }
 
-// cacheFolder is where calibrations are kept, "" for nowhere: kneepoint's part of the
-// user's cache folder, or what KNEEPOINT_CACHE names.
-func cacheFolder() (string, error) {
+// cacheFolder is where calibrations are kept, "" for nowhere: what KNEEPOINT_CACHE
+// names, or kneepoint's part of the user's cache folder. A service without a home, or
+// with one that cannot be written to, has the folder of temporary files instead:
+// better kept for a while than made for every lot.
+func cacheFolder() string {
 	switch dir := os.Getenv("KNEEPOINT_CACHE"); {
 	case strings.EqualFold(dir, "off"):
-		return "", nil
+		return ""
 	case dir != "":
-		return dir, nil
+		return dir
 	}
-	dir, err := os.UserCacheDir()
-	if err != nil {
-		return "", fmt.Errorf("there is no cache folder for this user (%w)", err)
+	if dir, err := os.UserCacheDir(); err == nil {
+		dir = filepath.Join(dir, "kneepoint")
+		if os.MkdirAll(dir, 0o700) == nil {
+			return dir
+		}
 	}
-	return filepath.Join(dir, "kneepoint"), nil
+	return filepath.Join(os.TempDir(), "kneepoint")
 }
