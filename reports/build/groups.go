@@ -217,7 +217,7 @@ func patternWords(list []reports.Signature) string {
 		case s.Kind == "random":
 			parts = append(parts, "no pattern in common")
 		case len(parts) < 3:
-			parts = append(parts, strings.TrimPrefix(s.Kind+" "+s.Text, "site of "))
+			parts = append(parts, strings.TrimPrefix(strings.ReplaceAll(s.Kind, "-", " ")+" "+s.Text, "site of "))
 		}
 	}
 	return strings.Join(parts, "; ")

@@ -14,9 +14,9 @@ import (
 // surfacesShown is how many tests have their typical wafer drawn.
 const surfacesShown = 4
 
-// smoothWorth is the smooth share of the typical wafer's variance from which a test is
-// drawn for its shape alone.
-const smoothWorth = 0.1
+// shapeWorth is the share of the typical wafer's variance that is smooth or of the test
+// sites from which a test is drawn for its shape alone.
+const shapeWorth = 0.1
 
 // stackPictures draws the stacked maps and the typical wafers of tests.
 func (w *lotwork) stackPictures(box wafermap.Box) error {
@@ -80,12 +80,12 @@ func (w *lotwork) shownSurfaces() []int {
 	}
 	var shaped []int
 	for t, v := range w.maps.typical {
-		if v != nil && v.surface.SmoothShare >= smoothWorth && !slices.Contains(out, t) {
+		if v != nil && v.shape() >= shapeWorth && !slices.Contains(out, t) {
 			shaped = append(shaped, t)
 		}
 	}
 	slices.SortStableFunc(shaped, func(a, b int) int {
-		switch x, y := w.maps.typical[a].surface.SmoothShare, w.maps.typical[b].surface.SmoothShare; {
+		switch x, y := w.maps.typical[a].shape(), w.maps.typical[b].shape(); {
 		case x > y:
 			return -1
 		case x < y:
@@ -94,6 +94,14 @@ func (w *lotwork) shownSurfaces() []int {
 		return 0
 	})
 	return append(out, shaped[:min(len(shaped), surfacesShown-len(out))]...)
+}
+
+// shape is the share of the variance that has a place on the wafer.
+func (v *typical) shape() float64 {
+	if share := v.surface.SmoothShare + v.surface.SiteShare; finite(share) {
+		return share
+	}
+	return v.surface.SmoothShare
 }
 
 // paintTypical draws a test's typical wafer: its smooth part about its median, and

@@ -272,34 +272,41 @@ func sumOver(counts []int32, set []bool) float64 {
 }
 
 // clearlyMore is how many standard errors more fails a wafer must have inside an
-// outline than outside to be named with it.
-const clearlyMore = 3
+// outline than outside of all to be named with it, and stillMore how many in the part
+// where no other pattern lies.
+const (
+	clearlyMore = 3
+	stillMore   = 1.5
+)
 
-// onWafers are the wafers of a stack that have a pattern: more fails where it alone
-// lies than outside of all, beyond chance.
+// onWafers are the wafers of a stack that have a pattern: more fails inside than
+// outside of all, beyond chance, and not by what other patterns do there.
 func (w *lotwork) onWafers(p *places, s *stack, member []bool, inside []uint8, fails func(row int) bool) []string {
 	var out []string
 	for _, i := range s.wafers {
 		wafer := w.lot.Wafers()[i]
-		var n, o [2]float64 // outside, inside
+		var n, o [3]float64 // outside, inside it alone, inside it and others
 		for row := wafer.Lo; row < wafer.Hi; row++ {
 			k := p.of[row]
-			if k < 0 || inside[k] > 1 || inside[k] == 1 && !member[k] {
+			if k < 0 || inside[k] > 0 && !member[k] {
 				continue
 			}
-			n[inside[k]]++
+			at := min(inside[k], 2)
+			n[at]++
 			if fails(row) {
-				o[inside[k]]++
+				o[at]++
 			}
 		}
-		if n[0] == 0 || n[1] == 0 {
-			continue
-		}
-		pooled := (o[0] + o[1]) / (n[0] + n[1])
-		sigma := math.Sqrt(pooled * (1 - pooled) * (1/n[0] + 1/n[1]))
-		if o[1]/n[1]-o[0]/n[0] > clearlyMore*sigma && o[1] >= 2 {
+		if moreBy(o[1]+o[2], n[1]+n[2], o[0], n[0]) > clearlyMore && (n[1] == 0 || moreBy(o[1], n[1], o[0], n[0]) > stillMore) && o[1]+o[2] >= 2 {
 			out = append(out, wafer.ID)
 		}
 	}
 	return out
+}
+
+// moreBy is the difference of the rates o of n and p of m in standard errors; NaN
+// where either has no dice.
+func moreBy(o, n, p, m float64) float64 {
+	pooled := (o + p) / (n + m)
+	return (o/n - p/m) / math.Sqrt(pooled*(1-pooled)*(1/n+1/m))
 }

@@ -96,13 +96,9 @@ func withLoss(s reports.Signature) string {
 func patternsWithLoss(list []reports.Signature) string {
 	var parts []string
 	for _, s := range list {
-		part := withLoss(s)
-		if patterned(s) && s.PValue.Valid() {
-			part += " (p" + space + pValue(s.PValue) + ")"
-		}
-		parts = append(parts, part)
+		parts = append(parts, withLoss(s))
 	}
-	return strings.Join(parts, "; ")
+	return strings.Join(parts, ", ")
 }
 
 // patternSentence says all of a pattern that a reader asks for.

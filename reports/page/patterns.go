@@ -38,7 +38,7 @@ func newPatterns(r *reports.Report, a *atlas) (patterns, error) {
 	}
 	p.stackMaps(r, a)
 	p.Groups = groupTable(r)
-	for _, t := range []*table{stackTable(r), repeaterTable(r), mapStatistics(r)} {
+	for _, t := range []*table{stackTable(r), repeaterTable(r), waferPatterns(r), mapStatistics(r)} {
 		if t != nil && len(t.Rows) > 0 {
 			p.Tables = append(p.Tables, *t)
 		}
@@ -172,6 +172,23 @@ func stackTable(r *reports.Report) *table {
 	return t
 }
 
+// waferPatterns lists the patterns of every wafer's map.
+func waferPatterns(r *reports.Report) *table {
+	t := &table{Caption: "Patterns of the wafers’ fail maps", Sortable: true, Columns: []column{{Name: "Wafer"}, {Name: "Pattern"}, {Name: "Where", Plain: true},
+		{Name: "Loss", Numeric: true, Help: "share of the wafer's dice lost to it"}, {Name: "Of the fails", Numeric: true, Help: "share of the wafer's fails that are due to it"},
+		{Name: "Inside", Numeric: true, Help: "fail rate inside its outline"}, {Name: "Without it", Numeric: true, Help: "fail rate that would be there without it"}, {Name: "p", Numeric: true, Help: "chance that fails without it show any place that stands out as much"}},
+		Note: "Wafers without a pattern are left out: their fails have no structure beyond chance, or are too few to judge."}
+	for i := range r.Wafers {
+		for _, s := range r.Wafers[i].Signatures {
+			if patterned(s) {
+				t.Rows = append(t.Rows, []cell{text(r.Wafers[i].ID), text(kindWords(s.Kind)), {Text: where(s), Class: "wide"}, lossCell(s), number(percent(s.Strength), s.Strength),
+					number(percent(s.Rate), s.Rate), number(percent(s.Background), s.Background), number(pValue(s.PValue), s.PValue)})
+			}
+		}
+	}
+	return t
+}
+
 func lossCell(s reports.Signature) cell {
 	if !patterned(s) {
 		return text("")
@@ -202,7 +219,7 @@ func mapStatistics(r *reports.Report) *table {
 		{Name: "Largest cluster", Numeric: true, Help: "dice of the largest connected group of fails, its centre, and that one's distance from the wafer's"},
 		{Name: "Hot dice", Numeric: true, Help: "dice among more fails than chance allows (Getis and Ord, false discovery rate 5 %)"},
 		{Name: "Scan p", Numeric: true, Help: "chance that random fails make any circle as unlikely (Kulldorff)"}, {Name: "Most unlikely circle", Plain: true}},
-		Note: "Joins: failing neighbours of failing dice, against what chance gives; a large z with a small p says that the fails are clustered."}
+		Note: "Joins: failing neighbours of failing dice, against what chance gives; a large z with a small p says that the fails are clustered. Geary’s C also falls where fails lie at the rim, whose dice have fewer neighbours."}
 	for i := range r.Wafers {
 		s := &r.Wafers[i].Spatial
 		if s.JoinCount == nil && s.Alike == nil && len(s.Clusters) == 0 {

@@ -4,12 +4,22 @@ import "kneepoint/reports"
 
 // surfaceMaps draws the typical wafer of the tests that matter.
 func (p *patterns) surfaceMaps(r *reports.Report, a *atlas) {
+	share := map[string]reports.Number{}
+	for i := range r.Tests {
+		if s := r.Tests[i].Surface; s != nil && s.Smooth.Valid() {
+			share[r.Tests[i].Name] = s.Smooth
+		}
+	}
 	for i := range r.Pictures.Surfaces {
 		s := &r.Pictures.Surfaces[i]
+		of := ""
+		if v, ok := share[s.Test]; ok {
+			of = ", " + percent(v) + " of the variance"
+		}
 		for _, part := range []struct {
 			raster *reports.Raster
 			name   string
-		}{{&s.Smooth, "smooth part"}, {&s.Residual, "what is left"}} {
+		}{{&s.Smooth, "smooth part" + of}, {&s.Residual, "what is left"}} {
 			if m := a.add(part.raster, s.Test+", "+part.name, "typical wafer", nil); m != nil {
 				m.Name, m.Text = s.Test, part.name
 				for k := range m.Key {
