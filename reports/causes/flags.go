@@ -19,7 +19,7 @@ func (o *observer) flags() map[string]bool {
 		f[name] = true
 	}
 	for _, name := range []string{"limits-differ", "unit-conflict"} {
-		f[name] = f[name]
+		f[name] = slices.Contains(o.c.Raised, name)
 	}
 	o.siteFlag(f)
 	o.retestFlags(f)

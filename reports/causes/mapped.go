@@ -59,6 +59,7 @@ func (o *observer) findPatterns(ctx context.Context) error {
 	for g := range groups {
 		counts := make([]int, len(c.Wafers))
 		var order []int
+		beyond := 0 // wafers with more than healthy ones have
 		for w, s := range c.Wafers {
 			for _, k := range o.e.class[s.Lo:s.Hi] {
 				if k >= 0 && of[k] == g {
@@ -66,12 +67,15 @@ func (o *observer) findPatterns(ctx context.Context) error {
 				}
 			}
 			usual := o.e.healthyLoss() * healthyGroup[groups[g].name] * float64(s.Hi-s.Lo)
-			if counts[w] >= leastMapped && float64(counts[w]) > 0.8*usual {
+			if counts[w] >= leastMapped {
 				order = append(order, w)
+				if n := float64(counts[w]); n > 1.2*usual+2*math.Sqrt(usual) {
+					beyond++
+				}
 			}
 		}
 		sort.SliceStable(order, func(a, b int) bool { return counts[order[a]] > counts[order[b]] })
-		for _, w := range order[:min(len(order), mappedWafers)] {
+		for _, w := range order[:min(len(order), max(2, min(beyond, mappedWafers)))] {
 			jobs = append(jobs, job{g, w})
 		}
 	}

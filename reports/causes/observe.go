@@ -270,7 +270,8 @@ func (o *observer) levels(w int) {
 
 // zoneLevel is the median log ratio of a test to its reference over the dice of
 // zone z (-1: those without a place) that are not hard, with the robust sigma of a
-// die and how many there are. NaN where the median is only a bound.
+// die and how many there are. NaN where
+// the median is only a bound that healthy dice keep as well.
 func (o *observer) zoneLevel(t, w int, z int8, buf []float64) (level, sigma float64, n int) {
 	test := &o.c.Tests[t]
 	buf = buf[:0]
@@ -289,10 +290,19 @@ func (o *observer) zoneLevel(t, w int, z int8, buf []float64) (level, sigma floa
 		buf = append(buf, o.ratio(t, v))
 	}
 	n = len(buf)
-	if n == 0 || 2*bounds > n {
+	if n == 0 {
 		return math.NaN(), math.NaN(), 0
 	}
 	level = median(buf)
+	if 2*bounds > n {
+		// the level is a bound: it counts where it is off already, and tells nothing
+		// where it may be healthy
+		within := o.within(t)
+		if math.IsInf(within, 1) || math.Abs(level) < 4*within {
+			return math.NaN(), math.NaN(), 0
+		}
+		return level, max(within, spreadAbout(buf, level)), n
+	}
 	sigma = spreadAbout(buf, level)
 	// Where dice are of two kinds, the level is that of the healthy kind as long as a
 	// quarter of them is: the others then stand alone.

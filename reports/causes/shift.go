@@ -21,7 +21,6 @@ const (
 type variant struct {
 	cause     int // index into the catalogue; -1 for the unknown
 	direction int
-	text      string
 	test      int // the only test that is off, -1
 	moves     [][]float64
 	lot       []*density // of levels at each size

@@ -67,6 +67,15 @@ func (e *Evidence) diceTable(k *Catalogue) diceTable {
 	return d
 }
 
+// usualSingle is how many single dice of a class the typical wafer has.
+func (e *Evidence) usualSingle(class int) float64 {
+	counts := make([]float64, len(e.Wafers))
+	for w := range e.Wafers {
+		counts[w] = e.Wafers[w].Single[class]
+	}
+	return stats.Median(counts)
+}
+
 // addWafers takes in what single wafers have beyond the others of the lot: a lot may
 // be as good as any and still have three wafers that are not.
 func (d *diceTable) addWafers(e *Evidence) {

@@ -16,8 +16,6 @@ const (
 	numViews
 )
 
-var viewNames = [numViews]string{"lot", "wafers", "zones", "dice", "maps", "flags", "loss"}
-
 // views are the log likelihood ratios of a hypothesis against nothing.
 type views [numViews]float64
 

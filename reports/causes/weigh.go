@@ -378,6 +378,7 @@ func (j *judged) verdict(w Weights) *Verdict {
 	}
 	v.Causes = append(v.Causes, Judged{Cause: Nothing, Probability: v.Nothing, entry: -1},
 		Judged{Cause: Unknown, Probability: v.Unknown, entry: -1})
+	v.secondLook()
 	sort.SliceStable(v.Causes, func(a, b int) bool { return v.Causes[a].Probability > v.Causes[b].Probability })
 	v.Alike = j.alike()
 	return v
