@@ -216,9 +216,9 @@ type Signature struct {
 	Kind       string   `json:"kind" enum:"edge-ring,edge-arc,centre,annulus,line,blob,gradient,sector,shot-repeat,site,stripe,near-total,random,none"`
 	Strength   Number   `json:"strength"`   // share of the fails that are due to it
 	PValue     Number   `json:"p_value"`    // chance that fails without it show any place that stands out as much
-	Loss       Number   `json:"loss"`       // share of the tested dice
+	Loss       Number   `json:"loss"`       // share of the tested dice: fails beyond the background, patterns that overlap sharing
 	Rate       Number   `json:"rate"`       // fail rate inside the outline
-	Background Number   `json:"background"` // fail rate there without it; of a stack: outside of all outlines
+	Background Number   `json:"background"` // fail rate there without it, or outside of all outlines
 	Cover      Number   `json:"cover"`      // share of the tested dice inside the outline
 	Wafers     []string `json:"wafers"`     // of a stack: wafers that fail more inside than outside, beyond chance
 	PeriodX    int      `json:"period_x,omitempty"`

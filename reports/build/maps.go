@@ -1,7 +1,9 @@
 package build
 
 import (
+	"cmp"
 	"math"
+	"slices"
 
 	"kneepoint/ingest"
 	"kneepoint/reports"
@@ -86,6 +88,59 @@ func (w *lotwork) spatial(i int, r *reports.Wafer) {
 	for k := range w.maps.found[i] {
 		r.Signatures = append(r.Signatures, w.signature(&w.maps.found[i][k], box))
 	}
+	w.weighWafer(w.maps.found[i], r.Signatures, ground{w.lot.X()[lo:hi], w.lot.Y()[lo:hi], in.Site, in.Order}, grid, fail)
+}
+
+// leastOutside is how many dice must lie outside of all patterns for their fail rate to
+// stand for what would be there without.
+const leastOutside = 20
+
+// weighWafer gives the patterns of a wafer their losses. What the search gives each is
+// what the wafer would win without that one alone: next to nothing where a bowl of
+// fails is made up of several. So each has no less than what fails inside its outline
+// beyond outside of all, those that overlap sharing, and all together no more than
+// the wafer's fails.
+func (w *lotwork) weighWafer(found []wafermap.Signature, out []reports.Signature, g ground, grid *wafermap.Grid, fail []bool) {
+	if len(out) == 0 || !structured(out[0].Kind) || out[0].Kind == "near-total" {
+		return
+	}
+	s := &stack{tested: make([]int32, len(fail)), failing: make([]int32, len(fail))}
+	for _, row := range grid.Rows() {
+		s.tested[row] = 1
+		if fail[row] {
+			s.failing[row] = 1
+		}
+	}
+	members := make([][]bool, len(out))
+	for k := range out {
+		members[k] = w.members(g, &found[k], &out[k])
+	}
+	inside := overlaps(len(fail), members)
+	outside := 0
+	for row, n := range inside {
+		if n == 0 {
+			outside += int(s.tested[row])
+		}
+	}
+	if outside < leastOutside {
+		return
+	}
+	rate, _, _ := s.rate()
+	searched := slices.Clone(out)
+	weighStack(s, rate, out, members, inside, true)
+	sum := 0.0
+	for k := range out {
+		if searched[k].Loss > out[k].Loss {
+			out[k].Loss, out[k].Background = searched[k].Loss, searched[k].Background
+		}
+		sum += float64(out[k].Loss)
+	}
+	for k := range out {
+		out[k].Loss *= num(math.Min(1, rate/sum))
+		out[k].Strength = num(math.Min(1, float64(out[k].Loss)/rate))
+		found[k].Loss = float64(out[k].Loss)
+	}
+	slices.SortStableFunc(out, func(a, b reports.Signature) int { return cmp.Compare(b.Loss, a.Loss) })
 }
 
 func (w *lotwork) fails(lo, hi int) []bool {

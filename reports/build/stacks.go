@@ -2,6 +2,7 @@ package build
 
 import (
 	"math"
+	"slices"
 
 	"kneepoint/ingest"
 	"kneepoint/reports"
@@ -157,10 +158,10 @@ func (w *lotwork) patterns(p *places, s *stack, fails func(row int) bool) []repo
 	members := make([][]bool, len(found))
 	for i := range found {
 		out[i] = w.signature(&found[i], box)
-		members[i] = w.members(p, &found[i], &out[i])
+		members[i] = w.members(ground{p.x, p.y, p.site, nil}, &found[i], &out[i])
 	}
 	inside := overlaps(len(p.x), members)
-	weighStack(s, rate, out, members, inside)
+	weighStack(s, rate, out, members, inside, false)
 	for i := range out {
 		if members[i] != nil {
 			out[i].Wafers = w.onWafers(p, s, members[i], inside, fails)
@@ -185,27 +186,24 @@ func (s *stack) sample(p *places, often []bool) (*wafermap.Grid, []bool, []int32
 	return wafermap.NewGrid(pickInts(p.x, rows), pickInts(p.y, rows)), fail, pickInts(p.site, rows)
 }
 
-// members says which positions lie inside a pattern; nil where its outline does not
-// say.
-func (w *lotwork) members(p *places, s *wafermap.Signature, r *reports.Signature) []bool {
+// ground is where dice or die positions are; site and order may be nil.
+type ground struct{ x, y, site, order []int32 }
+
+// members says which dice lie inside a pattern; nil where its outline does not say.
+func (w *lotwork) members(g ground, s *wafermap.Signature, r *reports.Signature) []bool {
 	inside, known := w.within(s, r)
-	if s.Kind == "site" && len(s.Outline.Sites) > 0 && p.site != nil {
-		of := map[int32]bool{}
-		for _, n := range s.Outline.Sites {
-			of[n] = true
-		}
-		out := make([]bool, len(p.x))
-		for k, n := range p.site {
-			out[k] = of[n]
-		}
-		return out
-	}
-	if !known {
+	in := func(k int) bool { return inside(g.x[k], g.y[k]) }
+	switch o := &s.Outline; {
+	case s.Kind == "site" && len(o.Sites) > 0 && g.site != nil:
+		in = func(k int) bool { return slices.Contains(o.Sites, g.site[k]) }
+	case o.Along == "touchdown" && g.order != nil:
+		in = func(k int) bool { return o.First <= int(g.order[k]) && int(g.order[k]) <= o.Last }
+	case !known:
 		return nil
 	}
-	out := make([]bool, len(p.x))
+	out := make([]bool, len(g.x))
 	for k := range out {
-		out[k] = inside(p.x[k], p.y[k])
+		out[k] = in(k)
 	}
 	return out
 }
@@ -225,8 +223,9 @@ func overlaps(positions int, members [][]bool) []uint8 {
 
 // weighStack gives the patterns of a stack their rates and losses in dice. The
 // search knows positions that fail often only; what they cost is the fails inside an
-// outline beyond the rate outside of all. Patterns that overlap share.
-func weighStack(s *stack, rate float64, out []reports.Signature, members [][]bool, inside []uint8) {
+// outline beyond the rate outside of all. Patterns that overlap share. With own, patterns
+// whose outline does not say which dice are inside keep what the search found.
+func weighStack(s *stack, rate float64, out []reports.Signature, members [][]bool, inside []uint8, own bool) {
 	tested := sumOver(s.tested, nil)
 	outside := make([]bool, len(inside))
 	for k, n := range inside {
@@ -249,6 +248,9 @@ func weighStack(s *stack, rate float64, out []reports.Signature, members [][]boo
 			r.Rate, r.Background, r.Cover = num(sumOver(s.failing, m)/n), num(background), num(n/tested)
 			r.Loss = num(math.Max(0, lost) / tested)
 		case structured(r.Kind) && r.Kind != "near-total":
+			if own { // as the search has it
+				continue
+			}
 			r.Rate, r.Background, r.Cover, r.Loss = reports.NaN, reports.NaN, reports.NaN, reports.NaN
 		default:
 			r.Rate, r.Cover, r.Loss = num(rate), 1, num(rate)

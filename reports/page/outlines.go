@@ -1,6 +1,7 @@
 package page
 
 import (
+	"slices"
 	"strings"
 
 	"kneepoint/reports"
@@ -71,10 +72,19 @@ func patterned(s reports.Signature) bool { return s.Kind != "random" && s.Kind !
 // mostBrief is how many patterns are named under a small map.
 const mostBrief = 3
 
-// briefly names patterns with the loss to each.
+// briefly names patterns with the loss to each; those of a kind together.
 func briefly(list []reports.Signature) string {
+	var kinds []reports.Signature
+	for _, s := range list {
+		k := slices.IndexFunc(kinds, func(o reports.Signature) bool { return o.Kind == s.Kind })
+		if k < 0 {
+			kinds = append(kinds, reports.Signature{Kind: s.Kind, Loss: s.Loss})
+		} else {
+			kinds[k].Loss += s.Loss
+		}
+	}
 	var parts []string
-	for i, s := range list {
+	for i, s := range kinds {
 		if i == mostBrief {
 			parts = append(parts, "…")
 			break
@@ -114,7 +124,7 @@ func patternSentence(s reports.Signature) string {
 		out += ": loss " + percent(s.Loss)
 	}
 	if s.Rate.Valid() && s.Background.Valid() && s.Kind != "near-total" {
-		out += ", fails " + percent(s.Rate) + " inside, " + percent(s.Background) + " there without it"
+		out += ", fails " + percent(s.Rate) + " inside, " + percent(s.Background) + " without it"
 	}
 	if s.PValue.Valid() {
 		out += ", p" + space + pValue(s.PValue)

@@ -176,7 +176,7 @@ func stackTable(r *reports.Report) *table {
 func waferPatterns(r *reports.Report) *table {
 	t := &table{Caption: "Patterns of the wafers’ fail maps", Sortable: true, Columns: []column{{Name: "Wafer"}, {Name: "Pattern"}, {Name: "Where", Plain: true},
 		{Name: "Loss", Numeric: true, Help: "share of the wafer's dice lost to it"}, {Name: "Of the fails", Numeric: true, Help: "share of the wafer's fails that are due to it"},
-		{Name: "Inside", Numeric: true, Help: "fail rate inside its outline"}, {Name: "Without it", Numeric: true, Help: "fail rate that would be there without it"}, {Name: "p", Numeric: true, Help: "chance that fails without it show any place that stands out as much"}},
+		{Name: "Inside", Numeric: true, Help: "fail rate inside its outline"}, {Name: "Without it", Numeric: true, Help: "fail rate that would be there without it, or outside of all outlines"}, {Name: "p", Numeric: true, Help: "chance that fails without it show any place that stands out as much"}},
 		Note: "Wafers without a pattern are left out: their fails have no structure beyond chance, or are too few to judge."}
 	for i := range r.Wafers {
 		for _, s := range r.Wafers[i].Signatures {

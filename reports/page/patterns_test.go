@@ -44,9 +44,10 @@ func TestPatternWords(t *testing.T) {
 	ring := reports.Signature{Kind: "edge-ring", Loss: 0.013, PValue: 0.0078, Rate: 0.077, Background: 0.021, Text: "from a radius of 40.3 mm out to the edge"}
 	for _, c := range []struct{ got, want string }{
 		{briefly([]reports.Signature{ring, {Kind: "site", Loss: 0.2}}), "edge ring 1.3 %, test site 20.0 %"},
+		{briefly([]reports.Signature{{Kind: "blob", Loss: 0.2}, ring, {Kind: "blob", Loss: 0.1}}), "blob 30.0 %, edge ring 1.3 %"},
 		{briefly([]reports.Signature{{Kind: "random", Loss: 0.05}}), "no pattern"},
 		{briefly([]reports.Signature{{Kind: "gradient", Loss: reports.NaN}}), "gradient"},
-		{patternSentence(ring), "Edge ring from a radius of 40.3 mm out to the edge: loss 1.3 %, fails 7.7 % inside, 2.1 % there without it, p 0.0078."},
+		{patternSentence(ring), "Edge ring from a radius of 40.3 mm out to the edge: loss 1.3 %, fails 7.7 % inside, 2.1 % without it, p 0.0078."},
 		{patternSentence(reports.Signature{Kind: "none", Text: "too few fails to judge"}), "Too few fails to see a pattern."},
 	} {
 		if got := strings.ReplaceAll(c.got, space, " "); got != c.want {
