@@ -10,9 +10,9 @@ import (
 )
 
 const (
-	surfaceDice = 2000  // dice of a wafer that a surface is fitted to, and
-	stackedDice = 20000 // positions of the typical wafer: more would tell no more
-	boundShare  = 0.1   // readings known as bounds only, from which a surface says nothing
+	surfaceDice = 1000 // dice of a wafer that a surface is fitted to, and
+	stackedDice = 5000 // positions of the typical wafer: more would tell no more
+	boundShare  = 0.1  // readings known as bounds only, from which a surface says nothing
 )
 
 // typical is a test's typical wafer.

@@ -64,6 +64,8 @@ type mixing struct {
 	bounds []counted
 	n      float64
 	floor  float64 // of a part's SD
+	steps  int     // most that a climb takes, and
+	enough float64 // the gain in log likelihood a reading at which it ends
 }
 
 // newMixing reduces readings marked as in [FitNormal] to cells of mean 0 and

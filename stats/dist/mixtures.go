@@ -36,10 +36,17 @@ func FitMixtures(x []float64, censor []int8, most int) (Mixtures, error) {
 	if most < 1 || most > 4 {
 		panic("stats/dist: number of parts outside 1..4")
 	}
+	return fitMixtures(x, censor, most, 1000, 1e-10)
+}
+
+// fitMixtures is FitMixtures with the most steps that a climb takes and the gain in
+// log likelihood a reading at which it ends.
+func fitMixtures(x []float64, censor []int8, most, steps int, enough float64) (Mixtures, error) {
 	m, centre, unit, err := newMixing(x, censor)
 	if err != nil {
 		return Mixtures{}, err
 	}
+	m.steps, m.enough = steps, enough
 	coarse := m.coarser()
 	var all Mixtures
 	var found []Part
@@ -134,7 +141,7 @@ func (m mixing) search(coarse mixing, fewer []Part, k int) ([]Part, float64) {
 		}
 		last = t.logLik
 		done++
-		parts, l := m.climb(t.parts, 1000, 1e-10)
+		parts, l := m.climb(t.parts, m.steps, m.enough)
 		if l > bestLik && sound(parts, m.n, m.floor, 10) {
 			best, bestLik = parts, l
 		}

@@ -64,7 +64,8 @@ func (r Robust) Flag(share float64) []bool {
 // The search is Rousseeuw and Van Driessen's, from 500 starts of p+1 dice drawn
 // with a fixed seed and one from the coordinate-wise medians, so that the same
 // data give the same result. Above 1,500 dice starts are tried on an even sample
-// of so many, and only the best is carried to an end on all. The raw covariance is
+// of so many, and only the best is carried to an end on all (on an even sample of
+// 20,000 when there are more). The raw covariance is
 // scaled so that its median squared distance is that of chi-square.
 //
 // Dice with a NaN or an infinite reading in any column are left out (their distance is NaN).
@@ -408,7 +409,16 @@ func (m *mcd) search(h int) (ellipse, bool) {
 		return 0
 	})
 	if len(m.rows) > len(rows) {
-		return m.settle(best[0], m.rows, h, 30, 1e-6), true
+		const end = 20000
+		rows, part = m.rows, h
+		if len(rows) > end {
+			rows = make([]int32, end)
+			for i := range rows {
+				rows[i] = m.rows[i*len(m.rows)/end]
+			}
+			part = (end*h + len(m.rows) - 1) / len(m.rows)
+		}
+		return m.settle(best[0], rows, part, 30, 1e-6), true
 	}
 	return best[0], true
 }
