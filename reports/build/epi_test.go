@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"math"
 	"os"
+	"strconv"
 	"strings"
 	"testing"
 
@@ -87,12 +88,16 @@ var trials = []trial{
 // with other physics. It holds what the report promises: median error under 2 % where
 // the tests suffice, 95 % intervals that cover 92 to 98 %, and what is not observable
 // is said, without a point from data alone. Truths three prior sigmas off hold the
-// data-only intervals. KNEEPOINT_LONG=1 for counts that judge: in the short form one
-// fab stands for all, whose wafers err together, and the bands are wide.
+// data-only intervals. KNEEPOINT_LONG=1 takes eight fabs, a larger number 24, for counts
+// that judge: in the short form one fab stands for all, whose wafers err together, and
+// the bands are wide.
 func TestEpiCoverage(t *testing.T) {
 	fabs, wafers, list := 1, 25, trials[1:3]
-	if os.Getenv("KNEEPOINT_LONG") != "" {
-		fabs, wafers, list = 24, 25, trials
+	if n, _ := strconv.Atoi(os.Getenv("KNEEPOINT_LONG")); n > 0 {
+		fabs, wafers, list = 8, 25, trials
+		if n > 1 {
+			fabs = 24
+		}
 	}
 	for _, c := range list {
 		t.Run(c.device+" "+c.set, func(t *testing.T) { c.try(t, fabs, wafers) })
