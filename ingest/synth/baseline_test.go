@@ -27,30 +27,7 @@ type level struct{ median, sigma, within, lot float64 }
 func healthyLevels(lots int) (levels []level, yield float64) {
 	s := DemoSpec().Healthy()
 	s.Grid.DieWidthMM, s.Grid.DieHeightMM = 7, 7 // the same wafer, seen at fewer places
-	n := len(s.Tests)
-	pooled, medians, spreads := make([][]float64, n), make([][]float64, n), make([]float64, n)
-	for seed := range lots {
-		l := s.Generate(uint64(seed))
-		for t := range s.Tests {
-			var v []float64
-			for i := range l.Wafers {
-				w := &l.Wafers[i]
-				for _, row := range w.Final() {
-					if x := w.Values[t][row]; s.PassBin(int(w.HardBin[row])) && !math.IsNaN(x) {
-						v = append(v, x)
-					}
-				}
-			}
-			m, sd := robust(v)
-			medians[t] = append(medians[t], m)
-			spreads[t] += sd * sd / float64(lots)
-			pooled[t] = append(pooled[t], v...)
-		}
-	}
-	for t := range pooled {
-		m, sd := robust(pooled[t])
-		levels = append(levels, level{m, sd, math.Sqrt(spreads[t]), stat.StdDev(medians[t], nil)})
-	}
+	levels, _ = baselineOf(s, lots)
 	whole := DemoSpec().Healthy()
 	for seed := range uint64(4) {
 		yield += whole.Generate(seed).Yield() / 4

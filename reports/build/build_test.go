@@ -19,7 +19,7 @@ import (
 var update = flag.Bool("update", false, "rewrite the golden report")
 
 // makeReport reads a file as triage does and assembles its report.
-func makeReport(t *testing.T, data, product string, settings config.Settings) *reports.Report {
+func makeReport(t testing.TB, data, product string, settings config.Settings) *reports.Report {
 	t.Helper()
 	var p *config.Product
 	if product != "" {

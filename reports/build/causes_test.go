@@ -34,25 +34,14 @@ func reportOf(t testing.TB, dir string, csv []byte, productYAML string, settings
 	if err := os.WriteFile(data, csv, 0o644); err != nil {
 		t.Fatal(err)
 	}
-	var p *config.Product
+	product := ""
 	if productYAML != "" {
-		path := filepath.Join(dir, "product.yaml")
-		if err := os.WriteFile(path, []byte(productYAML), 0o644); err != nil {
-			t.Fatal(err)
-		}
-		var err error
-		if p, err = config.LoadProduct(path); err != nil {
+		product = filepath.Join(dir, "product.yaml")
+		if err := os.WriteFile(product, []byte(productYAML), 0o644); err != nil {
 			t.Fatal(err)
 		}
 	}
-	batch, err := ingest.Read(context.Background(), []string{data}, ingest.Options{Product: p, Retest: ingest.Retest(settings.Retest)})
-	if err != nil {
-		t.Fatal(err)
-	}
-	r, err := Report(context.Background(), Input{Lot: batch.Lots[0], Product: p, Settings: settings, Version: "test"})
-	if err != nil {
-		t.Fatal(err)
-	}
+	r := makeReport(t, data, product, settings)
 	holdContract(t, r)
 	return r
 }

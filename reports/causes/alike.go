@@ -64,16 +64,7 @@ func (j *judged) supported(cause int) *variant {
 
 // whiten divides moves by the healthy spread, correlation taken out.
 func (f *frame) whiten(moves []float64) []float64 {
-	d := f.newDensity(f.lot, nil, nil)
-	out := make([]float64, d.n)
-	for i := range out {
-		v := moves[i]
-		for k := range i {
-			v -= d.low[i*d.n+k] * out[k]
-		}
-		out[i] = v * d.inv[i]
-	}
-	return out
+	return f.newDensity(f.lot, nil, nil).white(moves)
 }
 
 func cosine(a, b []float64) float64 {

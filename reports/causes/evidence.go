@@ -13,7 +13,8 @@ const (
 // Evidence is what Observe saw. Levels are natural logs of a level over the
 // healthy one, NaN where there are too few dice.
 type Evidence struct {
-	cols *Columns
+	cols  *Columns
+	frame *frame // the space of its levels; read only
 
 	Reference []float64 // by test: the healthy level, SI
 	Scatter   []float64 // by test: sigma of a die's log reading about its zone

@@ -16,12 +16,9 @@ type Known struct {
 }
 
 type knownRow struct {
-	odds          float64
-	views         views
-	nothing       bool
-	unknown, pair bool
-	right         bool // exactly the true causes
-	part          bool // one of two true causes, alone
+	hypothesis
+	right bool // exactly the true causes
+	part  bool // one of two true causes, alone
 }
 
 // Remember judges a lot of known causes and keeps what fitting needs: a few
@@ -30,10 +27,10 @@ func Remember(e *Evidence, k *Catalogue, truth []string) Known {
 	j := judge(e, k)
 	out := Known{Truth: truth}
 	for _, h := range j.all {
-		r := knownRow{odds: h.odds, views: h.views, unknown: h.unknown, nothing: !h.unknown && len(h.causes) == 0, pair: len(h.causes) == 2}
+		r := knownRow{hypothesis: hypothesis{causes: h.causes, unknown: h.unknown, odds: h.odds, views: h.views}}
 		switch {
 		case len(truth) == 0:
-			r.right = r.nothing
+			r.right = h.nothing()
 		case truth[0] == Unknown:
 			r.right = h.unknown
 		default:
@@ -158,22 +155,6 @@ func (r *knownRow) credit() float64 {
 	return 0
 }
 
-func (r *knownRow) score(w *Weights) float64 {
-	s := r.odds
-	for i, v := range r.views {
-		s += w.View[i] * v
-	}
-	switch {
-	case r.unknown:
-		s += w.Unknown
-	case r.nothing:
-		s += w.Nothing
-	case r.pair:
-		s += w.Pair
-	}
-	return s
-}
-
 func (r *knownRow) derivative(d []float64, w *Weights) []float64 {
 	for i, v := range r.views {
 		d = append(d, w.View[i]*v)
@@ -184,5 +165,5 @@ func (r *knownRow) derivative(d []float64, w *Weights) []float64 {
 		}
 		return 0
 	}
-	return append(d, one(r.nothing), one(r.unknown), one(r.pair))
+	return append(d, one(r.nothing()), one(r.unknown), one(r.pair()))
 }

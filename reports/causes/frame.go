@@ -29,7 +29,7 @@ const (
 	zoneShare  = 0.4
 )
 
-func newFrame(e *Evidence, k *Catalogue) *frame {
+func newFrame(e *Evidence) *frame {
 	f := &frame{e: e, slope: newSlopes(e.cols)}
 	for t := range e.cols.Tests {
 		if e.Reference[t] > 0 && !math.IsNaN(e.Lot[t]) && e.Scatter[t] > 0 {

@@ -37,7 +37,8 @@ func Observe(ctx context.Context, c *Columns, k *Catalogue) (*Evidence, error) {
 		return nil, err
 	}
 	e.Flags = o.flags()
-	if raised, known := newFrame(e, k).scaledFlag(); known {
+	e.frame = newFrame(e)
+	if raised, known := e.frame.scaledFlag(); known {
 		e.Flags["one-test-scaled"] = raised
 	}
 	e.Stacked = o.stacked()

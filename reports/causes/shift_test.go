@@ -66,7 +66,10 @@ func TestFitFindsWhatCounts(t *testing.T) {
 		var k Known
 		n := r.IntN(4)
 		for i := range 4 {
-			row := knownRow{right: i == n, nothing: i == 3}
+			row := knownRow{right: i == n}
+			if i != 3 {
+				row.causes = []int{i} // the last is that nothing is wrong
+			}
 			mean := -0.5
 			if i == n {
 				mean = 0.5

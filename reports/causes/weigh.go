@@ -39,13 +39,17 @@ func (h *hypothesis) score(w *Weights) float64 {
 	switch {
 	case h.unknown:
 		s += w.Unknown
-	case len(h.causes) == 0:
+	case h.nothing():
 		s += w.Nothing
-	case len(h.causes) == 2:
+	case h.pair():
 		s += w.Pair
 	}
 	return s
 }
+
+func (h *hypothesis) nothing() bool { return !h.unknown && len(h.causes) == 0 }
+
+func (h *hypothesis) pair() bool { return len(h.causes) == 2 }
 
 // judged is a lot with all its hypotheses.
 type judged struct {
@@ -64,7 +68,7 @@ const pairsOf = 7
 
 // judge makes every hypothesis about a lot and its views.
 func judge(e *Evidence, k *Catalogue) *judged {
-	f := newFrame(e, k)
+	f := e.frame
 	j := &judged{e: e, k: k, f: f, s: f.sample(f.null()), dice: e.diceTable(k), maps: e.mapTable(k)}
 	nothing, loss := e.lossOf(&j.dice)
 
@@ -138,7 +142,7 @@ func (j *judged) singles(loss float64) {
 func (j *judged) pairs(loss float64) {
 	w := UsualWeights()
 	single := append([]*hypothesis(nil), j.all[2:]...)
-	sort.SliceStable(single, func(a, b int) bool { return j.merit(single[a], &w) > j.merit(single[b], &w) })
+	sort.SliceStable(single, func(a, b int) bool { return single[a].score(&w) > single[b].score(&w) })
 	single = j.spanning(single)
 	for a := range single {
 		for b := range a {
@@ -148,9 +152,6 @@ func (j *judged) pairs(loss float64) {
 		}
 	}
 }
-
-// merit ranks single causes for pairing.
-func (j *judged) merit(h *hypothesis, w *Weights) float64 { return h.score(w) }
 
 // spanning takes the likeliest causes, and the likeliest by levels alone and by
 // single dice alone: of a pair one often shows in one view only.
@@ -163,7 +164,7 @@ func (j *judged) spanning(sorted []*hypothesis) []*hypothesis {
 			if n == 0 || len(out) == pairsOf {
 				return
 			}
-			if !contains(out, h) {
+			if !slices.Contains(out, h) {
 				out = append(out, h)
 				n--
 			}
@@ -172,15 +173,6 @@ func (j *judged) spanning(sorted []*hypothesis) []*hypothesis {
 	top(func(h *hypothesis) float64 { return h.views[lotView] + h.views[waferView] + h.views[zoneView] }, 2)
 	top(func(h *hypothesis) float64 { return h.views[diceView] + h.views[mapView] + h.views[flagView] }, 2)
 	return out
-}
-
-func contains(list []*hypothesis, h *hypothesis) bool {
-	for _, x := range list {
-		if x == h {
-			return true
-		}
-	}
-	return false
 }
 
 // pair is the hypothesis that two causes hold at once.
@@ -261,17 +253,9 @@ func (s *sample) seePair(f *frame, a, b *seen) *seen {
 			x.lot = both
 		}
 	}
-	x.wafers = pairOf(s.waferPair(a, b), a.wafers, b.wafers)
-	x.zones = pairOf(s.zonePair(a, b), a.zones, b.zones)
+	x.wafers = max(s.waferPair(a, b), a.wafers, b.wafers)
+	x.zones = max(s.zonePair(a, b), a.zones, b.zones)
 	return x
-}
-
-func pairOf(v ...float64) float64 {
-	best := math.Inf(-1)
-	for _, x := range v {
-		best = max(best, x)
-	}
-	return best
 }
 
 // lotPair tries the sum of both moves at the sizes that do best one by one and
