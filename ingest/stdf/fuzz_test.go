@@ -115,13 +115,16 @@ func fuzzRead(t *testing.T, in io.Reader, plain bool, size int64) (string, []Rec
 
 // fuzzRewrite writes records, reads them and writes them again: the bytes are
 // the same. (Texts above ASCII come back as UTF-8, which may be longer than a
-// field: such a record is not written.)
+// field, and texts of bytes that no text has may hold the headers of other
+// records: such records are not written.)
 func fuzzRewrite(t *testing.T, order Order, records []Record) {
 	var first, again bytes.Buffer
 	w := NewWriter(&first, order)
 	w.Write(&FAR{})
 	for _, rec := range records {
-		w.Write(rec)
+		if sound(rec, order) {
+			w.Write(rec)
+		}
 	}
 	w.Flush()
 	w = NewWriter(&again, order)
@@ -135,4 +138,17 @@ func fuzzRewrite(t *testing.T, order Order, records []Record) {
 	if !bytes.Equal(first.Bytes(), again.Bytes()) {
 		t.Fatalf("written\n%x\nand, when read, written as\n%x\n%v", first.Bytes(), again.Bytes(), r.Damages())
 	}
+}
+
+// sound says whether a record's fields can be told from damage: that they end
+// with it, and that its texts hold what texts may.
+func sound(rec Record, order Order) bool {
+	var file bytes.Buffer
+	w := NewWriter(&file, order)
+	if w.Write(rec) != nil || w.Flush() != nil {
+		return false
+	}
+	r := NewReader(nil)
+	r.c.big = bool(order)
+	return r.read(rec.Kind(), file.Bytes()[4:]) == exact
 }
