@@ -53,6 +53,7 @@ type Entry struct {
 	Setup      bool // the tester's doing: may scale any one test
 	Shifts     []Shift
 	Dice       map[string]float64
+	OneClass   float64 `yaml:"one-class"`
 	Maps       map[string]float64
 	Flags      map[string]float64
 	Checks     []Check
@@ -164,6 +165,9 @@ func (c *Catalogue) check(e *Entry) error {
 		if !(p >= 0) {
 			return fmt.Errorf("%s: chance %v of %s", e.Cause, p, name)
 		}
+	}
+	if !(e.OneClass >= 0 && e.OneClass < 1) {
+		return fmt.Errorf("%s: one-class is a chance from 0 to below 1, not %v", e.Cause, e.OneClass)
 	}
 	for _, name := range sortedKeys(e.Flags) {
 		p := e.Flags[name]

@@ -208,7 +208,7 @@ func (s *slopes) move(t int, shift *Shift, size float64) float64 {
 			return by * size
 		}
 	}
-	if s.c.Model != nil && test.Model >= 0 {
+	if s.c.Model != nil && test.Model >= 0 && len(shift.Parameters) > 0 {
 		return 0 // the model knows the test and the shift touches no parameter of it
 	}
 	return shift.Moves[test.Measures] * size

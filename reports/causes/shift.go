@@ -2,6 +2,7 @@ package causes
 
 import (
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/mat"
 )
@@ -207,13 +208,16 @@ func (f *frame) about(sigma, move []float64) *density {
 	return f.newDensity(sigma, extra, move)
 }
 
-// unknown are the densities of levels that are off in no known direction.
-func (f *frame) unknown(sigma []float64) []*density {
+// unknown are the densities of levels of which the given tests (nil: all) are off in
+// no known direction.
+func (f *frame) unknown(sigma []float64, tests []int) []*density {
 	var out []*density
 	for _, times := range []float64{4, 10, 30} {
 		extra := make([]float64, len(sigma))
 		for i, s := range sigma {
-			extra[i] = times * s
+			if tests == nil || slices.Contains(tests, i) {
+				extra[i] = times * s
+			}
 		}
 		out = append(out, f.newDensity(sigma, extra, nil))
 	}

@@ -204,10 +204,32 @@ func (d *diceTable) of(k *Catalogue, e *Entry) float64 {
 	case chances == nil:
 		return d.against(nil, 0.4) // a strong shift may leave some
 	case len(e.Shifts) > 0:
-		return d.against(chances, 0.2)
+		return d.mixed(chances, e.OneClass, 0.2)
 	}
 	// a cause that lives by single dice must show them
-	return d.against(chances, 0.1) - 4*math.Exp(-d.share/0.003)
+	return d.mixed(chances, e.OneClass, 0.1) - 4*math.Exp(-d.share/0.003)
+}
+
+// mixed is against, for a cause that in so many lots of one hits all of its dice in
+// the same way, as a mask's defect does.
+func (d *diceTable) mixed(chances []float64, oneClass, blur float64) float64 {
+	all := d.against(chances, blur)
+	if oneClass == 0 {
+		return all
+	}
+	one := math.Inf(-1)
+	p := make([]float64, len(chances))
+	for c, chance := range chances {
+		if chance == 0 {
+			continue
+		}
+		for i := range p {
+			p[i] = 0.15 * chances[i]
+		}
+		p[c] += 0.85
+		one = logSum(one, math.Log(chance)+d.against(p, blur))
+	}
+	return logSum(math.Log(1-oneClass)+all, math.Log(oneClass)+one)
 }
 
 // mapTable is how much of a lot's patterns are of each kind, by group.

@@ -2,6 +2,7 @@ package causes
 
 import (
 	"math"
+	"slices"
 )
 
 // The views in which a hypothesis is judged.
@@ -233,12 +234,62 @@ func (s *sample) seeZones(v *variant, x *seen) {
 	x.zones = compress(logMean(all))
 }
 
-// seeUnknown does the same for levels that are off in no known direction.
-func (f *frame) seeUnknown(s *sample) *seen {
-	v := &variant{cause: -1, test: -1, lot: f.unknown(f.lot), wafer: f.unknown(f.wafer), zone: f.unknown(f.zone)}
+// seeUnknown does the same for levels that are off in no known direction: in all
+// tests by any amounts, or in those of two kinds, which costs less where the others
+// stand still. One kind alone is a matter of the tester. It gives the best of these, and
+// the log of their mean likelihood over its own.
+func (f *frame) seeUnknown(s *sample) (best *seen, share float64) {
+	merit := func(x *seen) float64 { return usualLevels(x.views()) }
+	best = s.see(f.offIn(nil))
+	merits := []float64{merit(best)}
+	var pairs []float64
+	top := best
+	kinds := f.kinds()
+	for a := range kinds {
+		for b := range a {
+			x := s.see(f.offIn(append(slices.Clone(kinds[a]), kinds[b]...)))
+			pairs = append(pairs, merit(x))
+			if merit(x) > merit(top) {
+				top = x
+			}
+		}
+	}
+	if len(pairs) > 0 {
+		merits = append(merits, logMean(pairs))
+	}
+	return top, logMean(merits) - merit(top)
+}
+
+// usualLevels weighs the views of levels as the usual weights do.
+func usualLevels(v views) float64 {
+	w := UsualWeights()
+	return w.View[lotView]*v[lotView] + w.View[waferView]*v[waferView] + w.View[zoneView]*v[zoneView]
+}
+
+// kinds groups the frame's tests by what they measure.
+func (f *frame) kinds() [][]int {
+	var out [][]int
+	at := map[string]int{}
+	for i, t := range f.tests {
+		m := f.e.cols.Tests[t].Measures
+		k, ok := at[m]
+		if !ok || m == "" || m == "other" {
+			at[m] = len(out)
+			out = append(out, []int{i})
+			continue
+		}
+		out[k] = append(out[k], i)
+	}
+	return out
+}
+
+// offIn is a variant in which the given tests of the frame are off, by any amounts;
+// nil: all of them.
+func (f *frame) offIn(tests []int) *variant {
+	v := &variant{cause: -1, test: -1, lot: f.unknown(f.lot, tests), wafer: f.unknown(f.wafer, tests), zone: f.unknown(f.zone, tests)}
 	v.moves = make([][]float64, len(v.lot))
 	for i := range v.moves {
 		v.moves[i] = make([]float64, len(f.tests))
 	}
-	return s.see(v)
+	return v
 }

@@ -71,6 +71,10 @@ func judge(e *Evidence, k *Catalogue) *judged {
 	f := e.frame
 	j := &judged{e: e, k: k, f: f, s: f.sample(f.null()), dice: e.diceTable(k), maps: e.mapTable(k)}
 	nothing, loss := e.lossOf(&j.dice)
+	if e.Flags["fails-without-reason"] {
+		nothing -= withoutReason
+		loss -= withoutReason
+	}
 
 	h := &hypothesis{odds: math.Log(k.WithinBaseline.Odds * float64(len(k.Causes)))}
 	h.views[diceView] = -compress(j.dice.beyond)
@@ -80,8 +84,9 @@ func judge(e *Evidence, k *Catalogue) *judged {
 	h.views[lotView], h.views[waferView], h.views[zoneView] = -math.Ln2, -math.Ln2, -math.Ln2
 	j.all = append(j.all, h)
 
-	j.unseen = f.seeUnknown(j.s)
-	h = &hypothesis{unknown: true, odds: math.Log(k.Unexplained.Odds), views: j.unseen.views()}
+	var share float64
+	j.unseen, share = f.seeUnknown(j.s)
+	h = &hypothesis{unknown: true, odds: math.Log(k.Unexplained.Odds) + share, views: j.unseen.views()}
 	h.views[flagView] = e.flagsOf(k)
 	h.views[lossView] = loss
 	j.all = append(j.all, h)
@@ -95,16 +100,14 @@ func judge(e *Evidence, k *Catalogue) *judged {
 // of levels; the variants share the cause's odds.
 func (j *judged) singles(loss float64) {
 	best := map[[2]int]*seen{}
-	merits := map[[2]int][]float64{}
-	merit := func(x *seen) float64 {
-		v, w := x.views(), UsualWeights()
-		return w.View[lotView]*v[lotView] + w.View[waferView]*v[waferView] + w.View[zoneView]*v[zoneView]
-	}
+	merits := map[[2]int]*merits{}
 	for _, v := range j.f.variants(j.k) {
 		key := [2]int{v.cause, v.direction}
 		x := j.s.see(v)
-		merits[key] = append(merits[key], merit(x))
-		if b := best[key]; b == nil || merit(x) > merit(b) {
+		if best[key] == nil {
+			best[key], merits[key] = x, newMerits()
+		}
+		if m := merits[key]; m.add(x) {
 			best[key] = x
 		}
 	}
@@ -125,17 +128,66 @@ func (j *judged) singles(loss float64) {
 			if x != nil {
 				h.views = x.views()
 				// one of the variants is true: the cause is as likely as their mean
-				h.odds += logMean(merits[[2]int{c, d}]) - slices.Max(merits[[2]int{c, d}])
+				h.odds += merits[[2]int{c, d}].share()
 			} else {
 				h.views[lotView], h.views[waferView], h.views[zoneView] = -math.Ln2, -math.Ln2, -math.Ln2
 			}
 			h.views[diceView] = j.dice.of(j.k, e)
 			h.views[mapView] = j.maps.of(j.k, e, &j.dice)
 			h.views[flagView] = j.e.flagsOf(j.k, e)
-			h.views[lossView] = loss
+			h.views[lossView] = j.explained(loss, e)
 			j.all = append(j.all, h)
 		}
 	}
+}
+
+// withoutReason is what it counts against a cause that part of the loss are dice
+// which fail though they pass every limit: nothing on the wafer does that.
+const withoutReason = 4
+
+// explained is the view of the loss for causes that hold together.
+func (j *judged) explained(loss float64, causes ...*Entry) float64 {
+	for _, e := range causes {
+		if e.Setup && j.e.Flags["fails-without-reason"] {
+			return loss + withoutReason
+		}
+	}
+	return loss
+}
+
+// merits are how well the variants of a cause fit the levels.
+type merits struct {
+	most           float64
+	shifts, scales []float64 // of process parameters; of one test read wrongly
+}
+
+func newMerits() *merits { return &merits{most: math.Inf(-1)} }
+
+// add takes in a variant and says whether it is the best so far.
+func (m *merits) add(x *seen) bool {
+	merit := usualLevels(x.views())
+	if x.v.test >= 0 {
+		m.scales = append(m.scales, merit)
+	} else {
+		m.shifts = append(m.shifts, merit)
+	}
+	if merit > m.most {
+		m.most = merit
+		return true
+	}
+	return false
+}
+
+// share is the log of the mean likelihood over the best one's. That any one of many
+// tests is read wrongly is as likely as that all of them shift.
+func (m *merits) share() float64 {
+	var kinds []float64
+	for _, v := range [][]float64{m.shifts, m.scales} {
+		if len(v) > 0 {
+			kinds = append(kinds, logMean(v))
+		}
+	}
+	return logMean(kinds) - m.most
 }
 
 // pairs adds the pairs of the likeliest single causes.
@@ -196,7 +248,7 @@ func (j *judged) pair(a, b *hypothesis, loss float64) *hypothesis {
 	h.views[diceView] = j.dice.ofPair(j.k, ea, eb, max(a.views[diceView], b.views[diceView]))
 	h.views[mapView] = j.maps.ofPair(j.k, ea, eb, &j.dice)
 	h.views[flagView] = j.e.flagsOf(j.k, ea, eb)
-	h.views[lossView] = loss
+	h.views[lossView] = j.explained(loss, ea, eb)
 	return h
 }
 
