@@ -604,7 +604,7 @@ type Cause struct {
 	Wafers      []string   `json:"wafers"`
 	For         []Evidence `json:"for"`
 	Against     []Evidence `json:"against"`
-	Alike       []string   `json:"alike"` // causes that these tests cannot tell from it by levels
+	Alike       []string   `json:"alike"` // causes that this lot does not tell from it
 	Next        []Next     `json:"next"`
 }
 

@@ -14,7 +14,7 @@ type Account struct {
 
 	Listed       bool // has reasons
 	For, Against []Reason
-	Alike        []string // causes that these tests cannot tell from it by levels
+	Alike        []string // causes that this lot does not tell from it
 	Next         []Measurement
 }
 
@@ -49,10 +49,11 @@ func (v *Verdict) Accounts(least float64, few int) []Account {
 		a.For, a.Against = v.reasons(&g, &dice[i])
 		a.Next = nextOf(all, g.Cause, i == 0)
 		for _, k := range v.Alike {
-			switch g.Cause {
-			case k.A:
+			switch {
+			case k.Told:
+			case g.Cause == k.A:
 				a.Alike = append(a.Alike, k.B)
-			case k.B:
+			case g.Cause == k.B:
 				a.Alike = append(a.Alike, k.A)
 			}
 		}

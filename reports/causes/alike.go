@@ -2,28 +2,39 @@ package causes
 
 import "math"
 
-// Alike are causes that these tests cannot tell apart by levels: their whitened
-// directions have a cosine of at least 0.95, or both move no test at all.
+// Alike are causes that these tests cannot tell apart by the direction in which levels
+// move: whitened, the directions have a cosine of at least 0.95, or both causes move no
+// test at all.
 type Alike struct {
 	A, B   string
 	Cosine float64
+	// Told says that this lot tells them apart all the same, twenty to one: by single
+	// dice, maps or flags, or because its shift is so large that a small angle counts.
+	Told bool
 }
 
-const alikeCosine = 0.95
+const (
+	alikeCosine = 0.95
+	toldApart   = 3 // nats between two causes: twenty to one
+)
 
 // alike compares the directions of all causes that shift levels, at a middle size, in
 // the spread of healthy lots. A cause that can move levels in several ways is taken
-// by the one that fits the lot best where the lot shows one, else by its usual one.
-func (j *judged) alike() []Alike {
-	moves := make([][]float64, len(j.k.Causes))
+// by the one that fits the lot best where the lot shows one, else by its usual one,
+// if it usually moves any.
+func (j *judged) alike(w *Weights) []Alike {
+	moves, scores := make([][]float64, len(j.k.Causes)), j.scores(w)
 	for c := range j.k.Causes {
 		e := &j.k.Causes[c]
 		if len(e.Shifts) == 0 {
 			continue
 		}
-		v := j.f.shiftVariant(&e.Shifts[0], 1)
-		if own := j.supported(c); own != nil {
-			v = own
+		v := j.supported(c)
+		if v == nil && e.Levels > 0 {
+			continue
+		}
+		if v == nil {
+			v = j.f.shiftVariant(&e.Shifts[0], 1)
 		}
 		if len(v.moves) > 0 {
 			moves[c] = j.f.whiten(v.moves[len(v.moves)/2])
@@ -36,8 +47,23 @@ func (j *judged) alike() []Alike {
 				continue
 			}
 			if c := math.Abs(cosine(moves[a], moves[b])); c >= alikeCosine {
-				out = append(out, Alike{j.k.Causes[a].Cause, j.k.Causes[b].Cause, c})
+				told := math.Abs(scores[a]-scores[b]) >= toldApart
+				out = append(out, Alike{j.k.Causes[a].Cause, j.k.Causes[b].Cause, c, told})
 			}
+		}
+	}
+	return out
+}
+
+// scores are each cause's log odds, alone and in its better direction.
+func (j *judged) scores(w *Weights) []float64 {
+	out := make([]float64, len(j.k.Causes))
+	for c := range out {
+		out[c] = math.Inf(-1)
+	}
+	for _, h := range j.all {
+		if len(h.causes) == 1 {
+			out[h.causes[0]] = max(out[h.causes[0]], h.score(w))
 		}
 	}
 	return out

@@ -52,6 +52,8 @@ type Entry struct {
 	Odds       float64
 	Setup      bool // the tester's doing: may scale any one test
 	Shifts     []Shift
+	Levels     float64 // chance that it moves levels at all; 0: it does where it can
+	Smooth     float64 // 0: not known
 	Dice       map[string]float64
 	OneClass   float64 `yaml:"one-class"`
 	Maps       map[string]float64
@@ -165,6 +167,12 @@ func (c *Catalogue) check(e *Entry) error {
 		if !(p >= 0) {
 			return fmt.Errorf("%s: chance %v of %s", e.Cause, p, name)
 		}
+	}
+	if !(e.Levels >= 0 && e.Levels < 1) {
+		return fmt.Errorf("%s: levels is a chance from 0 to below 1, not %v", e.Cause, e.Levels)
+	}
+	if !(e.Smooth >= 0 && e.Smooth < 1) {
+		return fmt.Errorf("%s: smooth is a chance from 0 to below 1, not %v", e.Cause, e.Smooth)
 	}
 	if !(e.OneClass >= 0 && e.OneClass < 1) {
 		return fmt.Errorf("%s: one-class is a chance from 0 to below 1, not %v", e.Cause, e.OneClass)

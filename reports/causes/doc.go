@@ -45,6 +45,8 @@
 // # What is said and not guessed
 //
 // Causes whose directions over the tests at hand are alike (cosine above 0.95,
-// whitened) cannot be told apart, and Alike says so. What further measurement
-// would split them is ranked by expected information (Next).
+// whitened) cannot be told apart by levels, and Alike says so, and whether this lot
+// decides between them all the same. What further measurement would split them is
+// ranked by expected information (Next). A few hundredths of every probability are
+// kept for lots that are like no model (keptBack).
 package causes

@@ -118,12 +118,16 @@ func loss(lots []Known, start, x, grad []float64) float64 {
 			sum += p[i]
 			right += p[i] * rows[i].credit()
 		}
-		total -= math.Log(max(right, 1e-300) / sum)
+		// As told: with what is kept back for lots that are like no model. So a lot
+		// that no weights explain does not bend them.
+		share, rest := (1-keptBack)*right/sum, keptBack/float64(len(rows))
+		total -= math.Log(share + rest)
 		if grad == nil || right <= 0 {
 			continue
 		}
+		told := share / (share + rest)
 		for i := range rows {
-			by := p[i]/sum - p[i]*rows[i].credit()/right
+			by := told * (p[i]/sum - p[i]*rows[i].credit()/right)
 			d = rows[i].derivative(d[:0], &w)
 			for k := range d {
 				grad[k] += by * d[k]

@@ -99,7 +99,8 @@ func (j *judged) weighWafer(w int, d *diceTable, weights *Weights) []float64 {
 		e := &j.k.Causes[c]
 		p[c] = math.Inf(-1)
 		if len(e.Dice) > 0 {
-			p[c] = math.Log(e.Odds) + weights.View[diceView]*d.of(j.k, e) + weights.View[mapView]*maps.of(j.k, e, d)
+			view, share := d.of(j.k, e)
+			p[c] = math.Log(e.Odds) + share + weights.View[diceView]*view + weights.View[mapView]*maps.of(j.k, e, d)
 		}
 		top = max(top, p[c])
 	}

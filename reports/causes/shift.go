@@ -4,7 +4,9 @@ import (
 	"math"
 	"slices"
 
-	"gonum.org/v1/gonum/mat"
+	"gonum.org/v1/gonum/blas"
+	"gonum.org/v1/gonum/blas/blas64"
+	"gonum.org/v1/gonum/lapack/lapack64"
 )
 
 // Error of a predicted move: a share of the move itself, and a share of the
@@ -45,34 +47,29 @@ func (f *frame) newDensity(sigma, extra, centre []float64) *density {
 	if n == 0 {
 		return &density{}
 	}
-	s := mat.NewSymDense(n, nil)
+	s := make([]float64, n*n) // row by row, lower triangle
 	for i := range n {
 		for j := range i {
-			s.SetSym(i, j, f.correlation.At(i, j)*sigma[i]*sigma[j])
+			s[i*n+j] = f.correlation.At(i, j) * sigma[i] * sigma[j]
 		}
-		v := sigma[i] * sigma[i]
+		s[i*n+i] = sigma[i] * sigma[i]
 		if extra != nil {
-			v += extra[i] * extra[i]
+			s[i*n+i] += extra[i] * extra[i]
 		}
-		s.SetSym(i, i, v)
 	}
-	var chol mat.Cholesky
-	if !chol.Factorize(s) { // cannot be: a correlation drawn towards none
-		for i := range n {
-			for j := range i {
-				s.SetSym(i, j, 0)
-			}
+	diagonal := make([]float64, n)
+	for i := range diagonal {
+		diagonal[i] = s[i*n+i]
+	}
+	if _, ok := lapack64.Potrf(blas64.Symmetric{N: n, Stride: n, Data: s, Uplo: blas.Lower}); !ok {
+		clear(s) // cannot be: a correlation drawn towards none
+		for i, v := range diagonal {
+			s[i*n+i] = math.Sqrt(v)
 		}
-		chol.Factorize(s)
 	}
-	var l mat.TriDense
-	chol.LTo(&l)
-	d := &density{n: n, shift: centre, low: make([]float64, n*n), inv: make([]float64, n)}
+	d := &density{n: n, shift: centre, low: s, inv: make([]float64, n)}
 	for i := range n {
-		for j := range i {
-			d.low[i*n+j] = l.At(i, j)
-		}
-		d.inv[i] = 1 / l.At(i, i)
+		d.inv[i] = 1 / s[i*n+i]
 		d.log += math.Log(d.inv[i])
 	}
 	return d

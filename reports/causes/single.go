@@ -197,27 +197,31 @@ func (k *Catalogue) chances(e *Entry) []float64 {
 	return p
 }
 
-// diceOf is the view of the single dice for a cause.
-func (d *diceTable) of(k *Catalogue, e *Entry) float64 {
+// of is the view of the single dice for a cause, and the log odds that its dice are of
+// the kind that the view takes them for: see mixed.
+func (d *diceTable) of(k *Catalogue, e *Entry) (view, odds float64) {
 	chances := k.chances(e)
 	switch {
 	case chances == nil:
-		return d.against(nil, 0.4) // a strong shift may leave some
+		return d.against(nil, 0.4), 0 // a strong shift may leave some
 	case len(e.Shifts) > 0:
 		return d.mixed(chances, e.OneClass, 0.2)
 	}
 	// a cause that lives by single dice must show them
-	return d.mixed(chances, e.OneClass, 0.1) - 4*math.Exp(-d.share/0.003)
+	view, odds = d.mixed(chances, e.OneClass, 0.1)
+	return view - 4*math.Exp(-d.share/0.003), odds
 }
 
 // mixed is against, for a cause that in so many lots of one hits all of its dice in
-// the same way, as a mask's defect does.
-func (d *diceTable) mixed(chances []float64, oneClass, blur float64) float64 {
-	all := d.against(chances, blur)
+// the same way, as a mask's defect does. The view is that of the likeliest way; odds
+// is the log of the mean over all ways by that one, which is prior and not evidence:
+// no weight of the view tempers it.
+func (d *diceTable) mixed(chances []float64, oneClass, blur float64) (view, odds float64) {
+	ways := []float64{d.against(chances, blur)}
 	if oneClass == 0 {
-		return all
+		return ways[0], 0
 	}
-	one := math.Inf(-1)
+	prior := []float64{1 - oneClass}
 	p := make([]float64, len(chances))
 	for c, chance := range chances {
 		if chance == 0 {
@@ -227,9 +231,15 @@ func (d *diceTable) mixed(chances []float64, oneClass, blur float64) float64 {
 			p[i] = 0.15 * chances[i]
 		}
 		p[c] += 0.85
-		one = logSum(one, math.Log(chance)+d.against(p, blur))
+		ways, prior = append(ways, d.against(p, blur)), append(prior, oneClass*chance)
 	}
-	return logSum(math.Log(1-oneClass)+all, math.Log(oneClass)+one)
+	view = slices.Max(ways)
+	weight := UsualWeights().View[diceView]
+	sum := math.Inf(-1)
+	for i := range ways {
+		sum = logSum(sum, math.Log(prior[i])+weight*(ways[i]-view))
+	}
+	return view, sum
 }
 
 // mapTable is how much of a lot's patterns are of each kind, by group.

@@ -115,6 +115,21 @@ func (x *seen) views() views {
 	return v
 }
 
+// smooth says for a cause whose size varies over the wafer with a given chance what it
+// counts that this lot's does or does not, once its levels show at all.
+func (x *seen) smooth(chance float64) float64 {
+	const shows, varies = 4, 12 // nats; healthy wafers vary a little in many directions
+	switch {
+	case x == nil || chance == 0:
+		return 0
+	case x.zones > varies:
+		return math.Log(2 * chance)
+	case x.lot > shows || x.wafers > shows:
+		return math.Log(2 * (1 - chance))
+	}
+	return 0
+}
+
 func (s *sample) see(v *variant) *seen {
 	x := &seen{v: v, affected: make([]float64, len(s.wafers)), inZones: make([]float64, len(s.wafers))}
 	if len(v.moves) == 0 {

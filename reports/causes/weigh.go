@@ -18,7 +18,7 @@ type Weights struct {
 // UsualWeights are where fitting starts and what holds where there is no
 // calibration: about what fits of several products gave.
 func UsualWeights() Weights {
-	return Weights{View: [numViews]float64{0.7, 0.6, 0.2, 0.25, 0.5, 0.65, 1.6}, Nothing: 0.5, Unknown: -0.3, Pair: -4}
+	return Weights{View: [numViews]float64{1.4, 0.55, 0.06, 0.28, 0.32, 0.72, 2.2}, Nothing: -0.3, Unknown: -0.2, Pair: -4.6}
 }
 
 // hypothesis is what may be true of a lot.
@@ -123,18 +123,24 @@ func (j *judged) singles(loss float64) {
 		directions := max(1, len(e.Directions))
 		for d := range directions {
 			h := &hypothesis{causes: []int{c}, dirs: []int{d}, odds: math.Log(e.Odds / float64(directions))}
+			h.sees = []*seen{nil}
+			h.views = still
 			x := best[[2]int{c, d}]
-			h.sees = []*seen{x}
 			if x != nil {
-				h.views = x.views()
 				// one of the variants is true: the cause is as likely as their mean
-				h.odds += merits[[2]int{c, d}].share()
-			} else {
-				h.views[lotView], h.views[waferView], h.views[zoneView] = -math.Ln2, -math.Ln2, -math.Ln2
+				moves, share := merits[[2]int{c, d}].share(e.Levels)
+				h.odds += share
+				if moves {
+					h.sees[0], h.views = x, x.views()
+				} else {
+					x = nil
+				}
 			}
-			h.views[diceView] = j.dice.of(j.k, e)
+			var share float64
+			h.views[diceView], share = j.dice.of(j.k, e)
+			h.odds += share
 			h.views[mapView] = j.maps.of(j.k, e, &j.dice)
-			h.views[flagView] = j.e.flagsOf(j.k, e)
+			h.views[flagView] = j.e.flagsOf(j.k, e) + x.smooth(e.Smooth)
 			h.views[lossView] = j.explained(loss, e)
 			j.all = append(j.all, h)
 		}
@@ -179,16 +185,29 @@ func (m *merits) add(x *seen) bool {
 }
 
 // share is the log of the mean likelihood over the best one's. That any one of many
-// tests is read wrongly is as likely as that all of them shift.
-func (m *merits) share() float64 {
+// tests is read wrongly is as likely as that all of them shift. A cause that moves
+// levels in some lots only, with the given chance, may be better without: moves says.
+func (m *merits) share(chance float64) (moves bool, share float64) {
 	var kinds []float64
 	for _, v := range [][]float64{m.shifts, m.scales} {
 		if len(v) > 0 {
 			kinds = append(kinds, logMean(v))
 		}
 	}
-	return logMean(kinds) - m.most
+	mean := logMean(kinds)
+	if chance == 0 {
+		return true, mean - m.most
+	}
+	without := usualLevels(still)
+	both := logSum(math.Log(chance)+mean, math.Log(1-chance)+without)
+	if m.most > without {
+		return true, both - m.most
+	}
+	return false, both - without
 }
+
+// still are the views of a cause that moves no level.
+var still = views{lotView: -math.Ln2, waferView: -math.Ln2, zoneView: -math.Ln2}
 
 // pairs adds the pairs of the likeliest single causes.
 func (j *judged) pairs(loss float64) {
@@ -247,7 +266,7 @@ func (j *judged) pair(a, b *hypothesis, loss float64) *hypothesis {
 	}
 	h.views[diceView] = j.dice.ofPair(j.k, ea, eb, max(a.views[diceView], b.views[diceView]))
 	h.views[mapView] = j.maps.ofPair(j.k, ea, eb, &j.dice)
-	h.views[flagView] = j.e.flagsOf(j.k, ea, eb)
+	h.views[flagView] = j.e.flagsOf(j.k, ea, eb) + x.smooth(ea.Smooth) + y.smooth(eb.Smooth)
 	h.views[lossView] = j.explained(loss, ea, eb)
 	return h
 }
@@ -416,9 +435,14 @@ func (j *judged) verdict(w Weights) *Verdict {
 		Judged{Cause: Unknown, Probability: v.Unknown, entry: -1})
 	v.secondLook()
 	sort.SliceStable(v.Causes, func(a, b int) bool { return v.Causes[a].Probability > v.Causes[b].Probability })
-	v.Alike = j.alike()
+	v.Alike = j.alike(&w)
 	return v
 }
+
+// keptBack is the probability that is kept for lots which are like no model: it is
+// shared by all hypotheses alike. Of lots made with other physics than that of the
+// calibration about so many are told wrongly however sure the model is.
+const keptBack = 0.03
 
 // posterior is each hypothesis's probability.
 func (j *judged) posterior(w *Weights) []float64 {
@@ -434,7 +458,7 @@ func (j *judged) posterior(w *Weights) []float64 {
 		sum += p[i]
 	}
 	for i := range p {
-		p[i] /= sum
+		p[i] = (1-keptBack)*p[i]/sum + keptBack/float64(len(p))
 	}
 	return p
 }

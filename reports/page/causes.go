@@ -105,7 +105,7 @@ func newCauseCard(c *reports.Cause) causeCard {
 		add("before", chance(c.Prior)+" before any evidence")
 	}
 	if len(c.Alike) > 0 {
-		add("alike", strings.Join(c.Alike, ", ")+": by levels these tests cannot tell them apart")
+		add("alike", strings.Join(c.Alike, ", ")+": this lot does not tell them apart")
 	}
 	card.For, card.Against = evidenceTable("Speaks for it", c.For), evidenceTable("Speaks against it", c.Against)
 	if len(c.Next) > 0 {

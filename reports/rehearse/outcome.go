@@ -42,16 +42,19 @@ func (o *Outcome) Right() bool {
 	return slices.Contains(o.Names(), o.Named)
 }
 
-// RightWithin says whether it is there, or is one that this lot's tests cannot tell
-// from what is there.
+// RightWithin says whether it is there, or is one that this lot does not tell from
+// what is there.
 func (o *Outcome) RightWithin() bool {
 	return o.Right() || slices.Contains(o.Class(), o.Named)
 }
 
-// Class are the causes that the tests cannot tell from the first one that is there.
+// Class are the causes that the lot does not tell from the first one that is there.
 func (o *Outcome) Class() []string {
 	var out []string
 	for _, a := range o.alike {
+		if a.Told {
+			continue
+		}
 		switch o.First() {
 		case a.A:
 			out = append(out, a.B)

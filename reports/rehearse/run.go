@@ -35,8 +35,8 @@ type Result struct {
 	Confusion Confusion    `json:"confusion"`
 	Worst     []Confused   `json:"confused"`
 	Singles   Share        `json:"singles"`        // first cause right, of lots of one cause
-	Within    Share        `json:"singles_within"` // or one that the tests cannot tell from it
-	InClass   Share        `json:"in_class"`       // of these lots, those whose cause has others alike
+	Within    Share        `json:"singles_within"` // or one that the lot does not tell from it
+	InClass   Share        `json:"in_class"`       // of these lots, those that do not tell their cause from others
 	Pairs     Share        `json:"pairs"`          // first cause is one of two
 	PairsBoth Share        `json:"pairs_both"`     // both told at more than one half
 	Accused   Share        `json:"accused"`        // healthy lots given a cause at more than one half
@@ -61,7 +61,7 @@ type CauseLots struct {
 type CauseCount struct {
 	Cause    string   `json:"cause"`
 	First    Share    `json:"first"`  // named first
-	Within   Share    `json:"within"` // or one that the tests cannot tell from it
+	Within   Share    `json:"within"` // or one that the lot does not tell from it
 	Smallest Smallest `json:"smallest"`
 }
 

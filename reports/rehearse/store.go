@@ -19,7 +19,7 @@ import (
 
 // calibrationVersion is raised when weights of the same catalogue come to mean
 // something else: another way to look at lots, to weigh, to make them or to fit.
-const calibrationVersion = 1
+const calibrationVersion = 2
 
 // Calibration is what a calibration found, as it is kept in a file.
 type Calibration struct {

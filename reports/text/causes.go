@@ -49,7 +49,7 @@ func causeLine(c *reports.Cause) string {
 		line += ", " + plural(n, "wafer")
 	}
 	if len(c.Alike) > 0 {
-		line += "; not told apart from " + strings.Join(c.Alike, ", ") + " by levels"
+		line += "; not told apart from " + strings.Join(c.Alike, ", ")
 	}
 	return line
 }
