@@ -64,7 +64,7 @@ func TestCauses(t *testing.T) {
 	// The judging run is 600,400,320, a quarter of an hour on two cores; fewer lots
 	// must be let off by their own chance.
 	n, healthy, calibration := 240, 120, 128
-	limits := bars{within: 0.86, healthy: 0.05, gap: 0.09, class: 0.5}
+	limits := bars{within: 0.88, healthy: 0.05, gap: 0.08, class: 0.33}
 	if few := os.Getenv("KNEEPOINT_CAUSES"); few != "" {
 		if _, err := fmt.Sscanf(few, "%d,%d,%d", &n, &healthy, &calibration); err != nil {
 			t.Fatalf("KNEEPOINT_CAUSES: %v; write lots,healthy,calibration as in 300,120,128", err)
@@ -92,7 +92,7 @@ func TestCauses(t *testing.T) {
 		t.Logf("%s, %s: calibrated on %s, tried on %s: %+v", g.class, g.tests, learnt, inside, w)
 	}
 	if n >= 600 {
-		limits = bars{within: 0.90, healthy: 0.02, gap: 0.05, class: 0.5}
+		limits = bars{within: 0.90, healthy: 0.02, gap: 0.05, class: 0.25}
 	}
 	report(t, list, limits)
 }
@@ -111,9 +111,9 @@ func tried(t *testing.T, ctx context.Context, p *config.Product, w causes.Weight
 	return out
 }
 
-// bars are what must hold: the share of single causes right within what is alike, of
-// healthy lots given a cause, the expected calibration error, and the share of lots
-// whose cause has others alike.
+// bars are what must hold: the share of single causes right within what the lot does
+// not tell apart, of healthy lots given a cause, the expected calibration error, and
+// the share of lots that do not tell their cause from others.
 type bars struct{ within, healthy, gap, class float64 }
 
 // report prints the figures and holds all lots together to the bars.
