@@ -34,10 +34,10 @@ func TestMixedIsTheMeanOverWays(t *testing.T) {
 }
 
 func TestShareIsTheMeanOverVariants(t *testing.T) {
-	seen := func(lot float64, test int) *seen {
+	fit := func(lot float64, test int) *seen {
 		return &seen{v: &variant{test: test}, lot: lot, wafers: math.Inf(-1), zones: math.Inf(-1)}
 	}
-	list := []*seen{seen(3, -1), seen(9, -1), seen(5, 0), seen(1, 1), seen(2, 2)}
+	list := []*seen{fit(3, -1), fit(9, -1), fit(5, 0), fit(1, 1), fit(2, 2)}
 	m := newMerits()
 	var each []float64
 	for _, x := range list {
@@ -55,11 +55,10 @@ func TestShareIsTheMeanOverVariants(t *testing.T) {
 	if got := m.most + share; !moves || math.Abs(got-both) > 1e-12 {
 		t.Errorf("with a chance of %g they say %g, not %g", chance, got, both)
 	}
-	if quiet := newMerits(); true {
-		quiet.add(seen(math.Inf(-1), -1))
-		if moves, share := quiet.share(chance); moves || share > 0 {
-			t.Errorf("a cause that moves nothing here: moves %v, %g", moves, share)
-		}
+	quiet := newMerits()
+	quiet.add(fit(math.Inf(-1), -1))
+	if moves, share := quiet.share(chance); moves || share > 0 {
+		t.Errorf("a cause that moves nothing here: moves %v, %g", moves, share)
 	}
 }
 
