@@ -10,8 +10,8 @@ import (
 // over the ways in which a cause can act.
 
 func TestMixedIsTheMeanOverWays(t *testing.T) {
-	d := diceTable{classes: 4, excess: []float64{30, 0, 0, 0}, sum: 30, strength: 9}
-	p := []float64{0.2, 0.5, 0.3, 0}
+	d := diceTable{classes: 4, excess: []float64{30, 0, 0, 0}, sum: 30, strength: 12}
+	p := []float64{0.04, 0.56, 0.4, 0}
 	const one, blur = 0.6, 0.1
 	view, odds := d.mixed(p, one, blur)
 	w := UsualWeights().View[diceView]
@@ -27,7 +27,7 @@ func TestMixedIsTheMeanOverWays(t *testing.T) {
 	if always, none := d.mixed(p, 0, blur); always != d.against(p, blur) || none != 0 {
 		t.Errorf("without a lot of one class: %g, %g", always, none)
 	}
-	// Dice of one class alone speak more for a cause whose lots are of one class.
+	// Dice of one rare class alone speak more for a cause whose lots are of one class.
 	if plain := w * d.against(p, blur); w*view+odds <= plain {
 		t.Errorf("%g is not above %g", w*view+odds, plain)
 	}
