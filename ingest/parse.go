@@ -2,6 +2,7 @@ package ingest
 
 import (
 	"bytes"
+	"encoding/binary"
 	"math"
 
 	"kneepoint/config"
@@ -81,6 +82,13 @@ type interner struct {
 	last  []byte // raw bytes of the last cell seen
 	code  int32
 	fresh []fresh // what the row at work added
+
+	// How the last cell is known again without looking for its end: length is
+	// that of its text, 0 where that is not possible; word and mask, mask not 0,
+	// are text and separator in a word.
+	sep        byte
+	length     int
+	word, mask uint64
 }
 
 // fresh is a text, or a way to write one, that was new.
@@ -93,13 +101,42 @@ func (t *interner) intern(raw []byte) int32 {
 	if t.last != nil && string(raw) == string(t.last) {
 		return t.code
 	}
-	t.last = raw
+	t.remember(raw)
 	code, ok := t.codes[string(raw)]
 	if !ok {
 		code = t.add(string(raw), cellText(raw))
 	}
 	t.code = code
 	return code
+}
+
+// remember takes a cell as the last one seen. A text that stood between quotes
+// may hold what would end it without.
+func (t *interner) remember(raw []byte) {
+	t.last, t.length, t.mask = raw, 0, 0
+	n := len(raw)
+	if n == 0 || raw[0] == '"' || bytes.IndexByte(raw, t.sep) >= 0 || bytes.IndexByte(raw, '\n') >= 0 {
+		return
+	}
+	t.length = n
+	if n < 8 {
+		var b [8]byte
+		b[copy(b[:], raw)] = t.sep
+		t.word, t.mask = binary.LittleEndian.Uint64(b[:]), 1<<(8*(n+1))-1
+	}
+}
+
+// again says whether the cell at i is the same text as the last, and where it
+// ends; it may say no where it is.
+func (t *interner) again(b []byte, i int) (end int, ok bool) {
+	end = i + t.length
+	if end+8 > len(b) {
+		return 0, false
+	}
+	if t.mask != 0 {
+		return end, binary.LittleEndian.Uint64(b[i:])&t.mask == t.word
+	}
+	return end, t.length > 0 && b[end] == t.sep && string(b[i:end]) == string(t.last)
 }
 
 // add takes a way to write a text that was not seen before; the same text may
@@ -132,7 +169,7 @@ func (t *interner) forget() {
 			t.dict = t.dict[:len(t.dict)-1]
 		}
 	}
-	t.fresh, t.last = t.fresh[:0], nil
+	t.fresh, t.last, t.length, t.mask = t.fresh[:0], nil, 0, 0
 }
 
 // block parses one block, into the memory of a spare chunk if there is one.
@@ -192,7 +229,7 @@ func (p *parser) newChunk(spare *chunk, rows int) *chunk {
 		case textField:
 			c.text[f.slot].codes = room(c.text[f.slot].codes, rows)
 			to.ints = c.text[f.slot].codes
-			p.interns[f.slot] = interner{codes: map[string]int32{}}
+			p.interns[f.slot] = interner{codes: map[string]int32{}, sep: p.l.sep}
 		case intField:
 			c.ints[f.slot] = room(c.ints[f.slot], rows)
 			to.ints = c.ints[f.slot]
@@ -247,20 +284,18 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	for k := range fields {
 		switch fields[k].kind {
 		case valueField:
-			v, j, st := scanNumber(b, i, sep, decimal)
-			if st == cellOdd {
-				var ok bool
-				if v, j, ok = quotedNumber(b, i, sep, decimal); !ok {
+			v, j, ok := plainNumber(b, i, sep, decimal)
+			if !ok {
+				if v, j, ok = otherNumber(b, i, sep, decimal); !ok {
 					return 0, false
 				}
 			}
 			columns[k].values[n] = v
 			i = j
 		case intField:
-			v, j, st := scanInt(b, i, sep)
-			if st == cellOdd {
-				var ok bool
-				if v, j, ok = oddInt(b, i, sep, decimal); !ok {
+			v, j, ok := plainInt(b, i, sep)
+			if !ok {
+				if v, j, ok = otherInt(b, i, sep, decimal); !ok {
 					return 0, false
 				}
 			}
@@ -269,9 +304,9 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 		case textField:
 			// Nearly always the same text as in the row before.
 			t := &p.interns[fields[k].slot]
-			if m := len(t.last); m > 0 && b[i] != '"' && i+m < len(b) && b[i+m] == sep && string(b[i:i+m]) == string(t.last) {
+			if end, ok := t.again(b, i); ok {
 				columns[k].ints[n] = t.code
-				i += m
+				i = end
 				break
 			}
 			raw, j := plainCell(b, i, sep)
@@ -360,6 +395,15 @@ func quotedCell(b []byte, i int, sep byte) ([]byte, int) {
 	return b[i+1 : j : j], end
 }
 
+// otherNumber reads the numbers that plainNumber does not: with many digits, with
+// blanks around, none, between quotes.
+func otherNumber(b []byte, i int, sep, decimal byte) (float64, int, bool) {
+	if v, end, st := scanNumber(b, i, sep, decimal); st != cellOdd {
+		return v, end, true
+	}
+	return quotedNumber(b, i, sep, decimal)
+}
+
 // quotedNumber reads a number between quotes; ok is false for anything else.
 func quotedNumber(b []byte, i int, sep, decimal byte) (v float64, end int, ok bool) {
 	if b[i] != '"' {
@@ -376,9 +420,12 @@ func quotedNumber(b []byte, i int, sep, decimal byte) (v float64, end int, ok bo
 	return v, end, b[end] == sep || b[end] == '\n'
 }
 
-// oddInt reads a whole number that scanInt does not: with a point ("1.0") or
-// between quotes.
-func oddInt(b []byte, i int, sep, decimal byte) (int32, int, bool) {
+// otherInt reads a whole number that plainInt does not: with many digits, with a
+// point ("1.0"), none, between quotes.
+func otherInt(b []byte, i int, sep, decimal byte) (int32, int, bool) {
+	if v, end, st := scanInt(b, i, sep); st != cellOdd {
+		return v, end, true
+	}
 	v, end, st := scanNumber(b, i, sep, decimal)
 	if st == cellOdd {
 		var ok bool
