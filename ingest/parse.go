@@ -31,6 +31,8 @@ type parser struct {
 type column struct {
 	ints   []int32
 	values []float64
+	shape  shape // of the last plain number
+	end    byte  // that ends a cell: the separator, or the line's end
 }
 
 // newParser prepares for a layout. careful keeps the fast path out, which
@@ -225,6 +227,10 @@ func (p *parser) newChunk(spare *chunk, rows int) *chunk {
 	clear(c.odd)
 	for k, f := range p.l.fields {
 		to := &p.columns[k]
+		to.shape, to.end = noShape, p.l.sep
+		if k == len(p.l.fields)-1 {
+			to.end = '\n'
+		}
 		switch f.kind {
 		case textField:
 			c.text[f.slot].codes = room(c.text[f.slot].codes, rows)
@@ -284,22 +290,36 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	for k := range fields {
 		switch fields[k].kind {
 		case valueField:
+			to := &columns[k]
+			if m, ok := to.shape.number(b, i, to.end); ok {
+				to.values[n] = to.shape.float(m)
+				i += to.shape.length
+				break
+			}
 			v, j, ok := plainNumber(b, i, sep, decimal)
 			if !ok {
 				if v, j, ok = otherNumber(b, i, sep, decimal); !ok {
 					return 0, false
 				}
 			}
-			columns[k].values[n] = v
+			to.values[n] = v
+			to.shape = shapeOf(b[i:j], decimal)
 			i = j
 		case intField:
+			to := &columns[k]
+			if m, ok := to.shape.number(b, i, to.end); ok {
+				to.ints[n] = to.shape.int(m)
+				i += to.shape.length
+				break
+			}
 			v, j, ok := plainInt(b, i, sep)
 			if !ok {
 				if v, j, ok = otherInt(b, i, sep, decimal); !ok {
 					return 0, false
 				}
 			}
-			columns[k].ints[n] = v
+			to.ints[n] = v
+			to.shape = shapeOf(b[i:j], sep) // no point
 			i = j
 		case textField:
 			// Nearly always the same text as in the row before.

@@ -1,0 +1,87 @@
+package ingest
+
+import (
+	"encoding/binary"
+	"math"
+)
+
+// shape is how a plain number of up to eight bytes is written: its sign, its
+// length and where its point stands. The cells of a column have few shapes, and
+// one has nearly always that of the cell above it. So a cell is first tried by
+// that shape: whether it fits is one comparison, its digits are where the shape
+// says, and where the next cell starts does not wait for this one to be read.
+type shape struct {
+	length int
+	mark   uint64 // sign and point where they stand, '0' elsewhere
+	exact  uint64 // the bytes of sign and point
+	among  uint64 // the high bits of the bytes of the cell
+	whole  uint64 // the bytes before the point, all when there is none
+	shift  uint64 // that leaves the digits in a word and nothing behind them
+	sign   uint64 // the high bit when it is negative
+	scale  float64
+}
+
+// noShape fits no cell that ends where it says.
+var noShape = shape{mark: zeros, exact: math.MaxUint64, scale: 1}
+
+// shapeOf is the shape of a cell; noShape when it has none.
+func shapeOf(cell []byte, decimal byte) shape {
+	n := len(cell)
+	if n == 0 || n > 8 {
+		return noShape
+	}
+	s := shape{length: n, mark: zeros, among: highs >> (64 - 8*n), whole: math.MaxUint64, scale: 1}
+	digits, point := 0, -1
+	for i, c := range cell {
+		at := 8 * i
+		switch {
+		case c-'0' <= 9:
+			digits++
+			continue
+		case c == '-' && i == 0:
+			s.sign = 1 << 63
+		case c == decimal && point < 0:
+			point = i
+			s.whole = 1<<at - 1
+		default:
+			return noShape
+		}
+		s.mark ^= uint64(c^'0') << at
+		s.exact |= 0xff << at
+	}
+	if digits == 0 {
+		return noShape
+	}
+	s.shift = uint64(64 - 8*n)
+	if point >= 0 {
+		s.shift += 8
+		s.scale = pow10[n-1-point]
+	}
+	return s
+}
+
+// word gives the number's digits without point as eight digits, if the cell at i
+// is of the shape and end follows it.
+func (s *shape) number(b []byte, i int, end byte) (m uint64, ok bool) {
+	if i+9 > len(b) {
+		return 0, false
+	}
+	t := binary.LittleEndian.Uint64(b[i:]) ^ s.mark
+	if notDigits(t)&s.among|t&s.exact != 0 || b[i+s.length] != end {
+		return 0, false
+	}
+	u := t >> 8 // without the point, which left a zero
+	return eightDigits((u ^ (u^t)&s.whole) << (s.shift & 63)), true
+}
+
+// float gives the value of such digits: exact operands, one rounding, see
+// scanNumber.
+func (s *shape) float(m uint64) float64 {
+	return math.Float64frombits(math.Float64bits(float64(int64(m))/s.scale) ^ s.sign)
+}
+
+// int gives the value of such digits without a point.
+func (s *shape) int(m uint64) int32 {
+	sign := -int32(s.sign >> 63)
+	return int32(m) ^ sign - sign
+}
