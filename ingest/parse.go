@@ -174,9 +174,9 @@ func (t *interner) forget() {
 	t.fresh, t.last, t.length, t.mask = t.fresh[:0], nil, 0, 0
 }
 
-// block parses one block, into the memory of a spare chunk if there is one.
-func (p *parser) block(b *block, spare *chunk) *chunk {
-	c := p.newChunk(spare, b.lines)
+// block parses one block into c, whose columns have room for its rows.
+func (p *parser) block(b *block, c *chunk) {
+	p.begin(c)
 	buf := b.buf
 	careful := p.careful || b.nul
 	i, slow := 0, newLines(b)
@@ -212,19 +212,11 @@ func (p *parser) block(b *block, spare *chunk) *chunk {
 	for _, s := range p.textOf {
 		c.text[s].dict = p.interns[s].dict
 	}
-	c.trim()
-	return c
 }
 
-// newChunk makes a chunk with room for rows, of a spare one where that is large
-// enough. Every cell of a row is written, so old content does no harm.
-func (p *parser) newChunk(spare *chunk, rows int) *chunk {
-	c := spare
-	if c == nil {
-		c = &chunk{file: p.file, text: make([]textColumn, len(p.interns)), values: make([][]float64, p.values), odd: map[oddKey]oddCells{}}
-	}
-	c.n, c.rows = 0, rowCount{}
-	clear(c.odd)
+// begin prepares for a chunk. Every cell of a row is written, so that what its
+// columns held before does no harm.
+func (p *parser) begin(c *chunk) {
 	for k, f := range p.l.fields {
 		to := &p.columns[k]
 		to.shape, to.end = noShape, p.l.sep
@@ -233,27 +225,32 @@ func (p *parser) newChunk(spare *chunk, rows int) *chunk {
 		}
 		switch f.kind {
 		case textField:
-			c.text[f.slot].codes = room(c.text[f.slot].codes, rows)
 			to.ints = c.text[f.slot].codes
 			p.interns[f.slot] = interner{codes: map[string]int32{}, sep: p.l.sep}
 		case intField:
-			c.ints[f.slot] = room(c.ints[f.slot], rows)
 			to.ints = c.ints[f.slot]
-		case passField:
-			c.pass = room(c.pass, rows)
 		case valueField:
-			c.values[f.slot] = room(c.values[f.slot], rows)
 			to.values = c.values[f.slot]
 		}
 	}
-	return c
 }
 
-func room[T any](s []T, n int) []T {
-	if cap(s) < n || s == nil {
-		return make([]T, n, n+n/8)
+// like is a chunk without rows that has the columns of the file.
+func (p *parser) like() *chunk {
+	c := &chunk{file: p.file, text: make([]textColumn, len(p.interns)), values: make([][]float64, p.values)}
+	for _, f := range p.l.fields {
+		switch f.kind {
+		case textField:
+			c.text[f.slot].codes = []int32{}
+		case intField:
+			c.ints[f.slot] = []int32{}
+		case passField:
+			c.pass = []int8{}
+		case valueField:
+			c.values[f.slot] = []float64{}
+		}
 	}
-	return s[:n]
+	return c
 }
 
 // trim cuts the columns to the rows used.
