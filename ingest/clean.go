@@ -26,6 +26,27 @@ func (d *draft) eachTest(opt *Options, work func(test int) []Finding) {
 	}
 }
 
+// eachWafer works on the wafers in parallel, each in one goroutine alone. What
+// work finds must go to a place of its own by wafer.
+func (d *draft) eachWafer(work func(k int, w Wafer)) {
+	const few = 1 << 14 // dice that are not worth a goroutine
+	if d.workers <= 1 || d.n < few {
+		for k, w := range d.wafers {
+			work(k, w)
+		}
+		return
+	}
+	var g errgroup.Group
+	g.SetLimit(d.workers)
+	for k, w := range d.wafers {
+		g.Go(func() error {
+			work(k, w)
+			return nil
+		})
+	}
+	g.Wait()
+}
+
 // extremes are what one pass tells of a column. Most columns hold nothing that
 // needs a closer look, and this is how that is known.
 type extremes struct {
