@@ -12,6 +12,7 @@ import (
 // says, and where the next cell starts does not wait for this one to be read.
 type shape struct {
 	length int
+	reach  int    // how much of the buffer is looked at
 	mark   uint64 // sign and point where they stand, '0' elsewhere
 	exact  uint64 // the bytes of sign and point
 	among  uint64 // the high bits of the bytes of the cell
@@ -22,7 +23,7 @@ type shape struct {
 }
 
 // noShape fits no cell that ends where it says.
-var noShape = shape{mark: zeros, exact: math.MaxUint64, scale: 1}
+var noShape = shape{reach: 9, mark: zeros, exact: math.MaxUint64, scale: 1}
 
 // shapeOf is the shape of a cell; noShape when it has none.
 func shapeOf(cell []byte, decimal byte) shape {
@@ -30,7 +31,7 @@ func shapeOf(cell []byte, decimal byte) shape {
 	if n == 0 || n > 8 {
 		return noShape
 	}
-	s := shape{length: n, mark: zeros, among: highs >> (64 - 8*n), whole: math.MaxUint64, scale: 1}
+	s := shape{length: n, reach: 9, mark: zeros, among: highs >> (64 - 8*n), whole: math.MaxUint64, scale: 1}
 	digits, point := 0, -1
 	for i, c := range cell {
 		at := 8 * i
@@ -60,28 +61,40 @@ func shapeOf(cell []byte, decimal byte) shape {
 	return s
 }
 
-// word gives the number's digits without point as eight digits, if the cell at i
-// is of the shape and end follows it.
-func (s *shape) number(b []byte, i int, end byte) (m uint64, ok bool) {
-	if i+9 > len(b) {
-		return 0, false
+// shapeOfText is the shape of a text that is to be the same, of which it shows
+// the first eight bytes.
+func shapeOfText(cell []byte) shape {
+	n := len(cell)
+	var b [8]byte
+	shown := copy(b[:], cell)
+	return shape{length: n, reach: max(n, 8) + 1, mark: binary.LittleEndian.Uint64(b[:]), exact: math.MaxUint64 >> (64 - 8*shown)}
+}
+
+// fits says whether the cell at i is of the shape and end follows it. It may say
+// no near the end of b.
+func (s *shape) fits(b []byte, i int, end byte) bool {
+	if i+s.reach > len(b) {
+		return false
 	}
 	t := binary.LittleEndian.Uint64(b[i:]) ^ s.mark
-	if notDigits(t)&s.among|t&s.exact != 0 || b[i+s.length] != end {
-		return 0, false
-	}
+	return notDigits(t)&s.among|t&s.exact == 0 && b[i+s.length] == end
+}
+
+// digits gives the digits of a cell that fits as one number, the point left out.
+func (s *shape) digits(b []byte, i int) uint64 {
+	t := binary.LittleEndian.Uint64(b[i:]) ^ s.mark
 	u := t >> 8 // without the point, which left a zero
-	return eightDigits((u ^ (u^t)&s.whole) << (s.shift & 63)), true
+	return eightDigits((u ^ (u^t)&s.whole) << (s.shift & 63))
 }
 
-// float gives the value of such digits: exact operands, one rounding, see
+// float gives the value of such a cell: exact operands, one rounding, see
 // scanNumber.
-func (s *shape) float(m uint64) float64 {
-	return math.Float64frombits(math.Float64bits(float64(int64(m))/s.scale) ^ s.sign)
+func (s *shape) float(b []byte, i int) float64 {
+	return math.Float64frombits(math.Float64bits(float64(int64(s.digits(b, i)))/s.scale) ^ s.sign)
 }
 
-// int gives the value of such digits without a point.
-func (s *shape) int(m uint64) int32 {
+// int gives the value of a cell without a point.
+func (s *shape) int(b []byte, i int) int32 {
 	sign := -int32(s.sign >> 63)
-	return int32(m) ^ sign - sign
+	return int32(s.digits(b, i)) ^ sign - sign
 }
