@@ -15,12 +15,14 @@ import (
 const (
 	zeros = 0x3030303030303030 // '0' in every byte
 	highs = 0x8080808080808080
+	// overNine makes a byte above 9 one with the high bit.
+	overNine = 0x7676767676767676
 )
 
 // notDigits marks, by the high bit of each byte, what is no digit in a word of
 // text from which zeros were taken by exclusive or: a byte above 9. The sum in a
 // byte is at most 0x7f+0x76, so that none reaches the next.
-func notDigits(t uint64) uint64 { return (t&^highs + 0x7676767676767676 | t) & highs }
+func notDigits(t uint64) uint64 { return (t&^highs + overNine | t) & highs }
 
 // eightDigits is the number that the bytes 0 to 9 of t make, the first digit in
 // the lowest byte: neighbours are joined to pairs, these to fours, these to

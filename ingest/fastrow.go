@@ -16,12 +16,13 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	n, columns := c.n, p.columns
 	for k := range columns {
 		to := &columns[k]
-		if s := &to.shape; s.fits(b, i, to.end) && (s.length <= 8 || bytes.Equal(b[i:i+s.length], to.text)) {
+		s := &to.shape
+		if t, ok := s.fits(b, i, to.end); ok && (s.length <= 8 || bytes.Equal(b[i:i+s.length], to.text)) {
 			switch to.kind {
 			case valueField:
-				to.values[n] = s.float(b, i)
+				to.values[n] = s.float(t)
 			case intField:
-				to.ints[n] = s.int(b, i)
+				to.ints[n] = s.int(t)
 			case textField:
 				to.ints[n] = to.code
 			case passField:

@@ -70,31 +70,31 @@ func shapeOfText(cell []byte) shape {
 	return shape{length: n, reach: max(n, 8) + 1, mark: binary.LittleEndian.Uint64(b[:]), exact: math.MaxUint64 >> (64 - 8*shown)}
 }
 
-// fits says whether the cell at i is of the shape and end follows it. It may say
-// no near the end of b.
-func (s *shape) fits(b []byte, i int, end byte) bool {
+// fits says whether the cell at i is of the shape and end follows it, and gives
+// the word there with the shape's marks taken out. It may say no near the end of
+// b.
+func (s *shape) fits(b []byte, i int, end byte) (word uint64, ok bool) {
 	if i+s.reach > len(b) {
-		return false
+		return 0, false
 	}
 	t := binary.LittleEndian.Uint64(b[i:]) ^ s.mark
-	return notDigits(t)&s.among|t&s.exact == 0 && b[i+s.length] == end
+	return t, (t&^highs+overNine|t)&s.among|t&s.exact == 0 && b[i+s.length] == end
 }
 
-// digits gives the digits of a cell that fits as one number, the point left out.
-func (s *shape) digits(b []byte, i int) uint64 {
-	t := binary.LittleEndian.Uint64(b[i:]) ^ s.mark
+// digits gives the digits of such a word as one number, the point left out.
+func (s *shape) digits(t uint64) uint64 {
 	u := t >> 8 // without the point, which left a zero
 	return eightDigits((u ^ (u^t)&s.whole) << (s.shift & 63))
 }
 
-// float gives the value of such a cell: exact operands, one rounding, see
+// float gives the value of a number: exact operands, one rounding, see
 // scanNumber.
-func (s *shape) float(b []byte, i int) float64 {
-	return math.Float64frombits(math.Float64bits(float64(int64(s.digits(b, i)))/s.scale) ^ s.sign)
+func (s *shape) float(t uint64) float64 {
+	return math.Float64frombits(math.Float64bits(float64(int64(s.digits(t)))/s.scale) ^ s.sign)
 }
 
-// int gives the value of a cell without a point.
-func (s *shape) int(b []byte, i int) int32 {
+// int gives the value of a number without a point.
+func (s *shape) int(t uint64) int32 {
 	sign := -int32(s.sign >> 63)
-	return int32(s.digits(b, i)) ^ sign - sign
+	return int32(s.digits(t)) ^ sign - sign
 }
