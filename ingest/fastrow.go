@@ -17,19 +17,29 @@ func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
 	for k := range columns {
 		to := &columns[k]
 		s := &to.shape
-		if t, ok := s.fits(b, i, to.end); ok && (s.length <= 8 || bytes.Equal(b[i:i+s.length], to.text)) {
-			switch to.kind {
-			case valueField:
-				to.values[n] = s.float(t)
-			case intField:
-				to.ints[n] = s.int(t)
-			case textField:
-				to.ints[n] = to.code
-			case passField:
-				c.pass[n] = int8(to.code)
+		if end := i + s.length; i+s.reach <= len(b) {
+			if t := s.word(b, i); s.fits(t) && b[end] == to.end {
+				switch to.kind {
+				case valueField:
+					to.values[n] = s.float(t)
+					i = end + 1
+					continue
+				case intField:
+					to.ints[n] = s.int(t)
+					i = end + 1
+					continue
+				case textField:
+					if s.length <= 8 || bytes.Equal(b[i:end], to.text) {
+						to.ints[n] = to.code
+						i = end + 1
+						continue
+					}
+				case passField:
+					c.pass[n] = int8(to.code)
+					i = end + 1
+					continue
+				}
 			}
-			i += s.length + 1
-			continue
 		}
 		if i, ok = p.plain(b, i, k, c); !ok {
 			return 0, false

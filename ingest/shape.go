@@ -70,16 +70,13 @@ func shapeOfText(cell []byte) shape {
 	return shape{length: n, reach: max(n, 8) + 1, mark: binary.LittleEndian.Uint64(b[:]), exact: math.MaxUint64 >> (64 - 8*shown)}
 }
 
-// fits says whether the cell at i is of the shape and end follows it, and gives
-// the word there with the shape's marks taken out. It may say no near the end of
-// b.
-func (s *shape) fits(b []byte, i int, end byte) (word uint64, ok bool) {
-	if i+s.reach > len(b) {
-		return 0, false
-	}
-	t := binary.LittleEndian.Uint64(b[i:]) ^ s.mark
-	return t, (t&^highs+overNine|t)&s.among|t&s.exact == 0 && b[i+s.length] == end
+// word is the text at i with the shape's marks taken out.
+func (s *shape) word(b []byte, i int) uint64 {
+	return binary.LittleEndian.Uint64(b[i:i+8:i+8]) ^ s.mark
 }
+
+// fits says whether such a word starts with a cell of the shape.
+func (s *shape) fits(t uint64) bool { return (t&^highs+overNine|t)&s.among|t&s.exact == 0 }
 
 // digits gives the digits of such a word as one number, the point left out.
 func (s *shape) digits(t uint64) uint64 {
