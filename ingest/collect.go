@@ -10,9 +10,10 @@ import (
 // the values stay. The columns are allocated once where the size of the file
 // tells how many rows to expect.
 type collector struct {
-	size int64 // of the raw file
-	like *chunk
-	out  *chunk
+	size   int64   // of the raw file
+	margin float64 // of what size tells of the rows
+	like   *chunk
+	out    *chunk
 
 	// growing is held for reading while out's columns are written, and for
 	// writing while they move.
@@ -37,8 +38,11 @@ type placed struct {
 }
 
 // newCollector makes one for columns like those of a chunk without rows.
-func newCollector(size int64, like *chunk) *collector {
-	k := &collector{size: size, like: like, pending: map[int]placed{}, text: make([]globalText, len(like.text))}
+func newCollector(src *source, like *chunk) *collector {
+	k := &collector{size: src.size, margin: 1.02, like: like, pending: map[int]placed{}, text: make([]globalText, len(like.text))}
+	if src.packed != "" {
+		k.margin = 1.06 // how well the start packs tells less
+	}
 	k.out = emptyChunk(like)
 	return k
 }
@@ -82,7 +86,7 @@ func (k *collector) grow(raw int64) {
 	defer k.growing.Unlock()
 	want := k.cap + k.cap/4
 	if raw > 0 {
-		want = max(want, int(float64(k.reserved)*float64(k.size)/float64(raw)*1.02))
+		want = max(want, int(float64(k.reserved)*float64(k.size)/float64(raw)*k.margin))
 	}
 	want = max(want, k.reserved+64)
 	for s := range k.like.text {

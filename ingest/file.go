@@ -158,7 +158,7 @@ func parseBlocks(ctx context.Context, k *blocker, parsers []*parser) (*chunk, er
 		wg     sync.WaitGroup
 		jobs   = make(chan job, len(parsers))
 		spare  = make(chan []byte, 2*len(parsers)+2)
-		all    = newCollector(k.src.size, parsers[0].like())
+		all    = newCollector(k.src, parsers[0].like())
 		fields = len(parsers[0].l.fields)
 	)
 	for _, p := range parsers {
