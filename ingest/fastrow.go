@@ -93,7 +93,7 @@ func (p *parser) plain(b []byte, i, k int, c *chunk) (end int, ok bool) {
 		}
 		to.ints[n] = v
 		if b[j] == to.end && j > i {
-			to.shape = shapeOf(b[i:j], sep) // which it does not hold: whole numbers only
+			to.shape = shapeOf(b[i:j], 0)
 		}
 		return j, true
 	}

@@ -5,16 +5,16 @@ import (
 	"math"
 )
 
-// shape is how a plain number of up to eight bytes is written: its sign, its
-// length and where its point stands. The cells of a column have few shapes, and
+// shape is how a plain number of up to eight bytes is written: its quotes, its
+// sign, its length and where its point stands. The cells of a column have few shapes, and
 // one has nearly always that of the cell above it. So a cell is first tried by
 // that shape: whether it fits is one comparison, its digits are where the shape
 // says, and where the next cell starts does not wait for this one to be read.
 type shape struct {
 	length int
 	reach  int    // how much of the buffer is looked at
-	mark   uint64 // sign and point where they stand, '0' elsewhere
-	exact  uint64 // the bytes of sign and point
+	mark   uint64 // what is no digit where it stands, '0' elsewhere
+	exact  uint64 // the bytes of that
 	among  uint64 // the high bits of the bytes of the cell
 	whole  uint64 // the bytes before the point, all when there is none
 	shift  uint64 // that leaves the digits in a word and nothing behind them
@@ -25,21 +25,31 @@ type shape struct {
 // noShape fits no cell that ends where it says.
 var noShape = shape{reach: 9, mark: zeros, exact: math.MaxUint64, scale: 1}
 
-// shapeOf is the shape of a cell; noShape when it has none.
+// shapeOf is the shape of a cell that was read as a number, the carriage return
+// of a line's end included; noShape when it has none. Without decimal sign, 0, it
+// is that of a whole number.
 func shapeOf(cell []byte, decimal byte) shape {
 	n := len(cell)
 	if n == 0 || n > 8 {
 		return noShape
 	}
 	s := shape{length: n, reach: 9, mark: zeros, among: highs >> (64 - 8*n), whole: math.MaxUint64, scale: 1}
+	first, last := 0, n
+	if cell[last-1] == '\r' {
+		last--
+	}
+	if last > 2 && cell[0] == '"' && cell[last-1] == '"' {
+		first, last = 1, last-1
+	}
 	digits, point := 0, -1
 	for i, c := range cell {
 		at := 8 * i
 		switch {
+		case i < first || i >= last:
 		case c-'0' <= 9:
 			digits++
 			continue
-		case c == '-' && i == 0:
+		case c == '-' && i == first:
 			s.sign = 1 << 63
 		case c == decimal && point < 0:
 			point = i
@@ -53,10 +63,10 @@ func shapeOf(cell []byte, decimal byte) shape {
 	if digits == 0 {
 		return noShape
 	}
-	s.shift = uint64(64 - 8*n)
+	s.shift = uint64(64 - 8*last)
 	if point >= 0 {
 		s.shift += 8
-		s.scale = pow10[n-1-point]
+		s.scale = pow10[last-1-point]
 	}
 	return s
 }
