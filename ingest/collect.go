@@ -10,8 +10,8 @@ import (
 // the values stay. The columns are allocated once where the size of the file
 // tells how many rows to expect.
 type collector struct {
-	size   int64   // of the raw file
-	margin float64 // of what size tells of the rows
+	size   int64 // of the raw file
+	packed bool
 	like   *chunk
 	out    *chunk
 
@@ -39,10 +39,7 @@ type placed struct {
 
 // newCollector makes one for columns like those of a chunk without rows.
 func newCollector(src *source, like *chunk) *collector {
-	k := &collector{size: src.size, margin: 1.02, like: like, pending: map[int]placed{}, text: make([]globalText, len(like.text))}
-	if src.packed != "" {
-		k.margin = 1.06 // how well the start packs tells less
-	}
+	k := &collector{size: src.size, packed: src.packed != "", like: like, pending: map[int]placed{}, text: make([]globalText, len(like.text))}
 	k.out = emptyChunk(like)
 	return k
 }
@@ -84,30 +81,35 @@ func mostRows(b *block, fields int) int {
 func (k *collector) grow(raw int64) {
 	k.growing.Lock()
 	defer k.growing.Unlock()
-	want := k.cap + k.cap/4
+	want := 0.
 	if raw > 0 {
-		want = max(want, int(float64(k.reserved)*float64(k.size)/float64(raw)*k.margin))
+		want = float64(k.reserved) * float64(k.size) / float64(raw) * 1.02
 	}
-	want = max(want, k.reserved+64)
+	if k.packed {
+		// The start may pack much better than the rest: then it is looked at
+		// again.
+		want = min(want*1.02, 16*float64(k.reserved))
+	}
+	rows := max(int(want), k.cap+k.cap/4, k.reserved+64)
 	for s := range k.like.text {
 		if k.like.text[s].codes != nil {
-			k.out.text[s].codes = larger(k.out.text[s].codes, want)
+			k.out.text[s].codes = larger(k.out.text[s].codes, rows)
 		}
 	}
 	for s := range k.like.ints {
 		if k.like.ints[s] != nil {
-			k.out.ints[s] = larger(k.out.ints[s], want)
+			k.out.ints[s] = larger(k.out.ints[s], rows)
 		}
 	}
 	if k.like.pass != nil {
-		k.out.pass = larger(k.out.pass, want)
+		k.out.pass = larger(k.out.pass, rows)
 	}
 	for s := range k.like.values {
 		if k.like.values[s] != nil {
-			k.out.values[s] = larger(k.out.values[s], want)
+			k.out.values[s] = larger(k.out.values[s], rows)
 		}
 	}
-	k.cap = want
+	k.cap = rows
 }
 
 // larger gives a column of length n that starts with s.
