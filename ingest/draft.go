@@ -102,7 +102,7 @@ func (d *draft) orderTests() {
 // touchdowns numbers the measurements of each wafer where the file does not.
 func (d *draft) touchdowns() {
 	if !d.ownOrder {
-		t := make([]int32, d.n)
+		t := larger[int32](nil, d.n)
 		d.eachWafer(func(_ int, w Wafer) {
 			for i := range t[w.Lo:w.Hi] {
 				t[w.Lo+i] = int32(i + 1)
