@@ -59,7 +59,12 @@ type extremes struct {
 // numbers, and makes plain NaN of them, but for bounds.
 func survey(v []float64, odd map[status]int) extremes {
 	e := extremes{least: math.Inf(1), most: math.Inf(-1)}
+	between, least, most := 0, e.least, e.most // nearly all are counted here, out of memory
 	for i, x := range v {
+		if x > least && x < most {
+			between++
+			continue
+		}
 		if x != x {
 			if odd != nil {
 				st := nanStatus(x)
@@ -85,7 +90,9 @@ func survey(v []float64, odd map[status]int) extremes {
 			}
 			e.nMost++
 		}
+		least, most = e.least, e.most
 	}
+	e.n += between
 	return e
 }
 
