@@ -106,13 +106,13 @@ func (p *parser) plain(b []byte, i, k int, c *chunk) (end int, ok bool) {
 		to.code, p.interned = p.interns[p.l.fields[k].slot].intern(raw), true
 		to.ints[n] = to.code
 	case passField:
-		to.code = -1
+		v := int8(-1)
 		if len(raw) > 0 {
-			if to.code = int32(passFlag(raw)); to.code < 0 {
-				return 0, false
+			if v = passFlag(raw); v < 0 {
+				return 0, false // code stays that of the shape
 			}
 		}
-		c.pass[n] = int8(to.code)
+		to.code, c.pass[n] = int32(v), v
 	default:
 		return j, true
 	}
