@@ -212,7 +212,7 @@ func (k *blocker) block(buf []byte) block {
 	k.given += int64(len(buf))
 	raw := k.given
 	if k.src.packed != "" {
-		raw = k.src.raw
+		raw = k.src.used()
 	}
 	b := block{buf: buf, seq: k.seq, line: k.line, raw: raw, lines: bytes.Count(buf, []byte{'\n'}), nul: bytes.IndexByte(buf, 0) >= 0}
 	k.tail = lastOf(tailSize, k.tail, buf)

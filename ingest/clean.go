@@ -26,6 +26,27 @@ func (d *draft) eachTest(opt *Options, work func(test int) []Finding) {
 	}
 }
 
+// eachWafer works on the wafers in parallel, each in one goroutine alone. What
+// work finds must go to a place of its own by wafer.
+func (d *draft) eachWafer(work func(k int, w Wafer)) {
+	const few = 1 << 14 // dice that are not worth a goroutine
+	if d.workers <= 1 || d.n < few {
+		for k, w := range d.wafers {
+			work(k, w)
+		}
+		return
+	}
+	var g errgroup.Group
+	g.SetLimit(d.workers)
+	for k, w := range d.wafers {
+		g.Go(func() error {
+			work(k, w)
+			return nil
+		})
+	}
+	g.Wait()
+}
+
 // extremes are what one pass tells of a column. Most columns hold nothing that
 // needs a closer look, and this is how that is known.
 type extremes struct {
@@ -38,7 +59,12 @@ type extremes struct {
 // numbers, and makes plain NaN of them, but for bounds.
 func survey(v []float64, odd map[status]int) extremes {
 	e := extremes{least: math.Inf(1), most: math.Inf(-1)}
+	between, least, most := 0, e.least, e.most // nearly all are counted here, out of memory
 	for i, x := range v {
+		if x > least && x < most {
+			between++
+			continue
+		}
 		if x != x {
 			if odd != nil {
 				st := nanStatus(x)
@@ -64,7 +90,9 @@ func survey(v []float64, odd map[status]int) extremes {
 			}
 			e.nMost++
 		}
+		least, most = e.least, e.most
 	}
+	e.n += between
 	return e
 }
 

@@ -19,12 +19,7 @@ func (d *draft) places() {
 		}
 		return
 	}
-	none := 0
-	for i := range x {
-		if x[i] == Missing || y[i] == Missing {
-			none++
-		}
-	}
+	none, _ := d.countDice(func(i int) bool { return x[i] == Missing || y[i] == Missing })
 	if none == len(x) {
 		d.ints[intX], d.ints[intY] = nil, nil
 		d.note(Warning, "no-coordinates", "the columns of die coordinates are empty; what needs a map is left out", "export die x and y to get maps", len(x))
@@ -66,21 +61,38 @@ func (p *places) offWafer(d *draft) (int, string) {
 }
 
 func (p *places) count(d *draft, off func(x, y int32) bool) int {
-	n := 0
-	for i := range p.x {
-		if p.x[i] == Missing || p.y[i] == Missing || !off(p.x[i], p.y[i]) {
-			continue
+	n, i := d.countDice(func(i int) bool { return p.x[i] != Missing && p.y[i] != Missing && off(p.x[i], p.y[i]) })
+	for _, w := range d.wafers {
+		if i >= w.Lo && i < w.Hi {
+			p.example = fmt.Sprintf("wafer %s die %d, %d", w.ID, p.x[i], p.y[i])
 		}
-		if n == 0 {
-			for _, w := range d.wafers {
-				if i >= w.Lo && i < w.Hi {
-					p.example = fmt.Sprintf("wafer %s die %d, %d", w.ID, p.x[i], p.y[i])
+	}
+	return n
+}
+
+// countDice counts the dice of which something is true, and gives the first of
+// them, -1 when there is none.
+func (d *draft) countDice(is func(i int) bool) (n, first int) {
+	type found struct{ n, first int }
+	by := make([]found, len(d.wafers))
+	d.eachWafer(func(k int, w Wafer) {
+		f := found{first: -1}
+		for i := w.Lo; i < w.Hi; i++ {
+			if is(i) {
+				if f.n++; f.n == 1 {
+					f.first = i
 				}
 			}
 		}
-		n++
+		by[k] = f
+	})
+	first = -1
+	for _, f := range by {
+		if n += f.n; first < 0 {
+			first = f.first
+		}
 	}
-	return n
+	return n, first
 }
 
 // farOutline gives the rule for a wafer of unknown size; it calls nothing off

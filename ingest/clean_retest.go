@@ -21,8 +21,12 @@ func (d *draft) retests(opt *Options) []int32 {
 	if opt.Product != nil {
 		s.bins = opt.Product.Bins
 	}
-	for _, w := range d.wafers {
-		d.sameDice(w.Lo, w.Hi, s.several)
+	found := make([][][]int32, len(d.wafers))
+	d.eachWafer(func(k int, w Wafer) { found[k] = d.sameDice(w.Lo, w.Hi) })
+	for _, dice := range found {
+		for _, rows := range dice {
+			s.several(rows)
+		}
 	}
 	s.settle()
 	s.untested()
@@ -283,12 +287,11 @@ func (s *retesting) report() {
 	}
 }
 
-// sameDice calls found with the rows of each die that has several in [lo, hi).
-func (d *draft) sameDice(lo, hi int, found func(rows []int32)) {
+// sameDice gives the rows of each die that has several in [lo, hi).
+func (d *draft) sameDice(lo, hi int) [][]int32 {
 	x, y := d.ints[intX], d.ints[intY]
 	if x == nil || y == nil {
-		d.sameKeys(lo, hi, nil, nil, found)
-		return
+		return d.sameKeys(lo, hi, nil, nil)
 	}
 	// A table over the bounding box tells the usual wafer without hashing.
 	minX, maxX, minY, maxY := int64(math.MaxInt64), int64(math.MinInt64), int64(math.MaxInt64), int64(math.MinInt64)
@@ -315,22 +318,21 @@ func (d *draft) sameDice(lo, hi int, found func(rows []int32)) {
 				seen[at>>6] |= 1 << (at & 63)
 			}
 			if !again {
-				return
+				return nil
 			}
 		}
 	}
-	d.sameKeys(lo, hi, x, y, found)
+	return d.sameKeys(lo, hi, x, y)
 }
 
 // sameKeys does it with a map, dice in the order of their first row.
-func (d *draft) sameKeys(lo, hi int, x, y []int32, found func(rows []int32)) {
+func (d *draft) sameKeys(lo, hi int, x, y []int32) (groups [][]int32) {
 	part, site := d.text[textPart], []int32(nil)
 	if d.siteIsDie {
 		site = d.ints[intSite]
 	}
 	type key struct{ x, y, part, site int32 }
 	first := make(map[key]int32, hi-lo)
-	var groups [][]int32
 	of := map[int32]int{}
 	for i := lo; i < hi; i++ {
 		k := key{Missing, Missing, -1, Missing}
@@ -357,9 +359,7 @@ func (d *draft) sameKeys(lo, hi int, x, y []int32, found func(rows []int32)) {
 		}
 		groups[g] = append(groups[g], int32(i))
 	}
-	for _, g := range groups {
-		found(g)
-	}
+	return groups
 }
 
 // split takes the measurements that do not count out of the columns.

@@ -50,20 +50,22 @@ func (d *draft) outlines() {
 	if x == nil || y == nil || len(d.wafers) < 3 {
 		return
 	}
-	box := boxOf(x, y)
+	box := d.boxOf(x, y)
 	if box == nil {
 		return
 	}
-	tested := make([]int32, len(box.has))
 	own := make([]*positions, len(d.wafers))
-	for k, w := range d.wafers {
+	d.eachWafer(func(k int, w Wafer) {
 		own[k] = box.like()
 		for i := w.Lo; i < w.Hi; i++ {
 			if x[i] != Missing && y[i] != Missing {
 				own[k].add(int(x[i]), int(y[i]))
 			}
 		}
-		for i, has := range own[k].has {
+	})
+	tested := make([]int32, len(box.has))
+	for _, p := range own {
+		for i, has := range p.has {
 			if has {
 				tested[i]++
 			}
@@ -84,8 +86,10 @@ func (d *draft) outlines() {
 func (d *draft) compareOutlines(own []*positions, usual *positions) {
 	var turned, gaps []string
 	turnedDice, missing := 0, 0
+	inBoth := make([]int, len(d.wafers))
+	d.eachWafer(func(k int, _ Wafer) { inBoth[k] = common(own[k], usual) })
 	for k, w := range d.wafers {
-		both := common(own[k], usual)
+		both := inBoth[k]
 		if own[k].n < turnLeast || jaccard(both, own[k], usual) >= turnMisfit && float64(usual.n-both) < gapLeast*float64(usual.n) {
 			continue
 		}
@@ -108,14 +112,24 @@ func (d *draft) compareOutlines(own []*positions, usual *positions) {
 
 // boxOf is the empty set over the box of all dice; nil without dice, or when
 // the box is too large.
-func boxOf(x, y []int32) *positions {
-	x0, x1, y0, y1 := math.MaxInt32, math.MinInt32, math.MaxInt32, math.MinInt32
-	for i := range x {
-		if x[i] != Missing && y[i] != Missing {
-			x0, x1 = min(x0, int(x[i])), max(x1, int(x[i]))
-			y0, y1 = min(y0, int(y[i])), max(y1, int(y[i]))
+func (d *draft) boxOf(x, y []int32) *positions {
+	type box struct{ x0, x1, y0, y1 int32 }
+	none := box{math.MaxInt32, math.MinInt32, math.MaxInt32, math.MinInt32}
+	by := make([]box, len(d.wafers))
+	d.eachWafer(func(k int, w Wafer) {
+		b := none
+		for i := w.Lo; i < w.Hi; i++ {
+			if x[i] != Missing && y[i] != Missing {
+				b = box{min(b.x0, x[i]), max(b.x1, x[i]), min(b.y0, y[i]), max(b.y1, y[i])}
+			}
 		}
+		by[k] = b
+	})
+	whole := none
+	for _, b := range by {
+		whole = box{min(whole.x0, b.x0), max(whole.x1, b.x1), min(whole.y0, b.y0), max(whole.y1, b.y1)}
 	}
+	x0, x1, y0, y1 := int(whole.x0), int(whole.x1), int(whole.y0), int(whole.y1)
 	if x1 < x0 || x1-x0 >= turnBox || y1-y0 >= turnBox || (x1-x0+1)*(y1-y0+1) > turnBox {
 		return nil
 	}

@@ -12,17 +12,7 @@ import (
 // as it is.
 func (s *retesting) untested() {
 	d := s.d
-	gone := map[int32]bool{}
-	dice := 0
-	for r := range int32(d.n) {
-		if s.keep != nil && s.keep[r] != r {
-			continue
-		}
-		dice++
-		if !d.valid(r) {
-			gone[r] = true
-		}
-	}
+	dice, gone := s.withoutReading()
 	if len(gone) == 0 || len(gone) == dice {
 		return
 	}
@@ -46,6 +36,34 @@ func (s *retesting) untested() {
 			d.untestedRows += int(d.weight[r]) - 1
 		}
 	}
+}
+
+// withoutReading counts the dice and gives those that have nothing in the
+// measurement that counts.
+func (s *retesting) withoutReading() (dice int, gone map[int32]bool) {
+	d := s.d
+	count, without := make([]int, len(d.wafers)), make([][]int32, len(d.wafers))
+	d.eachWafer(func(k int, w Wafer) {
+		n := 0
+		for r := int32(w.Lo); r < int32(w.Hi); r++ {
+			if s.keep != nil && s.keep[r] != r {
+				continue
+			}
+			n++
+			if !d.valid(r) {
+				without[k] = append(without[k], r)
+			}
+		}
+		count[k] = n
+	})
+	gone = map[int32]bool{}
+	for k, rows := range without {
+		dice += count[k]
+		for _, r := range rows {
+			gone[r] = true
+		}
+	}
+	return dice, gone
 }
 
 func (s *retesting) reportUntested() {

@@ -149,11 +149,13 @@ short keeps its whole rows; a last line that broke off is not used.
 
 # How it is fast
 
-One goroutine reads a file in blocks of whole lines and takes its hash; others
-parse the blocks into columns, rows of plain cells by a fast path and all others
-by the full reader, with the same result to the bit. The columns are allocated
-once where the file's size tells how long they get. What is in a block depends
-on the file alone, so that the result does not depend on the number of
-goroutines.
+One goroutine reads a file in blocks of whole lines, takes its hash and reserves
+the rows of each block; others parse the blocks where their rows stay, rows of
+plain cells by a fast path and all others by the full reader, with the same
+result to the bit. The fast path tries each cell first by the way the one above
+it is written, see shape. The columns are allocated once where the file's size
+tells how long they get. What is in a block depends on the file alone, so that
+the result does not depend on the number of goroutines; nor does it afterwards,
+when tests and wafers are looked at in parallel.
 */
 package ingest

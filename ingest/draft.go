@@ -14,6 +14,7 @@ func (d *draft) lot(opt *Options) *Lot {
 	for i := range d.values {
 		d.values[i] = slices.Clip(d.values[i])
 	}
+	d.workers = opt.Workers
 	d.ownOrder = d.ints[intTouchdown] != nil
 	d.touchdowns()
 	d.orderTests()
@@ -101,12 +102,12 @@ func (d *draft) orderTests() {
 // touchdowns numbers the measurements of each wafer where the file does not.
 func (d *draft) touchdowns() {
 	if !d.ownOrder {
-		t := make([]int32, d.n)
-		for _, w := range d.wafers {
-			for i := w.Lo; i < w.Hi; i++ {
-				t[i] = int32(i - w.Lo + 1)
+		t := larger[int32](nil, d.n)
+		d.eachWafer(func(_ int, w Wafer) {
+			for i := range t[w.Lo:w.Hi] {
+				t[w.Lo+i] = int32(i + 1)
 			}
-		}
+		})
 		d.ints[intTouchdown] = t
 		return
 	}

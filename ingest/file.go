@@ -150,19 +150,23 @@ func newParserSet(l *layout, sch *schema, file int, opt *Options) []*parser {
 
 // parseBlocks reads blocks in this goroutine and parses them in others.
 func parseBlocks(ctx context.Context, k *blocker, parsers []*parser) (*chunk, error) {
+	type job struct {
+		block
+		at, rows int // where its rows go, and how many there may be
+	}
 	var (
 		wg     sync.WaitGroup
-		blocks = make(chan block, len(parsers))
+		jobs   = make(chan job, len(parsers))
 		spare  = make(chan []byte, 2*len(parsers)+2)
-		all    = newCollector(k.src.size, parsers[0].newChunk(nil, 0))
+		all    = newCollector(k.src, parsers[0].like())
+		fields = len(parsers[0].l.fields)
 	)
 	for _, p := range parsers {
 		wg.Go(func() {
-			for b := range blocks {
-				c := p.block(&b, all.chunk())
-				all.put(b.seq, parsed{c, b.raw})
+			for j := range jobs {
+				all.parse(p, &j.block, j.at, j.rows)
 				select {
-				case spare <- b.buf:
+				case spare <- j.buf:
 				default:
 				}
 			}
@@ -181,9 +185,10 @@ func parseBlocks(ctx context.Context, k *blocker, parsers []*parser) (*chunk, er
 			break
 		}
 		b.torn = b.cut && k.err != nil
-		blocks <- b
+		at, rows := all.reserve(&b, fields)
+		jobs <- job{b, at, rows}
 	}
-	close(blocks)
+	close(jobs)
 	wg.Wait()
 	return all.finish(), failed
 }

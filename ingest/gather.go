@@ -36,6 +36,7 @@ type draft struct {
 	product   *config.Product
 	siteIsDie bool
 	ownOrder  bool // the file has touchdown numbers
+	workers   int  // goroutines that may work on it
 
 	about   lotFacts
 	carried []Finding // still to be placed among the findings

@@ -9,13 +9,16 @@ import (
 	"testing"
 )
 
-// checkNumber compares both readers of a number with strconv.ParseFloat.
+// checkNumber compares the readers of a number with strconv.ParseFloat.
 func checkNumber(t *testing.T, text string) {
 	t.Helper()
 	want, err := strconv.ParseFloat(text, 64)
-	for _, tail := range []string{",", "\n", "\r\n", " ,"} {
+	for _, tail := range []string{",", "\n", "\r\n", " ,", ",5,5,5,5"} {
 		cell := []byte(text + tail + "\n")
 		got, end, st := scanNumber(cell, 0, ',', '.')
+		if plain, plainEnd, ok := plainNumber(cell, 0, ',', '.'); ok && (st != cellNumber || plainEnd != end || math.Float64bits(plain) != math.Float64bits(got)) {
+			t.Fatalf("plainNumber(%q) = %v to %d; scanNumber gives %v to %d, status %d", cell, plain, plainEnd, got, end, st)
+		}
 		if err == nil {
 			if st != cellNumber || math.Float64bits(got) != math.Float64bits(want) {
 				t.Fatalf("scanNumber(%q) = %v, status %d; strconv gives %v", cell, got, st, want)
@@ -105,6 +108,9 @@ func TestInt(t *testing.T) {
 		{"-", cellOdd, Missing, cellMissing}, {"A", cellOdd, Missing, cellBad}, {"999999999", cellNumber, 999999999, cellNumber},
 	} {
 		v, _, st := scanInt([]byte(c.text+",\n"), 0, ',')
+		if plain, end, ok := plainInt([]byte(c.text+",5,5,5,5\n"), 0, ','); ok && (c.fast != cellNumber || plain != c.want || end != len(c.text)) {
+			t.Errorf("plainInt(%q) = %d", c.text, plain)
+		}
 		if st != c.fast || st == cellNumber && v != c.want {
 			t.Errorf("scanInt(%q) = %d, status %d", c.text, v, st)
 		}
@@ -133,4 +139,16 @@ func FuzzNumber(f *testing.F) {
 		}
 		checkNumber(t, s)
 	})
+}
+
+// The reader by the word takes what most cells are.
+func TestPlainNumbersAreTaken(t *testing.T) {
+	for text, want := range map[string]float64{"41.937": 41.937, "-0.25": -0.25, "7": 7, "0.0934121": 0.0934121, "-1.2345e-09": -1.2345e-9, "1234567.25": 1234567.25,
+		".5": .5, "5.": 5, "1.5E+3": 1500, "-0": math.Copysign(0, -1)} {
+		for _, end := range []string{",5,5,5,5\n", "\n5,5,5,5\n", "\r\n5,5,5,5\n"} {
+			if v, _, ok := plainNumber([]byte(text+end), 0, ',', '.'); !ok || math.Float64bits(v) != math.Float64bits(want) {
+				t.Errorf("plainNumber(%q) = %v, %v", text+end, v, ok)
+			}
+		}
+	}
 }

@@ -15,9 +15,8 @@ func largePages(b []byte) {
 	if len(b) < 2*large {
 		return
 	}
-	from := -uintptr(unsafe.Pointer(&b[0])) & (large - 1)
-	to := uintptr(len(b)) - (uintptr(unsafe.Pointer(&b[0]))+uintptr(len(b)))&(large-1)
-	if from < to {
-		syscall.Madvise(b[from:to], syscall.MADV_HUGEPAGE)
-	}
+	// The pages at both ends too: next to a column there is most often another.
+	at := uintptr(unsafe.Pointer(&b[0]))
+	from, to := at&^(large-1), (at+uintptr(len(b))+large-1)&^(large-1)
+	syscall.Syscall(syscall.SYS_MADVISE, from, to-from, syscall.MADV_HUGEPAGE)
 }

@@ -2,7 +2,6 @@ package ingest
 
 import (
 	"bytes"
-	"math"
 
 	"kneepoint/config"
 )
@@ -15,7 +14,8 @@ type parser struct {
 	careful  bool // every row through the full reader
 	lastFull row
 	interns  []interner // by text slot
-	textOf   []int      // text slots that the file has
+	texts    []int      // columns of the file that are texts
+	interned bool       // the row at work has a text that is not that of the row above
 	columns  []column   // of the chunk at work, by column of the file
 	wafer    int        // column of the wafer ids, -1 none
 	// waferKnown says that a comment gives the wafer of rows that do not.
@@ -26,10 +26,15 @@ type parser struct {
 	test, unit string              // of the row at work
 }
 
-// column is where the cells of a column go.
+// column is where the cells of a column go, and how the last one was written.
 type column struct {
+	kind   fieldKind
+	end    byte // that ends a cell: the separator, or the line's end
 	ints   []int32
 	values []float64
+	shape  shape
+	code   int32  // of a text, a pass flag
+	text   []byte // the cell, where it is longer than a shape shows
 }
 
 // newParser prepares for a layout. careful keeps the fast path out, which
@@ -48,7 +53,7 @@ func newParser(l *layout, sch *schema, file int, careful bool) *parser {
 	p.waferKnown = l.commented("wafer") != ""
 	for k, f := range l.fields {
 		if f.kind == textField {
-			p.textOf = append(p.textOf, f.slot)
+			p.texts = append(p.texts, k)
 			if f.slot == textWafer {
 				p.wafer = k
 			} else if f.slot == textTest && l.long {
@@ -74,70 +79,9 @@ func headerParses(l *layout) bool {
 	return true
 }
 
-// interner numbers the texts of a column within a chunk.
-type interner struct {
-	codes map[string]int32
-	dict  []string
-	last  []byte // raw bytes of the last cell seen
-	code  int32
-	fresh []fresh // what the row at work added
-}
-
-// fresh is a text, or a way to write one, that was new.
-type fresh struct {
-	raw, text string // text "" when it was known
-}
-
-// intern gives the code of a cell.
-func (t *interner) intern(raw []byte) int32 {
-	if t.last != nil && string(raw) == string(t.last) {
-		return t.code
-	}
-	t.last = raw
-	code, ok := t.codes[string(raw)]
-	if !ok {
-		code = t.add(string(raw), cellText(raw))
-	}
-	t.code = code
-	return code
-}
-
-// add takes a way to write a text that was not seen before; the same text may
-// be written in several ways, with blanks around it.
-func (t *interner) add(raw, text string) int32 {
-	f := fresh{raw: raw}
-	code := int32(-1)
-	if text != "" {
-		known := false
-		if code, known = t.codes[text]; !known {
-			code = int32(len(t.dict))
-			t.dict = append(t.dict, text)
-			t.codes[text] = code
-			f.text = text
-		}
-	}
-	t.codes[raw] = code
-	t.fresh = append(t.fresh, f)
-	return code
-}
-
-// forget takes back what a row added that is left to the full reader, which may
-// not use it.
-func (t *interner) forget() {
-	for i := len(t.fresh) - 1; i >= 0; i-- {
-		f := t.fresh[i]
-		delete(t.codes, f.raw)
-		if f.text != "" {
-			delete(t.codes, f.text)
-			t.dict = t.dict[:len(t.dict)-1]
-		}
-	}
-	t.fresh, t.last = t.fresh[:0], nil
-}
-
-// block parses one block, into the memory of a spare chunk if there is one.
-func (p *parser) block(b *block, spare *chunk) *chunk {
-	c := p.newChunk(spare, b.lines)
+// block parses one block into c, whose columns have room for its rows.
+func (p *parser) block(b *block, c *chunk) {
+	p.begin(c)
 	buf := b.buf
 	careful := p.careful || b.nul
 	i, slow := 0, newLines(b)
@@ -157,60 +101,76 @@ func (p *parser) block(b *block, spare *chunk) *chunk {
 		next, ok := 0, false
 		if !careful && i < lastLine {
 			if next, ok = p.fastRow(buf, i, c); !ok {
-				for _, s := range p.textOf {
-					p.interns[s].forget()
-				}
+				p.forget()
 			}
 		}
 		if !ok {
 			next = p.fullRow(b, i, c, slow)
-			for _, s := range p.textOf {
-				p.interns[s].fresh = p.interns[s].fresh[:0]
-			}
+			p.settle()
 		}
 		i = next
 	}
-	for _, s := range p.textOf {
+	for _, k := range p.texts {
+		s := p.l.fields[k].slot
 		c.text[s].dict = p.interns[s].dict
 	}
-	c.trim()
-	return c
 }
 
-// newChunk makes a chunk with room for rows, of a spare one where that is large
-// enough. Every cell of a row is written, so old content does no harm.
-func (p *parser) newChunk(spare *chunk, rows int) *chunk {
-	c := spare
-	if c == nil {
-		c = &chunk{file: p.file, text: make([]textColumn, len(p.interns)), values: make([][]float64, p.values), odd: map[oddKey]oddCells{}}
+// settle keeps the texts of a row that is used.
+func (p *parser) settle() {
+	for _, k := range p.texts {
+		t := &p.interns[p.l.fields[k].slot]
+		t.fresh = t.fresh[:0]
 	}
-	c.n, c.rows = 0, rowCount{}
-	clear(c.odd)
+	p.interned = false
+}
+
+// forget takes back the texts of a row that is left to the full reader.
+func (p *parser) forget() {
+	for _, k := range p.texts {
+		p.interns[p.l.fields[k].slot].forget()
+		p.columns[k].shape = noShape
+	}
+	p.interned = false
+}
+
+// begin prepares for a chunk. Every cell of a row is written, so that what its
+// columns held before does no harm.
+func (p *parser) begin(c *chunk) {
 	for k, f := range p.l.fields {
 		to := &p.columns[k]
+		to.kind, to.shape, to.end = f.kind, noShape, p.l.sep
+		if k == len(p.l.fields)-1 {
+			to.end = '\n'
+		}
 		switch f.kind {
 		case textField:
-			c.text[f.slot].codes = room(c.text[f.slot].codes, rows)
 			to.ints = c.text[f.slot].codes
 			p.interns[f.slot] = interner{codes: map[string]int32{}}
 		case intField:
-			c.ints[f.slot] = room(c.ints[f.slot], rows)
 			to.ints = c.ints[f.slot]
-		case passField:
-			c.pass = room(c.pass, rows)
 		case valueField:
-			c.values[f.slot] = room(c.values[f.slot], rows)
 			to.values = c.values[f.slot]
 		}
 	}
-	return c
 }
 
-func room[T any](s []T, n int) []T {
-	if cap(s) < n || s == nil {
-		return make([]T, n, n+n/8)
+// like is a chunk without rows that has the columns of the file.
+func (p *parser) like() *chunk {
+	c := &chunk{file: p.file, text: make([]textColumn, len(p.interns)), values: make([][]float64, p.values)}
+	for _, f := range p.l.fields {
+		switch f.kind {
+		case textField:
+			c.text[f.slot].codes = []int32{}
+		case intField:
+			c.ints[f.slot] = []int32{}
+		case passField:
+			c.pass = []int8{}
+		case valueField:
+			c.values[f.slot] = []float64{}
+		}
 	}
-	return s[:n]
+	return c
 }
 
 // trim cuts the columns to the rows used.
@@ -233,189 +193,4 @@ func (c *chunk) trim() {
 			c.values[i] = c.values[i][:c.n]
 		}
 	}
-}
-
-// fastRow reads a row of plain cells into row c.n: quotes around a cell or none,
-// numbers in plain digits, as many fields as the header. Where anything else stands it gives up
-// and leaves the row to fullRow, which takes the same cells for the same
-// values.
-func (p *parser) fastRow(b []byte, i int, c *chunk) (next int, ok bool) {
-	sep, decimal, n := p.l.sep, p.l.decimal, c.n
-	fields := p.l.fields
-	columns := p.columns[:len(fields)]
-	interned := false
-	for k := range fields {
-		switch fields[k].kind {
-		case valueField:
-			v, j, st := scanNumber(b, i, sep, decimal)
-			if st == cellOdd {
-				var ok bool
-				if v, j, ok = quotedNumber(b, i, sep, decimal); !ok {
-					return 0, false
-				}
-			}
-			columns[k].values[n] = v
-			i = j
-		case intField:
-			v, j, st := scanInt(b, i, sep)
-			if st == cellOdd {
-				var ok bool
-				if v, j, ok = oddInt(b, i, sep, decimal); !ok {
-					return 0, false
-				}
-			}
-			columns[k].ints[n] = v
-			i = j
-		case textField:
-			// Nearly always the same text as in the row before.
-			t := &p.interns[fields[k].slot]
-			if m := len(t.last); m > 0 && b[i] != '"' && i+m < len(b) && b[i+m] == sep && string(b[i:i+m]) == string(t.last) {
-				columns[k].ints[n] = t.code
-				i += m
-				break
-			}
-			raw, j := plainCell(b, i, sep)
-			if raw == nil {
-				return 0, false
-			}
-			columns[k].ints[n] = t.intern(raw)
-			interned = true
-			i = j
-		default:
-			raw, j := plainCell(b, i, sep)
-			if raw == nil {
-				return 0, false
-			}
-			i = j
-			if fields[k].kind != passField {
-				break
-			}
-			v := int8(-1)
-			if len(raw) > 0 {
-				if v = passFlag(raw); v < 0 {
-					return 0, false
-				}
-			}
-			c.pass[n] = v
-		}
-		if k == len(fields)-1 {
-			break
-		}
-		if b[i] != sep {
-			return 0, false
-		}
-		i++
-	}
-	if b[i] == sep && (b[i+1] == '\n' || b[i+1] == '\r' && b[i+2] == '\n') {
-		i = bytes.IndexByte(b[i:], '\n') + i // one empty field more, at the end of every row
-	}
-	if b[i] != '\n' || p.wafer >= 0 && columns[p.wafer].ints[n] < 0 || p.wafer < 0 && p.allEmpty(c, n) {
-		return 0, false
-	}
-	if interned {
-		for _, s := range p.textOf {
-			p.interns[s].fresh = p.interns[s].fresh[:0]
-		}
-	}
-	c.n++
-	c.rows.read++
-	return i + 1, true
-}
-
-// plainCell gives the cell at i and where it ends; nil for one whose quotes are
-// not just around it.
-func plainCell(b []byte, i int, sep byte) ([]byte, int) {
-	if b[i] == '"' {
-		return quotedCell(b, i, sep)
-	}
-	j := i
-	for b[j] != sep && b[j] != '\n' {
-		j++
-	}
-	if b[j] == '\n' {
-		return dropCR(b[i:j]), j
-	}
-	return b[i:j], j
-}
-
-// quotedCell is plainCell for a cell between quotes, without others within.
-func quotedCell(b []byte, i int, sep byte) ([]byte, int) {
-	j := i + 1
-	for b[j] != '"' {
-		if b[j] == '\n' {
-			return nil, 0
-		}
-		j++
-	}
-	if j >= i+maxQuoted {
-		return nil, 0
-	}
-	end := j + 1
-	if b[end] == '\r' && b[end+1] == '\n' {
-		end++
-	}
-	if b[end] != sep && b[end] != '\n' {
-		return nil, 0
-	}
-	return b[i+1 : j : j], end
-}
-
-// quotedNumber reads a number between quotes; ok is false for anything else.
-func quotedNumber(b []byte, i int, sep, decimal byte) (v float64, end int, ok bool) {
-	if b[i] != '"' {
-		return 0, 0, false
-	}
-	v, j, st := scanNumber(b, i+1, '"', decimal)
-	if st == cellOdd || b[j] != '"' {
-		return 0, 0, false
-	}
-	end = j + 1
-	if b[end] == '\r' && b[end+1] == '\n' {
-		end++
-	}
-	return v, end, b[end] == sep || b[end] == '\n'
-}
-
-// oddInt reads a whole number that scanInt does not: with a point ("1.0") or
-// between quotes.
-func oddInt(b []byte, i int, sep, decimal byte) (int32, int, bool) {
-	v, end, st := scanNumber(b, i, sep, decimal)
-	if st == cellOdd {
-		var ok bool
-		if v, end, ok = quotedNumber(b, i, sep, decimal); !ok {
-			return 0, 0, false
-		}
-	}
-	if v != v {
-		return Missing, end, true
-	}
-	n, st := wholeNumber(v)
-	return n, end, st == cellNumber
-}
-
-// allEmpty says whether row n holds nothing at all. Nearly every row is told
-// by its first column.
-func (p *parser) allEmpty(c *chunk, n int) bool {
-	for k := range p.l.fields {
-		f := &p.l.fields[k]
-		switch f.kind {
-		case textField:
-			if c.text[f.slot].codes[n] >= 0 {
-				return false
-			}
-		case intField:
-			if c.ints[f.slot][n] != Missing {
-				return false
-			}
-		case passField:
-			if c.pass[n] >= 0 {
-				return false
-			}
-		case valueField:
-			if !math.IsNaN(c.values[f.slot][n]) {
-				return false
-			}
-		}
-	}
-	return true
 }

@@ -26,6 +26,7 @@ type source struct {
 	raw      int64  // bytes read of it
 	packed   string // "gzip", "zstd", ""
 	plain    io.Reader
+	ahead    *bufio.Reader // before unpacking; nil when nothing is unpacked
 	closers  []func()
 	progress func(read int64)
 }
@@ -79,6 +80,7 @@ func (s *source) unpack() error {
 	if err != nil && err != io.EOF {
 		return s.readError(err)
 	}
+	s.ahead = raw
 	switch {
 	case bytes.HasPrefix(magic, []byte{0x1f, 0x8b}):
 		s.packed = "gzip"
@@ -148,6 +150,14 @@ func (r rawReader) Read(p []byte) (int, error) {
 		r.s.progress(r.s.raw)
 	}
 	return n, err
+}
+
+// used is how many bytes of the raw file the text read so far was made of.
+func (s *source) used() int64 {
+	if s.ahead == nil {
+		return s.raw
+	}
+	return s.raw - int64(s.ahead.Buffered())
 }
 
 func (s *source) readError(err error) *Error {
