@@ -123,10 +123,9 @@ func (r *Run) site(head, site uint8) *Site {
 	return s
 }
 
-// count counts a part.
-func (r *Run) count(p *Part) {
+// count counts a part of a site.
+func (r *Run) count(p *Part, s *Site) {
 	good, known := p.Flag.Pass()
-	s := r.site(p.Head, p.Site)
 	r.Parts++
 	s.Parts++
 	if good && known {

@@ -105,6 +105,9 @@ func (r *Reader) plainRun(p *Parts) {
 			}
 			p.last = s
 		}
+		if len(s.plain) < len(s.steps) && len(s.results) == 0 {
+			return // see Parts.quick
+		}
 		r.tests.last = t
 		r.at = r.offset()
 		r.pos += whole
