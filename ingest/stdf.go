@@ -27,18 +27,14 @@ func readSTDF(ctx context.Context, in *input, index int, sch *schema, progress f
 	ahead := newReadAhead(rawReader{src})
 	defer ahead.close()
 	s := &stdfReading{in: in, src: src, parts: stdf.NewParts(stdf.NewReader(ahead))}
+	s.parts.Compact = true
 	feed := s.feed(ahead)
 	defer feed.close()
 	for b := range feed.full {
 		if ctx.Err() != nil {
 			return nil, ctx.Err()
 		}
-		s.known, s.at, s.atParts = b.tests, b.at, s.n+len(b.parts)
-		from, fromID := 0, 0
-		for i := range b.parts {
-			s.add(&b.parts[i], b.results[from:b.resultsEnd[i]], b.ids[fromID:b.idsEnd[i]])
-			from, fromID = b.resultsEnd[i], b.idsEnd[i]
-		}
+		s.take(b)
 		feed.spare <- b
 	}
 	if feed.failed != nil {
@@ -102,8 +98,7 @@ type stdfReading struct {
 	ids                           partIDs
 	values                        [][]float64 // by column: float32 as read, or an odd NaN
 	columns                       []stdfColumn
-	of                            [][]int32   // column by test and place in a multiple result, -1 none
-	plain                         [][]float64 // values of the first column by test, nil none
+	of                            [][]int32 // column by test and place in a multiple result, -1 none
 	touches                       []touchState
 
 	functional, functionalFails int
@@ -144,20 +139,6 @@ func (s *stdfReading) grow() {
 		s.values[i] = largerNaN(s.values[i], want)
 	}
 	s.room = want
-	for test := range s.of {
-		s.setPlain(test)
-	}
-}
-
-// setPlain notes where the first results of a test go.
-func (s *stdfReading) setPlain(test int) {
-	for len(s.plain) <= test {
-		s.plain = append(s.plain, nil)
-	}
-	s.plain[test] = nil
-	if of := s.of[test]; len(of) > 0 && of[0] >= 0 {
-		s.plain[test] = s.values[of[0]]
-	}
 }
 
 func largerNaN(v []float64, n int) []float64 {
@@ -168,39 +149,90 @@ func largerNaN(v []float64, n int) []float64 {
 	return out
 }
 
-func (s *stdfReading) add(p *stdf.Part, results []stdf.Result, id []byte) {
-	if s.n == s.room {
+// take puts a batch into the columns.
+func (s *stdfReading) take(b *partBatch) {
+	s.known, s.at, s.atParts = b.tests, b.at, s.n+len(b.parts)
+	for s.n+len(b.parts) > s.room {
 		s.grow()
 	}
-	i := s.n
-	s.n++
-	s.x[i], s.y[i], s.hard[i], s.soft[i] = p.X, p.Y, p.HardBin, p.SoftBin
-	s.site[i], s.head[i], s.pass[i] = int32(p.Site), int32(p.Head), p.Pass()
-	s.wafer[i], s.run[i] = int32(p.Wafer), int32(p.Run)
-	s.touch[i] = s.touchdown(p)
-	s.ids.add(p.Wafer, id)
-	for k := range results {
-		r := &results[k]
-		if int(r.Test) < len(s.plain) && r.Flag|stdf.TestFlag(r.Parm) == 0 {
-			// Most are so: a test of one column, and nothing to say of the result.
-			if c := s.plain[r.Test]; c != nil && uint32(r.Column) == 0 && r.Raw-r.Raw == 0 && c[i] != c[i] {
-				c[i] = float64(r.Raw)
-				continue
-			}
+	first, done, result, id := s.n, 0, 0, 0
+	for i := range b.parts {
+		p := &b.parts[i]
+		s.add(p, b.ids[id:p.id])
+		id = p.id
+		if result == p.results {
+			continue
 		}
-		s.result(i, r)
+		// Of a test that a part has twice the order counts, and a program is of
+		// tests that have their columns from the results of a part before.
+		s.plain(b, done, i+1, first)
+		done = i + 1
+		for ; result < p.results; result++ {
+			s.result(first+i, &b.results[result])
+		}
+	}
+	s.plain(b, done, len(b.parts), first)
+}
+
+// plain puts the readings of parts lo to hi of a batch, whose first one is in a row,
+// into columns: of parts that go by one program a test at a time.
+func (s *stdfReading) plain(b *partBatch, lo, hi, first int) {
+	for lo < hi {
+		n := lo + 1
+		program := b.parts[lo].program
+		for n < hi && sameProgram(program, b.parts[n].program) {
+			n++
+		}
+		for k, test := range program {
+			s.readings(b, k, lo, n, s.values[s.of[test][0]][first:])
+		}
+		lo = n
 	}
 }
 
+func sameProgram(a, b []int32) bool {
+	return len(a) == len(b) && (len(a) == 0 || &a[0] == &b[0])
+}
+
+// readings puts reading k of parts lo to hi into a column.
+func (s *stdfReading) readings(b *partBatch, k, lo, hi int, to []float64) {
+	start := 0
+	if lo > 0 {
+		start = b.parts[lo-1].plain
+	}
+	for i := lo; i < hi; i++ {
+		end := b.parts[i].plain
+		if at := start + k; at < end {
+			if v := float64(b.plain[at].Raw); v-v == 0 {
+				to[i] = v
+			} else if v == v {
+				to[i] = oddNaN[infinityIs(v)]
+			}
+		}
+		start = end
+	}
+}
+
+// add puts all but the results of a part into a row.
+func (s *stdfReading) add(p *partRow, id []byte) {
+	i := s.n
+	s.n++
+	s.x[i], s.y[i], s.hard[i], s.soft[i] = p.x, p.y, p.hard, p.soft
+	s.site[i], s.head[i], s.pass[i] = int32(p.site), int32(p.head), p.pass
+	s.wafer[i], s.run[i] = p.wafer, p.run
+	s.touch[i] = s.touchdown(p)
+	s.ids.add(int(p.wafer), id)
+}
+
 // touchdown counts: parts that were open at the same time were touched at once.
-func (s *stdfReading) touchdown(p *stdf.Part) int32 {
-	for len(s.touches) <= p.Wafer {
+func (s *stdfReading) touchdown(p *partRow) int32 {
+	for len(s.touches) <= int(p.wafer) {
 		s.touches = append(s.touches, touchState{})
 	}
-	t := &s.touches[p.Wafer]
-	if t.n == 0 || p.Opened < 0 || p.Opened > t.first {
+	t := &s.touches[p.wafer]
+	if t.n == 0 || p.opened < 0 || p.opened > t.first {
 		t.n++
-		t.first = p.Offset
+		t.first = p.offset
 	}
 	return t.n
 }
@@ -214,7 +246,6 @@ func (s *stdfReading) result(row int, r *stdf.Result) {
 	}
 	for len(s.of[r.Test]) <= int(r.Column) {
 		s.of[r.Test] = append(s.of[r.Test], s.column(int(r.Test), len(s.of[r.Test])))
-		s.setPlain(int(r.Test))
 	}
 	c := s.of[r.Test][r.Column]
 	if c < 0 {

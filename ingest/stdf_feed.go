@@ -116,12 +116,23 @@ func (r *readAhead) close() {
 // partBatch is some parts with what belongs to them, which in a stdf.Part holds
 // until the next only.
 type partBatch struct {
-	parts              []stdf.Part
-	results            []stdf.Result
-	ids                []byte
-	resultsEnd, idsEnd []int // by part
-	tests              []*stdf.Test
-	at                 int64
+	parts   []partRow
+	plain   []stdf.Reading
+	results []stdf.Result
+	ids     []byte
+	tests   []*stdf.Test
+	at      int64
+}
+
+// partRow is what becomes a row, and where what belongs to it ends in its batch.
+type partRow struct {
+	wafer, run         int32 // indexes of stdf.Parts
+	x, y, hard, soft   int32
+	opened, offset     int64
+	program            []int32
+	plain, results, id int
+	head, site         uint8
+	pass               int8
 }
 
 // partFeed puts parts together in a goroutine of its own.
@@ -153,8 +164,8 @@ func (s *stdfReading) feed(from *readAhead) *partFeed {
 			case <-f.stop:
 				return
 			}
-			*b = partBatch{parts: b.parts[:0], results: b.results[:0], ids: b.ids[:0], resultsEnd: b.resultsEnd[:0], idsEnd: b.idsEnd[:0]}
-			for more = true; len(b.parts) < batchParts && len(b.results) < batchResults; {
+			*b = partBatch{parts: b.parts[:0], plain: b.plain[:0], results: b.results[:0], ids: b.ids[:0]}
+			for more = true; len(b.parts) < batchParts && len(b.plain)+len(b.results) < batchResults; {
 				if more = s.parts.Scan(); !more {
 					break
 				}
@@ -171,10 +182,13 @@ func (s *stdfReading) feed(from *readAhead) *partFeed {
 }
 
 func (b *partBatch) add(p *stdf.Part) {
-	b.parts = append(b.parts, *p)
+	b.plain = append(b.plain, p.Plain...)
 	b.results = append(b.results, p.Results...)
 	b.ids = append(b.ids, p.RawID()...)
-	b.resultsEnd, b.idsEnd = append(b.resultsEnd, len(b.results)), append(b.idsEnd, len(b.ids))
+	b.parts = append(b.parts, partRow{
+		wafer: int32(p.Wafer), run: int32(p.Run), x: p.X, y: p.Y, hard: p.HardBin, soft: p.SoftBin, opened: p.Opened, offset: p.Offset,
+		program: p.Program, plain: len(b.plain), results: len(b.results), id: len(b.ids), head: p.Head, site: p.Site, pass: p.Pass(),
+	})
 }
 
 // close ends the feed where it is, and waits for it.

@@ -145,8 +145,9 @@ type slot struct {
 	steps      []step    // of the program
 	results    []Result  // the others
 
-	site0 *Site // of run
+	after *slot // that had the next result, the last time
 	run   *Run
+	site1 *Site // of that run
 }
 
 // NewParts reads from r, which must be at the start of its stream.
@@ -323,8 +324,7 @@ func (p *Parts) parametric(m *PTR) {
 		s = p.at(m.Head, m.Site)
 		p.last = s
 	}
-	if k := len(s.plain); k < len(s.steps) && len(s.results) == 0 && s.steps[k].test == m.Test && m.which == m.Test.Default && Usable(m.Flag, m.Parm) {
-		s.plain = append(s.plain, Reading{m.Result, m.Flag, m.Parm})
+	if p.expected(s, m) {
 		return
 	}
 	s.results = append(s.results, Result{int32(m.Test.Index), m.Result, int16(m.which), 0, m.Flag, m.Parm})
@@ -370,12 +370,12 @@ func (p *Parts) end(m *PRR) {
 	w := p.wafer(m.Head)
 	p.number++
 	part := &p.part
-	*part = Part{
-		Run: run.Index, Wafer: w.Index, WaferID: w.ID, Number: p.number, Offset: p.r.at, Opened: -1,
-		Head: m.Head, Site: m.Site, HardBin: Missing, SoftBin: Missing, X: Missing, Y: Missing,
-		Flag: m.Flag, Tests: m.Tests, TestTime: m.TestTime, Damaged: s.damaged,
-		id: m.PartID, text: m.PartText,
-	}
+	// Field by field, as a part is too large to be made and copied each time.
+	part.Run, part.Wafer, part.WaferID, part.Number, part.Offset, part.Opened = run.Index, w.Index, w.ID, p.number, p.r.at, -1
+	part.Head, part.Site, part.HardBin, part.SoftBin, part.X, part.Y = m.Head, m.Site, Missing, Missing, Missing, Missing
+	part.Flag, part.Tests, part.TestTime, part.Damaged, part.HasPIR = m.Flag, m.Tests, m.TestTime, s.damaged, false
+	part.id, part.text = m.PartID, m.PartText
+	part.Results, part.Plain, part.Program = nil, nil, nil
 	if m.HardBin != NoBin {
 		part.HardBin = int32(m.HardBin)
 	}
@@ -404,9 +404,9 @@ func (p *Parts) end(m *PRR) {
 	s.isOpen, s.damaged = false, false
 	s.drop()
 	if s.run != run {
-		s.run, s.site0 = run, run.site(m.Head, m.Site)
+		s.run, s.site1 = run, run.site(m.Head, m.Site)
 	}
-	run.count(part, s.site0)
+	run.count(part, s.site1)
 	w.Parts++
 	if part.Pass() == 1 {
 		w.Good++

@@ -1,8 +1,10 @@
 package stdf
 
 import (
+	"bytes"
 	"encoding/binary"
 	"math"
+	"math/bits"
 )
 
 // Testers run the same tests in the same order on part after part, and their
@@ -18,8 +20,8 @@ type Reading struct {
 	Parm ParmFlag
 }
 
-// program is the tests of a part in their order, with what their records look
-// like. It is never changed.
+// program is the tests of a part in their order, which never change, with what
+// their records look like.
 type program struct {
 	run   int // of the Reader: defaults hold within one
 	tests []int32
@@ -37,9 +39,9 @@ type step struct {
 const (
 	// maxSteps bounds a program. What a part has beyond it is in its Results.
 	maxSteps = 1 << 12
-	// notPlain are flags, as bits of TEST_FLG and PARM_FLG, of a result that is
-	// not to be used.
-	notPlain = uint32(Alarm|ResultInvalid|Unreliable|Timeout|NotExecuted|Aborted) | uint32(ScaleError|DriftError|Oscillation)<<8
+	// notPlain are the flags of a result that is not to be used, TEST_FLG and
+	// PARM_FLG in the upper half.
+	notPlain = uint32(Alarm|ResultInvalid|Unreliable|Timeout|NotExecuted|Aborted)<<16 | uint32(ScaleError|DriftError|Oscillation)<<24
 )
 
 // quick takes records as long as they are as usual, and says whether one has
@@ -57,63 +59,92 @@ func (p *Parts) quick() bool {
 		}
 		h := parseHeader(b, r.c.big)
 		whole := 4 + h.size
-		if h.kind != KindPIR && h.kind != KindPRR || whole+4 > len(b) || !r.likely(parseHeader(b[whole:], r.c.big)) ||
-			r.read(h.kind, b[4:whole]) != exact {
+		if whole+4 > len(b) || !r.likely(parseHeader(b[whole:], r.c.big)) {
 			return false
 		}
-		r.deliver(h)
-		if h.kind == KindPRR {
+		switch {
+		case h.kind == KindPIR && h.size == 2:
+			r.pir = PIR{b[4], b[5]}
+			r.deliver(h)
+			p.begin(&r.pir)
+		case h.kind == KindPRR && h.size >= 17 && r.prr.read(&r.c, b[4:whole]) == exact:
+			r.deliver(h)
 			p.end(&r.prr)
 			return true
+		default:
+			return false
 		}
-		p.begin(&r.pir)
 	}
 }
 
 // quickPTRs takes the PTRs that are the next of their part's program.
 func (p *Parts) quickPTRs() {
 	r, s := p.r, p.last
-	b, at, n := r.buf[:r.end], r.pos, int64(0)
+	b, at, before, n, big := r.buf[:r.end], r.pos, 0, int64(0), r.c.big
 	var last *Test
 	for at+16+4 <= len(b) {
-		lead, place, flags := binary.LittleEndian.Uint64(b[at:]), binary.LittleEndian.Uint16(b[at+8:]), binary.LittleEndian.Uint16(b[at+10:])
-		if s == nil || s.place != place {
-			if s = p.opened(b[at+8], b[at+9]); s == nil {
+		rec := b[at : at+16+4]
+		lead := binary.LittleEndian.Uint64(rec)
+		// Where the next record starts is taken from the header itself, so that the
+		// processor need not wait for all that follows to go on.
+		size := int(uint16(lead))
+		if big {
+			size = int(bits.ReverseBytes16(uint16(lead)))
+		}
+		next := at + 4 + size
+		if size < 12 || next+4 > len(b) {
+			break
+		}
+		place := binary.LittleEndian.Uint32(rec[8:]) // HEAD_NUM, SITE_NUM, TEST_FLG, PARM_FLG
+		if s == nil || s.place != uint16(place) {
+			if s = p.turn(s, uint16(place)); s == nil {
 				break
 			}
 		}
 		k := len(s.plain)
-		if k >= len(s.steps) || len(s.results) > 0 || uint32(flags)&notPlain != 0 {
+		if k >= len(s.steps) || len(s.results) > 0 || place&notPlain != 0 {
 			break
 		}
 		step := &s.steps[k]
-		next := at + 4 + step.size
-		if step.lead != lead || next+4 > len(b) || len(step.tail) > 0 && string(step.tail) != string(b[at+16:next]) {
+		if step.lead != lead || size > 12 && string(step.tail) != string(b[at+16:next]) {
 			break
 		}
-		if binary.LittleEndian.Uint32(b[next:]) != uint32(lead) && !r.likely(parseHeader(b[next:], r.c.big)) {
+		if binary.LittleEndian.Uint32(b[next:]) != uint32(lead) && !r.likely(parseHeader(b[next:], big)) {
 			break
 		}
-		s.plain = append(s.plain, Reading{math.Float32frombits(u4(b[at+12:], r.c.big)), TestFlag(flags), ParmFlag(flags >> 8)})
+		raw := binary.LittleEndian.Uint32(rec[12:])
+		if big {
+			raw = bits.ReverseBytes32(raw)
+		}
+		s.plain = append(s.plain, Reading{math.Float32frombits(raw), TestFlag(place >> 16), ParmFlag(place >> 24)})
 		last = step.test
 		last.Records++
-		last.size = step.size
+		last.size = size
 		n++
-		r.at = r.base + int64(at)
-		at = next
+		before, at = at, next
 	}
 	if n > 0 {
 		p.last, r.pos, r.tests.last = s, at, last
+		r.at = r.base + int64(before)
 		r.counts[KindPTR] += n
 	}
 }
 
-// opened is the slot of a site if a part is open there that goes by a program.
-func (p *Parts) opened(head, site uint8) *slot {
-	if h := p.heads[head]; h != nil && h[site] != nil && h[site].isOpen && h[site].steps != nil {
-		return h[site]
+// turn is the slot of a site if a part is open there that goes by a program, else
+// nil. Sites take turns, so that of the last time is tried first.
+func (p *Parts) turn(last *slot, place uint16) *slot {
+	if last != nil && last.after != nil && last.after.place == place {
+		return last.after
 	}
-	return nil
+	h := p.heads[uint8(place)]
+	if h == nil || h[place>>8] == nil {
+		return nil
+	}
+	s := h[place>>8]
+	if last != nil {
+		last.after = s
+	}
+	return s
 }
 
 // follow sets a part that begins to go by the program.
@@ -141,7 +172,9 @@ func (p *Parts) learn(s *slot) {
 	g := &program{run: p.r.run}
 	add := func(t *Test) {
 		g.tests = append(g.tests, int32(t.Index))
-		g.steps = append(g.steps, p.stepOf(t))
+		x := step{test: t}
+		x.look(p.r.c.big)
+		g.steps = append(g.steps, x)
 	}
 	for i := range s.plain {
 		add(s.program.steps[i].test)
@@ -168,15 +201,33 @@ func (p *Parts) steps(s *slot) (n int) {
 	return n
 }
 
-// stepOf says what the records of a test look like. Whether the test had a
-// record of that kind in this run, learn has looked.
-func (p *Parts) stepOf(t *Test) step {
-	tail := t.tail.raw
-	c := coder{big: p.r.c.big}
-	c.putU2(uint16(12 + len(tail)))
+// look takes over what the last record of the step's test looked like, of those
+// that were judged by the defaults.
+func (x *step) look(big bool) {
+	tail := x.test.tail.raw
+	if x.size == 12+len(tail) && bytes.Equal(x.tail, tail) {
+		return
+	}
+	x.size, x.tail = 12+len(tail), append(x.tail[:0], tail...)
+	c := coder{big: big, out: make([]byte, 0, 8)}
+	c.putU2(uint16(x.size))
 	c.out = append(c.out, forms[KindPTR].typ, forms[KindPTR].sub)
-	c.putU4(t.Number)
-	return step{lead: binary.LittleEndian.Uint64(c.out), size: 12 + len(tail), test: t, tail: append([]byte(nil), tail...)}
+	c.putU4(x.test.Number)
+	x.lead = binary.LittleEndian.Uint64(c.out)
+}
+
+// expected takes a PTR that went the way of all records, and yet is the next of its
+// part's program; else it is false.
+func (p *Parts) expected(s *slot, m *PTR) bool {
+	k, t := len(s.plain), m.Test
+	if k == len(s.steps) || len(s.results) > 0 || s.steps[k].test != t || m.which != t.Default || !Usable(m.Flag, m.Parm) {
+		return false
+	}
+	s.plain = append(s.plain, Reading{m.Result, m.Flag, m.Parm})
+	if t.tail.known && t.tail.run == p.r.run && t.tail.which == t.Default {
+		s.steps[k].look(p.r.c.big)
+	}
+	return true
 }
 
 // result is reading k of a program as a result.
