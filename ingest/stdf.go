@@ -348,8 +348,10 @@ func (d *partIDs) add(wafer int, raw []byte) {
 		d.places = nil
 	}
 	code := int32(-1)
-	if id := stdf.Text(raw); id != "" {
-		code = d.text.code(id)
+	if len(raw) > 0 {
+		if id := stdf.Text(raw); id != "" {
+			code = d.text.code(id)
+		}
 	}
 	d.codes = append(d.codes, code)
 }
