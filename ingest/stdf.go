@@ -28,17 +28,16 @@ func readSTDF(ctx context.Context, in *input, index int, sch *schema, progress f
 	defer ahead.close()
 	s := &stdfReading{in: in, src: src, parts: stdf.NewParts(stdf.NewReader(ahead))}
 	s.parts.Compact = true
-	feed := s.feed(ahead)
-	defer feed.close()
-	for b := range feed.full {
+	var b partBatch
+	for more := true; more; {
 		if ctx.Err() != nil {
 			return nil, ctx.Err()
 		}
-		s.take(b)
-		feed.spare <- b
-	}
-	if feed.failed != nil {
-		panic(feed.failed)
+		more = b.fill(s.parts)
+		if s.at = s.parts.Reader().Position(); in.packed != "" {
+			s.at = ahead.taken
+		}
+		s.take(&b)
 	}
 	ahead.drain()
 	d := &fileData{odd: map[oddKey]oddCells{}}
@@ -84,10 +83,9 @@ func (s *stdfReading) empty() *Error {
 type stdfReading struct {
 	in      *input
 	src     *source
-	parts   *stdf.Parts  // another goroutine's until all parts are in
-	known   []*stdf.Test // as far as parts have come
-	at      int64        // and where they end, in bytes of the stream; of the file where that is packed
-	atParts int          // how many there are up to there
+	parts   *stdf.Parts
+	at      int64 // where the parts so far end, in bytes of the stream; of the file where that is packed
+	atParts int   // how many there are up to there
 	n, room int
 
 	x, y, site, hard, soft, touch []int32
@@ -151,7 +149,7 @@ func largerNaN(v []float64, n int) []float64 {
 
 // take puts a batch into the columns.
 func (s *stdfReading) take(b *partBatch) {
-	s.known, s.at, s.atParts = b.tests, b.at, s.n+len(b.parts)
+	s.atParts = s.n + len(b.parts)
 	for s.n+len(b.parts) > s.room {
 		s.grow()
 	}
@@ -277,7 +275,7 @@ func (s *stdfReading) result(row int, r *stdf.Result) {
 
 // column makes a column for a test; -1 for a functional one.
 func (s *stdfReading) column(test, place int) int32 {
-	t := s.known[test]
+	t := s.parts.Tests()[test]
 	if t.Kind == stdf.KindFTR {
 		return -1
 	}

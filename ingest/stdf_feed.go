@@ -7,10 +7,11 @@ import (
 	"kneepoint/ingest/stdf"
 )
 
-// A log of a tester is read in three steps at once, each in a goroutine: bytes are
-// read and hashed, records are put together to parts, and parts are put into
-// columns. Each step takes what the one before gives in its order, so that the
-// result is the same on any number of cores.
+// A log of a tester is read in two steps at once, each in a goroutine: bytes are
+// read and hashed, and records are put together to parts and these into columns.
+// The second takes the bytes in their order, so that the result is the same on any
+// number of cores. (A third for the columns cost more than it gained: what one core
+// has just written is dear to read on another.)
 
 // readAhead reads a stream to its end whether or not it is all wanted, as the hash
 // is of all of it.
@@ -114,14 +115,12 @@ func (r *readAhead) close() {
 }
 
 // partBatch is some parts with what belongs to them, which in a stdf.Part holds
-// until the next only.
+// until the next only. Columns are written a test at a time for all of them.
 type partBatch struct {
 	parts   []partRow
 	plain   []stdf.Reading
 	results []stdf.Result
 	ids     []byte
-	tests   []*stdf.Test
-	at      int64
 }
 
 // partRow is what becomes a row, and where what belongs to it ends in its batch.
@@ -135,50 +134,21 @@ type partRow struct {
 	pass               int8
 }
 
-// partFeed puts parts together in a goroutine of its own.
-type partFeed struct {
-	full   chan *partBatch
-	spare  chan *partBatch
-	stop   chan struct{}
-	failed any // what it panicked with
-}
-
 const (
 	batchParts   = 256
 	batchResults = 64 << 10 // a part may have very many
-	batchCount   = 4
 )
 
-func (s *stdfReading) feed(from *readAhead) *partFeed {
-	f := &partFeed{full: make(chan *partBatch, batchCount), spare: make(chan *partBatch, batchCount), stop: make(chan struct{})}
-	for range batchCount {
-		f.spare <- &partBatch{}
-	}
-	go func() {
-		defer close(f.full)
-		defer func() { f.failed = recover() }()
-		for more := true; more; {
-			var b *partBatch
-			select {
-			case b = <-f.spare:
-			case <-f.stop:
-				return
-			}
-			*b = partBatch{parts: b.parts[:0], plain: b.plain[:0], results: b.results[:0], ids: b.ids[:0]}
-			for more = true; len(b.parts) < batchParts && len(b.plain)+len(b.results) < batchResults; {
-				if more = s.parts.Scan(); !more {
-					break
-				}
-				b.add(s.parts.Part())
-			}
-			b.tests, b.at = s.parts.Tests(), s.parts.Reader().Position()
-			if s.in.packed != "" {
-				b.at = from.taken
-			}
-			f.full <- b
+// fill takes the parts that come next from a reader; false when there are no more.
+func (b *partBatch) fill(p *stdf.Parts) (more bool) {
+	*b = partBatch{parts: b.parts[:0], plain: b.plain[:0], results: b.results[:0], ids: b.ids[:0]}
+	for more = true; len(b.parts) < batchParts && len(b.plain)+len(b.results) < batchResults; {
+		if more = p.Scan(); !more {
+			break
 		}
-	}()
-	return f
+		b.add(p.Part())
+	}
+	return more
 }
 
 func (b *partBatch) add(p *stdf.Part) {
@@ -189,11 +159,4 @@ func (b *partBatch) add(p *stdf.Part) {
 		wafer: int32(p.Wafer), run: int32(p.Run), x: p.X, y: p.Y, hard: p.HardBin, soft: p.SoftBin, opened: p.Opened, offset: p.Offset,
 		program: p.Program, plain: len(b.plain), results: len(b.results), id: len(b.ids), head: p.Head, site: p.Site, pass: p.Pass(),
 	})
-}
-
-// close ends the feed where it is, and waits for it.
-func (f *partFeed) close() {
-	close(f.stop)
-	for range f.full {
-	}
 }
