@@ -26,18 +26,13 @@ func readSTDF(ctx context.Context, in *input, index int, sch *schema, progress f
 	defer src.close()
 	ahead := newReadAhead(rawReader{src})
 	defer ahead.close()
-	s := &stdfReading{in: in, src: src, parts: stdf.NewParts(stdf.NewReader(ahead))}
+	s := &stdfReading{in: in, src: src, ahead: ahead, parts: stdf.NewParts(stdf.NewReader(ahead))}
 	s.parts.Compact = true
-	var b partBatch
 	for more := true; more; {
 		if ctx.Err() != nil {
 			return nil, ctx.Err()
 		}
-		more = b.fill(s.parts)
-		if s.at = s.parts.Reader().Position(); in.packed != "" {
-			s.at = ahead.taken
-		}
-		s.take(&b)
+		more = s.some()
 	}
 	ahead.drain()
 	d := &fileData{odd: map[oddKey]oddCells{}}
@@ -83,9 +78,9 @@ func (s *stdfReading) empty() *Error {
 type stdfReading struct {
 	in      *input
 	src     *source
+	ahead   *readAhead
 	parts   *stdf.Parts
-	at      int64 // where the parts so far end, in bytes of the stream; of the file where that is packed
-	atParts int   // how many there are up to there
+	batch   partBatch
 	n, room int
 
 	x, y, site, hard, soft, touch []int32
@@ -121,7 +116,11 @@ type touchState struct {
 func (s *stdfReading) grow() {
 	want := max(s.room+s.room/4, 4096)
 	if s.n > 0 {
-		want = max(want, int(float64(s.atParts)*float64(s.src.size)/float64(max(s.at, 1))*1.02))
+		at := s.parts.Reader().Position()
+		if s.in.packed != "" {
+			at = s.ahead.taken
+		}
+		want = max(want, int(float64(s.n)*float64(s.src.size)/float64(max(at, 1))*1.02))
 	}
 	if s.in.packed == "" {
 		const part = 21 // bytes of a PRR, at least
@@ -134,57 +133,60 @@ func (s *stdfReading) grow() {
 	}
 	s.pass = larger(s.pass, want)
 	for i := range s.values {
-		s.values[i] = largerNaN(s.values[i], want)
+		s.values[i] = larger(s.values[i], want)
 	}
 	s.room = want
 }
 
-func largerNaN(v []float64, n int) []float64 {
-	out := larger(v, n)
-	for i := len(v); i < n; i++ {
-		out[i] = math.NaN()
+func fillNaN(v []float64) {
+	nan := math.NaN()
+	for i := range v {
+		v[i] = nan
 	}
-	return out
 }
 
-// take puts a batch into the columns.
-func (s *stdfReading) take(b *partBatch) {
-	s.atParts = s.n + len(b.parts)
-	for s.n+len(b.parts) > s.room {
-		s.grow()
+// some puts the parts that come next into the columns; false when there are no more.
+func (s *stdfReading) some() (more bool) {
+	b := &s.batch
+	b.reset(s.n)
+	for more = true; !b.full(); {
+		if more = s.parts.Scan(); !more {
+			break
+		}
+		p := s.parts.Part()
+		s.add(p)
+		b.add(p)
 	}
-	first, done, result, id := s.n, 0, 0, 0
+	for i := range b.results {
+		s.columnOf(&b.results[i])
+	}
+	// Programs are of tests that some part had among its results, so that all have
+	// their columns now; and what else a part has of them comes after.
+	for _, v := range s.values {
+		fillNaN(v[b.first:s.n])
+	}
+	s.plain(b)
+	at := 0
 	for i := range b.parts {
-		p := &b.parts[i]
-		s.add(p, b.ids[id:p.id])
-		id = p.id
-		if result == p.results {
-			continue
-		}
-		// Of a test that a part has twice the order counts, and a program is of
-		// tests that have their columns from the results of a part before.
-		s.plain(b, done, i+1, first)
-		done = i + 1
-		for ; result < p.results; result++ {
-			s.result(first+i, &b.results[result])
+		for ; at < b.parts[i].results; at++ {
+			s.result(b.first+i, &b.results[at])
 		}
 	}
-	s.plain(b, done, len(b.parts), first)
+	return more
 }
 
-// plain puts the readings of parts lo to hi of a batch, whose first one is in a row,
-// into columns: of parts that go by one program a test at a time.
-func (s *stdfReading) plain(b *partBatch, lo, hi, first int) {
-	for lo < hi {
-		n := lo + 1
-		program := b.parts[lo].program
-		for n < hi && sameProgram(program, b.parts[n].program) {
-			n++
+// plain puts the readings of a batch into columns: of parts in a row that go by one
+// program a test at a time.
+func (s *stdfReading) plain(b *partBatch) {
+	for lo := 0; lo < len(b.parts); {
+		hi, program := lo+1, b.parts[lo].program
+		for hi < len(b.parts) && sameProgram(program, b.parts[hi].program) {
+			hi++
 		}
 		for k, test := range program {
-			s.readings(b, k, lo, n, s.values[s.of[test][0]][first:])
+			b.column(k, lo, hi, s.values[s.of[test][0]][b.first:])
 		}
-		lo = n
+		lo = hi
 	}
 }
 
@@ -192,14 +194,15 @@ func sameProgram(a, b []int32) bool {
 	return len(a) == len(b) && (len(a) == 0 || &a[0] == &b[0])
 }
 
-// readings puts reading k of parts lo to hi into a column.
-func (s *stdfReading) readings(b *partBatch, k, lo, hi int, to []float64) {
+// column puts reading k of parts lo to hi into the rows of a column.
+func (b *partBatch) column(k, lo, hi int, to []float64) {
 	start := 0
 	if lo > 0 {
 		start = b.parts[lo-1].plain
 	}
-	for i := lo; i < hi; i++ {
-		end := b.parts[i].plain
+	to = to[lo:hi]
+	for i := range b.parts[lo:hi] {
+		end := b.parts[lo+i].plain
 		if at := start + k; at < end {
 			if v := float64(b.plain[at].Raw); v-v == 0 {
 				to[i] = v
@@ -212,38 +215,45 @@ func (s *stdfReading) readings(b *partBatch, k, lo, hi int, to []float64) {
 }
 
 // add puts all but the results of a part into a row.
-func (s *stdfReading) add(p *partRow, id []byte) {
+func (s *stdfReading) add(p *stdf.Part) {
+	if s.n == s.room {
+		s.grow()
+	}
 	i := s.n
 	s.n++
-	s.x[i], s.y[i], s.hard[i], s.soft[i] = p.x, p.y, p.hard, p.soft
-	s.site[i], s.head[i], s.pass[i] = int32(p.site), int32(p.head), p.pass
-	s.wafer[i], s.run[i] = p.wafer, p.run
+	s.x[i], s.y[i], s.hard[i], s.soft[i] = p.X, p.Y, p.HardBin, p.SoftBin
+	s.site[i], s.head[i], s.pass[i] = int32(p.Site), int32(p.Head), p.Pass()
+	s.wafer[i], s.run[i] = int32(p.Wafer), int32(p.Run)
 	s.touch[i] = s.touchdown(p)
-	s.ids.add(int(p.wafer), id)
+	s.ids.add(p.Wafer, p.RawID())
 }
 
 // touchdown counts: parts that were open at the same time were touched at once.
-func (s *stdfReading) touchdown(p *partRow) int32 {
-	for len(s.touches) <= int(p.wafer) {
+func (s *stdfReading) touchdown(p *stdf.Part) int32 {
+	for len(s.touches) <= p.Wafer {
 		s.touches = append(s.touches, touchState{})
 	}
-	t := &s.touches[p.wafer]
-	if t.n == 0 || p.opened < 0 || p.opened > t.first {
+	t := &s.touches[p.Wafer]
+	if t.n == 0 || p.Opened < 0 || p.Opened > t.first {
 		t.n++
-		t.first = p.offset
+		t.first = p.Offset
 	}
 	return t.n
 }
 
-func (s *stdfReading) result(row int, r *stdf.Result) {
+// columnOf makes the column of a result, unless there is one.
+func (s *stdfReading) columnOf(r *stdf.Result) {
 	for len(s.of) <= int(r.Test) {
 		s.of = append(s.of, nil)
 	}
-	if r.Column < 0 {
-		return
-	}
 	for len(s.of[r.Test]) <= int(r.Column) {
 		s.of[r.Test] = append(s.of[r.Test], s.column(int(r.Test), len(s.of[r.Test])))
+	}
+}
+
+func (s *stdfReading) result(row int, r *stdf.Result) {
+	if r.Column < 0 {
+		return
 	}
 	c := s.of[r.Test][r.Column]
 	if c < 0 {
@@ -280,7 +290,9 @@ func (s *stdfReading) column(test, place int) int32 {
 		return -1
 	}
 	s.columns = append(s.columns, stdfColumn{test: t, place: place})
-	s.values = append(s.values, largerNaN(nil, s.room))
+	v := larger[float64](nil, s.room)
+	fillNaN(v[:s.n])
+	s.values = append(s.values, v)
 	return int32(len(s.columns) - 1)
 }
 

@@ -114,24 +114,19 @@ func (r *readAhead) close() {
 	<-r.ended
 }
 
-// partBatch is some parts with what belongs to them, which in a stdf.Part holds
-// until the next only. Columns are written a test at a time for all of them.
+// partBatch is the results of some parts, which in a stdf.Part hold until the next
+// only. Columns are written a test at a time for all of them.
 type partBatch struct {
-	parts   []partRow
+	first   int // row of the first part
+	parts   []partResults
 	plain   []stdf.Reading
 	results []stdf.Result
-	ids     []byte
 }
 
-// partRow is what becomes a row, and where what belongs to it ends in its batch.
-type partRow struct {
-	wafer, run         int32 // indexes of stdf.Parts
-	x, y, hard, soft   int32
-	opened, offset     int64
-	program            []int32
-	plain, results, id int
-	head, site         uint8
-	pass               int8
+// partResults says where those of a part end, and what program it went by.
+type partResults struct {
+	program        []int32
+	plain, results int
 }
 
 const (
@@ -139,24 +134,16 @@ const (
 	batchResults = 64 << 10 // a part may have very many
 )
 
-// fill takes the parts that come next from a reader; false when there are no more.
-func (b *partBatch) fill(p *stdf.Parts) (more bool) {
-	*b = partBatch{parts: b.parts[:0], plain: b.plain[:0], results: b.results[:0], ids: b.ids[:0]}
-	for more = true; len(b.parts) < batchParts && len(b.plain)+len(b.results) < batchResults; {
-		if more = p.Scan(); !more {
-			break
-		}
-		b.add(p.Part())
-	}
-	return more
+func (b *partBatch) reset(first int) {
+	b.first, b.parts, b.plain, b.results = first, b.parts[:0], b.plain[:0], b.results[:0]
+}
+
+func (b *partBatch) full() bool {
+	return len(b.parts) == batchParts || len(b.plain)+len(b.results) >= batchResults
 }
 
 func (b *partBatch) add(p *stdf.Part) {
 	b.plain = append(b.plain, p.Plain...)
 	b.results = append(b.results, p.Results...)
-	b.ids = append(b.ids, p.RawID()...)
-	b.parts = append(b.parts, partRow{
-		wafer: int32(p.Wafer), run: int32(p.Run), x: p.X, y: p.Y, hard: p.HardBin, soft: p.SoftBin, opened: p.Opened, offset: p.Offset,
-		program: p.Program, plain: len(b.plain), results: len(b.results), id: len(b.ids), head: p.Head, site: p.Site, pass: p.Pass(),
-	})
+	b.parts = append(b.parts, partResults{p.Program, len(b.plain), len(b.results)})
 }

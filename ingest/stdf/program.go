@@ -65,10 +65,12 @@ func (p *Parts) quick() bool {
 		switch {
 		case h.kind == KindPIR && h.size == 2:
 			r.pir = PIR{b[4], b[5]}
-			r.deliver(h)
+			r.advance(KindPIR, 2)
+			r.shapes[KindPIR] = 1
 			p.begin(&r.pir)
 		case h.kind == KindPRR && h.size >= 17 && r.prr.read(&r.c, b[4:whole]) == exact:
-			r.deliver(h)
+			r.advance(KindPRR, h.size)
+			r.shapes[KindPRR] = r.shape(KindPRR)
 			p.end(&r.prr)
 			return true
 		default:
