@@ -143,6 +143,7 @@ type slot struct {
 	plain      []Reading // the first results, by the program
 	program    *program  // nil none
 	steps      []step    // of the program
+	due        int       // step whose reading is due; -1 none
 	results    []Result  // the others
 
 	after *slot // that had the next result, the last time
@@ -262,7 +263,7 @@ func (p *Parts) slot(head, site uint8) *slot {
 	}
 	s := h[site]
 	if s == nil {
-		s = &slot{head: head, site: site, place: uint16(head) | uint16(site)<<8}
+		s = &slot{head: head, site: site, place: uint16(head) | uint16(site)<<8, due: -1}
 		h[site] = s
 		p.open = append(p.open, s)
 	}
@@ -311,7 +312,6 @@ func (p *Parts) at(head, site uint8) *slot {
 	}
 	s.opened, s.hasPIR, s.isOpen, s.damaged = p.r.at, false, true, false
 	s.drop()
-	s.program, s.steps = nil, nil
 	return s
 }
 
@@ -327,7 +327,7 @@ func (p *Parts) parametric(m *PTR) {
 	if p.expected(s, m) {
 		return
 	}
-	s.results = append(s.results, Result{int32(m.Test.Index), m.Result, int16(m.which), 0, m.Flag, m.Parm})
+	s.add(Result{int32(m.Test.Index), m.Result, int16(m.which), 0, m.Flag, m.Parm})
 }
 
 func (p *Parts) isOpen(head, site uint8) bool {
@@ -341,10 +341,10 @@ func (p *Parts) multiple(m *MPR) {
 	}
 	s := p.at(m.Head, m.Site)
 	for i, v := range m.Results {
-		s.results = append(s.results, Result{int32(m.Test.Index), v, int16(m.which), int16(i), m.Flag, m.Parm})
+		s.add(Result{int32(m.Test.Index), v, int16(m.which), int16(i), m.Flag, m.Parm})
 	}
 	if len(m.Results) == 0 {
-		s.results = append(s.results, Result{int32(m.Test.Index), none, int16(m.which), -1, m.Flag, m.Parm})
+		s.add(Result{int32(m.Test.Index), none, int16(m.which), -1, m.Flag, m.Parm})
 	}
 }
 
@@ -360,7 +360,7 @@ func (p *Parts) functional(m *FTR) {
 	case pass:
 		v = 1
 	}
-	s.results = append(s.results, Result{int32(m.Test.Index), v, int16(m.Test.Default), 0, m.Flag, 0})
+	s.add(Result{int32(m.Test.Index), v, int16(m.Test.Default), 0, m.Flag, 0})
 }
 
 // end closes a part.

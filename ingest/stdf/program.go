@@ -79,11 +79,11 @@ func (p *Parts) quick() bool {
 	}
 }
 
-// quickPTRs takes the PTRs that are the next of their part's program.
+// quickPTRs takes the PTRs that are the next of their parts' program.
 func (p *Parts) quickPTRs() {
 	r, s := p.r, p.last
 	b, at, before, n, big := r.buf[:r.end], r.pos, 0, int64(0), r.c.big
-	var last *Test
+	var step *step
 	for at+16+4 <= len(b) {
 		rec := b[at : at+16+4]
 		lead := binary.LittleEndian.Uint64(rec)
@@ -103,12 +103,11 @@ func (p *Parts) quickPTRs() {
 				break
 			}
 		}
-		k := len(s.plain)
-		if k >= len(s.steps) || len(s.results) > 0 || place&notPlain != 0 {
+		if s.due < 0 || place&notPlain != 0 {
 			break
 		}
-		step := &s.steps[k]
-		if step.lead != lead || size > 12 && string(step.tail) != string(b[at+16:next]) {
+		x := &s.steps[s.due]
+		if x.lead != lead || size > 12 && string(x.tail) != string(b[at+16:next]) {
 			break
 		}
 		if binary.LittleEndian.Uint32(b[next:]) != uint32(lead) && !r.likely(parseHeader(b[next:], big)) {
@@ -118,18 +117,33 @@ func (p *Parts) quickPTRs() {
 		if big {
 			raw = bits.ReverseBytes32(raw)
 		}
-		s.plain = append(s.plain, Reading{math.Float32frombits(raw), TestFlag(place >> 16), ParmFlag(place >> 24)})
-		last = step.test
-		last.Records++
-		last.size = size
+		s.read(Reading{math.Float32frombits(raw), TestFlag(place >> 16), ParmFlag(place >> 24)})
+		step = x
+		step.test.Records++
+		step.test.size = size
 		n++
 		before, at = at, next
 	}
 	if n > 0 {
-		p.last, r.pos, r.tests.last = s, at, last
+		p.last, r.pos, r.tests.last = s, at, step.test
 		r.at = r.base + int64(before)
 		r.counts[KindPTR] += n
 	}
+}
+
+// read takes the reading that is due.
+func (s *slot) read(m Reading) {
+	s.plain = append(s.plain, m)
+	if s.due++; s.due == len(s.steps) {
+		s.due = -1
+	}
+}
+
+// add takes a result that the program does not foresee. All that come after are such,
+// as readings stand before results.
+func (s *slot) add(x Result) {
+	s.results = append(s.results, x)
+	s.due = -1
 }
 
 // turn is the slot of a site if a part is open there that goes by a program, else
@@ -151,10 +165,8 @@ func (p *Parts) turn(last *slot, place uint16) *slot {
 
 // follow sets a part that begins to go by the program.
 func (p *Parts) follow(s *slot) {
-	if s.program = p.program; s.program != nil && s.program.run == p.r.run {
-		s.steps = s.program.steps
-	} else {
-		s.program, s.steps = nil, nil
+	if p.program != nil && p.program.run == p.r.run {
+		s.program, s.steps, s.due = p.program, p.program.steps, 0
 	}
 }
 
@@ -221,11 +233,11 @@ func (x *step) look(big bool) {
 // expected takes a PTR that went the way of all records, and yet is the next of its
 // part's program; else it is false.
 func (p *Parts) expected(s *slot, m *PTR) bool {
-	k, t := len(s.plain), m.Test
-	if k == len(s.steps) || len(s.results) > 0 || s.steps[k].test != t || m.which != t.Default || !Usable(m.Flag, m.Parm) {
+	k, t := s.due, m.Test
+	if k < 0 || s.steps[k].test != t || m.which != t.Default || !Usable(m.Flag, m.Parm) {
 		return false
 	}
-	s.plain = append(s.plain, Reading{m.Result, m.Flag, m.Parm})
+	s.read(Reading{m.Result, m.Flag, m.Parm})
 	if t.tail.known && t.tail.run == p.r.run && t.tail.which == t.Default {
 		s.steps[k].look(p.r.c.big)
 	}
@@ -244,7 +256,7 @@ func (s *slot) spill() {
 	if len(s.plain) > 0 {
 		s.results = s.all(nil)
 	}
-	s.plain, s.program, s.steps = s.plain[:0], nil, nil
+	s.plain, s.program, s.steps, s.due = s.plain[:0], nil, nil, -1
 }
 
 // all adds the readings and results of a part to a list.
@@ -258,5 +270,8 @@ func (s *slot) all(list []Result) []Result {
 // number is how many results a part has.
 func (s *slot) number() int { return len(s.plain) + len(s.results) }
 
-// drop takes all that a part has from it.
-func (s *slot) drop() { s.plain, s.results, s.steps = s.plain[:0], s.results[:0], nil }
+// drop takes all that a part has from it, and its program.
+func (s *slot) drop() {
+	s.plain, s.results = s.plain[:0], s.results[:0]
+	s.program, s.steps, s.due = nil, nil, -1
+}

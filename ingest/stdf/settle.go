@@ -105,7 +105,7 @@ func (r *Reader) plainRun(p *Parts) {
 			}
 			p.last = s
 		}
-		if len(s.plain) < len(s.steps) && len(s.results) == 0 {
+		if s.due >= 0 {
 			return // see Parts.quick
 		}
 		r.tests.last = t
@@ -114,7 +114,7 @@ func (r *Reader) plainRun(p *Parts) {
 		r.counts[KindPTR]++
 		t.size = h.size
 		t.Records++
-		s.results = append(s.results, Result{int32(t.Index), math.Float32frombits(u4(body[8:], r.c.big)), int16(t.Default), 0, flag, ParmFlag(body[7])})
+		s.add(Result{int32(t.Index), math.Float32frombits(u4(body[8:], r.c.big)), int16(t.Default), 0, flag, ParmFlag(body[7])})
 	}
 }
 
