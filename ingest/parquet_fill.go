@@ -17,7 +17,7 @@ import (
 
 // direct says whether a field's column can be taken so from every row group.
 func (t *tableReading) direct(pf *file.Reader, groups []int, field, leaf int) bool {
-	if leaf < 0 {
+	if leaf < 0 || t.opt.careful {
 		return false
 	}
 	typ, want := t.fields[field].Type, parquet.Types.Double

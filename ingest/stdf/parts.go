@@ -41,6 +41,7 @@ type Parts struct {
 	last    *slot   // of the last parametric result
 	program *program
 	learned int64    // programs so far
+	moved   int64    // of the Reader, seen here
 	results []Result // of the part, unless they are in its slot
 	runs    []*Run
 	wafers  []*Wafer
@@ -48,6 +49,7 @@ type Parts struct {
 	inDoubt [256]bool // the wafer on a head may have ended in a gap
 	pins    map[uint16]*PMR
 	number  int64
+	careful bool  // keep the quick ways out
 	gaps    int64 // of the Reader, seen here
 	closed  bool
 
@@ -85,7 +87,11 @@ type Part struct {
 	Damaged bool
 
 	id, text []byte
+	program  *program
 }
+
+// PlainResult is Plain[i] as a result.
+func (p *Part) PlainResult(i int) Result { return p.program.result(i, p.Plain[i]) }
 
 // ID is PART_ID.
 func (p *Part) ID() string { return text(p.id) }
@@ -225,10 +231,15 @@ func (p *Parts) Scan() bool {
 		if p.r.oddAt == p.r.at && p.r.at > 0 {
 			p.odd(p.r.rec)
 		}
+		if p.moved != p.r.moved {
+			p.stop()
+		}
 		switch p.r.kind {
 		case KindPTR:
 			p.parametric(&p.r.ptr)
-			p.r.plainRun(p)
+			if !p.careful {
+				p.r.plainRun(p)
+			}
 		case KindPIR:
 			p.begin(&p.r.pir)
 		case KindPRR:
@@ -425,7 +436,7 @@ func (p *Parts) give(part *Part, s *slot) {
 	case len(s.plain) == 0:
 		part.Results = s.results
 	case p.Compact:
-		part.Plain, part.Program, part.Results = s.plain, s.program.tests, s.results
+		part.Plain, part.Program, part.program, part.Results = s.plain, s.program.tests, s.program, s.results
 	default:
 		p.results = s.all(p.results[:0])
 		part.Results = p.results

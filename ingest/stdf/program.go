@@ -30,10 +30,11 @@ type program struct {
 
 // step is a test of a program.
 type step struct {
-	lead uint64 // how its records start: header and TEST_NUM
-	size int    // of their bodies
-	test *Test
-	tail []byte // what stands behind RESULT
+	lead  uint64 // how its records start: header and TEST_NUM
+	size  int    // of their bodies
+	test  *Test
+	tail  []byte // what stands behind RESULT
+	which int16  // of the test's limits, its default as long as the program holds
 }
 
 const (
@@ -48,7 +49,7 @@ const (
 // ended a part.
 func (p *Parts) quick() bool {
 	r := p.r
-	if r.c.vax || p.gaps != r.gaps {
+	if p.careful || r.c.vax || p.gaps != r.gaps {
 		return false
 	}
 	for {
@@ -175,7 +176,7 @@ func (p *Parts) follow(s *slot) {
 // each time.
 func (p *Parts) learn(s *slot) {
 	last := p.program
-	if last != nil && last.run == p.r.run && s.program != last || p.learned > 8+p.number/256 {
+	if p.careful || last != nil && last.run == p.r.run && s.program != last || p.learned > 8+p.number/256 {
 		return
 	}
 	more := p.steps(s)
@@ -186,7 +187,7 @@ func (p *Parts) learn(s *slot) {
 	g := &program{run: p.r.run}
 	add := func(t *Test) {
 		g.tests = append(g.tests, int32(t.Index))
-		x := step{test: t}
+		x := step{test: t, which: int16(t.Default)}
 		x.look(p.r.c.big)
 		g.steps = append(g.steps, x)
 	}
@@ -246,17 +247,17 @@ func (p *Parts) expected(s *slot, m *PTR) bool {
 
 // result is reading k of a program as a result.
 func (g *program) result(k int, m Reading) Result {
-	t := g.steps[k].test
-	return Result{int32(t.Index), m.Raw, int16(t.Default), 0, m.Flag, m.Parm}
+	x := &g.steps[k]
+	return Result{int32(x.test.Index), m.Raw, x.which, 0, m.Flag, m.Parm}
 }
 
-// spill puts the readings of a part among its results, as the program no longer
-// holds.
-func (s *slot) spill() {
-	if len(s.plain) > 0 {
-		s.results = s.all(nil)
+// stop ends the program, as a test has other defaults from here on. What was read
+// by it stays.
+func (p *Parts) stop() {
+	p.moved, p.program = p.r.moved, nil
+	for _, s := range p.open {
+		s.due = -1
 	}
-	s.plain, s.program, s.steps, s.due = s.plain[:0], nil, nil, -1
 }
 
 // all adds the readings and results of a part to a list.

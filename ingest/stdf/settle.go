@@ -173,7 +173,12 @@ func (r *Reader) settle(t *Test, own *Limits) (*Limits, int) {
 		r.scratch.take(own, own.has)
 		return &r.scratch, -1
 	}
-	return t.settle(own, r.run, &r.scratch)
+	was := t.Default
+	l, which := t.settle(own, r.run, &r.scratch)
+	if t.Default != was {
+		r.moved++
+	}
+	return l, which
 }
 
 func (t *Test) override(which int) {
