@@ -5,7 +5,8 @@ import (
 	"errors"
 	"fmt"
 	"math"
-	"strconv"
+	"slices"
+	"sync"
 
 	"kneepoint/ingest/stdf"
 )
@@ -89,10 +90,14 @@ type stdfReading struct {
 	head                          []int32
 	pass                          []int8
 	ids                           partIDs
-	values                        [][]float64 // by column: float32 as read, or an odd NaN
+	values                        [][]float64 // by column: float32 as read, their decimals, or an odd NaN
 	columns                       []stdfColumn
 	of                            [][]int32 // column by test and place in a multiple result, -1 none
 	touches                       []touchState
+
+	converted  int // rows whose results are decimals, or being made so
+	converting sync.WaitGroup
+	cache      []decimalOf
 
 	functional, functionalFails int
 	twice                       int // results of tests that a part has twice
@@ -128,6 +133,7 @@ func (s *stdfReading) grow() {
 	} else {
 		want = min(want, max(4*s.room, 4096)) // no file should make this reach far by a guess
 	}
+	s.converting.Wait() // columns are about to move
 	for _, c := range []*[]int32{&s.x, &s.y, &s.site, &s.hard, &s.soft, &s.touch, &s.wafer, &s.run, &s.head} {
 		*c = larger(*c, want)
 	}
@@ -172,7 +178,28 @@ func (s *stdfReading) some() (more bool) {
 			s.result(b.first+i, &b.results[at])
 		}
 	}
+	if s.n-s.converted >= convertRows {
+		s.convert()
+	}
 	return more
+}
+
+// convertRows are the rows whose results are turned into decimals at a time, while
+// more are read.
+const convertRows = 4 << 10
+
+func (s *stdfReading) convert() {
+	s.converting.Wait()
+	columns, lo, hi := slices.Clone(s.values), s.converted, s.n
+	s.converted = hi
+	if s.cache == nil {
+		s.cache = make([]decimalOf, 1<<12)
+	}
+	s.converting.Go(func() {
+		for _, v := range columns {
+			decimals(v[lo:hi], s.cache)
+		}
+	})
 }
 
 // plain puts the readings of a batch into columns: of parts in a row that go by one
@@ -187,30 +214,6 @@ func (s *stdfReading) plain(b *partBatch) {
 			b.column(k, lo, hi, s.values[s.of[test][0]][b.first:])
 		}
 		lo = hi
-	}
-}
-
-func sameProgram(a, b []int32) bool {
-	return len(a) == len(b) && (len(a) == 0 || &a[0] == &b[0])
-}
-
-// column puts reading k of parts lo to hi into the rows of a column.
-func (b *partBatch) column(k, lo, hi int, to []float64) {
-	start := 0
-	if lo > 0 {
-		start = b.parts[lo-1].plain
-	}
-	to = to[lo:hi]
-	for i := range b.parts[lo:hi] {
-		end := b.parts[lo+i].plain
-		if at := start + k; at < end {
-			if v := float64(b.plain[at].Raw); v-v == 0 {
-				to[i] = v
-			} else if v == v {
-				to[i] = oddNaN[infinityIs(v)]
-			}
-		}
-		start = end
 	}
 }
 
@@ -298,70 +301,3 @@ func (s *stdfReading) column(test, place int) int32 {
 
 // cellInvalid is a result that the tester flags as not to be used.
 const cellInvalid status = cellBad + 1
-
-// partIDs keeps PART_ID, but for those that merely count the parts of the file
-// or of the wafer: millions of different texts that say nothing.
-type partIDs struct {
-	n       int
-	places  []int32 // of each part within its wafer, while ids may count those
-	onWafer []int32 // parts so far, by wafer
-	other   [2]bool // some id is no count of the file's, of the wafer's parts
-	text    globalText
-	codes   []int32 // nil as long as ids count
-}
-
-// plainCount reads a count as one writes it: digits, no zero in front.
-func plainCount(b []byte) (n int, ok bool) {
-	if len(b) == 0 || len(b) > 18 || b[0] == '0' {
-		return 0, false
-	}
-	neg := b[0] == '-' // of no use, and yet a number
-	if neg {
-		b = b[1:]
-	}
-	for _, c := range b {
-		if c-'0' > 9 {
-			return 0, false
-		}
-		n = 10*n + int(c-'0')
-	}
-	if neg {
-		n = -n
-	}
-	return n, len(b) > 0
-}
-
-func (d *partIDs) add(wafer int, raw []byte) {
-	for len(d.onWafer) <= wafer {
-		d.onWafer = append(d.onWafer, 0)
-	}
-	d.n++
-	d.onWafer[wafer]++
-	place := d.onWafer[wafer]
-	if d.codes == nil {
-		k, plain := plainCount(raw)
-		wereFile := !d.other[0]
-		d.other[0] = d.other[0] || !plain || k != d.n
-		d.other[1] = d.other[1] || !plain || k != int(place)
-		if !d.other[0] || !d.other[1] {
-			d.places = append(d.places, place)
-			return
-		}
-		// No counts after all; those passed over are known.
-		d.codes = make([]int32, 0, d.n)
-		for i, k := range d.places {
-			if wereFile {
-				k = int32(i + 1)
-			}
-			d.codes = append(d.codes, d.text.code(strconv.Itoa(int(k))))
-		}
-		d.places = nil
-	}
-	code := int32(-1)
-	if len(raw) > 0 {
-		if id := stdf.Text(raw); id != "" {
-			code = d.text.code(id)
-		}
-	}
-	d.codes = append(d.codes, code)
-}

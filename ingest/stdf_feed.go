@@ -3,15 +3,14 @@ package ingest
 import (
 	"errors"
 	"io"
-
-	"kneepoint/ingest/stdf"
 )
 
 // A log of a tester is read in two steps at once, each in a goroutine: bytes are
 // read and hashed, and records are put together to parts and these into columns.
 // The second takes the bytes in their order, so that the result is the same on any
 // number of cores. (A third for the columns cost more than it gained: what one core
-// has just written is dear to read on another.)
+// has just written is dear to read on another. Turning finished rows into decimals
+// is left to one all the same, as the first step waits much of the time.)
 
 // readAhead reads a stream to its end whether or not it is all wanted, as the hash
 // is of all of it.
@@ -112,38 +111,4 @@ func (r *readAhead) close() {
 	}
 	close(r.stop)
 	<-r.ended
-}
-
-// partBatch is the results of some parts, which in a stdf.Part hold until the next
-// only. Columns are written a test at a time for all of them.
-type partBatch struct {
-	first   int // row of the first part
-	parts   []partResults
-	plain   []stdf.Reading
-	results []stdf.Result
-}
-
-// partResults says where those of a part end, and what program it went by.
-type partResults struct {
-	program        []int32
-	plain, results int
-}
-
-const (
-	batchParts   = 256
-	batchResults = 64 << 10 // a part may have very many
-)
-
-func (b *partBatch) reset(first int) {
-	b.first, b.parts, b.plain, b.results = first, b.parts[:0], b.plain[:0], b.results[:0]
-}
-
-func (b *partBatch) full() bool {
-	return len(b.parts) == batchParts || len(b.plain)+len(b.results) >= batchResults
-}
-
-func (b *partBatch) add(p *stdf.Part) {
-	b.plain = append(b.plain, p.Plain...)
-	b.results = append(b.results, p.Results...)
-	b.parts = append(b.parts, partResults{p.Program, len(b.plain), len(b.results)})
 }

@@ -59,7 +59,7 @@ func manyPartsSTDF(t *testing.T, order stdf.Order, parts int) string {
 // last usable result counts.
 func TestColumnsOfSTDF(t *testing.T) {
 	for _, order := range []stdf.Order{stdf.LittleEndian, stdf.BigEndian} {
-		data := manyPartsSTDF(t, order, 2000)
+		data := manyPartsSTDF(t, order, 5000)
 		path := save(t, "lot.stdf", func(w io.Writer) error { _, err := io.WriteString(w, data); return err })
 		found, err := findInputs([]string{path})
 		if err != nil {
@@ -111,7 +111,7 @@ func TestColumnsOfSTDF(t *testing.T) {
 				}
 			}
 		}
-		if row != 2000 || d.data.n != row || len(columns) != 11 || again < 20 {
+		if row != 5000 || d.data.n != row || len(columns) != 11 || again < 50 {
 			t.Errorf("%d rows of %d, %d columns, %d results again", d.data.n, row, len(columns), again)
 		}
 		if !hasFinding(d.notes, "result-again", fmt.Sprintf("%d results", again)) {
