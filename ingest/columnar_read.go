@@ -98,6 +98,7 @@ func (t *tableReading) start(s *arrow.Schema, rows int, sample func(field, row i
 	}
 	t.d.layout = t.layout
 	t.sch.adopt(t.layout)
+	t.onceEach()
 	for i, f := range t.layout.fields {
 		if f.kind == textField && t.levels[i] != levelJudged && t.sch.levels[f.slot] != levelDie {
 			t.sch.levels[f.slot] = t.levels[i]
@@ -109,6 +110,30 @@ func (t *tableReading) start(s *arrow.Schema, rows int, sample func(field, row i
 	}
 	t.c = &chunk{file: t.index, text: make([]textColumn, textAttributes+len(t.sch.attributes)), values: make([][]float64, n), odd: t.d.odd}
 	return nil
+}
+
+// onceEach leaves out a column that says that it is what another is: columns are
+// filled at the same time, and each has one place.
+func (t *tableReading) onceEach() {
+	l := t.layout
+	type place struct {
+		kind fieldKind
+		slot int
+	}
+	first := map[place]int{}
+	for i, f := range l.fields {
+		p := place{f.kind, f.slot}
+		if f.kind == skipField {
+			continue
+		}
+		if k, ok := first[p]; ok {
+			l.fields[i].kind = skipField
+			t.d.note(Warning, "column-again", fmt.Sprintf("%s: columns %s and %s say that they are the same; the first is used", t.in.name, quote(t.fields[k].Name), quote(t.fields[i].Name)),
+				"take one out", 0)
+			continue
+		}
+		first[p] = i
+	}
 }
 
 // ownLayout takes the metadata's word.
@@ -264,19 +289,24 @@ func (t *tableReading) makeRoom(n int) error {
 		return &Error{File: t.in.name, What: fmt.Sprintf("says that it holds %d rows, which cannot be in a file of %d bytes", n, t.in.size), Remedy: "fetch or export the file again"}
 	}
 	t.room = n
+	var g errgroup.Group
+	g.SetLimit(t.opt.Workers)
 	for _, f := range t.layout.fields {
-		switch f.kind {
-		case textField:
-			t.c.text[f.slot].codes = larger(t.c.text[f.slot].codes, n)
-		case intField:
-			t.c.ints[f.slot] = larger(t.c.ints[f.slot], n)
-		case passField:
-			t.c.pass = larger(t.c.pass, n)
-		case valueField:
-			t.c.values[f.slot] = larger(t.c.values[f.slot], n)
-		}
+		g.Go(func() error {
+			switch f.kind {
+			case textField:
+				t.c.text[f.slot].codes = larger(t.c.text[f.slot].codes, n)
+			case intField:
+				t.c.ints[f.slot] = larger(t.c.ints[f.slot], n)
+			case passField:
+				t.c.pass = larger(t.c.pass, n)
+			case valueField:
+				t.c.values[f.slot] = larger(t.c.values[f.slot], n)
+			}
+			return nil
+		})
 	}
-	return nil
+	return g.Wait()
 }
 
 // records takes the columns of one batch, in parallel.

@@ -89,6 +89,23 @@ func BenchmarkReadSTDF(b *testing.B) {
 	benchRead(b, path, true)
 }
 
+// Peak memory while a file is read, beside the lot's own columns.
+func BenchmarkReadMemory(b *testing.B) {
+	stdfFile, _ := benchFile(b, "lot.stdf", 5, func(w io.Writer, s *synth.Lot, _ *Lot) error { return s.WriteSTDF(w, false) })
+	parquetFile, _ := benchFile(b, "lot.parquet", 5, func(w io.Writer, _ *synth.Lot, l *Lot) error { return WriteParquet(w, l) })
+	packed := filepath.Join(b.TempDir(), "lot.stdf.gz")
+	pack(b, stdfFile, packed)
+	for _, path := range []string{stdfFile, packed, parquetFile} {
+		b.Run(filepath.Base(path), func(b *testing.B) {
+			for b.Loop() {
+				peak, columns, n := peakMemory(b, path)
+				b.ReportMetric(float64(peak)/float64(columns), "peak/columns")
+				b.ReportMetric(float64(peak)/float64(n), "peakB/die")
+			}
+		})
+	}
+}
+
 // Decoding alone, without cleaning: columns in memory as they stand in the file.
 func BenchmarkDecodeParquet(b *testing.B) {
 	path, l := benchFile(b, "lot.parquet", 10, func(w io.Writer, _ *synth.Lot, l *Lot) error { return WriteParquet(w, l) })

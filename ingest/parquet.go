@@ -4,7 +4,6 @@ import (
 	"errors"
 	"fmt"
 	"io"
-	"math"
 	"runtime"
 	"sync"
 
@@ -99,34 +98,18 @@ func (t *tableReading) parquet() error {
 	t.c.n = int(rows)
 	g, ctx := errgroup.WithContext(t.ctx)
 	g.SetLimit(t.opt.Workers)
-	task := func(groups []int, field int) {
+	run := func(groups []int, field int, do func(group int) error) {
 		g.Go(func() error {
 			return guard(t.in.name, func() error {
 				for _, group := range groups {
 					if err := ctx.Err(); err != nil {
 						return err
 					}
-					if err := read(group, field, func(a arrow.Array, row int) error { return t.column(field, a, row) }); err != nil {
+					if err := do(group); err != nil {
 						return err
 					}
 				}
 				return nil
-			})
-		})
-	}
-	quick := func(group, field, leaf int) {
-		g.Go(func() error {
-			return guard(t.in.name, func() error {
-				if err := ctx.Err(); err != nil {
-					return err
-				}
-				w := walks.Get().(*pageWalk)
-				defer walks.Put(w)
-				err := t.doubles(w, pf.RowGroup(group), leaf, field, offset[group], offset[group+1])
-				if err != nil {
-					err = fmt.Errorf("row group %d, column %s: %w", group, quote(s.Field(field).Name), err)
-				}
-				return err
 			})
 		})
 	}
@@ -137,22 +120,28 @@ func (t *tableReading) parquet() error {
 		}
 	}
 	for i, f := range t.layout.fields {
-		switch f.kind {
-		case skipField:
-		case textField:
-			task(groups, i)
-		default:
-			leaf := -1
-			if s.Field(i).Type.ID() == arrow.FLOAT64 && f.kind == valueField {
-				leaf = fr.Manifest.Fields[i].ColIndex
-			}
-			for _, group := range groups {
-				if leaf >= 0 {
-					quick(group, i, leaf)
-				} else {
-					task([]int{group}, i)
+		if f.kind == skipField {
+			continue
+		}
+		do := func(group int) error {
+			return read(group, i, func(a arrow.Array, row int) error { return t.column(i, a, row) })
+		}
+		if leaf := fr.Manifest.Fields[i].ColIndex; t.direct(pf, groups, i, leaf) {
+			do = func(group int) error {
+				w := walks.Get().(*pageWalk)
+				defer walks.Put(w)
+				if err := t.fill(w, pf.RowGroup(group), leaf, i, offset[group]); err != nil {
+					return fmt.Errorf("row group %d, column %s: %w", group, quote(s.Field(i).Name), err)
 				}
+				return nil
 			}
+		}
+		if f.kind == textField {
+			run(groups, i, do)
+			continue
+		}
+		for k := range groups {
+			run(groups[k:k+1], i, do)
 		}
 	}
 	return g.Wait()
@@ -180,38 +169,6 @@ func (t *tableReading) checkSizes(pf *file.Reader, size int64) error {
 		}
 	}
 	return nil
-}
-
-// doubles reads a column of float64 of a row group straight into the chunk, with
-// no array in between.
-func (t *tableReading) doubles(w *pageWalk, group *file.RowGroupReader, leaf, field, lo, hi int) error {
-	to := t.c.values[t.layout.fields[field].slot][lo:hi]
-	at := 0
-	k := cells{at: lo}
-	err := w.chunk(group, leaf, func(c *pageChunk, p *page) error {
-		if err := c.doubles(p, to[at:at+p.n]); err != nil {
-			return err
-		}
-		k.at = lo + at
-		k.infinite(to[at : at+p.n])
-		at += p.n
-		return nil
-	})
-	t.count(field, &k)
-	return err
-}
-
-// spreadNulls moves values that were read without the nulls between them to their
-// rows, from the last on.
-func spreadNulls(to []float64, levels []uint32, values int) {
-	for i := len(to) - 1; i >= 0; i-- {
-		if levels[i] == 0 {
-			to[i] = math.NaN()
-			continue
-		}
-		values--
-		to[i] = to[values]
-	}
 }
 
 // parquetSample reads the first rows of a file from elsewhere as text.

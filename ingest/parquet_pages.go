@@ -17,9 +17,9 @@ import (
 // The library for Parquet trusts the pages of a file: it has loops that need levels
 // for all the rows that a page claims, and makes room for whatever index, length or
 // number a page gives, which may be more than any machine has. Neither is a panic
-// that could be caught. So each page is walked here first: what it says of itself must fit into
-// its bytes, and into what a file of this size may unpack to. Columns of float64,
-// most of any lot, are then taken from here straight into their place.
+// that could be caught. So each page is walked here first: what it says of itself
+// must fit into its bytes, and into what a file of this size may unpack to. Most
+// columns are then taken from here straight into their place, see fill.
 
 // pageWalk walks the pages of column chunks; it keeps its room from one to the
 // next, and is for one goroutine.
@@ -31,6 +31,7 @@ type pageWalk struct {
 	plain  []byte
 	levels []uint32
 	index  []uint32
+	dict   []byte
 	zstd   *zstd.Decoder
 }
 
@@ -43,6 +44,13 @@ type pageChunk struct {
 	dict     []byte // values of the dictionary, packed plainly
 	dictN    int
 	hasDict  bool
+
+	// What fill makes of the dictionary.
+	numbers []float64
+	odd     bool // some number is infinite or NaN
+	whole   []int32
+	starts  []uint32 // of texts
+	codes   []int32  // of texts, in the file's dictionary
 }
 
 // page is a data page, unpacked.
@@ -50,7 +58,7 @@ type page struct {
 	n       int      // rows
 	levels  []uint32 // 1: has a value; nil: all have
 	present int
-	index   []uint32 // into the dictionary; nil: values are plain or packed otherwise
+	index   []uint32 // into the dictionary, not yet checked, or flags; nil: values are plain or packed otherwise
 	coding  parquet.Encoding
 	values  []byte
 }
@@ -193,10 +201,13 @@ func (w *pageWalk) pages(c *pageChunk, group *file.RowGroupReader, leaf int, vis
 		if err := w.check(c, p); err != nil {
 			return err
 		}
-		if visit != nil {
-			if err := visit(c, p); err != nil {
-				return err
-			}
+		if visit == nil {
+			err = p.inDict(c)
+		} else {
+			err = visit(c, p)
+		}
+		if err != nil {
+			return err
 		}
 	}
 	return nil
@@ -222,7 +233,8 @@ func (w *pageWalk) dictionary(c *pageChunk, h *pageHeader, body []byte) error {
 	if least := max(c.width, 1); h.n > len(plain)/least || c.width == 0 && c.kind == parquet.Types.ByteArray && h.n > len(plain)/4 {
 		return errClaims
 	}
-	c.dict, c.dictN, c.hasDict = append([]byte(nil), plain...), h.n, true
+	w.dict = append(w.dict[:0], plain...)
+	c.dict, c.dictN, c.hasDict = w.dict, h.n, true
 	return nil
 }
 
@@ -353,20 +365,14 @@ func (w *pageWalk) check(c *pageChunk, p *page) error {
 		if len(p.values) == 0 {
 			return errRuns
 		}
-		if err := runs(p.values[1:], int(p.values[0]), p.index); err != nil {
-			return err
-		}
-		most := uint32(0)
-		for _, i := range p.index {
-			most = max(most, i)
-		}
-		return fits(int64(most) < int64(c.dictN))
+		return runs(p.values[1:], int(p.values[0]), p.index)
 	case parquet.Encodings.RLE: // flags
 		if c.kind != parquet.Types.Boolean || len(p.values) < 4 {
 			return errClaims
 		}
 		w.index = roomFor(w.index, p.present)
-		return runs(p.values[4:], 1, w.index)
+		p.index = w.index
+		return runs(p.values[4:], 1, p.index)
 	case parquet.Encodings.DeltaBinaryPacked:
 		n, _, err := deltas(p.values, p.n, func(int64) {})
 		if err == nil && n < p.present {
@@ -377,6 +383,22 @@ func (w *pageWalk) check(c *pageChunk, p *page) error {
 		return w.lengths(p)
 	}
 	return fmt.Errorf("its packing (%s) is not read", p.coding)
+}
+
+// inDict checks that what a page points to is in the dictionary, for those who do
+// not look themselves.
+func (p *page) inDict(c *pageChunk) error {
+	if c.kind == parquet.Types.Boolean {
+		return nil
+	}
+	most := -1
+	for _, i := range p.index {
+		most = max(most, int(i))
+	}
+	if most >= c.dictN {
+		return errRuns
+	}
+	return nil
 }
 
 // lengths checks texts that are packed by their lengths: as texts may share their
@@ -409,25 +431,5 @@ func (w *pageWalk) lengths(p *page) error {
 		return errRuns
 	}
 	w.limit.unpack(total)
-	return nil
-}
-
-// doubles copies the values of a page to their rows.
-func (c *pageChunk) doubles(p *page, to []float64) error {
-	switch {
-	case p.index != nil:
-		for i, at := range p.index {
-			to[i] = math.Float64frombits(binary.LittleEndian.Uint64(c.dict[8*at:]))
-		}
-	case p.coding == parquet.Encodings.Plain:
-		for i := range to[:p.present] {
-			to[i] = math.Float64frombits(binary.LittleEndian.Uint64(p.values[8*i:]))
-		}
-	default:
-		return fmt.Errorf("its packing (%s) is not one of numbers", p.coding)
-	}
-	if p.levels != nil {
-		spreadNulls(to, p.levels, p.present)
-	}
 	return nil
 }

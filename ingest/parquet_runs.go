@@ -85,6 +85,17 @@ func allOnes(b []byte, n int) bool {
 func unpackBits(b []byte, width int, to []uint32) {
 	mask := uint64(1)<<width - 1
 	i, bit := 0, 0
+	if 4*width <= 57 { // four are in eight bytes, wherever the first bit is
+		for ; i+4 <= len(to) && bit>>3+8 <= len(b); i += 4 {
+			v := binary.LittleEndian.Uint64(b[bit>>3:]) >> (bit & 7)
+			four := to[i : i+4 : i+4]
+			four[0] = uint32(v & mask)
+			four[1] = uint32(v >> width & mask)
+			four[2] = uint32(v >> (2 * width) & mask)
+			four[3] = uint32(v >> (3 * width) & mask)
+			bit += 4 * width
+		}
+	}
 	for ; i < len(to) && bit>>3+8 <= len(b); i++ {
 		to[i] = uint32(binary.LittleEndian.Uint64(b[bit>>3:]) >> (bit & 7) & mask)
 		bit += width

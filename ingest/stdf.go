@@ -5,7 +5,8 @@ import (
 	"errors"
 	"fmt"
 	"math"
-	"strconv"
+	"slices"
+	"sync"
 
 	"kneepoint/ingest/stdf"
 )
@@ -26,23 +27,13 @@ func readSTDF(ctx context.Context, in *input, index int, sch *schema, progress f
 	defer src.close()
 	ahead := newReadAhead(rawReader{src})
 	defer ahead.close()
-	s := &stdfReading{in: in, src: src, parts: stdf.NewParts(stdf.NewReader(ahead))}
-	feed := s.feed(ahead)
-	defer feed.close()
-	for b := range feed.full {
+	s := &stdfReading{in: in, src: src, ahead: ahead, parts: stdf.NewParts(stdf.NewReader(ahead))}
+	s.parts.Compact = true
+	for more := true; more; {
 		if ctx.Err() != nil {
 			return nil, ctx.Err()
 		}
-		s.known, s.at, s.atParts = b.tests, b.at, s.n+len(b.parts)
-		from, fromID := 0, 0
-		for i := range b.parts {
-			s.add(&b.parts[i], b.results[from:b.resultsEnd[i]], b.ids[fromID:b.idsEnd[i]])
-			from, fromID = b.resultsEnd[i], b.idsEnd[i]
-		}
-		feed.spare <- b
-	}
-	if feed.failed != nil {
-		panic(feed.failed)
+		more = s.some()
 	}
 	ahead.drain()
 	d := &fileData{odd: map[oddKey]oddCells{}}
@@ -88,10 +79,9 @@ func (s *stdfReading) empty() *Error {
 type stdfReading struct {
 	in      *input
 	src     *source
-	parts   *stdf.Parts  // another goroutine's until all parts are in
-	known   []*stdf.Test // as far as parts have come
-	at      int64        // and where they end, in bytes of the stream; of the file where that is packed
-	atParts int          // how many there are up to there
+	ahead   *readAhead
+	parts   *stdf.Parts
+	batch   partBatch
 	n, room int
 
 	x, y, site, hard, soft, touch []int32
@@ -100,11 +90,14 @@ type stdfReading struct {
 	head                          []int32
 	pass                          []int8
 	ids                           partIDs
-	values                        [][]float64 // by column: float32 as read, or an odd NaN
+	values                        [][]float64 // by column: float32 as read, their decimals, or an odd NaN
 	columns                       []stdfColumn
-	of                            [][]int32   // column by test and place in a multiple result, -1 none
-	plain                         [][]float64 // values of the first column by test, nil none
+	of                            [][]int32 // column by test and place in a multiple result, -1 none
 	touches                       []touchState
+
+	converted  int // rows whose results are decimals, or being made so
+	converting sync.WaitGroup
+	cache      []decimalOf
 
 	functional, functionalFails int
 	twice                       int // results of tests that a part has twice
@@ -128,7 +121,11 @@ type touchState struct {
 func (s *stdfReading) grow() {
 	want := max(s.room+s.room/4, 4096)
 	if s.n > 0 {
-		want = max(want, int(float64(s.atParts)*float64(s.src.size)/float64(max(s.at, 1))*1.02))
+		at := s.parts.Reader().Position()
+		if s.in.packed != "" {
+			at = s.ahead.taken
+		}
+		want = max(want, int(float64(s.n)*float64(s.src.size)/float64(max(at, 1))*1.02))
 	}
 	if s.in.packed == "" {
 		const part = 21 // bytes of a PRR, at least
@@ -136,39 +133,92 @@ func (s *stdfReading) grow() {
 	} else {
 		want = min(want, max(4*s.room, 4096)) // no file should make this reach far by a guess
 	}
+	s.converting.Wait() // columns are about to move
 	for _, c := range []*[]int32{&s.x, &s.y, &s.site, &s.hard, &s.soft, &s.touch, &s.wafer, &s.run, &s.head} {
 		*c = larger(*c, want)
 	}
 	s.pass = larger(s.pass, want)
 	for i := range s.values {
-		s.values[i] = largerNaN(s.values[i], want)
+		s.values[i] = larger(s.values[i], want)
 	}
 	s.room = want
-	for test := range s.of {
-		s.setPlain(test)
+}
+
+func fillNaN(v []float64) {
+	nan := math.NaN()
+	for i := range v {
+		v[i] = nan
 	}
 }
 
-// setPlain notes where the first results of a test go.
-func (s *stdfReading) setPlain(test int) {
-	for len(s.plain) <= test {
-		s.plain = append(s.plain, nil)
+// some puts the parts that come next into the columns; false when there are no more.
+func (s *stdfReading) some() (more bool) {
+	b := &s.batch
+	b.reset(s.n)
+	for more = true; !b.full(); {
+		if more = s.parts.Scan(); !more {
+			break
+		}
+		p := s.parts.Part()
+		s.add(p)
+		b.add(p)
 	}
-	s.plain[test] = nil
-	if of := s.of[test]; len(of) > 0 && of[0] >= 0 {
-		s.plain[test] = s.values[of[0]]
+	for i := range b.results {
+		s.columnOf(&b.results[i])
+	}
+	// Programs are of tests that some part had among its results, so that all have
+	// their columns now; and what else a part has of them comes after.
+	for _, v := range s.values {
+		fillNaN(v[b.first:s.n])
+	}
+	s.plain(b)
+	at := 0
+	for i := range b.parts {
+		for ; at < b.parts[i].results; at++ {
+			s.result(b.first+i, &b.results[at])
+		}
+	}
+	if s.n-s.converted >= convertRows {
+		s.convert()
+	}
+	return more
+}
+
+// convertRows are the rows whose results are turned into decimals at a time, while
+// more are read.
+const convertRows = 4 << 10
+
+func (s *stdfReading) convert() {
+	s.converting.Wait()
+	columns, lo, hi := slices.Clone(s.values), s.converted, s.n
+	s.converted = hi
+	if s.cache == nil {
+		s.cache = make([]decimalOf, 1<<12)
+	}
+	s.converting.Go(func() {
+		for _, v := range columns {
+			decimals(v[lo:hi], s.cache)
+		}
+	})
+}
+
+// plain puts the readings of a batch into columns: of parts in a row that go by one
+// program a test at a time.
+func (s *stdfReading) plain(b *partBatch) {
+	for lo := 0; lo < len(b.parts); {
+		hi, program := lo+1, b.parts[lo].program
+		for hi < len(b.parts) && sameProgram(program, b.parts[hi].program) {
+			hi++
+		}
+		for k, test := range program {
+			b.column(k, lo, hi, s.values[s.of[test][0]][b.first:])
+		}
+		lo = hi
 	}
 }
 
-func largerNaN(v []float64, n int) []float64 {
-	out := larger(v, n)
-	for i := len(v); i < n; i++ {
-		out[i] = math.NaN()
-	}
-	return out
-}
-
-func (s *stdfReading) add(p *stdf.Part, results []stdf.Result, id []byte) {
+// add puts all but the results of a part into a row.
+func (s *stdfReading) add(p *stdf.Part) {
 	if s.n == s.room {
 		s.grow()
 	}
@@ -178,18 +228,7 @@ func (s *stdfReading) add(p *stdf.Part, results []stdf.Result, id []byte) {
 	s.site[i], s.head[i], s.pass[i] = int32(p.Site), int32(p.Head), p.Pass()
 	s.wafer[i], s.run[i] = int32(p.Wafer), int32(p.Run)
 	s.touch[i] = s.touchdown(p)
-	s.ids.add(p.Wafer, id)
-	for k := range results {
-		r := &results[k]
-		if int(r.Test) < len(s.plain) && r.Flag|stdf.TestFlag(r.Parm) == 0 {
-			// Most are so: a test of one column, and nothing to say of the result.
-			if c := s.plain[r.Test]; c != nil && uint32(r.Column) == 0 && r.Raw-r.Raw == 0 && c[i] != c[i] {
-				c[i] = float64(r.Raw)
-				continue
-			}
-		}
-		s.result(i, r)
-	}
+	s.ids.add(p.Wafer, p.RawID())
 }
 
 // touchdown counts: parts that were open at the same time were touched at once.
@@ -205,16 +244,19 @@ func (s *stdfReading) touchdown(p *stdf.Part) int32 {
 	return t.n
 }
 
-func (s *stdfReading) result(row int, r *stdf.Result) {
+// columnOf makes the column of a result, unless there is one.
+func (s *stdfReading) columnOf(r *stdf.Result) {
 	for len(s.of) <= int(r.Test) {
 		s.of = append(s.of, nil)
 	}
-	if r.Column < 0 {
-		return
-	}
 	for len(s.of[r.Test]) <= int(r.Column) {
 		s.of[r.Test] = append(s.of[r.Test], s.column(int(r.Test), len(s.of[r.Test])))
-		s.setPlain(int(r.Test))
+	}
+}
+
+func (s *stdfReading) result(row int, r *stdf.Result) {
+	if r.Column < 0 {
+		return
 	}
 	c := s.of[r.Test][r.Column]
 	if c < 0 {
@@ -246,79 +288,16 @@ func (s *stdfReading) result(row int, r *stdf.Result) {
 
 // column makes a column for a test; -1 for a functional one.
 func (s *stdfReading) column(test, place int) int32 {
-	t := s.known[test]
+	t := s.parts.Tests()[test]
 	if t.Kind == stdf.KindFTR {
 		return -1
 	}
 	s.columns = append(s.columns, stdfColumn{test: t, place: place})
-	s.values = append(s.values, largerNaN(nil, s.room))
+	v := larger[float64](nil, s.room)
+	fillNaN(v[:s.n])
+	s.values = append(s.values, v)
 	return int32(len(s.columns) - 1)
 }
 
 // cellInvalid is a result that the tester flags as not to be used.
 const cellInvalid status = cellBad + 1
-
-// partIDs keeps PART_ID, but for those that merely count the parts of the file
-// or of the wafer: millions of different texts that say nothing.
-type partIDs struct {
-	n       int
-	places  []int32 // of each part within its wafer, while ids may count those
-	onWafer []int32 // parts so far, by wafer
-	other   [2]bool // some id is no count of the file's, of the wafer's parts
-	text    globalText
-	codes   []int32 // nil as long as ids count
-}
-
-// plainCount reads a count as one writes it: digits, no zero in front.
-func plainCount(b []byte) (n int, ok bool) {
-	if len(b) == 0 || len(b) > 18 || b[0] == '0' {
-		return 0, false
-	}
-	neg := b[0] == '-' // of no use, and yet a number
-	if neg {
-		b = b[1:]
-	}
-	for _, c := range b {
-		if c-'0' > 9 {
-			return 0, false
-		}
-		n = 10*n + int(c-'0')
-	}
-	if neg {
-		n = -n
-	}
-	return n, len(b) > 0
-}
-
-func (d *partIDs) add(wafer int, raw []byte) {
-	for len(d.onWafer) <= wafer {
-		d.onWafer = append(d.onWafer, 0)
-	}
-	d.n++
-	d.onWafer[wafer]++
-	place := d.onWafer[wafer]
-	if d.codes == nil {
-		k, plain := plainCount(raw)
-		wereFile := !d.other[0]
-		d.other[0] = d.other[0] || !plain || k != d.n
-		d.other[1] = d.other[1] || !plain || k != int(place)
-		if !d.other[0] || !d.other[1] {
-			d.places = append(d.places, place)
-			return
-		}
-		// No counts after all; those passed over are known.
-		d.codes = make([]int32, 0, d.n)
-		for i, k := range d.places {
-			if wereFile {
-				k = int32(i + 1)
-			}
-			d.codes = append(d.codes, d.text.code(strconv.Itoa(int(k))))
-		}
-		d.places = nil
-	}
-	code := int32(-1)
-	if id := stdf.Text(raw); id != "" {
-		code = d.text.code(id)
-	}
-	d.codes = append(d.codes, code)
-}

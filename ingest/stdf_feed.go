@@ -3,14 +3,14 @@ package ingest
 import (
 	"errors"
 	"io"
-
-	"kneepoint/ingest/stdf"
 )
 
-// A log of a tester is read in three steps at once, each in a goroutine: bytes are
-// read and hashed, records are put together to parts, and parts are put into
-// columns. Each step takes what the one before gives in its order, so that the
-// result is the same on any number of cores.
+// A log of a tester is read in two steps at once, each in a goroutine: bytes are
+// read and hashed, and records are put together to parts and these into columns.
+// The second takes the bytes in their order, so that the result is the same on any
+// number of cores. (A third for the columns cost more than it gained: what one core
+// has just written is dear to read on another. Turning finished rows into decimals
+// is left to one all the same, as the first step waits much of the time.)
 
 // readAhead reads a stream to its end whether or not it is all wanted, as the hash
 // is of all of it.
@@ -111,75 +111,4 @@ func (r *readAhead) close() {
 	}
 	close(r.stop)
 	<-r.ended
-}
-
-// partBatch is some parts with what belongs to them, which in a stdf.Part holds
-// until the next only.
-type partBatch struct {
-	parts              []stdf.Part
-	results            []stdf.Result
-	ids                []byte
-	resultsEnd, idsEnd []int // by part
-	tests              []*stdf.Test
-	at                 int64
-}
-
-// partFeed puts parts together in a goroutine of its own.
-type partFeed struct {
-	full   chan *partBatch
-	spare  chan *partBatch
-	stop   chan struct{}
-	failed any // what it panicked with
-}
-
-const (
-	batchParts   = 256
-	batchResults = 64 << 10 // a part may have very many
-	batchCount   = 4
-)
-
-func (s *stdfReading) feed(from *readAhead) *partFeed {
-	f := &partFeed{full: make(chan *partBatch, batchCount), spare: make(chan *partBatch, batchCount), stop: make(chan struct{})}
-	for range batchCount {
-		f.spare <- &partBatch{}
-	}
-	go func() {
-		defer close(f.full)
-		defer func() { f.failed = recover() }()
-		for more := true; more; {
-			var b *partBatch
-			select {
-			case b = <-f.spare:
-			case <-f.stop:
-				return
-			}
-			*b = partBatch{parts: b.parts[:0], results: b.results[:0], ids: b.ids[:0], resultsEnd: b.resultsEnd[:0], idsEnd: b.idsEnd[:0]}
-			for more = true; len(b.parts) < batchParts && len(b.results) < batchResults; {
-				if more = s.parts.Scan(); !more {
-					break
-				}
-				b.add(s.parts.Part())
-			}
-			b.tests, b.at = s.parts.Tests(), s.parts.Reader().Position()
-			if s.in.packed != "" {
-				b.at = from.taken
-			}
-			f.full <- b
-		}
-	}()
-	return f
-}
-
-func (b *partBatch) add(p *stdf.Part) {
-	b.parts = append(b.parts, *p)
-	b.results = append(b.results, p.Results...)
-	b.ids = append(b.ids, p.RawID()...)
-	b.resultsEnd, b.idsEnd = append(b.resultsEnd, len(b.results)), append(b.idsEnd, len(b.ids))
-}
-
-// close ends the feed where it is, and waits for it.
-func (f *partFeed) close() {
-	close(f.stop)
-	for range f.full {
-	}
 }

@@ -290,6 +290,7 @@ func (s *stdfReading) nameTests(l *layout) {
 
 // tests turns results into values and describes the tests.
 func (s *stdfReading) tests(l *layout, c *chunk, sch *schema) {
+	s.converting.Wait()
 	var wg sync.WaitGroup
 	slots := make(chan []float64)
 	for range 4 {
@@ -303,7 +304,7 @@ func (s *stdfReading) tests(l *layout, c *chunk, sch *schema) {
 	var texts []string
 	for i := range s.columns {
 		col := &s.columns[i]
-		slots <- s.values[i][:s.n]
+		slots <- s.values[i][s.converted:s.n]
 		lim := col.test.Limits[col.test.Default]
 		t := testColumn{name: col.name, number: numberOf(col.test.Number), field: len(l.fields),
 			lower: stdf.Decimal(lim.Lower), upper: stdf.Decimal(lim.Upper), unitText: lim.Units}

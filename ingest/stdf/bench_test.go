@@ -80,25 +80,35 @@ func BenchmarkReader(b *testing.B) {
 func BenchmarkParts(b *testing.B) {
 	for _, form := range benchForms {
 		file := benchFile(b, form.m)
-		b.Run(form.name, func(b *testing.B) {
-			b.SetBytes(int64(len(file)))
-			b.ReportAllocs()
-			cpu := cpuTime()
-			for b.Loop() {
-				p := NewParts(NewReader(bytes.NewReader(file)))
-				sum := 0.0
-				for p.Scan() {
-					part := p.Part()
-					for i := range part.Results {
-						sum += part.Results[i].Value()
+		for _, compact := range []bool{false, true} {
+			name := form.name
+			if compact {
+				name += "-compact"
+			}
+			b.Run(name, func(b *testing.B) {
+				b.SetBytes(int64(len(file)))
+				b.ReportAllocs()
+				cpu := cpuTime()
+				for b.Loop() {
+					p := NewParts(NewReader(bytes.NewReader(file)))
+					p.Compact = compact
+					sum := 0.0
+					for p.Scan() {
+						part := p.Part()
+						for i := range part.Plain {
+							sum += float64(part.Plain[i].Raw)
+						}
+						for i := range part.Results {
+							sum += part.Results[i].Value()
+						}
+					}
+					if p.Err() != nil || len(p.Damages()) > 0 || sum == 0 {
+						b.Fatal(p.Err(), p.Damages())
 					}
 				}
-				if p.Err() != nil || len(p.Damages()) > 0 || sum == 0 {
-					b.Fatal(p.Err(), p.Damages())
-				}
-			}
-			reportCPU(b, cpu, len(file))
-		})
+				reportCPU(b, cpu, len(file))
+			})
+		}
 	}
 }
 

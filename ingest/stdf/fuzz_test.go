@@ -76,6 +76,7 @@ func FuzzReader(f *testing.F) {
 		if first != again {
 			t.Fatalf("served in pieces it reads\n%s\nand whole\n%s", again, first)
 		}
+		sameEachWay(t, "fuzzed", file)
 		for _, order := range []Order{LittleEndian, BigEndian} {
 			fuzzRewrite(t, order, records)
 		}

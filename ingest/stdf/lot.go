@@ -53,6 +53,7 @@ func (p *Parts) lot(rec Record) {
 // mir opens a run. One that follows another with nothing in between replaces
 // it: some programs write the MIR again when the set-up is corrected.
 func (p *Parts) mir(m *MIR) {
+	p.stop()
 	if n := len(p.runs); n > 0 {
 		last := p.runs[n-1]
 		if last.Parts == 0 && len(last.Wafers) == 0 && last.MRR == nil {

@@ -30,17 +30,26 @@ type Parts struct {
 	// it passes, for what Parts does not keep (DTR, GDR, ATR ...).
 	Watch func(Record)
 
+	// Compact, when set before the first Scan, leaves the results of parts that
+	// go by a program in Part.Plain: most of a file, and quicker so.
+	Compact bool
+
 	r       *Reader
 	part    Part
 	heads   [256]*[256]*slot
 	open    []*slot // every slot made, in the order made
 	last    *slot   // of the last parametric result
+	program *program
+	learned int64    // programs so far
+	moved   int64    // of the Reader, seen here
+	results []Result // of the part, unless they are in its slot
 	runs    []*Run
 	wafers  []*Wafer
 	onHead  [256]*Wafer
 	inDoubt [256]bool // the wafer on a head may have ended in a gap
 	pins    map[uint16]*PMR
 	number  int64
+	careful bool  // keep the quick ways out
 	gaps    int64 // of the Reader, seen here
 	closed  bool
 
@@ -64,6 +73,13 @@ type Part struct {
 	Results    []Result
 	HasPIR     bool
 
+	// Plain are the first results of the part, those before Results, when
+	// Parts.Compact is set; Plain[i] is of test Program[i]. No test is twice in a
+	// Program, and all its tests have one column. Parts that share a program have
+	// the same slice.
+	Plain   []Reading
+	Program []int32
+
 	// Damaged says that bytes were skipped, or an odd record was met, while the
 	// part was open: results may be missing. Skipped bytes can hide the end of
 	// one part and the start of the next: the results before them are left out,
@@ -71,7 +87,11 @@ type Part struct {
 	Damaged bool
 
 	id, text []byte
+	program  *program
 }
+
+// PlainResult is Plain[i] as a result.
+func (p *Part) PlainResult(i int) Result { return p.program.result(i, p.Plain[i]) }
 
 // ID is PART_ID.
 func (p *Part) ID() string { return text(p.id) }
@@ -121,11 +141,20 @@ func (r *Result) Value() float64 {
 // slot is what is going on at one site.
 type slot struct {
 	head, site uint8
-	opened     int64 // as in Part
+	place      uint16 // of these as they stand in a record, low byte first
+	opened     int64  // as in Part
 	hasPIR     bool
 	isOpen     bool // has a PIR or results that no PRR has claimed
 	damaged    bool
-	results    []Result
+	plain      []Reading // the first results, by the program
+	program    *program  // nil none
+	steps      []step    // of the program
+	due        int       // step whose reading is due; -1 none
+	results    []Result  // the others
+
+	after *slot // that had the next result, the last time
+	run   *Run
+	site1 *Site // of that run
 }
 
 // NewParts reads from r, which must be at the start of its stream.
@@ -189,17 +218,28 @@ func (p *Parts) ColumnName(t *Test, column int) string {
 
 // Scan goes to the next part; false at the end of what can be read.
 func (p *Parts) Scan() bool {
-	for p.r.Scan() {
+	for {
+		if p.quick() {
+			return true
+		}
+		if !p.r.Scan() {
+			break
+		}
 		if p.gaps != p.r.gaps {
 			p.gap()
 		}
 		if p.r.oddAt == p.r.at && p.r.at > 0 {
 			p.odd(p.r.rec)
 		}
+		if p.moved != p.r.moved {
+			p.stop()
+		}
 		switch p.r.kind {
 		case KindPTR:
 			p.parametric(&p.r.ptr)
-			p.r.plainRun(p)
+			if !p.careful {
+				p.r.plainRun(p)
+			}
 		case KindPIR:
 			p.begin(&p.r.pir)
 		case KindPRR:
@@ -234,7 +274,7 @@ func (p *Parts) slot(head, site uint8) *slot {
 	}
 	s := h[site]
 	if s == nil {
-		s = &slot{head: head, site: site}
+		s = &slot{head: head, site: site, place: uint16(head) | uint16(site)<<8, due: -1}
 		h[site] = s
 		p.open = append(p.open, s)
 	}
@@ -245,7 +285,9 @@ func (p *Parts) slot(head, site uint8) *slot {
 func (p *Parts) begin(m *PIR) {
 	s := p.slot(m.Head, m.Site)
 	p.abandon(s, "the next part of its site begins")
-	*s = slot{head: s.head, site: s.site, opened: p.r.at, hasPIR: true, isOpen: true, results: s.results[:0]}
+	s.opened, s.hasPIR, s.isOpen, s.damaged = p.r.at, true, true, false
+	s.drop()
+	p.follow(s)
 }
 
 // abandon gives up what is open at a site: a PRR will not come.
@@ -253,7 +295,7 @@ func (p *Parts) abandon(s *slot, why string) {
 	if !s.isOpen {
 		return
 	}
-	n := len(s.results)
+	n := s.number()
 	p.orphans += int64(n)
 	kind := DamageNoPRR
 	if !s.hasPIR {
@@ -268,7 +310,8 @@ func (p *Parts) abandon(s *slot, why string) {
 		}
 		d.list = append(d.list, Damage{s.opened, kind, 0, text})
 	}
-	s.isOpen, s.damaged, s.results = false, false, s.results[:0]
+	s.isOpen, s.damaged = false, false
+	s.drop()
 }
 
 // at gives the slot that a result belongs to. One without a PIR is kept: its
@@ -278,7 +321,8 @@ func (p *Parts) at(head, site uint8) *slot {
 	if s.isOpen {
 		return s
 	}
-	*s = slot{head: head, site: site, opened: p.r.at, isOpen: true, results: s.results[:0]}
+	s.opened, s.hasPIR, s.isOpen, s.damaged = p.r.at, false, true, false
+	s.drop()
 	return s
 }
 
@@ -291,7 +335,10 @@ func (p *Parts) parametric(m *PTR) {
 		s = p.at(m.Head, m.Site)
 		p.last = s
 	}
-	s.results = append(s.results, Result{int32(m.Test.Index), m.Result, int16(m.which), 0, m.Flag, m.Parm})
+	if p.expected(s, m) {
+		return
+	}
+	s.add(Result{int32(m.Test.Index), m.Result, int16(m.which), 0, m.Flag, m.Parm})
 }
 
 func (p *Parts) isOpen(head, site uint8) bool {
@@ -305,10 +352,10 @@ func (p *Parts) multiple(m *MPR) {
 	}
 	s := p.at(m.Head, m.Site)
 	for i, v := range m.Results {
-		s.results = append(s.results, Result{int32(m.Test.Index), v, int16(m.which), int16(i), m.Flag, m.Parm})
+		s.add(Result{int32(m.Test.Index), v, int16(m.which), int16(i), m.Flag, m.Parm})
 	}
 	if len(m.Results) == 0 {
-		s.results = append(s.results, Result{int32(m.Test.Index), none, int16(m.which), -1, m.Flag, m.Parm})
+		s.add(Result{int32(m.Test.Index), none, int16(m.which), -1, m.Flag, m.Parm})
 	}
 }
 
@@ -324,7 +371,7 @@ func (p *Parts) functional(m *FTR) {
 	case pass:
 		v = 1
 	}
-	s.results = append(s.results, Result{int32(m.Test.Index), v, int16(m.Test.Default), 0, m.Flag, 0})
+	s.add(Result{int32(m.Test.Index), v, int16(m.Test.Default), 0, m.Flag, 0})
 }
 
 // end closes a part.
@@ -334,12 +381,12 @@ func (p *Parts) end(m *PRR) {
 	w := p.wafer(m.Head)
 	p.number++
 	part := &p.part
-	*part = Part{
-		Run: run.Index, Wafer: w.Index, WaferID: w.ID, Number: p.number, Offset: p.r.at, Opened: -1,
-		Head: m.Head, Site: m.Site, HardBin: Missing, SoftBin: Missing, X: Missing, Y: Missing,
-		Flag: m.Flag, Tests: m.Tests, TestTime: m.TestTime, Damaged: s.damaged,
-		id: m.PartID, text: m.PartText,
-	}
+	// Field by field, as a part is too large to be made and copied each time.
+	part.Run, part.Wafer, part.WaferID, part.Number, part.Offset, part.Opened = run.Index, w.Index, w.ID, p.number, p.r.at, -1
+	part.Head, part.Site, part.HardBin, part.SoftBin, part.X, part.Y = m.Head, m.Site, Missing, Missing, Missing, Missing
+	part.Flag, part.Tests, part.TestTime, part.Damaged, part.HasPIR = m.Flag, m.Tests, m.TestTime, s.damaged, false
+	part.id, part.text = m.PartID, m.PartText
+	part.Results, part.Plain, part.Program = nil, nil, nil
 	if m.HardBin != NoBin {
 		part.HardBin = int32(m.HardBin)
 	}
@@ -353,25 +400,46 @@ func (p *Parts) end(m *PRR) {
 		part.Y = int32(m.Y)
 	}
 	if s.isOpen {
-		part.Opened, part.HasPIR, part.Results = s.opened, s.hasPIR, s.results
+		part.Opened, part.HasPIR = s.opened, s.hasPIR
+		p.give(part, s)
 	}
 	if !part.HasPIR {
 		p.r.damages.add(p.r.at, DamageNoPIR, 0, "the part that ends here on head %d, site %d has no PIR; it is kept with the %s before it",
-			m.Head, m.Site, plural(len(part.Results), "result"))
+			m.Head, m.Site, plural(s.number(), "result"))
 	}
 	if part.Damaged {
 		p.r.damages.add(p.r.at, DamageGap, 0, "the part that ends here on head %d, site %d lies over a damaged place; what is left of it is %s",
-			m.Head, m.Site, plural(len(part.Results), "result"))
+			m.Head, m.Site, plural(s.number(), "result"))
 	}
-	// Part.Results is a view of the slot's, good until the next Scan.
-	s.isOpen, s.damaged, s.results = false, false, s.results[:0]
-	run.count(part)
+	// What the part holds are views of the slot's, good until the next Scan.
+	s.isOpen, s.damaged = false, false
+	s.drop()
+	if s.run != run {
+		s.run, s.site1 = run, run.site(m.Head, m.Site)
+	}
+	run.count(part, s.site1)
 	w.Parts++
 	if part.Pass() == 1 {
 		w.Good++
 	}
 	if m.Flag.Retest() {
 		w.Retested++
+	}
+}
+
+// give gives a part that ends its results.
+func (p *Parts) give(part *Part, s *slot) {
+	if len(s.results) > 0 {
+		p.learn(s)
+	}
+	switch {
+	case len(s.plain) == 0:
+		part.Results = s.results
+	case p.Compact:
+		part.Plain, part.Program, part.program, part.Results = s.plain, s.program.tests, s.program, s.results
+	default:
+		p.results = s.all(p.results[:0])
+		part.Results = p.results
 	}
 }
 
@@ -401,8 +469,8 @@ func (p *Parts) gap() {
 		if s.isOpen {
 			s.damaged = true
 			if p.r.torn {
-				p.orphans += int64(len(s.results))
-				s.results = s.results[:0]
+				p.orphans += int64(s.number())
+				s.drop()
 			}
 		}
 	}

@@ -39,7 +39,8 @@ type Reader struct {
 
 	c       coder // byte order and interned texts
 	tests   registry
-	run     int // MIRs so far
+	run     int   // MIRs so far
+	moved   int64 // changes of tests' defaults
 	rec     Record
 	kind    Kind
 	at      int64 // offset of rec

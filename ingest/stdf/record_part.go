@@ -152,6 +152,10 @@ func (m *PRR) read(c *coder, b []byte) fit {
 	m.X = int16(u2(b[9:], c.big))
 	m.Y = int16(u2(b[11:], c.big))
 	m.TestTime = u4(b[13:], c.big)
+	if len(b) == 17 {
+		m.PartID, m.PartText, m.Fix = nil, nil, nil
+		return exact
+	}
 	var ok bool
 	b = b[17:]
 	if m.PartID, b, ok = cutText(b); !ok {

@@ -77,13 +77,15 @@ func (r *Reader) shape(k Kind) int {
 	default:
 		return r.c.fields + 1
 	}
-	n := 1
-	for _, b := range [][]byte{r.prr.PartID, r.prr.PartText, r.prr.Fix} {
-		if b != nil {
-			n++
-		}
+	switch m := &r.prr; {
+	case m.Fix != nil:
+		return 4
+	case m.PartText != nil:
+		return 3
+	case m.PartID != nil:
+		return 2
 	}
-	return n
+	return 1
 }
 
 // odd handles a record whose length is right, but whose fields do not fit it: a

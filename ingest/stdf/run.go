@@ -26,8 +26,8 @@ type Run struct {
 	Retested    int64 // PRRs that stand in for an earlier part
 
 	hard, soft map[uint16]*Bin
-	lastHard   *Bin // that of the last part: most have the same
-	lastSoft   *Bin
+	metHard    [16]*Bin // of the last parts, by the low bits of their numbers
+	metSoft    [16]*Bin
 	sites      map[uint16]*Site
 	total      *PCR // over all sites
 }
@@ -123,10 +123,9 @@ func (r *Run) site(head, site uint8) *Site {
 	return s
 }
 
-// count counts a part.
-func (r *Run) count(p *Part) {
+// count counts a part of a site.
+func (r *Run) count(p *Part, s *Site) {
 	good, known := p.Flag.Pass()
-	s := r.site(p.Head, p.Site)
 	r.Parts++
 	s.Parts++
 	if good && known {
@@ -138,16 +137,20 @@ func (r *Run) count(p *Part) {
 		s.Retested++
 	}
 	if n := p.HardBin; n != Missing {
-		if r.lastHard == nil || int32(r.lastHard.Number) != n {
-			r.lastHard = r.bin(r.hard, uint16(n))
+		b := r.metHard[n%16]
+		if b == nil || int32(b.Number) != n {
+			b = r.bin(r.hard, uint16(n))
+			r.metHard[n%16] = b
 		}
-		r.lastHard.Parts++
+		b.Parts++
 	}
 	if n := p.SoftBin; n != Missing {
-		if r.lastSoft == nil || int32(r.lastSoft.Number) != n {
-			r.lastSoft = r.bin(r.soft, uint16(n))
+		b := r.metSoft[n%16]
+		if b == nil || int32(b.Number) != n {
+			b = r.bin(r.soft, uint16(n))
+			r.metSoft[n%16] = b
 		}
-		r.lastSoft.Parts++
+		b.Parts++
 	}
 }
 

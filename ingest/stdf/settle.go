@@ -105,13 +105,16 @@ func (r *Reader) plainRun(p *Parts) {
 			}
 			p.last = s
 		}
+		if s.due >= 0 {
+			return // see Parts.quick
+		}
 		r.tests.last = t
 		r.at = r.offset()
 		r.pos += whole
 		r.counts[KindPTR]++
 		t.size = h.size
 		t.Records++
-		s.results = append(s.results, Result{int32(t.Index), math.Float32frombits(u4(body[8:], r.c.big)), int16(t.Default), 0, flag, ParmFlag(body[7])})
+		s.add(Result{int32(t.Index), math.Float32frombits(u4(body[8:], r.c.big)), int16(t.Default), 0, flag, ParmFlag(body[7])})
 	}
 }
 
@@ -170,7 +173,12 @@ func (r *Reader) settle(t *Test, own *Limits) (*Limits, int) {
 		r.scratch.take(own, own.has)
 		return &r.scratch, -1
 	}
-	return t.settle(own, r.run, &r.scratch)
+	was := t.Default
+	l, which := t.settle(own, r.run, &r.scratch)
+	if t.Default != was {
+		r.moved++
+	}
+	return l, which
 }
 
 func (t *Test) override(which int) {

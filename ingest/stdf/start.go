@@ -2,6 +2,7 @@ package stdf
 
 import (
 	"bytes"
+	"errors"
 	"fmt"
 	"io"
 	"math"
@@ -160,7 +161,12 @@ func (r *Reader) findStart() bool {
 }
 
 func (r *Reader) noSTDF(text string) bool {
-	if e := r.src.unpackErr; e != nil && r.base+int64(r.end) == 0 {
+	e := r.src.unpackErr
+	if errors.Is(e, zstd.ErrWindowSizeExceeded) {
+		return r.refuse(&FormatError{0, "the zstd data cannot be unpacked: their frame asks for a larger window than a file of this size has use for",
+			"pack it again with a smaller window, or unpack it if you trust it"})
+	}
+	if e != nil && r.base+int64(r.end) == 0 {
 		return r.refuse(&FormatError{0, fmt.Sprintf("the %s data cannot be unpacked (%v)", r.src.packed, e), "fetch the file again"})
 	}
 	return r.refuse(&FormatError{0, text, "give a file in STDF V4, plain or packed with gzip or zstd"})

@@ -38,6 +38,7 @@ type Test struct {
 	size     int    // of the body of its last PTR
 	seen     [2]*seen
 	tail     ptrTail
+	part     int64 // number of the last part whose tests were looked through; see Parts.steps
 }
 
 // ptrTail is what stood behind RESULT in a record that was judged by the defaults:

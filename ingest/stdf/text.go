@@ -1,6 +1,7 @@
 package stdf
 
 import (
+	"math"
 	"strconv"
 	"strings"
 	"time"
@@ -79,6 +80,9 @@ func Decimal(f float32) float64 {
 	if i := float32(int32(f)); i == f && i != 0 && i < 1<<24 && i > -1<<24 {
 		return float64(i)
 	}
+	if d, ok := fewDigits(f); ok {
+		return d
+	}
 	var buf [32]byte
 	d, err := strconv.ParseFloat(string(strconv.AppendFloat(buf[:0], float64(f), 'g', -1, 32)), 64)
 	if err != nil {
@@ -86,6 +90,39 @@ func Decimal(f float32) float64 {
 	}
 	return d
 }
+
+// fewDigits is Decimal where six or seven digits are enough, which they are for
+// what had no more when it was filed. Decimals of six digits stand further apart
+// than float32 anywhere, so that the nearest one is the shortest decimal that gives
+// f, if any of up to six digits does; if none does, the nearest of seven digits is,
+// if it gives f. Powers of ten up to 1e22 are exact, so the division rounds once.
+// Not ok within a millionth of where f ends, which is for the exact decimal to
+// decide.
+func fewDigits(f float32) (d float64, ok bool) {
+	v := float64(f)
+	a := math.Abs(v)
+	if !(a > 1e-15 && a < 1e6) {
+		return 0, false
+	}
+	exponent := int(math.Float32bits(f)>>23&0xff) - 127 // of two
+	k := 5 - exponent*1233>>12                          // 1233/4096 is the decimal logarithm of 2
+	if a*powersOfTen[k] >= 1e6 {
+		k--
+	}
+	for ; k < len(powersOfTen); k++ {
+		d = math.Copysign(math.Floor(a*powersOfTen[k]+0.5)/powersOfTen[k], v)
+		if float32(d) == f && float32(d+(d-v)*1e-6) == f {
+			return d, true
+		}
+		if a*powersOfTen[k] >= 1e6 {
+			break
+		}
+	}
+	return 0, false
+}
+
+var powersOfTen = [...]float64{1, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11,
+	1e12, 1e13, 1e14, 1e15, 1e16, 1e17, 1e18, 1e19, 1e20, 1e21, 1e22}
 
 // prefixes are the powers of ten that RES_SCAL and its like name. A scale s
 // means that a value in the base unit times 10^s is the number to show.

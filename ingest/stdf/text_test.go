@@ -2,6 +2,8 @@ package stdf
 
 import (
 	"math"
+	"math/rand/v2"
+	"strconv"
 	"testing"
 	"time"
 )
@@ -48,6 +50,37 @@ func TestDisplayUnit(t *testing.T) {
 	l := Limits{Units: "A", ResScale: 9}
 	if got := l.DisplayUnit(); got != "nA" {
 		t.Errorf("Limits.DisplayUnit is %q", got)
+	}
+}
+
+// The short way of Decimal gives what strconv gives, over all magnitudes and at the
+// steps of two and of ten.
+func TestDecimalIsShortest(t *testing.T) {
+	check := func(f float32) {
+		t.Helper()
+		want, err := strconv.ParseFloat(strconv.FormatFloat(float64(f), 'g', -1, 32), 64)
+		if err == nil && want == want && Decimal(f) != want {
+			t.Fatalf("Decimal(%x) is %.17g, strconv says %.17g", math.Float32bits(f), Decimal(f), want)
+		}
+	}
+	rnd := rand.New(rand.NewPCG(9, 4))
+	for range 200_000 {
+		check(math.Float32frombits(rnd.Uint32()))
+		check(float32(float64(rnd.IntN(20_000_000)-10_000_000) * math.Pow10(-rnd.IntN(24))))
+		check(float32(math.Pow(10, 40*rnd.Float64()-20)))
+	}
+	for e := -30.0; e < 30; e++ {
+		for _, base := range []float64{2, 10} {
+			f := float32(math.Pow(base, e))
+			for range 40 {
+				check(f)
+				f = math.Nextafter32(f, -1)
+			}
+			for range 80 {
+				check(-f)
+				f = math.Nextafter32(f, math.MaxFloat32)
+			}
+		}
 	}
 }
 
