@@ -41,6 +41,7 @@ type LotOverview struct {
 	Sites       []int32 // different test sites, sorted; empty when the file has none
 	Coordinates bool
 	X, Y        [2]int32 // smallest and largest die index, when there are coordinates
+	Geometry    Geometry // what the file says of the wafers
 	HardBins    []BinCount
 	Attributes  map[string]string
 	DieColumns  []string // text columns that differ within a wafer
@@ -56,7 +57,10 @@ type WaferOverview struct {
 }
 
 // BinCount is the number of dice in a hard bin.
-type BinCount struct{ Bin, Dice int }
+type BinCount struct {
+	Bin, Dice int
+	Name      string // in the file, "" when it has none
+}
 
 // TestOverview is one test in numbers; values are SI, NaN where there is none.
 type TestOverview struct {
@@ -101,7 +105,7 @@ func (f field) as() string {
 
 func (l *Lot) overview() LotOverview {
 	o := LotOverview{ID: l.id, Product: l.product, Dice: l.Len(), Coordinates: l.HasCoordinates(), Attributes: l.attributes,
-		DieColumns: l.DieAttributes(), Findings: l.findings[l.shared:]}
+		DieColumns: l.DieAttributes(), Geometry: l.Geometry(), Findings: l.findings[l.shared:]}
 	again := map[int32]bool{}
 	for _, r := range l.earlier.Of {
 		again[r] = true
@@ -115,7 +119,7 @@ func (l *Lot) overview() LotOverview {
 	}
 	slices.Sort(o.Sites)
 	for v, n := range countInts(l.HardBin()) {
-		o.HardBins = append(o.HardBins, BinCount{int(v), n})
+		o.HardBins = append(o.HardBins, BinCount{int(v), n, l.about.hardNames[int(v)]})
 	}
 	slices.SortFunc(o.HardBins, func(a, b BinCount) int { return a.Bin - b.Bin })
 	if o.Coordinates {

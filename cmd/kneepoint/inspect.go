@@ -2,6 +2,7 @@ package main
 
 import (
 	"bytes"
+	"cmp"
 	"fmt"
 	"io"
 	"math"
@@ -143,9 +144,16 @@ func writeWafers(w io.Writer, l ingest.LotOverview) {
 	if len(l.HardBins) > 0 {
 		var bins []string
 		for _, b := range l.HardBins {
-			bins = append(bins, fmt.Sprintf("%d (%s)", b.Bin, text.Thousands(b.Dice)))
+			name := ""
+			if b.Name != "" {
+				name = " " + b.Name
+			}
+			bins = append(bins, fmt.Sprintf("%d%s (%s)", b.Bin, text.Printable(name), text.Thousands(b.Dice)))
 		}
 		fmt.Fprintf(w, "  bins     %s\n", shortList(bins, 20))
+	}
+	if line := geometryLine(l.Geometry); line != "" {
+		fmt.Fprintf(w, "  geometry %s\n", line)
 	}
 	if len(l.Attributes) > 0 {
 		var parts []string
@@ -157,6 +165,30 @@ func writeWafers(w io.Writer, l ingest.LotOverview) {
 	if len(l.DieColumns) > 0 {
 		fmt.Fprintf(w, "  of dice  %s\n", text.Printable(shortList(l.DieColumns, 12)))
 	}
+}
+
+// geometryLine is what the file says of the wafers, "" when it says nothing.
+func geometryLine(g ingest.Geometry) string {
+	if !g.Known() {
+		return ""
+	}
+	var parts []string
+	if g.DiameterMM > 0 {
+		parts = append(parts, fmt.Sprintf("wafer %.4g mm", g.DiameterMM))
+	}
+	if g.DieWidthMM > 0 && g.DieHeightMM > 0 {
+		parts = append(parts, fmt.Sprintf("die %.4g x %.4g mm", g.DieWidthMM, g.DieHeightMM))
+	}
+	if g.Notch != "" {
+		parts = append(parts, "flat or notch "+g.Notch)
+	}
+	if g.XGrows != "" || g.YGrows != "" {
+		parts = append(parts, strings.TrimSpace(fmt.Sprintf("x grows %s, y grows %s", cmp.Or(g.XGrows, "?"), cmp.Or(g.YGrows, "?"))))
+	}
+	if g.CentreX != ingest.Missing && g.CentreY != ingest.Missing {
+		parts = append(parts, fmt.Sprintf("centre die %d, %d", g.CentreX, g.CentreY))
+	}
+	return strings.Join(parts, "; ")
 }
 
 // waferList names the wafers with their dice, once for all when they have as many.

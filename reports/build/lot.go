@@ -135,6 +135,8 @@ func (w *lotwork) binTable(kind string, column []int32) []reports.Bin {
 		r := reports.Bin{Kind: kind, Bin: int(b), Dice: dice[b], Share: share(dice[b], w.lot.Len()), Pass: 2*passing[b] > dice[b], Cumulative: reports.NaN}
 		if kind == "hard" {
 			r.Name = w.binName(b)
+		} else {
+			r.Name = w.lot.SoftBinNames()[int(b)]
 		}
 		out = append(out, r)
 	}
@@ -162,11 +164,12 @@ func (w *lotwork) binTable(kind string, column []int32) []reports.Bin {
 	return out
 }
 
+// binName is a hard bin's name in the product file, or else in the data file.
 func (w *lotwork) binName(bin int32) string {
-	if p := w.in.Product; p != nil {
+	if p := w.in.Product; p != nil && p.Bins.Names[int(bin)] != "" {
 		return p.Bins.Names[int(bin)]
 	}
-	return ""
+	return w.lot.HardBinNames()[int(bin)]
 }
 
 func sortedBins(dice map[int32]int) []int32 {
@@ -206,12 +209,27 @@ func (w *lotwork) findGeometry() {
 func (w *lotwork) inMM() bool { return w.geo.Unit == "mm" }
 
 func (w *lotwork) known() wafermap.Known {
-	p := w.in.Product
-	if p == nil {
-		return wafermap.Known{}
+	var k wafermap.Known
+	if p := w.in.Product; p != nil {
+		k = wafermap.Known{DiameterMM: p.Wafer.DiameterMM, DieWidthMM: p.Wafer.DieWidthMM, DieHeightMM: p.Wafer.DieHeightMM,
+			EdgeExclusionMM: p.Wafer.EdgeExclusionMM, Notch: p.Wafer.Notch}
 	}
-	return wafermap.Known{DiameterMM: p.Wafer.DiameterMM, DieWidthMM: p.Wafer.DieWidthMM, DieHeightMM: p.Wafer.DieHeightMM,
-		EdgeExclusionMM: p.Wafer.EdgeExclusionMM, Notch: p.Wafer.Notch}
+	// What the product file leaves open, the data file may say.
+	g := w.lot.Geometry()
+	k.DiameterMM, k.DieWidthMM, k.DieHeightMM = or(k.DiameterMM, g.DiameterMM), or(k.DieWidthMM, g.DieWidthMM), or(k.DieHeightMM, g.DieHeightMM)
+	if k.Notch == "" {
+		k.Notch = g.Notch
+	}
+	k.YDown = g.YGrows == "down"
+	return k
+}
+
+// or is a, or b where a is not given.
+func or(a, b float64) float64 {
+	if a > 0 || !(b > 0) {
+		return a
+	}
+	return b
 }
 
 // zones fills in the yield of rings of equal area and of sectors, over all wafers.
