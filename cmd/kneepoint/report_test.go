@@ -4,10 +4,12 @@ import (
 	"bytes"
 	"encoding/json"
 	"os"
+	"strings"
 	"testing"
 
 	"github.com/santhosh-tekuri/jsonschema/v6"
 
+	"kneepoint/ingest/synth"
 	"kneepoint/reports"
 )
 
@@ -47,4 +49,20 @@ func parseReport(t *testing.T, data []byte) *reports.Report {
 		t.Fatal(err)
 	}
 	return &r
+}
+
+// An STDF file that says how large wafers and dice are is mapped without a product
+// file.
+func TestGeometryOfTheFile(t *testing.T) {
+	t.Chdir(t.TempDir())
+	os.WriteFile("product.yaml", []byte(synth.DemoProductYAML), 0o644)
+	kneepoint(t, "synth", "-p", "product.yaml", "--cause", "edge-dice", "--wafers", "3", "--format", "stdf", "-o", ".")
+	if out := kneepoint(t, "inspect", "MADE-UP-1.stdf"); !strings.Contains(out, "geometry wafer 100 mm; die 2.2 x 2.2 mm; flat or notch down") {
+		t.Errorf("inspect says nothing of the wafers' size:\n%s", out)
+	}
+	kneepoint(t, "triage", "MADE-UP-1.stdf", "-o", "out")
+	g := readReport(t, "out/MADE-UP-1.json").Geometry
+	if g.DiameterMM != 100 || g.DieWidthMM != 2.2 {
+		t.Errorf("the report has wafers of %g mm and dice of %g mm, the file 100 and 2.2", g.DiameterMM, g.DieWidthMM)
+	}
 }
