@@ -102,6 +102,15 @@ func (t *fit) rate(m *mixture, c, skip int) float64 {
 	return min(p, surestFail)
 }
 
+// rates are those of all kinds of dice.
+func (t *fit) rates(m *mixture, skip int) []float64 {
+	p := make([]float64, len(m.n))
+	for c := range p {
+		p[c] = t.rate(m, c, skip)
+	}
+	return p
+}
+
 func (t *fit) judge(m *mixture) {
 	t.likelihood = 0
 	for c := range m.n {
@@ -131,37 +140,71 @@ func (f *field) fitMixture(m *mixture) *fit {
 	return t
 }
 
+// products are the rates of all kinds of dice as the factors have them, however sure.
+func (t *fit) products(m *mixture, into []float64) {
+	for c := range into {
+		into[c] = t.base
+	}
+	for k := range t.level {
+		multiply(into, m.depth[k], &t.level[k])
+	}
+}
+
+// multiply multiplies each kind's value by the factor of its depth.
+func multiply(value []float64, depth []uint8, factor *[layers]float64) {
+	var padded [16]float64 // an index of four bits needs no check
+	copy(padded[:], factor[:])
+	for c, d := range depth[:len(value)] {
+		value[c] *= padded[d&15]
+	}
+}
+
+// perLayer sums n over the dice of each depth.
+func perLayer(n []float64, depth []uint8) (sum [layers]float64) {
+	for c, d := range depth {
+		sum[d] += n[c]
+	}
+	return sum
+}
+
 func (f *field) fitProduct(m *mixture) *fit {
 	t := &fit{base: f.mean, level: make([][layers]float64, len(m.depth))}
+	fails := make([][layers]float64, len(m.depth))
 	for k := range t.level {
 		for d := range t.level[k] {
 			t.level[k][d] = 1
 		}
+		fails[k] = perLayer(m.o, m.depth[k])
 	}
+	rate := make([]float64, len(m.n))
 	for range refitRounds {
+		t.products(m, rate) // anew, so that rounding does not pile up
 		moved := 0.0
 		for k := range t.level {
-			var o, e [layers]float64
-			level := &t.level[k]
-			for c, d := range m.depth[k] {
-				e[d] += t.rate(m, c, -1) * m.n[c]
-				o[d] += m.o[c]
+			var e [16]float64
+			depth := m.depth[k][:len(rate)]
+			for c, n := range m.n[:len(rate)] {
+				e[depth[c]&15] += min(rate[c], surestFail) * n
 			}
-			old := *level
+			level := &t.level[k]
+			old, base := *level, t.base
 			for d := range level {
 				e[d] /= level[d]
 			}
-			*level = falling(o, e)
+			*level = falling(fails[k], [layers]float64(e[:layers]))
 			last := level[layers-1]
+			t.base = min(t.base*last, surestFail)
+			var change [layers]float64
 			for d := range level {
 				level[d] = min(level[d]/last, 1e4)
 				moved = max(moved, math.Abs(level[d]-old[d])/old[d])
+				change[d] = t.base / base * level[d] / old[d]
 			}
-			t.base = min(t.base*last, surestFail)
+			multiply(rate, depth, &change)
 		}
 		sum := 0.0
-		for c := range m.n {
-			sum += t.rate(m, c, -1) * m.n[c]
+		for c, n := range m.n {
+			sum += min(rate[c], surestFail) * n
 		}
 		if scale := f.total.o / sum; sum > 0 {
 			t.base = min(t.base*scale, surestFail)
@@ -175,49 +218,40 @@ func (f *field) fitProduct(m *mixture) *fit {
 	return t
 }
 
+// chainFit is the fitting of causes that act one after the other. The chance to pass all of
+// them is a product, which is kept up as levels change: no exponential a kind of die.
+type chainFit struct {
+	*fit
+	m      *mixture
+	usual  float64           // -log(1-rate) of the wafer
+	pass   []float64         // chance by kind of die
+	dice   [][layers]float64 // by pattern and depth; of all dice, at depth 0, at the end
+	passed [][layers]float64 // of these, dice that do
+}
+
 // fitChain steps by Fisher scoring in h = -log(1-rate), to which patterns add.
 func (f *field) fitChain(m *mixture) *fit {
 	h := -math.Log1p(-min(f.mean, surestFail))
-	t := &fit{chained: true, base: -math.Expm1(-0.8 * h), level: make([][layers]float64, len(m.depth))}
+	t := chainFit{m: m, usual: h, pass: make([]float64, len(m.n))}
+	t.fit = &fit{chained: true, base: -math.Expm1(-0.8 * h), level: make([][layers]float64, len(m.depth))}
+	good := make([]float64, len(m.n))
+	var all, allGood [layers]float64
+	for c, n := range m.n {
+		good[c] = n - m.o[c]
+		all[0] += n
+		allGood[0] += good[c]
+	}
+	for _, depth := range m.depth {
+		t.dice, t.passed = append(t.dice, perLayer(m.n, depth)), append(t.passed, perLayer(good, depth))
+	}
+	t.dice, t.passed = append(t.dice, all), append(t.passed, allGood)
 	var best *fit
 	for range refitRounds / 2 {
-		moved := 0.0
-		for k := -1; k < len(t.level); k++ {
-			var score, weight [layers]float64
-			for c := range m.n {
-				d := uint8(0)
-				if k >= 0 {
-					d = m.depth[k][c]
-				}
-				p := t.rate(m, c, -1)
-				score[d] += (m.o[c] - m.n[c]*p) / p
-				weight[d] += m.n[c] * (1 - p) / p
-			}
-			if k < 0 {
-				h := -math.Log1p(-t.base)
-				next := min(max(h+score[0]/max(weight[0], 1e-9), 0.3*h, 1e-7), 4)
-				moved = max(moved, math.Abs(next-h)/h)
-				t.base = -math.Expm1(-next)
-				continue
-			}
-			level := &t.level[k]
-			var target [layers]float64
-			for d := range layers - 1 {
-				target[d] = max(0, level[d]*weight[d]+score[d])
-			}
-			target[layers-1], weight[layers-1] = 0, 0
-			next := falling(target, weight)
-			next[layers-1] = 0
-			for d := range layers - 1 {
-				if weight[d] == 0 && d > 0 {
-					next[d] = next[d-1]
-				}
-				next[d] = min(next[d], 4)
-				moved = max(moved, math.Abs(next[d]-level[d])/(h+level[d]))
-			}
-			*level = next
+		moved := t.stepBase()
+		for k := range t.level {
+			moved = max(moved, t.step(k))
 		}
-		t.judge(m)
+		t.likely()
 		if best == nil || t.likelihood > best.likelihood {
 			best = &fit{true, t.base, append([][layers]float64(nil), t.level...), t.likelihood}
 		}
@@ -228,14 +262,101 @@ func (f *field) fitChain(m *mixture) *fit {
 	return best
 }
 
+// stepBase moves the background and says by how much. It starts the chances to pass anew,
+// so that rounding does not pile up.
+func (t *chainFit) stepBase() float64 {
+	for c := range t.pass {
+		t.pass[c] = 1 - t.base
+	}
+	for k := range t.level {
+		var factor [layers]float64
+		for d, h := range t.level[k] {
+			factor[d] = math.Exp(-h)
+		}
+		multiply(t.pass, t.m.depth[k], &factor)
+	}
+	score, weight := 0.0, 0.0
+	for c, n := range t.m.n {
+		p := 1 / min(1-t.pass[c], surestFail)
+		score += t.m.o[c] * p
+		weight += n * p
+	}
+	dice := t.dice[len(t.level)][0]
+	h := -math.Log1p(-t.base)
+	next := min(max(h+(score-dice)/max(weight-dice, 1e-9), 0.3*h, 1e-7), 4)
+	t.base = -math.Expm1(-next)
+	factor := math.Exp(h - next)
+	for c := range t.pass {
+		t.pass[c] *= factor
+	}
+	return math.Abs(next-h) / h
+}
+
+// step moves the levels of a pattern and says by how much.
+func (t *chainFit) step(k int) float64 {
+	var score, weight [16]float64
+	depth := t.m.depth[k][:len(t.pass)]
+	for c, q := range t.pass {
+		p := 1 / min(1-q, surestFail)
+		d := depth[c] & 15
+		weight[d] += t.m.n[c] * p
+		if o := t.m.o[c]; o > 0 {
+			score[d] += o * p
+		}
+	}
+	level := &t.level[k]
+	var target, weights [layers]float64
+	for d := range layers - 1 {
+		if t.dice[k][d] == 0 {
+			continue
+		}
+		weights[d] = max(0, weight[d]-t.dice[k][d])
+		target[d] = max(0, level[d]*weights[d]+score[d]-t.dice[k][d])
+	}
+	next := falling(target, weights)
+	next[layers-1] = 0
+	moved := 0.0
+	var factor [layers]float64
+	factor[layers-1] = 1
+	for d := range layers - 1 {
+		if weights[d] == 0 && d > 0 {
+			next[d] = next[d-1]
+		}
+		next[d] = min(next[d], 4)
+		moved = max(moved, math.Abs(next[d]-level[d])/(t.usual+level[d]))
+		factor[d] = math.Exp(level[d] - next[d])
+	}
+	*level = next
+	multiply(t.pass, depth, &factor)
+	return moved
+}
+
+// likely sets the likelihood. The logarithm of the chance to pass is a sum of levels.
+func (t *chainFit) likely() {
+	sum := math.Log1p(-t.base) * t.passed[len(t.level)][0]
+	for k := range t.level {
+		for d, h := range t.level[k] {
+			sum -= h * t.passed[k][d]
+		}
+	}
+	for c, o := range t.m.o {
+		p := 1 - t.pass[c]
+		if p > surestFail {
+			p = surestFail
+			sum += (t.m.n[c] - o) * (math.Log1p(-surestFail) - math.Log(t.pass[c]))
+		}
+		if o > 0 {
+			sum += o * math.Log(p)
+		}
+	}
+	t.likelihood = sum
+}
+
 // refit makes the dice's fail rates those of a model and returns it.
 func (f *field) refit(found []*explained) *fit {
 	m := f.mix(found)
 	t := f.fitMixture(m)
-	p := make([]float64, len(m.n))
-	for c := range p {
-		p[c] = t.rate(m, c, -1)
-	}
+	p := t.rates(m, -1)
 	for i, c := range m.kind {
 		f.p[i] = p[c]
 	}
