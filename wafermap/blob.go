@@ -82,18 +82,26 @@ func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64)
 				continue
 			}
 			var count uint64
-			e := 0.0
 			for _, s := range spans {
-				j := y + s.j
-				if uint(j) >= uint(f.lines) {
-					continue
+				if j := y + s.j; uint(j) < uint(f.lines) {
+					count += f.along.held(j, max(0, x+s.from), min(f.cols, x+s.to))
 				}
-				dc, de := f.along.span(j, max(0, x+s.from), min(f.cols, x+s.to))
-				count += dc
-				e += de
 			}
 			if count>>32 < 2 {
 				continue
+			}
+			// however many are expected, within what cells have
+			if t := unpack(count, 0); f.highest < 0.5 {
+				if t.e = t.n * f.lowest * (1 - 1e-9); f.hopeless(t, max(0, list.floor())+least) {
+					continue
+				}
+			}
+			e := 0.0
+			for _, s := range spans {
+				if j := y + s.j; uint(j) < uint(f.lines) {
+					_, de := f.along.span(j, max(0, x+s.from), min(f.cols, x+s.to))
+					e += de
+				}
 			}
 			t := unpack(count, e)
 			floor := max(0, list.floor())

@@ -27,6 +27,7 @@ type lineSearch struct {
 
 	cost                float64
 	slope, square, half float64 // of the paths being looked along
+	offset              []int   // of each place along such a path in cells
 	lengths             []int
 }
 
@@ -100,6 +101,7 @@ func (s *lineSearch) run(curvature float64) {
 	slopes := max(2, int(math.Ceil(half/(1.2*float64(s.thick))))) // the ends of neighbouring slopes lie 1.2 thicknesses apart
 	square := curvature / (2 * half)
 	shift := make([]int, s.long)
+	s.offset = make([]int, s.long)
 	ends := make([][2]int, 0, 4*s.long)
 	s.cost = s.f.lineCost(float64(s.thick * s.block))
 	for k := -slopes; k <= slopes; k++ {
@@ -109,6 +111,7 @@ func (s *lineSearch) run(curvature float64) {
 			x := float64(i) - half
 			shift[i] = int(math.Round(slope*x + square*x*x))
 			lowest, highest = min(lowest, shift[i]), max(highest, shift[i])
+			s.offset[i] = shift[i]*s.long + i
 		}
 		s.chooseLengths(k)
 		s.slope, s.square, s.half = slope, square, half
@@ -122,11 +125,11 @@ func (s *lineSearch) run(curvature float64) {
 				outer, inner = inner, outer
 			}
 			if inner[0] >= inner[1] {
-				s.look(y0, outer[0], outer[1], shift)
+				s.look(y0, outer[0], outer[1])
 				continue
 			}
-			s.look(y0, outer[0], inner[0], shift)
-			s.look(y0, inner[1], outer[1], shift)
+			s.look(y0, outer[0], inner[0])
+			s.look(y0, inner[1], outer[1])
 		}
 	}
 }
@@ -182,24 +185,25 @@ func (s *lineSearch) chooseLengths(k int) {
 }
 
 // look sums along a stretch of a path and tries the lines in it.
-func (s *lineSearch) look(y0, a, b int, shift []int) {
+func (s *lineSearch) look(y0, a, b int) {
 	if (b-a)*s.block < shortestLine || b-a < 3*s.thick {
 		return
 	}
-	s.walk(y0, a, b, shift)
+	s.walk(y0, a, b)
 	if s.prefix[b]>>48 >= 3 {
 		s.segments(y0, a, b)
 	}
 }
 
-func (s *lineSearch) walk(y0, a, b int, shift []int) {
+func (s *lineSearch) walk(y0, a, b int) {
 	run := uint64(0)
 	prefix := s.prefix[a : b+1]
 	prefix[0] = 0
-	at := y0*s.long + a
-	for i, d := range shift[a:b] {
-		run += s.cells[at+d*s.long+i]
-		prefix[i+1] = run
+	prefix = prefix[1:]
+	at, cells := y0*s.long, s.cells
+	for i, o := range s.offset[a:b] {
+		run += cells[at+o]
+		prefix[i] = run
 	}
 }
 
@@ -216,6 +220,9 @@ func (s *lineSearch) segments(y0, a, b int) {
 		for i := 0; i < len(lo) && i < len(hi); i += step {
 			d := hi[i] - lo[i]
 			o := d >> 48
+			if o<<lineExpect <= d&0xffffffff { // no more than expected
+				continue
+			}
 			e := float64(d&0xffffffff) / (1 << lineExpect)
 			if over := float64(o) - e; o < 3 || over <= 0 || over*over <= need*e {
 				continue

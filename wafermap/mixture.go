@@ -42,26 +42,29 @@ func (f *field) mix(found []*explained) *mixture {
 
 // split tells the dice of a mixture apart by their depth in one more pattern too.
 func (f *field) split(m *mixture, x *explained) *mixture {
-	next := make([]int32, len(m.n)*layers)
+	s := &mixture{kind: make([]int32, len(m.kind))}
+	dice := make([]int32, len(m.n)*layers)
 	for i, d := range x.depth {
-		next[int(m.kind[i])*layers+int(d)] = 1
+		c := m.kind[i]*layers + int32(d)
+		s.kind[i] = c
+		dice[c]++
 	}
+	next := make([]int32, len(dice))
 	var from []int32
 	var depth []uint8
-	for c, used := range next {
-		if used == 1 {
+	for c, n := range dice {
+		if n > 0 {
 			next[c] = int32(len(from))
 			from, depth = append(from, int32(c/layers)), append(depth, uint8(c%layers))
+			s.n = append(s.n, float64(n))
 		}
 	}
-	s := &mixture{kind: make([]int32, len(m.kind)), o: make([]float64, len(from)), n: make([]float64, len(from))}
-	for i, d := range x.depth {
-		c := next[int(m.kind[i])*layers+int(d)]
-		s.kind[i] = c
-		s.n[c]++
-		if f.fail[i] {
-			s.o[c]++
-		}
+	for i, c := range s.kind {
+		s.kind[i] = next[c]
+	}
+	s.o = make([]float64, len(from))
+	for _, i := range f.failing {
+		s.o[s.kind[i]]++
 	}
 	for _, old := range m.depth {
 		moved := make([]uint8, len(from))

@@ -195,10 +195,8 @@ func (f *field) without(kind string, p float64) Signature {
 	if f.total.o > 0 {
 		s.Strength = 1
 	}
-	for i, r := range f.rows {
-		if f.fail[i] {
-			s.Dice = append(s.Dice, r)
-		}
+	for _, i := range f.failing {
+		s.Dice = append(s.Dice, f.rows[i])
 	}
 	return s
 }
