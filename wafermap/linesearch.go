@@ -238,6 +238,9 @@ func (s *lineSearch) need() float64 { return 1.6 * (max(0, s.list.floor()) + s.c
 
 func (s *lineSearch) try(d uint64, y0, i, l int) float64 {
 	t := tally{float64(d >> 48), float64(d >> 32 & 0xffff), float64(d&0xffffffff) / (1 << lineExpect)}
+	if s.f.hopeless(t, max(0, s.list.floor())+s.cost) {
+		return s.need()
+	}
 	if v := s.f.gain(t) - s.cost; t.o >= 3 && v > max(0, s.list.floor()) {
 		s.offer(v, y0, i, l, s.slope, s.square, s.half)
 	}

@@ -52,11 +52,6 @@ func (s *running) span(j, from, to int) (count uint64, e float64) {
 	return b.count - a.count, b.expected - a.expected
 }
 
-// held is the count of a span alone.
-func (s *running) held(j, from, to int) uint64 {
-	return s.sums[j*s.stride+to].count - s.sums[j*s.stride+from].count
-}
-
 func unpack(count uint64, e float64) tally {
 	return tally{float64(count >> 32), float64(count & (1<<32 - 1)), e}
 }
