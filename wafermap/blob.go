@@ -135,14 +135,13 @@ func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64)
 				continue
 			}
 			floor := max(0, list.floor())
-			// hopeless even if as few are expected as cells have at least
-			if t := unpack(count, 0); f.highest < 0.5 {
-				if t.e = t.n * f.lowest * (1 - 1e-9); f.hopeless(t, floor+least) {
-					continue
-				}
+			// (o-e)^2 / (e (1-e/n)) falls in e up to o: what is hopeless with as few expected as
+			// cells have at least is so with more
+			t := unpack(count, 0)
+			if t.e = t.n * f.lowest * (1 - 1e-9); f.hopeless(t, floor+least) {
+				continue
 			}
-			t := unpack(count, d.expected(x, y))
-			if f.hopeless(t, floor+least) {
+			if t.e = d.expected(x, y); f.hopeless(t, floor+least) {
 				continue
 			}
 			cost := sizeCost(t, f.total)

@@ -27,12 +27,11 @@ type cells struct {
 // raster is a fail map on such cells.
 type raster struct {
 	*cells
-	o       []int32   // fails by cell
-	e       []float64 // expected fails by cell
-	lowest  float64   // lowest expected rate of a cell
-	highest float64   // and the highest
-	along   running   // sums along rows of cells
-	across  running   // sums along columns of cells
+	o      []int32   // fails by cell
+	e      []float64 // expected fails by cell
+	lowest float64   // chance of a die to fail
+	along  running   // sums along rows of cells
+	across running   // sums along columns of cells
 }
 
 // running holds sums up to each cell of a row. Row j begins at j*stride.
@@ -162,12 +161,9 @@ func (r *raster) sum(f *field) {
 	for i, p := range f.p {
 		r.e[r.cell[i]] += p
 	}
-	r.lowest, r.highest = 1, 0
-	for c, n := range r.n {
-		if n > 0 {
-			rate := r.e[c] / float64(n)
-			r.lowest, r.highest = min(r.lowest, rate), max(r.highest, rate)
-		}
+	r.lowest = 1
+	for _, p := range f.p {
+		r.lowest = min(r.lowest, p)
 	}
 	for j := range r.lines {
 		run := 0.0

@@ -23,7 +23,8 @@ type slots struct {
 // lattice is a fail map on them.
 type lattice struct {
 	*slots
-	o, e []float64
+	o, e   []float64
+	folded map[[2]int][]tally // fails and dice that agree modulo two periods
 }
 
 // mostPlaces is the number of columns times lines beyond which repeats are not looked
@@ -47,7 +48,7 @@ func (p *places) newSlots(c *cells) *slots {
 }
 
 func (f *field) newLattice() *lattice {
-	l := &lattice{slots: f.slotsFor(f.cells)}
+	l := &lattice{slots: f.slotsFor(f.cells), folded: map[[2]int][]tally{}}
 	if l.cols > 0 {
 		l.o, l.e = make([]float64, len(l.n)), make([]float64, len(l.n))
 		for _, i := range f.failing {
@@ -195,24 +196,37 @@ func (d folder) peak(cells []float64) float64 {
 	return (e+top)*math.Log1p(top/e) - top
 }
 
+// counts tallies the fails and dice that agree modulo two periods.
+func (d folder) counts(px, py int) []tally {
+	key := [2]int{px, py}
+	if t, ok := d.folded[key]; ok {
+		return t
+	}
+	cells := make([]tally, px*py)
+	for line := range d.lines {
+		into := cells[line%py*px:][:px]
+		c := 0
+		for i, n := range d.n[line*d.cols : (line+1)*d.cols] {
+			into[c].n += n
+			into[c].o += d.o[line*d.cols+i]
+			if c++; c == px {
+				c = 0
+			}
+		}
+	}
+	d.folded[key] = cells
+	return cells
+}
+
 // settle tallies the cells of a pair of periods and joins those that fail together.
 func (d folder) settle(px, py int, free float64) *pattern {
 	f := d.f
-	cells := make([]tally, px*py)
+	cells := slices.Clone(d.counts(px, py))
 	column, cell := make([]float64, d.lines*px), make([]float64, px*py)
-	for _, part := range []struct {
-		table []float64
-		into  func(t *tally) *float64
-	}{
-		{d.o, func(t *tally) *float64 { return &t.o }},
-		{d.n, func(t *tally) *float64 { return &t.n }},
-		{d.e, func(t *tally) *float64 { return &t.e }},
-	} {
-		fold(column, part.table, d.cols, px)
-		fold(cell, column, d.lines*px, py*px)
-		for c, v := range cell {
-			*part.into(&cells[c]) = v
-		}
+	fold(column, d.e, d.cols, px)
+	fold(cell, column, d.lines*px, py*px)
+	for c, e := range cell {
+		cells[c].e = e
 	}
 	order := make([]int, 0, len(cells))
 	over := make([]float64, len(cells))
