@@ -84,11 +84,14 @@ func (g *Grid) boxGeometry() Geometry {
 
 // expect refreshes the sums of expected fails after p has changed.
 func (f *field) expect() {
-	e := 0.0
+	e, lowest := 0.0, 1.0
 	for _, p := range f.p {
 		e += p
+		if p < lowest {
+			lowest = p
+		}
 	}
-	f.total.e = e
+	f.total.e, f.lowest = e, lowest
 	f.raster.sum(f)
 	if f.polar.sums != nil {
 		f.polar.sum(f)

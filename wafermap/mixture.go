@@ -42,29 +42,36 @@ func (f *field) mix(found []*explained) *mixture {
 
 // split tells the dice of a mixture apart by their depth in one more pattern too.
 func (f *field) split(m *mixture, x *explained) *mixture {
-	s := &mixture{kind: make([]int32, len(m.kind))}
-	dice := make([]int32, len(m.n)*layers)
-	for i, d := range x.depth {
-		c := m.kind[i]*layers + int32(d)
-		s.kind[i] = c
-		dice[c]++
+	s, next := f.countSplit(m, x)
+	s.kind = make([]int32, len(m.kind))
+	depth := x.depth[:len(m.kind)]
+	for i, c := range m.kind {
+		s.kind[i] = next[c*layers+int32(depth[i])]
 	}
-	next := make([]int32, len(dice))
+	return s
+}
+
+// countSplit is such a mixture without the dice's kinds, which next has for each old kind
+// and depth.
+func (f *field) countSplit(m *mixture, x *explained) (s *mixture, next []int32) {
+	next = make([]int32, len(m.n)*layers)
+	depth := x.depth[:len(m.kind)]
+	for i, c := range m.kind {
+		next[c*layers+int32(depth[i])]++
+	}
+	s = &mixture{}
 	var from []int32
-	var depth []uint8
-	for c, n := range dice {
+	var own []uint8
+	for c, n := range next {
 		if n > 0 {
 			next[c] = int32(len(from))
-			from, depth = append(from, int32(c/layers)), append(depth, uint8(c%layers))
+			from, own = append(from, int32(c/layers)), append(own, uint8(c%layers))
 			s.n = append(s.n, float64(n))
 		}
 	}
-	for i, c := range s.kind {
-		s.kind[i] = next[c]
-	}
 	s.o = make([]float64, len(from))
 	for _, i := range f.failing {
-		s.o[s.kind[i]]++
+		s.o[next[m.kind[i]*layers+int32(depth[i])]]++
 	}
 	for _, old := range m.depth {
 		moved := make([]uint8, len(from))
@@ -73,8 +80,8 @@ func (f *field) split(m *mixture, x *explained) *mixture {
 		}
 		s.depth = append(s.depth, moved)
 	}
-	s.depth = append(s.depth, depth)
-	return s
+	s.depth = append(s.depth, own)
+	return s, next
 }
 
 // fit is a model fitted to a mixture: a background and what each pattern adds by depth.

@@ -161,10 +161,6 @@ func (r *raster) sum(f *field) {
 	for i, p := range f.p {
 		r.e[r.cell[i]] += p
 	}
-	r.lowest = 1
-	for _, p := range f.p {
-		r.lowest = min(r.lowest, p)
-	}
 	for j := range r.lines {
 		run := 0.0
 		at := j*r.along.stride + 1
@@ -174,13 +170,15 @@ func (r *raster) sum(f *field) {
 			sums[i].expected = run
 		}
 	}
-	for i := range r.cols {
-		run := 0.0
-		at := i*r.across.stride + 1
-		sums := r.across.sums[at : at+r.lines]
-		for j := range sums {
-			run += r.e[j*r.cols+i]
-			sums[j].expected = run
+	const block = 8 // columns at once, which lie side by side in memory
+	for first := 0; first < r.cols; first += block {
+		n := min(block, r.cols-first)
+		var run [block]float64
+		for j := range r.lines {
+			for k, e := range r.e[j*r.cols+first:][:n] {
+				run[k] += e
+				r.across.sums[(first+k)*r.across.stride+j+1].expected = run[k]
+			}
 		}
 	}
 }
