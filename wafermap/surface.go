@@ -72,6 +72,16 @@ func polynomial(c *[monomials]float64, u, v float64) float64 {
 	return sum
 }
 
+// alongRow are the coefficients of the powers of u at one v.
+func alongRow(c *[monomials]float64, v float64) (p [surfaceOrder + 1]float64) {
+	for i := range p { // of u^i: c of order i+j, place j, times v^j
+		for j := surfaceOrder - i; j >= 0; j-- {
+			p[i] = p[i]*v + c[(i+j)*(i+j+1)/2+j]
+		}
+	}
+	return p
+}
+
 // powers fills in the monomials u^i v^j.
 func powers(m *[monomials]float64, u, v float64) {
 	m[0] = 1
