@@ -122,16 +122,45 @@ func (t *fit) rates(m *mixture, skip int) []float64 {
 }
 
 func (t *fit) judge(m *mixture) {
-	t.likelihood = 0
+	var l logs
 	for c := range m.n {
 		p := t.rate(m, c, -1)
-		if m.o[c] > 0 {
-			t.likelihood += m.o[c] * math.Log(p)
-		}
-		if m.n[c] > m.o[c] {
-			t.likelihood += (m.n[c] - m.o[c]) * math.Log1p(-p)
-		}
+		l.add(m.o[c], p)
+		l.add(m.n[c]-m.o[c], 1-p)
 	}
+	t.likelihood = l.total()
+}
+
+// logs sums logarithms of chances, one for the product of several dice.
+type logs struct {
+	sum, product float64
+	n            int
+}
+
+func (l *logs) add(dice, chance float64) {
+	switch dice {
+	case 0:
+		return
+	case 1:
+		const most = 16 // chances are far above 1e-19
+		if l.n == 0 {
+			l.product = 1
+		}
+		l.product *= chance
+		if l.n++; l.n == most {
+			l.sum += math.Log(l.product)
+			l.n = 0
+		}
+	default:
+		l.sum += dice * math.Log(chance)
+	}
+}
+
+func (l *logs) total() float64 {
+	if l.n > 0 {
+		return l.sum + math.Log(l.product)
+	}
+	return l.sum
 }
 
 // fitMixture finds the fail rate of every kind of die as a background raised by
@@ -150,23 +179,58 @@ func (f *field) fitMixture(m *mixture) *fit {
 	return t
 }
 
-// products are the rates of all kinds of dice as the factors have them, however sure.
-func (t *fit) products(m *mixture, into []float64) {
-	for c := range into {
-		into[c] = t.base
-	}
-	for k := range t.level {
-		multiply(into, m.depth[k], &t.level[k])
-	}
+// refreshRounds is after how many rounds products are made anew, so that rounding does not
+// pile up.
+const refreshRounds = 8
+
+// kept is a product over the patterns by kind of die. A factor of one pattern's depths may
+// wait for the next pass over the kinds.
+type kept struct {
+	value  []float64
+	depth  []uint8 // by which waits
+	factor [16]float64
+	none   []uint8 // depths of 0
 }
 
-// multiply multiplies each kind's value by the factor of its depth.
-func multiply(value []float64, depth []uint8, factor *[layers]float64) {
-	var padded [16]float64 // an index of four bits needs no check
-	copy(padded[:], factor[:])
-	for c, d := range depth[:len(value)] {
-		value[c] *= padded[d&15]
+func newKept(kinds int) kept { return kept{value: make([]float64, kinds), none: make([]uint8, kinds)} }
+
+// start sets all to a value times the factors of all patterns.
+func (p *kept) start(value float64, m *mixture, factor func(k int) [layers]float64) {
+	for c := range p.value {
+		p.value[c] = value
 	}
+	p.depth = nil
+	for k := range m.depth {
+		p.multiply(m.depth[k], factor(k))
+	}
+	p.settle()
+}
+
+// multiply changes the product by a factor of a pattern's depths.
+func (p *kept) multiply(depth []uint8, factor [layers]float64) {
+	p.settle()
+	p.depth = depth
+	copy(p.factor[:], factor[:])
+}
+
+func (p *kept) settle() {
+	if p.depth == nil {
+		return
+	}
+	for c, d := range p.depth[:len(p.value)] {
+		p.value[c] *= p.factor[d&15] // an index of four bits needs no check
+	}
+	p.depth = nil
+}
+
+// pass is what a pass over the kinds has to multiply by: by a depth, 1 where nothing waits.
+func (p *kept) pass() (depth []uint8, factor [16]float64) {
+	if depth, factor = p.depth, p.factor; depth == nil {
+		depth = p.none
+		factor[0] = 1
+	}
+	p.depth = nil
+	return depth[:len(p.value)], factor
 }
 
 // perLayer sums n over the dice of each depth.
@@ -186,15 +250,20 @@ func (f *field) fitProduct(m *mixture) *fit {
 		}
 		fails[k] = perLayer(m.o, m.depth[k])
 	}
-	rate := make([]float64, len(m.n))
-	for range refitRounds {
-		t.products(m, rate) // anew, so that rounding does not pile up
+	rate := newKept(len(m.n))
+	for round := range refitRounds {
+		if round%refreshRounds == 0 {
+			rate.start(t.base, m, func(k int) [layers]float64 { return t.level[k] })
+		}
 		moved := 0.0
 		for k := range t.level {
 			var e [16]float64
-			depth := m.depth[k][:len(rate)]
-			for c, n := range m.n[:len(rate)] {
-				e[depth[c]&15] += min(rate[c], surestFail) * n
+			depth := m.depth[k][:len(m.n)]
+			by, factor := rate.pass()
+			for c, v := range rate.value[:len(depth)] {
+				v *= factor[by[c]&15]
+				rate.value[c] = v
+				e[depth[c]&15] += min(v, surestFail) * m.n[c]
 			}
 			level := &t.level[k]
 			old, base := *level, t.base
@@ -210,15 +279,22 @@ func (f *field) fitProduct(m *mixture) *fit {
 				moved = max(moved, math.Abs(level[d]-old[d])/old[d])
 				change[d] = t.base / base * level[d] / old[d]
 			}
-			multiply(rate, depth, &change)
+			rate.multiply(depth, change)
 		}
 		sum := 0.0
-		for c, n := range m.n {
-			sum += min(rate[c], surestFail) * n
+		by, factor := rate.pass()
+		for c, n := range m.n[:len(by)] {
+			v := rate.value[c] * factor[by[c]&15]
+			rate.value[c] = v
+			sum += min(v, surestFail) * n
 		}
 		if scale := f.total.o / sum; sum > 0 {
+			base := t.base
 			t.base = min(t.base*scale, surestFail)
 			moved = max(moved, math.Abs(scale-1))
+			for c := range rate.value {
+				rate.value[c] *= t.base / base
+			}
 		}
 		if moved < 0.003 || len(t.level) == 0 {
 			break
@@ -234,7 +310,7 @@ type chainFit struct {
 	*fit
 	m      *mixture
 	usual  float64           // -log(1-rate) of the wafer
-	pass   []float64         // chance by kind of die
+	pass   kept              // chance by kind of die
 	dice   [][layers]float64 // by pattern and depth; of all dice, at depth 0, at the end
 	passed [][layers]float64 // of these, dice that do
 }
@@ -242,7 +318,7 @@ type chainFit struct {
 // fitChain steps by Fisher scoring in h = -log(1-rate), to which patterns add.
 func (f *field) fitChain(m *mixture) *fit {
 	h := -math.Log1p(-min(f.mean, surestFail))
-	t := chainFit{m: m, usual: h, pass: make([]float64, len(m.n))}
+	t := chainFit{m: m, usual: h, pass: newKept(len(m.n))}
 	t.fit = &fit{chained: true, base: -math.Expm1(-0.8 * h), level: make([][layers]float64, len(m.depth))}
 	good := make([]float64, len(m.n))
 	var all, allGood [layers]float64
@@ -256,7 +332,10 @@ func (f *field) fitChain(m *mixture) *fit {
 	}
 	t.dice, t.passed = append(t.dice, all), append(t.passed, allGood)
 	var best *fit
-	for range refitRounds / 2 {
+	for round := range refitRounds / 2 {
+		if round%refreshRounds == 0 {
+			t.pass.start(1-t.base, m, t.passing)
+		}
 		moved := t.stepBase()
 		for k := range t.level {
 			moved = max(moved, t.step(k))
@@ -272,22 +351,20 @@ func (f *field) fitChain(m *mixture) *fit {
 	return best
 }
 
-// stepBase moves the background and says by how much. It starts the chances to pass anew,
-// so that rounding does not pile up.
+// passing are the chances to pass a pattern by depth.
+func (t *chainFit) passing(k int) (q [layers]float64) {
+	for d, h := range t.level[k] {
+		q[d] = math.Exp(-h)
+	}
+	return q
+}
+
+// stepBase moves the background and says by how much.
 func (t *chainFit) stepBase() float64 {
-	for c := range t.pass {
-		t.pass[c] = 1 - t.base
-	}
-	for k := range t.level {
-		var factor [layers]float64
-		for d, h := range t.level[k] {
-			factor[d] = math.Exp(-h)
-		}
-		multiply(t.pass, t.m.depth[k], &factor)
-	}
+	t.pass.settle()
 	score, weight := 0.0, 0.0
 	for c, n := range t.m.n {
-		p := 1 / min(1-t.pass[c], surestFail)
+		p := 1 / min(1-t.pass.value[c], surestFail)
 		score += t.m.o[c] * p
 		weight += n * p
 	}
@@ -296,8 +373,8 @@ func (t *chainFit) stepBase() float64 {
 	next := min(max(h+(score-dice)/max(weight-dice, 1e-9), 0.3*h, 1e-7), 4)
 	t.base = -math.Expm1(-next)
 	factor := math.Exp(h - next)
-	for c := range t.pass {
-		t.pass[c] *= factor
+	for c := range t.pass.value {
+		t.pass.value[c] *= factor
 	}
 	return math.Abs(next-h) / h
 }
@@ -305,14 +382,16 @@ func (t *chainFit) stepBase() float64 {
 // step moves the levels of a pattern and says by how much.
 func (t *chainFit) step(k int) float64 {
 	var score, weight [16]float64
-	depth := t.m.depth[k][:len(t.pass)]
-	for c, q := range t.pass {
+	depth := t.m.depth[k][:len(t.m.n)]
+	by, waiting := t.pass.pass()
+	o, n, value := t.m.o[:len(depth)], t.m.n[:len(depth)], t.pass.value[:len(depth)]
+	for c, q := range value {
+		q *= waiting[by[c]&15]
+		value[c] = q
 		p := 1 / min(1-q, surestFail)
 		d := depth[c] & 15
-		weight[d] += t.m.n[c] * p
-		if o := t.m.o[c]; o > 0 {
-			score[d] += o * p
-		}
+		weight[d] += n[c] * p
+		score[d] += o[c] * p
 	}
 	level := &t.level[k]
 	var target, weights [layers]float64
@@ -337,7 +416,7 @@ func (t *chainFit) step(k int) float64 {
 		factor[d] = math.Exp(level[d] - next[d])
 	}
 	*level = next
-	multiply(t.pass, depth, &factor)
+	t.pass.multiply(depth, factor)
 	return moved
 }
 
@@ -349,16 +428,17 @@ func (t *chainFit) likely() {
 			sum -= h * t.passed[k][d]
 		}
 	}
+	t.pass.settle()
+	var l logs
 	for c, o := range t.m.o {
-		p := 1 - t.pass[c]
+		p := 1 - t.pass.value[c]
 		if p > surestFail {
 			p = surestFail
-			sum += (t.m.n[c] - o) * (math.Log1p(-surestFail) - math.Log(t.pass[c]))
+			sum += (t.m.n[c] - o) * (math.Log1p(-surestFail) - math.Log(t.pass.value[c]))
 		}
-		if o > 0 {
-			sum += o * math.Log(p)
-		}
+		l.add(o, p)
 	}
+	sum += l.total()
 	t.likelihood = sum
 }
 
