@@ -66,6 +66,18 @@ func (p *places) at(x, y int32) int32 {
 // around calls f with every other die within so many columns and rows of die i.
 func (p *places) around(i, radius int, f func(j int32)) {
 	r := int64(radius)
+	if cx, cy := int(p.x[i]-p.x0), int(p.y[i]-p.y0); p.sparse == nil && cx >= radius && cx+radius < p.w && cy >= radius && cy+radius < p.h {
+		for row := cy - radius; row <= cy+radius; row++ { // all of the square is on the grid
+			for _, j := range p.first[row*p.w+cx-radius : row*p.w+cx+radius+1] {
+				for ; j >= 0; j = p.next[j] {
+					if int(j) != i {
+						f(j)
+					}
+				}
+			}
+		}
+		return
+	}
 	for dy := -r; dy <= r; dy++ {
 		for dx := -r; dx <= r; dx++ {
 			x, y := int64(p.x[i])+dx, int64(p.y[i])+dy
