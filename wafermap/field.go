@@ -27,6 +27,7 @@ type field struct {
 
 	raster
 	polar
+	ordered []int32  // see inOrder
 	lattice *lattice // nil until repeats are looked for
 	aside   [offCentres][]tally
 	chain   []link // the last model's mixture and those of its parts

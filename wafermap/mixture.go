@@ -420,6 +420,9 @@ func (t *chainFit) step(k int) float64 {
 	return moved
 }
 
+// sureToPass is the logarithm of the least chance to pass.
+var sureToPass = math.Log1p(-surestFail)
+
 // likely sets the likelihood. The logarithm of the chance to pass is a sum of levels.
 func (t *chainFit) likely() {
 	sum := math.Log1p(-t.base) * t.passed[len(t.level)][0]
@@ -434,7 +437,9 @@ func (t *chainFit) likely() {
 		p := 1 - t.pass.value[c]
 		if p > surestFail {
 			p = surestFail
-			sum += (t.m.n[c] - o) * (math.Log1p(-surestFail) - math.Log(t.pass.value[c]))
+			if good := t.m.n[c] - o; good > 0 {
+				sum += good * (sureToPass - math.Log(t.pass.value[c]))
+			}
 		}
 		l.add(o, p)
 	}

@@ -157,9 +157,12 @@ func (m mixing) step(parts, next []Part) (logLik float64) {
 			}
 		}
 		logLik += c.n * top
-		if c.n == 1 {
-			product *= total
-			if factors++; factors == 64 { // 8^64 is far from the largest number
+		if c.n <= 4 {
+			for n := c.n; n > 0; n-- {
+				product *= total
+				factors++
+			}
+			if factors >= 64 { // 8^68 is far from the largest number
 				logLik += math.Log(product)
 				product, factors = 1, 0
 			}
