@@ -121,7 +121,9 @@ func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64)
 		widest += float64(s.to - s.from)
 	}
 	// no window holds more dice than this, so none costs less
-	least := max(0, math.Log(f.total.n/(widest*float64(f.fullest))))
+	most := widest * float64(f.fullest)
+	least := max(0, math.Log(f.total.n/most))
+	floor, times := -1.0, 0.0
 	stepX, stepY := max(1, int(0.5*r/f.du+0.5)), max(1, int(0.5*r/math.Abs(f.dv)+0.5))
 	for y := stepY / 2; y < f.lines; y += stepY {
 		cv := f.v0 + float64(y)*f.dv
@@ -134,11 +136,17 @@ func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64)
 			if count>>32 < 2 {
 				continue
 			}
-			floor := max(0, list.floor())
-			// (o-e)^2 / (e (1-e/n)) falls in e up to o: what is hopeless with as few expected as
-			// cells have at least is so with more
+			if now := max(0, list.floor()); now != floor {
+				// With as few expected as dice have at least, a disc is hopeless unless
+				// o > e + sqrt(c e), which is at least e times this: e is at most q most.
+				q := f.lowest * (1 - 1e-9)
+				floor = now
+				times = q + math.Sqrt(1.6*(floor+least)*q*(1-q)*max(0, 1-most/f.total.n)/most)
+				times *= 1 - 1e-9
+			}
+			// (o-e)^2 / (e (1-e/n)) falls in e up to o: what is hopeless with few is so with more.
 			t := unpack(count, 0)
-			if t.e = t.n * f.lowest * (1 - 1e-9); f.hopeless(t, floor+least) {
+			if t.o <= times*t.n {
 				continue
 			}
 			if t.e = d.expected(x, y); f.hopeless(t, floor+least) {

@@ -26,9 +26,12 @@ type lineSearch struct {
 	spare  float64
 
 	cost                float64
+	densest             float64 // expected fails of the fullest cell
+	sharpFor            float64 // what sharp was made for
+	sharp               [len(lineLengths)]uint64
 	slope, square, half float64 // of the paths being looked along
 	offset              []int   // of each place along such a path in cells
-	lengths             []int
+	lengths             []int   // as indices
 }
 
 // nearLines tells whether two lines of a shortlist overlap much: x holds turned, middle
@@ -90,6 +93,25 @@ func (s *lineSearch) pack() {
 		}
 	}
 	s.prefix = make([]uint64, s.long+1)
+	for _, c := range s.cells {
+		s.densest = max(s.densest, float64(c&0xffffffff)/(1<<lineExpect))
+	}
+}
+
+// sharpBits are the binary digits after the point of sharp.
+const sharpBits = 8
+
+// sharpen finds, for each length, how many times as many fails as expected a segment needs:
+// over > sqrt(need e) is at least e sqrt(need/most), with most that are expected in any.
+func (s *lineSearch) sharpen(need float64) {
+	if need == s.sharpFor {
+		return
+	}
+	s.sharpFor = need
+	for k, l := range lineLengths {
+		times := 1 + math.Sqrt(need/(s.densest*float64(l)))
+		s.sharp[k] = uint64(min(times, 1<<16) * (1 - 1e-9) * (1 << sharpBits))
+	}
 }
 
 // run looks along all paths of a curvature.
@@ -171,7 +193,7 @@ func (s *lineSearch) chooseLengths(k int) {
 		level++
 	}
 	s.lengths = s.lengths[:0]
-	for _, l := range lineLengths {
+	for which, l := range lineLengths {
 		if l < 3*s.thick || l*s.block < shortestLine {
 			continue
 		}
@@ -179,7 +201,7 @@ func (s *lineSearch) chooseLengths(k int) {
 			break
 		}
 		if fine := float64(s.long) / float64(l); fine < 2 || float64(int(1)<<level) >= fine/1.5 {
-			s.lengths = append(s.lengths, l)
+			s.lengths = append(s.lengths, which)
 		}
 	}
 }
@@ -207,11 +229,13 @@ func (s *lineSearch) walk(y0, a, b int) {
 	}
 }
 
-var lineLengths = []int{3, 5, 8, 13, 20, 32, 52, 83, 133, 213, 341}
+var lineLengths = [...]int{3, 5, 8, 13, 20, 32, 52, 83, 133, 213, 341}
 
 func (s *lineSearch) segments(y0, a, b int) {
 	need := s.need()
-	for _, l := range s.lengths {
+	s.sharpen(need)
+	for _, which := range s.lengths {
+		l, times := lineLengths[which], s.sharp[which]
 		if l >= b-a {
 			break
 		}
@@ -220,7 +244,7 @@ func (s *lineSearch) segments(y0, a, b int) {
 		for i := 0; i < len(lo) && i < len(hi); i += step {
 			d := hi[i] - lo[i]
 			o := d >> 48
-			if o<<lineExpect <= d&0xffffffff { // no more than expected
+			if o<<(lineExpect+sharpBits) <= d&0xffffffff*times {
 				continue
 			}
 			e := float64(d&0xffffffff) / (1 << lineExpect)
