@@ -60,14 +60,16 @@ func between(a, b, weight float64) float64 {
 // NaNs in x are skipped; with no value left every quantile is NaN. x is not
 // modified. It panics on a probability outside [0, 1] and on an unknown kind.
 func Quantiles(x, probs []float64, kind QuantileKind) []float64 {
-	var s Selector
+	s := selectors.Get().(*Selector)
+	defer selectors.Put(s)
 	return s.Quantiles(x, probs, kind)
 }
 
 // Median is the middle value, or the mean of the two middle ones. NaNs are
 // skipped; NaN with no value.
 func Median(x []float64) float64 {
-	var s Selector
+	s := selectors.Get().(*Selector)
+	defer selectors.Put(s)
 	return s.Median(x)
 }
 
@@ -81,7 +83,8 @@ func Median(x []float64) float64 {
 // J. Amer. Statist. Assoc. 69, 383-393; the factor is 1/qnorm(3/4) rounded to
 // four decimals, as is customary.
 func MADSigma(x []float64) float64 {
-	var s Selector
+	s := selectors.Get().(*Selector)
+	defer selectors.Put(s)
 	_, mad := s.MedianMADSigma(x)
 	return mad
 }

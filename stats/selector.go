@@ -4,6 +4,7 @@ import (
 	"math"
 	"math/bits"
 	"slices"
+	"sync"
 )
 
 // Selector finds order statistics (medians, quantiles) and keeps its scratch
@@ -14,7 +15,7 @@ import (
 // It does not sort. A float64's bits, suitably flipped, order like the number
 // itself; so values are counted into a few thousand buckets by their leading
 // bits, and only the buckets that hold a wanted rank are looked into again, by
-// their next bits. Each round takes eleven bits or more off the range, so the
+// their next bits. Each round takes five bits or more off the range, so the
 // work is linear in n whatever the data look like: sorted, all equal, or with
 // one reading at 1e30. There is no pivot to choose badly.
 type Selector struct {
@@ -25,8 +26,11 @@ type Selector struct {
 	found []float64
 }
 
+// selectors are those of the functions that are asked for one thing at a time.
+var selectors = sync.Pool{New: func() any { return new(Selector) }}
+
 const (
-	bucketBits = 12
+	bucketBits = 12 // at most
 	fewKeys    = 48 // below this, sorting is quicker than counting
 )
 
@@ -77,8 +81,6 @@ func grow[T any](s []T, n int) []T {
 // of the n loaded keys. It destroys them.
 func (s *Selector) pick(n int, ranks []int, out []float64) {
 	s.b = grow(s.b, n)
-	s.count = grow(s.count, 1<<bucketBits)
-	s.place = grow(s.place, 1<<bucketBits)
 	s.narrow(s.a[:n], s.b[:n], 0, ranks, out)
 }
 
@@ -105,11 +107,15 @@ func (s *Selector) narrow(keys, room []uint64, base int, ranks []int, out []floa
 		}
 		return
 	}
-	shift := uint(max(0, bits.Len64(hi-lo)-bucketBits))
+	wide := min(bucketBits, bits.Len(uint(len(keys)))) // about a bucket a key, where keys are few
+	shift := uint(max(0, bits.Len64(hi-lo)-wide))
+	mask := uint64(1)<<wide - 1
+	s.count = grow(s.count, 1<<wide)
+	s.place = grow(s.place, 1<<wide)
 	count := s.count
 	clear(count)
 	for _, k := range keys {
-		count[(k-lo)>>shift&(1<<bucketBits-1)]++
+		count[(k-lo)>>shift&mask]++
 	}
 
 	// Find the buckets that hold a wanted rank and give each a stretch of room.
@@ -133,7 +139,7 @@ func (s *Selector) narrow(keys, room []uint64, base int, ranks []int, out []floa
 		below += c
 	}
 	for _, k := range keys {
-		b := (k - lo) >> shift & (1<<bucketBits - 1)
+		b := (k - lo) >> shift & mask
 		if p := place[b]; p >= 0 {
 			room[p] = k
 			place[b] = p + 1

@@ -77,7 +77,7 @@ func (g *Grid) Autocorrelation(value []float64, n Neighbours, w Weights) Autocor
 		a.Why = "the value is the same on all dice"
 		return a
 	}
-	g.crossProducts(&s, value, mean, degree, n, w, present)
+	g.crossProducts(&s, value, mean, degree, n)
 	a.Links = s.links
 	if s.links == 0 {
 		a.Why = "no two dice with a value are neighbours"
@@ -99,13 +99,13 @@ type squares struct {
 // degrees counts each present row's present neighbours.
 func (g *Grid) degrees(n Neighbours, present func(int32) bool) []uint8 {
 	degree := make([]uint8, len(g.x))
-	steps := n.later()
+	ways := g.ways(n.later())
 	for _, r := range g.order {
 		if !present(r) {
 			continue
 		}
-		for _, s := range steps {
-			if q := g.at(r, s); q >= 0 && present(int32(q)) {
+		for _, q := range ways.from(r) {
+			if present(q) {
 				degree[r]++
 				degree[q]++
 			}
@@ -114,27 +114,24 @@ func (g *Grid) degrees(n Neighbours, present func(int32) bool) []uint8 {
 	return degree
 }
 
-func (g *Grid) crossProducts(s *squares, value []float64, mean float64, degree []uint8, n Neighbours, w Weights, present func(int32) bool) {
-	weight := func(r int32) float64 { // of the links out of a die
-		if w == RowStandardised {
-			return 1 / float64(degree[r])
-		}
-		return 1
-	}
+// crossProducts sums over links. degree is nil where each weighs 1.
+func (g *Grid) crossProducts(s *squares, value []float64, mean float64, degree []uint8, n Neighbours) {
 	into := make([]float64, len(g.x)) // sum of w_ij + w_ji over neighbours j
-	steps := n.later()
+	ways := g.ways(n.later())
 	for _, r := range g.order {
-		if !present(r) {
+		if value[r]-value[r] != 0 {
 			continue
 		}
-		for _, t := range steps {
-			k := g.at(r, t)
-			if k < 0 || !present(int32(k)) {
+		zr := value[r] - mean
+		for _, q := range ways.from(r) {
+			if value[q]-value[q] != 0 {
 				continue
 			}
-			q := int32(k)
-			zr, zq := value[r]-mean, value[q]-mean
-			both := weight(r) + weight(q)
+			zq := value[q] - mean
+			both := 2.0
+			if degree != nil {
+				both = 1/float64(degree[r]) + 1/float64(degree[q])
+			}
 			s.links += 2
 			s.cross += both * zr * zq
 			s.difference += both * sq(zr-zq)

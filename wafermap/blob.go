@@ -58,22 +58,73 @@ func (f *field) findBlob() *pattern {
 	return best
 }
 
+// discMask is a disc of cells as the stretches of the lines it covers.
+type discMask struct {
+	f     *field
+	spans []discSpan
+	reach int // of its lines from the middle
+	wide  int // of its columns
+}
+
+// discSpan is a stretch of cells, and the same as offsets into running sums.
+type discSpan struct{ j, from, to, lower, upper int }
+
+func (f *field) newDisc(r float64) discMask {
+	d := discMask{f: f}
+	dv := math.Abs(f.dv)
+	d.reach = int(r / dv)
+	for j := -d.reach; j <= d.reach; j++ {
+		half := int(math.Sqrt(max(0, r*r-sq(float64(j)*dv))) / f.du)
+		d.wide = max(d.wide, half)
+		d.spans = append(d.spans, discSpan{j, -half, half + 1, j*f.along.stride - half, j*f.along.stride + half + 1})
+	}
+	return d
+}
+
+// held counts the fails and dice of the disc about a cell.
+func (d *discMask) held(x, y int) (count uint64) {
+	f := d.f
+	if x >= d.wide && x < f.cols-d.wide && y >= d.reach && y < f.lines-d.reach { // all of it is on the raster
+		at, sums := y*f.along.stride+x, f.along.sums
+		for i := range d.spans {
+			s := &d.spans[i]
+			count += sums[at+s.upper].count - sums[at+s.lower].count
+		}
+		return count
+	}
+	for _, s := range d.spans {
+		if j := y + s.j; uint(j) < uint(f.lines) {
+			dc, _ := f.along.span(j, max(0, x+s.from), min(f.cols, x+s.to))
+			count += dc
+		}
+	}
+	return count
+}
+
+// expected are the fails expected in the disc.
+func (d *discMask) expected(x, y int) (e float64) {
+	f := d.f
+	for _, s := range d.spans {
+		if j := y + s.j; uint(j) < uint(f.lines) {
+			_, de := f.along.span(j, max(0, x+s.from), min(f.cols, x+s.to))
+			e += de
+		}
+	}
+	return e
+}
+
 // scanDiscs offers all discs of one radius with centres half of it apart.
 func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64) bool) {
-	dv := math.Abs(f.dv)
-	type span struct{ j, from, to int }
-	var spans []span
-	for j := -int(r / dv); j <= int(r/dv); j++ {
-		half := int(math.Sqrt(max(0, r*r-sq(float64(j)*dv))) / f.du)
-		spans = append(spans, span{j, -half, half + 1})
-	}
+	d := f.newDisc(r)
 	widest := 0.0
-	for _, s := range spans {
+	for _, s := range d.spans {
 		widest += float64(s.to - s.from)
 	}
 	// no window holds more dice than this, so none costs less
-	least := max(0, math.Log(f.total.n/(widest*float64(f.fullest))))
-	stepX, stepY := max(1, int(0.5*r/f.du+0.5)), max(1, int(0.5*r/dv+0.5))
+	most := widest * float64(f.fullest)
+	least := max(0, math.Log(f.total.n/most))
+	floor, times := -1.0, 0.0
+	stepX, stepY := max(1, int(0.5*r/f.du+0.5)), max(1, int(0.5*r/math.Abs(f.dv)+0.5))
 	for y := stepY / 2; y < f.lines; y += stepY {
 		cv := f.v0 + float64(y)*f.dv
 		for x := stepX / 2; x < f.cols; x += stepX {
@@ -81,23 +132,24 @@ func (f *field) scanDiscs(r float64, list *shortlist, near func(a, b [6]float64)
 			if cu*cu+cv*cv > 1 {
 				continue
 			}
-			var count uint64
-			e := 0.0
-			for _, s := range spans {
-				j := y + s.j
-				if uint(j) >= uint(f.lines) {
-					continue
-				}
-				dc, de := f.along.span(j, max(0, x+s.from), min(f.cols, x+s.to))
-				count += dc
-				e += de
-			}
+			count := d.held(x, y)
 			if count>>32 < 2 {
 				continue
 			}
-			t := unpack(count, e)
-			floor := max(0, list.floor())
-			if f.hopeless(t, floor+least) {
+			if now := max(0, list.floor()); now != floor {
+				// With as few expected as dice have at least, a disc is hopeless unless
+				// o > e + sqrt(c e), which is at least e times this: e is at most q most.
+				q := f.lowest * (1 - 1e-9)
+				floor = now
+				times = q + math.Sqrt(1.6*(floor+least)*q*(1-q)*max(0, 1-most/f.total.n)/most)
+				times *= 1 - 1e-9
+			}
+			// (o-e)^2 / (e (1-e/n)) falls in e up to o: what is hopeless with few is so with more.
+			t := unpack(count, 0)
+			if t.o <= times*t.n {
+				continue
+			}
+			if t.e = d.expected(x, y); f.hopeless(t, floor+least) {
 				continue
 			}
 			cost := sizeCost(t, f.total)

@@ -19,7 +19,7 @@ type Cluster struct {
 func (g *Grid) Labels(fail []bool, n Neighbours) (labels []int32, groups int) {
 	g.check(len(fail))
 	labels = make([]int32, len(fail))
-	steps := n.all()
+	ways := g.ways(n.all())
 	var stack []int32
 	for _, seed := range g.order {
 		if !fail[seed] || labels[seed] != 0 {
@@ -31,10 +31,10 @@ func (g *Grid) Labels(fail []bool, n Neighbours) (labels []int32, groups int) {
 		for len(stack) > 0 {
 			r := stack[len(stack)-1]
 			stack = stack[:len(stack)-1]
-			for _, s := range steps {
-				if q := g.at(r, s); q >= 0 && fail[q] && labels[q] == 0 {
+			for _, q := range ways.from(r) {
+				if fail[q] && labels[q] == 0 {
 					labels[q] = int32(groups)
-					stack = append(stack, int32(q))
+					stack = append(stack, q)
 				}
 			}
 		}

@@ -37,14 +37,15 @@ func (g *Grid) DensityClusters(fail []bool, reach, width, height float64, minimu
 			}
 		}
 	}
+	ways := g.ways(steps)
 	takes := make([]bool, len(fail)) // failing rows that take part
 	for _, r := range g.order {
 		if takes[r] = fail[r]; !fail[r] {
 			continue
 		}
 		near := 0
-		for _, s := range steps {
-			if q := g.at(r, s); q >= 0 && fail[q] {
+		for _, q := range ways.from(r) {
+			if fail[q] {
 				near++
 			}
 		}
@@ -62,13 +63,12 @@ func (g *Grid) DensityClusters(fail []bool, reach, width, height float64, minimu
 		for len(stack) > 0 {
 			r := stack[len(stack)-1]
 			stack = stack[:len(stack)-1]
-			for _, s := range steps {
-				q := g.at(r, s)
-				if q < 0 || !fail[q] || d.Labels[q] >= 0 {
+			for _, q := range ways.from(r) {
+				if !fail[q] || d.Labels[q] >= 0 {
 					continue
 				}
 				if d.Labels[q] = label; d.Core[q] {
-					stack = append(stack, int32(q))
+					stack = append(stack, q)
 				}
 			}
 		}

@@ -18,18 +18,19 @@ type field struct {
 	in    SignatureInput
 	round bool // the wafer's disc is known
 
-	rows   []int32   // of the grid, those that take part
-	u, v   []float64 // by place in rows
-	fail   []bool
-	p      []float64 // chance that the die fails by the model so far
-	total  tally
-	radius float64 // in Unit
-	mean   float64 // fail rate
+	*places
+	fail    []bool    // by place in rows
+	failing []int32   // places in rows that fail
+	p       []float64 // chance that the die fails by the model so far
+	total   tally
+	mean    float64 // fail rate
 
 	raster
 	polar
+	ordered []int32  // see inOrder
 	lattice *lattice // nil until repeats are looked for
-	chain   []link   // the last model's mixture and those of its parts
+	aside   [offCentres][]tally
+	chain   []link // the last model's mixture and those of its parts
 
 	// what the last full search for the dear shapes came up with
 	starts      []spotlight
@@ -44,45 +45,31 @@ type field struct {
 // out has wrong coordinates.
 const farOut = 1.12
 
-func newField(in SignatureInput) *field { return newFieldOf(in, cellsOfRaster) }
+func newField(in SignatureInput) *field {
+	f := newFieldOf(in, cellsOfRaster)
+	f.layPolar()
+	f.polar.sum(f)
+	return f
+}
 
-// newFieldOf lays the dice on a raster of at most cells cells.
+// newFieldOf lays the dice on a raster of at most cells cells, without a polar table.
 func newFieldOf(in SignatureInput, cells int) *field {
-	g := in.Grid
-	f := &field{in: in, round: in.Geometry.Unit != ""}
-	geo := in.Geometry
-	if !f.round {
-		geo = g.boxGeometry()
-	}
-	f.radius = geo.OutlineRadius - math.Hypot(geo.DieWidthMM, geo.DieHeightMM)/2
-	if !(f.radius > 0) {
-		f.radius = geo.Radius()
-	}
-	n := g.Len()
-	f.rows = make([]int32, 0, n)
-	f.u, f.v, f.p = make([]float64, 0, n), make([]float64, 0, n), make([]float64, n)
-	f.fail = make([]bool, 0, n)
-	for _, r := range g.order {
-		mmX, mmY := geo.Position(g.x[r], g.y[r])
-		u, v := mmX/f.radius, mmY/f.radius
-		if !(u*u+v*v <= farOut*farOut) {
-			continue
-		}
-		f.rows = append(f.rows, r)
-		f.u, f.v = append(f.u, u), append(f.v, v)
-		f.fail = append(f.fail, in.Fail[r])
+	f := &field{in: in, round: in.Geometry.Unit != "", places: in.Grid.placesFor(in.Geometry)}
+	f.fail = make([]bool, len(f.rows))
+	for i, r := range f.rows {
 		if in.Fail[r] {
-			f.total.o++
+			f.fail[i] = true
+			f.failing = append(f.failing, int32(i))
 		}
 	}
-	f.p = f.p[:len(f.rows)]
-	f.total.n = float64(len(f.rows))
+	f.total.o, f.total.n = float64(len(f.failing)), float64(len(f.rows))
 	f.mean = f.total.o / f.total.n
+	f.p = make([]float64, len(f.rows))
 	for i := range f.p {
 		f.p[i] = f.mean
 	}
-	f.layRaster(geo, cells)
-	f.layPolar()
+	f.raster.cells = f.places.cellsFor(cells)
+	f.layRaster()
 	f.expect()
 	return f
 }
@@ -98,13 +85,18 @@ func (g *Grid) boxGeometry() Geometry {
 
 // expect refreshes the sums of expected fails after p has changed.
 func (f *field) expect() {
-	e := 0.0
+	e, lowest := 0.0, 1.0
 	for _, p := range f.p {
 		e += p
+		if p < lowest {
+			lowest = p
+		}
 	}
-	f.total.e = e
+	f.total.e, f.lowest = e, lowest
 	f.raster.sum(f)
-	f.polar.sum(f)
+	if f.polar.sums != nil {
+		f.polar.sum(f)
+	}
 }
 
 // gain is the log-likelihood ratio of a fail rate inside a mask that differs from what

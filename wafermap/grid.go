@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"sync"
 )
 
 // Neighbours says which dice count as neighbours of a die: Rook, Queen, or what Within
@@ -88,6 +89,9 @@ type Grid struct {
 	x, y  []int32 // as given
 	ix    *index
 	order []int32 // rows that take part, by y, then x
+
+	mu     sync.Mutex
+	places []*places // see placesFor
 }
 
 // NewGrid indexes the dice of one wafer. It keeps x and y, which must not change

@@ -115,12 +115,11 @@ func TestStrayCoordinatesCostNoMemory(t *testing.T) {
 
 // sparse returns the same grid with all dice in the hash table.
 func sparse(g *Grid) *Grid {
-	s := *g
-	s.ix = &index{}
+	s := &Grid{Missing: g.Missing, Duplicates: g.Duplicates, x: g.x, y: g.y, ix: &index{}, order: g.order}
 	for _, r := range g.order {
 		s.ix.put(int(g.x[r]), int(g.y[r]), r)
 	}
-	return &s
+	return s
 }
 
 func TestDenseEqualsSparse(t *testing.T) {

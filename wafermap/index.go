@@ -159,7 +159,7 @@ func bulkRange(v []int) (lo, hi int) {
 	if len(v) == 0 {
 		return 0, 0
 	}
-	slices.Sort(v)
+	sortInts(v)
 	median := v[len(v)/2]
 	away := make([]int, len(v))
 	for i := range v {
@@ -167,7 +167,27 @@ func bulkRange(v []int) (lo, hi int) {
 			away[i] = -away[i]
 		}
 	}
-	slices.Sort(away)
+	sortInts(away)
 	reach := 3*away[min(len(away)-1, len(away)*3/4)] + 3
 	return median - reach, median + reach
+}
+
+// sortInts sorts; where values lie as thickly as coordinates do, by counting them.
+func sortInts(v []int) {
+	lo, hi := slices.Min(v), slices.Max(v)
+	if uint(hi)-uint(lo) > uint(4*len(v)) {
+		slices.Sort(v)
+		return
+	}
+	count := make([]int32, hi-lo+1)
+	for _, x := range v {
+		count[x-lo]++
+	}
+	i := 0
+	for k, n := range count {
+		for range n {
+			v[i] = lo + k
+			i++
+		}
+	}
 }

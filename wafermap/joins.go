@@ -85,29 +85,27 @@ func (g *Grid) JoinCount(fail []bool, n Neighbours) JoinCount {
 // neighbours.
 func (g *Grid) countJoins(c *JoinCount, fail []bool, n Neighbours) []uint8 {
 	degrees := make([]uint8, len(fail))
-	steps := n.later()
+	ways := g.ways(n.later())
+	var ends [3]int // joins by the number of their dice that fail
 	for _, r := range g.order {
+		own := 0
 		if fail[r] {
+			own = 1
 			c.Fails++
 		}
-		for _, s := range steps {
-			q := g.at(r, s)
-			if q < 0 {
-				continue
-			}
-			degrees[r]++
+		near := ways.from(r)
+		degrees[r] += uint8(len(near))
+		c.Joins += len(near)
+		for _, q := range near {
 			degrees[q]++
-			c.Joins++
-			switch {
-			case fail[r] && fail[q]:
-				c.FailFail++
-			case fail[r] != fail[q]:
-				c.PassFail++
-			default:
-				c.PassPass++
+			k := own
+			if fail[q] {
+				k++
 			}
+			ends[k]++
 		}
 	}
+	c.PassPass, c.PassFail, c.FailFail = float64(ends[0]), float64(ends[1]), float64(ends[2])
 	return degrees
 }
 

@@ -26,8 +26,12 @@ type lineSearch struct {
 	spare  float64
 
 	cost                float64
+	densest             float64 // expected fails of the fullest cell
+	sharpFor            float64 // what sharp was made for
+	sharp               [len(lineLengths)]uint64
 	slope, square, half float64 // of the paths being looked along
-	lengths             []int
+	offset              []int   // of each place along such a path in cells
+	lengths             []int   // as indices
 }
 
 // nearLines tells whether two lines of a shortlist overlap much: x holds turned, middle
@@ -89,6 +93,25 @@ func (s *lineSearch) pack() {
 		}
 	}
 	s.prefix = make([]uint64, s.long+1)
+	for _, c := range s.cells {
+		s.densest = max(s.densest, float64(c&0xffffffff)/(1<<lineExpect))
+	}
+}
+
+// sharpBits are the binary digits after the point of sharp.
+const sharpBits = 8
+
+// sharpen finds, for each length, how many times as many fails as expected a segment needs:
+// over > sqrt(need e) is at least e sqrt(need/most), with most that are expected in any.
+func (s *lineSearch) sharpen(need float64) {
+	if need == s.sharpFor {
+		return
+	}
+	s.sharpFor = need
+	for k, l := range lineLengths {
+		times := 1 + math.Sqrt(need/(s.densest*float64(l)))
+		s.sharp[k] = uint64(min(times, 1<<16) * (1 - 1e-9) * (1 << sharpBits))
+	}
 }
 
 // run looks along all paths of a curvature.
@@ -100,6 +123,7 @@ func (s *lineSearch) run(curvature float64) {
 	slopes := max(2, int(math.Ceil(half/(1.2*float64(s.thick))))) // the ends of neighbouring slopes lie 1.2 thicknesses apart
 	square := curvature / (2 * half)
 	shift := make([]int, s.long)
+	s.offset = make([]int, s.long)
 	ends := make([][2]int, 0, 4*s.long)
 	s.cost = s.f.lineCost(float64(s.thick * s.block))
 	for k := -slopes; k <= slopes; k++ {
@@ -109,6 +133,7 @@ func (s *lineSearch) run(curvature float64) {
 			x := float64(i) - half
 			shift[i] = int(math.Round(slope*x + square*x*x))
 			lowest, highest = min(lowest, shift[i]), max(highest, shift[i])
+			s.offset[i] = shift[i]*s.long + i
 		}
 		s.chooseLengths(k)
 		s.slope, s.square, s.half = slope, square, half
@@ -122,11 +147,11 @@ func (s *lineSearch) run(curvature float64) {
 				outer, inner = inner, outer
 			}
 			if inner[0] >= inner[1] {
-				s.look(y0, outer[0], outer[1], shift)
+				s.look(y0, outer[0], outer[1])
 				continue
 			}
-			s.look(y0, outer[0], inner[0], shift)
-			s.look(y0, inner[1], outer[1], shift)
+			s.look(y0, outer[0], inner[0])
+			s.look(y0, inner[1], outer[1])
 		}
 	}
 }
@@ -168,7 +193,7 @@ func (s *lineSearch) chooseLengths(k int) {
 		level++
 	}
 	s.lengths = s.lengths[:0]
-	for _, l := range lineLengths {
+	for which, l := range lineLengths {
 		if l < 3*s.thick || l*s.block < shortestLine {
 			continue
 		}
@@ -176,38 +201,41 @@ func (s *lineSearch) chooseLengths(k int) {
 			break
 		}
 		if fine := float64(s.long) / float64(l); fine < 2 || float64(int(1)<<level) >= fine/1.5 {
-			s.lengths = append(s.lengths, l)
+			s.lengths = append(s.lengths, which)
 		}
 	}
 }
 
 // look sums along a stretch of a path and tries the lines in it.
-func (s *lineSearch) look(y0, a, b int, shift []int) {
+func (s *lineSearch) look(y0, a, b int) {
 	if (b-a)*s.block < shortestLine || b-a < 3*s.thick {
 		return
 	}
-	s.walk(y0, a, b, shift)
+	s.walk(y0, a, b)
 	if s.prefix[b]>>48 >= 3 {
 		s.segments(y0, a, b)
 	}
 }
 
-func (s *lineSearch) walk(y0, a, b int, shift []int) {
+func (s *lineSearch) walk(y0, a, b int) {
 	run := uint64(0)
 	prefix := s.prefix[a : b+1]
 	prefix[0] = 0
-	at := y0*s.long + a
-	for i, d := range shift[a:b] {
-		run += s.cells[at+d*s.long+i]
-		prefix[i+1] = run
+	prefix = prefix[1:]
+	at, cells := y0*s.long, s.cells
+	for i, o := range s.offset[a:b] {
+		run += cells[at+o]
+		prefix[i] = run
 	}
 }
 
-var lineLengths = []int{3, 5, 8, 13, 20, 32, 52, 83, 133, 213, 341}
+var lineLengths = [...]int{3, 5, 8, 13, 20, 32, 52, 83, 133, 213, 341}
 
 func (s *lineSearch) segments(y0, a, b int) {
 	need := s.need()
-	for _, l := range s.lengths {
+	s.sharpen(need)
+	for _, which := range s.lengths {
+		l, times := lineLengths[which], s.sharp[which]
 		if l >= b-a {
 			break
 		}
@@ -216,6 +244,9 @@ func (s *lineSearch) segments(y0, a, b int) {
 		for i := 0; i < len(lo) && i < len(hi); i += step {
 			d := hi[i] - lo[i]
 			o := d >> 48
+			if o<<(lineExpect+sharpBits) <= d&0xffffffff*times {
+				continue
+			}
 			e := float64(d&0xffffffff) / (1 << lineExpect)
 			if over := float64(o) - e; o < 3 || over <= 0 || over*over <= need*e {
 				continue
@@ -231,6 +262,9 @@ func (s *lineSearch) need() float64 { return 1.6 * (max(0, s.list.floor()) + s.c
 
 func (s *lineSearch) try(d uint64, y0, i, l int) float64 {
 	t := tally{float64(d >> 48), float64(d >> 32 & 0xffff), float64(d&0xffffffff) / (1 << lineExpect)}
+	if s.f.hopeless(t, max(0, s.list.floor())+s.cost) {
+		return s.need()
+	}
 	if v := s.f.gain(t) - s.cost; t.o >= 3 && v > max(0, s.list.floor()) {
 		s.offer(v, y0, i, l, s.slope, s.square, s.half)
 	}

@@ -98,14 +98,15 @@ func (g *Grid) local(value []float64, n Neighbours, level float64, own bool) Loc
 		l.Why = "the value is the same on all dice"
 		return l
 	}
+	ways := g.ways(steps)
 	for _, r := range g.order {
 		v := value[r]
 		if v-v != 0 {
 			continue
 		}
 		k, sum := 0, 0.0
-		for _, s := range steps {
-			if q := g.at(r, s); q >= 0 && value[q]-value[q] == 0 {
+		for _, q := range ways.from(r) {
+			if value[q]-value[q] == 0 {
 				k++
 				sum += value[q]
 			}

@@ -23,36 +23,57 @@ func (w *surfaceWork) sums() normal {
 func (w *surfaceWork) equations(s normal, terms int) (a *mat.SymDense, b *mat.VecDense) {
 	a, b = mat.NewSymDense(terms, nil), mat.NewVecDense(terms, nil)
 	data, rhs := a.RawSymmetric().Data, b.RawVector().Data
-	last := -1 // a cell that waits for another: two at a time take half the loads and stores
+	var some [cellsAtOnce]int // cells that wait for others: four at a time take a quarter of the loads and stores
+	n := 0
 	for c := range s.w {
 		if s.w[c] == 0 {
 			continue
 		}
-		if last < 0 {
-			last = c
+		if some[n] = c; n < cellsAtOnce-1 {
+			n++
 			continue
 		}
-		addPair(data, rhs, w.b.cells[last].z[:terms], w.b.cells[c].z[:terms], s.w[last], s.w[c], s.wy[last], s.wy[c])
-		last = -1
+		w.addCells(data, rhs, s, some)
+		n = 0
 	}
-	if last >= 0 {
-		z := w.b.cells[last].z[:terms]
-		addPair(data, rhs, z, z, s.w[last], 0, s.wy[last], 0)
+	for _, c := range some[:n] {
+		w.addCell(data, rhs, s, c)
 	}
 	return a, b
 }
 
-// addPair adds two cells to normal equations.
-func addPair(data, rhs, p, q []float64, wp, wq, yp, yq float64) {
+const cellsAtOnce = 4
+
+// addCells adds some cells to normal equations.
+func (w *surfaceWork) addCells(data, rhs []float64, s normal, some [cellsAtOnce]int) {
 	terms := len(rhs)
-	for j, pj := range p {
-		qj := q[j]
-		rhs[j] += yp*pj + yq*qj
-		fp, fq := wp*pj, wq*qj
+	var z [cellsAtOnce][]float64
+	for i, c := range some {
+		z[i] = w.b.cells[c].z[:terms]
+	}
+	w0, w1, w2, w3 := s.w[some[0]], s.w[some[1]], s.w[some[2]], s.w[some[3]]
+	y0, y1, y2, y3 := s.wy[some[0]], s.wy[some[1]], s.wy[some[2]], s.wy[some[3]]
+	for j := range terms {
+		a, b, c, d := z[0][j], z[1][j], z[2][j], z[3][j]
+		rhs[j] += y0*a + y1*b + (y2*c + y3*d)
+		a, b, c, d = w0*a, w1*b, w2*c, w3*d
 		row := data[j*terms+j : (j+1)*terms]
-		p, q := p[j:][:len(row)], q[j:][:len(row)]
+		p, q, r, t := z[0][j:][:len(row)], z[1][j:][:len(row)], z[2][j:][:len(row)], z[3][j:][:len(row)]
 		for k := range row {
-			row[k] += fp*p[k] + fq*q[k]
+			row[k] += a*p[k] + b*q[k] + (c*r[k] + d*t[k])
+		}
+	}
+}
+
+// addCell adds one.
+func (w *surfaceWork) addCell(data, rhs []float64, s normal, c int) {
+	terms := len(rhs)
+	z := w.b.cells[c].z[:terms]
+	for j, v := range z {
+		rhs[j] += s.wy[c] * v
+		row := data[j*terms+j : (j+1)*terms]
+		for k := range row {
+			row[k] += s.w[c] * v * z[j+k]
 		}
 	}
 }

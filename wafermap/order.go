@@ -63,28 +63,18 @@ func (f *field) findOrder() *pattern {
 	if f.in.Order == nil {
 		return nil
 	}
-	type touch struct {
-		order int32
-		die   int
-	}
-	var seen []touch
-	for i, r := range f.rows {
-		if o := f.in.Order[r]; o != Missing {
-			seen = append(seen, touch{o, i})
-		}
-	}
-	slices.SortFunc(seen, func(a, b touch) int { return cmp.Or(cmp.Compare(a.order, b.order), cmp.Compare(a.die, b.die)) })
 	var orders []int32
 	sums := []tally{{}}
-	for _, s := range seen {
-		if len(orders) == 0 || orders[len(orders)-1] != s.order {
-			orders = append(orders, s.order)
+	for _, i := range f.inOrder() {
+		o := f.in.Order[f.rows[i]]
+		if len(orders) == 0 || orders[len(orders)-1] != o {
+			orders = append(orders, o)
 			sums = append(sums, sums[len(sums)-1])
 		}
 		t := &sums[len(sums)-1]
 		t.n++
-		t.e += f.p[s.die]
-		if f.fail[s.die] {
+		t.e += f.p[i]
+		if f.fail[i] {
 			t.o++
 		}
 	}
@@ -95,6 +85,41 @@ func (f *field) findOrder() *pattern {
 	p.shape = shapeOrder
 	p.from, p.to = int(orders[p.from]), int(orders[p.to-1])+1
 	return p
+}
+
+// inOrder lists the dice whose place in the test order is known, in that order.
+func (f *field) inOrder() []int32 {
+	if f.ordered != nil {
+		return f.ordered
+	}
+	dice := make([]int32, 0, len(f.rows))
+	lo, hi := math.MaxInt32, math.MinInt32
+	for i, r := range f.rows {
+		if o := int(f.in.Order[r]); o != Missing {
+			dice = append(dice, int32(i))
+			lo, hi = min(lo, o), max(hi, o)
+		}
+	}
+	order := func(i int32) int { return int(f.in.Order[f.rows[i]]) }
+	f.ordered = dice
+	if hi-lo > 16*len(dice) {
+		slices.SortStableFunc(dice, func(a, b int32) int { return cmp.Compare(order(a), order(b)) })
+		return dice
+	}
+	next := make([]int32, max(0, hi-lo+2)) // where the next die of each number goes
+	for _, i := range dice {
+		next[order(i)-lo+1]++
+	}
+	for k := 1; k < len(next); k++ {
+		next[k] += next[k-1]
+	}
+	f.ordered = make([]int32, len(dice))
+	for _, i := range dice {
+		to := &next[order(i)-lo]
+		f.ordered[*to] = i
+		*to++
+	}
+	return f.ordered
 }
 
 // findBand looks for rows or columns of the grid next to each other, right across.
@@ -147,7 +172,7 @@ func (f *field) scanSums(sums []tally, share float64) *pattern {
 		l := int(length)
 		for a := 0; a+l <= n; a += max(1, l/8) {
 			t := sums[a+l].minus(sums[a])
-			if t.n == 0 || f.hopeless(t, top+sizeCost(t, f.total)) {
+			if t.n == 0 || f.hopeless(t, top) || f.hopeless(t, top+sizeCost(t, f.total)) {
 				continue
 			}
 			if v := value(a, a+l); v > top {

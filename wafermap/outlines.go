@@ -48,8 +48,8 @@ func degrees(a float64) float64 {
 	return d
 }
 
-// outline says where a pattern lies.
-func (f *field) outline(x *explained, m *mixture, t *fit) (o Outline) {
+// outline says where a pattern lies. expected are the fail rates of the kinds of dice.
+func (f *field) outline(x *explained, m *mixture, expected []float64) (o Outline) {
 	r := f.radius
 	p := x.pattern
 	switch p.shape {
@@ -88,7 +88,7 @@ func (f *field) outline(x *explained, m *mixture, t *fit) (o Outline) {
 		o.Direction = degrees(p.theta)
 		var rate, n [layers]float64
 		for i, d := range x.depth {
-			rate[d] += t.rate(m, int(m.kind[i]), -1)
+			rate[d] += expected[m.kind[i]]
 			n[d]++
 		}
 		for d := range layers {

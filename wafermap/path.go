@@ -71,14 +71,16 @@ func (f *field) findLine(fresh bool) *pattern {
 	const polished = 6
 	best := shortlist{most: polished}
 	starts := append(slices.Clone(f.starts), f.keptStarts...)
+	bows := make([][]float64, len(starts))
 	for i, it := range starts {
-		if x, v := f.bow(it); v > 0 {
+		x, v := f.bow(it)
+		if bows[i] = x; v > 0 {
 			best.offer(v, [6]float64{float64(i), x[0], x[1], x[2], x[3]}, func(a, b [6]float64) bool { return a == b })
 		}
 	}
 	var top *pattern
 	for _, it := range best.items {
-		if p := f.fitLine(starts[int(it.x[0])]); top == nil || p.gain-p.cost > top.gain-top.cost {
+		if p := f.fitLine(starts[int(it.x[0])], bows[int(it.x[0])], it.value); top == nil || p.gain-p.cost > top.gain-top.cost {
 			top = p
 		}
 	}
@@ -171,9 +173,9 @@ func (f *field) bow(it spotlight) (x []float64, top float64) {
 	return x, l.slide(x, climb(x, step, 5, l.value))
 }
 
-func (f *field) fitLine(it spotlight) *pattern {
+// fitLine goes on from what bow made of a start.
+func (f *field) fitLine(it spotlight, x []float64, top float64) *pattern {
 	l := lineFit{f, f.band(it.x[0] == 1), it.x[0] == 1}
-	x, top := f.bow(it)
 	l.slide(x, polish(x, top, l.value))
 	p := &pattern{shape: shapeLine, line: l.path(x), start: it}
 	p.tally = l.band.sweep(&p.line)

@@ -1,35 +1,54 @@
 package wafermap
 
-import "math"
+import (
+	"math"
+	"sync"
+)
 
-// raster lays the dice on a grid of cells: one cell a tested position where the map
+// cells is a wafer's dice on a grid of cells: one cell a tested position where the map
 // allows it, blocks of dice where there are too many, or where dice lie thinly.
-type raster struct {
-	cols, lines int       // columns and rows of cells
-	du, dv      float64   // size of a cell in radii; dv is negative when die y grows downwards
-	u0, v0      float64   // centre of cell (0, 0)
-	stepX       int       // die coordinates a cell
-	stepY       int       //
-	x0, y0      int       // die coordinates of the first die of cell (0, 0)
-	cell        []int32   // by die
-	fullest     int32     // dice in the fullest cell
-	o, n        []int32   // by cell
-	e           []float64 // by cell
-	along       running   // sums along rows of cells
-	across      running   // sums along columns of cells
+type cells struct {
+	most           int     // cells of the box, as asked for
+	cols, lines    int     // columns and rows of cells
+	du, dv         float64 // size of a cell in radii; dv is negative when die y grows downwards
+	u0, v0         float64 // centre of cell (0, 0)
+	stepX, stepY   int     // die coordinates a cell
+	spaceX, spaceY int     // spacing of a sampled map
+	x0, y0         int     // die coordinates of the first die of cell (0, 0)
+	x1, y1         int     // and the last of all
+	cell           []int32 // by die
+	fullest        int32   // dice in the fullest cell
+	n              []int32 // dice by cell
+
+	once  sync.Once
+	apart [offCentres][]uint8 // see ringsRound
 }
 
-// running holds sums up to each cell of a row: count packs fails (high half) and
-// dice (low half), and expected the fails expected. Row j begins at j*stride.
+// raster is a fail map on such cells.
+type raster struct {
+	*cells
+	o      []int32   // fails by cell
+	e      []float64 // expected fails by cell
+	lowest float64   // chance of a die to fail
+	along  running   // sums along rows of cells
+	across running   // sums along columns of cells
+}
+
+// running holds sums up to each cell of a row. Row j begins at j*stride.
 type running struct {
-	stride   int
-	count    []uint64
-	expected []float64
+	stride int
+	sums   []soFar
+}
+
+// soFar packs fails (high half) and dice (low half), and has the fails expected.
+type soFar struct {
+	count    uint64
+	expected float64
 }
 
 func (s *running) span(j, from, to int) (count uint64, e float64) {
-	a, b := j*s.stride+from, j*s.stride+to
-	return s.count[b] - s.count[a], s.expected[b] - s.expected[a]
+	a, b := &s.sums[j*s.stride+from], &s.sums[j*s.stride+to]
+	return b.count - a.count, b.expected - a.expected
 }
 
 func unpack(count uint64, e float64) tally {
@@ -41,72 +60,84 @@ const (
 	thinnestRaster = 0.35  // dice a cell, at least
 )
 
-func (f *field) layRaster(geo Geometry, cells int) {
-	g := f.in.Grid
-	r := &f.raster
-	if len(f.rows) == 0 {
-		return
+func (p *places) newCells(most int) *cells {
+	g, r := p.grid, &cells{most: most}
+	if len(p.rows) == 0 {
+		return r
 	}
 	box := extent{math.MaxInt32, math.MinInt32, math.MaxInt32, math.MinInt32}
-	for _, k := range f.rows {
+	for _, k := range p.rows {
 		x, y := int(g.x[k]), int(g.y[k])
 		box.X0, box.X1 = min(box.X0, x), max(box.X1, x)
 		box.Y0, box.Y1 = min(box.Y0, y), max(box.Y1, y)
 	}
-	r.x0, r.y0 = box.X0, box.Y0
-	spacingX, spacingY := f.spacing(box)
-	r.stepX, r.stepY = spacingX, spacingY
+	r.x0, r.y0, r.x1, r.y1 = box.X0, box.Y0, box.X1, box.Y1
+	r.spaceX, r.spaceY = p.spacing(box)
+	r.stepX, r.stepY = r.spaceX, r.spaceY
 	for {
 		r.cols, r.lines = (box.X1-box.X0)/r.stepX+1, (box.Y1-box.Y0)/r.stepY+1
 		area := float64(r.cols) * float64(r.lines)
-		if area <= float64(cells) && float64(len(f.rows)) >= thinnestRaster*math.Pi/4*area || r.cols*r.lines <= 16 {
+		if area <= float64(most) && float64(len(p.rows)) >= thinnestRaster*math.Pi/4*area || r.cols*r.lines <= 16 {
 			break
 		}
 		// the finer side first
-		if float64(r.stepX)*geo.DieWidthMM < float64(r.stepY)*geo.DieHeightMM && r.cols > 2 || r.lines <= 2 {
-			r.stepX += spacingX
+		if float64(r.stepX)*p.geo.DieWidthMM < float64(r.stepY)*p.geo.DieHeightMM && r.cols > 2 || r.lines <= 2 {
+			r.stepX += r.spaceX
 		} else {
-			r.stepY += spacingY
+			r.stepY += r.spaceY
 		}
 	}
-	r.du, r.dv = float64(r.stepX)*geo.DieWidthMM/f.radius, float64(r.stepY)*geo.DieHeightMM/f.radius
-	mmX, mmY := geo.Position(int32(box.X0), int32(box.Y0))
-	r.u0 = mmX/f.radius + r.du*(1-1/float64(r.stepX))/2
-	r.v0 = mmY / f.radius
-	if geo.YDown {
+	r.du, r.dv = float64(r.stepX)*p.geo.DieWidthMM/p.radius, float64(r.stepY)*p.geo.DieHeightMM/p.radius
+	mmX, mmY := p.geo.Position(int32(box.X0), int32(box.Y0))
+	r.u0 = mmX/p.radius + r.du*(1-1/float64(r.stepX))/2
+	r.v0 = mmY / p.radius
+	if p.geo.YDown {
 		r.dv = -r.dv
 	}
 	r.v0 += r.dv * (1 - 1/float64(r.stepY)) / 2
-	r.cell = make([]int32, len(f.rows))
-	count := r.cols * r.lines
-	r.o, r.n, r.e = make([]int32, count), make([]int32, count), make([]float64, count)
-	for i, k := range f.rows {
-		c := int32((int(g.y[k])-r.y0)/r.stepY*r.cols + (int(g.x[k])-r.x0)/r.stepX)
+	r.cell, r.n = make([]int32, len(p.rows)), make([]int32, r.cols*r.lines)
+	last, line := math.MinInt32, int32(0) // rows come by y: few divisions
+	column := make([]int32, box.X1-box.X0+1)
+	for x := range column {
+		column[x] = int32(x / r.stepX)
+	}
+	for i, k := range p.rows {
+		if y := int(g.y[k]); y != last {
+			last, line = y, int32((y-r.y0)/r.stepY*r.cols)
+		}
+		c := line + column[int(g.x[k])-r.x0]
 		r.cell[i] = c
 		r.n[c]++
 		r.fullest = max(r.fullest, r.n[c])
-		if f.fail[i] {
-			r.o[c]++
-		}
 	}
-	r.along = running{r.cols + 1, make([]uint64, (r.cols+1)*r.lines), make([]float64, (r.cols+1)*r.lines)}
-	r.across = running{r.lines + 1, make([]uint64, (r.lines+1)*r.cols), make([]float64, (r.lines+1)*r.cols)}
+	return r
+}
+
+func (f *field) layRaster() {
+	r := &f.raster
+	count := r.cols * r.lines
+	r.o, r.e = make([]int32, count), make([]float64, count)
+	for _, i := range f.failing {
+		r.o[r.cell[i]]++
+	}
+	r.along = running{r.cols + 1, make([]soFar, (r.cols+1)*r.lines)}
+	r.across = running{r.lines + 1, make([]soFar, (r.lines+1)*r.cols)}
 	for j := range r.lines {
 		for i := range r.cols {
 			c := uint64(r.o[j*r.cols+i])<<32 | uint64(r.n[j*r.cols+i])
 			at := j*r.along.stride + i
-			r.along.count[at+1] = r.along.count[at] + c
+			r.along.sums[at+1].count = r.along.sums[at].count + c
 			at = i*r.across.stride + j
-			r.across.count[at+1] = r.across.count[at] + c
+			r.across.sums[at+1].count = r.across.sums[at].count + c
 		}
 	}
 }
 
 // spacing is the spacing of a sampled map along x and y: the common divisor of all
 // distances between columns, as of rows; 1 where all are tested.
-func (f *field) spacing(box extent) (x, y int) {
-	g := f.in.Grid
-	for _, k := range f.rows {
+func (p *places) spacing(box extent) (x, y int) {
+	g := p.grid
+	for _, k := range p.rows {
 		if x != 1 {
 			x = divisor(x, int(g.x[k])-box.X0)
 		}
@@ -132,18 +163,22 @@ func (r *raster) sum(f *field) {
 	}
 	for j := range r.lines {
 		run := 0.0
-		at := j * r.along.stride
-		for i := range r.cols {
-			run += r.e[j*r.cols+i]
-			r.along.expected[at+i+1] = run
+		at := j*r.along.stride + 1
+		sums := r.along.sums[at : at+r.cols]
+		for i, e := range r.e[j*r.cols : (j+1)*r.cols] {
+			run += e
+			sums[i].expected = run
 		}
 	}
-	for i := range r.cols {
-		run := 0.0
-		at := i * r.across.stride
+	const block = 8 // columns at once, which lie side by side in memory
+	for first := 0; first < r.cols; first += block {
+		n := min(block, r.cols-first)
+		var run [block]float64
 		for j := range r.lines {
-			run += r.e[j*r.cols+i]
-			r.across.expected[at+j+1] = run
+			for k, e := range r.e[j*r.cols+first:][:n] {
+				run[k] += e
+				r.across.sums[(first+k)*r.across.stride+j+1].expected = run[k]
+			}
 		}
 	}
 }

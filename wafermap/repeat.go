@@ -12,38 +12,47 @@ const (
 	mostCells     = 16 // places of a period that one pattern may hold
 )
 
-// lattice holds a wafer's dice by column and line, in spacings of the sampled map.
-type lattice struct {
+// slots is a wafer's dice by column and line, in spacings of the sampled map.
+type slots struct {
 	cols, lines    int
 	spaceX, spaceY int
 	at             []int32   // by die
-	o, n, e        []float64 // by line and column
+	n              []float64 // dice by line and column
+}
+
+// lattice is a fail map on them.
+type lattice struct {
+	*slots
+	o, e   []float64
+	folded map[[2]int][]tally // fails and dice that agree modulo two periods
 }
 
 // mostPlaces is the number of columns times lines beyond which repeats are not looked
 // for: no wafer has as many.
 const mostPlaces = 1 << 22
 
-func (f *field) newLattice() *lattice {
-	g := f.in.Grid
-	l := &lattice{at: make([]int32, len(f.rows))}
-	x1, y1 := f.x0, f.y0
-	for _, r := range f.rows {
-		x1, y1 = max(x1, int(g.x[r])), max(y1, int(g.y[r]))
-	}
-	l.spaceX, l.spaceY = f.spacing(extent{f.x0, x1, f.y0, y1})
-	l.cols, l.lines = (x1-f.x0)/l.spaceX+1, (y1-f.y0)/l.spaceY+1
+func (p *places) newSlots(c *cells) *slots {
+	g, l := p.grid, &slots{spaceX: c.spaceX, spaceY: c.spaceY}
+	l.cols, l.lines = (c.x1-c.x0)/l.spaceX+1, (c.y1-c.y0)/l.spaceY+1
 	if l.cols > mostPlaces/l.lines {
 		l.cols, l.lines = 0, 0
 		return l
 	}
-	l.o, l.n, l.e = make([]float64, l.cols*l.lines), make([]float64, l.cols*l.lines), make([]float64, l.cols*l.lines)
-	for i, r := range f.rows {
-		c := (int(g.y[r])-f.y0)/l.spaceY*l.cols + (int(g.x[r])-f.x0)/l.spaceX
-		l.at[i] = int32(c)
-		l.n[c]++
-		if f.fail[i] {
-			l.o[c]++
+	l.at, l.n = make([]int32, len(p.rows)), make([]float64, l.cols*l.lines)
+	for i, r := range p.rows {
+		k := (int(g.y[r])-c.y0)/l.spaceY*l.cols + (int(g.x[r])-c.x0)/l.spaceX
+		l.at[i] = int32(k)
+		l.n[k]++
+	}
+	return l
+}
+
+func (f *field) newLattice() *lattice {
+	l := &lattice{slots: f.slotsFor(f.cells), folded: map[[2]int][]tally{}}
+	if l.cols > 0 {
+		l.o, l.e = make([]float64, len(l.n)), make([]float64, len(l.n))
+		for _, i := range f.failing {
+			l.o[l.at[i]]++
 		}
 	}
 	return l
@@ -187,24 +196,37 @@ func (d folder) peak(cells []float64) float64 {
 	return (e+top)*math.Log1p(top/e) - top
 }
 
+// counts tallies the fails and dice that agree modulo two periods.
+func (d folder) counts(px, py int) []tally {
+	key := [2]int{px, py}
+	if t, ok := d.folded[key]; ok {
+		return t
+	}
+	cells := make([]tally, px*py)
+	for line := range d.lines {
+		into := cells[line%py*px:][:px]
+		c := 0
+		for i, n := range d.n[line*d.cols : (line+1)*d.cols] {
+			into[c].n += n
+			into[c].o += d.o[line*d.cols+i]
+			if c++; c == px {
+				c = 0
+			}
+		}
+	}
+	d.folded[key] = cells
+	return cells
+}
+
 // settle tallies the cells of a pair of periods and joins those that fail together.
 func (d folder) settle(px, py int, free float64) *pattern {
 	f := d.f
-	cells := make([]tally, px*py)
+	cells := slices.Clone(d.counts(px, py))
 	column, cell := make([]float64, d.lines*px), make([]float64, px*py)
-	for _, part := range []struct {
-		table []float64
-		into  func(t *tally) *float64
-	}{
-		{d.o, func(t *tally) *float64 { return &t.o }},
-		{d.n, func(t *tally) *float64 { return &t.n }},
-		{d.e, func(t *tally) *float64 { return &t.e }},
-	} {
-		fold(column, part.table, d.cols, px)
-		fold(cell, column, d.lines*px, py*px)
-		for c, v := range cell {
-			*part.into(&cells[c]) = v
-		}
+	fold(column, d.e, d.cols, px)
+	fold(cell, column, d.lines*px, py*px)
+	for c, e := range cell {
+		cells[c].e = e
 	}
 	order := make([]int, 0, len(cells))
 	over := make([]float64, len(cells))

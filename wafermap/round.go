@@ -45,13 +45,9 @@ func (f *field) findCentre() *pattern {
 // findAnnulus looks for the ring inside the wafer, its centre at or near the wafer's.
 func (f *field) findAnnulus() *pattern {
 	var best *pattern
-	for k := range 9 {
-		cu, cv := 0.0, 0.0
-		if k > 0 {
-			s, c := math.Sincos(float64(k) * math.Pi / 4)
-			cu, cv = 0.11*c, 0.11*s
-		}
-		at := f.ringsRound(cu, cv)
+	for k := range offCentres {
+		cu, cv := offCentre(k)
+		at := f.ringsRound(k)
 		top, r0, r1 := 0.0, 0, 0
 		for a := 6; a < 54; a++ {
 			for b := a + 2; b <= 60; b++ {
@@ -87,28 +83,57 @@ func (f *field) findAnnulus() *pattern {
 	return best
 }
 
-// ringsRound tallies discs about a point, by radius in steps of 1/polarRings.
-func (f *field) ringsRound(cu, cv float64) []tally {
-	if cu == 0 && cv == 0 {
+// offCentres are the centres that annuli are looked for about.
+const offCentres = 9
+
+func offCentre(k int) (cu, cv float64) {
+	if k == 0 {
+		return 0, 0
+	}
+	s, c := math.Sincos(float64(k) * math.Pi / 4)
+	return 0.11 * c, 0.11 * s
+}
+
+// ringsRound tallies discs about a centre, by radius in steps of 1/polarRings.
+func (f *field) ringsRound(k int) []tally {
+	if k == 0 {
 		return f.rings
 	}
-	at := make([]tally, polarRings+1)
-	for j := range f.lines {
-		v := f.v0 + float64(j)*f.dv - cv
-		for i := range f.cols {
-			c := j*f.cols + i
-			if f.n[c] == 0 {
-				continue
-			}
-			u := f.u0 + float64(i)*f.du - cu
-			r := min(int(math.Sqrt(u*u+v*v)*polarRings), polarRings-1)
-			at[r+1] = at[r+1].plus(tally{float64(f.o[c]), float64(f.n[c]), f.e[c]})
+	f.cells.once.Do(f.cells.measure)
+	at, apart := f.aside[k], f.apart[k]
+	if at == nil {
+		at = make([]tally, polarRings+1)
+		for c, r := range apart {
+			at[r].o += float64(f.o[c])
+			at[r].n += float64(f.n[c])
 		}
+		for r := range polarRings {
+			at[r+1].o += at[r].o
+			at[r+1].n += at[r].n
+		}
+		f.aside[k] = at
 	}
+	var e [256]float64
+	for c, r := range apart {
+		e[r] += f.e[c]
+	}
+	at[0].e = 0
 	for r := range polarRings {
-		at[r+1] = at[r+1].plus(at[r])
+		at[r+1].e = e[r+1] + at[r].e
 	}
 	return at
+}
+
+// measure finds how far each cell lies from the centres: 1 for the innermost ring.
+func (c *cells) measure() {
+	for k := 1; k < offCentres; k++ {
+		cu, cv := offCentre(k)
+		c.apart[k] = make([]uint8, len(c.n))
+		for i := range c.apart[k] {
+			u, v := c.u0+float64(i%c.cols)*c.du-cu, c.v0+float64(i/c.cols)*c.dv-cv
+			c.apart[k][i] = uint8(min(int(math.Sqrt(u*u+v*v)*polarRings), polarRings-1)) + 1
+		}
+	}
 }
 
 // findRing looks for the ring from a radius out to the edge.

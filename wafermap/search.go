@@ -111,7 +111,8 @@ func (f *field) rank(found []*explained, c []*pattern) []*explained {
 			gain = max(gain, depth-1)
 		}
 		if len(found) > 0 { // what it adds to the others, overlap and all
-			gain += f.fitMixture(f.split(m, x)).likelihood - before - depth
+			both, _ := f.countSplit(m, x)
+			gain += f.fitMixture(both).likelihood - before - depth
 		}
 		p.named = p.net + gain - p.gain - p.freedom()/4*math.Log(2*max(gain, 1))
 		all = append(all, x)

@@ -2,6 +2,7 @@ package wafermap
 
 import (
 	"math"
+	"math/bits"
 	"slices"
 )
 
@@ -83,23 +84,16 @@ func (f *field) close(found []*explained) {
 // beside it is taken for a mending of its outline. Some shapes a wafer has only once.
 var mending = [shapes_]float64{shapeRing: 1, shapeCentre: 1, shapeRamp: 1, shapeAnnulus: 0.5, shapeArc: 0.25, shapeSector: 0.25, shapeBlob: 0.25, shapeLine: 0.25, shapeBand: 0.25, shapeOrder: 0.25}
 
+const nearLayers = 7 // up to which a die counts as on a pattern or next to it
+
 // touches reports whether a pattern lies on or next to another.
 func touches(x *explained, others []*explained) bool {
-	const near = 7 // layers
 	for _, y := range others {
-		var both, inX, inY int
-		for i, d := range x.depth {
-			switch e := y.depth[i]; {
-			case d <= near && e <= near:
-				both++
-				fallthrough
-			case d <= near:
-				inX++
-			case e <= near:
-				inY++
-			}
+		both := 0
+		for k, near := range x.near {
+			both += bits.OnesCount64(near & y.near[k])
 		}
-		if x.shape == shapeRamp || y.shape == shapeRamp || float64(both) > 0.05*float64(min(inX, inY+both)) {
+		if x.shape == shapeRamp || y.shape == shapeRamp || float64(both) > 0.05*float64(min(x.dice, y.dice)) {
 			return true
 		}
 	}

@@ -195,10 +195,8 @@ func (f *field) without(kind string, p float64) Signature {
 	if f.total.o > 0 {
 		s.Strength = 1
 	}
-	for i, r := range f.rows {
-		if f.fail[i] {
-			s.Dice = append(s.Dice, r)
-		}
+	for _, i := range f.failing {
+		s.Dice = append(s.Dice, f.rows[i])
 	}
 	return s
 }
@@ -213,9 +211,11 @@ func (f *field) signatures(found []*explained) []Signature {
 	m := f.mix(found)
 	t := f.fitMixture(m)
 	loss := make([]float64, len(found))
+	rate, without := t.rates(m, -1), make([][]float64, len(found))
 	for k := range found {
+		without[k] = t.rates(m, k)
 		for c, n := range m.n {
-			loss[k] += n * (t.rate(m, c, -1) - t.rate(m, c, k)) / f.total.n
+			loss[k] += n * (rate[c] - without[k][c]) / f.total.n
 		}
 	}
 	for k, x := range found {
@@ -232,7 +232,7 @@ func (f *field) signatures(found []*explained) []Signature {
 		if x.hidden {
 			continue
 		}
-		s := Signature{Kind: f.kind(x.pattern), PValue: max(x.p, smallestP), Loss: max(0, loss[k]), Outline: f.outline(x, m, t)}
+		s := Signature{Kind: f.kind(x.pattern), PValue: max(x.p, smallestP), Loss: max(0, loss[k]), Outline: f.outline(x, m, rate)}
 		s.Strength = min(1, s.Loss/f.mean)
 		dice, fails := 0.0, 0.0
 		for i, d := range x.depth {
@@ -240,7 +240,7 @@ func (f *field) signatures(found []*explained) []Signature {
 				continue
 			}
 			dice++
-			s.Background += t.rate(m, int(m.kind[i]), k)
+			s.Background += without[k][m.kind[i]]
 			if f.fail[i] {
 				fails++
 				s.Dice = append(s.Dice, f.rows[i])

@@ -76,8 +76,6 @@ func (l *sumLaw) group(sorted []float64) {
 // tails returns a sum of k values in standard deviations, and its two-sided chance: twice
 // that of a sum as far out or further on its side.
 func (l *sumLaw) tails(k int, sum float64) (z, p float64) {
-	n, count := float64(l.n), float64(k)
-	z = (sum - count*l.mean) / (l.sd * math.Sqrt(count*(n-count)/(n-1)))
 	if k >= len(l.tables) {
 		l.tables = append(l.tables, make([]*sumTable, k+1-len(l.tables))...)
 	}
@@ -88,8 +86,11 @@ func (l *sumLaw) tails(k int, sum float64) (z, p float64) {
 		} else {
 			t = l.drawn(k)
 		}
+		n, count := float64(l.n), float64(k)
+		t.mean, t.sd = count*l.mean, l.sd*math.Sqrt(count*(n-count)/(n-1))
 		l.tables[k] = t
 	}
+	z = (sum - t.mean) / t.sd
 	return z, min(1, 2*t.tail(z, sum))
 }
 
@@ -97,6 +98,7 @@ func (l *sumLaw) tails(k int, sum float64) (z, p float64) {
 // logarithm to interpolate.
 type sumTable struct {
 	exact        bool
+	mean, sd     float64 // of the sum
 	upper, lower []float64
 }
 

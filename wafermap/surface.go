@@ -72,6 +72,16 @@ func polynomial(c *[monomials]float64, u, v float64) float64 {
 	return sum
 }
 
+// alongRow are the coefficients of the powers of u at one v.
+func alongRow(c *[monomials]float64, v float64) (p [surfaceOrder + 1]float64) {
+	for i := range p { // of u^i: c of order i+j, place j, times v^j
+		for j := surfaceOrder - i; j >= 0; j-- {
+			p[i] = p[i]*v + c[(i+j)*(i+j+1)/2+j]
+		}
+	}
+	return p
+}
+
 // powers fills in the monomials u^i v^j.
 func powers(m *[monomials]float64, u, v float64) {
 	m[0] = 1
@@ -86,22 +96,34 @@ func powers(m *[monomials]float64, u, v float64) {
 	}
 }
 
-// addPowers adds the monomials u^i v^j to sums.
-func addPowers(sum *[monomials]float64, u, v float64) {
-	var ui [surfaceOrder + 1]float64
-	ui[0] = 1
+// powerRun gathers the monomials of dice next to each other in a row, which have v in common.
+type powerRun struct {
+	v, n float64
+	u    [surfaceOrder + 1]float64 // sums of powers
+}
+
+func (r *powerRun) add(u float64) {
+	r.n++
+	ui := u
 	for i := 1; i <= surfaceOrder; i++ {
-		ui[i] = ui[i-1] * u
+		r.u[i] += ui
+		ui *= u
 	}
+}
+
+// flush adds the monomials u^i v^j to sums and empties the run.
+func (r *powerRun) flush(sum *[monomials]float64) {
+	r.u[0] = r.n
 	vj := 1.0
 	for j := range surfaceOrder + 1 {
 		at := j*(j+1)/2 + j // of u^0 v^j; u^i v^j is in order i+j
 		for i := 0; i <= surfaceOrder-j; i++ {
-			sum[at] += ui[i] * vj
+			sum[at] += r.u[i] * vj
 			at += i + j + 1
 		}
-		vj *= v
+		vj *= r.v
 	}
+	*r = powerRun{}
 }
 
 // zernikePowers holds each term's coefficients of the monomials.
@@ -231,6 +253,8 @@ func (b *SurfaceBasis) group() {
 	b.cell = make([]int32, len(b.rows))
 	var index [(cellsAcross + 1) * (cellsAcross + 1)]int32 // cells by place, counted from 1
 	var count []float64
+	var run powerRun
+	last := int32(-1) // cell of the run
 	for i := range b.rows {
 		k := int32(i)
 		if len(b.rows) > diceAsCells {
@@ -246,11 +270,20 @@ func (b *SurfaceBasis) group() {
 		}
 		b.cell[i] = k
 		c := &b.cells[k]
-		addPowers(&c.z, b.u[i], b.v[i])
+		if k != last || b.v[i] != run.v {
+			if last >= 0 {
+				run.flush(&b.cells[last].z)
+			}
+			run.v, last = b.v[i], k
+		}
+		run.add(b.u[i])
 		c.u += b.u[i]
 		c.v += b.v[i]
 		c.edge += edgeTerm(math.Sqrt(b.u[i]*b.u[i] + b.v[i]*b.v[i]))
 		count[k]++
+	}
+	if last >= 0 {
+		run.flush(&b.cells[last].z)
 	}
 	blocks := int32(min(max(math.Sqrt(4/math.Pi*float64(len(b.rows)))/6, 4), blocksAcross))
 	for k := range b.cells {

@@ -189,7 +189,7 @@ func (w *surfaceWork) start() {
 
 // weigh sets the weights from the distances to the surface.
 func (w *surfaceWork) weigh() {
-	type plane struct{ s, su, sv float64 }
+	type plane struct{ s, su, sv, mid float64 }
 	planes := make([]plane, len(w.b.cells))
 	for c := range w.b.cells {
 		cell := &w.b.cells[c]
@@ -201,21 +201,21 @@ func (w *surfaceWork) weigh() {
 	}
 	stride := max(1, len(w.y)/scaleSample)
 	sample := make([]float64, 0, scaleSample+1)
+	for c := range planes { // from the cell's middle to the wafer's
+		planes[c].mid = planes[c].su*w.b.cells[c].u + planes[c].sv*w.b.cells[c].v
+	}
+	weight, near, y := w.weight[:len(w.at)], w.near[:len(w.at)], w.y[:len(w.at)]
 	for i, p := range w.at {
-		c := w.b.cell[p]
-		cell := &w.b.cells[c]
-		w.near[i] = w.y[i] - planes[c].su*(w.b.u[p]-cell.u) - planes[c].sv*(w.b.v[p]-cell.v)
-		w.weight[i] = w.near[i] - planes[c].s // for now the residual
-		if i%stride == 0 {
-			sample = append(sample, math.Abs(w.weight[i]))
-		}
+		c := &planes[w.b.cell[p]]
+		near[i] = y[i] - (c.su*w.b.u[p] + c.sv*w.b.v[p] - c.mid)
+		weight[i] = near[i] - c.s // for now the residual
+	}
+	for i := 0; i < len(weight); i += stride {
+		sample = append(sample, math.Abs(weight[i]))
 	}
 	w.scale = max(madFactor*w.selector.Median(sample), 1e-6*w.scale0)
-	for i, r := range w.weight {
-		t := r / (tukeyTuning * w.scale)
-		w.weight[i] = 0
-		if t*t < 1 {
-			w.weight[i] = sq(1 - t*t)
-		}
+	reach := 1 / sq(tukeyTuning*w.scale)
+	for i, r := range weight {
+		weight[i] = sq(max(0, 1-r*r*reach))
 	}
 }

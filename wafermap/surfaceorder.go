@@ -110,8 +110,15 @@ func (w *surfaceWork) keep(s *Surface) {
 		}
 	}
 	away := make([]float64, 0, len(w.y))
+	v := nan
+	var row [surfaceOrder + 1]float64
 	for i, p := range w.at {
-		r := w.y[i] + w.mean - polynomial(&s.coefficients, w.b.u[p], w.b.v[p])
+		if w.b.v[p] != v { // dice of a row mostly come together
+			v = w.b.v[p]
+			row = alongRow(&s.coefficients, v)
+		}
+		u := w.b.u[p]
+		r := w.y[i] + w.mean - ((((((row[6]*u+row[5])*u+row[4])*u+row[3])*u+row[2])*u+row[1])*u + row[0])
 		s.Residual[w.b.rows[p]] = r
 		away = append(away, math.Abs(r))
 		if w.weight[i] == 0 {

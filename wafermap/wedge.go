@@ -10,9 +10,13 @@ func (f *field) findSector() *pattern { return f.findWedge(shapeSector, 0, 0, 6,
 func (f *field) findWedge(s shape, r0, r1, narrow, wide int) *pattern {
 	top := 0.0
 	var at [3]int
+	var costs [polarAngles]float64 // by width
+	for width := narrow; width <= wide; width++ {
+		costs[width] = math.Log(polarAngles / float64(width))
+	}
 	value := func(r, start, width int) float64 {
 		t := f.rectangle(r, polarRings, start, width)
-		cost := math.Log(polarAngles / float64(width))
+		cost := costs[width]
 		if t.n < 1 || f.hopeless(t, top+cost) {
 			return 0
 		}

@@ -47,13 +47,14 @@ func newDiagnosis(c *cobra.Command, p *config.Product, mode string) (*build.Diag
 	default:
 		return nil, fmt.Errorf("--calibrate %s: there is no such way; use auto, again or off", mode)
 	}
+	dir := cacheFolder()
+	build.KeepModels(dir)
 	if p == nil || mode == calibrateOff {
 		return build.NewDiagnosis(p)
 	}
 	warn := func(format string, args ...any) {
 		fmt.Fprintf(c.ErrOrStderr(), "warning: %s\n", text.Printable(fmt.Sprintf(format, args...)))
 	}
-	dir := cacheFolder()
 	if mode == calibrateAuto {
 		known := rehearse.Shipped(p)
 		if known == nil && dir != "" {
@@ -97,7 +98,7 @@ func calibrate(c *cobra.Command, p *config.Product, o rehearse.Options) (causes.
 	return rehearse.Calibrate(c.Context(), p, o)
 }
 
-// cacheFolder is where calibrations are kept, "" for nowhere: what KNEEPOINT_CACHE
+// cacheFolder is where calibrations and device models are kept, "" for nowhere: what KNEEPOINT_CACHE
 // names, or kneepoint's part of the user's cache folder. A service without a home, or
 // with one that cannot be written to, has the folder of temporary files instead:
 // better kept for a while than made for every lot.

@@ -84,31 +84,36 @@ func Report(ctx context.Context, in Input) (*reports.Report, error) {
 	if err := w.accounts(ctx); err != nil {
 		return nil, err
 	}
-	if err := w.spread(ctx); err != nil {
-		return nil, err
-	}
-	if err := w.screens(ctx); err != nil {
-		return nil, err
-	}
-	w.associate()
 	w.lotYield()
 	w.bins()
 	w.zones()
-	if err := w.mapsOfLot(ctx); err != nil {
-		return nil, err
-	}
-	if err := w.pictures(); err != nil {
-		return nil, err
-	}
-	if err := w.inferEpi(ctx); err != nil {
-		return nil, err
-	}
-	if err := w.explain(ctx); err != nil {
+	if err := w.chains(ctx); err != nil {
 		return nil, err
 	}
 	w.conclude()
 	w.rep.FillLists()
 	return w.rep, nil
+}
+
+// chains are the parts of the report that know nothing of each other, side by side. Each
+// fills fields of its own.
+func (w *lotwork) chains(ctx context.Context) error {
+	type step func(context.Context) error
+	pictures := func(context.Context) error { return w.pictures() }
+	associate := func(context.Context) error { w.associate(); return nil }
+	group, within := errgroup.WithContext(ctx)
+	group.SetLimit(w.workers())
+	for _, chain := range [][]step{{w.mapsOfLot, pictures}, {w.explain}, {w.spread, w.screens, associate}, {w.inferEpi}} { // longest first
+		group.Go(func() error {
+			for _, s := range chain {
+				if err := s(within); err != nil {
+					return err
+				}
+			}
+			return nil
+		})
+	}
+	return group.Wait()
 }
 
 // accounts makes the account of every test and every wafer, in parallel.

@@ -90,15 +90,15 @@ func deviceModel(p *config.Product, own map[string]float64) (d *device, why stri
 // build builds the model, leaving out tests that have no solution on the device.
 func (d *device) build(dev junction.Device, tests, extra []junction.Test) (*junction.Model, error) {
 	all := append(append([]junction.Test(nil), tests...), extra...)
-	m, err := newModel(dev, all...)
+	m, err := d.newModel(dev, all...)
 	kept := len(extra)
 	if err != nil {
-		if _, bare := newModel(dev); bare != nil {
+		if _, bare := d.newModel(dev); bare != nil {
 			return nil, bare
 		}
 		all, kept = nil, 0
 		for i, t := range append(append([]junction.Test(nil), tests...), extra...) {
-			_, err := newModel(dev, t)
+			_, err := d.newModel(dev, t)
 			switch {
 			case err == nil:
 				all = append(all, t)
@@ -112,7 +112,7 @@ func (d *device) build(dev junction.Device, tests, extra []junction.Test) (*junc
 		if len(all) == kept {
 			return nil, errors.New("no test of the product has a solution on the device of the product file")
 		}
-		if m, err = newModel(dev, all...); err != nil {
+		if m, err = d.newModel(dev, all...); err != nil {
 			return nil, err
 		}
 	}
@@ -126,7 +126,8 @@ func (d *device) build(dev junction.Device, tests, extra []junction.Test) (*junc
 // takes most of a second, and a week has many lots of a product.
 var models struct {
 	sync.Mutex
-	list []builtModel
+	list   []builtModel
+	folder string // see KeepModels
 }
 
 type builtModel struct {
@@ -138,7 +139,7 @@ type builtModel struct {
 // mostModels is how many models are kept.
 const mostModels = 8
 
-func newModel(dev junction.Device, tests ...junction.Test) (*junction.Model, error) {
+func (d *device) newModel(dev junction.Device, tests ...junction.Test) (*junction.Model, error) {
 	models.Lock()
 	defer models.Unlock()
 	key := fmt.Sprintf("%+v %+v", dev, tests)
@@ -148,7 +149,11 @@ func newModel(dev junction.Device, tests ...junction.Test) (*junction.Model, err
 		}
 	}
 	b := builtModel{key: key}
-	b.model, b.err = junction.NewModel(dev, tests...)
+	if models.folder != "" && !d.Own { // else each lot would leave a model behind
+		b.model, b.err = junction.NewKeptModel(modelFolder(models.folder), dev, tests...)
+	} else {
+		b.model, b.err = junction.NewModel(dev, tests...)
+	}
 	models.list = append(models.list, b)
 	if len(models.list) > mostModels {
 		models.list = append([]builtModel(nil), models.list[1:]...)

@@ -1,7 +1,10 @@
 package build
 
 import (
+	"bytes"
 	"math"
+	"os"
+	"path/filepath"
 	"strings"
 	"testing"
 
@@ -79,4 +82,83 @@ func TestDeviceModelDeclines(t *testing.T) {
 	if d == nil || len(d.Tests)-len(d.Monitors) != 1 || !strings.Contains(strings.Join(d.Notes, "; "), "no baseline level for bvcbo") {
 		t.Errorf("one baseline level: %v %s", d, why)
 	}
+}
+
+// TestModelsAreKept wants a model's tables to be found again in their folder, and a product
+// without a baseline, whose model is the lot's own, to leave nothing there.
+func TestModelsAreKept(t *testing.T) {
+	forget := func(folder string) {
+		KeepModels(folder)
+		models.Lock()
+		defer models.Unlock()
+		models.list = nil
+	}
+	defer forget("")
+	dir := filepath.Join(t.TempDir(), "cache")
+	files := func() []string {
+		found, err := filepath.Glob(filepath.Join(dir, "*"))
+		if err != nil {
+			t.Fatal(err)
+		}
+		return found
+	}
+	product := func() *config.Product {
+		p, err := config.LoadProduct("testdata/small.yaml")
+		if err != nil {
+			t.Fatal(err)
+		}
+		return p
+	}
+	own := map[string]float64{}
+	without := product()
+	for name, b := range without.Baseline.Tests {
+		own[name] = b.Median
+	}
+	without.Baseline = nil
+	forget(dir)
+	if d, why := deviceModel(without, own); d == nil || len(files()) != 0 {
+		t.Errorf("without a baseline: %s, %v kept", why, files())
+	}
+	forget(dir)
+	first, why := deviceModel(product(), nil)
+	if first == nil {
+		t.Fatal(why)
+	}
+	kept := files()
+	if len(kept) != 1 || !strings.HasSuffix(kept[0], ".tables") {
+		t.Fatalf("kept %v", kept)
+	}
+	shift := junction.Process{junction.EpiThickness: -0.03, junction.EpiDoping: 0.02}
+	check := func(how string) {
+		t.Helper()
+		forget(dir)
+		again, why := deviceModel(product(), nil)
+		if again == nil {
+			t.Fatal(how, why)
+		}
+		for i := range first.Tests {
+			if a, b := first.Ratio(i, shift), again.Ratio(i, shift); a != b {
+				t.Errorf("%s: %s at %g, was %g", how, first.Tests[i].Name, b, a)
+			}
+		}
+	}
+	check("kept")
+	whole, err := os.ReadFile(kept[0])
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(kept[0], whole[:1000], 0o666); err != nil {
+		t.Fatal(err)
+	}
+	check("cut")
+	if mended, err := os.ReadFile(kept[0]); err != nil || !bytes.Equal(mended, whole) {
+		t.Error("a damaged file was not written again", err)
+	}
+	if err := os.RemoveAll(dir); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(dir, nil, 0o666); err != nil { // no folder
+		t.Fatal(err)
+	}
+	check("not kept")
 }

@@ -133,25 +133,45 @@ func (m mixing) step(parts, next []Part) (logLik float64) {
 		logs[j] = math.Log(p.Weight) - math.Log(p.SD) - 0.5*math.Log(2*math.Pi)
 		inverse[j] = 1 / p.SD
 	}
+	product, factors := 1.0, 0 // of totals, each 1 to k: one logarithm for many
 	for _, c := range m.cells {
 		top := math.Inf(-1)
 		for j, p := range parts {
 			z := (c.mean - p.Mean) * inverse[j]
 			share[j] = logs[j] - 0.5*z*z
-			top = math.Max(top, share[j])
+			if share[j] > top {
+				top = share[j]
+			}
 		}
 		total := 0.0
 		for j := range share {
-			if d := share[j] - top; d > -40 {
+			switch d := share[j] - top; {
+			case d == 0:
+				share[j] = 1
+				total++
+			case d > -40:
 				share[j] = math.Exp(d)
 				total += share[j]
-			} else {
+			default:
 				share[j] = 0
 			}
 		}
-		logLik += c.n * (top + math.Log(total))
+		logLik += c.n * top
+		if c.n <= 4 {
+			for n := c.n; n > 0; n-- {
+				product *= total
+				factors++
+			}
+			if factors >= 64 { // 8^68 is far from the largest number
+				logLik += math.Log(product)
+				product, factors = 1, 0
+			}
+		} else {
+			logLik += c.n * math.Log(total)
+		}
+		scale := c.n / total
 		for j, p := range parts {
-			if w := c.n * share[j] / total; w > 0 {
+			if w := scale * share[j]; w > 0 {
 				d := c.mean - p.Mean
 				sums[3*j] += w
 				sums[3*j+1] += w * d
@@ -159,6 +179,7 @@ func (m mixing) step(parts, next []Part) (logLik float64) {
 			}
 		}
 	}
+	logLik += math.Log(product)
 	for _, b := range m.bounds {
 		top := math.Inf(-1)
 		for j, p := range parts {

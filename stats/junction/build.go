@@ -65,7 +65,8 @@ func (m *Model) openBaseTables() int {
 	return i
 }
 
-func (m *Model) build() error {
+func (m *Model) build(kept *tape) error {
+	m.tables, m.rims = nil, nil
 	m.grid = plane2{
 		newAxis(math.Log(MinThicknessRatio), math.Log(MaxThicknessRatio), 33),
 		newAxis(math.Log(MinDopingRatio), math.Log(MaxDopingRatio), 16),
@@ -107,14 +108,14 @@ func (m *Model) build() error {
 			r.first = m.table(layerWidth, math.Max(0, t.Voltage-junctionVBE))
 		}
 	}
-	if err := m.fillPlane(); err != nil {
+	if err := m.fillPlane(kept); err != nil {
 		return err
 	}
 	if err := m.base.fill(m); err != nil {
 		return err
 	}
 	if needRim {
-		m.rims = m.fillRims()
+		m.rims = m.fillRims(kept)
 	}
 	for i := range m.Tests {
 		t, r := &m.Tests[i], &m.recipes[i]
@@ -152,9 +153,9 @@ func (m *Model) processAt(u, v float64, rest *Process) Process {
 // between they are interpolated on straight lines.
 const weakEveryU, weakEveryV = 4, 5
 
-func (m *Model) fillPlane() error {
-	g := m.grid
-	n := g.u.n * g.v.n
+// fillPlane computes the plane junction's tables, or takes them from a tape.
+func (m *Model) fillPlane(kept *tape) error {
+	n := m.grid.u.n * m.grid.v.n
 	for k := range m.tables {
 		t := &m.tables[k]
 		t.f = make(surface, n)
@@ -162,33 +163,34 @@ func (m *Model) fillPlane() error {
 			t.weak[w] = make(surface, n)
 		}
 	}
-	const step = 0.05
+	if !kept.reading {
+		if err := m.computePlane(n); err != nil {
+			return err
+		}
+	}
+	for k := range m.tables {
+		kept.row(m.tables[k].f)
+		for w := range weak {
+			kept.row(m.tables[k].weak[w])
+		}
+	}
+	return nil
+}
+
+func (m *Model) computePlane(n int) error {
+	g := m.grid
 	each(n, func(i int) {
-		u, v := g.u.at(i/g.v.n), g.v.at(i%g.v.n)
 		vals := make([]float64, len(m.tables))
-		other := make([]float64, len(m.tables))
-		m.planeAt(vals, m.processAt(u, v, &Process{}))
+		m.planeAt(vals, m.processAt(g.u.at(i/g.v.n), g.v.at(i%g.v.n), &Process{}))
 		for k := range vals {
 			m.tables[k].f[i] = vals[k]
 		}
 		if (i/g.v.n)%weakEveryU != 0 || (i%g.v.n)%weakEveryV != 0 {
 			return
 		}
-		for w, param := range weak {
-			h := step
-			if param == Temperature {
-				h = 0.01
-			}
-			if param == UpDiffusion && m.Device.UpDiffusionUM == 0 {
-				continue
-			}
-			var rest Process
-			rest[param] = h
-			m.planeAt(vals, m.processAt(u, v, &rest))
-			rest[param] = -h
-			m.planeAt(other, m.processAt(u, v, &rest))
-			for k := range vals {
-				m.tables[k].weak[w][i] = (vals[k] - other[k]) / (2 * h)
+		for w := range weak {
+			for k, slope := range m.weakAt(w, i) {
+				m.tables[k].weak[w][i] = slope
 			}
 		}
 	})
@@ -203,6 +205,29 @@ func (m *Model) fillPlane() error {
 		}
 	}
 	return nil
+}
+
+// weakAt is how all quantities follow a weak parameter at node i; nil where the device has
+// none of it.
+func (m *Model) weakAt(w, i int) []float64 {
+	param, h := weak[w], 0.05
+	if param == Temperature {
+		h = 0.01
+	}
+	if param == UpDiffusion && m.Device.UpDiffusionUM == 0 {
+		return nil
+	}
+	u, v := m.grid.u.at(i/m.grid.v.n), m.grid.v.at(i%m.grid.v.n)
+	vals, other := make([]float64, len(m.tables)), make([]float64, len(m.tables))
+	var rest Process
+	rest[param] = h
+	m.planeAt(vals, m.processAt(u, v, &rest))
+	rest[param] = -h
+	m.planeAt(other, m.processAt(u, v, &rest))
+	for k := range vals {
+		vals[k] = (vals[k] - other[k]) / (2 * h)
+	}
+	return vals
 }
 
 // fillBetween interpolates a surface of which only every few nodes are set.

@@ -63,24 +63,34 @@ type rimTable struct {
 	surface    float64 // nominal doping under the oxide, cm^-3
 }
 
-func (m *Model) fillRims() *rimTable {
+func (m *Model) fillRims(kept *tape) *rimTable {
 	t := &rimTable{n: newAxis(-1.3, 2.4, 8), r: newAxis(-1.2, 0.9, 7), s: newAxis(0, 1, 9), surface: m.nominal.surface}
 	t.f = make([]float64, t.n.n*t.r.n*t.s.n)
-	x := m.nominal
-	at := func(n, r, s, ns, kelvin float64) float64 {
-		rj := x.rj * math.Exp(r)
-		c := newRim(x.surface*math.Exp(n), ns, rj, s < 1, rj*s/(1-s))
-		law := overstraeten(kelvin, m.nat.fieldScale)
-		return math.Log(c.breakdown(&law, kelvin))
+	if !kept.reading {
+		each(len(t.f), func(i int) { t.f[i] = m.rimNode(t, i) })
+		x := m.nominal
+		s := m.Device.CornerRadiusUM * um / (m.Device.CornerRadiusUM*um + x.rj)
+		const h = 0.05
+		t.dose = (m.rimAt(0, 0, s, x.prof.ns*math.Exp(h), x.kelvin) - m.rimAt(0, 0, s, x.prof.ns*math.Exp(-h), x.kelvin)) / (2 * h)
+		t.heat = (m.rimAt(0, 0, s, x.prof.ns, x.kelvin*1.01) - m.rimAt(0, 0, s, x.prof.ns, x.kelvin/1.01)) / (2 * math.Log(1.01))
 	}
-	each(len(t.f), func(i int) {
-		t.f[i] = at(t.n.at(i/(t.r.n*t.s.n)), t.r.at(i/t.s.n%t.r.n), t.s.at(i%t.s.n), x.prof.ns, x.kelvin)
-	})
-	s := m.Device.CornerRadiusUM * um / (m.Device.CornerRadiusUM*um + x.rj)
-	const h = 0.05
-	t.dose = (at(0, 0, s, x.prof.ns*math.Exp(h), x.kelvin) - at(0, 0, s, x.prof.ns*math.Exp(-h), x.kelvin)) / (2 * h)
-	t.heat = (at(0, 0, s, x.prof.ns, x.kelvin*1.01) - at(0, 0, s, x.prof.ns, x.kelvin/1.01)) / (2 * math.Log(1.01))
+	kept.row(t.f)
+	kept.number(&t.dose)
+	kept.number(&t.heat)
 	return t
+}
+
+// rimAt is ln of the curved junction's breakdown.
+func (m *Model) rimAt(n, r, s, ns, kelvin float64) float64 {
+	rj := m.nominal.rj * math.Exp(r)
+	c := newRim(m.nominal.surface*math.Exp(n), ns, rj, s < 1, rj*s/(1-s))
+	law := overstraeten(kelvin, m.nat.fieldScale)
+	return math.Log(c.breakdown(&law, kelvin))
+}
+
+// rimNode is node i of the table.
+func (m *Model) rimNode(t *rimTable, i int) float64 {
+	return m.rimAt(t.n.at(i/(t.r.n*t.s.n)), t.r.at(i/t.s.n%t.r.n), t.s.at(i%t.s.n), m.nominal.prof.ns, m.nominal.kelvin)
 }
 
 // log is ln of the breakdown at logs of the ratios of doping under the oxide and

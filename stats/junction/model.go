@@ -46,6 +46,18 @@ func NewModel(device Device, tests ...Test) (*Model, error) {
 }
 
 func newModel(device Device, nat nature, tests []Test) (*Model, error) {
+	m, err := anchored(device, nat, tests)
+	if err != nil {
+		return nil, err
+	}
+	if err := m.fill(&tape{}); err != nil {
+		return nil, err
+	}
+	return m, nil
+}
+
+// anchored is a model without its tables.
+func anchored(device Device, nat nature, tests []Test) (*Model, error) {
 	m := &Model{nat: nat}
 	var err error
 	if m.Device, m.Assumed, err = device.complete(); err != nil {
@@ -63,23 +75,38 @@ func newModel(device Device, nat nature, tests []Test) (*Model, error) {
 	}
 	m.FieldScale = m.nat.fieldScale
 	m.nominal = m.Device.make(&Process{}, &m.nat)
-	if err := m.build(); err != nil {
-		return nil, err
+	return m, nil
+}
+
+// fill makes a model's tables and levels; the tables go to a tape, or come from it.
+func (m *Model) fill(kept *tape) error {
+	if err := m.build(kept); err != nil {
+		return err
 	}
 	m.levels = make([]float64, len(m.Tests))
 	var s spot
 	m.locate(&s, &Process{})
 	for i := range m.Tests {
 		if m.levels[i] = m.log(i, &s); math.IsNaN(m.levels[i]) || math.IsInf(m.levels[i], 0) {
-			return nil, fmt.Errorf("junction: test %q has no solution on this device at its bias (voltage %g V, current %g A)",
+			return fmt.Errorf("junction: test %q has no solution on this device at its bias (voltage %g V, current %g A)",
 				m.Tests[i].Name, m.Tests[i].Voltage, m.Tests[i].Current)
 		}
 	}
 	m.linear = make([]linear, len(m.Tests))
-	each(len(m.Tests), func(i int) {
-		m.linear[i] = m.linearAt(0, 0, &Process{}, func(s *spot, _ float64) float64 { return m.log(i, s) - m.levels[i] })
-	})
-	return m, nil
+	if !kept.reading {
+		each(len(m.Tests), func(i int) {
+			m.linear[i] = m.linearAt(0, 0, &Process{}, func(s *spot, _ float64) float64 { return m.log(i, s) - m.levels[i] })
+		})
+	}
+	for i := range m.linear {
+		l := &m.linear[i]
+		if kept.reading {
+			l.resp = make(surface, m.grid.u.n*m.grid.v.n)
+		}
+		kept.row(l.resp)
+		kept.row(l.slopes[:])
+	}
+	return nil
 }
 
 // Find returns the index of the test of a name, -1 when there is none.

@@ -171,6 +171,8 @@ type mcd struct {
 	centre, scale []float64
 	rows          []int32 // with all readings
 	p             int
+	slot          []int32   // by die: 1 + its place in seen, 0 for none
+	seen          []float64 // dice looked at often, in these units, p values each
 }
 
 func newMCD(columns [][]float64) (*mcd, string) {
@@ -205,7 +207,28 @@ func newMCD(columns [][]float64) (*mcd, string) {
 	return m, ""
 }
 
+// remember makes rows ready that will be gathered many times.
+func (m *mcd) remember(rows []int32) {
+	seen := make([]float64, len(rows)*m.p)
+	for k, i := range rows {
+		m.gather(i, seen[k*m.p:(k+1)*m.p])
+	}
+	if m.slot == nil {
+		m.slot = make([]int32, len(m.columns[0]))
+	}
+	clear(m.slot)
+	for k, i := range rows {
+		m.slot[i] = int32(k) + 1
+	}
+	m.seen = seen
+}
+
 func (m *mcd) gather(i int32, x []float64) {
+	if m.slot != nil && m.slot[i] > 0 {
+		at := (int(m.slot[i]) - 1) * m.p
+		copy(x, m.seen[at:at+m.p])
+		return
+	}
 	for j, c := range m.columns {
 		x[j] = (c[i] - m.centre[j]) / m.scale[j]
 	}
@@ -367,6 +390,7 @@ func (m *mcd) search(h int) (ellipse, bool) {
 		}
 		part = (sample*h + len(m.rows) - 1) / len(m.rows)
 	}
+	m.remember(rows)
 	r := rand.New(rand.NewPCG(1999, 41))
 	var best []ellipse
 	keep := func(e ellipse) {
@@ -418,6 +442,7 @@ func (m *mcd) search(h int) (ellipse, bool) {
 			}
 			part = (end*h + len(m.rows) - 1) / len(m.rows)
 		}
+		m.remember(rows)
 		return m.settle(best[0], rows, part, 30, 1e-6), true
 	}
 	return best[0], true

@@ -66,6 +66,18 @@ func (p *places) at(x, y int32) int32 {
 // around calls f with every other die within so many columns and rows of die i.
 func (p *places) around(i, radius int, f func(j int32)) {
 	r := int64(radius)
+	if cx, cy := int(p.x[i]-p.x0), int(p.y[i]-p.y0); p.sparse == nil && cx >= radius && cx+radius < p.w && cy >= radius && cy+radius < p.h {
+		for row := cy - radius; row <= cy+radius; row++ { // all of the square is on the grid
+			for _, j := range p.first[row*p.w+cx-radius : row*p.w+cx+radius+1] {
+				for ; j >= 0; j = p.next[j] {
+					if int(j) != i {
+						f(j)
+					}
+				}
+			}
+		}
+		return
+	}
 	for dy := -r; dy <= r; dy++ {
 		for dx := -r; dx <= r; dx++ {
 			x, y := int64(p.x[i])+dx, int64(p.y[i])+dy
@@ -132,6 +144,7 @@ func NeighbourResidual(x, y []int32, v []float64, censor []int8, o NeighbourOpti
 		return censor[i]
 	}
 	near := make([]float64, 0, (2*o.Radius+1)*(2*o.Radius+1))
+	usual := math.NaN() // level of the die before, which mostly is the neighbour
 	for i := range x {
 		r.Residual[i] = math.NaN()
 		if v[i] != v[i] {
@@ -149,7 +162,9 @@ func NeighbourResidual(x, y []int32, v []float64, censor []int8, o NeighbourOpti
 		if len(near) < o.Minimum {
 			continue
 		}
-		if level := medianOf(near); !math.IsInf(level, 0) && level == level && !math.IsInf(v[i], 0) {
+		level := medianAbout(usual, near)
+		usual = level
+		if !math.IsInf(level, 0) && level == level && !math.IsInf(v[i], 0) {
 			r.Residual[i] = v[i] - level
 			r.N++
 		}
@@ -171,6 +186,45 @@ func NeighbourResidual(x, y []int32, v []float64, censor []int8, o NeighbourOpti
 	return r
 }
 
+// medianAbout is the median of a few values, which it reorders; guess is where it may lie.
+// From the guess a good one is a few steps away.
+func medianAbout(guess float64, v []float64) float64 {
+	const mostSteps = 6
+	low := 0 // values below the guess go first
+	for i, u := range v {
+		v[i] = v[low]
+		v[low] = u
+		if u < guess {
+			low++
+		}
+	}
+	below, above := v[:low], v[low:]
+	upper := len(v) / 2 // rank of the upper of the two in the middle
+	lower := upper
+	if len(v)%2 == 0 {
+		lower--
+	}
+	if low-lower > mostSteps || upper-low >= mostSteps {
+		return medianOf(v)
+	}
+	for k := 1; k <= low-lower; k++ { // the largest of those below come last, in order
+		last := low - k
+		for i := range last {
+			if below[i] > below[last] {
+				below[i], below[last] = below[last], below[i]
+			}
+		}
+	}
+	for k := 0; k <= upper-low; k++ { // and the smallest of those above first
+		for i := k + 1; i < len(above); i++ {
+			if above[i] < above[k] {
+				above[i], above[k] = above[k], above[i]
+			}
+		}
+	}
+	return middle(v[lower], v[upper])
+}
+
 // medianOf is the median of a few values, which it sorts.
 func medianOf(v []float64) float64 {
 	for i := 1; i < len(v); i++ {
@@ -181,13 +235,14 @@ func medianOf(v []float64) float64 {
 		v[j] = u
 	}
 	n := len(v)
-	if n%2 == 1 {
-		return v[n/2]
+	return middle(v[(n-1)/2], v[n/2])
+}
+
+func middle(a, b float64) float64 {
+	if a == b {
+		return b
 	}
-	if v[n/2-1] == v[n/2] {
-		return v[n/2]
-	}
-	return v[n/2-1]/2 + v[n/2]/2
+	return a/2 + b/2
 }
 
 // Neighbourhood is the outcome of [BadNeighbourhood].

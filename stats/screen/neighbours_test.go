@@ -144,3 +144,32 @@ func BenchmarkNeighbourResidual(b *testing.B) {
 		NeighbourResidual(x, y, v, nil, Nearby())
 	}
 }
+
+// TestMedianAbout wants the median whatever the guess.
+func TestMedianAbout(t *testing.T) {
+	r := rand.New(rand.NewPCG(4, 24))
+	for n := 1; n < 30; n++ {
+		for k := range 60 {
+			v := make([]float64, n)
+			for i := range v {
+				switch r.IntN(8) {
+				case 0:
+					v[i] = math.Inf(r.IntN(2)*2 - 1)
+				case 1:
+					v[i] = float64(r.IntN(2))
+				default:
+					v[i] = r.NormFloat64()
+				}
+			}
+			guess := [...]float64{math.NaN(), math.Inf(1), math.Inf(-1), 0, r.NormFloat64(), v[r.IntN(n)]}[k%6]
+			sorted := slices.Sorted(slices.Values(v))
+			want := sorted[n/2]
+			if a := sorted[(n-1)/2]; a != want {
+				want = a/2 + want/2
+			}
+			if got := medianAbout(guess, v); got != want && !(math.IsNaN(got) && math.IsNaN(want)) {
+				t.Fatalf("%v about %g: %g, want %g", sorted, guess, got, want)
+			}
+		}
+	}
+}
