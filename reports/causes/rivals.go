@@ -88,7 +88,7 @@ func (v *Verdict) reasonsOfNone(unknown bool) []Reason {
 		diceView:  fmt.Sprintf("dice that stand alone: %.0f, of which %.0f beyond healthy lots", sumOf(j.e.single(j.dice.classes)), j.dice.sum),
 		mapView:   "maps of the dice that stand alone: " + j.mainPatterns(),
 		flagView:  "flags of the tester: " + j.raisedFlags(),
-		lossView:  j.lossReason(0).Text,
+		lossView:  j.lossReason(nil, 0).Text,
 	}
 	var out []Reason
 	for i := range text {

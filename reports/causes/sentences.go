@@ -57,7 +57,8 @@ func (v *Verdict) reasonsOf(g *Judged, a *attribution) []Reason {
 	all = append(all, v.j.diceReasons(e, w.View[diceView]*h.views[diceView])...)
 	all = append(all, v.j.mapReasons(e, w.View[mapView])...)
 	all = append(all, v.j.flagReasons(e, w.View[flagView])...)
-	all = append(all, v.j.lossReason(w.View[lossView]*h.views[lossView]))
+	all = append(all, smoothReason(g.see, e, w.View[flagView])...)
+	all = append(all, v.j.lossReason(e, w.View[lossView]*h.views[lossView]))
 	return append(all, v.rivalReason(g)...)
 }
 
@@ -337,11 +338,27 @@ func (j *judged) flagReasons(e *Entry, weight float64) []Reason {
 	return out
 }
 
-func (j *judged) lossReason(total float64) Reason {
+// smoothReason says whether the levels vary over the wafer as they do with the cause.
+func smoothReason(x *seen, e *Entry, weight float64) []Reason {
+	v := x.smooth(e.Smooth)
+	switch {
+	case v == 0:
+		return nil
+	case x.zones > varies:
+		return []Reason{{LogOdds: weight * v, Text: fmt.Sprintf("levels vary over the wafer, as with this cause in %.0f %% of lots", 100*e.Smooth)}}
+	}
+	return []Reason{{LogOdds: weight * v, Text: fmt.Sprintf("levels are off alike all over the wafer, as with this cause in %.0f %% of lots", 100*(1-e.Smooth))}}
+}
+
+// lossReason is about the yield; e is nil for the unknown.
+func (j *judged) lossReason(e *Entry, total float64) Reason {
 	loss, usual := 100*(1-j.e.yield()), 100*j.e.healthyLoss()
 	text := fmt.Sprintf("%.1f %% of the dice fail, where healthy lots lose %.1f %%", loss, usual)
 	if !(j.e.cols.BaselineYield > 0) {
 		text = fmt.Sprintf("%.1f %% of the dice fail; what healthy lots lose is not known, %.0f %% is taken", loss, usual)
+	}
+	if j.e.Flags["fails-without-reason"] && (e == nil || !e.Setup) {
+		text += "; part of these pass every limit, which nothing on the wafer makes them do"
 	}
 	return Reason{LogOdds: total, Text: text}
 }

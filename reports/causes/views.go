@@ -115,10 +115,16 @@ func (x *seen) views() views {
 	return v
 }
 
+// Nats of a view of levels from which on they are off, and vary over the wafer: healthy
+// wafers vary a little in many directions.
+const (
+	shows  = 4
+	varies = 12
+)
+
 // smooth says for a cause whose size varies over the wafer with a given chance what it
 // counts that this lot's does or does not, once its levels show at all.
 func (x *seen) smooth(chance float64) float64 {
-	const shows, varies = 4, 12 // nats; healthy wafers vary a little in many directions
 	switch {
 	case x == nil || chance == 0:
 		return 0

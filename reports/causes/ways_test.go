@@ -78,6 +78,10 @@ func TestSmoothCountsOnlyWhereLevelsShow(t *testing.T) {
 			t.Errorf("%s: %g, not %g", c.name, got, c.want)
 		}
 	}
+	even := smoothReason(&seen{lot: 12}, &Entry{Smooth: 0.8}, 0.5)
+	if len(even) != 1 || !strings.Contains(even[0].Text, "alike all over the wafer") || math.Abs(even[0].LogOdds-0.5*math.Log(0.4)) > 1e-12 {
+		t.Errorf("said of even levels: %+v", even)
+	}
 	var none *seen
 	if none.smooth(0.8) != 0 || (&seen{lot: 12}).smooth(0) != 0 {
 		t.Error("a cause that moves nothing, or of which nothing is known, counts")
