@@ -8,14 +8,14 @@ import "math"
 type Alike struct {
 	A, B   string
 	Cosine float64
-	// Told says that this lot tells them apart all the same, twenty to one: by single
+	// Told says that this lot tells them apart all the same, ten to one: by single
 	// dice, maps or flags, or because its shift is so large that a small angle counts.
 	Told bool
 }
 
 const (
 	alikeCosine = 0.95
-	toldApart   = 3 // nats between two causes: twenty to one
+	toldApart   = 2.3 // nats between two causes: ten to one
 )
 
 // alike compares the directions of all causes that shift levels, at a middle size, in
