@@ -183,7 +183,7 @@ func geometryLine(g ingest.Geometry) string {
 		parts = append(parts, "flat or notch "+g.Notch)
 	}
 	if g.XGrows != "" || g.YGrows != "" {
-		parts = append(parts, strings.TrimSpace(fmt.Sprintf("x grows %s, y grows %s", cmp.Or(g.XGrows, "?"), cmp.Or(g.YGrows, "?"))))
+		parts = append(parts, fmt.Sprintf("x grows %s, y grows %s", cmp.Or(g.XGrows, "?"), cmp.Or(g.YGrows, "?")))
 	}
 	if g.CentreX != ingest.Missing && g.CentreY != ingest.Missing {
 		parts = append(parts, fmt.Sprintf("centre die %d, %d", g.CentreX, g.CentreY))

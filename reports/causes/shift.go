@@ -57,14 +57,13 @@ func (f *frame) newDensity(sigma, extra, centre []float64) *density {
 			s[i*n+i] += extra[i] * extra[i]
 		}
 	}
-	diagonal := make([]float64, n)
-	for i := range diagonal {
-		diagonal[i] = s[i*n+i]
-	}
 	if _, ok := lapack64.Potrf(blas64.Symmetric{N: n, Stride: n, Data: s, Uplo: blas.Lower}); !ok {
 		clear(s) // cannot be: a correlation drawn towards none
-		for i, v := range diagonal {
-			s[i*n+i] = math.Sqrt(v)
+		for i := range n {
+			s[i*n+i] = sigma[i]
+			if extra != nil {
+				s[i*n+i] = math.Hypot(sigma[i], extra[i])
+			}
 		}
 	}
 	d := &density{n: n, shift: centre, low: s, inv: make([]float64, n)}

@@ -260,25 +260,25 @@ func (s *sample) seeZones(v *variant, x *seen) {
 // stand still. One kind alone is a matter of the tester. It gives the best of these, and
 // the log of their mean likelihood over its own.
 func (f *frame) seeUnknown(s *sample) (best *seen, share float64) {
-	merit := func(x *seen) float64 { return usualLevels(x.views()) }
 	best = s.see(f.offIn(nil))
-	merits := []float64{merit(best)}
+	most := usualLevels(best.views())
+	ways := []float64{most}
 	var pairs []float64
-	top := best
 	kinds := f.kinds()
 	for a := range kinds {
 		for b := range a {
 			x := s.see(f.offIn(append(slices.Clone(kinds[a]), kinds[b]...)))
-			pairs = append(pairs, merit(x))
-			if merit(x) > merit(top) {
-				top = x
+			merit := usualLevels(x.views())
+			pairs = append(pairs, merit)
+			if merit > most {
+				best, most = x, merit
 			}
 		}
 	}
 	if len(pairs) > 0 {
-		merits = append(merits, logMean(pairs))
+		ways = append(ways, logMean(pairs))
 	}
-	return top, logMean(merits) - merit(top)
+	return best, logMean(ways) - most
 }
 
 // usualLevels weighs the views of levels as the usual weights do.

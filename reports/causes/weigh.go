@@ -71,24 +71,19 @@ func judge(e *Evidence, k *Catalogue) *judged {
 	f := e.frame
 	j := &judged{e: e, k: k, f: f, s: f.sample(f.null()), dice: e.diceTable(k), maps: e.mapTable(k)}
 	nothing, loss := e.lossOf(&j.dice)
-	if e.Flags["fails-without-reason"] {
-		nothing -= withoutReason
-		loss -= withoutReason
-	}
 
-	h := &hypothesis{odds: math.Log(k.WithinBaseline.Odds * float64(len(k.Causes)))}
+	h := &hypothesis{odds: math.Log(k.WithinBaseline.Odds * float64(len(k.Causes))), views: still}
 	h.views[diceView] = -compress(j.dice.beyond)
 	h.views[mapView] = min(0, j.maps.healthy())
 	h.views[flagView] = e.flagsOf(k)
-	h.views[lossView] = nothing
-	h.views[lotView], h.views[waferView], h.views[zoneView] = -math.Ln2, -math.Ln2, -math.Ln2
+	h.views[lossView] = j.explained(nothing)
 	j.all = append(j.all, h)
 
 	var share float64
 	j.unseen, share = f.seeUnknown(j.s)
 	h = &hypothesis{unknown: true, odds: math.Log(k.Unexplained.Odds) + share, views: j.unseen.views()}
 	h.views[flagView] = e.flagsOf(k)
-	h.views[lossView] = loss
+	h.views[lossView] = j.explained(loss)
 	j.all = append(j.all, h)
 
 	j.singles(loss)
@@ -100,14 +95,14 @@ func judge(e *Evidence, k *Catalogue) *judged {
 // of levels; the variants share the cause's odds.
 func (j *judged) singles(loss float64) {
 	best := map[[2]int]*seen{}
-	merits := map[[2]int]*merits{}
+	fits := map[[2]int]*merits{}
 	for _, v := range j.f.variants(j.k) {
 		key := [2]int{v.cause, v.direction}
 		x := j.s.see(v)
 		if best[key] == nil {
-			best[key], merits[key] = x, newMerits()
+			best[key], fits[key] = x, newMerits()
 		}
-		if m := merits[key]; m.add(x) {
+		if fits[key].add(x) {
 			best[key] = x
 		}
 	}
@@ -128,7 +123,7 @@ func (j *judged) singles(loss float64) {
 			x := best[[2]int{c, d}]
 			if x != nil {
 				// one of the variants is true: the cause is as likely as their mean
-				moves, share := merits[[2]int{c, d}].share(e.Levels)
+				moves, share := fits[[2]int{c, d}].share(e.Levels)
 				h.odds += share
 				if moves {
 					h.sees[0], h.views = x, x.views()
@@ -151,14 +146,13 @@ func (j *judged) singles(loss float64) {
 // which fail though they pass every limit: nothing on the wafer does that.
 const withoutReason = 4
 
-// explained is the view of the loss for causes that hold together.
+// explained is the view of the loss for causes that hold together; none: for nothing,
+// or the unknown.
 func (j *judged) explained(loss float64, causes ...*Entry) float64 {
-	for _, e := range causes {
-		if e.Setup && j.e.Flags["fails-without-reason"] {
-			return loss + withoutReason
-		}
+	if !j.e.Flags["fails-without-reason"] || slices.ContainsFunc(causes, func(e *Entry) bool { return e.Setup }) {
+		return loss
 	}
-	return loss
+	return loss - withoutReason
 }
 
 // merits are how well the variants of a cause fit the levels.

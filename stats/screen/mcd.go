@@ -379,17 +379,23 @@ func (m *mcd) concentrate(e ellipse, rows []int32, h int) (ellipse, bool) {
 	return m.ellipse(chosen)
 }
 
+// thinned takes at most so many rows, evenly spread, and as large a part of them as h is
+// of all.
+func (m *mcd) thinned(most, h int) (rows []int32, part int) {
+	if len(m.rows) <= most {
+		return m.rows, h
+	}
+	rows = make([]int32, most)
+	for i := range rows {
+		rows[i] = m.rows[i*len(m.rows)/most]
+	}
+	return rows, (most*h + len(m.rows) - 1) / len(m.rows)
+}
+
 // search finds the ellipse of the smallest determinant.
 func (m *mcd) search(h int) (ellipse, bool) {
 	const sample, starts, kept = 1500, 500, 10
-	rows, part := m.rows, h
-	if len(rows) > sample {
-		rows = make([]int32, sample)
-		for i := range rows {
-			rows[i] = m.rows[i*len(m.rows)/sample]
-		}
-		part = (sample*h + len(m.rows) - 1) / len(m.rows)
-	}
+	rows, part := m.thinned(sample, h)
 	m.remember(rows)
 	r := rand.New(rand.NewPCG(1999, 41))
 	var best []ellipse
@@ -434,14 +440,7 @@ func (m *mcd) search(h int) (ellipse, bool) {
 	})
 	if len(m.rows) > len(rows) {
 		const end = 20000
-		rows, part = m.rows, h
-		if len(rows) > end {
-			rows = make([]int32, end)
-			for i := range rows {
-				rows[i] = m.rows[i*len(m.rows)/end]
-			}
-			part = (end*h + len(m.rows) - 1) / len(m.rows)
-		}
+		rows, part = m.thinned(end, h)
 		m.remember(rows)
 		return m.settle(best[0], rows, part, 30, 1e-6), true
 	}
